@@ -1,0 +1,51 @@
+import type { Cooldown, Notice } from "./cooldown.js";
+import type { DomainRegion, TrackedDomain } from "./domains.js";
+import type { Loop } from "./loops.js";
+import type { Drift, FrameVerdict } from "./signal.js";
+import type { FringeTest, Wall, WallProfile, WidthSummary } from "./walls.js";
+
+/** A two-state map packed for keeping: deflated bytes of `DomainMap.states`. */
+export interface PackedMap {
+  readonly rows: number;
+  readonly cols: number;
+  readonly deflated: Uint8Array;
+}
+
+export type DecidedFringe = FringeTest & { readonly detected: boolean; readonly adjustedP: number };
+
+/** Everything found in one frame; small, so that the results of a whole cooldown fit in memory. */
+export interface FrameResult {
+  readonly frame: number;
+  readonly verdict: FrameVerdict;
+  readonly drift: Drift;
+  readonly fraction: { readonly value: number; readonly low: number; readonly high: number } | null;
+  /** Gain-corrected levels, in the file's unit as scaled in the first frame; null where the state is not in the frame. */
+  readonly amplitudeInsulating: number | null;
+  readonly amplitudeMetallic: number | null;
+  readonly gain: number;
+  readonly map: PackedMap;
+  readonly regions: readonly DomainRegion[];
+  readonly wallLengthNm: number;
+  readonly walls: readonly Wall[];
+  readonly profiles: readonly WallProfile[];
+  readonly widths: WidthSummary;
+  readonly fringes: readonly DecidedFringe[];
+  readonly fringeShare: number | null;
+  readonly usablePixels: number;
+  readonly debrisPixels: number;
+  readonly scarPixels: number;
+}
+
+export type SettingRecord = Readonly<Record<string, number | string | boolean>>;
+
+/** The whole analysis of one cooldown, as the store keeps it. */
+export interface Analysis {
+  readonly cooldown: Cooldown;
+  readonly programVersion: string;
+  /** Full set of settings used, defaults included, by dotted name. */
+  readonly settings: SettingRecord;
+  readonly frames: readonly FrameResult[];
+  readonly domains: readonly TrackedDomain[];
+  readonly loops: readonly Loop[];
+  readonly notices: readonly Notice[];
+}
