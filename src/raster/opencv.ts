@@ -1,0 +1,138 @@
+import { createRequire } from "node:module";
+import type { OpenCv } from "opencv-wasm";
+
+type Mat = InstanceType<OpenCv["Mat"]>;
+
+/** Loading the WebAssembly build adds listeners for `uncaughtException` and `unhandledRejection` that turn any stray
+ *  rejection of the host program into "abort(…)": what it added is taken off again. */
+function load(): OpenCv {
+  const events = ["uncaughtException", "unhandledRejection"] as const;
+  const before = events.map((e) => new Set<unknown>(process.rawListeners(e)));
+  const loaded = createRequire(import.meta.url)("opencv-wasm") as { readonly cv: OpenCv };
+  events.forEach((event, k) => {
+    for (const listener of process.rawListeners(event)) {
+      if (!before[k]?.has(listener)) process.removeListener(event, listener as (...args: unknown[]) => void);
+    }
+  });
+  return loaded.cv;
+}
+
+const cv = load();
+
+/** Runs `work` with a maker of matrices that are all freed at the end; OpenCV's thrown pointers become Errors. */
+function withMats<T>(work: (make: (rows: number, cols: number, type: number) => Mat) => T): T {
+  const made: Mat[] = [];
+  try {
+    return work((rows, cols, type) => {
+      const mat = rows === 0 ? new cv.Mat() : new cv.Mat(rows, cols, type);
+      made.push(mat);
+      return mat;
+    });
+  } catch (e) {
+    if (typeof e === "number") throw new Error(`OpenCV: ${cv.exceptionFromPtr(e).msg}`, { cause: e });
+    throw e;
+  } finally {
+    for (const mat of made) mat.delete();
+  }
+}
+
+function checkSize(length: number, rows: number, cols: number, each = 1): void {
+  if (rows < 1 || cols < 1 || length !== rows * cols * each) {
+    throw new RangeError(`${length} values for ${rows} × ${cols} pixels`);
+  }
+}
+
+/** Taps on one side of a blur's kernel: beyond 4 σ a Gaussian holds 6e-5 of its weight. */
+const halfKernel = (sigmaPx: number): number => (sigmaPx > 0 ? Math.ceil(4 * sigmaPx) : 0);
+
+/** Gaussian blur of a row-major image without missing pixels (one NaN would spread over the whole kernel: see
+ *  `maskedBlur`). Outside the image counts as 0 (`"zero"`) or as its mirror image (`"mirror"`, the default).
+ *  @returns a new array; σ = 0 along an axis leaves that axis alone */
+export function gaussianBlur(
+  data: Float32Array,
+  rows: number,
+  cols: number,
+  sigmaXPx: number,
+  sigmaYPx: number,
+  outside: "zero" | "mirror" = "mirror",
+): Float32Array {
+  checkSize(data.length, rows, cols);
+  if (!(sigmaXPx >= 0) || !(sigmaYPx >= 0)) throw new RangeError(`blur of ${sigmaXPx}, ${sigmaYPx} px`);
+  return withMats((make) => {
+    const src = make(rows, cols, cv.CV_32FC1);
+    const dst = make(0, 0, 0);
+    src.data32F.set(data);
+    const size = new cv.Size(2 * halfKernel(sigmaXPx) + 1, 2 * halfKernel(sigmaYPx) + 1);
+    const border = outside === "zero" ? cv.BORDER_CONSTANT : cv.BORDER_REFLECT_101;
+    // a second sigma of 0 would be read as "like the first": a kernel of one tap is 1 whatever its sigma
+    cv.GaussianBlur(src, dst, size, Math.max(sigmaXPx, 1e-3), Math.max(sigmaYPx, 1e-3), border);
+    return dst.data32F.slice();
+  });
+}
+
+/** Two-dimensional discrete Fourier transform of a real row-major image: interleaved complex, rows × cols × 2. */
+export function dft2<A extends Float32Array | Float64Array>(data: A, rows: number, cols: number): A {
+  checkSize(data.length, rows, cols);
+  return withMats((make) => {
+    const src = make(rows, cols, data instanceof Float32Array ? cv.CV_32FC1 : cv.CV_64FC1);
+    const dst = make(0, 0, 0);
+    (data instanceof Float32Array ? src.data32F : src.data64F).set(data);
+    cv.dft(src, dst, cv.DFT_COMPLEX_OUTPUT, 0);
+    return (data instanceof Float32Array ? dst.data32F : dst.data64F).slice() as A;
+  });
+}
+
+/** Inverse of `dft2`, scaled by 1/(rows·cols), for spectra of real images: the real part, rows × cols. */
+export function idft2<A extends Float32Array | Float64Array>(spectrum: A, rows: number, cols: number): A {
+  checkSize(spectrum.length, rows, cols, 2);
+  return withMats((make) => {
+    const src = make(rows, cols, spectrum instanceof Float32Array ? cv.CV_32FC2 : cv.CV_64FC2);
+    const dst = make(0, 0, 0);
+    (spectrum instanceof Float32Array ? src.data32F : src.data64F).set(spectrum);
+    cv.dft(src, dst, cv.DFT_INVERSE + cv.DFT_SCALE + cv.DFT_REAL_OUTPUT, 0);
+    return (spectrum instanceof Float32Array ? dst.data32F : dst.data64F).slice() as A;
+  });
+}
+
+/** Connected regions of the non-zero pixels of `mask`, joined over sides (4) or sides and corners (8).
+ *  @returns `labels` 0 outside, 1 … `count` inside, in the order of the first pixel met row by row */
+export function connectedComponents(
+  mask: Uint8Array,
+  rows: number,
+  cols: number,
+  connectivity: 4 | 8,
+): { count: number; labels: Int32Array } {
+  checkSize(mask.length, rows, cols);
+  const raw = withMats((make) => {
+    const src = make(rows, cols, cv.CV_8UC1);
+    const dst = make(0, 0, 0);
+    src.data.set(mask);
+    const count = cv.connectedComponents(src, dst, connectivity, cv.CV_32S) - 1;
+    return { count, labels: dst.data32S.slice() };
+  });
+  // OpenCV numbers by its own block scan: renumber, so that labels do not depend on its inner order
+  const order = new Int32Array(raw.count + 1);
+  let next = 0;
+  for (let p = 0; p < raw.labels.length; p++) {
+    const label = raw.labels[p] as number;
+    if (label === 0) continue;
+    if (order[label] === 0) order[label] = ++next;
+    raw.labels[p] = order[label] as number;
+  }
+  return raw;
+}
+
+/** Exact Euclidean distance in pixels from each non-zero pixel of `mask` to the nearest zero pixel (centre to centre);
+ *  0 on zero pixels. Square pixels only: where the pitch differs, distances in nm need another way. With no zero pixel
+ *  at all every distance is Infinity. */
+export function distanceTransform(mask: Uint8Array, rows: number, cols: number): Float32Array {
+  checkSize(mask.length, rows, cols);
+  if (!mask.includes(0)) return new Float32Array(mask.length).fill(Number.POSITIVE_INFINITY);
+  return withMats((make) => {
+    const src = make(rows, cols, cv.CV_8UC1);
+    const dst = make(0, 0, 0);
+    src.data.set(mask);
+    cv.distanceTransform(src, dst, cv.DIST_L2, cv.DIST_MASK_PRECISE);
+    return dst.data32F.slice();
+  });
+}
