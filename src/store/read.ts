@@ -1,0 +1,104 @@
+import type { ExportedTable } from "../tables/columns.js";
+import type { Db } from "./open.js";
+
+export type Cell = number | string | null;
+export type Row = Readonly<Record<string, Cell>>;
+
+/** Which rows to answer from. Without `analysis`, the newest analysis of each cooldown. */
+export interface Selection {
+  readonly cooldowns?: readonly string[];
+  readonly sample?: string;
+  readonly analysis?: number;
+}
+
+function where(sel: Selection): { sql: string; values: (string | number)[] } {
+  const parts: string[] = [];
+  const values: (string | number)[] = [];
+  if (sel.cooldowns !== undefined && sel.cooldowns.length > 0) {
+    parts.push(`cooldown IN (${sel.cooldowns.map(() => "?").join(", ")})`);
+    values.push(...sel.cooldowns);
+  }
+  if (sel.sample !== undefined) {
+    parts.push("cooldown IN (SELECT name FROM cooldown WHERE sample = ?)");
+    values.push(sel.sample);
+  }
+  if (sel.analysis !== undefined) {
+    parts.push("analysis = ?");
+    values.push(sel.analysis);
+  }
+  return { sql: parts.length === 0 ? "" : ` WHERE ${parts.join(" AND ")}`, values };
+}
+
+/** The rows of an exported table, one at a time, so that a large export needs little memory. */
+export function readTable(db: Db, table: ExportedTable, sel: Selection = {}): IterableIterator<Row> {
+  const w = where(sel);
+  const view = sel.analysis === undefined ? table.view : `${table.view}_all`;
+  const columns = table.columns.map((c) => c.name).join(", ");
+  return db
+    .prepare<(string | number)[], Row>(`SELECT ${columns} FROM ${view}${w.sql} ORDER BY ${table.orderBy.join(", ")}`)
+    .iterate(...w.values);
+}
+
+export interface CooldownSummary {
+  readonly cooldown: string;
+  readonly sample: string;
+  readonly region: string | null;
+  readonly analysis: number;
+  readonly analyses: number;
+  readonly made_at: string;
+  readonly program_version: string;
+  readonly frames: number;
+  readonly lowest_temperature_K: number;
+  readonly highest_temperature_K: number;
+  readonly cycles: number;
+  readonly notices: number;
+  readonly settings_json: string;
+}
+
+/** What is in the database: a row a cooldown, with the analysis that answers for it. */
+export function readCooldowns(db: Db): CooldownSummary[] {
+  return db
+    .prepare<[], CooldownSummary>(
+      `SELECT c.name AS cooldown, c.sample, c.region, a.id AS analysis,
+              (SELECT count(*) FROM analysis b WHERE b.cooldown_id = c.id) AS analyses,
+              a.made_at, a.program_version, count(*) AS frames, min(f.temperature_k) AS lowest_temperature_K,
+              max(f.temperature_k) AS highest_temperature_K, max(f.cycle) AS cycles,
+              (SELECT count(*) FROM notice n WHERE n.analysis_id = a.id) AS notices, a.settings_json
+       FROM cooldown c JOIN newest_analysis na ON na.cooldown_id = c.id JOIN analysis a ON a.id = na.id
+       JOIN frame f ON f.analysis_id = a.id GROUP BY c.id ORDER BY c.name`,
+    )
+    .all();
+}
+
+export interface NoticeRow {
+  readonly frame: number | null;
+  readonly code: string;
+  readonly message: string;
+}
+
+export function readNotices(db: Db, analysis: number): NoticeRow[] {
+  return db
+    .prepare<[number], NoticeRow>("SELECT frame, code, message FROM notice WHERE analysis_id = ? ORDER BY frame, id")
+    .all(analysis);
+}
+
+/** Names of the cooldowns among `names` that the database does not hold. */
+export function unknownCooldowns(db: Db, names: readonly string[]): string[] {
+  const known = db.prepare<[string], { n: number }>("SELECT count(*) AS n FROM cooldown WHERE name = ?");
+  return names.filter((n) => known.get(n)?.n === 0);
+}
+
+export function cooldownNames(db: Db): string[] {
+  return db.prepare<[], { name: string }>("SELECT name FROM cooldown ORDER BY name").all().map((r) => r.name);
+}
+
+/** A stored two-state map, still deflated. */
+export function readMap(db: Db, analysis: number, frame: number): { rows: number; cols: number; deflated: Uint8Array } | null {
+  const r = db
+    .prepare<
+      [number, number],
+      { map_rows: number; map_cols: number; map_deflated: Uint8Array }
+    >("SELECT map_rows, map_cols, map_deflated FROM frame WHERE analysis_id = ? AND frame = ?")
+    .get(analysis, frame);
+  return r === undefined ? null : { rows: r.map_rows, cols: r.map_cols, deflated: r.map_deflated };
+}
