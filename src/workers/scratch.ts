@@ -1,0 +1,65 @@
+import { mkdtempSync, readFileSync, rmSync, writeFileSync } from "node:fs";
+import { tmpdir } from "node:os";
+import path from "node:path";
+import { deserialize, serialize } from "node:v8";
+import { colsOf, dataOf, makeRaster, rowsOf, type PixelSize, type Raster } from "../model/raster.js";
+import type { CleanFrame } from "../model/signal.js";
+
+/** Full-size rasters between the passes lie in a folder of their own on disk, so that memory does not grow with the number of
+ *  frames and no source is read and cleaned twice. The folder is removed at the end of the run. */
+export function makeScratch(): string {
+  return mkdtempSync(path.join(tmpdir(), "coldseam-"));
+}
+
+export function removeScratch(dir: string): void {
+  rmSync(dir, { recursive: true, force: true });
+}
+
+/** Keeps any structured-cloneable value under a name. */
+export function keep(dir: string, name: string, value: unknown): void {
+  writeFileSync(path.join(dir, name), serialize(value));
+}
+
+/** Reads a kept value back; the caller names its type, as it was the one to keep it. */
+export function fetchKept<T>(dir: string, name: string): T {
+  return deserialize(readFileSync(path.join(dir, name))) as T;
+}
+
+interface FlatRaster {
+  readonly data: Float32Array;
+  readonly rows: number;
+  readonly cols: number;
+}
+
+interface FlatFrame {
+  readonly frame: number;
+  readonly pixel: PixelSize;
+  readonly topography: FlatRaster | null;
+  readonly amplitude: FlatRaster;
+  readonly phase: FlatRaster | null;
+}
+
+const flat = (r: Raster): FlatRaster => ({ data: dataOf(r), rows: rowsOf(r), cols: colsOf(r) });
+const round = (f: FlatRaster, pixel: PixelSize): Raster => makeRaster(f.data, f.rows, f.cols, pixel);
+
+export function keepClean(dir: string, clean: CleanFrame): void {
+  const flatFrame: FlatFrame = {
+    frame: clean.frame,
+    pixel: clean.pixel,
+    topography: clean.topography && flat(clean.topography),
+    amplitude: flat(clean.amplitude),
+    phase: clean.phase && flat(clean.phase),
+  };
+  keep(dir, `clean-${clean.frame}`, flatFrame);
+}
+
+export function fetchClean(dir: string, frame: number): CleanFrame {
+  const f = fetchKept<FlatFrame>(dir, `clean-${frame}`);
+  return {
+    frame: f.frame,
+    pixel: f.pixel,
+    topography: f.topography && round(f.topography, f.pixel),
+    amplitude: round(f.amplitude, f.pixel),
+    phase: f.phase && round(f.phase, f.pixel),
+  };
+}

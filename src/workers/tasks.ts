@@ -1,0 +1,167 @@
+import { deflateSync, inflateSync } from "node:zlib";
+import type { PackedMap } from "../model/analysis.js";
+import type { Cooldown, FrameInfo, Notice, Tip } from "../model/cooldown.js";
+import type { DomainRegion, FrameDomains } from "../model/domains.js";
+import type { ErrorRecord } from "../model/errors.js";
+import type { DomainMap, Drift, FrameLevels, FrameStates } from "../model/signal.js";
+import type { FringeTest, FrameWalls, WidthSummary } from "../model/walls.js";
+import { inspectFrame, loadFrame } from "../input/index.js";
+import type { Settings } from "../settings.js";
+import { cleanFrame, type CleanReport } from "../stages/clean/index.js";
+import { DebrisAccumulator, debrisInFrame, findDebrisInFrame, type DebrisMap } from "../stages/debris/index.js";
+import { labelDomains } from "../stages/domains/index.js";
+import { measurePair, prepareForDrift, type DriftImage, type PairShift } from "../stages/drift/index.js";
+import { testFringes } from "../stages/fringes/index.js";
+import { fitLevels, mapStates, type LevelFit } from "../stages/states/index.js";
+import { fitWalls, summariseWidths } from "../stages/walls/index.js";
+import { fetchClean, fetchKept, keep, keepClean } from "./scratch.js";
+
+export type Reply<T> = { readonly ok: true; readonly value: T } | { readonly ok: false; readonly error: ErrorRecord };
+
+/** What every task needs to know of the run. */
+interface Run {
+  readonly scratch: string;
+  readonly settings: Settings;
+}
+
+interface CleanInput extends Run {
+  readonly cooldown: Pick<Cooldown, "pixel">;
+  readonly info: FrameInfo;
+}
+export interface CleanOutput {
+  readonly report: CleanReport;
+  readonly notices: readonly Notice[];
+}
+
+/** Load one frame, clean it, keep the clean rasters and the registration image in the scratch folder. */
+async function clean(input: CleanInput): Promise<CleanOutput> {
+  const raw = await loadFrame(input.cooldown, input.info);
+  const notices = inspectFrame(raw);
+  const { clean: frame, report } = cleanFrame(raw, input.settings.clean);
+  keepClean(input.scratch, frame);
+  keep(input.scratch, `drift-${frame.frame}`, prepareForDrift(frame, input.settings.drift));
+  return { report, notices: [...notices, ...report.notices] };
+}
+
+interface PairInput extends Run {
+  readonly reference: number;
+  readonly moving: number;
+  readonly predicted: { readonly xNm: number; readonly yNm: number } | null;
+}
+
+/** The last few registration images stay in memory: neighbouring pairs share them. */
+const images = new Map<string, DriftImage>();
+const IMAGES_KEPT = 8;
+
+function image(scratch: string, frame: number): DriftImage {
+  const key = `${scratch}/${frame}`;
+  let found = images.get(key);
+  if (found === undefined) {
+    found = fetchKept<DriftImage>(scratch, `drift-${frame}`);
+    if (images.size >= IMAGES_KEPT) images.delete(images.keys().next().value as string);
+    images.set(key, found);
+  }
+  return found;
+}
+
+function pair(input: PairInput): PairShift {
+  return measurePair(
+    image(input.scratch, input.reference),
+    image(input.scratch, input.moving),
+    input.predicted,
+    input.settings.drift,
+  );
+}
+
+interface DebrisInput extends Run {
+  readonly frames: readonly number[];
+  readonly drifts: readonly Drift[];
+  readonly tip: Tip | null;
+}
+
+/** One pass over all clean frames: what stays on the sample while domains come and go. */
+function debris(input: DebrisInput): { readonly share: number } {
+  const accumulator = new DebrisAccumulator(input.drifts, input.tip, input.settings.debris);
+  for (const frame of input.frames) {
+    const drift = input.drifts[frame];
+    if (drift !== undefined && drift.xNm !== null) accumulator.accumulate(fetchClean(input.scratch, frame), drift);
+  }
+  const map = accumulator.finish();
+  keep(input.scratch, "debris", map);
+  let marked = 0;
+  for (const v of map.mask) marked += v;
+  return { share: map.mask.length === 0 ? 0 : marked / map.mask.length };
+}
+
+interface FrameInput extends Run {
+  readonly frame: number;
+  readonly drift: Drift;
+  readonly tip: Tip | null;
+}
+
+function debrisOf(input: FrameInput, clean: ReturnType<typeof fetchClean>): Uint8Array {
+  if (input.drift.xNm === null) return findDebrisInFrame(clean, input.tip, input.settings.debris);
+  const map = fetchKept<DebrisMap>(input.scratch, "debris");
+  const [rows, cols] = clean.amplitude.values.shape as [number, number];
+  return debrisInFrame(map, input.drift, rows, cols);
+}
+
+function levels(input: FrameInput): LevelFit {
+  const frame = fetchClean(input.scratch, input.frame);
+  return fitLevels(frame, debrisOf(input, frame), input.tip, input.settings.states);
+}
+
+interface MeasureInput extends FrameInput {
+  readonly fit: LevelFit;
+  readonly levels: FrameLevels;
+  readonly seed: number;
+}
+export interface MeasureOutput {
+  readonly fraction: FrameStates["fraction"];
+  readonly map: PackedMap;
+  readonly regions: readonly DomainRegion[];
+  readonly walls: FrameWalls;
+  readonly widths: WidthSummary;
+  readonly fringes: readonly FringeTest[];
+  readonly usablePixels: number;
+  readonly debrisPixels: number;
+}
+
+export function packMap(map: DomainMap): PackedMap {
+  return { rows: map.rows, cols: map.cols, deflated: deflateSync(map.states) };
+}
+
+export function unpackMap(packed: PackedMap, pixel: DomainMap["pixel"]): DomainMap {
+  const bytes = inflateSync(packed.deflated);
+  return { rows: packed.rows, cols: packed.cols, pixel, states: new Uint8Array(bytes.buffer, bytes.byteOffset, bytes.length) };
+}
+
+/** States, walls, fringes and domains of one frame, with the levels that the whole cooldown has settled. */
+function measure(input: MeasureInput): MeasureOutput {
+  const { settings: s, tip } = input;
+  const frame = fetchClean(input.scratch, input.frame);
+  const mask = debrisOf(input, frame);
+  const { signal, states } = mapStates(frame, mask, input.fit, input.levels, tip, s.states);
+  const walls = fitWalls(signal, states, tip, s.walls);
+  const fringes = testFringes(signal, states, walls, tip, s.fringes, input.seed);
+  const domains: FrameDomains = labelDomains(states.map, input.frame, tip, s.domains);
+  let usablePixels = 0;
+  for (const u of signal.usable) usablePixels += u;
+  let debrisPixels = 0;
+  for (const d of mask) debrisPixels += d === 0 ? 0 : 1;
+  return {
+    fraction: states.fraction,
+    map: packMap(states.map),
+    regions: domains.regions,
+    walls,
+    widths: summariseWidths(walls.profiles, tip, s.walls, input.seed),
+    fringes,
+    usablePixels,
+    debrisPixels,
+  };
+}
+
+export const tasks = { clean, pair, debris, levels, measure };
+export type TaskName = keyof typeof tasks;
+export type TaskInput<N extends TaskName> = Parameters<(typeof tasks)[N]>[0];
+export type TaskOutput<N extends TaskName> = Awaited<ReturnType<(typeof tasks)[N]>>;
