@@ -17,7 +17,7 @@ export function zeroPad(
 ): Float64Array {
   const out = new Float64Array(paddedRows * paddedCols);
   for (let i = 0; i < rows; i++) {
-    for (let j = 0; j < cols; j++) out[i * paddedCols + j] = data[i * cols + j] as number;
+    for (let j = 0; j < cols; j++) out[i * paddedCols + j] = data[i * cols + j];
   }
   return out;
 }
@@ -27,10 +27,10 @@ export function zeroPad(
 export function conjugateProduct(a: Float64Array, b: Float64Array): Float64Array {
   const out = new Float64Array(a.length);
   for (let k = 0; k < a.length; k += 2) {
-    const ar = a[k] as number;
-    const ai = a[k + 1] as number;
-    const br = b[k] as number;
-    const bi = b[k + 1] as number;
+    const ar = a[k];
+    const ai = a[k + 1];
+    const br = b[k];
+    const bi = b[k + 1];
     out[k] = ar * br + ai * bi;
     out[k + 1] = ar * bi - ai * br;
   }

@@ -30,19 +30,19 @@ export function maskedBlur(
   let sum = 0;
   let count = 0;
   for (let p = 0; p < n; p++) {
-    const v = data[p] as number;
+    const v = data[p];
     if ((usable !== null && usable[p] === 0) || Number.isNaN(v)) continue;
     mask[p] = 1;
     sum += v;
     count++;
   }
   const mean = count > 0 ? sum / count : 0;
-  for (let p = 0; p < n; p++) if (mask[p] === 1) filled[p] = (data[p] as number) - mean;
+  for (let p = 0; p < n; p++) if (mask[p] === 1) filled[p] = data[p] - mean;
   const values = gaussianBlur(filled, rows, cols, sigmaXPx, sigmaYPx, "zero");
   const weight = gaussianBlur(mask, rows, cols, sigmaXPx, sigmaYPx, "zero");
   for (let p = 0; p < n; p++) {
-    const w = weight[p] as number;
-    values[p] = w > LEAST_WEIGHT ? (values[p] as number) / w + mean : Number.NaN;
+    const w = weight[p];
+    values[p] = w > LEAST_WEIGHT ? values[p] / w + mean : Number.NaN;
   }
   return { values, weight };
 }

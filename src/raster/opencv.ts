@@ -6,14 +6,15 @@ type Mat = InstanceType<OpenCv["Mat"]>;
 /** Loading the WebAssembly build adds listeners for `uncaughtException` and `unhandledRejection` that turn any stray
  *  rejection of the host program into "abort(…)": what it added is taken off again. */
 function load(): OpenCv {
-  const events = ["uncaughtException", "unhandledRejection"] as const;
-  const before = events.map((e) => new Set<unknown>(process.rawListeners(e)));
-  const loaded = createRequire(import.meta.url)("opencv-wasm") as { readonly cv: OpenCv };
-  events.forEach((event, k) => {
-    for (const listener of process.rawListeners(event)) {
-      if (!before[k]?.has(listener)) process.removeListener(event, listener as (...args: unknown[]) => void);
-    }
-  });
+  const exceptions = new Set(process.listeners("uncaughtException"));
+  const rejections = new Set(process.listeners("unhandledRejection"));
+  const loaded: { readonly cv: OpenCv } = createRequire(import.meta.url)("opencv-wasm");
+  for (const f of process.listeners("uncaughtException")) {
+    if (!exceptions.has(f)) process.removeListener("uncaughtException", f);
+  }
+  for (const f of process.listeners("unhandledRejection")) {
+    if (!rejections.has(f)) process.removeListener("unhandledRejection", f);
+  }
   return loaded.cv;
 }
 
@@ -71,26 +72,26 @@ export function gaussianBlur(
 }
 
 /** Two-dimensional discrete Fourier transform of a real row-major image: interleaved complex, rows × cols × 2. */
-export function dft2<A extends Float32Array | Float64Array>(data: A, rows: number, cols: number): A {
+export function dft2(data: Float64Array, rows: number, cols: number): Float64Array {
   checkSize(data.length, rows, cols);
   return withMats((make) => {
-    const src = make(rows, cols, data instanceof Float32Array ? cv.CV_32FC1 : cv.CV_64FC1);
+    const src = make(rows, cols, cv.CV_64FC1);
     const dst = make(0, 0, 0);
-    (data instanceof Float32Array ? src.data32F : src.data64F).set(data);
+    src.data64F.set(data);
     cv.dft(src, dst, cv.DFT_COMPLEX_OUTPUT, 0);
-    return (data instanceof Float32Array ? dst.data32F : dst.data64F).slice() as A;
+    return dst.data64F.slice();
   });
 }
 
 /** Inverse of `dft2`, scaled by 1/(rows·cols), for spectra of real images: the real part, rows × cols. */
-export function idft2<A extends Float32Array | Float64Array>(spectrum: A, rows: number, cols: number): A {
+export function idft2(spectrum: Float64Array, rows: number, cols: number): Float64Array {
   checkSize(spectrum.length, rows, cols, 2);
   return withMats((make) => {
-    const src = make(rows, cols, spectrum instanceof Float32Array ? cv.CV_32FC2 : cv.CV_64FC2);
+    const src = make(rows, cols, cv.CV_64FC2);
     const dst = make(0, 0, 0);
-    (spectrum instanceof Float32Array ? src.data32F : src.data64F).set(spectrum);
+    src.data64F.set(spectrum);
     cv.dft(src, dst, cv.DFT_INVERSE + cv.DFT_SCALE + cv.DFT_REAL_OUTPUT, 0);
-    return (spectrum instanceof Float32Array ? dst.data32F : dst.data64F).slice() as A;
+    return dst.data64F.slice();
   });
 }
 
@@ -114,10 +115,10 @@ export function connectedComponents(
   const order = new Int32Array(raw.count + 1);
   let next = 0;
   for (let p = 0; p < raw.labels.length; p++) {
-    const label = raw.labels[p] as number;
+    const label = raw.labels[p];
     if (label === 0) continue;
     if (order[label] === 0) order[label] = ++next;
-    raw.labels[p] = order[label] as number;
+    raw.labels[p] = order[label];
   }
   return raw;
 }

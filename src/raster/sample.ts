@@ -22,16 +22,16 @@ export function sampleCubic(data: Float32Array, rows: number, cols: number, row:
   cubicWeights(tx, WX);
   let sum = 0;
   for (let a = 0; a < 4; a++) {
-    const wy = WY[a] as number;
+    const wy = WY[a];
     if (wy === 0) continue;
     const r = i + a - 1;
     if (r < 0 || r >= rows) return Number.NaN;
     for (let b = 0; b < 4; b++) {
-      const wx = WX[b] as number;
+      const wx = WX[b];
       if (wx === 0) continue;
       const c = j + b - 1;
       if (c < 0 || c >= cols) return Number.NaN;
-      sum += wy * wx * (data[r * cols + c] as number);
+      sum += wy * wx * data[r * cols + c];
     }
   }
   return sum;

@@ -18,16 +18,14 @@ describe("opencv", () => {
     }
   });
 
-  test("the transform there and back, in both precisions, and its first term is the sum", () => {
-    const data = noise(12 * 15, 1);
+  test("the transform there and back; its first term is the sum", () => {
+    const data = Float64Array.from(noise(12 * 15, 1));
     const spectrum = dft2(data, 12, 15);
     expect(spectrum[0]).toBeCloseTo(
       data.reduce((a, b) => a + b, 0),
-      4,
+      10,
     );
-    idft2(spectrum, 12, 15).forEach((v, p) => expect(v).toBeCloseTo(data[p] as number, 5));
-    const fine = Float64Array.from(data);
-    idft2(dft2(fine, 12, 15), 12, 15).forEach((v, p) => expect(v).toBeCloseTo(fine[p] as number, 12));
+    idft2(spectrum, 12, 15).forEach((v, p) => expect(v).toBeCloseTo(data[p], 12));
   });
 
   test("a blurred point is a Gaussian of each axis' own sigma", () => {
@@ -130,7 +128,7 @@ describe("fourier", () => {
     const a = noise(5 * 6, 2);
     const b = noise(5 * 6, 3);
     const spectra = [a, b].map((v) => dft2(zeroPad(v, 5, 6, 10, 12), 10, 12));
-    const c = idft2(conjugateProduct(spectra[0] as Float64Array, spectra[1] as Float64Array), 10, 12);
+    const c = idft2(conjugateProduct(spectra[0], spectra[1]), 10, 12);
     for (const [dy, dx] of [
       [0, 0],
       [2, -3],
@@ -141,7 +139,7 @@ describe("fourier", () => {
         for (let j = 0; j < 6; j++) {
           const y = i + dy;
           const x = j + dx;
-          if (y >= 0 && y < 5 && x >= 0 && x < 6) want += (a[i * 6 + j] as number) * (b[y * 6 + x] as number);
+          if (y >= 0 && y < 5 && x >= 0 && x < 6) want += a[i * 6 + j] * b[y * 6 + x];
         }
       }
       expect(c[((dy + 10) % 10) * 12 + ((dx + 12) % 12)]).toBeCloseTo(want, 10);
