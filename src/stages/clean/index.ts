@@ -1,0 +1,2 @@
+export { type CleanReport, cleanFrame } from "./clean_frame.js";
+export { type CleanSettings, settings as cleanSettings } from "./settings.js";

@@ -1,0 +1,123 @@
+import { medianOf as median } from "./median.js";
+
+const BINS = 10;
+/** Residuals looked at: more would not make a median better by anything that matters. */
+const MOST_RESIDUALS = 24_000;
+const LEAST_IN_BIN = 60;
+
+/** Standard deviation of a channel's pixel noise as a function of the signal's amplitude at the pixel. */
+export interface NoiseByLevel {
+  readonly low: number;
+  readonly perLevel: number;
+  /** One value a bin; `sdAt` picks one. */
+  readonly sds: Float64Array;
+  /** Over all pixels. */
+  readonly sd: number;
+}
+
+export function sdAt(noise: NoiseByLevel, level: number): number {
+  const b = (level - noise.low) * noise.perLevel;
+  return noise.sds[b > 0 ? (b < BINS - 1 ? b | 0 : BINS - 1) : 0];
+}
+
+/** The angle in (−π, π]. */
+export function wrapRad(a: number): number {
+  const t = a - 2 * Math.PI * Math.round(a / (2 * Math.PI));
+  return t <= -Math.PI ? t + 2 * Math.PI : t;
+}
+
+/** Noise from second differences along the rows, (v₋₁ − 2 v₀ + v₊₁)/√6, by 1.4826 · median |·|: blind to slopes, little
+ *  moved by walls and relief, and to no row offset at all.
+ *  @param level what the noise may depend on (the amplitude), same shape, or null: one value for all pixels
+ *  @param isAngle differences are taken round the circle
+ *  Assumes noise that is white from column to column; noise that is correlated along the row comes out too small. */
+export function measureNoise(
+  values: Float32Array,
+  level: Float32Array | null,
+  rows: number,
+  cols: number,
+  isAngle: boolean,
+): NoiseByLevel {
+  const stride = Math.max(1, Math.ceil((rows * cols) / MOST_RESIDUALS));
+  const residuals = new Float64Array(Math.ceil((rows * cols) / stride));
+  const levels = new Float64Array(residuals.length);
+  let n = 0;
+  for (let p = 0; p < rows * cols; p += stride) {
+    const col = p % cols;
+    if (col === 0 || col === cols - 1) continue;
+    let r = values[p - 1] - 2 * values[p] + values[p + 1];
+    if (isAngle) r = wrapRad(values[p - 1] - values[p]) + wrapRad(values[p + 1] - values[p]);
+    if (!Number.isFinite(r)) continue;
+    const l = level === null ? 0 : (level[p - 1] + level[p] + level[p + 1]) / 3;
+    if (!Number.isFinite(l)) continue;
+    residuals[n] = Math.abs(r);
+    levels[n++] = l;
+  }
+  const scale = 1.4826 / Math.sqrt(6);
+  const sd = n === 0 ? 0 : scale * median(residuals.slice(0, n));
+  const sds = new Float64Array(BINS).fill(sd);
+  if (level === null || n < 4 * LEAST_IN_BIN) return { low: 0, perLevel: 0, sds, sd };
+  const sorted = levels.slice(0, n).sort();
+  const low = sorted[Math.floor(0.01 * n)];
+  const high = sorted[Math.floor(0.99 * n)];
+  if (!(high > low)) return { low, perLevel: 0, sds, sd };
+  const perLevel = BINS / (high - low);
+  const bins: number[][] = Array.from({ length: BINS }, () => []);
+  for (let k = 0; k < n; k++) {
+    const b = (levels[k] - low) * perLevel;
+    if (b >= 0 && b < BINS) bins[b | 0].push(residuals[k]);
+  }
+  sds.fill(Number.NaN);
+  for (let b = 0; b < BINS; b++) {
+    if (bins[b].length >= LEAST_IN_BIN) sds[b] = scale * median(Float64Array.from(bins[b]));
+  }
+  fillFromNeighbours(sds, sd);
+  return { low, perLevel, sds, sd };
+}
+
+/** A bin with too few pixels takes the nearest bin's value. */
+function fillFromNeighbours(sds: Float64Array, fallback: number): void {
+  const known = sds.slice();
+  for (let b = 0; b < sds.length; b++) {
+    for (let d = 0; Number.isNaN(sds[b]) && d < sds.length; d++) {
+      const below = known[b - d];
+      const above = known[b + d];
+      if (below > 0) sds[b] = below;
+      else if (above > 0) sds[b] = above;
+    }
+    if (!(sds[b] > 0)) sds[b] = fallback;
+  }
+}
+
+/** Share of the measured pixels that sit at the very top or bottom value, where those are piled up as a clipped detector
+ *  piles them: many at the extreme, few at the next value inward. 0 where nothing is piled up. */
+export function clippedShare(values: Float32Array): number {
+  let low = Infinity;
+  let high = -Infinity;
+  let measured = 0;
+  for (let p = 0; p < values.length; p++) {
+    const v = values[p];
+    if (Number.isNaN(v)) continue;
+    measured++;
+    if (v < low) low = v;
+    if (v > high) high = v;
+  }
+  if (!(high > low)) return 0;
+  let nextHigh = -Infinity;
+  let nextLow = Infinity;
+  for (let p = 0; p < values.length; p++) {
+    const v = values[p];
+    if (v < high && v > nextHigh) nextHigh = v;
+    if (v > low && v < nextLow) nextLow = v;
+  }
+  const count = (x: number): number => {
+    let c = 0;
+    for (let p = 0; p < values.length; p++) if (values[p] === x) c++;
+    return c;
+  };
+  const piled = (extreme: number, next: number): number => {
+    const at = count(extreme);
+    return at >= 10 && at > 5 * count(next) ? at : 0;
+  };
+  return (piled(high, nextHigh) + piled(low, nextLow)) / measured;
+}

@@ -1,0 +1,140 @@
+import { medianInPlace } from "./median.js";
+import { type NoiseByLevel, sdAt, wrapRad } from "./noise.js";
+
+/** Rows further apart than this (unmeasured ones between) are not compared. */
+const LONGEST_GAP = 8;
+/** Bisquare constant: wide, so that nearly all pixels of one state keep a weight near 1 (see `v` below). */
+const BISQUARE = 6;
+const ITERATIONS = 4;
+
+/** Differences from one measured row to the next. Index k ≥ 1 is the link from `rows[k − 1]` to `rows[k]`; index 0 is empty. */
+export interface RowLinks {
+  /** Indices of the rows that enter, in order. */
+  readonly rows: Int32Array;
+  /** Offset of row k over row k − 1; NaN where they could not be compared. */
+  readonly difference: Float64Array;
+  /** Variance that this link adds to the chain: what does not cancel against the link before. */
+  readonly chainVariance: Float64Array;
+  /** Mean variance of a row's mean: the part of the links' noise that cancels along the chain. */
+  readonly rowVariance: number;
+}
+
+/** Robust differences of adjacent rows, over pixels of unchanged state.
+ *
+ *  Each is a bisquare mean of pixel differences, weighted by 1/noise², started from the median. The median alone (or any robust
+ *  estimate with few pixels in full weight) makes errors that are independent from link to link, so that their sum walks away;
+ *  differences of plain means telescope to the two end rows. With a wide bisquare on pixels known to be of one state nearly all
+ *  weights are equal and the errors telescope but for the pixels whose weight changes: that remainder is `chainVariance`.
+ *  @param values row-major [rows, cols]; NaN = not measured. Angles in rad where `isAngle`
+ *  @param level the amplitude, for the noise at each pixel; null where the noise is one number
+ *  @param flat 1 = no state boundary near in the direction of the columns; null = all pixels
+ *  Source: median of differences and angle of Σ z_i z*_{i−1} are standard practice; the weights and variances are ours. */
+export function linkRows(
+  values: Float32Array,
+  level: Float32Array | null,
+  flat: Uint8Array | null,
+  noise: NoiseByLevel,
+  rows: number,
+  cols: number,
+  isAngle: boolean,
+  leastPixels: number,
+): RowLinks {
+  const usable = (p: number): boolean => !Number.isNaN(values[p]) && (flat === null || flat[p] === 1);
+  const entering: number[] = [];
+  for (let i = 0; i < rows; i++) {
+    let n = 0;
+    for (let j = 0; j < cols; j++) if (!Number.isNaN(values[i * cols + j])) n++;
+    if (n >= leastPixels) entering.push(i);
+  }
+  const count = entering.length;
+  const difference = new Float64Array(count).fill(Number.NaN);
+  const chainVariance = new Float64Array(count).fill(Number.NaN);
+  let weight = new Float64Array(cols);
+  let before = new Float64Array(cols);
+  let hasBefore = false;
+  const e = new Float64Array(cols);
+  const scratch = new Float64Array(cols);
+  const inverseVariance = new Float64Array(cols);
+  const column = new Int32Array(cols);
+  let rowVarianceSum = 0;
+  let links = 0;
+  const leastSd = 1e-9 + 0.05 * noise.sd;
+  for (let k = 1; k < count; k++) {
+    const up = entering[k - 1] * cols;
+    const down = entering[k] * cols;
+    let n = 0;
+    if (entering[k] - entering[k - 1] <= LONGEST_GAP) {
+      for (let j = 0; j < cols; j++) {
+        if (!usable(up + j) || !usable(down + j)) continue;
+        const sd = level === null ? noise.sd : sdAt(noise, 0.5 * (level[up + j] + level[down + j]));
+        inverseVariance[n] = 1 / Math.max(sd, leastSd) ** 2;
+        e[n] = values[down + j] - values[up + j];
+        column[n++] = j;
+      }
+    }
+    if (n < leastPixels) {
+      hasBefore = false;
+      continue;
+    }
+    let turn = 0;
+    if (isAngle) {
+      let c = 0;
+      let s = 0;
+      for (let m = 0; m < n; m++) {
+        c += inverseVariance[m] * Math.cos(e[m]);
+        s += inverseVariance[m] * Math.sin(e[m]);
+      }
+      turn = Math.atan2(s, c);
+      for (let m = 0; m < n; m++) e[m] = wrapRad(e[m] - turn);
+    }
+    scratch.set(e.subarray(0, n));
+    let d = medianInPlace(scratch, n);
+    // relief and texture make differences wider than the noise; twice the noise is the most that is believed
+    for (let m = 0; m < n; m++) scratch[m] = Math.abs(e[m] - d) * Math.sqrt(inverseVariance[m] / 2);
+    const spread = medianInPlace(scratch, n);
+    const scale = level === null ? Math.max(1, 1.4826 * spread) : Math.min(2, Math.max(1, 1.4826 * spread));
+    weight.fill(0);
+    let total = 0;
+    for (let iteration = 0; iteration < ITERATIONS; iteration++) {
+      let sum = 0;
+      total = 0;
+      for (let m = 0; m < n; m++) {
+        const r = e[m] - d;
+        const u2 = (r * r * inverseVariance[m]) / (2 * BISQUARE * BISQUARE * scale * scale);
+        const w = u2 < 1 ? (1 - u2) * (1 - u2) * inverseVariance[m] : 0;
+        weight[column[m]] = w;
+        total += w;
+        sum += w * r;
+      }
+      if (!(total > 0)) break;
+      d += sum / total;
+    }
+    if (!(total > 0)) {
+      hasBefore = false;
+      continue;
+    }
+    difference[k] = isAngle ? wrapRad(d + turn) : d;
+    let chain = 0;
+    let own = 0;
+    for (let j = 0; j < cols; j++) {
+      const w = weight[j] / total;
+      weight[j] = w;
+      const b = hasBefore ? before[j] : w;
+      if (w === 0 && b === 0) continue;
+      const sd = Math.max(level === null ? noise.sd : sdAt(noise, level[up + j]), leastSd);
+      chain += sd * sd * (w - b) * (w - b);
+      own += sd * sd * w * w;
+    }
+    chainVariance[k] = chain;
+    rowVarianceSum += own;
+    links++;
+    [weight, before] = [before, weight];
+    hasBefore = true;
+  }
+  return {
+    rows: Int32Array.from(entering),
+    difference,
+    chainVariance,
+    rowVariance: links > 0 ? rowVarianceSum / links : 0,
+  };
+}
