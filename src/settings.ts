@@ -1,5 +1,6 @@
 import { UsageError } from "./model/errors.js";
 import type { SettingRecord } from "./model/analysis.js";
+import { closestWord } from "./model/text.js";
 import { defaultsOf, type Setting, type SettingTable, type SettingValues } from "./model/settings.js";
 import { settings as clean } from "./stages/clean/settings.js";
 import { settings as debris } from "./stages/debris/settings.js";
@@ -11,7 +12,13 @@ import { settings as states } from "./stages/states/settings.js";
 import { settings as walls } from "./stages/walls/settings.js";
 
 const run = {
-  seed: { default: 20261, unit: "1", means: "seed of every random draw (bootstraps, simulated null distributions)", min: 0, max: 2147483647 },
+  seed: {
+    default: 20261,
+    unit: "1",
+    means: "seed of every random draw (bootstraps, simulated null distributions)",
+    min: 0,
+    max: 2147483647,
+  },
 } as const satisfies SettingTable;
 
 /** Every setting of the program, by the stage that it belongs to. */
@@ -31,23 +38,12 @@ export function listSettings(): ListedSetting[] {
   );
 }
 
-function nearest(word: string, choices: readonly string[]): string {
-  const distance = (a: string, b: string): number => {
-    let row = Array.from({ length: b.length + 1 }, (_, j) => j);
-    for (let i = 1; i <= a.length; i++) {
-      const next = [i];
-      for (let j = 1; j <= b.length; j++)
-        next[j] = Math.min((row[j] as number) + 1, (next[j - 1] as number) + 1, (row[j - 1] as number) + (a[i - 1] === b[j - 1] ? 0 : 1));
-      row = next;
-    }
-    return row[b.length] as number;
-  };
-  return [...choices].sort((p, q) => distance(word, p) - distance(word, q))[0] as string;
-}
-
 function parseValue(s: ListedSetting, text: string): number | string | boolean {
   const bad = (expected: string): never => {
-    throw new UsageError(`--set ${s.name}=${text}: expected ${expected}`, `its default is ${String(s.default)} (${s.means})`);
+    throw new UsageError(
+      `--set ${s.name}=${text}: expected ${expected}`,
+      `its default is ${String(s.default)} (${s.means})`,
+    );
   };
   if (typeof s.default === "boolean") return text === "true" ? true : text === "false" ? false : bad("true or false");
   if (typeof s.default === "string") {
@@ -71,9 +67,21 @@ export function settingsWith(overrides: readonly string[] = []): Settings {
     const at = o.indexOf("=");
     const name = at < 0 ? o : o.slice(0, at);
     const s = all.find((x) => x.name === name);
-    if (at < 0) throw new UsageError(`--set ${o}: expected NAME=VALUE`, "for example --set walls.reachNm=400; `coldseam settings` lists all");
-    if (s === undefined)
-      throw new UsageError(`--set ${o}: no setting "${name}"`, `did you mean "${nearest(name, all.map((x) => x.name))}"? \`coldseam settings\` lists all`);
+    if (at < 0)
+      throw new UsageError(
+        `--set ${o}: expected NAME=VALUE`,
+        "for example --set walls.reachNm=400; `coldseam settings` lists all",
+      );
+    if (s === undefined) {
+      const meant = closestWord(
+        name,
+        all.map((x) => x.name),
+      );
+      throw new UsageError(
+        `--set ${o}: no setting "${name}"${meant === null ? "" : `; did you mean "${meant}"?`}`,
+        "`coldseam settings` lists all",
+      );
+    }
     const [stage, key] = name.split(".") as [string, string];
     (values[stage] as Record<string, number | string | boolean>)[key] = parseValue(s, o.slice(at + 1));
   }
@@ -87,4 +95,12 @@ export function settingRecord(s: Settings): SettingRecord {
       Object.entries(table as Record<string, number | string | boolean>).map(([k, v]) => [`${stage}.${k}`, v]),
     ),
   );
+}
+
+/** The stored settings that differ from this program's defaults, as `name=value`. */
+export function defaultDifferences(record: SettingRecord): string[] {
+  const defaults = settingRecord(settingsWith());
+  return Object.entries(record)
+    .filter(([k, v]) => defaults[k] !== v)
+    .map(([k, v]) => `${k}=${String(v)}`);
 }

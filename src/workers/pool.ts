@@ -13,7 +13,9 @@ export interface Runner {
 function workerFile(): string {
   const here = fileURLToPath(import.meta.url);
   // Worker threads run JavaScript only; under the test runner this module is TypeScript and the build lies in dist/.
-  return here.endsWith(".ts") ? path.join(path.dirname(here), "../../dist/workers/worker.js") : path.join(path.dirname(here), "worker.js");
+  return here.endsWith(".ts")
+    ? path.join(path.dirname(here), "../../dist/workers/worker.js")
+    : path.join(path.dirname(here), "worker.js");
 }
 
 /** @param workers number of threads; 0 runs everything in the calling thread, with the same results to the bit
@@ -21,8 +23,8 @@ function workerFile(): string {
 export function makeRunner(workers: number, signal?: AbortSignal): Runner {
   if (workers === 0) {
     return {
-      async map(name, inputs, onDone) {
-        const out: TaskOutput<typeof name>[] = [];
+      async map<N extends TaskName>(name: N, inputs: readonly TaskInput<N>[], onDone?: () => void) {
+        const out: TaskOutput<N>[] = [];
         for (const input of inputs) {
           signal?.throwIfAborted();
           out.push(await tasks[name](input));
@@ -33,7 +35,13 @@ export function makeRunner(workers: number, signal?: AbortSignal): Runner {
       close: () => Promise.resolve(),
     };
   }
-  const pool = new Piscina({ filename: workerFile(), minThreads: workers, maxThreads: workers, idleTimeout: 60_000, maxQueue: Infinity });
+  const pool = new Piscina({
+    filename: workerFile(),
+    minThreads: workers,
+    maxThreads: workers,
+    idleTimeout: 60_000,
+    maxQueue: Infinity,
+  });
   return {
     async map<N extends TaskName>(name: N, inputs: readonly TaskInput<N>[], onDone?: () => void) {
       return Promise.all(

@@ -133,7 +133,12 @@ export function packMap(map: DomainMap): PackedMap {
 
 export function unpackMap(packed: PackedMap, pixel: DomainMap["pixel"]): DomainMap {
   const bytes = inflateSync(packed.deflated);
-  return { rows: packed.rows, cols: packed.cols, pixel, states: new Uint8Array(bytes.buffer, bytes.byteOffset, bytes.length) };
+  return {
+    rows: packed.rows,
+    cols: packed.cols,
+    pixel,
+    states: new Uint8Array(bytes.buffer, bytes.byteOffset, bytes.length),
+  };
 }
 
 /** States, walls, fringes and domains of one frame, with the levels that the whole cooldown has settled. */
@@ -161,7 +166,9 @@ function measure(input: MeasureInput): MeasureOutput {
   };
 }
 
-export const tasks = { clean, pair, debris, levels, measure };
-export type TaskName = keyof typeof tasks;
-export type TaskInput<N extends TaskName> = Parameters<(typeof tasks)[N]>[0];
-export type TaskOutput<N extends TaskName> = Awaited<ReturnType<(typeof tasks)[N]>>;
+const all = { clean, pair, debris, levels, measure };
+export type TaskName = keyof typeof all;
+export type TaskInput<N extends TaskName> = Parameters<(typeof all)[N]>[0];
+export type TaskOutput<N extends TaskName> = Awaited<ReturnType<(typeof all)[N]>>;
+/** The tasks by name, typed so that a name keeps its input and its output together. */
+export const tasks: { readonly [N in TaskName]: (input: TaskInput<N>) => TaskOutput<N> | Promise<TaskOutput<N>> } = all;

@@ -1,0 +1,77 @@
+import os from "node:os";
+import { UsageError } from "../model/errors.js";
+import { plainText } from "../model/text.js";
+import { readCooldown } from "../input/index.js";
+import { settingRecord, settingsWith } from "../settings.js";
+import { openForWriting } from "../store/open.js";
+import { checkName, findAnalysis, saveAnalysis, workHash } from "../store/save.js";
+import { loopText, sayNotices } from "./summary.js";
+import { programVersion } from "./main.js";
+import { makeProgress } from "./progress.js";
+import { print, say } from "./say.js";
+
+export interface IngestOptions {
+  readonly db: string;
+  readonly workers?: string;
+  readonly set?: readonly string[];
+  readonly allowOutside?: boolean;
+}
+
+export function workerCount(text: string | undefined): number {
+  if (text === undefined) return Math.max(1, os.availableParallelism());
+  const n = Number(text);
+  if (!Number.isInteger(n) || n < 0 || n > 256)
+    throw new UsageError(`--workers ${text}: expected a whole number from 0 to 256`, "leave it out to use every core");
+  return n;
+}
+
+/** `coldseam ingest`: read, analyse, store in one transaction, and say what was found. Returns the number of the analysis. */
+export async function ingest(yaml: string, o: IngestOptions): Promise<number> {
+  const workers = workerCount(o.workers);
+  const settings = settingsWith(o.set);
+  const db = openForWriting(o.db);
+  const abort = new AbortController();
+  const onInterrupt = (): void => abort.abort();
+  process.once("SIGINT", onInterrupt);
+  process.once("SIGTERM", onInterrupt);
+  try {
+    const cooldown = await readCooldown(yaml, { allowOutside: o.allowOutside === true });
+    checkName(db, cooldown);
+    const version = programVersion();
+    const there = findAnalysis(db, workHash(cooldown, settingRecord(settings), version));
+    if (there !== null) {
+      print(
+        `${plainText(cooldown.cooldown)}: already in ${o.db} as analysis ${there}, from the same files and settings; nothing to do\n`,
+      );
+      return there;
+    }
+    // Loaded only now: a repeated ingest needs none of the numerics.
+    const { analyse } = await import("../analyse.js");
+    const progress = makeProgress(plainText(cooldown.cooldown), cooldown.frames.length);
+    let analysis;
+    try {
+      analysis = await analyse(cooldown, {
+        settings,
+        programVersion: version,
+        workers,
+        signal: abort.signal,
+        onProgress: (stage, done, total) => progress.update(stage, done, total),
+      });
+    } finally {
+      progress.stop();
+    }
+    abort.signal.throwIfAborted();
+    const saved = saveAnalysis(db, analysis, new Date());
+    print(
+      `${plainText(cooldown.cooldown)}: ${analysis.frames.length} frames stored in ${o.db} as analysis ${saved.id}\n`,
+    );
+    print(loopText(analysis));
+    sayNotices(analysis.notices);
+    say(`next: coldseam loops --db ${o.db}    coldseam walls --db ${o.db}    coldseam export temperature --db ${o.db}`);
+    return saved.id;
+  } finally {
+    process.off("SIGINT", onInterrupt);
+    process.off("SIGTERM", onInterrupt);
+    db.close();
+  }
+}

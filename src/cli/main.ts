@@ -1,0 +1,107 @@
+import { Command, CommanderError, Option } from "commander";
+import { readFileSync } from "node:fs";
+import { sayError } from "./say.js";
+
+export function programVersion(): string {
+  const text = readFileSync(new URL("../../package.json", import.meta.url), "utf8");
+  return (JSON.parse(text) as { version: string }).version;
+}
+
+const collect = (value: string, before: string[]): string[] => [...before, value];
+
+const db = (): Option => new Option("--db <file>", "the SQLite file").makeOptionMandatory();
+const format = (): Option => new Option("--format <format>", "how to print").choices(["text", "json"]).default("text");
+
+/** Which cooldowns and which analysis a command answers from. */
+function selecting(c: Command): Command {
+  return c
+    .addOption(db())
+    .option("--cooldown <id...>", "only these cooldowns")
+    .option("--sample <name>", "only cooldowns of this sample")
+    .option("--analysis <number>", "answer from this analysis instead of the newest of each cooldown");
+}
+
+/** Command modules are loaded only when they run: most of the start-up time is loading libraries. */
+function build(): Command {
+  const program = new Command("coldseam")
+    .description(
+      "From cryogenic near-field image stacks of an insulator-metal transition to hysteresis loops, wall widths,\nfringes and domain histories, with error bars, in one SQLite file. The program only analyses.",
+    )
+    .version(programVersion())
+    .option("--verbose", "on an error, also print where in the program it arose")
+    .showSuggestionAfterError()
+    .exitOverride();
+
+  program
+    .command("check")
+    .description("read everything a cooldown.yaml names, say what was found and what is wrong; write nothing")
+    .argument("<yaml>", "the cooldown's description")
+    .option("--allow-outside", "allow image files outside the folder of the YAML file")
+    .action(async (yaml: string, o: object) => (await import("./check.js")).check(yaml, o));
+
+  program
+    .command("ingest")
+    .description("analyse a cooldown and store the result; the same work is recognised and not done twice")
+    .argument("<yaml>", "the cooldown's description")
+    .addOption(db())
+    .option("--workers <n>", "worker threads (default: the cores; 0: none)")
+    .option("--set <name=value>", "change a setting; may be repeated", collect, [])
+    .option("--allow-outside", "allow image files outside the folder of the YAML file")
+    .action(async (yaml: string, o: object) => void (await (await import("./ingest.js")).ingest(yaml, o as never)));
+
+  program
+    .command("cooldowns")
+    .description("what is in a database: samples, regions, frames, temperatures, analyses")
+    .addOption(db())
+    .addOption(format())
+    .action(async (o: object) => (await import("./cooldowns.js")).cooldowns(o as never));
+
+  selecting(program.command("loops"))
+    .description("half temperatures, loop width and area with 95 % intervals, and a plot of each loop")
+    .addOption(format())
+    .action(async (o: object) => (await import("./loops.js")).loops(o as never));
+
+  selecting(program.command("walls"))
+    .description("wall widths by temperature and branch, limits treated as limits")
+    .addOption(format())
+    .action(async (o: object) => (await import("./walls.js")).walls(o as never));
+
+  selecting(program.command("export"))
+    .description("write a table: temperature, walls, fringes, domains, domain-frames or loops")
+    .argument("<table>", "name of the table")
+    .addOption(new Option("--format <format>", "file format").choices(["csv", "tsv", "json"]).default("csv"))
+    .option("--out <file>", "write here instead of standard output")
+    .action(async (table: string, o: object) => (await import("./export.js")).exportTable(table, o as never));
+
+  program
+    .command("settings")
+    .description("every setting: name, default, unit, meaning")
+    .addOption(format())
+    .action(async (o: object) => (await import("./settings_list.js")).settingsList(o as never));
+
+  program
+    .command("demo")
+    .description("write the invented demo cooldowns, with their truth, as files")
+    .argument("<dir>", "folder to make")
+    .option("--seed <n>", "seed of the invented sample")
+    .addOption(new Option("--size <size>", "small is quick to make").choices(["full", "small"]).default("full"))
+    .action(async (dir: string, o: object) => (await import("./demo.js")).demo(dir, o as never));
+
+  return program;
+}
+
+/** Runs the command line and sets the exit code: 0 done, 1 the input or the data stopped it, 2 the command line was wrong. */
+export async function main(argv: readonly string[]): Promise<void> {
+  // A closed pipe (`coldseam export … | head`) is the reader's choice, not an error.
+  process.stdout.on("error", (e: NodeJS.ErrnoException) => {
+    if (e.code === "EPIPE") process.exit(0);
+    throw e;
+  });
+  const program = build();
+  try {
+    await program.parseAsync([...argv]);
+  } catch (e) {
+    if (e instanceof CommanderError) process.exitCode = e.exitCode === 0 ? 0 : 2;
+    else process.exitCode = sayError(e, argv.includes("--verbose"));
+  }
+}
