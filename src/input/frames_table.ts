@@ -1,0 +1,157 @@
+import { CsvError, parse } from "csv-parse/sync";
+import { CHANNELS, type ChannelName } from "../model/cooldown.js";
+import type { Problem } from "../model/errors.js";
+import { closestWord, plainText } from "../model/text.js";
+import { foundText } from "./schema_problems.js";
+
+/** One row of a frames table, checked as far as it goes without opening images. */
+export interface TableRow {
+  readonly line: number;
+  readonly temperatureK: number;
+  /** Path as written, by channel. */
+  readonly paths: Partial<Record<ChannelName, string>>;
+  readonly startedAt: string | null;
+  readonly endedAt: string | null;
+  readonly stageXNm: number | null;
+  readonly stageYNm: number | null;
+}
+
+const COLUMNS: readonly string[] = ["temperature_K", ...CHANNELS, "started_at", "ended_at", "stage_x_nm", "stage_y_nm"];
+const MAX_ROWS = 10_000;
+
+/**
+ * Reads a frames table: comma-separated with a header, one row a frame. Every mistake is appended to `problems` with its line
+ * and column name; rows with a mistake are left out of what is returned.
+ * @param name how the file is called in messages
+ */
+export function parseFramesTable(text: string, name: string, problems: Problem[]): TableRow[] {
+  const records = parseCsv(text, name, problems);
+  if (records === null) return [];
+  if (records.length === 0) {
+    problems.push({ at: name, problem: "the table is empty", fix: "begin with the line temperature_K,amplitude" });
+    return [];
+  }
+  const [head, ...body] = records;
+  const columns = head.cells.map((c) => c.trim());
+  const before = problems.length;
+  checkHead(columns, `${name}:${head.line}`, problems);
+  if (problems.length > before) return [];
+  if (body.length === 0) {
+    problems.push({ at: name, problem: "a header but no row; expected one row a frame", fix: "add the frames" });
+  }
+  if (body.length > MAX_ROWS) {
+    problems.push({ at: name, problem: `${body.length} rows; at most ${MAX_ROWS} frames`, fix: "split the cooldown" });
+    return [];
+  }
+  return body.flatMap((record) => {
+    const row = checkRow(record, columns, name, problems);
+    return row === null ? [] : [row];
+  });
+}
+
+interface CsvRecord {
+  readonly line: number;
+  readonly cells: readonly string[];
+}
+
+function parseCsv(text: string, name: string, problems: Problem[]): CsvRecord[] | null {
+  try {
+    const parsed: unknown = parse(text, {
+      bom: true,
+      record_delimiter: ["\r\n", "\n", "\r"],
+      skip_empty_lines: true,
+      relax_column_count: true,
+      info: true,
+      trim: true,
+    });
+    return (parsed as { record: string[]; info: { lines: number } }[])
+      .map((r) => ({ line: r.info.lines, cells: r.record }))
+      .filter((r) => r.cells.some((c) => c !== ""));
+  } catch (e) {
+    if (!(e instanceof CsvError)) throw e;
+    problems.push({ at: name, problem: plainText(e.message), fix: "mend the quotes at this place" });
+    return null;
+  }
+}
+
+function checkHead(columns: readonly string[], at: string, problems: Problem[]): void {
+  columns.forEach((c, i) => {
+    if (!COLUMNS.includes(c)) {
+      const likely = closestWord(c, COLUMNS);
+      problems.push({
+        at,
+        problem: `no column ${foundText(c)}${likely === null ? "" : `; did you mean "${likely}"?`}`,
+        fix: `the columns are ${COLUMNS.join(", ")}; the names are separated by commas`,
+      });
+    } else if (columns.indexOf(c) !== i) {
+      problems.push({ at, problem: `column "${c}" stands twice`, fix: "keep one of the two" });
+    }
+  });
+  for (const c of ["temperature_K", "amplitude"]) {
+    if (!columns.includes(c)) problems.push({ at, problem: `no column "${c}"`, fix: `add it: it is required` });
+  }
+  if (columns.includes("stage_x_nm") !== columns.includes("stage_y_nm")) {
+    problems.push({ at, problem: "only one of stage_x_nm and stage_y_nm", fix: "give both, or neither" });
+  }
+}
+
+function checkRow(record: CsvRecord, columns: readonly string[], name: string, problems: Problem[]): TableRow | null {
+  const before = problems.length;
+  const at = `${name}:${record.line}`;
+  if (record.cells.length !== columns.length) {
+    const problem = `${record.cells.length} fields; the header has ${columns.length}`;
+    problems.push({ at, problem, fix: "put names with a comma in quotes" });
+    return null;
+  }
+  const cell = (column: string): string => record.cells[columns.indexOf(column)] ?? "";
+  const complain = (column: string, expected: string, fix: string): void => {
+    const found = cell(column) === "" ? "empty" : foundText(cell(column));
+    problems.push({ at, problem: `${column} is ${found}; expected ${expected}`, fix });
+  };
+  const temperatureK = plainNumber(cell("temperature_K"));
+  if (!(temperatureK !== null && temperatureK > 0 && temperatureK <= 1000)) {
+    complain("temperature_K", "a temperature in K above 0 and at most 1000", "give it in kelvin (0 °C is 273.15 K)");
+  }
+  const stage = (column: string): number | null => {
+    if (cell(column) === "") return null;
+    const v = plainNumber(cell(column));
+    if (v === null) complain(column, "a number of nm", "write a plain number, with a point for the decimals");
+    return v;
+  };
+  const [stageXNm, stageYNm] = [stage("stage_x_nm"), stage("stage_y_nm")];
+  if ((cell("stage_x_nm") === "") !== (cell("stage_y_nm") === "")) {
+    complain(cell("stage_x_nm") === "" ? "stage_x_nm" : "stage_y_nm", "a number, as its partner has one", "give both");
+  }
+  const time = (column: string): string | null => {
+    if (cell(column) === "") return null;
+    if (isIsoTime(cell(column))) return cell(column);
+    complain(column, "a time as ISO 8601", "write for example 2024-05-17T09:30:00+02:00");
+    return null;
+  };
+  const [startedAt, endedAt] = [time("started_at"), time("ended_at")];
+  if (startedAt !== null && endedAt !== null && parseTime(endedAt) < parseTime(startedAt)) {
+    problems.push({ at, problem: "ended_at lies before started_at", fix: "mend the times" });
+  }
+  const paths: Partial<Record<ChannelName, string>> = {};
+  for (const c of CHANNELS) if (cell(c) !== "") paths[c] = cell(c);
+  if (paths.amplitude === undefined)
+    complain("amplitude", "a file: every frame needs it", "give the file, or drop the row");
+  if (problems.length > before || temperatureK === null) return null;
+  return { line: record.line, temperatureK, paths, startedAt, endedAt, stageXNm, stageYNm };
+}
+
+/** A decimal number and nothing else; null for the rest (JavaScript would take "0x10", "" and " " too). */
+function plainNumber(s: string): number | null {
+  return /^[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?$/.test(s) ? Number(s) : null;
+}
+
+/** A date with a time, to the minute or finer; with or without an offset from UTC. */
+function isIsoTime(s: string): boolean {
+  return (
+    /^\d{4}-\d\d-\d\d[T ]\d\d:\d\d(:\d\d([.,]\d+)?)?(Z|[+-]\d\d(:?\d\d)?)?$/.test(s) && !Number.isNaN(parseTime(s))
+  );
+}
+
+function parseTime(s: string): number {
+  return Date.parse(s.replace(" ", "T").replace(",", "."));
+}

@@ -1,0 +1,3 @@
+export { closeImages } from "./image_file.js";
+export { loadFrame } from "./load_frame.js";
+export { readCooldown, type ReadOptions } from "./read_cooldown.js";

@@ -1,0 +1,117 @@
+import * as z from "zod";
+
+const positive = z.number().positive();
+const name = z.string().trim().min(1).max(200);
+const path = z.string().min(1).max(4096);
+export const kelvin = z.number().positive().max(1000);
+
+const lengthUnit = z.enum(["nm", "um", "m", "V"]);
+
+export const seriesSchema = z.strictObject({
+  branch: z.enum(["cooling", "warming"]),
+  stacks: z.strictObject({ topography: path.optional(), amplitude: path, phase: path.optional() }).optional(),
+  temperatures_K: z.array(kelvin).min(1).optional(),
+  frames: path.optional(),
+});
+export type SeriesEntry = z.infer<typeof seriesSchema>;
+
+/** `cooldown.yaml`, as far as types, ranges and spelling go; what depends on several keys at once is checked apart. */
+export const cooldownSchema = z.strictObject({
+  sample: name,
+  cooldown: name,
+  region: name.optional(),
+  scan: z.strictObject({ pixel_size_nm: z.tuple([positive, positive]) }),
+  tip: z.strictObject({ resolution_nm: positive, resolution_sd_nm: z.number().nonnegative().optional() }).optional(),
+  light: z
+    .strictObject({
+      photon_energy_meV: positive.optional(),
+      wavenumber_per_cm: positive.optional(),
+      wavelength_um: positive.optional(),
+    })
+    .optional(),
+  film: z.strictObject({ thickness_nm: positive.optional() }).optional(),
+  channels: z
+    .strictObject({
+      topography: z.strictObject({ unit: lengthUnit.optional(), nm_per_unit: z.number().optional() }).optional(),
+      amplitude: z.strictObject({ unit: z.string().max(40).optional() }).optional(),
+      phase: z.strictObject({ unit: z.enum(["rad", "deg"]).optional() }).optional(),
+    })
+    .optional(),
+  series: z.array(seriesSchema).min(1),
+});
+export type CooldownEntry = z.infer<typeof cooldownSchema>;
+export type ChannelsEntry = NonNullable<CooldownEntry["channels"]>;
+
+interface KeyWords {
+  readonly expected: string;
+  readonly fix: string;
+}
+
+const fileWords: KeyWords = {
+  expected: "the name of a .tif or .npy file",
+  fix: "give the file's name relative to the YAML file",
+};
+
+/** What each key must hold, in words; `[]` stands for any place in a list. Also the list of keys there are. */
+export const keyWords: Readonly<Record<string, KeyWords>> = {
+  sample: { expected: "the sample's name, as text", fix: "write it in quotes if it is a number" },
+  cooldown: { expected: "the cooldown's own name, as text", fix: "write it in quotes if it is a number" },
+  region: { expected: "a name, as text", fix: "write it in quotes if it is a number, or leave it out" },
+  scan: { expected: "a map with pixel_size_nm", fix: "add `scan: { pixel_size_nm: [10, 10] }` with your pixel size" },
+  "scan.pixel_size_nm": {
+    expected: "two numbers above 0: nm a column (fast axis), nm a row (slow axis)",
+    fix: "write for example `pixel_size_nm: [10, 10]`",
+  },
+  "scan.pixel_size_nm[]": { expected: "a number of nm above 0", fix: "write for example `pixel_size_nm: [10, 10]`" },
+  tip: { expected: "a map with resolution_nm", fix: "add resolution_nm, or leave `tip` out" },
+  "tip.resolution_nm": {
+    expected: "a number of nm above 0 (full width at half maximum)",
+    fix: "give the measured resolution, or leave `tip` out: then only apparent widths are reported",
+  },
+  "tip.resolution_sd_nm": {
+    expected: "a number of nm, 0 or more",
+    fix: "give its standard deviation, or leave it out",
+  },
+  light: {
+    expected: "a map with one of photon_energy_meV, wavenumber_per_cm, wavelength_um",
+    fix: "give one of the three, or leave `light` out",
+  },
+  "light.photon_energy_meV": { expected: "a number above 0", fix: "write for example `photon_energy_meV: 100`" },
+  "light.wavenumber_per_cm": { expected: "a number above 0", fix: "write for example `wavenumber_per_cm: 806.55`" },
+  "light.wavelength_um": { expected: "a number above 0", fix: "write for example `wavelength_um: 12.398`" },
+  film: { expected: "a map with thickness_nm", fix: "give thickness_nm, or leave `film` out" },
+  "film.thickness_nm": { expected: "a number of nm above 0", fix: "give the thickness, or leave it out" },
+  channels: { expected: "a map of topography, amplitude, phase", fix: "give a map, or leave `channels` out" },
+  "channels.topography": { expected: "a map with unit", fix: "write for example `topography: { unit: nm }`" },
+  "channels.topography.unit": {
+    expected: "nm, um, m, or V with nm_per_unit",
+    fix: "convert the file, or give `unit: V` with the nm of one unit in nm_per_unit",
+  },
+  "channels.topography.nm_per_unit": { expected: "a number, not 0", fix: "give the nm of one volt" },
+  "channels.amplitude": { expected: "a map, with unit if you like", fix: "write `amplitude: {}`" },
+  "channels.amplitude.unit": { expected: "text of at most 40 letters", fix: "write for example `unit: mV`" },
+  "channels.phase": { expected: "a map with unit", fix: "write for example `phase: { unit: rad }`" },
+  "channels.phase.unit": { expected: "rad or deg", fix: "convert the file to rad or deg" },
+  series: {
+    expected: "a list with at least one series",
+    fix: "add a series: branch, stacks and temperatures_K, or frames",
+  },
+  "series[]": {
+    expected: "a map with branch, and stacks with temperatures_K, or frames",
+    fix: "begin each series with `- branch: cooling` or `- branch: warming`",
+  },
+  "series[].branch": { expected: "cooling or warming", fix: "give the direction of temperature of this series" },
+  "series[].stacks": { expected: "a map: one file a channel, amplitude at least", fix: "add `amplitude: FILE`" },
+  "series[].stacks.topography": fileWords,
+  "series[].stacks.amplitude": { ...fileWords, fix: "the amplitude is required: give its file" },
+  "series[].stacks.phase": fileWords,
+  "series[].temperatures_K": {
+    expected: "a list of temperatures, one a page",
+    fix: "write for example `temperatures_K: [180, 175, 170]`",
+  },
+  "series[].temperatures_K[]": {
+    expected: "a temperature in K above 0 and at most 1000",
+    fix: "give it in kelvin (0 °C is 273.15 K)",
+  },
+  "series[].frames": { expected: "the name of a .csv file", fix: "give the file's name relative to the YAML file" },
+};

@@ -1,0 +1,73 @@
+import type * as z from "zod";
+import type { Problem } from "../model/errors.js";
+import { closestWord, plainText } from "../model/text.js";
+import { keyWords } from "./schema.js";
+import type { Step, YamlDocument } from "./yaml_document.js";
+
+/** What the schema found, as problems with line and column, in words that say what was found and what to write. */
+export function schemaProblems(issues: readonly z.core.$ZodIssue[], doc: YamlDocument): Problem[] {
+  return issues.flatMap((issue) => {
+    const path = issue.path.map((s) => (typeof s === "number" ? s : String(s)));
+    if (issue.code === "unrecognized_keys") return issue.keys.map((key) => unknownKey(path, key, doc));
+    return [wrongValue(path, doc)];
+  });
+}
+
+function unknownKey(path: readonly Step[], key: string, doc: YamlDocument): Problem {
+  const known = keysBelow(path);
+  const likely = closestWord(key, known);
+  const where = path.length === 0 ? "" : ` in ${pathText(path)}`;
+  return {
+    at: doc.atKey(path, key),
+    problem: `no key "${plainText(key)}"${where}${likely === null ? "" : `; did you mean "${likely}"?`}`,
+    fix: `the keys here are ${known.join(", ")}`,
+  };
+}
+
+function wrongValue(path: readonly Step[], doc: YamlDocument): Problem {
+  const found = foundText(valueAt(doc.value, path));
+  const words = keyWords[pattern(path)];
+  const name = path.length === 0 ? "the file" : pathText(path);
+  return {
+    at: doc.at(path),
+    problem: `${name} is ${found}; expected ${words?.expected ?? "a map with sample, cooldown, scan and series"}`,
+    fix: words?.fix ?? "see the description of cooldown.yaml in the README",
+  };
+}
+
+/** `series[0].temperatures_K[2]` */
+export function pathText(path: readonly Step[]): string {
+  return plainText(path.map((s, i) => (typeof s === "number" ? `[${s}]` : i === 0 ? s : `.${s}`)).join(""));
+}
+
+const pattern = (path: readonly Step[]): string =>
+  path.map((s, i) => (typeof s === "number" ? "[]" : i === 0 ? s : `.${s}`)).join("");
+
+function keysBelow(path: readonly Step[]): string[] {
+  const prefix = path.length === 0 ? "" : `${pattern(path)}.`;
+  return Object.keys(keyWords)
+    .filter((k) => k.startsWith(prefix))
+    .map((k) => k.slice(prefix.length))
+    .filter((k) => k !== "" && !/[.[]/.test(k));
+}
+
+function valueAt(value: unknown, path: readonly Step[]): unknown {
+  let v = value;
+  for (const s of path) {
+    if (typeof v !== "object" || v === null) return undefined;
+    v = (v as Record<string, unknown>)[String(s)];
+  }
+  return v;
+}
+
+/** A value from the user's file in a few words. */
+export function foundText(value: unknown): string {
+  if (value === undefined) return "missing";
+  if (value === null) return "empty";
+  if (typeof value === "number") return String(value);
+  if (typeof value === "string") return `"${plainText(value.length > 60 ? `${value.slice(0, 57)}…` : value)}"`;
+  if (typeof value === "boolean") return String(value);
+  if (Array.isArray(value)) return value.length === 0 ? "an empty list" : `a list of ${value.length}`;
+  if (value instanceof Date) return "a date";
+  return "a map";
+}

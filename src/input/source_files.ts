@@ -1,0 +1,32 @@
+import { createHash } from "node:crypto";
+import { createReadStream } from "node:fs";
+import type { SourceFile } from "../model/cooldown.js";
+import { InputError } from "../model/errors.js";
+import { plainText } from "../model/text.js";
+import { systemWords } from "./image_file.js";
+import { shownPath } from "./source_path.js";
+
+/** SHA-256 and length of a file, read in pieces. Throws InputError where it cannot be read. */
+export async function hashFile(path: string, shown: string): Promise<SourceFile> {
+  const hash = createHash("sha256");
+  let bytes = 0;
+  try {
+    for await (const piece of createReadStream(path, { highWaterMark: 1 << 20 })) {
+      const part = piece as Buffer;
+      hash.update(part);
+      bytes += part.length;
+    }
+  } catch (e) {
+    throw new InputError(
+      { at: plainText(shown), problem: systemWords(e), fix: "leave the files alone while they are read" },
+      e,
+    );
+  }
+  return { path: shown, sha256: hash.digest("hex"), bytes };
+}
+
+/** A file that is in memory already: what is kept is the digest of exactly what was read. */
+export function sourceOf(path: string, folder: string, content: Buffer): SourceFile {
+  const sha256 = createHash("sha256").update(content).digest("hex");
+  return { path: shownPath(folder, path), sha256, bytes: content.length };
+}

@@ -1,0 +1,91 @@
+import { isMap, LineCounter, parseDocument, type Document, type Node, type Pair } from "yaml";
+import { InputError, type Problem } from "../model/errors.js";
+
+/** A key or an index on the way from the top of a document to a value. */
+export type Step = string | number;
+
+/** A parsed YAML file that knows where each of its values stands. */
+export interface YamlDocument {
+  /** The values as plain data. */
+  readonly value: unknown;
+  /** `file:line:column` of the value at `path`; of the nearest thing that exists where the value is missing. */
+  at(path: readonly Step[]): string;
+  /** `file:line:column` of the key `key` in the map at `path`. */
+  atKey(path: readonly Step[], key: string): string;
+}
+
+/** A longer description of one cooldown is not the user's own; it costs memory before it can be checked. */
+const MAX_BYTES = 4 * 1024 * 1024;
+
+/**
+ * Parses YAML 1.2 with every mistake reported at once: syntax, keys given twice, tags that are not understood, aliases that expand
+ * without end. Throws InputError.
+ * @param name how the file is called in messages
+ */
+export function parseYaml(text: string, name: string): YamlDocument {
+  if (text.length > MAX_BYTES) {
+    throw new InputError({
+      at: name,
+      problem: `${text.length} characters; a cooldown is described in at most ${MAX_BYTES}`,
+      fix: "give the file that describes the cooldown, not an image or a log",
+    });
+  }
+  const lines = new LineCounter();
+  const doc = parseDocument(text, { lineCounter: lines, prettyErrors: false, logLevel: "silent" });
+  const place = (offset: number): string => {
+    const { line, col } = lines.linePos(offset);
+    return `${name}:${Math.max(1, line)}:${Math.max(1, col)}`;
+  };
+  const problems: Problem[] = [...doc.errors, ...doc.warnings].map((e) => ({
+    at: place(e.pos[0]),
+    problem: firstLine(e.message),
+    fix: e.code === "DUPLICATE_KEY" ? "keep one of the two" : "mend the YAML at this place",
+  }));
+  if (problems.length > 0) throw new InputError(problems);
+  let value: unknown;
+  try {
+    value = doc.toJS({ maxAliasCount: 100 });
+  } catch (e) {
+    throw new InputError(
+      {
+        at: name,
+        problem: firstLine(e instanceof Error ? e.message : String(e)),
+        fix: "write the values out instead of using aliases",
+      },
+      e,
+    );
+  }
+  return {
+    value,
+    at: (path) => place(startOf(doc, path)),
+    atKey(path, key) {
+      const map = nodeAt(doc, path);
+      const pair = isMap(map) ? map.items.find((p) => String(keyOf(p)) === key) : undefined;
+      const start = pair === undefined ? undefined : rangeOf(pair.key);
+      return place(start ?? startOf(doc, path));
+    },
+  };
+}
+
+function keyOf(pair: Pair): unknown {
+  const key = pair.key;
+  return typeof key === "object" && key !== null && "value" in key ? key.value : key;
+}
+
+function nodeAt(doc: Document.Parsed, path: readonly Step[]): unknown {
+  return path.length === 0 ? doc.contents : doc.getIn(path, true);
+}
+
+function rangeOf(node: unknown): number | undefined {
+  return (node as Partial<Node> | null | undefined)?.range?.[0];
+}
+
+function startOf(doc: Document.Parsed, path: readonly Step[]): number {
+  for (let n = path.length; n >= 0; n--) {
+    const start = rangeOf(nodeAt(doc, path.slice(0, n)));
+    if (start !== undefined) return start;
+  }
+  return 0;
+}
+
+const firstLine = (s: string): string => s.split("\n", 1)[0] ?? s;
