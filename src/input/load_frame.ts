@@ -7,7 +7,7 @@ import { withImage } from "./image_file.js";
 
 /**
  * Reads the images of one frame: topography in nm, amplitude as stored, phase in rad; row-major [rows, columns], NaN where the file has
- * NaN. A topography or phase without any measured pixel counts as missing (null). Runs in any thread. Throws InputError
+ * NaN. A topography or phase without two different values (nothing measured, or a filled-in constant) counts as missing (null). Runs in any thread. Throws InputError
  * where a file has gone, is damaged, or is not what its header said when the cooldown was read.
  */
 export async function loadFrame(cooldown: Pick<Cooldown, "pixel">, info: FrameInfo): Promise<RawFrame> {
@@ -16,7 +16,7 @@ export async function loadFrame(cooldown: Pick<Cooldown, "pixel">, info: FrameIn
   const loadOptional = async (s: ChannelSource | undefined): Promise<Raster | null> => {
     if (s === undefined) return null;
     const raster = await load(s);
-    return raster.values.data.some((v) => !Number.isNaN(v)) ? raster : null;
+    return hasImage(raster.values.data) ? raster : null;
   };
   return {
     frame: info.frame,
@@ -40,4 +40,9 @@ async function readSource(s: ChannelSource, info: FrameInfo): Promise<Float32Arr
     if (e instanceof ImageFileError) throw new InputError(imageProblem(e, s.label), e);
     throw e;
   }
+}
+
+function hasImage(data: Float32Array): boolean {
+  const first = data.find((v) => !Number.isNaN(v));
+  return first !== undefined && data.some((v) => v !== first && !Number.isNaN(v));
 }

@@ -1,0 +1,185 @@
+import { CHANNELS, type ChannelName, type FrameInfo, type Notice, type RawFrame } from "../model/cooldown.js";
+import type { Problem } from "../model/errors.js";
+import type { Raster } from "../model/raster.js";
+import { countOf, plainText } from "../model/text.js";
+
+export interface Inspection {
+  /** The frame cannot be used as it is. */
+  readonly problems: readonly Problem[];
+  readonly notices: readonly Notice[];
+}
+
+/**
+ * Looks at the pixels of one loaded frame for what its headers cannot tell. Problems: an amplitude without a measured pixel or with one
+ * single value, infinite values anywhere. Notices: an optional channel without an image, a plateau at an extreme (clipped), an
+ * amplitude below zero, a phase or topography whose numbers do not look like their unit.
+ */
+export function inspectFrame(info: FrameInfo, raw: RawFrame): Inspection {
+  const problems: Problem[] = [];
+  const notices: Notice[] = [];
+  for (const channel of CHANNELS) {
+    const source = info.sources[channel];
+    if (source === undefined) continue;
+    const label = plainText(source.label);
+    const notice = (code: string, message: string): void => {
+      notices.push({ frame: info.frame, code, message: `${channel} (${label}): ${message}` });
+    };
+    const raster = raw[channel];
+    if (raster === null) {
+      notice("empty-channel", "no measured pixel, or one single value: counts as missing");
+      continue;
+    }
+    const range = rangeOf(raster);
+    const problem = unusable(channel, range);
+    if (problem !== null) problems.push({ at: label, ...problem });
+    else
+      notices.push(
+        ...oddities(channel, raster, range).map((o) => ({
+          frame: info.frame,
+          ...o,
+          message: `${channel} (${label}): ${o.message}`,
+        })),
+      );
+  }
+  return { problems, notices };
+}
+
+interface Range {
+  readonly pixels: number;
+  readonly measured: number;
+  readonly infinite: number;
+  readonly negative: number;
+  readonly low: End;
+  readonly high: End;
+}
+
+/** The extreme value, how many pixels have it, and how many the next value inwards. */
+interface End {
+  readonly value: number;
+  readonly count: number;
+  readonly nextCount: number;
+}
+
+function rangeOf(raster: Raster): Range {
+  const data = raster.values.data;
+  let infinite = 0;
+  let negative = 0;
+  let missing = 0;
+  const low = new EndFinder();
+  const high = new EndFinder();
+  for (let k = 0; k < data.length; k++) {
+    const v = data[k];
+    if (Number.isNaN(v)) missing++;
+    else if (v === Infinity || v === -Infinity) infinite++;
+    else {
+      if (v < 0) negative++;
+      low.add(-v);
+      high.add(v);
+    }
+  }
+  const measured = data.length - missing;
+  const lowEnd = low.end();
+  return {
+    pixels: data.length,
+    measured,
+    infinite,
+    negative,
+    low: { ...lowEnd, value: -lowEnd.value },
+    high: high.end(),
+  };
+}
+
+/** The largest of many numbers and the second largest, with how often each came. */
+class EndFinder {
+  #value = -Infinity;
+  #count = 0;
+  #next = -Infinity;
+  #nextCount = 0;
+
+  add(v: number): void {
+    if (v < this.#next) return;
+    if (v === this.#value) this.#count++;
+    else if (v > this.#value) {
+      this.#next = this.#value;
+      this.#nextCount = this.#count;
+      this.#value = v;
+      this.#count = 1;
+    } else if (v === this.#next) this.#nextCount++;
+    else {
+      this.#next = v;
+      this.#nextCount = 1;
+    }
+  }
+
+  end(): End {
+    return { value: this.#value, count: this.#count, nextCount: this.#nextCount };
+  }
+}
+
+function unusable(channel: ChannelName, r: Range): Omit<Problem, "at"> | null {
+  if (r.infinite > 0) {
+    const problem = `${channel} with ${countOf(r.infinite, "infinite value")} of ${r.pixels}`;
+    return { problem, fix: "write pixels that were not measured as not-a-number" };
+  }
+  if (channel !== "amplitude") return null;
+  if (r.measured === 0) {
+    return { problem: "amplitude without a single measured pixel", fix: "leave this frame out, or give its image" };
+  }
+  if (r.low.value === r.high.value) {
+    const problem = `amplitude with one value, ${r.low.value}, in all ${r.measured} measured pixels`;
+    return { problem, fix: "leave this frame out, or give its image" };
+  }
+  return null;
+}
+
+type Oddity = Pick<Notice, "code" | "message">;
+
+/** A plateau: so many pixels at the extreme, and far more than at the next value inwards, as no smooth distribution has. */
+const MIN_PLATEAU_SHARE = 0.002;
+const MIN_PLATEAU_PIXELS = 16;
+const PLATEAU_OVER_NEXT = 3;
+
+function oddities(channel: ChannelName, raster: Raster, r: Range): Oddity[] {
+  const out: Oddity[] = [];
+  for (const [end, word] of [
+    [r.low, "lowest"],
+    [r.high, "highest"],
+  ] as const) {
+    const least = Math.max(MIN_PLATEAU_PIXELS, MIN_PLATEAU_SHARE * r.measured);
+    if (end.count >= least && end.count > PLATEAU_OVER_NEXT * end.nextCount) {
+      const share = percent(end.count / r.measured);
+      out.push({
+        code: "clipped-channel",
+        message: `${share} of the pixels have the ${word} value ${end.value}: clipped?`,
+      });
+    }
+  }
+  const span = r.high.value - r.low.value;
+  if (channel === "amplitude" && r.negative > 0) {
+    const swapped = r.negative > 0.05 * r.measured ? "; is it the amplitude?" : "";
+    out.push({
+      code: "negative-amplitude",
+      message: `${percent(r.negative / r.measured)} of the pixels lie below zero${swapped}`,
+    });
+  }
+  if (channel === "phase" && span > 8 * Math.PI && wideShare(raster, 4 * Math.PI) > 0.02) {
+    out.push({ code: "phase-unit", message: `spans ${span.toPrecision(3)} rad: is the file in degrees?` });
+  }
+  if (channel === "topography" && (span > 20_000 || span < 0.05)) {
+    out.push({ code: "topography-unit", message: `spans ${span.toPrecision(3)} nm: is its unit right?` });
+  }
+  return out;
+}
+
+/** Share of the pixels further than `reach` from the median-like middle of the range. */
+function wideShare(raster: Raster, reach: number): number {
+  const data = Array.from(raster.values.data)
+    .filter((v) => !Number.isNaN(v))
+    .sort((a, b) => a - b);
+  const middle = data[data.length >> 1] ?? 0;
+  return data.filter((v) => Math.abs(v - middle) > reach).length / Math.max(1, data.length);
+}
+
+function percent(share: number): string {
+  return share < 0.001 ? "less than 0.1 %" : `${(100 * share).toFixed(1)} %`;
+}
