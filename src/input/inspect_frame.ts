@@ -1,47 +1,38 @@
 import { CHANNELS, type ChannelName, type FrameInfo, type Notice, type RawFrame } from "../model/cooldown.js";
-import type { Problem } from "../model/errors.js";
+import { InputError, type Problem } from "../model/errors.js";
 import type { Raster } from "../model/raster.js";
 import { countOf, plainText } from "../model/text.js";
 
-export interface Inspection {
-  /** The frame cannot be used as it is. */
-  readonly problems: readonly Problem[];
-  readonly notices: readonly Notice[];
-}
-
 /**
- * Looks at the pixels of one loaded frame for what its headers cannot tell. Problems: an amplitude without a measured pixel or with one
- * single value, infinite values anywhere. Notices: an optional channel without an image, a plateau at an extreme (clipped), an
- * amplitude below zero, a phase or topography whose numbers do not look like their unit.
+ * Looks at the pixels of one loaded frame for what its headers cannot tell, and returns what the user must be told: an optional
+ * channel without an image, a plateau at an extreme (clipped), an amplitude below zero, a phase or topography whose numbers do not
+ * look like their unit. Throws InputError, with all that is wrong at once, where the frame cannot be used: an amplitude
+ * without a measured pixel or with one single value, infinite values anywhere.
+ * @param info the frame's sources, for names in messages and to tell a channel without an image from one that was never given
  */
-export function inspectFrame(info: FrameInfo, raw: RawFrame): Inspection {
+export function inspectFrame(raw: RawFrame, info?: FrameInfo): Notice[] {
   const problems: Problem[] = [];
   const notices: Notice[] = [];
   for (const channel of CHANNELS) {
-    const source = info.sources[channel];
-    if (source === undefined) continue;
-    const label = plainText(source.label);
-    const notice = (code: string, message: string): void => {
-      notices.push({ frame: info.frame, code, message: `${channel} (${label}): ${message}` });
-    };
     const raster = raw[channel];
+    const source = info?.sources[channel];
+    const label = source === undefined ? `frame ${raw.frame}` : plainText(source.label);
+    const notice = ({ code, message }: Oddity): void => {
+      notices.push({ frame: raw.frame, code, message: `${channel} (${label}): ${message}` });
+    };
     if (raster === null) {
-      notice("empty-channel", "no measured pixel, or one single value: counts as missing");
+      if (source !== undefined) {
+        notice({ code: "empty-channel", message: "no measured pixel, or one single value: counts as missing" });
+      }
       continue;
     }
     const range = rangeOf(raster);
     const problem = unusable(channel, range);
     if (problem !== null) problems.push({ at: label, ...problem });
-    else
-      notices.push(
-        ...oddities(channel, raster, range).map((o) => ({
-          frame: info.frame,
-          ...o,
-          message: `${channel} (${label}): ${o.message}`,
-        })),
-      );
+    else oddities(channel, raster, range).forEach(notice);
   }
-  return { problems, notices };
+  if (problems.length > 0) throw new InputError(problems);
+  return notices;
 }
 
 interface Range {
