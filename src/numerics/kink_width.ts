@@ -1,4 +1,4 @@
-import { KINK_VARIANCE, kink } from "./kink.js";
+import { KINK_VARIANCE, kink } from "./kink_exact.js";
 
 const RISE_OF_STEP = 2 * 1.2815515655446004;
 
