@@ -1,9 +1,10 @@
 import type { Notice, RawFrame } from "../../model/cooldown.js";
 import { type Raster, colsOf, dataOf, makeRaster, rowsOf } from "../../model/raster.js";
 import type { CleanFrame } from "../../model/signal.js";
+import { wrapAngle } from "../../numerics/quantile.js";
 import { flatPixels } from "./flat_pixels.js";
 import { levelSurface } from "./level.js";
-import { clippedShare, measureNoise, wrapRad } from "./noise.js";
+import { clippedShare, measureNoise } from "./noise.js";
 import { linkRows } from "./row_links.js";
 import { splitRowOffsets } from "./row_model.js";
 import { type Scars, findScars } from "./scars.js";
@@ -249,6 +250,6 @@ function turnToMean(phase: Float32Array): void {
   const mean = Math.atan2(s, c);
   for (let p = 0; p < phase.length; p++) {
     // rounded to single precision first: π itself must not come back as a little more than π
-    phase[p] = Math.min(wrapRad(phase[p] - mean), 3.1415925);
+    phase[p] = Math.min(wrapAngle(phase[p] - mean), 3.1415925);
   }
 }

@@ -1,4 +1,4 @@
-import { medianOf as median } from "./median.js";
+import { median } from "../../numerics/quantile.js";
 import { type NoiseByLevel, sdAt } from "./noise.js";
 
 /** Half windows compared: rows above and below, columns to either side. The small one sees sharp walls, the large one wide ones. */

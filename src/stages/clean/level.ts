@@ -1,4 +1,4 @@
-import { medianOf as median } from "./median.js";
+import { median } from "../../numerics/quantile.js";
 import { choleskyInPlace, choleskySolve } from "../../numerics/cholesky.js";
 
 const MOST_PIXELS = 12_000;

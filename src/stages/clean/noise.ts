@@ -1,4 +1,4 @@
-import { medianOf as median } from "./median.js";
+import { median, wrapAngle } from "../../numerics/quantile.js";
 
 const BINS = 10;
 /** Residuals looked at: more would not make a median better by anything that matters. */
@@ -18,12 +18,6 @@ export interface NoiseByLevel {
 export function sdAt(noise: NoiseByLevel, level: number): number {
   const b = (level - noise.low) * noise.perLevel;
   return noise.sds[b > 0 ? (b < BINS - 1 ? b | 0 : BINS - 1) : 0];
-}
-
-/** The angle in (−π, π]. */
-export function wrapRad(a: number): number {
-  const t = a - 2 * Math.PI * Math.round(a / (2 * Math.PI));
-  return t <= -Math.PI ? t + 2 * Math.PI : t;
 }
 
 /** Noise from second differences along the rows, (v₋₁ − 2 v₀ + v₊₁)/√6, by 1.4826 · median |·|: blind to slopes, little
@@ -46,7 +40,7 @@ export function measureNoise(
     const col = p % cols;
     if (col === 0 || col === cols - 1) continue;
     let r = values[p - 1] - 2 * values[p] + values[p + 1];
-    if (isAngle) r = wrapRad(values[p - 1] - values[p]) + wrapRad(values[p + 1] - values[p]);
+    if (isAngle) r = wrapAngle(values[p - 1] - values[p]) + wrapAngle(values[p + 1] - values[p]);
     if (!Number.isFinite(r)) continue;
     const l = level === null ? 0 : (level[p - 1] + level[p] + level[p + 1]) / 3;
     if (!Number.isFinite(l)) continue;

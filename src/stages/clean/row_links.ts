@@ -1,5 +1,5 @@
-import { medianInPlace } from "./median.js";
-import { type NoiseByLevel, sdAt, wrapRad } from "./noise.js";
+import { medianInPlace, wrapAngle } from "../../numerics/quantile.js";
+import { type NoiseByLevel, sdAt } from "./noise.js";
 
 /** Rows further apart than this (unmeasured ones between) are not compared. */
 const LONGEST_GAP = 8;
@@ -85,7 +85,7 @@ export function linkRows(
         s += inverseVariance[m] * Math.sin(e[m]);
       }
       turn = Math.atan2(s, c);
-      for (let m = 0; m < n; m++) e[m] = wrapRad(e[m] - turn);
+      for (let m = 0; m < n; m++) e[m] = wrapAngle(e[m] - turn);
     }
     scratch.set(e.subarray(0, n));
     let d = medianInPlace(scratch, n);
@@ -113,7 +113,7 @@ export function linkRows(
       hasBefore = false;
       continue;
     }
-    difference[k] = isAngle ? wrapRad(d + turn) : d;
+    difference[k] = isAngle ? wrapAngle(d + turn) : d;
     let chain = 0;
     let own = 0;
     for (let j = 0; j < cols; j++) {

@@ -1,4 +1,4 @@
-import { medianOf as median } from "./median.js";
+import { median } from "../../numerics/quantile.js";
 import type { RowLinks } from "./row_links.js";
 
 /** Fewer links than this say nothing about how rows scatter. */

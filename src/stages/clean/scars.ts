@@ -1,4 +1,5 @@
-import { type NoiseByLevel, sdAt, wrapRad } from "./noise.js";
+import { wrapAngle } from "../../numerics/quantile.js";
+import { type NoiseByLevel, sdAt } from "./noise.js";
 
 /** Thickest scar looked for, in rows. */
 const MOST_ROWS = 2;
@@ -30,7 +31,7 @@ export function findScars(
 ): Scars {
   const mask = new Uint8Array(rows * cols);
   let runs = 0;
-  const difference = (a: number, b: number): number => (isAngle ? wrapRad(a - b) : a - b);
+  const difference = (a: number, b: number): number => (isAngle ? wrapAngle(a - b) : a - b);
   const depart = new Float64Array(cols);
   const sd = new Float64Array(cols);
   for (let thick = 1; thick <= MOST_ROWS; thick++) {

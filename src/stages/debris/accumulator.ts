@@ -1,0 +1,162 @@
+import type { Tip } from "../../model/cooldown.js";
+import { colsOf, dataOf, rowsOf } from "../../model/raster.js";
+import type { CleanFrame, Drift } from "../../model/signal.js";
+import { decide } from "./decide.js";
+import type { ChannelSums, DebrisMap, Grid, HeightSums } from "./grid.js";
+import { departures, heights } from "./residuals.js";
+import { ringOf } from "./ring.js";
+import { reaches } from "./reaches.js";
+import type { DebrisSettings } from "./settings.js";
+
+/** Departures beyond this many standard deviations count no more: one frame's domain must not outweigh the others. */
+const CLIP = 3;
+/** A departure that counts as seen. */
+const SEEN = 1;
+
+/** Collects what all placed frames of a cooldown say about debris, on one grid over the sample. The memory is that of the grid,
+ *  whatever the number of frames.
+ *
+ *  In every frame each pixel is compared with its surroundings (a ring of eight boxes): height, logarithm of the amplitude, phase. The
+ *  last two count only where the surroundings are of one state. Debris departs in nearly all frames; walls and small domains in few. */
+export class DebrisAccumulator {
+  readonly #drifts: readonly Drift[];
+  readonly #tip: Tip | null;
+  readonly #settings: DebrisSettings;
+  #grid: Grid | null = null;
+
+  /** @param drifts of all frames: they say how large a grid is needed */
+  constructor(drifts: readonly Drift[], tip: Tip | null, settings: DebrisSettings) {
+    this.#drifts = drifts;
+    this.#tip = tip;
+    this.#settings = settings;
+  }
+
+  /** Adds one frame. A frame that was not placed, or not to a pixel, is left out. */
+  accumulate(clean: CleanFrame, drift: Drift): void {
+    const { pixel } = clean;
+    if (drift.xNm === null || drift.yNm === null) return;
+    if ((drift.sdNm ?? 0) > Math.min(pixel.xNm, pixel.yNm)) return;
+    this.#grid ??= this.#makeGrid(clean);
+    const grid = this.#grid;
+    const rows = rowsOf(clean.amplitude);
+    const cols = colsOf(clean.amplitude);
+    const { ringXPx, ringYPx } = reaches(pixel, this.#tip, this.#settings);
+    const atCol = Math.round((drift.xNm - grid.originXNm) / grid.pixel.xNm);
+    const atRow = Math.round((drift.yNm - grid.originYNm) / grid.pixel.yNm);
+
+    const amplitude = dataOf(clean.amplitude);
+    const log = new Float32Array(amplitude.length);
+    for (let p = 0; p < log.length; p++) log[p] = amplitude[p] > 0 ? Math.log(amplitude[p]) : Number.NaN;
+    const byAmplitude = departures(log, ringOf(log, rows, cols, ringXPx, ringYPx), null, rows, cols);
+    addChannel(grid.amplitude, byAmplitude.departure, grid, rows, cols, atRow, atCol);
+    if (clean.phase !== null && grid.phase !== null) {
+      const phase = dataOf(clean.phase);
+      const ring = ringOf(phase, rows, cols, ringXPx, ringYPx);
+      const byPhase = departures(phase, ring, byAmplitude.flat, rows, cols);
+      addChannel(grid.phase, byPhase.departure, grid, rows, cols, atRow, atCol);
+    }
+    if (clean.topography !== null && grid.height !== null) {
+      addHeights(
+        grid.height,
+        heights(dataOf(clean.topography), rows, cols, ringXPx, ringYPx),
+        grid,
+        rows,
+        cols,
+        atRow,
+        atCol,
+      );
+    }
+  }
+
+  /** The map of debris. Empty (0 × 0) where no frame was added. */
+  finish(): DebrisMap {
+    if (this.#grid === null) {
+      const pixel = { xNm: 1, yNm: 1 };
+      return { originXNm: 0, originYNm: 0, pixel, rows: 0, cols: 0, mask: new Uint8Array(0), spots: 0 };
+    }
+    return decide(this.#grid, this.#tip, this.#settings);
+  }
+
+  #makeGrid(first: CleanFrame): Grid {
+    const { pixel } = first;
+    const placed = this.#drifts.filter((d) => d.xNm !== null && d.yNm !== null);
+    const xs = placed.map((d) => d.xNm ?? 0);
+    const ys = placed.map((d) => d.yNm ?? 0);
+    const originXNm = Math.min(0, ...xs);
+    const originYNm = Math.min(0, ...ys);
+    const cols = colsOf(first.amplitude) + Math.ceil((Math.max(0, ...xs) - originXNm) / pixel.xNm) + 1;
+    const rows = rowsOf(first.amplitude) + Math.ceil((Math.max(0, ...ys) - originYNm) / pixel.yNm) + 1;
+    const n = rows * cols;
+    const channel = (): ChannelSums => ({
+      sum: new Float32Array(n),
+      count: new Uint16Array(n),
+      above: new Uint16Array(n),
+      below: new Uint16Array(n),
+    });
+    return {
+      rows,
+      cols,
+      originXNm,
+      originYNm,
+      pixel,
+      height: { sum: new Float32Array(n), squares: new Float32Array(n), count: new Uint16Array(n) },
+      amplitude: channel(),
+      phase: channel(),
+    };
+  }
+}
+
+/** Calls `add` for every frame pixel that lies on the grid. Frames of one cooldown may differ in size. */
+function overGrid(
+  grid: Grid,
+  rows: number,
+  cols: number,
+  atRow: number,
+  atCol: number,
+  add: (onGrid: number, inFrame: number) => void,
+): void {
+  for (let i = 0; i < rows; i++) {
+    const r = i + atRow;
+    if (r < 0 || r >= grid.rows) continue;
+    const from = Math.max(0, -atCol);
+    const to = Math.min(cols, grid.cols - atCol);
+    for (let j = from; j < to; j++) add(r * grid.cols + j + atCol, i * cols + j);
+  }
+}
+
+function addChannel(
+  sums: ChannelSums,
+  departure: Float32Array,
+  grid: Grid,
+  rows: number,
+  cols: number,
+  atRow: number,
+  atCol: number,
+): void {
+  overGrid(grid, rows, cols, atRow, atCol, (g, p) => {
+    const z = departure[p];
+    if (Number.isNaN(z)) return;
+    sums.sum[g] += z > CLIP ? CLIP : z < -CLIP ? -CLIP : z;
+    sums.count[g]++;
+    if (z > SEEN) sums.above[g]++;
+    else if (z < -SEEN) sums.below[g]++;
+  });
+}
+
+function addHeights(
+  sums: HeightSums,
+  heightNm: Float32Array,
+  grid: Grid,
+  rows: number,
+  cols: number,
+  atRow: number,
+  atCol: number,
+): void {
+  overGrid(grid, rows, cols, atRow, atCol, (g, p) => {
+    const h = heightNm[p];
+    if (Number.isNaN(h)) return;
+    sums.sum[g] += h;
+    sums.squares[g] += h * h;
+    sums.count[g]++;
+  });
+}

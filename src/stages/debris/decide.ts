@@ -1,0 +1,103 @@
+import type { Tip } from "../../model/cooldown.js";
+import { median } from "../../numerics/quantile.js";
+import { connectedComponents } from "../../raster/opencv.js";
+import type { ChannelSums, DebrisMap, Grid, HeightSums } from "./grid.js";
+import { reaches } from "./reaches.js";
+import type { DebrisSettings } from "./settings.js";
+import { growSpots, smoothedMean, widen } from "./spots.js";
+
+/** A mean departure must also be this many of its own standard deviations from zero. */
+const SIGNIFICANT = 5;
+/** Height that lends support to a departure in amplitude or phase, in standard deviations of the roughness. */
+const SUPPORT = 2.5;
+/** Spots reach out to where the departure falls below this share of what it takes to be one. */
+const REACH_SHARE = 0.5;
+
+/** Debris from what all frames said. A pixel is the core of a spot where
+ *  - its mean height stands `heightSigmas` above the roughness of the film; or
+ *  - its mean departure in amplitude or phase is at least `effectSigmas` of the pixel noise and significant, with the same sign in
+ *    `leastShare` of at least `leastFrames` frames; or
+ *  - the same in fewer frames, with a height of half the threshold there.
+ *  Spots grow to half the thresholds and get a margin for the tip. */
+export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMap {
+  const { rows, cols } = grid;
+  const n = rows * cols;
+  const seed = new Uint8Array(n);
+  const candidate = new Uint8Array(n);
+  const height = grid.height === null ? null : heightScores(grid.height, rows, cols);
+  if (height !== null) {
+    for (let p = 0; p < n; p++) {
+      if (height[p] > s.heightSigmas) seed[p] = 1;
+      if (height[p] > REACH_SHARE * s.heightSigmas) candidate[p] = 1;
+    }
+  }
+  for (const channel of [grid.amplitude, grid.phase]) {
+    if (channel !== null) markChannel(channel, height, rows, cols, s, seed, candidate);
+  }
+  const spots = growSpots(seed, candidate, rows, cols, s.leastPixels);
+  const { marginXPx, marginYPx } = reaches(grid.pixel, tip, s);
+  return {
+    originXNm: grid.originXNm,
+    originYNm: grid.originYNm,
+    pixel: grid.pixel,
+    rows,
+    cols,
+    mask: widen(spots, rows, cols, marginXPx, marginYPx),
+    spots: n === 0 ? 0 : connectedComponents(spots, rows, cols, 8).count,
+  };
+}
+
+function markChannel(
+  channel: ChannelSums,
+  height: Float32Array | null,
+  rows: number,
+  cols: number,
+  s: DebrisSettings,
+  seed: Uint8Array,
+  candidate: Uint8Array,
+): void {
+  const { mean, effective } = smoothedMean(channel.sum, channel.count, rows, cols);
+  for (let p = 0; p < seed.length; p++) {
+    const frames = channel.count[p];
+    const size = Math.abs(mean[p]);
+    if (frames === 0 || !(size > REACH_SHARE * s.effectSigmas)) continue;
+    const ownSd = 1 / Math.sqrt(effective[p]);
+    if (size < REACH_SHARE * SIGNIFICANT * ownSd) continue;
+    const seen = (mean[p] > 0 ? channel.above[p] : channel.below[p]) / frames;
+    if (seen >= 0.5 * s.leastShare) candidate[p] = 1;
+    if (size < s.effectSigmas || size < SIGNIFICANT * ownSd || seen < s.leastShare) continue;
+    if (frames >= s.leastFrames || (height !== null && height[p] > SUPPORT)) seed[p] = 1;
+  }
+}
+
+/** Mean heights over the film in standard deviations: the film's roughness, which is the same in every frame, and the noise of the
+ *  mean, which is larger where fewer frames have been. */
+export function heightScores(sums: HeightSums, rows: number, cols: number): Float32Array {
+  const { mean, effective } = smoothedMean(sums.sum, sums.count, rows, cols);
+  const n = rows * cols;
+  const within: number[] = [];
+  const means: number[] = [];
+  const inverse: number[] = [];
+  for (let p = 0; p < n; p += 3) {
+    const c = sums.count[p];
+    if (c === 0) continue;
+    means.push(mean[p]);
+    inverse.push(1 / effective[p]);
+    if (c > 1) {
+      const m = sums.sum[p] / c;
+      within.push(Math.max(0, (sums.squares[p] / c - m * m) * (c / (c - 1))));
+    }
+  }
+  const score = new Float32Array(n);
+  if (means.length === 0) return score;
+  const centre = median(means);
+  const total = 1.4826 * median(means.map((m) => Math.abs(m - centre)));
+  const noise2 = within.length > 0 ? median(within) : 0;
+  const rough2 = Math.max(0.25 * total * total, total * total - noise2 * median(inverse));
+  for (let p = 0; p < n; p++) {
+    if (sums.count[p] === 0) continue;
+    const sd = Math.sqrt(rough2 + noise2 / effective[p]);
+    score[p] = sd > 0 ? (mean[p] - centre) / sd : 0;
+  }
+  return score;
+}

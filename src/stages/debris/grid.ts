@@ -1,0 +1,39 @@
+import type { PixelSize } from "../../model/raster.js";
+
+/** Debris on the sample, in the cooldown's coordinates: the grid's pixel (row, column) lies at x = originXNm + column·pixel.xNm. */
+export interface DebrisMap {
+  readonly originXNm: number;
+  readonly originYNm: number;
+  readonly pixel: PixelSize;
+  readonly rows: number;
+  readonly cols: number;
+  /** 1 = debris or its margin. */
+  readonly mask: Uint8Array;
+  /** Separate spots. */
+  readonly spots: number;
+}
+
+/** What the frames said about one channel, summed on the grid. */
+export interface ChannelSums {
+  readonly sum: Float32Array;
+  readonly count: Uint16Array;
+  readonly above: Uint16Array;
+  readonly below: Uint16Array;
+}
+
+export interface HeightSums {
+  readonly sum: Float32Array;
+  readonly squares: Float32Array;
+  readonly count: Uint16Array;
+}
+
+export interface Grid {
+  readonly rows: number;
+  readonly cols: number;
+  readonly originXNm: number;
+  readonly originYNm: number;
+  readonly pixel: PixelSize;
+  readonly height: HeightSums | null;
+  readonly amplitude: ChannelSums;
+  readonly phase: ChannelSums | null;
+}

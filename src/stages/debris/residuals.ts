@@ -1,0 +1,125 @@
+import { medianInPlace } from "../../numerics/quantile.js";
+import { type Ring, ringOf } from "./ring.js";
+
+const SD_PER_MEDIAN_ABS = 1.4826;
+/** Two clusters of surroundings closer than this (difference of logarithms) are one state. */
+const LEAST_STATE_STEP = 0.15;
+
+/** One channel's departure of each pixel from its surroundings, in standard deviations of the pixel noise; NaN where nothing can be
+ *  said: not measured, surroundings of both states, or a value that the frame's other state has as well. */
+export type Departure = Float32Array;
+
+interface Classes {
+  /** Levels of the surroundings: one, or two where the frame shows both states. */
+  readonly levels: readonly number[];
+  /** Standard deviation of pixels about their surroundings, one a level. */
+  readonly sds: readonly number[];
+}
+
+/** Departures of the logarithm of the amplitude, or of the phase, from surroundings of one state.
+ *
+ *  A small domain in the midst of the other state departs like debris; in frames that show both states a pixel at the other state's
+ *  level is therefore left out, and counts only where the frame shows one state.
+ *  @param allowed 1 = surroundings known to be of one state from another channel; null = judge by this channel alone. Blocks. */
+export function departures(
+  values: Float32Array,
+  ring: Ring,
+  allowed: Uint8Array | null,
+  rows: number,
+  cols: number,
+): { readonly departure: Departure; readonly flat: Uint8Array } {
+  const sd0 = pixelNoise(values, rows, cols);
+  const tolerance = 0.8 * sd0 + 0.03;
+  const blocks = ring.reference.length;
+  const flat = new Uint8Array(blocks);
+  for (let b = 0; b < blocks; b++) {
+    if (ring.spread[b] <= tolerance && (allowed === null || allowed[b] === 1)) flat[b] = 1;
+  }
+  const classes = classify(values, ring, flat, rows, cols, sd0);
+  const departure = new Float32Array(rows * cols).fill(Number.NaN);
+  const [first, second] = classes.levels;
+  for (let i = 0; i < rows; i++) {
+    for (let j = 0; j < cols; j++) {
+      const b = (i >> 1) * ring.blockCols + (j >> 1);
+      if (flat[b] === 0) continue;
+      const p = i * cols + j;
+      const reference = ring.reference[b];
+      const v = values[p];
+      let own = 0;
+      if (second !== undefined && Math.abs(reference - second) < Math.abs(reference - first)) own = 1;
+      if (second !== undefined) {
+        const other = own === 0 ? second : first;
+        const gap = Math.abs(second - first);
+        if (Math.abs(v - other) < Math.max(3 * classes.sds[1 - own], 0.25 * gap)) continue;
+      }
+      departure[p] = (v - reference) / classes.sds[own];
+    }
+  }
+  return { departure, flat };
+}
+
+function classify(
+  values: Float32Array,
+  ring: Ring,
+  flat: Uint8Array,
+  rows: number,
+  cols: number,
+  sd0: number,
+): Classes {
+  const references: number[] = [];
+  for (let b = 0; b < flat.length; b += 3) if (flat[b] === 1) references.push(ring.reference[b]);
+  references.sort((a, b) => a - b);
+  const n = references.length;
+  const low = references[Math.floor(0.02 * n)];
+  const high = references[Math.floor(0.98 * n)];
+  let levels: number[] = [n > 0 ? references[n >> 1] : 0];
+  if (n > 0 && high - low > LEAST_STATE_STEP + 2 * sd0) {
+    const middle = 0.5 * (low + high);
+    const split = references.findIndex((r) => r > middle);
+    levels = [references[split >> 1], references[(split + n) >> 1]];
+  }
+  const samples: Float64Array[] = levels.map(() => new Float64Array(rows * cols));
+  const counts = levels.map(() => 0);
+  for (let p = 0; p < rows * cols; p += 3) {
+    const i = Math.floor(p / cols);
+    const b = (i >> 1) * ring.blockCols + ((p - i * cols) >> 1);
+    if (flat[b] === 0 || Number.isNaN(values[p])) continue;
+    const r = ring.reference[b];
+    const own = levels.length === 2 && Math.abs(r - levels[1]) < Math.abs(r - levels[0]) ? 1 : 0;
+    samples[own][counts[own]++] = Math.abs(values[p] - r);
+  }
+  const sds = samples.map((s, k) => {
+    const sd = counts[k] >= 50 ? SD_PER_MEDIAN_ABS * medianInPlace(s, counts[k]) : sd0;
+    return sd > 0 ? sd : Number.POSITIVE_INFINITY;
+  });
+  return { levels, sds };
+}
+
+/** Robust noise by second differences along the rows. */
+function pixelNoise(values: Float32Array, rows: number, cols: number): number {
+  const r = new Float64Array(Math.ceil((rows * cols) / 5));
+  let n = 0;
+  for (let p = 1; p < rows * cols - 1; p += 5) {
+    const d = values[p - 1] - 2 * values[p] + values[p + 1];
+    if (Number.isFinite(d)) r[n++] = Math.abs(d);
+  }
+  return n === 0 ? 0 : (SD_PER_MEDIAN_ABS / Math.sqrt(6)) * medianInPlace(r, n);
+}
+
+/** Heights over the surroundings, nm; NaN where not measured. */
+export function heights(
+  topography: Float32Array,
+  rows: number,
+  cols: number,
+  radiusXPx: number,
+  radiusYPx: number,
+): Float32Array {
+  const ring = ringOf(topography, rows, cols, radiusXPx, radiusYPx);
+  const out = new Float32Array(rows * cols);
+  for (let i = 0; i < rows; i++) {
+    for (let j = 0; j < cols; j++) {
+      out[i * cols + j] = topography[i * cols + j] - ring.reference[(i >> 1) * ring.blockCols + (j >> 1)];
+    }
+  }
+  return out;
+}

@@ -1,0 +1,52 @@
+import type { SettingTable, SettingValues } from "../../model/settings.js";
+
+export const settings = {
+  ringNm: {
+    default: 0,
+    unit: "nm",
+    means:
+      "radius of the ring that a pixel is compared with; 0 = 4 tip resolutions, or 12 pixels where there is no tip",
+    min: 0,
+  },
+  heightSigmas: {
+    default: 5,
+    unit: "1",
+    means: "debris in the topography stands this many standard deviations above the film's own roughness",
+    min: 2,
+  },
+  effectSigmas: {
+    default: 1,
+    unit: "1",
+    means:
+      "debris in amplitude or phase differs from its surroundings by this many pixel-noise standard deviations on average",
+    min: 0.3,
+  },
+  leastFrames: {
+    default: 4,
+    unit: "1",
+    means: "without a bump in the topography debris must have been seen in at least this many frames",
+    min: 2,
+  },
+  leastShare: {
+    default: 0.6,
+    unit: "1",
+    means: "… and in at least this share of the frames in which its surroundings were of one state",
+    min: 0.3,
+    max: 1,
+  },
+  leastPixels: { default: 3, unit: "1", means: "smaller spots are not debris", min: 1 },
+  marginTips: {
+    default: 0.8,
+    unit: "1",
+    means: "margin left out around debris, in tip resolutions (of 3 pixels where there is no tip)",
+    min: 0,
+  },
+  loneFrameHeightSigmas: {
+    default: 6,
+    unit: "1",
+    means: "height that counts as debris in a frame that could not be placed, where one topography has to do",
+    min: 2,
+  },
+} as const satisfies SettingTable;
+
+export type DebrisSettings = SettingValues<typeof settings>;
