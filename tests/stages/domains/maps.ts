@@ -24,22 +24,34 @@ export function mapFrom(
   return { rows, cols, pixel, states };
 }
 
-/** A smooth random field of the plane with unit variance, known everywhere: a sum of plane waves. Part of it changes with time. */
-export function randomField(seed: number, lengthNm: number): (xNm: number, yNm: number, t: number) => number {
+/** A smooth random field of the plane with unit variance, known everywhere: a sum of plane waves whose phases turn with time.
+ *  Its values on a grid: `at(rows, cols, pxNm, x0Nm, y0Nm, t)`. */
+export function randomField(seed: number, lengthNm: number) {
   const random = makeRandom(seed);
-  const waves = Array.from({ length: 60 }, () => {
-    // A Gaussian spectrum: correlation length `lengthNm`.
-    return {
-      kx: random.normal() / lengthNm,
-      ky: random.normal() / lengthNm,
-      phase: random.uniform() * 2 * Math.PI,
-      turn: random.normal() * 0.35,
-    };
-  });
+  // A Gaussian spectrum: correlation length `lengthNm`.
+  const waves = Array.from({ length: 60 }, () => ({
+    kx: random.normal() / lengthNm,
+    ky: random.normal() / lengthNm,
+    phase: random.uniform() * 2 * Math.PI,
+    turn: random.normal() * 0.35,
+  }));
   const a = Math.sqrt(2 / waves.length);
-  return (x, y, t) => {
-    let sum = 0;
-    for (const w of waves) sum += Math.cos(w.kx * x + w.ky * y + w.phase + w.turn * t);
-    return a * sum;
+  return (rows: number, cols: number, pxNm: number, x0Nm: number, y0Nm: number, t: number): Float64Array => {
+    const out = new Float64Array(rows * cols);
+    const c = new Float64Array(cols);
+    const s = new Float64Array(cols);
+    for (const w of waves) {
+      for (let j = 0; j < cols; j++) {
+        c[j] = a * Math.cos(w.kx * (x0Nm + j * pxNm));
+        s[j] = a * Math.sin(w.kx * (x0Nm + j * pxNm));
+      }
+      for (let i = 0; i < rows; i++) {
+        const angle = w.ky * (y0Nm + i * pxNm) + w.phase + w.turn * t;
+        const ci = Math.cos(angle);
+        const si = Math.sin(angle);
+        for (let j = 0, p = i * cols; j < cols; j++, p++) out[p] += c[j] * ci - s[j] * si;
+      }
+    }
+    return out;
   };
 }
