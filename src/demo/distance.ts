@@ -11,6 +11,9 @@ export interface DistanceMap {
   row(y: number, x0: number, dx: number, n: number, reachNm: number, out: Float64Array): void;
 }
 
+/** A piece up to 2 % farther (in distance) than the best known may still lead along its line to a nearer one. */
+const NEAR = 1.04;
+
 /** Prepares distances from a level set: the nearest piece is handed from node to node over the grid in sweeps (vector propagation,
  *  Danielsson 1980, Comput. Graph. Image Process. 14, 227), at each hand-over walking along the line to where it comes nearest. */
 export function distanceMap(grid: FieldGrid, set: LevelSet): DistanceMap {
@@ -63,11 +66,17 @@ export function distanceMap(grid: FieldGrid, set: LevelSet): DistanceMap {
     return p;
   };
 
+  const tryPiece = (p: number, d2: number, x: number, y: number): number => {
+    const own2 = squared(p, x, y);
+    if (own2 >= d2 * NEAR) return d2;
+    walk(p, own2, x, y);
+    return Math.min(d2, found2);
+  };
+
   const offer = (node: number, p: number, x: number, y: number): void => {
     if (p < 0 || p === nearest[node]) return;
     const d2 = squared(p, x, y);
-    // A piece that is not nearer itself may still lead to one that is: walk unless it is far behind.
-    if (d2 >= best2[node] * 1.2) return;
+    if (d2 >= best2[node] * NEAR) return;
     const w = walk(p, d2, x, y);
     if (found2 < best2[node]) {
       best2[node] = found2;
@@ -111,7 +120,8 @@ export function distanceMap(grid: FieldGrid, set: LevelSet): DistanceMap {
       for (let j = 1; j < nx; j++) offer(i * nx + j, nearest[i * nx + j - 1], gx0 + j * gdx, y);
     }
   }
-  const nodeNm = best2.map((d2) => Math.sqrt(d2));
+  const nodeNm = best2;
+  for (let k = 0; k < nodeNm.length; k++) nodeNm[k] = Math.sqrt(nodeNm[k]);
   const diagonal = Math.hypot(gdx, gdy);
 
   return {
@@ -137,18 +147,9 @@ export function distanceMap(grid: FieldGrid, set: LevelSet): DistanceMap {
         const p3 = nearest[node + nx + 1];
         walk(p0, squared(p0, x, y), x, y);
         let d2 = found2;
-        if (p1 !== p0) {
-          walk(p1, squared(p1, x, y), x, y);
-          if (found2 < d2) d2 = found2;
-        }
-        if (p2 !== p0 && p2 !== p1) {
-          walk(p2, squared(p2, x, y), x, y);
-          if (found2 < d2) d2 = found2;
-        }
-        if (p3 !== p0 && p3 !== p1 && p3 !== p2) {
-          walk(p3, squared(p3, x, y), x, y);
-          if (found2 < d2) d2 = found2;
-        }
+        if (p1 !== p0) d2 = tryPiece(p1, d2, x, y);
+        if (p2 !== p0 && p2 !== p1) d2 = tryPiece(p2, d2, x, y);
+        if (p3 !== p0 && p3 !== p1 && p3 !== p2) d2 = tryPiece(p3, d2, x, y);
         out[k] = Math.sqrt(d2);
       }
     },

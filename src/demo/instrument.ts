@@ -15,7 +15,8 @@ export interface Recorded {
   readonly scars: number;
 }
 
-const wrap = (a: number): number => Math.atan2(Math.sin(a), Math.cos(a));
+const TURN = 2 * Math.PI;
+const wrap = (a: number): number => a - TURN * Math.ceil(a / TURN - 0.5);
 
 /** Unit-variance noise, white or smoothed by a Gaussian along each axis. */
 function noiseField(random: Random, rows: number, cols: number, sxPx: number, syPx: number): Float64Array {
@@ -23,7 +24,8 @@ function noiseField(random: Random, rows: number, cols: number, sxPx: number, sy
   const ry = Math.ceil(4 * syPx);
   const w = cols + 2 * rx;
   const h = rows + 2 * ry;
-  const white = Float64Array.from({ length: w * h }, () => random.normal());
+  const white = new Float64Array(w * h);
+  for (let k = 0; k < white.length; k++) white[k] = random.normal();
   if (rx === 0 && ry === 0) return white;
   const taps = (s: number, r: number): Float64Array => {
     const k = Float64Array.from({ length: 2 * r + 1 }, (_, t) => (r === 0 ? 1 : Math.exp(-0.5 * ((t - r) / s) ** 2)));

@@ -1,5 +1,3 @@
-import { childSeed } from "../numerics/random.js";
-
 /** A real function of the plane that can be evaluated anywhere. */
 export interface Field {
   /** Prepares rows of `n` points x0, x0 + dx, …; the function returned fills `out` with the values at height y. */
@@ -15,11 +13,18 @@ export interface FieldShare {
 /** Kernel's reach in units of its scale; e^{−18} = 1.5e-8 is left out. */
 const REACH = 6;
 
+/** Turns a whole number into a hashed one: multiply and fold, two rounds (Wellons' lowbias32, public domain). */
+function mix(h: number): number {
+  h = Math.imul(h ^ (h >>> 16), 0x7feb352d);
+  h = Math.imul(h ^ (h >>> 15), 0x846ca68b);
+  return h ^ (h >>> 16);
+}
+
 /** A standard normal number that belongs to lattice site (i, j); Box & Muller (1958) on two hashed uniforms. */
 function siteNormal(seed: number, i: number, j: number): number {
-  const h = childSeed(seed, i, j);
-  const a = ((childSeed(h, 1) >>> 0) + 0.5) / 4294967296;
-  const b = ((childSeed(h, 2) >>> 0) + 0.5) / 4294967296;
+  const h = mix(mix(mix(seed + 0x3c6ef372) + i) + j);
+  const a = ((mix(h ^ 0x5bd1e995) >>> 0) + 0.5) / 4294967296;
+  const b = ((mix(h ^ 0x1b873593) >>> 0) + 0.5) / 4294967296;
   return Math.sqrt(-2 * Math.log(a)) * Math.cos(2 * Math.PI * b);
 }
 

@@ -25,10 +25,10 @@ export function widthAt(spec: CooldownSpec, temperatureK: number): number {
   return Math.max(0, spec.wall.widthNm + spec.wall.slopeNmPerK * (temperatureK - spec.transition.coolingHalfK));
 }
 
-/** How far from a wall its signal differs from the plateau, nm: tanh to 2e-9, a fringe to e^{−6} of its amplitude. */
+/** How far from a wall its signal differs from the plateau, nm: tanh to 3e-7, a fringe to e^{−6} of its amplitude. */
 export function reachOf(spec: CooldownSpec, temperatureK: number): number {
   const w = widthAt(spec, temperatureK) / RISE_PER_W;
-  return Math.max(10 * w, spec.fringe.amplitudeRad === 0 ? 0 : Math.min(6 * spec.fringe.decayNm, 1200));
+  return Math.max(7.5 * w, spec.fringe.amplitudeRad === 0 ? 0 : Math.min(6 * spec.fringe.decayNm, 1200));
 }
 
 /** The complex signal against signed distance, tabulated. */
