@@ -90,7 +90,7 @@ export function distanceMap(grid: FieldGrid, set: LevelSet): DistanceMap {
     for (let r = 0; r < 2; r++)
       for (let c = 0; c < 2; c++) offer((i + r) * nx + j + c, p, gx0 + (j + c) * gdx, gy0 + (i + r) * gdy);
   }
-  for (let round = 0; round < 2 && count > 0; round++) {
+  for (let round = 0; round < 1 && count > 0; round++) {
     for (let i = 0; i < ny; i++) {
       const y = gy0 + i * gdy;
       for (let j = 0; j < nx; j++) {
