@@ -34,6 +34,11 @@ export interface WallProfile {
   /** null where there is no tip resolution. */
   readonly resolved: boolean | null;
   readonly apparentWidthNm: number | null;
+  /** Own noise of the apparent width, one standard deviation. */
+  readonly apparentWidthSdNm?: number | null;
+  /** Width below which this profile's noise (and tip) would not have let it be called resolved: the limit that an unresolved one is
+   *  censored at in statistics. */
+  readonly detectionLimitNm?: number | null;
   readonly amplitudeInsulating: number | null;
   readonly amplitudeMetallic: number | null;
   readonly reducedChi2: number | null;

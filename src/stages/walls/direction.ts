@@ -1,0 +1,107 @@
+import { fastKink } from "../../numerics/kink.js";
+import type { FrameLevels, Signal } from "../../model/signal.js";
+import { varianceAlong } from "./noise.js";
+import type { ProfileData } from "./profile_data.js";
+
+/** How the complex signal is turned into one number a pixel.
+ *  - `chord`: along z_M − z_I. All of the two-state contrast, but a fringe turns z off the chord and bends this projection.
+ *  - `radial`: along the direction that z itself has at that distance from the wall. A fringe of the optical phase moves z at a right
+ *    angle to z, so that this projection sees it in second order only; the price is the part of the contrast across z.
+ *  - `amplitude`: no optical phase; the amplitude is taken as mixing linearly, which it does only where the two phases agree. */
+export type Direction = "chord" | "radial" | "amplitude";
+
+/** Levels and noise of one frame, prepared for projecting. */
+export class Projector {
+  readonly hasPhase: boolean;
+  /** Share of the information on the wall's shape that the radial direction keeps (1 = all). */
+  readonly radialInformation: number;
+  readonly contrast: number;
+  private readonly ex: number;
+  private readonly ey: number;
+  private readonly sizeI: number;
+  private readonly sizeM: number;
+  private readonly u = new Float64Array(4);
+
+  constructor(
+    private readonly signal: Signal,
+    private readonly levels: FrameLevels,
+  ) {
+    const { insulating: a, metallic: b } = levels;
+    this.hasPhase = signal.im !== null;
+    const dre = b.re - a.re;
+    const dim = this.hasPhase ? b.im - a.im : 0;
+    this.contrast = Math.hypot(dre, dim);
+    this.ex = this.contrast > 0 ? dre / this.contrast : 1;
+    this.ey = this.contrast > 0 ? dim / this.contrast : 0;
+    this.sizeI = this.hasPhase ? Math.hypot(a.re, a.im) : a.re;
+    this.sizeM = this.hasPhase ? Math.hypot(b.re, b.im) : b.re;
+    let kept = 0;
+    let count = 0;
+    for (let u = 0.05; u < 1; u += 0.1) {
+      const re = a.re + dre * u;
+      const im = (this.hasPhase ? a.im : 0) + dim * u;
+      const along = (re * this.ex + im * this.ey) ** 2 / Math.max(re * re + im * im, 1e-300);
+      const slope = u * (1 - u);
+      kept += along * slope * slope;
+      count += slope * slope;
+    }
+    this.radialInformation = kept / count;
+  }
+
+  /** Levels to start a fit from, in the unit of the projection. */
+  startLevels(direction: Direction): { insulating: number; metallic: number } {
+    const { insulating: a, metallic: b } = this.levels;
+    if (direction !== "chord") return { insulating: this.sizeI, metallic: this.sizeM };
+    return { insulating: a.re * this.ex + a.im * this.ey, metallic: b.re * this.ex + b.im * this.ey };
+  }
+
+  /** Amplitude |z| of a fitted level. */
+  amplitude(direction: Direction, state: "insulating" | "metallic", fitted: number): number {
+    if (direction !== "chord") return fitted;
+    const z = this.levels[state];
+    const off = fitted - (z.re * this.ex + z.im * this.ey);
+    return Math.hypot(z.re + off * this.ex, z.im + off * this.ey);
+  }
+
+  /** Value, alpha, beta and weight of pixel `pixel` into slot k of `data`; w and σ say where between the states it is expected. */
+  put(data: ProfileData, k: number, pixel: number, distanceNm: number, w: number, sigma: number, direction: Direction): void {
+    fastKink(distanceNm, w, sigma, this.u);
+    const u = this.u[0];
+    const { insulating: a, metallic: b, noiseInsulating, noiseMetallic } = this.levels;
+    const re = this.signal.re[pixel];
+    let ex = 1;
+    let ey = 0;
+    let im = 0;
+    let alpha = 1;
+    let beta = 1;
+    if (this.signal.im !== null) {
+      im = this.signal.im[pixel];
+      ex = this.ex;
+      ey = this.ey;
+      if (direction === "radial") {
+        const zr = a.re + (b.re - a.re) * u;
+        const zi = a.im + (b.im - a.im) * u;
+        const size = Math.hypot(zr, zi);
+        ex = zr / size;
+        ey = zi / size;
+        alpha = (a.re * ex + a.im * ey) / this.sizeI;
+        beta = (b.re * ex + b.im * ey) / this.sizeM;
+      }
+    }
+    data.value[k] = re * ex + im * ey;
+    data.alpha[k] = alpha;
+    data.beta[k] = beta;
+    const variance = (1 - u) * varianceAlong(noiseInsulating, ex, ey) + u * varianceAlong(noiseMetallic, ex, ey);
+    data.weight[k] = 1 / Math.sqrt(Math.max(variance, 1e-12 * this.contrast * this.contrast));
+  }
+
+  /** Signal of a pixel across the chord, and the variance of its noise there; 0 on the chord. */
+  across(pixel: number, u: number): { value: number; variance: number } {
+    const { insulating: a, noiseInsulating, noiseMetallic } = this.levels;
+    const im = (this.signal.im as Float32Array)[pixel];
+    const value = -(this.signal.re[pixel] - a.re) * this.ey + (im - a.im) * this.ex;
+    const variance =
+      (1 - u) * varianceAlong(noiseInsulating, -this.ey, this.ex) + u * varianceAlong(noiseMetallic, -this.ey, this.ex);
+    return { value, variance: Math.max(variance, 1e-12 * this.contrast * this.contrast) };
+  }
+}

@@ -1,0 +1,105 @@
+import { chi2UpperTail } from "../../numerics/distributions.js";
+import { kink } from "../../numerics/kink.js";
+import type { CorrelatedNoise } from "./correlation.js";
+import type { Projector } from "./direction.js";
+import type { NearestWall } from "./nearest.js";
+import type { Stretches } from "./stretches.js";
+
+export interface AlarmOptions {
+  readonly reachNm: number;
+  readonly marginNm: number;
+  readonly binNm: number;
+  readonly w: number;
+  readonly sigma: number;
+  readonly level: number;
+  readonly walls: number;
+}
+
+/** Least share of the information that the radial direction must keep to be of use. */
+const LEAST_INFORMATION = 0.3;
+
+/** For which walls the signal leaves the chord between the two levels as it does at a fringe: bins of the component across
+ *  the chord against distance, an offset on either side taken out, by χ² with the measured noise. Also all walls together, which
+ *  finds what is too weak in any one of them. Only the choice of direction hangs on it: an alarm without a fringe costs
+ *  precision, not truth. */
+export function fringeAlarms(
+  projector: Projector,
+  stretches: Stretches,
+  near: NearestWall,
+  noise: CorrelatedNoise,
+  o: AlarmOptions,
+): boolean[] {
+  const none = Array.from({ length: o.walls }, () => false);
+  if (projector.radialInformation < LEAST_INFORMATION) return none;
+  const bins = 2 * Math.ceil(o.reachNm / o.binNm);
+  const sums = Array.from({ length: o.walls }, () => new Bins(bins));
+  const all = new Bins(bins);
+  const u = new Float64Array(4);
+  const shareAt = new Float64Array(bins);
+  for (let b = 0; b < bins; b++) {
+    kink((b + 0.5 - bins / 2) * o.binNm, o.w, o.sigma, u);
+    shareAt[b] = u[0];
+  }
+  for (const t of stretches.list) {
+    for (let m = t.from; m < t.to; m++) {
+      const pixel = stretches.pixels[m];
+      const d = near.distanceNm[pixel];
+      if (Math.abs(d) >= o.reachNm || Math.abs(d) > stretches.freeNm[m] - o.marginNm) continue;
+      const b = Math.min(bins - 1, Math.max(0, Math.floor(d / o.binNm + bins / 2)));
+      const { value, variance } = projector.across(pixel, shareAt[b]);
+      sums[t.wall].add(b, value, variance);
+      all.add(b, value, variance);
+    }
+  }
+  if (all.tail(shareAt, noise.areaFactor) < o.level) return none.map(() => true);
+  return sums.map((s) => s.tail(shareAt, noise.areaFactor) < o.level);
+}
+
+class Bins {
+  private readonly weight: Float64Array;
+  private readonly sum: Float64Array;
+
+  constructor(readonly count: number) {
+    this.weight = new Float64Array(count);
+    this.sum = new Float64Array(count);
+  }
+
+  add(b: number, value: number, variance: number): void {
+    this.weight[b] += 1 / variance;
+    this.sum[b] += value / variance;
+  }
+
+  /** p-value of a mean that is not a·(1 − u) + b·u over the bins. */
+  tail(share: Float64Array, inflation: number): number {
+    let aa = 0;
+    let ab = 0;
+    let bb = 0;
+    let ay = 0;
+    let by = 0;
+    let used = 0;
+    for (let k = 0; k < this.count; k++) {
+      const w = this.weight[k];
+      if (w === 0) continue;
+      used++;
+      const lo = 1 - share[k];
+      const hi = share[k];
+      aa += w * lo * lo;
+      ab += w * lo * hi;
+      bb += w * hi * hi;
+      ay += lo * this.sum[k];
+      by += hi * this.sum[k];
+    }
+    const det = aa * bb - ab * ab;
+    if (used < 4 || !(det > 1e-9 * aa * bb)) return 1;
+    const a = (ay * bb - by * ab) / det;
+    const b = (by * aa - ay * ab) / det;
+    let chi2 = 0;
+    for (let k = 0; k < this.count; k++) {
+      const w = this.weight[k];
+      if (w === 0) continue;
+      const r = this.sum[k] / w - a * (1 - share[k]) - b * share[k];
+      chi2 += w * r * r;
+    }
+    return chi2UpperTail(chi2 / inflation, used - 2);
+  }
+}
