@@ -21,7 +21,16 @@ function step(name, args) {
 const bin = (p) => path.join(top, "node_modules", p);
 const built = step("strict type check and build", ["scripts/build.mjs"]);
 step("formatter", [bin("prettier/bin/prettier.cjs"), "--check", "--log-level", "warn", "src", "tests", "scripts"]);
-step("linter", [bin("oxlint/bin/oxlint"), "-c", "scripts/oxlint.json", "--type-aware", "--quiet", "src", "tests", "scripts"]);
+step("linter", [
+  bin("oxlint/bin/oxlint"),
+  "-c",
+  "scripts/oxlint.json",
+  "--type-aware",
+  "--quiet",
+  "src",
+  "tests",
+  "scripts",
+]);
 
 if (built) {
   const dir = mkdtempSync(path.join(tmpdir(), "coldseam-test-"));

@@ -21,6 +21,8 @@ export interface AnalyseOptions {
   readonly signal?: AbortSignal;
   /** Called as the work goes on: what is being done, and how far the whole has come. */
   readonly onProgress?: (stage: string, done: number, total: number) => void;
+  /** Called as each stage begins, for measuring. */
+  readonly onStage?: (stage: string) => void;
 }
 
 /** The whole way of one cooldown, from described files to an analysis. Nothing is written but a scratch folder, removed at the end.
@@ -36,14 +38,21 @@ export async function analyse(cooldown: Cooldown, options: AnalyseOptions): Prom
   }
 }
 
-async function analyseWith(runner: Runner, scratch: string, cooldown: Cooldown, options: AnalyseOptions): Promise<Analysis> {
+async function analyseWith(
+  runner: Runner,
+  scratch: string,
+  cooldown: Cooldown,
+  options: AnalyseOptions,
+): Promise<Analysis> {
   const { settings } = options;
   const { frames, tip } = cooldown;
   const run = { scratch, settings };
   const notices: Notice[] = [...cooldown.notices];
   const step = progressOf(frames.length, options);
+  const begin = (stage: string): void => options.onStage?.(stage);
 
   // 1. Clean every frame; full-size rasters stay in the scratch folder.
+  begin("cleaning");
   const cleaned = await runner.map(
     "clean",
     frames.map((info) => ({ ...run, cooldown: { pixel: cooldown.pixel }, info })),
@@ -52,18 +61,22 @@ async function analyseWith(runner: Runner, scratch: string, cooldown: Cooldown, 
   for (const c of cleaned) notices.push(...c.notices);
 
   // 2. Place every frame: pairs near in order first, then every useful pair that the first solution shows to overlap.
+  begin("placing");
   const drifts = await placeFrames(runner, run, cooldown, notices, step("placing"));
 
   // 3. Debris: what stays on the sample while the domains come and go.
+  begin("debris");
   await runner.map("debris", [{ ...run, frames: frames.map((f) => f.frame), drifts, tip }]);
 
   // 4. Levels of the two states, frame by frame, then carried along the temperature.
+  begin("levels");
   const perFrame = frames.map((f) => ({ ...run, frame: f.frame, drift: drifts[f.frame] as Drift, tip }));
   const fits = await runner.map("levels", perFrame, step("levels"));
   const track = trackLevels(fits, frames, settings.states);
   notices.push(...track.notices);
 
   // 5. States, walls, fringes and domains of every frame.
+  begin("measuring");
   const measured = await runner.map(
     "measure",
     perFrame.map((p, k) => ({
@@ -76,13 +89,16 @@ async function analyseWith(runner: Runner, scratch: string, cooldown: Cooldown, 
   );
 
   // 6. What needs the whole cooldown: fringes that survive the number of tests, domain histories, loops.
+  begin("histories");
   const fringes = controlFalseDiscovery(
     measured.flatMap((m) => m.fringes),
     settings.fringes,
   );
   const domains = trackDomains(
-    frames.length,
-    (k) => labelDomains(unpackMap((measured[k] as MeasureOutput).map, cooldown.pixel), k, tip, settings.domains),
+    {
+      count: frames.length,
+      at: (k) => labelDomains(unpackMap((measured[k] as MeasureOutput).map, cooldown.pixel), k, tip, settings.domains),
+    },
     drifts,
     settings.domains,
   );
@@ -155,7 +171,10 @@ async function placeFrames(
 ): Promise<readonly Drift[]> {
   const { frames } = cooldown;
   const s = run.settings.drift;
-  const measure = async (pairs: readonly (readonly [number, number])[], at: readonly Drift[] | null): Promise<PairShift[]> => {
+  const measure = async (
+    pairs: readonly (readonly [number, number])[],
+    at: readonly Drift[] | null,
+  ): Promise<PairShift[]> => {
     return runner.map(
       "pair",
       pairs.map(([reference, moving]) => {
@@ -166,7 +185,9 @@ async function placeFrames(
           ...run,
           reference,
           moving,
-          predicted: known ? { xNm: (b.xNm as number) - (a.xNm as number), yNm: (b.yNm as number) - (a.yNm as number) } : null,
+          predicted: known
+            ? { xNm: (b.xNm as number) - (a.xNm as number), yNm: (b.yNm as number) - (a.yNm as number) }
+            : null,
         };
       }),
       onDone,

@@ -85,7 +85,7 @@ function build(): Command {
     .argument("<dir>", "folder to make")
     .option("--seed <n>", "seed of the invented sample")
     .addOption(new Option("--size <size>", "small is quick to make").choices(["full", "small"]).default("full"))
-    .action(async (dir: string, o: object) => (await import("./demo.js")).demo(dir, o as never));
+    .action(async (dir: string, o: object) => void (await import("./demo.js")).demo(dir, o as never));
 
   return program;
 }
