@@ -1,0 +1,6 @@
+export { prepareForDrift } from "./prepare.js";
+export { choosePairs } from "./choose_pairs.js";
+export { measurePair } from "./pair.js";
+export { solveDrift, type DriftSolution, type LooseGroup } from "./solve.js";
+export type { DriftImage, FailedShift, MeasuredShift, PairShift } from "./types.js";
+export type { DriftSettings } from "./settings.js";
