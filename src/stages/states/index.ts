@@ -1,0 +1,5 @@
+export { fitLevels } from "./fit_levels.js";
+export type { LevelFit, StateEstimate, StateEvidence } from "./level_fit.js";
+export { mapStates } from "./map_states.js";
+export { settings, type StatesSettings } from "./settings.js";
+export { trackLevels } from "./track_levels.js";

@@ -1,0 +1,168 @@
+import type { Tip } from "../../model/cooldown.js";
+import { makeRaster } from "../../model/raster.js";
+import {
+  INSULATING,
+  METALLIC,
+  NO_STATE,
+  type CleanFrame,
+  type FrameLevels,
+  type FrameStates,
+  type Signal,
+} from "../../model/signal.js";
+import { FWHM_PER_SIGMA } from "../../model/units.js";
+import { maskedBlur } from "../../raster/masked_blur.js";
+import { mixedFraction } from "./fraction.js";
+import { clearIslands, fillState } from "./islands.js";
+import type { LevelFit } from "./level_fit.js";
+import { pixelsPerIndependent } from "./noise.js";
+import { correctPixels, readPixels, type Pixels } from "./pixels.js";
+import { projectionOf, type Projection } from "./projection.js";
+import type { StatesSettings } from "./settings.js";
+
+/** Two-sided 95 % of a normal, for what is left of a domain that could have been missed. */
+const LOST_BY_BLUR = 2;
+
+/** Signal, share of the metallic signal, domain map and metallic fraction of one frame.
+ *
+ *  The signal is the clean frame with the row corrections of `fit` taken off. The share is its projection (see `projectionOf`), noise
+ *  and all; the map is read from the share smoothed just enough to keep noise from making domains, its small islands cleared. The
+ *  fraction is of the usable pixels; its interval is for this field of view (see `mixedFraction`). In a frame that holds one state it
+ *  is exactly 0 or 1, and the other end of the interval is the largest domain that could have been missed.
+ *  @param fit what `fitLevels` gave for the same frame, debris and tip
+ *  @param levels what `trackLevels` gave for it
+ *  @returns `states.levels` has the final verdict: `mixed` exactly where the map holds both states */
+export function mapStates(
+  clean: CleanFrame,
+  debris: Uint8Array | null,
+  fit: LevelFit,
+  levels: FrameLevels,
+  tip: Tip | null,
+  s: StatesSettings,
+): { readonly signal: Signal; readonly states: FrameStates } {
+  const raw = readPixels(clean, debris);
+  if (fit.rows !== raw.rows || fit.cols !== raw.cols) {
+    throw new RangeError(`levels of ${fit.rows} × ${fit.cols} pixels for a frame of ${raw.rows} × ${raw.cols}`);
+  }
+  const z = correctPixels(raw, fit.correction);
+  const { rows, cols, pixel } = z;
+  const signal: Signal = {
+    frame: clean.frame,
+    rows,
+    cols,
+    pixel,
+    re: z.re,
+    im: z.hasPhase ? z.im : null,
+    usable: z.usable,
+  };
+  const map = { rows, cols, pixel, states: new Uint8Array(rows * cols).fill(NO_STATE) };
+  const share = new Float32Array(rows * cols).fill(Number.NaN);
+  const result = (final: FrameLevels, fraction: FrameStates["fraction"]): { signal: Signal; states: FrameStates } => ({
+    signal,
+    states: { frame: clean.frame, levels: final, share: makeRaster(share, rows, cols, pixel), map, fraction },
+  });
+  if (levels.verdict === "undecided" || z.count === 0) return result({ ...levels, verdict: "undecided" }, null);
+
+  const e = projectionOf(levels.insulating, levels.metallic, levels.noiseInsulating, levels.noiseMetallic);
+  for (let p = 0; p < share.length; p++) {
+    if (z.usable[p] === 1) share[p] = (z.re[p] * e.eRe + z.im[p] * e.eIm - e.offset) * e.scale;
+  }
+  const noiseSd = Math.sqrt((e.sdInsulating ** 2 + e.sdMetallic ** 2) / 2);
+  const perIndependent = pixelsPerIndependent(levels.noiseCorrelationX, levels.noiseCorrelationY);
+  const smoothingNm = smoothingFor(noiseSd * Math.sqrt(perIndependent), z, tip, s);
+  const u = maskedBlur(share, z.usable, rows, cols, smoothingNm / pixel.xNm, smoothingNm / pixel.yNm).values;
+  for (let p = 0; p < share.length; p++) {
+    if (z.usable[p] === 1) map.states[p] = u[p] > 0.5 ? METALLIC : INSULATING;
+    else u[p] = Number.NaN;
+  }
+  const leastPx = leastDomainPx(z, tip, s);
+  const pixelsOff = (pixels: Int32Array, state: 0 | 1): boolean => onChord(pixels, state, z, share, levels, e);
+  const cleared = clearIslands(map.states, rows, cols, leastPx, pixelsOff);
+  const [insulatingPx, metallicPx] = cleared.totalPx;
+  const rarer = metallicPx < insulatingPx ? METALLIC : INSULATING;
+  // a few lone spots in a frame of one state: believed only from a size that noise and missed particles do not reach
+  if (cleared.largestPx[rarer] < s.leastLoneTips * leastPx) {
+    const state = rarer === METALLIC ? INSULATING : METALLIC;
+    fillState(map.states, state);
+    return result({ ...levels, verdict: state === METALLIC ? "metallic" : "insulating" }, oneStateFraction(state, z, leastPx, tip, s));
+  }
+  const sigmaNm = tip === null ? 0 : tip.resolutionNm / FWHM_PER_SIGMA;
+  const middle = 0.5;
+  const fraction = mixedFraction({
+    rows,
+    cols,
+    pixel,
+    states: map.states,
+    u,
+    blurSigmaNm: Math.hypot(sigmaNm, smoothingNm),
+    blurRelativeSd: tip === null ? 0 : tip.resolutionSdNm / tip.resolutionNm,
+    noiseSd,
+    perIndependent,
+    smoothingNm,
+    thresholdSd: levels.thresholdSd,
+    rowSd: fit.rowLogGainSd,
+    rowWalkSd: fit.rowWalkSd,
+    rowWhiteSd: fit.rowWhiteSd,
+    // a gain g moves the halfway signal v by g v: in units of u
+    perLogGain: Math.abs(e.offset * e.scale + middle),
+  });
+  return result({ ...levels, verdict: "mixed" }, fraction);
+}
+
+/** Smoothing of the map in nm: enough that its noise is a small share of the contrast, within the limits of the settings. */
+function smoothingFor(noiseSd: number, z: Pixels, tip: Tip | null, s: StatesSettings): number {
+  const pixelNm = Math.sqrt(z.pixel.xNm * z.pixel.yNm);
+  const tipNm = tip === null ? 1.3 * pixelNm : tip.resolutionNm / FWHM_PER_SIGMA;
+  const least = Math.max(s.leastSmoothingPx * pixelNm, s.smoothingTipSigmas * tipNm);
+  const needed = (noiseSd / s.smoothingNoise / (2 * Math.sqrt(Math.PI))) * pixelNm;
+  return Math.max(least, Math.min(needed, Math.max(tipNm, pixelNm)));
+}
+
+function leastDomainPx(z: Pixels, tip: Tip | null, s: StatesSettings): number {
+  const pixelArea = z.pixel.xNm * z.pixel.yNm;
+  const areaNm2 = s.leastDomainNm2 > 0 ? s.leastDomainNm2 : tip === null ? 0 : Math.PI * (tip.resolutionNm / 2) ** 2;
+  return Math.max(s.leastDomainPx, areaNm2 / pixelArea);
+}
+
+/** An island whose signal lies far off the line between the two levels, or far beyond them, is a particle and not a domain. */
+const OFF_CHORD = 0.35;
+const BEYOND = 1.5;
+
+function onChord(
+  pixels: Int32Array,
+  state: 0 | 1,
+  z: Pixels,
+  share: Float32Array,
+  levels: FrameLevels,
+  e: Projection,
+): boolean {
+  const { insulating, metallic } = levels;
+  const dRe = metallic.re - insulating.re;
+  const dIm = metallic.im - insulating.im;
+  const d2 = dRe * dRe + dIm * dIm;
+  let [n, re, im, u] = [0, 0, 0, 0];
+  for (const p of pixels) {
+    n++;
+    re += z.re[p] - insulating.re;
+    im += z.im[p] - insulating.im;
+    u += share[p];
+  }
+  const off = Math.abs((im * dRe - re * dIm) / n / d2);
+  const noise = Math.max(e.sdInsulating, e.sdMetallic) / Math.sqrt(n);
+  const reach = state === METALLIC ? u / n : 1 - u / n;
+  return (!z.hasPhase || off < OFF_CHORD + 3 * noise) && reach < BEYOND + 3 * noise;
+}
+
+/** Exactly 0 or 1, with the largest domain that could have been missed as the other end of the interval: the least area, made smaller
+ *  by the blur of a round domain. */
+function oneStateFraction(
+  state: 0 | 1,
+  z: Pixels,
+  leastPx: number,
+  tip: Tip | null,
+  s: StatesSettings,
+): { value: number; low: number; high: number } {
+  const sigmaNm = tip === null ? 0 : tip.resolutionNm / FWHM_PER_SIGMA;
+  const lost = (LOST_BY_BLUR * Math.PI * sigmaNm * sigmaNm) / (z.pixel.xNm * z.pixel.yNm);
+  const missed = Math.min(1, (s.leastLoneTips * leastPx + lost) / z.count);
+  return state === METALLIC ? { value: 1, low: 1 - missed, high: 1 } : { value: 0, low: 0, high: missed };
+}

@@ -1,0 +1,94 @@
+import type { CleanFrame } from "../../model/signal.js";
+import { colsOf, dataOf, rowsOf, type PixelSize } from "../../model/raster.js";
+
+/** The complex near-field signal z = amplitude · exp(i·phase) of one frame, row-major. Without an optical phase `im` is all 0. */
+export interface Pixels {
+  readonly rows: number;
+  readonly cols: number;
+  readonly pixel: PixelSize;
+  readonly re: Float32Array;
+  readonly im: Float32Array;
+  readonly hasPhase: boolean;
+  /** 1 = measured in every channel used, no scar, no debris. */
+  readonly usable: Uint8Array;
+  readonly count: number;
+}
+
+/** What is taken off a frame on top of its cleaning: z · exp(−(g_row + slope·x)) · exp(−i·phase_row), x from −½ to ½ over the columns. */
+export interface RowCorrection {
+  readonly logGain: Float32Array;
+  readonly phaseRad: Float32Array;
+  /** Change of the logarithm of the gain from the first to the last column. */
+  readonly columnLogGain: number;
+  readonly columnPhaseRad: number;
+}
+
+export function noCorrection(rows: number): RowCorrection {
+  return {
+    logGain: new Float32Array(rows),
+    phaseRad: new Float32Array(rows),
+    columnLogGain: 0,
+    columnPhaseRad: 0,
+  };
+}
+
+/** z of every usable pixel of a clean frame. Unusable pixels hold 0 and must not be read.
+ *  @param debris 1 = debris, the frame's shape; null = none known */
+export function readPixels(clean: CleanFrame, debris: Uint8Array | null): Pixels {
+  const rows = rowsOf(clean.amplitude);
+  const cols = colsOf(clean.amplitude);
+  const n = rows * cols;
+  if (debris !== null && debris.length !== n) {
+    throw new RangeError(`debris of ${debris.length} values for ${rows} × ${cols} pixels`);
+  }
+  const amplitude = dataOf(clean.amplitude);
+  const phase = clean.phase === null ? null : dataOf(clean.phase);
+  const re = new Float32Array(n);
+  const im = new Float32Array(n);
+  const usable = new Uint8Array(n);
+  let count = 0;
+  for (let p = 0; p < n; p++) {
+    const a = amplitude[p];
+    if (!Number.isFinite(a) || (debris !== null && debris[p] !== 0)) continue;
+    if (phase === null) {
+      re[p] = a;
+    } else {
+      const angle = phase[p];
+      if (!Number.isFinite(angle)) continue;
+      re[p] = a * Math.cos(angle);
+      im[p] = a * Math.sin(angle);
+    }
+    usable[p] = 1;
+    count++;
+  }
+  return { rows, cols, pixel: clean.pixel, re, im, hasPhase: phase !== null, usable, count };
+}
+
+/** The pixels with `correction` taken off; new arrays for the signal, the same mask. */
+export function correctPixels(pixels: Pixels, correction: RowCorrection): Pixels {
+  const { rows, cols } = pixels;
+  const re = new Float32Array(pixels.re.length);
+  const im = new Float32Array(pixels.im.length);
+  const columnRe = new Float64Array(cols);
+  const columnIm = new Float64Array(cols);
+  for (let j = 0; j < cols; j++) {
+    const x = (j + 0.5) / cols - 0.5;
+    const g = Math.exp(-correction.columnLogGain * x);
+    columnRe[j] = g * Math.cos(correction.columnPhaseRad * x);
+    columnIm[j] = -g * Math.sin(correction.columnPhaseRad * x);
+  }
+  for (let i = 0; i < rows; i++) {
+    const g = Math.exp(-correction.logGain[i]);
+    const c = g * Math.cos(correction.phaseRad[i]);
+    const s = -g * Math.sin(correction.phaseRad[i]);
+    for (let j = 0, p = i * cols; j < cols; j++, p++) {
+      const fr = c * columnRe[j] - s * columnIm[j];
+      const fi = c * columnIm[j] + s * columnRe[j];
+      const a = pixels.re[p];
+      const b = pixels.im[p];
+      re[p] = a * fr - b * fi;
+      im[p] = a * fi + b * fr;
+    }
+  }
+  return { ...pixels, re, im };
+}

@@ -1,0 +1,124 @@
+import type { ComplexValue } from "../../model/signal.js";
+import { RISE_PER_W } from "../../model/units.js";
+import { distanceToBoundary } from "./distance.js";
+import type { Pixels } from "./pixels.js";
+
+/** Pixels whose state is known, with the small share of the other one that the tail of the nearest wall leaves there. */
+export interface PurePixels {
+  /** 0 or 1 for the two states, 255 for all others. */
+  readonly state: Uint8Array;
+  /** Expected share of state 1. */
+  readonly share: Float32Array;
+  readonly count: readonly [number, number];
+  /** Mean share of the wrong state that the tail of the walls puts into each. */
+  readonly tail: readonly [number, number];
+  /** 10–90 rise of the walls in the smoothed map, nm; NaN where there is no wall. */
+  readonly apparentWidthNm: number;
+}
+
+/** Distances from a wall tried, in its apparent 10–90 widths: the farthest that leaves pixels enough. At 1.25 widths a tanh wall has
+ *  0.4 % of the other state, at 0.5 widths 10 %. */
+const REACHES = [1.6, 1.4, 1.25, 1.1, 1, 0.9, 0.8, 0.7, 0.6, 0.5] as const;
+/** Pixels of one state that are enough to stop coming nearer to the walls. */
+const ENOUGH = 600;
+const ENOUGH_SHARE = 0.02;
+
+/** Mean 10–90 rise of the walls of a smoothed map of the mixing u, without tracing them: by the co-area formula
+ *  ∫ L(c) dc = Σ |∇u| p² over 0.25 < u < 0.75, L(c) being the length of the contour u = c; the band's area over its length is
+ *  2 w artanh ½ for u = ½(1 + tanh(x/w)). */
+export function apparentWidth(u: Float32Array, z: Pixels): number {
+  const { rows, cols } = z;
+  let band = 0;
+  let slopes = 0;
+  for (let i = 1; i < rows - 1; i++) {
+    for (let j = 1; j < cols - 1; j++) {
+      const p = i * cols + j;
+      if (!(u[p] > 0.25 && u[p] < 0.75) || z.usable[p] === 0) continue;
+      const gx = (u[p + 1] - u[p - 1]) / (2 * z.pixel.xNm);
+      const gy = (u[p + cols] - u[p - cols]) / (2 * z.pixel.yNm);
+      const g = Math.sqrt(gx * gx + gy * gy);
+      if (!Number.isFinite(g)) continue;
+      band++;
+      slopes += g;
+    }
+  }
+  if (band === 0) return Number.NaN;
+  const w = (band * 0.5) / (slopes * 2 * Math.atanh(0.5));
+  return RISE_PER_W * w;
+}
+
+/** Pixels far from any wall of a smoothed map of the mixing u (NaN outside), on either side of u = ½.
+ *  Each state takes the farthest reach that leaves it enough pixels, and never less than half a width. */
+export function purePixels(u: Float32Array, z: Pixels): PurePixels {
+  const n = u.length;
+  const labels = new Uint8Array(n);
+  for (let p = 0; p < n; p++) labels[p] = z.usable[p] === 0 || Number.isNaN(u[p]) ? 255 : u[p] > 0.5 ? 1 : 0;
+  const distance = distanceToBoundary(labels, z.rows, z.cols, z.pixel);
+  const widthNm = apparentWidth(u, z);
+  const w = widthNm / RISE_PER_W;
+  const counts = [new Float64Array(REACHES.length), new Float64Array(REACHES.length)];
+  for (let p = 0; p < n; p++) {
+    if (labels[p] > 1) continue;
+    const d = Number.isNaN(widthNm) ? Infinity : distance[p] / widthNm;
+    for (let r = REACHES.length - 1; r >= 0 && d >= REACHES[r]; r--) counts[labels[p]][r]++;
+  }
+  const enough = Math.max(ENOUGH, ENOUGH_SHARE * z.count);
+  const reach = counts.map((c) => {
+    const r = c.findIndex((v) => v >= enough);
+    return REACHES[r < 0 ? REACHES.length - 1 : r] * (Number.isNaN(widthNm) ? 0 : widthNm);
+  });
+  const state = new Uint8Array(n).fill(255);
+  const share = new Float32Array(n);
+  const count: [number, number] = [0, 0];
+  const tail: [number, number] = [0, 0];
+  for (let p = 0; p < n; p++) {
+    const k = labels[p];
+    if (k > 1 || !(distance[p] >= reach[k])) continue;
+    const other = Number.isFinite(distance[p]) && w > 0 ? 0.5 * (1 - Math.tanh(distance[p] / w)) : 0;
+    state[p] = k;
+    share[p] = k === 0 ? other : 1 - other;
+    count[k]++;
+    tail[k] += other;
+  }
+  tail[0] /= Math.max(1, count[0]);
+  tail[1] /= Math.max(1, count[1]);
+  return { state, share, count, tail, apparentWidthNm: widthNm };
+}
+
+/** Both levels from pure pixels, by least squares on z = (1 − u) z_0 + u z_1 with the expected u of each pixel; pixels further than
+ *  `clip` from the levels given first are left out. */
+export function levelsOf(
+  z: Pixels,
+  pure: PurePixels,
+  before: readonly [ComplexValue, ComplexValue] | null,
+  clip2: number,
+): [ComplexValue, ComplexValue] {
+  let [aa, ab, bb, ar, ai, br, bi] = [0, 0, 0, 0, 0, 0, 0];
+  for (let p = 0; p < pure.state.length; p++) {
+    if (pure.state[p] > 1) continue;
+    const u = pure.share[p];
+    const v = 1 - u;
+    if (before !== null) {
+      const dr = z.re[p] - v * before[0].re - u * before[1].re;
+      const di = z.im[p] - v * before[0].im - u * before[1].im;
+      if (dr * dr + di * di > clip2) continue;
+    }
+    aa += v * v;
+    ab += u * v;
+    bb += u * u;
+    ar += v * z.re[p];
+    ai += v * z.im[p];
+    br += u * z.re[p];
+    bi += u * z.im[p];
+  }
+  const det = aa * bb - ab * ab;
+  if (!(det > 1e-9 * aa * bb) || aa === 0 || bb === 0) {
+    const one: ComplexValue = { re: aa > 0 ? ar / aa : Number.NaN, im: aa > 0 ? ai / aa : Number.NaN };
+    const other: ComplexValue = { re: bb > 0 ? br / bb : Number.NaN, im: bb > 0 ? bi / bb : Number.NaN };
+    return [one, other];
+  }
+  return [
+    { re: (bb * ar - ab * br) / det, im: (bb * ai - ab * bi) / det },
+    { re: (aa * br - ab * ar) / det, im: (aa * bi - ab * ai) / det },
+  ];
+}

@@ -1,0 +1,113 @@
+import type { ComplexValue, NoiseCovariance } from "../../model/signal.js";
+import type { Pixels, RowCorrection } from "./pixels.js";
+import type { PurePixels } from "./pure.js";
+import { smoothRows, type SmoothedRows } from "./row_smoother.js";
+
+/** A row with fewer pure pixels has no measurement of its own. */
+const LEAST_IN_ROW = 4;
+const CLIP2 = 16;
+/** A gradient along the columns is taken off when it stands out by this many standard deviations. */
+const COLUMN_SIGMAS = 3;
+
+export interface RowRefinement {
+  readonly correction: RowCorrection;
+  readonly gain: SmoothedRows;
+  readonly phase: SmoothedRows;
+}
+
+/** Noise of one state along its own level (amplitude) and across it (phase), as variances. */
+function radialAndAcross(level: ComplexValue, c: NoiseCovariance): [number, number] {
+  const m2 = Math.max(level.re * level.re + level.im * level.im, 1e-30);
+  const cross = (2 * c.ri * level.re * level.im) / m2;
+  const radial = (c.rr * level.re * level.re + c.ii * level.im * level.im) / m2 + cross;
+  const across = (c.rr * level.im * level.im + c.ii * level.re * level.re) / m2 - cross;
+  const least = 1e-12 * m2;
+  return [Math.max(radial, least), Math.max(across, least)];
+}
+
+/** What is left of the gain and phase of each row, from pixels of known state: z/z_expected averaged along the row with the weights of
+ *  the noise, then smoothed along the rows by its measured variance. The mean over the rows is left to the levels.
+ *  @param z the frame with `before` already taken off
+ *  @param inflation pixels per independent pixel along a row
+ *  @returns the whole correction, `before` included */
+export function refineRows(
+  z: Pixels,
+  pure: PurePixels,
+  levels: readonly [ComplexValue, ComplexValue],
+  noise: readonly [NoiseCovariance, NoiseCovariance],
+  before: RowCorrection,
+  inflation: number,
+): RowRefinement {
+  const { rows, cols } = z;
+  const [a0, a1] = levels;
+  const parts = [radialAndAcross(a0, noise[0]), radialAndAcross(a1, noise[1])] as const;
+  const gain = new Float64Array(rows);
+  const phase = new Float64Array(rows);
+  const gainSd = new Float64Array(rows).fill(Infinity);
+  const phaseSd = new Float64Array(rows).fill(Infinity);
+  // moments along the columns, for a gradient: Σ w x², Σ w x y with the row's mean taken out
+  let [gxx, gxy, pxx, pxy] = [0, 0, 0, 0];
+  for (let i = 0; i < rows; i++) {
+    let [n, wg, wp, sg, sp, xg, xp, xxg, xxp, xyg, xyp] = [0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0];
+    for (let j = 0; j < cols; j++) {
+      const p = i * cols + j;
+      const k = pure.state[p];
+      if (k > 1) continue;
+      const u = pure.share[p];
+      const er = u === 0 ? a0.re : u === 1 ? a1.re : (1 - u) * a0.re + u * a1.re;
+      const ei = u === 0 ? a0.im : u === 1 ? a1.im : (1 - u) * a0.im + u * a1.im;
+      const m2 = er * er + ei * ei;
+      if (!(m2 > 0)) continue;
+      const dr = z.re[p] - er;
+      const di = z.im[p] - ei;
+      const [radial, across] = parts[k as 0 | 1];
+      if (dr * dr + di * di > CLIP2 * (radial + across)) continue;
+      const x = (j + 0.5) / cols - 0.5;
+      const g = (dr * er + di * ei) / m2;
+      const f = (di * er - dr * ei) / m2;
+      const wGain = m2 / radial;
+      const wPhase = m2 / across;
+      n++;
+      wg += wGain;
+      wp += wPhase;
+      sg += wGain * g;
+      sp += wPhase * f;
+      xg += wGain * x;
+      xp += wPhase * x;
+      xxg += wGain * x * x;
+      xxp += wPhase * x * x;
+      xyg += wGain * x * g;
+      xyp += wPhase * x * f;
+    }
+    if (n < LEAST_IN_ROW) continue;
+    gain[i] = before.logGain[i] + Math.log1p(Math.max(-0.9, sg / wg));
+    phase[i] = before.phaseRad[i] + sp / wp;
+    gainSd[i] = Math.sqrt(inflation / wg);
+    phaseSd[i] = Math.sqrt(inflation / wp);
+    gxx += xxg - (xg * xg) / wg;
+    gxy += xyg - (xg * sg) / wg;
+    pxx += xxp - (xp * xp) / wp;
+    pxy += xyp - (xp * sp) / wp;
+  }
+  const smoothGain = smoothRows(gain, gainSd);
+  const smoothPhase = z.hasPhase
+    ? smoothRows(phase, phaseSd)
+    : { offset: new Float64Array(rows), measurementSd: phaseSd, walkSd: 0, whiteSd: 0 };
+  const steep = (xy: number, xx: number): number => {
+    const slope = xy / xx;
+    return xx > 0 && Math.abs(slope) > COLUMN_SIGMAS * Math.sqrt(inflation / xx) ? slope : 0;
+  };
+  const correction: RowCorrection = {
+    logGain: withoutMean(smoothGain.offset),
+    phaseRad: withoutMean(smoothPhase.offset),
+    columnLogGain: before.columnLogGain + steep(gxy, gxx),
+    columnPhaseRad: before.columnPhaseRad + (z.hasPhase ? steep(pxy, pxx) : 0),
+  };
+  return { correction, gain: smoothGain, phase: smoothPhase };
+}
+
+function withoutMean(offset: Float64Array): Float32Array {
+  let mean = 0;
+  for (const v of offset) mean += v / offset.length;
+  return Float32Array.from(offset, (v) => v - mean);
+}

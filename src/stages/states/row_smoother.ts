@@ -1,0 +1,160 @@
+/** What is left of the row offsets: b_i = x_i + w_i, x a random walk along the rows (what a chain of row differences leaves
+ *  behind), w independent from row to row (line noise). Measured y_i = b_i + e_i, sd of e_i known; rows without a measurement have
+ *  an infinite one. */
+export interface SmoothedRows {
+  /** Most probable b_i; its mean over the rows is not removed. */
+  readonly offset: Float64Array;
+  /** Standard deviation of a row's own measurement, Infinity where there is none. */
+  readonly measurementSd: Float64Array;
+  /** Standard deviations of one step of the walk and of the independent part. */
+  readonly walkSd: number;
+  readonly whiteSd: number;
+}
+
+/** Steps in units of the typical measurement sd tried for either standard deviation. */
+const LADDER = [0, 0.1, 0.2, 0.35, 0.6, 1, 1.8, 3, 6, 12];
+/** A variance that stands for "nothing known". */
+const DIFFUSE = 1e8;
+
+/** Local-level model with an independent part; both variances by maximum likelihood on a ladder through the Kalman filter.
+ *  Where line noise is far below what the pixels of a row can tell, both come out as 0 and the offsets as one constant: a correction
+ *  that would only add noise is not made.
+ *  Source: Harvey 1989, Forecasting, Structural Time Series Models and the Kalman Filter, ch. 2. */
+export function smoothRows(y: Float64Array, measurementSd: Float64Array): SmoothedRows {
+  const known: number[] = [];
+  for (const s of measurementSd) if (Number.isFinite(s)) known.push(s);
+  const n = y.length;
+  if (known.length < 8) {
+    return { offset: new Float64Array(n), measurementSd, walkSd: 0, whiteSd: 0 };
+  }
+  known.sort((p, q) => p - q);
+  const unit = known[known.length >> 1];
+  let best = Infinity;
+  let walkSd = 0;
+  let whiteSd = 0;
+  for (const white of LADDER) {
+    for (const walk of LADDER) {
+      // a walk reaches far with small steps: its ladder starts lower
+      const value = minusTwoLogL(y, measurementSd, walk * unit * 0.3, white * unit);
+      if (value < best - 1e-9) [best, walkSd, whiteSd] = [value, walk * unit * 0.3, white * unit];
+    }
+  }
+  const x = smoothWalk(y, measurementSd, walkSd, whiteSd);
+  const offset = new Float64Array(n);
+  const white2 = whiteSd * whiteSd;
+  for (let i = 0; i < n; i++) {
+    const s2 = measurementSd[i] * measurementSd[i];
+    offset[i] = x[i] + (Number.isFinite(s2) && white2 > 0 ? (white2 / (white2 + s2)) * (y[i] - x[i]) : 0);
+  }
+  return { offset, measurementSd, walkSd, whiteSd };
+}
+
+function minusTwoLogL(y: Float64Array, sd: Float64Array, walkSd: number, whiteSd: number): number {
+  let a = 0;
+  let p = DIFFUSE;
+  let value = 0;
+  let first = true;
+  const q = walkSd * walkSd;
+  const w2 = whiteSd * whiteSd;
+  for (let i = 0; i < y.length; i++) {
+    if (i > 0) p += q;
+    if (!Number.isFinite(sd[i])) continue;
+    const f = p + w2 + sd[i] * sd[i];
+    const innovation = y[i] - a;
+    if (!first) value += Math.log(f) + (innovation * innovation) / f;
+    first = false;
+    const gain = p / f;
+    a += gain * innovation;
+    p -= gain * p;
+  }
+  return value;
+}
+
+/** Diagonal of the posterior precision of the walk; off-diagonals are −1/q. */
+function walkPrecision(sd: Float64Array, walkSd: number, whiteSd: number): { diagonal: Float64Array; link: number } {
+  const n = sd.length;
+  const link = 1 / Math.max(walkSd * walkSd, 1e-20);
+  const diagonal = new Float64Array(n);
+  for (let i = 0; i < n; i++) {
+    const v = sd[i] * sd[i] + whiteSd * whiteSd;
+    diagonal[i] = (Number.isFinite(v) ? 1 / v : 0) + (i > 0 ? link : 0) + (i + 1 < n ? link : 0);
+  }
+  return { diagonal, link };
+}
+
+/** Solves the tridiagonal system with `diagonal` and −link beside it (Thomas algorithm). */
+function solveTridiagonal(diagonal: Float64Array, link: number, rhs: Float64Array): Float64Array {
+  const n = diagonal.length;
+  const c = new Float64Array(n);
+  const x = new Float64Array(n);
+  let m = diagonal[0];
+  c[0] = -link / m;
+  x[0] = rhs[0] / m;
+  for (let i = 1; i < n; i++) {
+    m = diagonal[i] + link * c[i - 1];
+    c[i] = -link / m;
+    x[i] = (rhs[i] + link * x[i - 1]) / m;
+  }
+  for (let i = n - 2; i >= 0; i--) x[i] -= c[i] * x[i + 1];
+  return x;
+}
+
+function smoothWalk(y: Float64Array, sd: Float64Array, walkSd: number, whiteSd: number): Float64Array {
+  const n = y.length;
+  if (walkSd === 0) {
+    let sum = 0;
+    let weights = 0;
+    for (let i = 0; i < n; i++) {
+      if (!Number.isFinite(sd[i])) continue;
+      const w = 1 / (sd[i] * sd[i] + whiteSd * whiteSd);
+      sum += w * y[i];
+      weights += w;
+    }
+    return new Float64Array(n).fill(weights > 0 ? sum / weights : 0);
+  }
+  const { diagonal, link } = walkPrecision(sd, walkSd, whiteSd);
+  const rhs = new Float64Array(n);
+  for (let i = 0; i < n; i++) {
+    if (Number.isFinite(sd[i])) rhs[i] = y[i] / (sd[i] * sd[i] + whiteSd * whiteSd);
+  }
+  return solveTridiagonal(diagonal, link, rhs);
+}
+
+/** Variance that the remaining errors of the row offsets give to Σ c_i b_i, the common part of all rows left out (it belongs to the
+ *  levels, which are fitted to the same pixels). */
+export function offsetVariance(
+  c: Float64Array,
+  measurementSd: ArrayLike<number>,
+  walkSd: number,
+  whiteSd: number,
+): number {
+  const n = c.length;
+  const sd = Float64Array.from(measurementSd);
+  const white2 = whiteSd * whiteSd;
+  let variance = 0;
+  const left = new Float64Array(n);
+  for (let i = 0; i < n; i++) {
+    const s2 = sd[i] * sd[i];
+    const known = Number.isFinite(s2);
+    variance += c[i] * c[i] * (known ? (white2 * s2) / (white2 + s2 || 1) : white2);
+    left[i] = c[i] * (known ? s2 / (white2 + s2 || 1) : 1);
+  }
+  if (walkSd === 0) return variance;
+  // the common part is measured by every row together
+  let sum = 0;
+  let weights = 0;
+  const share = new Float64Array(n);
+  for (let i = 0; i < n; i++) {
+    sum += left[i];
+    const v = sd[i] * sd[i] + white2;
+    if (Number.isFinite(v)) {
+      share[i] = 1 / v;
+      weights += share[i];
+    }
+  }
+  if (weights > 0) for (let i = 0; i < n; i++) left[i] -= (sum * share[i]) / weights;
+  const { diagonal, link } = walkPrecision(sd, walkSd, whiteSd);
+  const solved = solveTridiagonal(diagonal, link, left);
+  for (let i = 0; i < n; i++) variance += left[i] * solved[i];
+  return variance;
+}
