@@ -20,7 +20,7 @@ export function kaplanMeier(time: ArrayLike<number>, event: ArrayLike<number | b
   const steps: SurvivalStep[] = [];
   let survival = 1;
   let greenwood = 0;
-  for (let k = 0; k < n; ) {
+  for (let k = 0; k < n;) {
     const t = time[order[k]];
     const atRisk = n - k;
     let events = 0;

@@ -32,6 +32,9 @@ export interface LeastSquaresFit {
   readonly iterations: number;
 }
 
+/** The largest norms seen fade by this much a step: kept for ever, one wild Jacobian far away would hold its parameter fast. */
+const FORGETTING = 0.9;
+
 /** How far along a step its bend is probed. */
 const PROBE = 0.1;
 
@@ -59,7 +62,7 @@ export function leastSquares(
   const factor = new Float64Array(n * n);
   const gradient = new Float64Array(n);
   const step = new Float64Array(n);
-  /** Column norms of this Jacobian, and the largest seen, which scale the damping. */
+  /** Column norms of this Jacobian, and the largest seen of late, which scale the damping. */
   const norms = new Float64Array(n);
   const damped = new Float64Array(n);
   const bend = options.acceleration === true ? new Float64Array(n) : null;
@@ -210,7 +213,7 @@ function formNormal(
   }
   for (let a = 0; a < n; a++) {
     norms[a] = Math.sqrt(normal[a * n + a]) || 1;
-    damped[a] = Math.max(damped[a], norms[a]);
+    damped[a] = Math.max(FORGETTING * damped[a], norms[a]);
   }
   for (let a = 0; a < n; a++) {
     gradient[a] /= norms[a];
