@@ -101,6 +101,7 @@ async function analyseWith(
     },
     drifts,
     settings.domains,
+    tip,
   );
   const loops = findLoops(
     frames.map((f, k) => ({
