@@ -15,9 +15,14 @@ export interface Projection {
 /** How much of the chord's separation may be given up to be blind to fringes. */
 const ENOUGH_OF_CHORD = 0.7;
 
-/** Direction for the share. z = (1 − u) z_I + u z_M is affine in u along any direction; along z_M itself a small turn of the metallic
- *  signal's phase (a fringe beside the wall) changes nothing to first order, while along the chord z_M − z_I it bends the profile.
- *  z_M is taken where it separates the states nearly as well as the chord does, else the chord (contrast mostly in the phase). */
+/** Where between the states the direction is taken. */
+const DIRECTION_AT = 0.7;
+
+/** Direction for the share. z = (1 − u) z_I + u z_M is affine in u along any direction; along z itself a small turn of the phase (a
+ *  fringe beside the wall) changes nothing to first order, while along the chord z_M − z_I it bends the profile. A fringe that turns
+ *  all of the signal asks for the direction of z at the wall, u = ½; one that turns its metallic part for that of z_M: the direction
+ *  between them leaves little of either. It is taken where it separates the states nearly as well as the chord does, else the chord
+ *  (contrast mostly in the phase). */
 export function projectionOf(
   insulating: ComplexValue,
   metallic: ComplexValue,
@@ -46,7 +51,7 @@ export function projectionOf(
     };
   };
   const chord = along(dRe, dIm);
-  const radial = along(metallic.re, metallic.im);
+  const radial = along(insulating.re + DIRECTION_AT * dRe, insulating.im + DIRECTION_AT * dIm);
   // the sign counts: a metallic state of lower amplitude has a falling projection, which serves as well
   return Math.abs(radial.separation) >= ENOUGH_OF_CHORD * chord.separation ? radial.projection : chord.projection;
 }
