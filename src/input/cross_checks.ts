@@ -1,10 +1,17 @@
 import type { Problem } from "../model/errors.js";
-import type { CooldownEntry } from "./schema.js";
+import { cooldownSchema } from "./schema.js";
 import type { YamlDocument } from "./yaml_document.js";
 
-/** What is wrong between keys that are each right in themselves. */
-export function crossProblems(y: CooldownEntry, doc: YamlDocument): Problem[] {
+/** What is wrong between keys that are each right in themselves, whatever else is wrong in the file. */
+export function crossProblems(doc: YamlDocument): Problem[] {
   const problems: Problem[] = [];
+  const { light: lightPart, channels, tip: tipPart } = cooldownSchema.shape;
+  const top = (typeof doc.value === "object" && doc.value !== null ? doc.value : {}) as Record<string, unknown>;
+  const y = {
+    light: lightPart.safeParse(top["light"]).data,
+    channels: channels.safeParse(top["channels"]).data,
+    tip: tipPart.safeParse(top["tip"]).data,
+  };
   const light = y.light === undefined ? null : Object.values(y.light).filter((v) => v !== undefined).length;
   if (light !== null && light !== 1) {
     problems.push({

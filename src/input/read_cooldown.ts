@@ -1,5 +1,5 @@
 import { dirname, resolve } from "node:path";
-import { CHANNELS, type ChannelName, type Cooldown, type FrameInfo, type SourceFile } from "../model/cooldown.js";
+import { CHANNELS, type Cooldown, type FrameInfo, type SourceFile } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
 import { plainText } from "../model/text.js";
 import { checkImages, type CheckedFrame } from "./check_images.js";
@@ -32,10 +32,9 @@ export async function readCooldown(yamlFile: string, options: ReadOptions = {}):
   const folder = dirname(yamlPath);
   const yaml = readYaml(yamlPath, yamlFile);
   const doc = parseYaml(yaml.toString("utf8"), plainText(yamlFile));
-  const problems: Problem[] = [];
   const whole = cooldownSchema.safeParse(doc.value);
-  if (whole.success) problems.push(...crossProblems(whole.data, doc));
-  else problems.push(...schemaProblems(whole.error.issues, doc));
+  const problems: Problem[] = whole.success ? [] : schemaProblems(whole.error.issues, doc);
+  problems.push(...crossProblems(doc));
 
   // Each series that is sound in itself is followed to its files even where something else is wrong: all is told in one go.
   const entries = seriesEntries(doc);
@@ -43,7 +42,7 @@ export async function readCooldown(yamlFile: string, options: ReadOptions = {}):
   const written = entries.map((s) => writtenSeries(s.entry, ["series", s.index], context));
   const scales = channelScales(whole.success ? whole.data.channels : undefined);
   const checked = await checkImages(written, scales, problems);
-  if (problems.length > 0 || !whole.success) throw new InputError(problems);
+  if (problems.length > 0 || !whole.success) throw new InputError(problems.sort(byPlace(plainText(yamlFile))));
 
   const frames = numberFrames(entries, checked);
   return {
@@ -52,6 +51,18 @@ export async function readCooldown(yamlFile: string, options: ReadOptions = {}):
     frames,
     sources: options.hashSources === false ? [] : await hashAll(yamlPath, folder, yaml, written, frames),
     notices: checkOrder(frames, pixelOf(whole.data), whole.data.tip?.resolution_nm ?? null),
+  };
+}
+
+/** Problems of the YAML file first, in its order; the others as they came. */
+function byPlace(yamlName: string): (a: Problem, b: Problem) => number {
+  const place = (p: Problem): number => {
+    const m = p.at.startsWith(`${yamlName}:`) ? /:(\d+):(\d+)$/.exec(p.at) : null;
+    return m === null ? Infinity : Number(m[1]) * 1e5 + Number(m[2]);
+  };
+  return (a, b) => {
+    const [x, y] = [place(a), place(b)];
+    return x === y ? 0 : x - y;
   };
 }
 
@@ -140,7 +151,7 @@ async function hashAll(
   const out = new Map<string, SourceFile>([[yamlPath, sourceOf(yamlPath, folder, yaml)]]);
   for (const s of written) if (s.table !== null) out.set(s.table.path, sourceOf(s.table.path, folder, s.table.bytes));
   for (const frame of frames) {
-    for (const channel of CHANNELS satisfies readonly ChannelName[]) {
+    for (const channel of CHANNELS) {
       const file = frame.sources[channel]?.file;
       if (file !== undefined && !out.has(file)) out.set(file, await hashFile(file, shownPath(folder, file)));
     }

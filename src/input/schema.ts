@@ -45,6 +45,8 @@ export type ChannelsEntry = NonNullable<CooldownEntry["channels"]>;
 interface KeyWords {
   readonly expected: string;
   readonly fix: string;
+  /** What to do where the key is missing, if that is something else. */
+  readonly add?: string;
 }
 
 const fileWords: KeyWords = {
@@ -54,8 +56,16 @@ const fileWords: KeyWords = {
 
 /** What each key must hold, in words; `[]` stands for any place in a list. Also the list of keys there are. */
 export const keyWords: Readonly<Record<string, KeyWords>> = {
-  sample: { expected: "the sample's name, as text", fix: "write it in quotes if it is a number" },
-  cooldown: { expected: "the cooldown's own name, as text", fix: "write it in quotes if it is a number" },
+  sample: {
+    expected: "the sample's name, as text",
+    fix: "write it in quotes if it is a number",
+    add: "add for example `sample: KV-14`",
+  },
+  cooldown: {
+    expected: "the cooldown's own name, as text",
+    fix: "write it in quotes if it is a number",
+    add: "add a name that no other cooldown has, for example `cooldown: kv14-run3`",
+  },
   region: { expected: "a name, as text", fix: "write it in quotes if it is a number, or leave it out" },
   scan: { expected: "a map with pixel_size_nm", fix: "add `scan: { pixel_size_nm: [10, 10] }` with your pixel size" },
   "scan.pixel_size_nm": {

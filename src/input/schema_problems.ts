@@ -4,34 +4,45 @@ import { closestWord, plainText } from "../model/text.js";
 import { keyWords } from "./schema.js";
 import type { Step, YamlDocument } from "./yaml_document.js";
 
-/** What the schema found, as problems with line and column, in words that say what was found and what to write. */
+/**
+ * What the schema found, as problems with line and column, in words that say what was found and what to write. A key that is
+ * missing because it is misspelt is told once.
+ */
 export function schemaProblems(issues: readonly z.core.$ZodIssue[], doc: YamlDocument): Problem[] {
-  return issues.flatMap((issue) => {
-    const path = issue.path.map((s) => (typeof s === "number" ? s : String(s)));
-    if (issue.code === "unrecognized_keys") return issue.keys.map((key) => unknownKey(path, key, doc));
-    return [wrongValue(path, doc)];
+  const steps = (path: readonly PropertyKey[]): Step[] => path.map((s) => (typeof s === "number" ? s : String(s)));
+  const meant = new Set<string>();
+  const unknown = issues.flatMap((issue) => {
+    if (issue.code !== "unrecognized_keys") return [];
+    const path = steps(issue.path);
+    return issue.keys.map((key) => {
+      const known = keysBelow(path);
+      const likely = closestWord(key, known);
+      if (likely !== null) meant.add(pathText([...path, likely]));
+      const where = path.length === 0 ? "" : ` in ${pathText(path)}`;
+      return {
+        at: doc.atKey(path, key),
+        problem: `no key "${plainText(key)}"${where}${likely === null ? "" : `; did you mean "${likely}"?`}`,
+        fix: `the keys here are ${known.join(", ")}`,
+      };
+    });
   });
+  const wrong = issues.flatMap((issue) => {
+    const path = steps(issue.path);
+    if (issue.code === "unrecognized_keys") return [];
+    const value = valueAt(doc.value, path);
+    return value === undefined && meant.has(pathText(path)) ? [] : [wrongValue(path, value, doc)];
+  });
+  return [...wrong, ...unknown];
 }
 
-function unknownKey(path: readonly Step[], key: string, doc: YamlDocument): Problem {
-  const known = keysBelow(path);
-  const likely = closestWord(key, known);
-  const where = path.length === 0 ? "" : ` in ${pathText(path)}`;
-  return {
-    at: doc.atKey(path, key),
-    problem: `no key "${plainText(key)}"${where}${likely === null ? "" : `; did you mean "${likely}"?`}`,
-    fix: `the keys here are ${known.join(", ")}`,
-  };
-}
-
-function wrongValue(path: readonly Step[], doc: YamlDocument): Problem {
-  const found = foundText(valueAt(doc.value, path));
+function wrongValue(path: readonly Step[], value: unknown, doc: YamlDocument): Problem {
   const words = keyWords[pattern(path)];
   const name = path.length === 0 ? "the file" : pathText(path);
+  const fix = words?.fix ?? "see the description of cooldown.yaml in the README";
   return {
     at: doc.at(path),
-    problem: `${name} is ${found}; expected ${words?.expected ?? "a map with sample, cooldown, scan and series"}`,
-    fix: words?.fix ?? "see the description of cooldown.yaml in the README",
+    problem: `${name} is ${foundText(value)}; expected ${words?.expected ?? "a map with sample, cooldown, scan and series"}`,
+    fix: value === undefined ? (words?.add ?? fix) : fix,
   };
 }
 

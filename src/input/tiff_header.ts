@@ -243,6 +243,9 @@ function blocks(tags: Map<number, Field>, reader: DirectoryReader, rows: number,
     throw new ImageFileError("it does not say where its pixels lie", COPY_AGAIN, page);
   }
   checkSize(blockRows, blockCols, page);
+  if (blockRows * blockCols > Math.max(4 * rows * cols, 1 << 20)) {
+    throw new ImageFileError(`tiles of ${blockCols} × ${blockRows} pixels for ${cols} × ${rows}`, COPY_AGAIN, page);
+  }
   const expected = Math.ceil(rows / blockRows) * Math.ceil(cols / blockCols);
   const offsets = reader.values(offsetField, expected, page);
   const byteCounts = reader.values(countField, expected, page);
