@@ -59,7 +59,7 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
   if (unmeasured.pixels === rows * cols) notice("empty-frame", "amplitude: no pixel was measured");
 
   const topography = raw.topography === null ? null : cleanTopography(raw.topography, s);
-  const signal = cleanSignal(amplitude, raw.phase === null ? null : finiteCopy(raw.phase), rows, cols, s);
+  const signal = cleanSignal(amplitude, raw.phase === null ? null : wrapped(finiteCopy(raw.phase)), rows, cols, s);
 
   const scarPixels = (topography?.scars.pixels ?? 0) + signal.scars.pixels;
   const scarRuns = (topography?.scars.runs ?? 0) + signal.scars.runs;
@@ -210,6 +210,11 @@ function finiteCopy(raster: Raster): Float32Array {
   const values = dataOf(raster).slice();
   for (let p = 0; p < values.length; p++) if (!Number.isFinite(values[p])) values[p] = Number.NaN;
   return values;
+}
+
+function wrapped(phase: Float32Array): Float32Array {
+  for (let p = 0; p < phase.length; p++) phase[p] = wrapAngle(phase[p]);
+  return phase;
 }
 
 function countUnmeasured(values: Float32Array, rows: number, cols: number): { pixels: number; rows: number } {

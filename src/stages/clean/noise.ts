@@ -1,9 +1,9 @@
-import { median, wrapAngle } from "../../numerics/quantile.js";
+import { SD_PER_MAD, medianInPlace, quantileInPlace } from "../../numerics/quantile.js";
 
 const BINS = 10;
 /** Residuals looked at: more would not make a median better by anything that matters. */
-const MOST_RESIDUALS = 24_000;
-const LEAST_IN_BIN = 60;
+const MOST_RESIDUALS = 10_000;
+const LEAST_IN_BIN = 40;
 
 /** Standard deviation of a channel's pixel noise as a function of the signal's amplitude at the pixel. */
 export interface NoiseByLevel {
@@ -19,6 +19,10 @@ export function sdAt(noise: NoiseByLevel, level: number): number {
   const b = (level - noise.low) * noise.perLevel;
   return noise.sds[b > 0 ? (b < BINS - 1 ? b | 0 : BINS - 1) : 0];
 }
+
+/** A difference of two angles in (−π, π], taken the short way round. */
+export const shortWay = (rad: number): number =>
+  rad > Math.PI ? rad - 2 * Math.PI : rad < -Math.PI ? rad + 2 * Math.PI : rad;
 
 /** Noise from second differences along the rows, (v₋₁ − 2 v₀ + v₊₁)/√6, by 1.4826 · median |·|: blind to slopes, little
  *  moved by walls and relief, and to no row offset at all.
@@ -39,31 +43,35 @@ export function measureNoise(
   for (let p = 0; p < rows * cols; p += stride) {
     const col = p % cols;
     if (col === 0 || col === cols - 1) continue;
-    let r = values[p - 1] - 2 * values[p] + values[p + 1];
-    if (isAngle) r = wrapAngle(values[p - 1] - values[p]) + wrapAngle(values[p + 1] - values[p]);
-    if (!Number.isFinite(r)) continue;
+    let left = values[p - 1] - values[p];
+    let right = values[p + 1] - values[p];
+    if (isAngle) {
+      left = shortWay(left);
+      right = shortWay(right);
+    }
+    const r = left + right;
     const l = level === null ? 0 : (level[p - 1] + level[p] + level[p + 1]) / 3;
-    if (!Number.isFinite(l)) continue;
+    if (Number.isNaN(r) || Number.isNaN(l)) continue;
     residuals[n] = Math.abs(r);
     levels[n++] = l;
   }
-  const scale = 1.4826 / Math.sqrt(6);
-  const sd = n === 0 ? 0 : scale * median(residuals.slice(0, n));
+  const scale = SD_PER_MAD / Math.sqrt(6);
+  const sd = n === 0 ? 0 : scale * medianInPlace(residuals.slice(0, n));
   const sds = new Float64Array(BINS).fill(sd);
   if (level === null || n < 4 * LEAST_IN_BIN) return { low: 0, perLevel: 0, sds, sd };
-  const sorted = levels.slice(0, n).sort();
-  const low = sorted[Math.floor(0.01 * n)];
-  const high = sorted[Math.floor(0.99 * n)];
+  const sorted = levels.slice(0, n);
+  const low = quantileInPlace(sorted, 0.01);
+  const high = quantileInPlace(sorted, 0.99);
   if (!(high > low)) return { low, perLevel: 0, sds, sd };
   const perLevel = BINS / (high - low);
-  const bins: number[][] = Array.from({ length: BINS }, () => []);
-  for (let k = 0; k < n; k++) {
-    const b = (levels[k] - low) * perLevel;
-    if (b >= 0 && b < BINS) bins[b | 0].push(residuals[k]);
-  }
-  sds.fill(Number.NaN);
-  for (let b = 0; b < BINS; b++) {
-    if (bins[b].length >= LEAST_IN_BIN) sds[b] = scale * median(Float64Array.from(bins[b]));
+  const inBin = new Float64Array(n);
+  for (let bin = 0; bin < BINS; bin++) {
+    let m = 0;
+    for (let k = 0; k < n; k++) {
+      const b = (levels[k] - low) * perLevel;
+      if (b >= bin && b < bin + 1) inBin[m++] = residuals[k];
+    }
+    sds[bin] = m >= LEAST_IN_BIN ? scale * medianInPlace(inBin, m) : Number.NaN;
   }
   fillFromNeighbours(sds, sd);
   return { low, perLevel, sds, sd };

@@ -1,5 +1,5 @@
 import { medianInPlace, wrapAngle } from "../../numerics/quantile.js";
-import { type NoiseByLevel, sdAt } from "./noise.js";
+import { type NoiseByLevel, sdAt, shortWay } from "./noise.js";
 
 /** Rows further apart than this (unmeasured ones between) are not compared. */
 const LONGEST_GAP = 8;
@@ -68,7 +68,7 @@ export function linkRows(
         if (!usable(up + j) || !usable(down + j)) continue;
         const sd = level === null ? noise.sd : sdAt(noise, 0.5 * (level[up + j] + level[down + j]));
         inverseVariance[n] = 1 / Math.max(sd, leastSd) ** 2;
-        e[n] = values[down + j] - values[up + j];
+        e[n] = isAngle ? shortWay(values[down + j] - values[up + j]) : values[down + j] - values[up + j];
         column[n++] = j;
       }
     }
@@ -85,7 +85,7 @@ export function linkRows(
         s += inverseVariance[m] * Math.sin(e[m]);
       }
       turn = Math.atan2(s, c);
-      for (let m = 0; m < n; m++) e[m] = wrapAngle(e[m] - turn);
+      for (let m = 0; m < n; m++) e[m] = shortWay(e[m] - turn);
     }
     scratch.set(e.subarray(0, n));
     let d = medianInPlace(scratch, n);

@@ -1,11 +1,12 @@
-import { wrapAngle } from "../../numerics/quantile.js";
-import { type NoiseByLevel, sdAt } from "./noise.js";
+import { type NoiseByLevel, sdAt, shortWay } from "./noise.js";
 
 /** Thickest scar looked for, in rows. */
 const MOST_ROWS = 2;
 /** Share of the departure by which the rows above and below may differ from each other and from the rows beyond them: a
  *  particle or wall seen through the tip is rounded over several rows, a scar is not. */
 const SHARPNESS = 0.4;
+/** One pixel less the mean of two others, in standard deviations of a pixel. */
+const SD_OF_DEPARTURE = Math.sqrt(1.5);
 
 export interface Scars {
   /** 1 = scarred. */
@@ -29,69 +30,104 @@ export function findScars(
   sigmas: number,
   leastPixels: number,
 ): Scars {
+  const scene: Scene = { values, rows, cols, isAngle };
   const mask = new Uint8Array(rows * cols);
   let runs = 0;
-  const difference = (a: number, b: number): number => (isAngle ? wrapAngle(a - b) : a - b);
   const depart = new Float64Array(cols);
-  const sd = new Float64Array(cols);
+  const sd = new Float64Array(cols).fill(noise.sd * SD_OF_DEPARTURE);
   for (let thick = 1; thick <= MOST_ROWS; thick++) {
-    const perSd = Math.sqrt(1 / thick + 0.5);
     for (let i = 1; i + thick < rows; i++) {
-      const up = (i - 1) * cols;
-      const down = (i + thick) * cols;
+      departures(scene, i, thick, depart);
+      if (level !== null)
+        for (let j = 0; j < cols; j++) sd[j] = SD_OF_DEPARTURE * sdAt(noise, level[(i - 1) * cols + j]);
       for (let j = 0; j < cols; j++) {
-        const base = values[up + j];
-        const middle = base + 0.5 * difference(values[down + j], base);
-        let s = difference(values[i * cols + j], middle);
-        if (thick === 2) s = 0.5 * (s + difference(values[(i + 1) * cols + j], middle));
-        depart[j] = s;
-        sd[j] = perSd * (level === null ? noise.sd : sdAt(noise, level[up + j]));
-      }
-      let j = 0;
-      while (j < cols) {
-        const sign = Math.sign(depart[j]);
+        if (!(Math.abs(depart[j]) > 0.5 * sigmas * sd[j]) || mask[i * cols + j] === 1) continue;
         const from = j;
+        const sign = Math.sign(depart[j]);
         while (j < cols && depart[j] * sign > 0.5 * sigmas * sd[j] && mask[i * cols + j] === 0) j++;
-        if (j - from >= leastPixels && isScar(from, j, i, thick)) {
-          for (let t = 0; t < thick; t++) mask.fill(1, (i + t) * cols + from, (i + t) * cols + j);
-          runs++;
-        }
-        if (j === from) j++;
+        if (j - from < leastPixels || !isScar(scene, i, thick, from, j, depart, sd, sigmas)) continue;
+        for (let t = 0; t < thick; t++) mask.fill(1, (i + t) * cols + from, (i + t) * cols + j);
+        runs++;
       }
     }
   }
   let pixels = 0;
   for (const m of mask) pixels += m;
   return { mask, pixels, runs };
+}
 
-  function isScar(from: number, to: number, row: number, thick: number): boolean {
-    const n = to - from;
-    let mean = 0;
-    let meanSd = 0;
-    for (let j = from; j < to; j++) {
-      mean += depart[j] / n;
-      meanSd += sd[j] / n;
+interface Scene {
+  readonly values: Float32Array;
+  readonly rows: number;
+  readonly cols: number;
+  readonly isAngle: boolean;
+}
+
+/** How far `thick` rows from `row` on depart from the mean of the rows above and below them, by column. */
+function departures({ values, cols, isAngle }: Scene, row: number, thick: number, out: Float64Array): void {
+  const up = (row - 1) * cols;
+  const here = row * cols;
+  const last = (row + thick - 1) * cols;
+  const down = (row + thick) * cols;
+  for (let j = 0; j < cols; j++) {
+    const base = values[up + j];
+    let across = values[down + j] - base;
+    let s = values[here + j] - base;
+    if (isAngle) {
+      across = shortWay(across);
+      s = shortWay(s);
     }
-    if (Math.abs(mean) < sigmas * meanSd) return false;
-    const step = (a: number, b: number): number => {
-      if (a < 0 || b < 0 || a >= rows || b >= rows) return 0;
-      let sum = 0;
-      let count = 0;
-      for (let j = from; j < to; j++) {
-        const v = difference(values[a * cols + j], values[b * cols + j]);
-        if (Number.isNaN(v)) continue;
-        sum += v;
-        count++;
-      }
-      return count > 0 ? sum / count : 0;
-    };
-    const least = SHARPNESS * Math.abs(mean);
-    const above = row - 1;
-    const below = row + thick;
-    return (
-      Math.abs(step(above, below)) < least &&
-      Math.abs(step(above, above - 1)) < least &&
-      Math.abs(step(below, below + 1)) < least
-    );
+    s -= 0.5 * across;
+    if (thick > 1) {
+      // both rows must depart: a scar of one row is not to take its neighbour along
+      let t = values[last + j] - base;
+      if (isAngle) t = shortWay(t);
+      t -= 0.5 * across;
+      s = s > 0 && t > 0 ? Math.min(s, t) : s < 0 && t < 0 ? Math.max(s, t) : 0;
+    }
+    out[j] = s;
   }
+}
+
+function isScar(
+  scene: Scene,
+  row: number,
+  thick: number,
+  from: number,
+  to: number,
+  depart: Float64Array,
+  sd: Float64Array,
+  sigmas: number,
+): boolean {
+  let sum = 0;
+  let sdSum = 0;
+  for (let j = from; j < to; j++) {
+    sum += depart[j];
+    sdSum += sd[j];
+  }
+  if (Math.abs(sum) < sigmas * sdSum) return false;
+  const least = SHARPNESS * Math.abs(sum / (to - from));
+  const above = row - 1;
+  const below = row + thick;
+  return (
+    Math.abs(stepBetween(scene, above, below, from, to)) < least &&
+    Math.abs(stepBetween(scene, above, above - 1, from, to)) < least &&
+    Math.abs(stepBetween(scene, below, below + 1, from, to)) < least
+  );
+}
+
+/** Mean difference of two rows over some columns; 0 where there is nothing to compare. */
+function stepBetween(scene: Scene, a: number, b: number, from: number, to: number): number {
+  const { values, rows, cols, isAngle } = scene;
+  if (a < 0 || b < 0 || a >= rows || b >= rows) return 0;
+  let sum = 0;
+  let count = 0;
+  for (let j = from; j < to; j++) {
+    let d = values[a * cols + j] - values[b * cols + j];
+    if (Number.isNaN(d)) continue;
+    if (isAngle) d = shortWay(d);
+    sum += d;
+    count++;
+  }
+  return count > 0 ? sum / count : 0;
 }

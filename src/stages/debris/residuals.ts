@@ -18,8 +18,8 @@ interface Classes {
 
 /** Departures of the logarithm of the amplitude, or of the phase, from surroundings of one state.
  *
- *  A small domain in the midst of the other state departs like debris; in frames that show both states a pixel at the other state's
- *  level is therefore left out, and counts only where the frame shows one state.
+ *  A small domain in the midst of the other state, or the foot of a wall, departs like debris. In frames that show both states a pixel
+ *  between the two levels is therefore left out: what departs that way counts only where the frame shows one state.
  *  @param allowed 1 = surroundings known to be of one state from another channel; null = judge by this channel alone. Blocks. */
 export function departures(
   values: Float32Array,
@@ -48,9 +48,12 @@ export function departures(
       let own = 0;
       if (second !== undefined && Math.abs(reference - second) < Math.abs(reference - first)) own = 1;
       if (second !== undefined) {
+        // walls reach to where their sectors already agree again, so in such frames all sectors must agree
+        if (ring.widest[b] > tolerance) continue;
         const other = own === 0 ? second : first;
-        const gap = Math.abs(second - first);
-        if (Math.abs(v - other) < Math.max(3 * classes.sds[1 - own], 0.25 * gap)) continue;
+        const towards = (v - reference) / (other - reference);
+        const beyond = 1 + Math.max(0.25, (3 * classes.sds[1 - own]) / Math.abs(other - reference));
+        if (towards > (2 * classes.sds[own]) / Math.abs(other - reference) && towards < beyond) continue;
       }
       departure[p] = (v - reference) / classes.sds[own];
     }

@@ -10,6 +10,8 @@ export interface Ring {
   readonly reference: Float32Array;
   /** Distance from the reference to the sector that is third furthest from it: two sectors may lie on another particle. */
   readonly spread: Float32Array;
+  /** Distance from the reference to the sector that is furthest from it. */
+  readonly widest: Float32Array;
 }
 
 /** Surroundings of every pixel: the mean over small boxes at eight places on a ring of radius `radius`, and their median. The pixel
@@ -43,6 +45,7 @@ export function ringOf(values: Float32Array, rows: number, cols: number, radiusX
   const blockCols = (cols + 1) >> 1;
   const reference = new Float32Array(blockRows * blockCols).fill(Number.NaN);
   const spread = new Float32Array(blockRows * blockCols).fill(Number.NaN);
+  const widest = new Float32Array(blockRows * blockCols).fill(Number.NaN);
   const least = Math.max(1, ((2 * halfX + 1) * (2 * halfY + 1)) >> 2);
   const found = new Float64Array(SECTORS);
   const away = new Float64Array(SECTORS);
@@ -73,9 +76,10 @@ export function ringOf(values: Float32Array, rows: number, cols: number, radiusX
       const b = bi * blockCols + bj;
       reference[b] = middle;
       spread[b] = away[n - 3];
+      widest[b] = away[n - 1];
     }
   }
-  return { blockCols, reference, spread };
+  return { blockCols, reference, spread, widest };
 }
 
 /** Puts `v` in its place among the first n values, which are in order. */
