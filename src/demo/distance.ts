@@ -90,35 +90,33 @@ export function distanceMap(grid: FieldGrid, set: LevelSet): DistanceMap {
     for (let r = 0; r < 2; r++)
       for (let c = 0; c < 2; c++) offer((i + r) * nx + j + c, p, gx0 + (j + c) * gdx, gy0 + (i + r) * gdy);
   }
-  for (let round = 0; round < 1 && count > 0; round++) {
-    for (let i = 0; i < ny; i++) {
-      const y = gy0 + i * gdy;
-      for (let j = 0; j < nx; j++) {
-        const node = i * nx + j;
-        const x = gx0 + j * gdx;
-        if (i > 0) {
-          offer(node, nearest[node - nx], x, y);
-          if (j > 0) offer(node, nearest[node - nx - 1], x, y);
-          if (j + 1 < nx) offer(node, nearest[node - nx + 1], x, y);
-        }
-        if (j > 0) offer(node, nearest[node - 1], x, y);
+  for (let i = 0; i < ny; i++) {
+    const y = gy0 + i * gdy;
+    for (let j = 0; j < nx; j++) {
+      const node = i * nx + j;
+      const x = gx0 + j * gdx;
+      if (i > 0) {
+        offer(node, nearest[node - nx], x, y);
+        if (j > 0) offer(node, nearest[node - nx - 1], x, y);
+        if (j + 1 < nx) offer(node, nearest[node - nx + 1], x, y);
       }
-      for (let j = nx - 2; j >= 0; j--) offer(i * nx + j, nearest[i * nx + j + 1], gx0 + j * gdx, y);
+      if (j > 0) offer(node, nearest[node - 1], x, y);
     }
-    for (let i = ny - 1; i >= 0; i--) {
-      const y = gy0 + i * gdy;
-      for (let j = nx - 1; j >= 0; j--) {
-        const node = i * nx + j;
-        const x = gx0 + j * gdx;
-        if (i + 1 < ny) {
-          offer(node, nearest[node + nx], x, y);
-          if (j > 0) offer(node, nearest[node + nx - 1], x, y);
-          if (j + 1 < nx) offer(node, nearest[node + nx + 1], x, y);
-        }
-        if (j + 1 < nx) offer(node, nearest[node + 1], x, y);
+    for (let j = nx - 2; j >= 0; j--) offer(i * nx + j, nearest[i * nx + j + 1], gx0 + j * gdx, y);
+  }
+  for (let i = ny - 1; i >= 0; i--) {
+    const y = gy0 + i * gdy;
+    for (let j = nx - 1; j >= 0; j--) {
+      const node = i * nx + j;
+      const x = gx0 + j * gdx;
+      if (i + 1 < ny) {
+        offer(node, nearest[node + nx], x, y);
+        if (j > 0) offer(node, nearest[node + nx - 1], x, y);
+        if (j + 1 < nx) offer(node, nearest[node + nx + 1], x, y);
       }
-      for (let j = 1; j < nx; j++) offer(i * nx + j, nearest[i * nx + j - 1], gx0 + j * gdx, y);
+      if (j + 1 < nx) offer(node, nearest[node + 1], x, y);
     }
+    for (let j = 1; j < nx; j++) offer(i * nx + j, nearest[i * nx + j - 1], gx0 + j * gdx, y);
   }
   const nodeNm = best2;
   for (let k = 0; k < nodeNm.length; k++) nodeNm[k] = Math.sqrt(nodeNm[k]);

@@ -17,29 +17,28 @@ function pointwise(value: (x: number, y: number) => number): Field {
 /** The field F whose level sets are the walls of one branch of one cycle: metallic where F > (half − T)/spread. */
 export function domainField(spec: CooldownSpec, branch: Branch, cycle: number): Field {
   const d = spec.domains;
+  if (d.shape === "random") {
+    const own = Math.sqrt(1 - d.memory ** 2);
+    const ownBranch = own * Math.sqrt(1 - d.branchMemory ** 2);
+    return latticeField(
+      [
+        { seed: childSeed(spec.sampleSeed, PART.domains), weight: d.memory },
+        { seed: childSeed(spec.seed, PART.domains, 0), weight: own * d.branchMemory },
+        { seed: childSeed(spec.seed, PART.domains, cycle, branch === "cooling" ? 1 : 2), weight: ownBranch },
+      ],
+      d.scaleNm,
+    );
+  }
   // normalDeg turns anticlockwise with y up the page, rows grow down it.
   const nx = Math.cos((d.normalDeg * Math.PI) / 180);
   const ny = -Math.sin((d.normalDeg * Math.PI) / 180);
-  switch (d.shape) {
-    case "line":
-      return pointwise((x, y) => ((x - d.xNm) * nx + (y - d.yNm) * ny) / d.scaleNm);
-    case "stripe":
-      return pointwise((x, y) => (d.halfWidthNm - Math.abs((x - d.xNm) * nx + (y - d.yNm) * ny)) / d.scaleNm);
-    case "disc":
-      return pointwise((x, y) => (d.halfWidthNm - Math.hypot(x - d.xNm, y - d.yNm)) / d.scaleNm);
-    case "random": {
-      const own = Math.sqrt(1 - d.memory ** 2);
-      const ownBranch = own * Math.sqrt(1 - d.branchMemory ** 2);
-      return latticeField(
-        [
-          { seed: childSeed(spec.sampleSeed, PART.domains), weight: d.memory },
-          { seed: childSeed(spec.seed, PART.domains, 0), weight: own * d.branchMemory },
-          { seed: childSeed(spec.seed, PART.domains, cycle, branch === "cooling" ? 1 : 2), weight: ownBranch },
-        ],
-        d.scaleNm,
-      );
-    }
-  }
+  const along = (x: number, y: number): number => (x - d.xNm) * nx + (y - d.yNm) * ny;
+  const distance = {
+    line: along,
+    stripe: (x: number, y: number) => d.halfWidthNm - Math.abs(along(x, y)),
+    disc: (x: number, y: number) => d.halfWidthNm - Math.hypot(x - d.xNm, y - d.yNm),
+  }[d.shape];
+  return pointwise((x, y) => distance(x, y) / d.scaleNm);
 }
 
 /** The level of the domains' field above which the sample is metallic at this temperature. */

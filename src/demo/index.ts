@@ -14,6 +14,7 @@ export {
   simulateCooldown,
 } from "./simulate.js";
 export { type CooldownTruth, type CycleTruth, type FrameTruth, readTruth, TRUTH_FILE } from "./truth.js";
+export { fringeSeen, type SeenFringe } from "./fringe_seen.js";
 export { fractionAt } from "./half_temperature.js";
 export { generateStack } from "./write_stack.js";
 export { type DemoOptions, demoSpecs, writeDemo } from "./scenario.js";

@@ -5,6 +5,7 @@ import { childSeed, makeRandom } from "../numerics/random.js";
 import { particlesIn } from "./debris.js";
 import { countDomains } from "./domain_count.js";
 import { PART } from "./domain_field.js";
+import { fringeSeen } from "./fringe_seen.js";
 import { halfTemperatures } from "./half_temperature.js";
 import { forPixelsNear, record } from "./instrument.js";
 import type { LevelSet } from "./level_set.js";
@@ -187,6 +188,7 @@ export function simulateCooldown(spec: CooldownSpec): SimulatedCooldown {
           wallLengthNm: lengthInside(seen.walls, spec, at, (q) => got.measured[q] === 1),
           wallLengthCleanNm: lengthInside(seen.walls, spec, at, (q) => got.measured[q] === 1 && debris[q] === 0),
           levels: levelsAt(spec, p.temperatureK),
+          fringe: fringeSeen(spec, p.temperatureK),
           metallicDomains: countDomains(seen.states, got.measured, rows, cols, 1, 8, leastPx),
           insulatingDomains: countDomains(seen.states, got.measured, rows, cols, 0, 4, leastPx),
           scars: got.scars,

@@ -3,6 +3,7 @@ import { join } from "node:path";
 import type { Branch } from "../model/cooldown.js";
 import type { StateKind } from "../model/domains.js";
 import type { CooldownSpec } from "./spec.js";
+import type { SeenFringe } from "./fringe_seen.js";
 import type { StateLevels } from "./wall_profile.js";
 
 /** What is true of one frame, small enough to keep as text. */
@@ -28,6 +29,8 @@ export interface FrameTruth {
   readonly wallLengthCleanNm: number;
   /** Before gain, that is in the scale of the first frame. */
   readonly levels: StateLevels;
+  /** The fringe as the tip sees it beside a straight wall; null where there is none. */
+  readonly fringe: SeenFringe | null;
   /** Domains of at least `leastAreaNm2` on the measured pixels: metallic ones join over 8 neighbours, insulating ones over 4. */
   readonly metallicDomains: number;
   readonly insulatingDomains: number;
@@ -57,7 +60,13 @@ export interface CooldownTruth {
 /** Where a generated cooldown keeps its truth, relative to its folder. */
 export const TRUTH_FILE = join("truth", "truth.json");
 
-/** The truth behind a generated cooldown, from the folder that holds its `cooldown.yaml`. */
+const isTruth = (v: unknown): v is CooldownTruth =>
+  typeof v === "object" && v !== null && "spec" in v && "cycles" in v && "frames" in v && Array.isArray(v.frames);
+
+/** The truth behind a generated cooldown, from the folder that holds its `cooldown.yaml`. Throws where there is none. */
 export function readTruth(cooldownDir: string): CooldownTruth {
-  return JSON.parse(readFileSync(join(cooldownDir, TRUTH_FILE), "utf8")) as CooldownTruth;
+  const file = join(cooldownDir, TRUTH_FILE);
+  const read: unknown = JSON.parse(readFileSync(file, "utf8"));
+  if (!isTruth(read)) throw new Error(`${file}: not the truth of a generated cooldown`);
+  return read;
 }

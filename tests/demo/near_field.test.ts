@@ -1,4 +1,5 @@
 import { describe, expect, test } from "vitest";
+import { fringeSeen } from "../../src/demo/fringe_seen.js";
 import { nearField } from "../../src/demo/near_field.js";
 import { defaultSpec, type SpecOverrides } from "../../src/demo/spec.js";
 import { FWHM_PER_SIGMA } from "../../src/model/units.js";
@@ -25,25 +26,28 @@ const spec = (o: SpecOverrides) =>
 const HALF_K = 153; // the line lies at its own place at the half temperature of the cooling branch
 
 describe("a straight wall", () => {
-  test.each([0, 90, 37, 180, 213.4])("sharp, metallic towards %d°, under the tip is the error function to 1e-3", (normalDeg) => {
-    const s = spec({
-      wall: { widthNm: 0 },
-      domains: { shape: "line", xNm: 213.3, yNm: 197.9, normalDeg, scaleNm: 100 },
-    });
-    const seen = nearField(s, "cooling", 1, HALF_K, { xNm: 3.7, yNm: -2.2 }, []);
-    const nx = Math.cos((normalDeg * Math.PI) / 180);
-    const ny = -Math.sin((normalDeg * Math.PI) / 180);
-    let worst = 0;
-    for (let i = 0; i < 40; i += 3)
-      for (let j = 0; j < 44; j += 3) {
-        const k = i * 44 + j;
-        const d = (3.7 + 10 * j - 213.3) * nx + (-2.2 + 10 * i - 197.9) * ny;
-        worst = Math.max(worst, Math.abs(seen.re[k] - 1 - normalCdf(d / SIGMA)));
-        expect(seen.signedDistanceNm[k]).toBeCloseTo(d, 3);
-        expect(seen.states[k]).toBe(d > 0 ? 1 : 0);
-      }
-    expect(worst).toBeLessThan(5e-4);
-  });
+  test.each([0, 90, 37, 180, 213.4])(
+    "sharp, metallic towards %d°, under the tip is the error function to 1e-3",
+    (normalDeg) => {
+      const s = spec({
+        wall: { widthNm: 0 },
+        domains: { shape: "line", xNm: 213.3, yNm: 197.9, normalDeg, scaleNm: 100 },
+      });
+      const seen = nearField(s, "cooling", 1, HALF_K, { xNm: 3.7, yNm: -2.2 }, []);
+      const nx = Math.cos((normalDeg * Math.PI) / 180);
+      const ny = -Math.sin((normalDeg * Math.PI) / 180);
+      let worst = 0;
+      for (let i = 0; i < 40; i += 3)
+        for (let j = 0; j < 44; j += 3) {
+          const k = i * 44 + j;
+          const d = (3.7 + 10 * j - 213.3) * nx + (-2.2 + 10 * i - 197.9) * ny;
+          worst = Math.max(worst, Math.abs(seen.re[k] - 1 - normalCdf(d / SIGMA)));
+          expect(seen.signedDistanceNm[k]).toBeCloseTo(d, 3);
+          expect(seen.states[k]).toBe(d > 0 ? 1 : 0);
+        }
+      expect(worst).toBeLessThan(5e-4);
+    },
+  );
 
   test("sharp, on pixels of 18 × 9 nm, is the error function too", () => {
     const s = spec({
@@ -116,4 +120,26 @@ test("without a tip's blur the signal is the profile at the pixel's own distance
     const u = 0.5 * (1 + Math.tanh((seen.signedDistanceNm[k] * Math.log(9)) / 50));
     expect(Math.abs(seen.re[k] - 1 - u)).toBeLessThan(1e-5);
   }
+});
+
+test("the fringe as seen is the largest turn of the optical phase in a rendered frame, at its distance", () => {
+  const o: SpecOverrides = {
+    wall: { widthNm: 40 },
+    levels: { phaseMetallicRad: 0.6 },
+    domains: { shape: "line", xNm: 200.3, yNm: 0, normalDeg: 0, scaleNm: 100 },
+    pixel: { xNm: 3, yNm: 10 },
+    cols: 160,
+  };
+  for (const side of ["metallic", "insulating"] as const) {
+    const withFringe = spec({ ...o, fringe: { side, amplitudeRad: 0.3, periodNm: 200, decayNm: 120, phaseRad: -1.3 } });
+    const a = nearField(withFringe, "cooling", 1, HALF_K, { xNm: 0, yNm: 0 }, []);
+    const b = nearField(spec(o), "cooling", 1, HALF_K, { xNm: 0, yNm: 0 }, []);
+    const turn = (k: number): number => Math.atan2(a.im[k], a.re[k]) - Math.atan2(b.im[k], b.re[k]);
+    let best = 0;
+    for (let k = 0; k < 160; k++) if (Math.abs(turn(k)) > Math.abs(turn(best))) best = k;
+    const seen = fringeSeen(withFringe, HALF_K);
+    expect(seen?.contrastRad).toBeCloseTo(turn(best), 3);
+    expect(Math.abs((seen?.offsetNm ?? 0) - a.signedDistanceNm[best])).toBeLessThan(3);
+  }
+  expect(fringeSeen(spec(o), HALF_K)).toBeNull();
 });
