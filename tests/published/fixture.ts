@@ -1,0 +1,6 @@
+import { readFileSync } from "node:fs";
+
+/** A file of outside values from `fixtures/`; the caller states its shape. */
+export function fixture<T>(name: string): T {
+  return JSON.parse(readFileSync(`fixtures/${name}.json`, "utf8")) as T;
+}
