@@ -1,12 +1,12 @@
 import type { Problem } from "../model/errors.js";
 import { cooldownSchema } from "./schema.js";
-import type { YamlDocument } from "./yaml_document.js";
+import { isRecord, type YamlDocument } from "./yaml_document.js";
 
 /** What is wrong between keys that are each right in themselves, whatever else is wrong in the file. */
 export function crossProblems(doc: YamlDocument): Problem[] {
   const problems: Problem[] = [];
   const { light: lightPart, channels, tip: tipPart } = cooldownSchema.shape;
-  const top = (typeof doc.value === "object" && doc.value !== null ? doc.value : {}) as Record<string, unknown>;
+  const top = isRecord(doc.value) ? doc.value : {};
   const y = {
     light: lightPart.safeParse(top["light"]).data,
     channels: channels.safeParse(top["channels"]).data,

@@ -56,17 +56,19 @@ interface CsvRecord {
 
 function parseCsv(text: string, name: string, problems: Problem[]): CsvRecord[] | null {
   try {
-    const parsed: unknown = parse(text, {
+    const records: CsvRecord[] = [];
+    parse(text, {
       bom: true,
       record_delimiter: ["\r\n", "\n", "\r"],
       skip_empty_lines: true,
       relax_column_count: true,
-      info: true,
       trim: true,
+      on_record: (cells: string[], context) => {
+        if (cells.some((c) => c !== "")) records.push({ line: context.lines, cells });
+        return null;
+      },
     });
-    return (parsed as { record: string[]; info: { lines: number } }[])
-      .map((r) => ({ line: r.info.lines, cells: r.record }))
-      .filter((r) => r.cells.some((c) => c !== ""));
+    return records;
   } catch (e) {
     if (!(e instanceof CsvError)) throw e;
     problems.push({ at: name, problem: plainText(e.message), fix: "mend the quotes at this place" });

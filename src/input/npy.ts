@@ -90,11 +90,10 @@ function readHeader(file: ByteFile): NpyHeader {
 /** A NumPy type such as `<f4`; null for what is not a real number. "=" is the writer's own order: little-endian as good as always. */
 function pixelType(descr: string): PixelType | null {
   const m = /^([<>|=])([fiub])([1248])$/.exec(descr);
-  if (m === null) return null;
-  const kind = m[2] as PixelType["kind"];
-  const bytes = Number(m[3]);
-  if ((kind === "b" && bytes !== 1) || (kind === "f" && bytes === 1)) return null;
-  return { kind, bytes, littleEndian: m[1] !== ">" };
+  const kind = (["f", "i", "u", "b"] as const).find((k) => k === m?.[2]);
+  const bytes = Number(m?.[3]);
+  if (kind === undefined || (kind === "b" && bytes !== 1) || (kind === "f" && bytes === 1)) return null;
+  return { kind, bytes, littleEndian: m?.[1] !== ">" };
 }
 
 function readPage(file: ByteFile, h: NpyHeader, page: number, scale: number): Float32Array {

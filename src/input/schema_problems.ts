@@ -2,7 +2,7 @@ import type * as z from "zod";
 import type { Problem } from "../model/errors.js";
 import { closestWord, plainText } from "../model/text.js";
 import { keyWords } from "./schema.js";
-import type { Step, YamlDocument } from "./yaml_document.js";
+import { isRecord, type Step, type YamlDocument } from "./yaml_document.js";
 
 /**
  * What the schema found, as problems with line and column, in words that say what was found and what to write. A key that is
@@ -65,8 +65,8 @@ function keysBelow(path: readonly Step[]): string[] {
 function valueAt(value: unknown, path: readonly Step[]): unknown {
   let v = value;
   for (const s of path) {
-    if (typeof v !== "object" || v === null) return undefined;
-    v = (v as Record<string, unknown>)[String(s)];
+    if (!isRecord(v)) return undefined;
+    v = v[String(s)];
   }
   return v;
 }

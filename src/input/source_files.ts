@@ -1,5 +1,6 @@
 import { createHash } from "node:crypto";
 import { createReadStream } from "node:fs";
+import { finished } from "node:stream/promises";
 import type { SourceFile } from "../model/cooldown.js";
 import { InputError } from "../model/errors.js";
 import { plainText } from "../model/text.js";
@@ -9,20 +10,17 @@ import { shownPath } from "./source_path.js";
 /** SHA-256 and length of a file, read in pieces. Throws InputError where it cannot be read. */
 export async function hashFile(path: string, shown: string): Promise<SourceFile> {
   const hash = createHash("sha256");
-  let bytes = 0;
+  const stream = createReadStream(path, { highWaterMark: 1 << 20 });
   try {
-    for await (const piece of createReadStream(path, { highWaterMark: 1 << 20 })) {
-      const part = piece as Buffer;
-      hash.update(part);
-      bytes += part.length;
-    }
+    stream.on("data", (piece) => hash.update(piece));
+    await finished(stream);
   } catch (e) {
     throw new InputError(
       { at: plainText(shown), problem: systemWords(e), fix: "leave the files alone while they are read" },
       e,
     );
   }
-  return { path: shown, sha256: hash.digest("hex"), bytes };
+  return { path: shown, sha256: hash.digest("hex"), bytes: stream.bytesRead };
 }
 
 /** A file that is in memory already: what is kept is the digest of exactly what was read. */

@@ -219,7 +219,7 @@ function pageOf(tags: Map<number, Field>, reader: DirectoryReader, page: number)
     rows,
     cols,
     bits,
-    sampleFormat: sampleFormat as 1 | 2 | 3,
+    sampleFormat,
     compression,
     predictor,
     littleEndian: reader.littleEndian,

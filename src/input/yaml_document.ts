@@ -1,5 +1,8 @@
-import { isMap, LineCounter, parseDocument, type Document, type Node, type Pair } from "yaml";
+import { isMap, isNode, LineCounter, parseDocument, type Document, type Pair } from "yaml";
 import { InputError, type Problem } from "../model/errors.js";
+
+/** A map of the document, its values not yet checked. */
+export const isRecord = (v: unknown): v is Record<string, unknown> => typeof v === "object" && v !== null;
 
 /** A key or an index on the way from the top of a document to a value. */
 export type Step = string | number;
@@ -77,7 +80,7 @@ function nodeAt(doc: Document.Parsed, path: readonly Step[]): unknown {
 }
 
 function rangeOf(node: unknown): number | undefined {
-  return (node as Partial<Node> | null | undefined)?.range?.[0];
+  return isNode(node) ? node.range?.[0] : undefined;
 }
 
 function startOf(doc: Document.Parsed, path: readonly Step[]): number {
