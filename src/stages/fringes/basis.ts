@@ -1,0 +1,103 @@
+import { dampedOscillation } from "../../numerics/fringe_profile.js";
+import { fastKink } from "../../numerics/kink.js";
+import type { Chord } from "./chord.js";
+
+/** What the tip makes of a wall and of oscillations beside it. */
+export interface Blur {
+  /** Width of the wall's intrinsic profile ½(1 + tanh(x/w)), nm. */
+  readonly wNm: number;
+  /** Standard deviation of the tip's response, the averaging over a bin included, nm. */
+  readonly sigmaNm: number;
+}
+
+export interface Member {
+  readonly periodNm: number;
+  readonly decayNm: number;
+}
+
+/** Share of the metallic signal at distance x, as seen. */
+export function shareAt(xNm: number, blur: Blur, scratch: Float64Array): number {
+  fastKink(xNm, blur.wNm, blur.sigmaNm, scratch);
+  return scratch[0];
+}
+
+/** The response across the chord to a fringe of 1 rad on one side of a wall, in the limit of a small one: Im[i z f · conj(e)] =
+ *  (z · e) f with z = (1 − u) z_I + u z_M the signal before the blur and f = H(x) cos(2πx/Λ) e^{−x/ℓ} (or the sine), blurred by the tip. On the
+ *  fringe's side (x > 0) z · e is that of the side's own level plus (1 − u) times the step to the other one:
+ *  own + step (1 − u). Tabulated on a fine grid, read by linear interpolation. */
+export class FringeTable {
+  readonly fromNm: number;
+  readonly stepNm: number;
+  /** Per member four rows: blurred cos, sin, (1 − u) cos, (1 − u) sin. */
+  private readonly rows: Float64Array[] = [];
+
+  constructor(
+    readonly members: readonly Member[],
+    readonly blur: Blur,
+    reachNm: number,
+  ) {
+    const h = Math.max(0.5, blur.sigmaNm / 6);
+    const taps = Math.ceil((5 * blur.sigmaNm) / h);
+    const n = Math.ceil(reachNm / h) + taps + 2;
+    this.stepNm = h;
+    this.fromNm = -taps * h;
+    const kernel = Float64Array.from({ length: 2 * taps + 1 }, (_, t) =>
+      Math.exp(-0.5 * (((t - taps) * h) / blur.sigmaNm) ** 2),
+    );
+    const norm = kernel.reduce((a, v) => a + v, 0);
+    // ½ − (1 − u) = ½ tanh(x/w) begins at 0, so that the sums over the grid meet no jump; the jump itself goes in closed form.
+    const lift = Float64Array.from({ length: n + taps }, (_, k) =>
+      blur.wNm > 0 ? 0.5 * Math.tanh((k * h) / blur.wNm) : k === 0 ? 0.25 : 0.5,
+    );
+    const out = new Float64Array(2);
+    const rc = new Float64Array(n + taps);
+    const rs = new Float64Array(n + taps);
+    for (const m of members) {
+      for (let k = 0; k < rc.length; k++) {
+        const e = Math.exp((-k * h) / m.decayNm) * lift[k];
+        const a = (2 * Math.PI * k * h) / m.periodNm;
+        rc[k] = e * Math.cos(a);
+        rs[k] = e * Math.sin(a);
+      }
+      const four = [0, 1, 2, 3].map(() => new Float64Array(n + taps));
+      for (let q = 0; q < n + taps; q++) {
+        dampedOscillation(this.fromNm + q * h, m.periodNm, m.decayNm, blur.sigmaNm, out);
+        // Grid point q lies at q − taps; sources lie at 0 … .
+        let c = 0;
+        let s = 0;
+        const first = Math.max(0, q - 2 * taps);
+        const last = Math.min(rc.length - 1, q);
+        for (let k = first; k <= last; k++) {
+          const w = kernel[q - k];
+          c += w * rc[k];
+          s += w * rs[k];
+        }
+        four[0][q] = out[0];
+        four[1][q] = out[1];
+        four[2][q] = 0.5 * out[0] - c / norm;
+        four[3][q] = 0.5 * out[1] - s / norm;
+      }
+      this.rows.push(...four);
+    }
+  }
+
+  /** The response at distance `distanceNm` (signed, metallic positive) to a fringe on a side, cosine and sine, into `out`. */
+  response(member: number, metallicSide: boolean, chord: Chord, distanceNm: number, out: Float64Array): void {
+    const x = metallicSide ? distanceNm : -distanceNm;
+    const t = (x - this.fromNm) / this.stepNm;
+    out[0] = 0;
+    out[1] = 0;
+    if (t < 0) return;
+    const own = metallicSide ? chord.alongMetallic : chord.alongInsulating;
+    const step = metallicSide ? -chord.length : chord.length;
+    const q = Math.min(Math.floor(t), this.rows[0].length - 2);
+    const f = Math.min(1, t - q);
+    for (let k = 0; k < 2; k++) {
+      const plain = this.rows[4 * member + k];
+      const mixed = this.rows[4 * member + 2 + k];
+      const a = own * plain[q] + step * mixed[q];
+      const b = own * plain[q + 1] + step * mixed[q + 1];
+      out[k] = a + f * (b - a);
+    }
+  }
+}

@@ -1,0 +1,152 @@
+import type { NoiseModel } from "./noise.js";
+import { classOf, CLASSES, NEAR_LAG, ROW_LAG } from "./noise.js";
+import type { Stretch } from "./stretches.js";
+
+/** The component across the chord against signed distance, averaged over one stretch. Bins ordered by distance. */
+export interface Profile {
+  readonly count: number;
+  /** Mean distance of each bin's pixels, nm; negative insulating. */
+  readonly distanceNm: Float64Array;
+  readonly value: Float64Array;
+  /** Covariance of the values, count × count. */
+  readonly covariance: Float64Array;
+  /** Largest distance with a bin, per side, 0 where there is none. */
+  readonly reachInsulatingNm: number;
+  readonly reachMetallicNm: number;
+}
+
+/** A bin with fewer pixels is left out. */
+const LEAST_PIXELS = 3;
+
+/** Bins a stretch's pixels by distance and works out the covariance of the bins pixel by pixel: neighbours' correlation and what the
+ *  pixels of a row share, as measured in the frame, at the places where this stretch's pixels lie. */
+export class Profiler {
+  private readonly slot: Int16Array;
+
+  constructor(
+    private readonly across: Float32Array,
+    private readonly distanceNm: Float32Array,
+    private readonly rows: number,
+    private readonly cols: number,
+    private readonly binNm: number,
+    private readonly reachNm: number,
+    private readonly noise: NoiseModel,
+  ) {
+    this.slot = new Int16Array(rows * cols).fill(-1);
+  }
+
+  profile(stretch: Stretch): Profile {
+    const { across, distanceNm, binNm, slot } = this;
+    const half = Math.ceil(this.reachNm / binNm);
+    const many = new Int32Array(2 * half);
+    const sum = new Float64Array(2 * half);
+    const sumD = new Float64Array(2 * half);
+    for (const p of stretch.pixels) {
+      const b = Math.floor(distanceNm[p] / binNm) + half;
+      if (b < 0 || b >= 2 * half) continue;
+      many[b]++;
+      sum[b] += across[p];
+      sumD[b] += distanceNm[p];
+    }
+    const index = new Int32Array(2 * half).fill(-1);
+    let count = 0;
+    for (let b = 0; b < 2 * half; b++) if (many[b] >= LEAST_PIXELS) index[b] = count++;
+    const value = new Float64Array(count);
+    const distance = new Float64Array(count);
+    const pixels = new Float64Array(count);
+    for (let b = 0; b < 2 * half; b++) {
+      if (index[b] < 0) continue;
+      value[index[b]] = sum[b] / many[b];
+      distance[index[b]] = sumD[b] / many[b];
+      pixels[index[b]] = many[b];
+    }
+    const kept: number[] = [];
+    for (const p of stretch.pixels) {
+      const b = Math.floor(distanceNm[p] / binNm) + half;
+      if (b < 0 || b >= 2 * half || index[b] < 0) continue;
+      slot[p] = index[b];
+      kept.push(p);
+    }
+    const covariance = this.covariance(kept, count, pixels);
+    for (const p of kept) slot[p] = -1;
+    return {
+      count,
+      distanceNm: distance,
+      value,
+      covariance,
+      reachInsulatingNm: count > 0 ? Math.max(0, -distance[0]) : 0,
+      reachMetallicNm: count > 0 ? Math.max(0, distance[count - 1]) : 0,
+    };
+  }
+
+  private covariance(kept: readonly number[], count: number, pixels: Float64Array): Float64Array {
+    const { slot, rows, cols, noise, distanceNm } = this;
+    const c = new Float64Array(count * count);
+    const sd = (p: number): number => (distanceNm[p] < 0 ? noise.sdInsulating : noise.sdMetallic);
+    const lags: { dy: number; dx: number; rho: number }[] = [];
+    for (let dy = 0; dy <= NEAR_LAG; dy++) {
+      for (let dx = -NEAR_LAG; dx <= NEAR_LAG; dx++) {
+        if (dy === 0 && dx <= 0) continue;
+        const rho = noise.near[dy][dx + NEAR_LAG];
+        if (rho !== 0) lags.push({ dy, dx, rho });
+      }
+    }
+    for (const p of kept) {
+      const a = slot[p];
+      const j = p % cols;
+      const s = sd(p);
+      c[a * count + a] += s * s;
+      for (const { dy, dx, rho } of lags) {
+        const q = p + dy * cols + dx;
+        if (j + dx < 0 || j + dx >= cols || q >= rows * cols || slot[q] < 0) continue;
+        const v = rho * s * sd(q);
+        const b = slot[q];
+        c[a * count + b] += v;
+        c[b * count + a] += v;
+      }
+    }
+    this.addRows(kept, count, c);
+    for (let a = 0; a < count; a++) for (let b = 0; b < count; b++) c[a * count + b] /= pixels[a] * pixels[b];
+    return c;
+  }
+
+  /** Σ over pairs of pixels of one row (and of rows near each other) of what they share; a bin lies wholly in few rows or in many. */
+  private addRows(kept: readonly number[], count: number, c: Float64Array): void {
+    const { slot, cols, noise, distanceNm } = this;
+    // Per row: the bins it meets, with the sum of its pixels' standard deviations by class.
+    const rows = new Map<number, Map<number, Float64Array>>();
+    for (const p of kept) {
+      const i = Math.floor(p / cols);
+      let line = rows.get(i);
+      if (line === undefined) rows.set(i, (line = new Map()));
+      let w = line.get(slot[p]);
+      if (w === undefined) line.set(slot[p], (w = new Float64Array(CLASSES)));
+      w[classOf(distanceNm[p], noise.nearWallNm)] += distanceNm[p] < 0 ? noise.sdInsulating : noise.sdMetallic;
+    }
+    for (const [i, line] of rows) {
+      for (const [a, wa] of line) {
+        for (const [b, wb] of line) {
+          let v = 0;
+          for (let k = 0; k < CLASSES; k++)
+            for (let l = 0; l < CLASSES; l++) v += wa[k] * noise.row[k * CLASSES + l] * wb[l];
+          c[a * count + b] += v;
+        }
+      }
+      for (let lag = 1; lag <= ROW_LAG; lag++) {
+        const below = rows.get(i + lag);
+        if (noise.rowLag[lag] === 0 || below === undefined) continue;
+        for (const [a, wa] of line) {
+          for (const [b, wb] of below) {
+            const v = noise.rowLag[lag] * total(wa) * total(wb);
+            c[a * count + b] += v;
+            c[b * count + a] += v;
+          }
+        }
+      }
+    }
+  }
+}
+
+function total(w: Float64Array): number {
+  return w[0] + w[1] + w[2] + w[3];
+}
