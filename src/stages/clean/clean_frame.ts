@@ -150,7 +150,7 @@ function cleanSignal(
       if (pass === 1) flat = flatPixels(log, amplitude, logNoise, rows, cols);
       const links = linkRows(log, amplitude, flat, logNoise, rows, cols, false, s.leastRowPixels);
       const offsets = splitRowOffsets(links, rows);
-      if (pass === 0) rowGainSd = offsets.whiteSd;
+      rowGainSd = Math.hypot(rowGainSd, offsets.whiteSd);
       // neither the walk nor lasting jumps: a front between the states that runs along the rows looks like them
       const correction = (i: number): number => -(offsets.white[i] + offsets.outlying[i]);
       addRows(log, rows, cols, correction);

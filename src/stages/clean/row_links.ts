@@ -2,7 +2,7 @@ import { medianInPlace, wrapAngle } from "../../numerics/quantile.js";
 import { type NoiseByLevel, sdAt, shortWay } from "./noise.js";
 
 /** Rows further apart than this (unmeasured ones between) are not compared. */
-const LONGEST_GAP = 8;
+const LONGEST_GAP = 16;
 /** Bisquare constant: wide, so that nearly all pixels of one state keep a weight near 1 (see `v` below). */
 const BISQUARE = 6;
 const ITERATIONS = 4;

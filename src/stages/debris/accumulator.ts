@@ -22,7 +22,7 @@ export class DebrisAccumulator {
   readonly #drifts: readonly Drift[];
   readonly #tip: Tip | null;
   readonly #settings: DebrisSettings;
-  #grid: Grid | null = null;
+  grid: Grid | null = null;
 
   /** @param drifts of all frames: they say how large a grid is needed */
   constructor(drifts: readonly Drift[], tip: Tip | null, settings: DebrisSettings) {
@@ -36,8 +36,8 @@ export class DebrisAccumulator {
     const { pixel } = clean;
     if (drift.xNm === null || drift.yNm === null) return;
     if ((drift.sdNm ?? 0) > Math.min(pixel.xNm, pixel.yNm)) return;
-    this.#grid ??= this.#makeGrid(clean);
-    const grid = this.#grid;
+    this.grid ??= this.#makeGrid(clean);
+    const grid = this.grid;
     const rows = rowsOf(clean.amplitude);
     const cols = colsOf(clean.amplitude);
     const { ringXPx, ringYPx } = reaches(pixel, this.#tip, this.#settings);
@@ -48,12 +48,14 @@ export class DebrisAccumulator {
     const log = new Float32Array(amplitude.length);
     for (let p = 0; p < log.length; p++) log[p] = amplitude[p] > 0 ? Math.log(amplitude[p]) : Number.NaN;
     const byAmplitude = departures(log, ringOf(log, rows, cols, ringXPx, ringYPx), null, rows, cols);
-    addChannel(grid.amplitude, byAmplitude.departure, grid, rows, cols, atRow, atCol);
+    addChannel(grid.amplitude, byAmplitude.strict, grid, rows, cols, atRow, atCol);
+    addChannel(grid.looseAmplitude, byAmplitude.loose, grid, rows, cols, atRow, atCol);
+    grid.frames++;
     if (clean.phase !== null && grid.phase !== null) {
       const phase = dataOf(clean.phase);
       const ring = ringOf(phase, rows, cols, ringXPx, ringYPx);
       const byPhase = departures(phase, ring, byAmplitude.flat, rows, cols);
-      addChannel(grid.phase, byPhase.departure, grid, rows, cols, atRow, atCol);
+      addChannel(grid.phase, byPhase.strict, grid, rows, cols, atRow, atCol);
     }
     if (clean.topography !== null && grid.height !== null) {
       addHeights(
@@ -70,11 +72,11 @@ export class DebrisAccumulator {
 
   /** The map of debris. Empty (0 × 0) where no frame was added. */
   finish(): DebrisMap {
-    if (this.#grid === null) {
+    if (this.grid === null) {
       const pixel = { xNm: 1, yNm: 1 };
       return { originXNm: 0, originYNm: 0, pixel, rows: 0, cols: 0, mask: new Uint8Array(0), spots: 0 };
     }
-    return decide(this.#grid, this.#tip, this.#settings);
+    return decide(this.grid, this.#tip, this.#settings);
   }
 
   #makeGrid(first: CleanFrame): Grid {
@@ -100,7 +102,9 @@ export class DebrisAccumulator {
       originYNm,
       pixel,
       height: { sum: new Float32Array(n), squares: new Float32Array(n), count: new Uint16Array(n) },
+      frames: 0,
       amplitude: channel(),
+      looseAmplitude: channel(),
       phase: channel(),
     };
   }

@@ -31,9 +31,11 @@ export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMa
       if (height[p] > REACH_SHARE * s.heightSigmas) candidate[p] = 1;
     }
   }
+  const least = Math.max(s.leastFrames, s.leastCoverage * grid.frames);
   for (const channel of [grid.amplitude, grid.phase]) {
-    if (channel !== null) markChannel(channel, height, rows, cols, s, seed, candidate);
+    if (channel !== null) markChannel(channel, least, height, rows, cols, s, seed, candidate);
   }
+  markChannel(grid.looseAmplitude, Infinity, height, rows, cols, s, seed, candidate);
   const spots = growSpots(seed, candidate, rows, cols, s.leastPixels);
   const { marginXPx, marginYPx } = reaches(grid.pixel, tip, s);
   return {
@@ -47,8 +49,10 @@ export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMa
   };
 }
 
+/** Marks cores (`seed`) and what belongs to them (`candidate`); seen in fewer than `leastFrames` frames only with a bump. */
 function markChannel(
   channel: ChannelSums,
+  leastFrames: number,
   height: Float32Array | null,
   rows: number,
   cols: number,
@@ -64,9 +68,10 @@ function markChannel(
     const ownSd = 1 / Math.sqrt(effective[p]);
     if (size < REACH_SHARE * SIGNIFICANT * ownSd) continue;
     const seen = (mean[p] > 0 ? channel.above[p] : channel.below[p]) / frames;
-    if (seen >= 0.5 * s.leastShare) candidate[p] = 1;
+    const supported = height !== null && height[p] > SUPPORT;
+    if (seen >= 0.5 * s.leastShare && (leastFrames < Infinity || supported)) candidate[p] = 1;
     if (size < s.effectSigmas || size < SIGNIFICANT * ownSd || seen < s.leastShare) continue;
-    if (frames >= s.leastFrames || (height !== null && height[p] > SUPPORT)) seed[p] = 1;
+    if (frames >= leastFrames || supported) seed[p] = 1;
   }
 }
 

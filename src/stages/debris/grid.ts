@@ -34,6 +34,10 @@ export interface Grid {
   readonly originYNm: number;
   readonly pixel: PixelSize;
   readonly height: HeightSums | null;
+  /** Frames that were added. */
+  frames: number;
   readonly amplitude: ChannelSums;
+  /** The same with pixels between the levels of a frame's two states: no proof of debris by itself. */
+  readonly looseAmplitude: ChannelSums;
   readonly phase: ChannelSums | null;
 }

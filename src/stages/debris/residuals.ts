@@ -19,7 +19,8 @@ interface Classes {
 /** Departures of the logarithm of the amplitude, or of the phase, from surroundings of one state.
  *
  *  A small domain in the midst of the other state, or the foot of a wall, departs like debris. In frames that show both states a pixel
- *  between the two levels is therefore left out: what departs that way counts only where the frame shows one state.
+ *  between the two levels is therefore left out of `strict`: what departs that way counts only where the frame shows one state, or
+ *  (`loose`) together with a bump in the topography.
  *  @param allowed 1 = surroundings known to be of one state from another channel; null = judge by this channel alone. Blocks. */
 export function departures(
   values: Float32Array,
@@ -27,7 +28,7 @@ export function departures(
   allowed: Uint8Array | null,
   rows: number,
   cols: number,
-): { readonly departure: Departure; readonly flat: Uint8Array } {
+): { readonly strict: Departure; readonly loose: Departure; readonly flat: Uint8Array } {
   const sd0 = pixelNoise(values, rows, cols);
   const tolerance = 0.8 * sd0 + 0.03;
   const blocks = ring.reference.length;
@@ -36,7 +37,8 @@ export function departures(
     if (ring.spread[b] <= tolerance && (allowed === null || allowed[b] === 1)) flat[b] = 1;
   }
   const classes = classify(values, ring, flat, rows, cols, sd0);
-  const departure = new Float32Array(rows * cols).fill(Number.NaN);
+  const strict = new Float32Array(rows * cols).fill(Number.NaN);
+  const loose = new Float32Array(rows * cols).fill(Number.NaN);
   const [first, second] = classes.levels;
   for (let i = 0; i < rows; i++) {
     for (let j = 0; j < cols; j++) {
@@ -47,6 +49,8 @@ export function departures(
       const v = values[p];
       let own = 0;
       if (second !== undefined && Math.abs(reference - second) < Math.abs(reference - first)) own = 1;
+      const z = (v - reference) / classes.sds[own];
+      loose[p] = z;
       if (second !== undefined) {
         // walls reach to where their sectors already agree again, so in such frames all sectors must agree
         if (ring.widest[b] > tolerance) continue;
@@ -55,10 +59,10 @@ export function departures(
         const beyond = 1 + Math.max(0.25, (3 * classes.sds[1 - own]) / Math.abs(other - reference));
         if (towards > (2 * classes.sds[own]) / Math.abs(other - reference) && towards < beyond) continue;
       }
-      departure[p] = (v - reference) / classes.sds[own];
+      strict[p] = z;
     }
   }
-  return { departure, flat };
+  return { strict, loose, flat };
 }
 
 function classify(

@@ -24,13 +24,20 @@ export const settings = {
   leastFrames: {
     default: 4,
     unit: "1",
-    means: "without a bump in the topography debris must have been seen in at least this many frames",
+    means: "without a bump in the topography debris must have been looked for in at least this many frames",
     min: 2,
+  },
+  leastCoverage: {
+    default: 0.35,
+    unit: "1",
+    means: "… and in at least this share of all frames: a few frames of like temperature show the same domains",
+    min: 0,
+    max: 1,
   },
   leastShare: {
     default: 0.6,
     unit: "1",
-    means: "… and in at least this share of the frames in which its surroundings were of one state",
+    means: "… and have been seen in at least this share of the frames in which its surroundings were of one state",
     min: 0.3,
     max: 1,
   },
