@@ -9,6 +9,8 @@ export interface Peak {
   readonly lagY: number;
   /** Fisher's transform of the correlation times √(pixels), over its spread at all other lags. */
   readonly height: number;
+  /** Standard deviation of the Gaussian of this height and curvature: about the correlation length of the structure; pixels of the grid. */
+  readonly widthPx: number;
 }
 
 export interface CoarseOptions {
@@ -18,7 +20,7 @@ export interface CoarseOptions {
 }
 
 /** Relief wider than this share of the side (tilt, bow) is taken off before correlating: it is the same at any shift. */
-const WIDEST = 0.12;
+const WIDEST = 0.2;
 /** Structure is bent smoothly to this many robust standard deviations, so that one high particle does not outvote the rest. */
 const CLIP = 4;
 const PEAKS = 4;
@@ -156,7 +158,9 @@ function findPeaks(score: Float64Array, width: number, height: number, reachX: n
     const lagX = x - reachX + vertex(score[p - 1], score[p], score[p + 1]);
     const lagY = y - reachY + vertex(score[p - width], score[p], score[p + width]);
     if (peaks.some((q) => Math.hypot(q.lagX - lagX, q.lagY - lagY) < APART_PX)) continue;
-    peaks.push({ lagX, lagY, height: score[p] / spread });
+    const bend = 0.5 * (score[p - 1] + score[p + 1] + score[p - width] + score[p + width] - 4 * score[p]);
+    const widthPx = bend < 0 ? Math.min(10, Math.sqrt(-score[p] / bend)) : 1;
+    peaks.push({ lagX, lagY, height: score[p] / spread, widthPx });
     if (peaks.length === PEAKS) break;
   }
   return peaks;

@@ -1,5 +1,6 @@
 import type { Grid } from "./grid.js";
-import { scoreCovariance, type Sym2 } from "./score_covariance.js";
+import { stationaryCovariance, type ScoreParts } from "./noise_covariance.js";
+import { larger, scoreCovariance, type Sym2 } from "./score_covariance.js";
 import { gradientOf, sampleShifted, type Shifted } from "./shifted.js";
 
 export interface FineShift {
@@ -25,6 +26,8 @@ export interface FineOptions {
   /** Stop when a step is shorter; pixels. */
   readonly tolerancePx: number;
   readonly leastPixels: number;
+  /** Noise is correlated over less than this, pixels; null: a rough covariance will do. */
+  readonly reachPx: { readonly x: number; readonly y: number } | null;
 }
 
 const ITERATIONS = 25;
@@ -88,7 +91,10 @@ export function fineShift(
   const gy = sampleShifted(grid(slopes.y), rows, cols, dx, dy);
   const a = work.slope(gx, gy, true);
   const score = work.score();
-  const covariance = scoreCovariance(work.blocks.x, work.blocks.y, work.blocks.rows, work.blocks.cols, null);
+  const scatter = scoreCovariance(work.blocks.x, work.blocks.y, work.blocks.rows, work.blocks.cols, null);
+  const reach = options.reachPx;
+  const alike = reach === null ? null : stationaryCovariance(work.parts(), reach.x, reach.y);
+  const covariance = alike === null ? scatter : larger(alike, scatter);
   const level = work.slopeAlongRows(gx, gy);
   const tilted = scoreCovariance(work.blocks.x, work.blocks.y, work.blocks.rows, work.blocks.cols, level.weights);
   const mean = sandwich(a, covariance);
@@ -285,6 +291,27 @@ class Work {
       sy += blocks.y[b];
     }
     return { x: sx, y: sy };
+  }
+
+  /** What `stationaryCovariance` needs, in new arrays. */
+  parts(): ScoreParts {
+    const { rows, cols, residual, weight, meanX, meanY } = this;
+    const { x, y } = this.gradient;
+    const n = rows * cols;
+    const e = new Float32Array(n);
+    const usable = new Uint8Array(n);
+    const ux = new Float32Array(n);
+    const uy = new Float32Array(n);
+    for (let i = 0; i < rows; i++) {
+      for (let p = i * cols; p < (i + 1) * cols; p++) {
+        if (weight[p] === 0) continue;
+        usable[p] = 1;
+        e[p] = weight[p] * residual[p];
+        ux[p] = x[p] - meanX[i];
+        uy[p] = y[p] - meanY[i];
+      }
+    }
+    return { rows, cols, residual: e, usable, ux, uy };
   }
 
   /** Σ w G̃ ∂Mᵀ; with the derivative of the weighted residual instead of the weight where the covariance needs it. */

@@ -8,6 +8,10 @@ import type { DriftImage, FailedShift, MeasuredShift, PairShift } from "./types.
 const COARSE_SIDE = 128;
 /** Fewer pixels than this in the overlap say nothing. */
 const LEAST_PIXELS = 200;
+/** Peaks down to this share of `leastPeak` are kept as ambiguous. */
+const DOUBTFUL = 0.8;
+/** White noise blurred by σ is correlated as exp(−x²/4σ²): nothing is left at five. Noise correlated before the blur has room as well. */
+const NOISE_REACH = 6;
 
 type Attempt = Omit<MeasuredShift, "reference" | "moving"> | FailedShift["reason"];
 
@@ -68,17 +72,18 @@ function attempt(
   let found: { peaks: Peak[]; factor: number } | null = null;
   for (let factor = Math.max(1, Math.round(side / COARSE_SIDE)); ; factor = Math.floor(factor / 2)) {
     const peaks = coarsePeaks(decimate(r, factor), decimate(m, factor), s);
-    if (peaks.length > 0 && peaks[0].height >= s.leastPeak) found = { peaks, factor };
+    if (peaks.length > 0 && peaks[0].height >= DOUBTFUL * s.leastPeak) found = { peaks, factor };
     // fine structure drowns when pixels are put together: once more with smaller blocks
     if (found !== null || factor === 1) break;
   }
   if (found === null) return "no-peak";
   const { peaks, factor } = found;
   const ratio = peaks.length > 1 ? peaks[1].height / peaks[0].height : 0;
-  const ambiguous = ratio > s.peakRatio;
+  const ambiguous = ratio > s.peakRatio || peaks[0].height < s.leastPeak;
   const peak = ambiguous ? nearestTo(predicted, peaks, factor, pixel, s) : peaks[0];
 
-  const fine = refine(r, m, peak, factor, least);
+  const reachPx = { x: Math.ceil(NOISE_REACH * sigmaX), y: Math.ceil(NOISE_REACH * sigmaY) };
+  const fine = refine(r, m, peak, factor, least, reachPx);
   if (fine === null) return "not-converged";
   const overlap = fine.pixels / Math.min(knownPixels(r), knownPixels(m));
   return {
@@ -123,22 +128,30 @@ function nearestTo(
 }
 
 /** From whole pixels of the coarse grid to the full one: first on the coarse grid itself, whose basin is wider. */
-function refine(r: Grid, m: Grid, peak: Peak, factor: number, leastPixels: number): FineShift | null {
+function refine(
+  r: Grid,
+  m: Grid,
+  peak: Peak,
+  factor: number,
+  leastPixels: number,
+  reachPx: { readonly x: number; readonly y: number },
+): FineShift | null {
   let dx = peak.lagX * factor;
   let dy = peak.lagY * factor;
-  if (factor > 1) {
-    const rough = fineShift(
-      decimate(r, factor),
-      decimate(m, factor),
-      { dx: peak.lagX, dy: peak.lagY },
-      { leashPx: 1.5, tolerancePx: 0.01, leastPixels: Math.max(50, leastPixels / (2 * factor * factor)) },
-    );
+  if (factor > 1 || peak.widthPx > 3) {
+    const start = { dx: peak.lagX, dy: peak.lagY };
+    const rough = fineShift(decimate(r, factor), decimate(m, factor), start, {
+      leashPx: 1 + peak.widthPx,
+      tolerancePx: 0.01,
+      leastPixels: Math.max(50, leastPixels / (2 * factor * factor)),
+      reachPx: null,
+    });
     if (rough !== null) {
       dx = rough.dx * factor;
       dy = rough.dy * factor;
     }
   }
-  return fineShift(r, m, { dx, dy }, { leashPx: factor + 1, tolerancePx: 1e-4, leastPixels });
+  return fineShift(r, m, { dx, dy }, { leashPx: factor + 1, tolerancePx: 1e-4, leastPixels, reachPx });
 }
 
 function knownPixels(grid: Grid): number {

@@ -47,3 +47,9 @@ export function scoreCovariance(
   if (xx < 0.5 * ownX || yy < 0.5 * ownY || xx * yy <= xy * xy) return { xx: ownX, xy: ownXY, yy: ownY };
   return { xx, xy, yy };
 }
+
+/** The first, scaled up to the second where that is larger over both axes together. */
+export function larger(a: Sym2, b: Sym2): Sym2 {
+  const factor = Math.max(1, 0.5 * (b.xx / a.xx + b.yy / a.yy));
+  return { xx: factor * a.xx, xy: factor * a.xy, yy: factor * a.yy };
+}

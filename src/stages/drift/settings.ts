@@ -16,9 +16,9 @@ export const settings = {
     max: 0.9,
   },
   leastPeak: {
-    default: 7,
+    default: 6,
     unit: "1",
-    means: "least height of the correlation peak, in standard deviations of the correlation away from it",
+    means: "least height of the correlation peak, in standard deviations of the correlation at other shifts",
     min: 3,
     max: 100,
   },
