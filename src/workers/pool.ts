@@ -1,3 +1,4 @@
+import { setMaxListeners } from "node:events";
 import { fileURLToPath } from "node:url";
 import path from "node:path";
 import { Piscina } from "piscina";
@@ -35,6 +36,8 @@ export function makeRunner(workers: number, signal?: AbortSignal): Runner {
       close: () => Promise.resolve(),
     };
   }
+  // One listener a waiting task; that many are no leak.
+  if (signal !== undefined) setMaxListeners(0, signal);
   const pool = new Piscina({
     filename: workerFile(),
     minThreads: workers,

@@ -1,0 +1,33 @@
+import { spawn, spawnSync } from "node:child_process";
+import path from "node:path";
+import { fileURLToPath } from "node:url";
+
+export const TOP = path.dirname(path.dirname(path.dirname(fileURLToPath(import.meta.url))));
+const ENTRY = path.join(TOP, "scripts/coldseam.mjs");
+
+export interface Ended {
+  readonly code: number | null;
+  readonly out: string;
+  readonly err: string;
+}
+
+/** Runs the program as a user does, in a process of its own. */
+export function coldseam(...args: string[]): Ended {
+  const r = spawnSync(process.execPath, [ENTRY, ...args], { encoding: "utf8", cwd: TOP, maxBuffer: 1 << 28 });
+  return { code: r.status, out: r.stdout, err: r.stderr };
+}
+
+/** Starts the program and sends it a signal once `when` has been seen on its standard error. */
+export function coldseamInterrupted(signal: NodeJS.Signals, when: RegExp, ...args: string[]): Promise<Ended> {
+  return new Promise((resolve) => {
+    const child = spawn(process.execPath, [ENTRY, ...args], { cwd: TOP });
+    let out = "";
+    let err = "";
+    child.stdout.on("data", (d: Buffer) => (out += d.toString()));
+    child.stderr.on("data", (d: Buffer) => {
+      err += d.toString();
+      if (when.test(err)) child.kill(signal);
+    });
+    child.on("close", (code) => resolve({ code, out, err }));
+  });
+}
