@@ -83,7 +83,7 @@ export function leftCensoredDistribution(values: ArrayLike<number>, isLimit: Arr
     Array.from(values, (v) => -v),
     Array.from(values, (_, i) => !isLimit[i]),
   );
-  return steps.map((s) => ({ value: -s.time, below: s.survival, se: s.se })).reverse();
+  return steps.map((s) => ({ value: -s.time, below: s.survival, se: s.se })).toReversed();
 }
 
 /** Median of values some of which are only upper limits, with a two-sided interval of `level`. `median` is null where it lies below

@@ -10,9 +10,9 @@ const XI_MAX = XI_CELLS * XI_STEP;
 const RHO_CELLS = 32;
 const RHO_STEP = 1 / RHO_CELLS;
 /** Four numbers a node: F, h_ξ ∂F/∂ξ, h_ρ ∂F/∂ρ, h_ξ h_ρ ∂²F/∂ξ∂ρ. Node (i, j) of ξ and ρ at (j·(XI_CELLS + 1) + i)·4. */
-let table: Float64Array | null = null;
+let table = new Float64Array(0);
 
-function buildTable(): Float64Array {
+function buildTable(): Float64Array<ArrayBuffer> {
   const rowLength = (XI_CELLS + 1) * 4;
   const built = new Float64Array(rowLength * (RHO_CELLS + 1));
   const out = new Float64Array(4);
@@ -64,7 +64,7 @@ function prepare(w: number, sigma: number): void {
   const variance = KINK_VARIANCE * w * w;
   const total = variance + sigma * sigma;
   if (!(w >= 0 && sigma >= 0 && total > 0)) throw new RangeError(`no kink of width ${w} with blur ${sigma}`);
-  table ??= buildTable();
+  if (table.length === 0) table = buildTable();
   scale = Math.sqrt(total);
   rhoOfLast = variance / total;
   const position = rhoOfLast * RHO_CELLS;
@@ -97,7 +97,7 @@ export function fastKink(x: number, w: number, sigma: number, out: Float64Array)
   const i = Math.floor(position);
   const t = position - i;
   const q = 1 - t;
-  const f = table as Float64Array;
+  const f = table;
   const A = nodeOfLast + i * 4;
   const B = A + (XI_CELLS + 1) * 4;
   // Along ρ first: F, h F_ξ at both ξ nodes, and their slopes along ρ.

@@ -120,7 +120,7 @@ export function leastSquares(
       for (let i = 0; i < n; i++) trial[i] = p[i] + (PROBE * step[i]) / norms[i];
       const known = problem.evaluate(trial, rTrial, null);
       bend.fill(0);
-      for (let k = 0; known && k < m; k++) {
+      for (let k = 0; k < m; k++) {
         let slope = 0;
         for (let i = 0; i < n; i++) slope += (jacobian[k * n + i] * step[i]) / norms[i];
         const curvature = ((rTrial[k] - r[k]) / PROBE - slope) * (2 / PROBE);

@@ -1,4 +1,4 @@
-import fc from "fast-check";
+import * as fc from "fast-check";
 import { describe, expect, it } from "vitest";
 import {
   kaplanMeier,
@@ -52,10 +52,10 @@ describe("left-censored median", () => {
   });
 
   it("counts a limit equal to a measured value as below it", () => {
-    expect(leftCensoredDistribution([20, 20, 30], [1, 0, 0])).toMatchObject([
-      { value: 20, below: expect.closeTo(1 / 3, 12) as number },
-      { value: 30, below: expect.closeTo(2 / 3, 12) as number },
-    ]);
+    const steps = leftCensoredDistribution([20, 20, 30], [1, 0, 0]);
+    expect(steps.map((s) => s.value)).toEqual([20, 30]);
+    expect(steps[0].below).toBeCloseTo(1 / 3, 12);
+    expect(steps[1].below).toBeCloseTo(2 / 3, 12);
   });
 
   it.each([

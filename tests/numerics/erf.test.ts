@@ -1,12 +1,9 @@
-import { readFileSync } from "node:fs";
 import { describe, expect, it } from "vitest";
 import { erf, erfc, erfcx, normalCdf, normalPdf, normalQuantile } from "../../src/numerics/erf.js";
 import { faddeeva } from "../../src/numerics/faddeeva.js";
+import { fixture } from "../published/fixture.js";
 
-const d = JSON.parse(readFileSync("fixtures/special_functions.json", "utf8")) as Record<
-  "erf" | "normal" | "normal_quantile" | "faddeeva",
-  { rows: number[][] }
->;
+const d = fixture<Record<"erf" | "normal" | "normal_quantile" | "faddeeva", { rows: number[][] }>>("special_functions");
 const relative = (value: number, expected: number): number =>
   expected === 0 ? Math.abs(value) : Math.abs((value - expected) / expected);
 

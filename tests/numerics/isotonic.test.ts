@@ -1,4 +1,4 @@
-import fc from "fast-check";
+import * as fc from "fast-check";
 import { describe, expect, it } from "vitest";
 import { crossing, isotonicRegression } from "../../src/numerics/isotonic.js";
 
@@ -31,7 +31,7 @@ describe("isotonic regression", () => {
       fc.property(points, (list) => {
         const y = list.map((p) => p[0]);
         const w = list.map((p) => p[1]);
-        const mirrored = isotonicRegression([...y].reverse(), [...w].reverse()).reverse();
+        const mirrored = isotonicRegression(y.toReversed(), w.toReversed()).toReversed();
         isotonicRegression(y, w, false).forEach((v, i) => expect(v).toBeCloseTo(mirrored[i], 10));
       }),
     );

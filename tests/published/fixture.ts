@@ -2,5 +2,6 @@ import { readFileSync } from "node:fs";
 
 /** A file of outside values from `fixtures/`; the caller states its shape. */
 export function fixture<T>(name: string): T {
-  return JSON.parse(readFileSync(`fixtures/${name}.json`, "utf8")) as T;
+  const value: T = JSON.parse(readFileSync(`fixtures/${name}.json`, "utf8"));
+  return value;
 }

@@ -1,7 +1,7 @@
-import { readFileSync } from "node:fs";
 import { describe, expect, it } from "vitest";
 import { leastSquares, type LeastSquaresProblem } from "../../src/numerics/least_squares.js";
 import { parseFormula } from "./dual_formula.js";
+import { fixture } from "./fixture.js";
 
 interface StrdProblem {
   model: string;
@@ -15,9 +15,7 @@ interface StrdProblem {
   y: number[];
   refit: { parameters: number[]; standard_deviation: number[]; residual_sum_of_squares: number };
 }
-const { problems } = JSON.parse(readFileSync("fixtures/nist_strd.json", "utf8")) as {
-  problems: Record<string, StrdProblem>;
-};
+const { problems } = fixture<{ problems: Record<string, StrdProblem> }>("nist_strd");
 
 function toLeastSquares(p: StrdProblem): LeastSquaresProblem {
   const n = p.certified.length;
