@@ -14,11 +14,11 @@ export function faddeeva(x: number, y: number, out: Float64Array): void {
   const ax = Math.abs(x);
   const ay = Math.abs(y);
   firstQuadrant(ax, ay, out);
-  // w(−z*) = w(z)*; w(z*) = (2 e^{−z²} − w(z)... )* below the real axis.
+  // The other quadrants by w(−z*) = w(z)* and w(−z) = 2e^{−z²} − w(z).
   if (y < 0) {
     const size = 2 * Math.exp((ay - ax) * (ay + ax));
     const turn = 2 * ax * ay;
-    // w(−z) = 2 e^{−z²} − w(z) with z = ax + i ay lies at −ax − i ay.
+    // Now at −ax − i ay.
     out[0] = size * Math.cos(turn) - out[0];
     out[1] = -size * Math.sin(turn) - out[1];
     if (x > 0) out[1] = -out[1];
