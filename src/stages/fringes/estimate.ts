@@ -33,9 +33,9 @@ export function estimateFringe(
   s: FringeSettings,
 ): FringeEstimate {
   const n = profile.count;
-  const l = noiseFactor(profile);
+  const l = noiseFactor(profile, null);
   const forward = new FringeForward(candidate.side, chord, table.blur, reachNm);
-  const nuisances = nuisanceMatrix(profile, table, chord, reachNm);
+  const nuisances = nuisanceMatrix(profile, table, chord, reachNm, s.levelSdRad);
   const sideReach = candidate.side === "metallic" ? profile.reachMetallicNm : profile.reachInsulatingNm;
   const member = table.members[candidate.member];
   const shortest = Math.log(table.members.reduce((a, m) => Math.min(a, m.periodNm), Infinity) / 1.5);
@@ -48,7 +48,7 @@ export function estimateFringe(
 
   const problem: LeastSquaresProblem = {
     parameters: fitted,
-    residuals: n,
+    residuals: n + NUISANCES,
     evaluate(q, r, jacobian) {
       p.set(q);
       if (!free) p.set(fixed, NUISANCES + 2);
@@ -65,6 +65,11 @@ export function estimateFringe(
         for (let c = NUISANCES; c < fitted; c++) jacobian[k * fitted + c] = out[2 + c - NUISANCES];
       }
       whiten(l, n, r);
+      for (let c = 0; c < NUISANCES; c++) {
+        r[n + c] = p[c];
+        if (jacobian === null) continue;
+        for (let a = 0; a < fitted; a++) jacobian[(n + c) * fitted + a] = a === c ? 1 : 0;
+      }
       for (let c = 0; jacobian !== null && c < fitted; c++) {
         for (let k = 0; k < n; k++) column[k] = jacobian[k * fitted + c];
         whiten(l, n, column);
@@ -79,7 +84,7 @@ export function estimateFringe(
   linearStart(problem, start);
   const fit = leastSquares(problem, start, { maxIterations: 60 });
   if (fit.status === "singular" || !fit.parameters.every(Number.isFinite)) return NOTHING;
-  problem.evaluate(fit.parameters, new Float64Array(n), null);
+  problem.evaluate(fit.parameters, new Float64Array(n + NUISANCES), null);
 
   const contrast = largestDeparture(forward, table, chord, candidate.side === "metallic" ? 1 : -1, sideReach);
   const variance = departureVariance(forward, table, chord, contrast.distanceNm, fit.covariance, fitted);

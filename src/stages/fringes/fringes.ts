@@ -61,7 +61,7 @@ export function testFringes(
     const candidates = candidatesFor(profile, table, s);
     if (profile.count < LEAST_BINS || candidates.length === 0) continue;
     const drawn = childSeed(seed, stretch.wall, stretch.stretch);
-    const found = supTest(profile, table, chord, candidates, s.reachNm, s.draws, drawn);
+    const found = supTest(profile, table, chord, candidates, s.reachNm, s.levelSdRad, s.draws, drawn);
     if (found === null) continue;
     const free = found.pValue < FIT_BELOW_P;
     tests.push({
@@ -100,9 +100,9 @@ function membersFrom(shortestNm: number, longestNm: number): Member[] {
 
 function candidatesFor(profile: Profile, table: FringeTable, s: FringeSettings): Candidate[] {
   const out: Candidate[] = [];
+  if (Math.min(profile.reachMetallicNm, profile.reachInsulatingNm) < s.leastReachNm) return out;
   for (const side of ["metallic", "insulating"] as const) {
     const reach = side === "metallic" ? profile.reachMetallicNm : profile.reachInsulatingNm;
-    if (reach < s.leastReachNm) continue;
     table.members.forEach((m, member) => {
       if (m.periodNm * LEAST_SHARE <= reach) out.push({ side, member });
     });

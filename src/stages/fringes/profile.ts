@@ -67,7 +67,8 @@ export class Profiler {
       slot[p] = index[b];
       kept.push(p);
     }
-    const covariance = this.covariance(kept, count, pixels);
+    const classes = Uint8Array.from(distance, (d) => classOf(d, this.noise.nearWallNm));
+    const covariance = this.covariance(kept, count, pixels, classes);
     for (const p of kept) slot[p] = -1;
     return {
       count,
@@ -79,7 +80,12 @@ export class Profiler {
     };
   }
 
-  private covariance(kept: readonly number[], count: number, pixels: Float64Array): Float64Array {
+  private covariance(
+    kept: readonly number[],
+    count: number,
+    pixels: Float64Array,
+    classes: Uint8Array,
+  ): Float64Array {
     const { slot, rows, cols, noise, distanceNm } = this;
     const c = new Float64Array(count * count);
     const sd = (p: number): number => (distanceNm[p] < 0 ? noise.sdInsulating : noise.sdMetallic);
@@ -105,39 +111,41 @@ export class Profiler {
         c[b * count + a] += v;
       }
     }
-    this.addRows(kept, count, c);
+    this.addRows(kept, count, c, classes);
     for (let a = 0; a < count; a++) for (let b = 0; b < count; b++) c[a * count + b] /= pixels[a] * pixels[b];
     return c;
   }
 
   /** Σ over pairs of pixels of one row (and of rows near each other) of what they share; a bin lies wholly in few rows or in many. */
-  private addRows(kept: readonly number[], count: number, c: Float64Array): void {
+  private addRows(kept: readonly number[], count: number, c: Float64Array, classes: Uint8Array): void {
     const { slot, cols, noise, distanceNm } = this;
-    // Per row: the bins it meets, with the sum of its pixels' standard deviations by class.
-    const rows = new Map<number, Map<number, Float64Array>>();
+    if (kept.length === 0) return;
+    // Per row and bin the sum of the pixels' standard deviations; `kept` goes from row to row.
+    const top = Math.floor(kept[0] / cols);
+    const lines = Math.floor(kept[kept.length - 1] / cols) - top + 1;
+    const weight = new Float64Array(lines * count);
     for (const p of kept) {
-      const i = Math.floor(p / cols);
-      let line = rows.get(i);
-      if (line === undefined) rows.set(i, (line = new Map()));
-      let w = line.get(slot[p]);
-      if (w === undefined) line.set(slot[p], (w = new Float64Array(CLASSES)));
-      w[classOf(distanceNm[p], noise.nearWallNm)] += distanceNm[p] < 0 ? noise.sdInsulating : noise.sdMetallic;
+      const sd = distanceNm[p] < 0 ? noise.sdInsulating : noise.sdMetallic;
+      weight[(Math.floor(p / cols) - top) * count + slot[p]] += sd;
     }
-    for (const [i, line] of rows) {
-      for (const [a, wa] of line) {
-        for (const [b, wb] of line) {
-          let v = 0;
-          for (let k = 0; k < CLASSES; k++)
-            for (let l = 0; l < CLASSES; l++) v += wa[k] * noise.row[k * CLASSES + l] * wb[l];
-          c[a * count + b] += v;
-        }
+    const met = Array.from({ length: lines }, (_, i) => {
+      const bins: number[] = [];
+      for (let a = 0; a < count; a++) if (weight[i * count + a] !== 0) bins.push(a);
+      return bins;
+    });
+    for (let i = 0; i < lines; i++) {
+      const at = i * count;
+      for (const a of met[i]) {
+        const row = classes[a] * CLASSES;
+        for (const b of met[i]) c[a * count + b] += weight[at + a] * weight[at + b] * noise.row[row + classes[b]];
       }
-      for (let lag = 1; lag <= ROW_LAG; lag++) {
-        const below = rows.get(i + lag);
-        if (noise.rowLag[lag] === 0 || below === undefined) continue;
-        for (const [a, wa] of line) {
-          for (const [b, wb] of below) {
-            const v = noise.rowLag[lag] * total(wa) * total(wb);
+      for (let lag = 1; lag <= ROW_LAG && i + lag < lines; lag++) {
+        const shared = noise.rowLag[lag];
+        if (shared === 0) continue;
+        const below = (i + lag) * count;
+        for (const a of met[i]) {
+          for (const b of met[i + lag]) {
+            const v = shared * weight[at + a] * weight[below + b];
             c[a * count + b] += v;
             c[b * count + a] += v;
           }
@@ -145,8 +153,4 @@ export class Profiler {
       }
     }
   }
-}
-
-function total(w: Float64Array): number {
-  return w[0] + w[1] + w[2] + w[3];
 }

@@ -5,10 +5,16 @@ export const settings = {
   leastStretchNm: { default: 200, unit: "nm", means: "shorter walls are not tested", min: 20 },
   reachNm: { default: 600, unit: "nm", means: "largest distance from the wall that enters a test", min: 50 },
   leastReachNm: {
-    default: 100,
+    default: 50,
     unit: "nm",
-    means: "a side of a wall is searched only where its pixels reach this far",
+    means: "a stretch is tested only where its pixels reach this far on both sides: else nothing tells on which side a fringe is",
     min: 10,
+  },
+  levelSdRad: {
+    default: 0.03,
+    unit: "rad",
+    means: "by how much the optical phase of a state may differ beside one wall from that of the frame (1 sd), and turn slowly over the reach",
+    min: 0.001,
   },
   binNm: {
     default: 0,

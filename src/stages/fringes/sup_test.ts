@@ -18,21 +18,35 @@ export interface SupTest {
   readonly best: Candidate;
 }
 
-/** What makes up the profile without a fringe, per bin, row-major [bins, NUISANCES]: offsets of the two states across the chord, and a slow turn
- *  of the phase along the normal. */
+/** What may make up the profile without a fringe, per bin, row-major [bins, NUISANCES], each at one standard deviation: phase offsets of the
+ *  two states beside this wall, and a slow turn of the phase along the normal. Parameters with a normal prior of sd 1: where the profile
+ *  reaches far they are as good as free, where it is short they keep an offset from passing for a fringe and a fringe from hiding in an offset. */
 export const NUISANCES = 3;
 
-export function nuisanceMatrix(profile: Profile, table: FringeTable, chord: Chord, reachNm: number): Float64Array {
+export function nuisanceMatrix(
+  profile: Profile,
+  table: FringeTable,
+  chord: Chord,
+  reachNm: number,
+  levelSdRad: number,
+): Float64Array {
   const out = new Float64Array(profile.count * NUISANCES);
   const scratch = new Float64Array(4);
   for (let k = 0; k < profile.count; k++) {
     const d = profile.distanceNm[k];
     const u = shareAt(d, table.blur, scratch);
-    out[k * NUISANCES] = 1 - u;
-    out[k * NUISANCES + 1] = u;
-    out[k * NUISANCES + 2] = ((1 - u) * chord.alongInsulating + u * chord.alongMetallic) * (d / reachNm);
+    const insulating = levelSdRad * (1 - u) * levelArm(chord, chord.alongInsulating);
+    const metallic = levelSdRad * u * levelArm(chord, chord.alongMetallic);
+    out[k * NUISANCES] = insulating;
+    out[k * NUISANCES + 1] = metallic;
+    out[k * NUISANCES + 2] = (insulating + metallic) * (d / reachNm);
   }
   return out;
+}
+
+/** How far an offset of 1 rad moves a level across the chord; never less than a tenth of the chord, for errors of its modulus too. */
+function levelArm(chord: Chord, along: number): number {
+  return Math.max(Math.abs(along), 0.1 * chord.length);
 }
 
 /** Columns of a matrix, whitened: solves L y = x in place for each column of length n. */
@@ -44,13 +58,18 @@ export function whiten(l: Float64Array, n: number, x: Float64Array): void {
   }
 }
 
-/** Lower Cholesky factor of the profile's covariance; a measured covariance that is not positive definite gets the least
+/** Lower Cholesky factor of the profile's covariance, with that of the nuisances where they are given; a measured covariance that is not positive definite gets the least
  *  lift of its diagonal that makes it so. */
-export function noiseFactor(profile: Profile): Float64Array {
+export function noiseFactor(profile: Profile, nuisances: Float64Array | null): Float64Array {
   const n = profile.count;
   for (let lift = 0; ; lift = lift === 0 ? 1e-6 : lift * 10) {
     const l = Float64Array.from(profile.covariance);
-    for (let i = 0; i < n; i++) l[i * n + i] *= 1 + lift;
+    for (let i = 0; i < n; i++) {
+      l[i * n + i] *= 1 + lift;
+      for (let j = 0; nuisances !== null && j <= i; j++) {
+        for (let c = 0; c < NUISANCES; c++) l[i * n + j] += nuisances[i * NUISANCES + c] * nuisances[j * NUISANCES + c];
+      }
+    }
     if (choleskyInPlace(l, n)) return l;
   }
 }
@@ -61,53 +80,36 @@ const dot = (a: Float64Array, b: Float64Array): number => {
   return s;
 };
 
-/** Takes `q` (unit vectors) out of `x`; returns the norm left. */
-function remove(x: Float64Array, q: readonly Float64Array[]): number {
-  for (const v of q) {
-    const s = dot(x, v);
-    for (let k = 0; k < x.length; k++) x[k] -= s * v[k];
-  }
-  return Math.sqrt(dot(x, x));
-}
-
 const scaled = (x: Float64Array, f: number): Float64Array => x.map((v) => v * f);
 
-/** Of a candidate less than this is left once the nuisances are out: it cannot be told from them. */
+/** A candidate whose cosine and sine are this much alike has only one amplitude that can be told. */
 const LEAST_LEFT = 0.02;
 /** Directions of the candidates' common space that matter less than this are left out of the simulation. */
 const NEGLIGIBLE = 0.03;
 
 /** sup-F test for a fringe whose period, decay and phase do not exist under the null (Davies 1977, Biometrika 64, 247; 1987, 74, 33):
  *  the largest, over a fixed grid of periods and decays on either side, of the drop of χ² that the two linear amplitudes of
- *  A cos(2πx/Λ + ψ) e^{−x/ℓ} bring once the nuisances are out, over the scatter left where that is more than the noise allows. Its distribution under the null is
- *  simulated with the measured covariance; p = (1 + exceeding)/(1 + draws). Beyond what the draws resolve the tail of a
+ *  A cos(2πx/Λ + ψ) e^{−x/ℓ} bring, over the scatter left where that is more than the noise allows. Its distribution under the null is
+ *  simulated with the measured covariance, nuisances included; p = (1 + exceeding)/(1 + draws). Beyond what the draws resolve the tail of a
  *  χ² field goes on, P(sup > c) ∝ c e^{−c/2} (Davies 1987; two parameters searched), from the level that a twentieth of the
- *  draws exceed, down to `LEAST_P`. null where no candidate can be told from the nuisances. */
+ *  draws exceed, down to `LEAST_P`. null without a candidate. */
 export function supTest(
   profile: Profile,
   table: FringeTable,
   chord: Chord,
   candidates: readonly Candidate[],
   reachNm: number,
+  levelSdRad: number,
   draws: number,
   seed: number,
 ): SupTest | null {
   const n = profile.count;
-  const l = noiseFactor(profile);
+  const l = noiseFactor(profile, nuisanceMatrix(profile, table, chord, reachNm, levelSdRad));
   const y = Float64Array.from(profile.value);
   whiten(l, n, y);
-  const known: Float64Array[] = [];
-  const nuisances = nuisanceMatrix(profile, table, chord, reachNm);
-  for (let c = 0; c < NUISANCES; c++) {
-    const x = Float64Array.from({ length: n }, (_, k) => nuisances[k * NUISANCES + c]);
-    whiten(l, n, x);
-    const before = Math.sqrt(dot(x, x));
-    const left = remove(x, known);
-    if (left > 1e-6 * before) known.push(scaled(x, 1 / left));
-  }
-  const total = remove(y, known) ** 2;
+  const total = dot(y, y);
 
-  // An orthonormal pair a candidate, in the whitened space without the nuisances.
+  // An orthonormal pair a candidate, in the whitened space.
   const pairs: Float64Array[] = [];
   const kept: Candidate[] = [];
   const out = new Float64Array(2);
@@ -121,12 +123,13 @@ export function supTest(
     }
     whiten(l, n, a);
     whiten(l, n, b);
-    const size = Math.sqrt(dot(a, a) + dot(b, b));
-    const left = remove(a, known);
-    if (!(left > LEAST_LEFT * size)) continue;
+    const left = Math.sqrt(dot(a, a));
+    const size = Math.sqrt(dot(b, b));
+    if (!(left > 0 && size > 0)) continue;
     const qa = scaled(a, 1 / left);
-    remove(b, known);
-    const rest = remove(b, [qa]);
+    const common = dot(qa, b);
+    for (let k = 0; k < n; k++) b[k] -= common * qa[k];
+    const rest = Math.sqrt(dot(b, b));
     if (!(rest > LEAST_LEFT * size)) continue;
     pairs.push(qa, scaled(b, 1 / rest));
     kept.push(c);
@@ -142,50 +145,99 @@ export function supTest(
       best = kept[g];
     }
   }
-  const dof = n - known.length - 2;
+  const dof = n - 2;
   statistic = studentised(statistic, total, dof);
-  const exceeded = simulate(pairs, dof, draws, makeRandom(seed));
-  return { pValue: tailProbability(exceeded, statistic), statistic, best };
+  return { pValue: pValueOf(statistic, pairs, dof, draws, makeRandom(seed)), statistic, best };
 }
 
 function studentised(drop: number, total: number, dof: number): number {
   return dof > 0 ? drop / Math.max(1, (total - drop) / dof) : drop;
 }
 
-/** The statistic in noise alone, `draws` times, sorted downwards. Works in the space that the candidates span, a few tens of dimensions. */
-function simulate(pairs: readonly Float64Array[], dof: number, draws: number, random: Random): Float64Array {
-  const span: Float64Array[] = [];
-  const coordinates: number[][] = [];
-  for (const q of pairs) {
-    const x = Float64Array.from(q);
-    const c: number[] = [];
-    for (const v of span) {
-      const s = dot(x, v);
-      c.push(s);
-      for (let k = 0; k < x.length; k++) x[k] -= s * v[k];
-    }
-    const left = Math.sqrt(dot(x, x));
-    if (left > NEGLIGIBLE) {
-      c.push(left);
-      span.push(scaled(x, 1 / left));
-    }
-    coordinates.push(c);
-  }
-  const r = span.length;
-  const flat = new Float64Array(pairs.length * r);
-  coordinates.forEach((c, k) => flat.set(c, k * r));
-  const rest = dof + 2 - r;
-  const out = new Float64Array(draws);
-  const xi = new Float64Array(r);
+/** Smaller ones say nothing about the world: the noise is not known so well. */
+export const LEAST_P = 1e-6;
+/** With fewer draws above the statistic than this at the end the tail takes over; with twice as many before it the simulation stops. */
+const FEW = 10;
+/** Draws after which a statistic far beyond all of them is left to the tail. */
+const FIRST = 199;
+
+/** Draws the statistic in noise alone until it has exceeded the one found 20 times, then p = 20/draws (Besag & Clifford 1991,
+ *  Biometrika 78, 301), or `draws` times, then p = (1 + exceeding)/(1 + draws). */
+function pValueOf(
+  statistic: number,
+  pairs: readonly Float64Array[],
+  dof: number,
+  draws: number,
+  random: Random,
+): number {
+  const nothing = new NullStatistic(pairs, dof, random);
+  const drawn = new Float64Array(draws);
+  let exceeding = 0;
   for (let d = 0; d < draws; d++) {
-    let total = 0;
+    drawn[d] = nothing.draw();
+    if (drawn[d] >= statistic && ++exceeding === 2 * FEW) return exceeding / (d + 1);
+    if (d + 1 === FIRST && exceeding === 0) {
+      const tail = tailBeyond(drawn.slice(0, FIRST), statistic);
+      if (tail < LEAST_P / 10) return LEAST_P;
+    }
+  }
+  const counted = (1 + exceeding) / (1 + draws);
+  if (exceeding >= FEW) return counted;
+  return Math.max(LEAST_P, Math.min(counted, tailBeyond(drawn, statistic)));
+}
+
+/** P(sup > c) ∝ c e^{−c/2} from the level that a twentieth of the draws exceed. */
+function tailBeyond(drawn: Float64Array, statistic: number): number {
+  const anchor = Math.max(FEW, Math.round(drawn.length / 20));
+  const level = drawn.sort((a, b) => b - a)[anchor - 1];
+  return (anchor / drawn.length) * (statistic / level) * Math.exp(-(statistic - level) / 2);
+}
+
+/** The statistic in noise alone. Works in the space that the candidates span, a few tens of dimensions; the rest of the noise
+ *  enters through its χ² only. */
+class NullStatistic {
+  private readonly flat: Float64Array;
+  private readonly r: number;
+  private readonly rest: number;
+  private readonly xi: Float64Array;
+
+  constructor(
+    private readonly pairs: readonly Float64Array[],
+    private readonly dof: number,
+    private readonly random: Random,
+  ) {
+    const span: Float64Array[] = [];
+    const coordinates = pairs.map((q) => {
+      const x = Float64Array.from(q);
+      const c: number[] = [];
+      for (const v of span) {
+        const s = dot(x, v);
+        c.push(s);
+        for (let k = 0; k < x.length; k++) x[k] -= s * v[k];
+      }
+      const left = Math.sqrt(dot(x, x));
+      if (left > NEGLIGIBLE) {
+        c.push(left);
+        span.push(scaled(x, 1 / left));
+      }
+      return c;
+    });
+    this.r = span.length;
+    this.flat = new Float64Array(pairs.length * this.r);
+    coordinates.forEach((c, k) => this.flat.set(c, k * this.r));
+    this.rest = dof + 2 - this.r;
+    this.xi = new Float64Array(this.r);
+  }
+
+  draw(): number {
+    const { flat, r, xi, random, dof } = this;
+    let total = chiSquared(this.rest, random);
     for (let k = 0; k < r; k++) {
       xi[k] = random.normal();
       total += xi[k] * xi[k];
     }
-    total += chiSquared(rest, random);
     let most = 0;
-    for (let g = 0; g < pairs.length; g += 2) {
+    for (let g = 0; g < this.pairs.length; g += 2) {
       let a = 0;
       let b = 0;
       const ga = g * r;
@@ -197,9 +249,8 @@ function simulate(pairs: readonly Float64Array[], dof: number, draws: number, ra
       const drop = a * a + b * b;
       if (drop > most) most = drop;
     }
-    out[d] = studentised(most, total, dof);
+    return studentised(most, total, dof);
   }
-  return out.sort((a, b) => b - a);
 }
 
 /** χ² of `dof` degrees by Wilson & Hilferty's cube (1931, PNAS 17, 684); 0 for none. */
@@ -207,21 +258,4 @@ function chiSquared(dof: number, random: Random): number {
   if (dof <= 0) return 0;
   const a = 2 / (9 * dof);
   return dof * Math.max(0, 1 - a + Math.sqrt(a) * random.normal()) ** 3;
-}
-
-/** Smaller ones say nothing about the world: the noise is not known so well. */
-export const LEAST_P = 1e-6;
-/** With fewer draws above the statistic than this the tail takes over. */
-const FEW = 10;
-
-function tailProbability(sorted: Float64Array, statistic: number): number {
-  const draws = sorted.length;
-  let exceeding = 0;
-  while (exceeding < draws && sorted[exceeding] >= statistic) exceeding++;
-  const counted = (1 + exceeding) / (1 + draws);
-  if (exceeding >= FEW) return counted;
-  const anchor = Math.max(FEW, Math.round(draws / 20));
-  const level = sorted[anchor - 1];
-  const tail = (anchor / draws) * (statistic / level) * Math.exp(-(statistic - level) / 2);
-  return Math.max(LEAST_P, Math.min(counted, tail));
 }
