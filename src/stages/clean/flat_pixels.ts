@@ -79,7 +79,12 @@ function flatAtScale(
       const r = Math.min(cols, j + scale.cols + 1);
       const nUp = count[upper + r] - count[upper + l] - count[top + r] + count[top + l];
       const nDown = count[bottom + r] - count[bottom + l] - count[lower + r] + count[lower + l];
-      if (nUp < 3 || nDown < 3 || Number.isNaN(amplitude[p])) continue;
+      if (Number.isNaN(amplitude[p]) || nUp + nDown < 3) continue;
+      if (nUp < 3 || nDown < 3) {
+        // beside rows that were not measured one side is silent: the pixel is not refused for that
+        step[p] = 0;
+        continue;
+      }
       const up = sum[upper + r] - sum[upper + l] - sum[top + r] + sum[top + l];
       const down = sum[bottom + r] - sum[bottom + l] - sum[lower + r] + sum[lower + l];
       const sd = sdAt(noise, amplitude[p]) * Math.sqrt(1 / nUp + 1 / nDown);

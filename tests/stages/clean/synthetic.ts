@@ -49,7 +49,7 @@ export function synthetic(o: SyntheticOptions): Synthetic {
     const a = 2 * Math.PI * random.uniform();
     return { kx: k * Math.cos(a), ky: k * Math.sin(a), at: 2 * Math.PI * random.uniform() };
   });
-  const relief = Array.from({ length: 16 }, () => {
+  const relief = Array.from({ length: 60 }, () => {
     const k = (2 * Math.PI) / (12 + 30 * random.uniform());
     const a = 2 * Math.PI * random.uniform();
     return { kx: k * Math.cos(a), ky: k * Math.sin(a), at: 2 * Math.PI * random.uniform() };
@@ -92,7 +92,7 @@ export function synthetic(o: SyntheticOptions): Synthetic {
       amplitude[p] = Math.hypot(re, im);
       phase[p] = Math.atan2(im, re);
       let h = 0;
-      for (const w of relief) h += 0.3 * Math.cos(w.kx * j + w.ky * i + w.at);
+      for (const w of relief) h += 0.15 * Math.cos(w.kx * j + w.ky * i + w.at);
       topography[p] = h;
       raw.amplitude[p] = gain * amplitude[p] + (o.amplitudeNoise ?? 0.05) * random.normal();
       const turned = phase[p] + offsetRad + (o.phaseNoiseRad ?? 0.035) * random.normal();
