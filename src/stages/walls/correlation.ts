@@ -48,9 +48,10 @@ export class CorrelatedNoise {
     return sum;
   }
 
-  /** Turns `covariance` (unscaled inverse normal matrix over the free parameters, 6 × 6) into the sandwich, in place. */
-  widen(data: ProfileData, fitter: ProfileFitter, free: readonly boolean[], covariance: Float64Array): void {
-    if (this.white) return;
+  /** Turns `covariance` (unscaled inverse normal matrix over the free parameters, 6 × 6) into the sandwich, in place.
+   *  @returns what the fit takes off the expected χ²: the trace of (JᵀJ)⁻¹ JᵀCJ, the number of free parameters in white noise */
+  widen(data: ProfileData, fitter: ProfileFitter, free: readonly boolean[], covariance: Float64Array): number {
+    if (this.white) return free.reduce((n, f) => n + (f ? 1 : 0), 0);
     const { slot, cols, row, meat } = this;
     const n = data.count;
     if (this.jacobian.length < n * PARAMETERS) this.jacobian = new Float64Array(2 * n * PARAMETERS);
@@ -82,7 +83,10 @@ export class CorrelatedNoise {
       }
     }
     for (let k = 0; k < n; k++) slot[data.pixel[k]] = -1;
+    let taken = 0;
+    for (let k = 0; k < PARAMETERS * PARAMETERS; k++) taken += covariance[k] * meat[k];
     sandwich(covariance, meat);
+    return taken;
   }
 }
 

@@ -5,8 +5,9 @@ import type { ProfileData } from "./profile_data.js";
 
 /** How the complex signal is turned into one number a pixel.
  *  - `chord`: along z_M − z_I. All of the two-state contrast, but a fringe turns z off the chord and bends this projection.
- *  - `radial`: along the direction that z itself has at that distance from the wall. A fringe of the optical phase moves z at a right
- *    angle to z, so that this projection sees it in second order only; the price is the part of the contrast across z.
+ *  - `radial`: along the direction that z itself has at that distance from the wall, as measured along the whole wall. A fringe of
+ *    the optical phase turns z without changing its length, so that this projection does not see it but through the tip's blur;
+ *    the price is the part of the contrast across z.
  *  - `amplitude`: no optical phase; the amplitude is taken as mixing linearly, which it does only where the two phases agree. */
 export type Direction = "chord" | "radial" | "amplitude";
 
@@ -63,8 +64,18 @@ export class Projector {
     return Math.hypot(z.re + off * this.ex, z.im + off * this.ey);
   }
 
-  /** Value, alpha, beta and weight of pixel `pixel` into slot k of `data`; w and σ say where between the states it is expected. */
-  put(data: ProfileData, k: number, pixel: number, distanceNm: number, w: number, sigma: number, direction: Direction): void {
+  /** Value, alpha, beta and weight of pixel `pixel` into slot k of `data`; w and σ say where between the states it is expected,
+   *  `turnRad` by how much a fringe turns the signal there (radial direction only). */
+  put(
+    data: ProfileData,
+    k: number,
+    pixel: number,
+    distanceNm: number,
+    w: number,
+    sigma: number,
+    direction: Direction,
+    turnRad: number,
+  ): void {
     fastKink(distanceNm, w, sigma, this.u);
     const u = this.u[0];
     const { insulating: a, metallic: b, noiseInsulating, noiseMetallic } = this.levels;
@@ -86,6 +97,11 @@ export class Projector {
         ey = zi / size;
         alpha = (a.re * ex + a.im * ey) / this.sizeI;
         beta = (b.re * ex + b.im * ey) / this.sizeM;
+        const c = Math.cos(turnRad);
+        const s = Math.sin(turnRad);
+        const turned = ex * c - ey * s;
+        ey = ex * s + ey * c;
+        ex = turned;
       }
     }
     data.value[k] = re * ex + im * ey;
@@ -93,6 +109,17 @@ export class Projector {
     data.beta[k] = beta;
     const variance = (1 - u) * varianceAlong(noiseInsulating, ex, ey) + u * varianceAlong(noiseMetallic, ex, ey);
     data.weight[k] = 1 / Math.sqrt(Math.max(variance, 1e-12 * this.contrast * this.contrast));
+  }
+
+  /** Complex signal of a pixel turned so that the two-state mixture at share u is real: its argument is what a fringe adds. */
+  turned(pixel: number, u: number): { re: number; im: number } {
+    const { insulating: a, metallic: b } = this.levels;
+    const zr = a.re + (b.re - a.re) * u;
+    const zi = a.im + (b.im - a.im) * u;
+    const size = Math.hypot(zr, zi) || 1;
+    const re = this.signal.re[pixel];
+    const im = (this.signal.im as Float32Array)[pixel];
+    return { re: (re * zr + im * zi) / size, im: (im * zr - re * zi) / size };
   }
 
   /** Signal of a pixel across the chord, and the variance of its noise there; 0 on the chord. */

@@ -92,7 +92,7 @@ export function estimateWithTip(
   const free = new Float64Array(PARAMETERS * PARAMETERS);
   if (!fitter.covariance(SHAPE, free)) return null;
   const naive = free[WIDTH_SQUARED * PARAMETERS + WIDTH_SQUARED];
-  noise.widen(data, fitter, SHAPE, free);
+  const dof = Math.max(1, data.count - noise.widen(data, fitter, SHAPE, free));
   const variance = free[WIDTH_SQUARED * PARAMETERS + WIDTH_SQUARED];
   const q = best[WIDTH_SQUARED];
   const qSd = Math.sqrt(variance);
@@ -145,7 +145,6 @@ export function estimateWithTip(
     apparentSdNm = ok ? RISE_PER_SIGMA * Math.sqrt(sharp[TIP_SIGMA * PARAMETERS + TIP_SIGMA]) : Number.NaN;
   }
   p.set(best);
-  const dof = Math.max(1, data.count - 5);
   return {
     converged: first.ok,
     centreNm: best[CENTRE],
@@ -214,7 +213,6 @@ export function estimateWithoutTip(
   const { p } = fitter;
   const start = p.slice();
   fitter.scale = 1;
-  const dof = Math.max(1, data.count - 5);
   const covariance = new Float64Array(PARAMETERS * PARAMETERS);
   let found: (ProfileEstimate & { chi2: number }) | null = null;
   let upper = 0;
@@ -226,7 +224,7 @@ export function estimateWithoutTip(
     const free = isTanh ? SHAPE : STEP_AND_TIP;
     const ok = fitter.fit(data, free, null) === "converged";
     if (!fitter.covariance(free, covariance)) continue;
-    noise.widen(data, fitter, free, covariance);
+    const dof = Math.max(1, data.count - noise.widen(data, fitter, free, covariance));
     const index = isTanh ? WIDTH_SQUARED : TIP_SIGMA;
     const sd = Math.sqrt(covariance[index * PARAMETERS + index]);
     const width = isTanh ? apparentWidth(Math.sqrt(p[WIDTH_SQUARED]), 0) : RISE_PER_SIGMA * p[TIP_SIGMA];

@@ -6,14 +6,14 @@ import { CorrelatedNoise } from "./correlation.js";
 import { Projector, type Direction } from "./direction.js";
 import { estimateWithTip, estimateWithoutTip, type ProfileEstimate } from "./estimate.js";
 import { flagOf, type Surroundings } from "./flags.js";
-import { fringeAlarms } from "./fringe_alarm.js";
+import { fringeAlarms, type PhaseTurn } from "./fringe_alarm.js";
 import { freeReach, nearestWall, segmentsOf, type NearestWall, type Segments } from "./nearest.js";
 import { ProfileData } from "./profile_data.js";
 import { PARAMETERS, ProfileFitter, type SigmaPrior } from "./profile_fit.js";
 import type { WallsSettings } from "./settings.js";
 import { Stretches, type Stretch } from "./stretches.js";
 import { trace } from "./trace.js";
-import { usableForFits } from "./usable.js";
+import { distanceFromEdge, usableForFits } from "./usable.js";
 
 /** Traces the walls of one frame and fits a profile to every stretch of them.
  *
@@ -49,6 +49,9 @@ class FrameFit {
   private pooledW = 0;
   private pooledSigma: number;
   private directions: Direction[] = [];
+  private turns: (PhaseTurn | null)[] = [];
+  /** Distance of each pixel from the edge of the measured field, nm. */
+  private readonly edgeNm: Float32Array;
   private stretches!: Stretches;
 
   constructor(
@@ -62,6 +65,7 @@ class FrameFit {
   ) {
     const { rows, cols, pixel } = signal;
     this.stepNm = Math.min(pixel.xNm, pixel.yNm);
+    this.edgeNm = distanceFromEdge(signal);
     this.segments = segmentsOf(walls);
     this.near = nearestWall(this.segments, rows, cols, pixel);
     this.projector = new Projector(signal, states.levels);
@@ -87,7 +91,7 @@ class FrameFit {
     this.pool();
     this.directions = this.walls.map(() => (this.projector.hasPhase ? "chord" : "amplitude"));
     if (this.projector.hasPhase) {
-      const alarms = fringeAlarms(this.projector, this.stretches, near, this.noise, {
+      this.turns = fringeAlarms(this.projector, this.stretches, near, this.noise, {
         reachNm: this.reachFor(this.apparentNm),
         marginNm: this.marginNm(),
         binNm: Math.max(this.stepNm, this.sigmaNm),
@@ -96,7 +100,7 @@ class FrameFit {
         level: s.fringeAlarm,
         walls: this.walls.length,
       });
-      for (let k = 0; k < this.walls.length; k++) if (alarms[k]) this.directions[k] = "radial";
+      for (let k = 0; k < this.walls.length; k++) if (this.turns[k] !== null) this.directions[k] = "radial";
     }
   }
 
@@ -109,9 +113,10 @@ class FrameFit {
       const thin = Math.max(1, Math.ceil(stretches.pixelCount / most));
       data.count = 0;
       data.reserve(Math.ceil(stretches.pixelCount / thin) + stretches.list.length);
-      for (const t of stretches.list) this.append(t, reach, "chord", thin);
+      const direction = this.projector.hasPhase ? "chord" : "amplitude";
+      for (const t of stretches.list) this.append(t, reach, direction, thin);
       if (data.count < 12) return;
-      const start = this.projector.startLevels(this.projector.hasPhase ? "chord" : "amplitude");
+      const start = this.projector.startLevels(direction);
       fitter.scale = 1;
       fitter.p.set([start.insulating, start.metallic, 0, 0, this.startWidthSquared(), this.pooledSigma]);
       const free = [true, true, true, false, this.tip !== null, this.tip === null];
@@ -146,15 +151,20 @@ class FrameFit {
   private append(t: Stretch, reachNm: number, direction: Direction, thin: number): void {
     const { data, near, stretches, projector } = this;
     const margin = this.marginNm();
+    const seen = this.apparentNm;
+    const turn = direction === "radial" ? this.turns[t.wall] : null;
     for (let m = t.from; m < t.to; m += thin) {
       const pixel = stretches.pixels[m];
       const d = near.distanceNm[pixel];
-      if (Math.abs(d) > reachNm || Math.abs(d) > stretches.freeNm[m] - margin) continue;
+      const off = Math.abs(d);
+      if (off > reachNm || off > stretches.freeNm[m] - margin) continue;
+      // a wall just outside the field could be nearer than this one, and still be felt
+      if (this.edgeNm[pixel] < 0.5 * Math.min(off, seen)) continue;
       const k = data.count++;
       data.distance[k] = d;
       data.arc[k] = near.arcNm[pixel] - t.middleNm;
       data.pixel[k] = pixel;
-      projector.put(data, k, pixel, d, this.pooledW, this.pooledSigma, direction);
+      projector.put(data, k, pixel, d, this.pooledW, this.pooledSigma, direction, turn === null ? 0 : turn.at(d));
     }
   }
 

@@ -17,12 +17,14 @@ export interface Surroundings {
 
 /** Gap to the next wall, in apparent widths, below which plateaux cannot be told from tails. */
 const LEAST_GAP = 2;
-/** A plateau counts as seen beyond this many apparent widths from the wall (share below 5 %) … */
-const PLATEAU_FROM = 0.65;
-/** … where it holds at least this share of the pixels. */
-const PLATEAU_SHARE = 0.08;
+/** A plateau counts as seen beyond this many apparent widths from the wall … */
+const PLATEAU_FROM = 0.6;
+/** … where it holds at least this share of the pixels … */
+const PLATEAU_SHARE = 0.04;
+/** … and its level is known to this share of the contrast. */
+const LEVEL_SD = 0.1;
 /** A local level may differ from the frame's by this share of the contrast before the plateau is doubted. */
-const LEVEL_SLACK = 0.12;
+const LEVEL_SLACK = 0.06;
 /** Largest product of curvature and apparent width. */
 const LARGEST_BEND = 1;
 
@@ -47,6 +49,7 @@ export function flagOf(
   }
   if (Math.min(below, above) < Math.max(3, PLATEAU_SHARE * data.count)) return "plateau-not-reached";
   for (const state of ["insulating", "metallic"] as const) {
+    if (e.levelSd[state] > LEVEL_SD * around.contrast) return "plateau-not-reached";
     const off = Math.abs(e[state] - around.frameLevels[state]);
     if (off > LEVEL_SLACK * around.contrast + 3 * e.levelSd[state]) return "plateau-not-reached";
   }

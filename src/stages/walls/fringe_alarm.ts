@@ -18,18 +18,35 @@ export interface AlarmOptions {
 /** Least share of the information that the radial direction must keep to be of use. */
 const LEAST_INFORMATION = 0.3;
 
+/** How far a fringe turns the complex signal of a wall against the two-state mixture, at bins of the signed distance. */
+export class PhaseTurn {
+  constructor(
+    private readonly angle: Float64Array,
+    private readonly binNm: number,
+  ) {}
+
+  /** Turn at a distance, rad; linear between the bins' middles. */
+  at(distanceNm: number): number {
+    const n = this.angle.length;
+    const x = Math.min(n - 1, Math.max(0, distanceNm / this.binNm + n / 2 - 0.5));
+    const k = Math.min(n - 2, Math.floor(x));
+    return this.angle[k] + (x - k) * (this.angle[k + 1] - this.angle[k]);
+  }
+}
+
 /** For which walls the signal leaves the chord between the two levels as it does at a fringe: bins of the component across
  *  the chord against distance, an offset on either side taken out, by χ² with the measured noise. Also all walls together, which
  *  finds what is too weak in any one of them. Only the choice of direction hangs on it: an alarm without a fringe costs
- *  precision, not truth. */
+ *  precision, not truth.
+ *  @returns per wall null, or how its signal is turned */
 export function fringeAlarms(
   projector: Projector,
   stretches: Stretches,
   near: NearestWall,
   noise: CorrelatedNoise,
   o: AlarmOptions,
-): boolean[] {
-  const none = Array.from({ length: o.walls }, () => false);
+): (PhaseTurn | null)[] {
+  const none: (PhaseTurn | null)[] = Array.from({ length: o.walls }, () => null);
   if (projector.radialInformation < LEAST_INFORMATION) return none;
   const bins = 2 * Math.ceil(o.reachNm / o.binNm);
   const sums = Array.from({ length: o.walls }, () => new Bins(bins));
@@ -47,26 +64,55 @@ export function fringeAlarms(
       if (Math.abs(d) >= o.reachNm || Math.abs(d) > stretches.freeNm[m] - o.marginNm) continue;
       const b = Math.min(bins - 1, Math.max(0, Math.floor(d / o.binNm + bins / 2)));
       const { value, variance } = projector.across(pixel, shareAt[b]);
-      sums[t.wall].add(b, value, variance);
-      all.add(b, value, variance);
+      const z = projector.turned(pixel, shareAt[b]);
+      sums[t.wall].add(b, value, variance, z);
+      all.add(b, value, variance, z);
     }
   }
-  if (all.tail(shareAt, noise.areaFactor) < o.level) return none.map(() => true);
-  return sums.map((s) => s.tail(shareAt, noise.areaFactor) < o.level);
+  const everywhere = all.tail(shareAt, noise.areaFactor) < o.level;
+  return sums.map((s) => {
+    if (!everywhere && !(s.tail(shareAt, noise.areaFactor) < o.level)) return null;
+    return new PhaseTurn(s.turn(everywhere ? all : null), o.binNm);
+  });
 }
+
+/** Pixels in a bin at which its own mean counts half. */
+const ENOUGH = 10;
 
 class Bins {
   private readonly weight: Float64Array;
   private readonly sum: Float64Array;
 
+  private readonly pixels: Float64Array;
+  private readonly re: Float64Array;
+  private readonly im: Float64Array;
+
   constructor(readonly count: number) {
     this.weight = new Float64Array(count);
     this.sum = new Float64Array(count);
+    this.pixels = new Float64Array(count);
+    this.re = new Float64Array(count);
+    this.im = new Float64Array(count);
   }
 
-  add(b: number, value: number, variance: number): void {
+  add(b: number, value: number, variance: number, z: { re: number; im: number }): void {
     this.weight[b] += 1 / variance;
     this.sum[b] += value / variance;
+    this.pixels[b]++;
+    this.re[b] += z.re;
+    this.im[b] += z.im;
+  }
+
+  /** Mean argument in each bin. Bins of few pixels lean on `support` (all walls together), or on no turn at all. */
+  turn(support: Bins | null): Float64Array {
+    const out = new Float64Array(this.count);
+    for (let k = 0; k < this.count; k++) {
+      const own = this.pixels[k] > 0 ? Math.atan2(this.im[k], this.re[k]) : 0;
+      const other = support === null || support.pixels[k] === 0 ? 0 : Math.atan2(support.im[k], support.re[k]);
+      const trust = this.pixels[k] / (this.pixels[k] + ENOUGH);
+      out[k] = trust * own + (1 - trust) * other;
+    }
+    return out;
   }
 
   /** p-value of a mean that is not a·(1 − u) + b·u over the bins. */

@@ -34,7 +34,7 @@ export const settings = {
     max: 10,
   },
   lengthExcess: {
-    default: 0.003,
+    default: 0.001,
     unit: "1",
     means: "by how much noise may lengthen a wall, as a share; sets the blur before tracing",
     min: 0.0001,

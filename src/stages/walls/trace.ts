@@ -22,12 +22,16 @@ export interface Tracing {
 }
 
 /** The walls between the domains of `states.map`: lines of share 0.5, open at borders and gaps.
- *  The share is blurred first, for geometry only: a line drawn in noise is longer than the wall. Excess length from white noise
- *  of sd s in a field of slope g blurred by b is s²·p_x·p_y/(16π g² b⁴) (mean square slope of a Gaussian-filtered line), which
- *  gives the blur; without noise there is none. Blur moves a wall of curvature κ by −b²κ/2, and fits let it move back. */
+ *  The share is blurred first, for geometry only: a line drawn in noise is longer than the wall. The kernel is 2G − G∗G with G a
+ *  Gaussian of standard deviation b: unlike G alone it does not move a wall of curvature κ by −b²κ/2. Excess length from white
+ *  noise of sd s in a field of slope g is then 2.47·s²·p_x·p_y/(16π g² b⁴) (half the mean square slope of the line), which gives b;
+ *  without noise there is no blur. */
 export function traceWalls(states: FrameStates, tip: Tip | null, s: WallsSettings): Wall[] {
   return trace(states, tip, s).walls;
 }
+
+/** Mean square gradient of noise under 2G − G∗G over that under G: 4 − 16/9 + 1/4. */
+const KERNEL_POWER = 2.472;
 
 export function trace(states: FrameStates, tip: Tip | null, s: WallsSettings): Tracing {
   const { rows, cols, pixel } = states.map;
@@ -42,10 +46,12 @@ export function trace(states: FrameStates, tip: Tip | null, s: WallsSettings): T
   const noise = shareNoise(states.levels);
   const step = Math.min(pixel.xNm, pixel.yNm);
   const blurred = (blurNm: number): Float32Array => {
-    const out =
-      blurNm < 0.3 * step
-        ? share.slice()
-        : maskedBlur(share, usable, rows, cols, blurNm / pixel.xNm, blurNm / pixel.yNm).values;
+    const out = share.slice();
+    if (blurNm >= 0.3 * step) {
+      const once = maskedBlur(share, usable, rows, cols, blurNm / pixel.xNm, blurNm / pixel.yNm).values;
+      const twice = maskedBlur(once, usable, rows, cols, blurNm / pixel.xNm, blurNm / pixel.yNm).values;
+      for (let p = 0; p < out.length; p++) out[p] = 2 * once[p] - twice[p];
+    }
     for (let p = 0; p < out.length; p++) if (usable[p] === 0) out[p] = Number.NaN;
     return out;
   };
@@ -59,7 +65,7 @@ export function trace(states: FrameStates, tip: Tip | null, s: WallsSettings): T
     for (let round = 0; round < 3; round++) {
       const slope = typicalSlope(blurred(blurNm), rows, cols, pixel);
       if (!(slope > 0)) break;
-      const power = noise.sd * noise.sd * noise.areaFactor * pixel.xNm * pixel.yNm;
+      const power = KERNEL_POWER * noise.sd * noise.sd * noise.areaFactor * pixel.xNm * pixel.yNm;
       blurNm = Math.min(most, (power / (16 * Math.PI * slope * slope * s.lengthExcess)) ** 0.25);
     }
   }

@@ -19,3 +19,29 @@ export function usableForFits(signal: Signal, map: DomainMap, patches: Uint8Arra
   }
   return usable;
 }
+
+/** Distance of each pixel's centre from the edge of the measured field (the smallest box that holds all usable pixels), nm. */
+export function distanceFromEdge(signal: Signal): Float32Array {
+  const { rows, cols, pixel, usable } = signal;
+  let top = rows;
+  let bottom = -1;
+  let left = cols;
+  let right = -1;
+  for (let i = 0; i < rows; i++) {
+    for (let j = 0; j < cols; j++) {
+      if (usable[i * cols + j] === 0) continue;
+      if (i < top) top = i;
+      if (i > bottom) bottom = i;
+      if (j < left) left = j;
+      if (j > right) right = j;
+    }
+  }
+  const out = new Float32Array(rows * cols);
+  for (let i = top; i <= bottom; i++) {
+    const dy = Math.min(i - top, bottom - i) * pixel.yNm;
+    for (let j = left; j <= right; j++) {
+      out[i * cols + j] = Math.min(dy, Math.min(j - left, right - j) * pixel.xNm);
+    }
+  }
+  return out;
+}
