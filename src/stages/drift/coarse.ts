@@ -1,5 +1,5 @@
+import { dropNaNInPlace, selectInPlace, SD_PER_MAD } from "../../numerics/quantile.js";
 import { conjugateProduct, fastLength } from "../../raster/fourier.js";
-import { maskedBlur } from "../../raster/masked_blur.js";
 import { dft2, idft2 } from "../../raster/opencv.js";
 import type { Grid } from "./grid.js";
 
@@ -31,14 +31,13 @@ const APART_PX = 3;
  *  variances are those of the pixels that both frames measured there. Empty where no lag has overlap enough.
  *  Source: Padfield 2012, IEEE Trans. Image Process. 21, 2706 (all sums by zero-padded transforms). Peaks are ranked by significance,
  *  not by the coefficient itself, which is large by chance where few pixels overlap. */
-export function coarsePeaks(reference: Grid, moving: Grid, options: CoarseOptions): Peak[] {
+export function coarsePeaks(reference: CoarseImage, moving: CoarseImage, options: CoarseOptions): Peak[] {
+  const { rows, cols } = paddedSize(reference, moving, options);
+  const a = reference.spectra(rows, cols);
+  const b = moving.spectra(rows, cols);
+  if (a === null || b === null) return [];
   const reachY = Math.floor(options.largestJump * Math.max(reference.rows, moving.rows));
   const reachX = Math.floor(options.largestJump * Math.max(reference.cols, moving.cols));
-  const rows = fastLength(Math.max(reference.rows, moving.rows) + reachY + 1);
-  const cols = fastLength(Math.max(reference.cols, moving.cols) + reachX + 1);
-  const a = padded(reference, rows, cols);
-  const b = padded(moving, rows, cols);
-  if (a === null || b === null) return [];
   const lag = (p: Float64Array, q: Float64Array): Float64Array => idft2(conjugateProduct(p, q), rows, cols);
   const n = lag(a.mask, b.mask);
   const sumA = lag(a.value, b.mask);
@@ -67,6 +66,15 @@ export function coarsePeaks(reference: Grid, moving: Grid, options: CoarseOption
   return findPeaks(score, width, height, reachX, reachY);
 }
 
+function paddedSize(a: CoarseImage, b: CoarseImage, o: CoarseOptions): { rows: number; cols: number } {
+  const rows = Math.max(a.rows, b.rows);
+  const cols = Math.max(a.cols, b.cols);
+  return {
+    rows: fastLength(rows + Math.floor(o.largestJump * rows) + 1),
+    cols: fastLength(cols + Math.floor(o.largestJump * cols) + 1),
+  };
+}
+
 interface Spectra {
   readonly mask: Float64Array;
   readonly value: Float64Array;
@@ -74,35 +82,58 @@ interface Spectra {
   readonly count: number;
 }
 
-/** Transforms of mask, mask·value and mask·value², the value being the structure alone in units of its spread. */
-function padded(grid: Grid, rows: number, cols: number): Spectra | null {
-  const structure = structureOf(grid);
-  if (structure === null) return null;
-  const mask = new Float64Array(rows * cols);
-  const value = new Float64Array(rows * cols);
-  const square = new Float64Array(rows * cols);
-  let count = 0;
-  for (let i = 0; i < grid.rows; i++) {
-    for (let j = 0; j < grid.cols; j++) {
-      const p = i * grid.cols + j;
-      if (grid.known[p] === 0) continue;
-      const q = i * cols + j;
-      const v = structure[p];
-      mask[q] = 1;
-      value[q] = v;
-      square[q] = v * v;
-      count++;
-    }
+/** One image of the coarse step. What depends on it alone is computed once: it takes part in many pairs. */
+export class CoarseImage {
+  readonly rows: number;
+  readonly cols: number;
+  private readonly structure: Float64Array | null;
+  private kept: { rows: number; cols: number; spectra: Spectra } | null = null;
+
+  constructor(readonly grid: Grid) {
+    this.rows = grid.rows;
+    this.cols = grid.cols;
+    this.structure = structureOf(grid);
   }
-  return { mask: dft2(mask, rows, cols), value: dft2(value, rows, cols), square: dft2(square, rows, cols), count };
+
+  /** Transforms, zero-padded to rows × cols, of mask, mask·value and mask·value², the value being the structure alone in units of its
+   *  spread. null where there is none. */
+  spectra(rows: number, cols: number): Spectra | null {
+    if (this.structure === null) return null;
+    if (this.kept !== null && this.kept.rows === rows && this.kept.cols === cols) return this.kept.spectra;
+    const mask = new Float64Array(rows * cols);
+    const value = new Float64Array(rows * cols);
+    const square = new Float64Array(rows * cols);
+    let count = 0;
+    for (let i = 0; i < this.rows; i++) {
+      for (let j = 0; j < this.cols; j++) {
+        const p = i * this.cols + j;
+        if (this.grid.known[p] === 0) continue;
+        const q = i * cols + j;
+        const v = this.structure[p];
+        mask[q] = 1;
+        value[q] = v;
+        square[q] = v * v;
+        count++;
+      }
+    }
+    const spectra = {
+      mask: dft2(mask, rows, cols),
+      value: dft2(value, rows, cols),
+      square: dft2(square, rows, cols),
+      count,
+    };
+    this.kept = { rows, cols, spectra };
+    return spectra;
+  }
 }
 
 /** The grid without its wide relief and without row offsets, bent to ±CLIP robust standard deviations. */
 function structureOf(grid: Grid): Float64Array | null {
   const { rows, cols } = grid;
-  const wide = maskedBlur(grid.values, grid.known, rows, cols, WIDEST * cols, WIDEST * rows).values;
+  const wide = boxMean(grid, Math.round(WIDEST * cols), Math.round(WIDEST * rows));
   const out = new Float64Array(rows * cols);
-  const sizes: number[] = [];
+  const sizes = new Float64Array(rows * cols);
+  let count = 0;
   for (let i = 0; i < rows; i++) {
     let sum = 0;
     let n = 0;
@@ -115,22 +146,57 @@ function structureOf(grid: Grid): Float64Array | null {
     for (let p = i * cols; p < (i + 1) * cols; p++) {
       if (grid.known[p] === 0) continue;
       out[p] -= sum / n;
-      sizes.push(Math.abs(out[p]));
+      sizes[count++] = Math.abs(out[p]);
     }
   }
-  if (sizes.length === 0) return null;
-  const spread = 1.4826 * Float64Array.from(sizes).sort()[sizes.length >> 1];
+  if (count === 0) return null;
+  const spread = SD_PER_MAD * selectInPlace(sizes, count >> 1, count);
   if (!(spread > 0)) return null;
   for (let p = 0; p < out.length; p++) out[p] = CLIP * Math.tanh(out[p] / (CLIP * spread));
   return out;
 }
 
+/** Mean of the known pixels in the box of ±halfX, ±halfY round each pixel, by summed areas. */
+function boxMean(grid: Grid, halfX: number, halfY: number): Float64Array {
+  const { rows, cols, values, known } = grid;
+  const width = cols + 1;
+  const sum = new Float64Array((rows + 1) * width);
+  const count = new Float64Array((rows + 1) * width);
+  for (let i = 0; i < rows; i++) {
+    let s = 0;
+    let n = 0;
+    for (let j = 0; j < cols; j++) {
+      const p = i * cols + j;
+      if (known[p] > 0) {
+        s += values[p];
+        n++;
+      }
+      const q = (i + 1) * width + j + 1;
+      sum[q] = sum[q - width] + s;
+      count[q] = count[q - width] + n;
+    }
+  }
+  const out = new Float64Array(rows * cols);
+  for (let i = 0; i < rows; i++) {
+    const top = Math.max(0, i - halfY) * width;
+    const bottom = Math.min(rows, i + halfY + 1) * width;
+    for (let j = 0; j < cols; j++) {
+      const left = Math.max(0, j - halfX);
+      const right = Math.min(cols, j + halfX + 1);
+      const n = count[bottom + right] - count[top + right] - count[bottom + left] + count[top + left];
+      if (n > 0)
+        out[i * cols + j] = (sum[bottom + right] - sum[top + right] - sum[bottom + left] + sum[top + left]) / n;
+    }
+  }
+  return out;
+}
+
 function findPeaks(score: Float64Array, width: number, height: number, reachX: number, reachY: number): Peak[] {
-  const sizes: number[] = [];
   const maxima: number[] = [];
-  for (let p = 0; p < score.length; p++) if (!Number.isNaN(score[p])) sizes.push(Math.abs(score[p]));
-  if (sizes.length === 0) return [];
-  const spread = Math.max(1e-12, 1.4826 * Float64Array.from(sizes).sort()[sizes.length >> 1]);
+  const sizes = score.map(Math.abs);
+  const count = dropNaNInPlace(sizes);
+  if (count === 0) return [];
+  const spread = Math.max(1e-12, SD_PER_MAD * selectInPlace(sizes, count >> 1, count));
   for (let y = 1; y < height - 1; y++) {
     for (let x = 1; x < width - 1; x++) {
       const p = y * width + x;

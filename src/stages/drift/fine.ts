@@ -1,7 +1,8 @@
+import { selectInPlace, SD_PER_MAD } from "../../numerics/quantile.js";
 import type { Grid } from "./grid.js";
 import { stationaryCovariance, type ScoreParts } from "./noise_covariance.js";
 import { larger, scoreCovariance, type Sym2 } from "./score_covariance.js";
-import { gradientOf, sampleShifted, type Shifted } from "./shifted.js";
+import { sampleShifted, type Shifted, type Sloped } from "./shifted.js";
 
 export interface FineShift {
   /** The feature at (row, col) of the reference lies at (row + dy, col + dx) of the moving frame; pixels. */
@@ -47,31 +48,27 @@ const TUKEY = 6;
  *  Source: inverse compositional Gauss–Newton, Baker & Matthews 2004, Int. J. Comput. Vis. 56, 221; gain and offset as in
  *  Evangelidis & Psarakis 2008, IEEE Trans. Pattern Anal. Mach. Intell. 30, 1858; weights Beaton & Tukey 1974, Technometrics 16, 147. */
 export function fineShift(
-  reference: Grid,
-  moving: Grid,
+  reference: Sloped,
+  moving: Sloped,
   start: { readonly dx: number; readonly dy: number },
   options: FineOptions,
 ): FineShift | null {
-  const { rows, cols } = reference;
-  const gradient = gradientOf(reference);
-  const slopes = gradientOf(moving);
-  const slopeKnown = slopes.usable.map((u) => 2 * u);
-  const grid = (values: Float32Array): Grid => ({ rows: moving.rows, cols: moving.cols, values, known: slopeKnown });
-  const work = new Work(reference, gradient);
+  const { rows, cols } = reference.grid;
+  const work = new Work(reference.grid, reference.gradient);
+  const slopesAt = (dx: number, dy: number): [Shifted, Shifted] => [
+    sampleShifted(moving.gradientX, rows, cols, dx, dy),
+    sampleShifted(moving.gradientY, rows, cols, dx, dy),
+  ];
   let { dx, dy } = start;
   let slope: { xx: number; xy: number; yx: number; yy: number } | null = null;
   let iteration = 0;
   let step = Number.POSITIVE_INFINITY;
   for (; iteration < ITERATIONS && step > options.tolerancePx; iteration++) {
-    const sampled = sampleShifted(moving, rows, cols, dx, dy);
+    const sampled = sampleShifted(moving.grid, rows, cols, dx, dy);
     if (work.residuals(sampled) < options.leastPixels) return null;
     // the gradients change little on the way: once at the start, once near the end
     if (iteration === 0 || (iteration <= 3 && step > 0.1)) {
-      slope = work.slope(
-        sampleShifted(grid(slopes.x), rows, cols, dx, dy),
-        sampleShifted(grid(slopes.y), rows, cols, dx, dy),
-        false,
-      );
+      slope = work.slope(...slopesAt(dx, dy), false);
     }
     const score = work.score();
     const delta = slope === null ? null : solve(slope, score.x, score.y);
@@ -85,10 +82,9 @@ export function fineShift(
   }
   if (step > options.tolerancePx) return null;
 
-  const pixels = work.residuals(sampleShifted(moving, rows, cols, dx, dy));
+  const pixels = work.residuals(sampleShifted(moving.grid, rows, cols, dx, dy));
   if (pixels < options.leastPixels) return null;
-  const gx = sampleShifted(grid(slopes.x), rows, cols, dx, dy);
-  const gy = sampleShifted(grid(slopes.y), rows, cols, dx, dy);
+  const [gx, gy] = slopesAt(dx, dy);
   const a = work.slope(gx, gy, true);
   const score = work.score();
   const scatter = scoreCovariance(work.blocks.x, work.blocks.y, work.blocks.rows, work.blocks.cols, null);
@@ -221,16 +217,17 @@ class Work {
     const gain = Math.sqrt(mm / rr);
     this.gain = gain;
     const every = Math.max(1, Math.floor(pixels / 4000));
-    const sample: number[] = [];
+    const sample = new Float32Array(Math.ceil(pixels / every));
     let k = 0;
     for (let i = 0; i < rows; i++) {
       for (let p = i * cols; p < (i + 1) * cols; p++) {
         if (weight[p] === 0) continue;
         residual[p] = m[p] - meanM[i] - gain * (r[p] - meanR[i]);
-        if (k++ % every === 0) sample.push(Math.abs(residual[p]));
+        if (k % every === 0) sample[k / every] = Math.abs(residual[p]);
+        k++;
       }
     }
-    const spread = 1.4826 * Float32Array.from(sample).sort()[sample.length >> 1];
+    const spread = SD_PER_MAD * selectInPlace(sample, sample.length >> 1);
     this.weigh(Math.max(spread, 1e-7 * Math.sqrt(mm / pixels)));
     return pixels;
   }

@@ -1,6 +1,6 @@
 import { coarsePeaks, type Peak } from "./coarse.js";
 import { fineShift, type FineShift } from "./fine.js";
-import { blurredGrid, decimate, type Grid } from "./grid.js";
+import { pyramidOf, type Pyramid } from "./pyramid.js";
 import type { DriftSettings } from "./settings.js";
 import type { DriftImage, FailedShift, MeasuredShift, PairShift } from "./types.js";
 
@@ -8,6 +8,8 @@ import type { DriftImage, FailedShift, MeasuredShift, PairShift } from "./types.
 const COARSE_SIDE = 128;
 /** Fewer pixels than this in the overlap say nothing. */
 const LEAST_PIXELS = 200;
+/** Steps shrink tenfold and more each time: after one of this length what is left is below 1e-4 px. */
+const TOLERANCE_PX = 5e-4;
 /** Peaks down to this share of `leastPeak` are kept as ambiguous. */
 const DOUBTFUL = 0.8;
 /** White noise blurred by σ is correlated as exp(−x²/4σ²): nothing is left at five. Noise correlated before the blur has room as well. */
@@ -64,14 +66,15 @@ function attempt(
   const { pixel } = reference;
   const sigmaX = Math.max(s.leastBlurPx, blurNm / pixel.xNm);
   const sigmaY = Math.max(s.leastBlurPx, blurNm / pixel.yNm);
-  const r = blurredGrid(imageR, reference.rows, reference.cols, sigmaX, sigmaY);
-  const m = blurredGrid(imageM, moving.rows, moving.cols, sigmaX, sigmaY);
-  const least = Math.max(LEAST_PIXELS, s.leastOverlap * Math.min(knownPixels(r), knownPixels(m)));
+  const r = pyramidOf(imageR, reference.rows, reference.cols, sigmaX, sigmaY);
+  const m = pyramidOf(imageM, moving.rows, moving.cols, sigmaX, sigmaY);
+  const smaller = Math.min(r.whole, m.whole);
+  const least = Math.max(LEAST_PIXELS, s.leastOverlap * smaller);
 
-  const side = Math.max(r.rows, r.cols, m.rows, m.cols);
+  const side = Math.max(reference.rows, reference.cols, moving.rows, moving.cols);
   let found: { peaks: Peak[]; factor: number } | null = null;
   for (let factor = Math.max(1, Math.round(side / COARSE_SIDE)); ; factor = Math.floor(factor / 2)) {
-    const peaks = coarsePeaks(decimate(r, factor), decimate(m, factor), s);
+    const peaks = coarsePeaks(r.coarse(factor), m.coarse(factor), s);
     if (peaks.length > 0 && peaks[0].height >= DOUBTFUL * s.leastPeak) found = { peaks, factor };
     // fine structure drowns when pixels are put together: once more with smaller blocks
     if (found !== null || factor === 1) break;
@@ -85,7 +88,7 @@ function attempt(
   const reachPx = { x: Math.ceil(NOISE_REACH * sigmaX), y: Math.ceil(NOISE_REACH * sigmaY) };
   const fine = refine(r, m, peak, factor, least, reachPx);
   if (fine === null) return "not-converged";
-  const overlap = fine.pixels / Math.min(knownPixels(r), knownPixels(m));
+  const overlap = fine.pixels / smaller;
   return {
     status: ambiguous ? "ambiguous" : "ok",
     xNm: -fine.dx * pixel.xNm,
@@ -129,8 +132,8 @@ function nearestTo(
 
 /** From whole pixels of the coarse grid to the full one: first on the coarse grid itself, whose basin is wider. */
 function refine(
-  r: Grid,
-  m: Grid,
+  r: Pyramid,
+  m: Pyramid,
   peak: Peak,
   factor: number,
   leastPixels: number,
@@ -140,7 +143,7 @@ function refine(
   let dy = peak.lagY * factor;
   if (factor > 1 || peak.widthPx > 3) {
     const start = { dx: peak.lagX, dy: peak.lagY };
-    const rough = fineShift(decimate(r, factor), decimate(m, factor), start, {
+    const rough = fineShift(r.sloped(factor), m.sloped(factor), start, {
       leashPx: 1 + peak.widthPx,
       tolerancePx: 0.01,
       leastPixels: Math.max(50, leastPixels / (2 * factor * factor)),
@@ -151,11 +154,10 @@ function refine(
       dy = rough.dy * factor;
     }
   }
-  return fineShift(r, m, { dx, dy }, { leashPx: factor + 1, tolerancePx: 1e-4, leastPixels, reachPx });
-}
-
-function knownPixels(grid: Grid): number {
-  let n = 0;
-  for (const k of grid.known) if (k === 2) n++;
-  return n;
+  return fineShift(
+    r.sloped(1),
+    m.sloped(1),
+    { dx, dy },
+    { leashPx: factor + 1, tolerancePx: TOLERANCE_PX, leastPixels, reachPx },
+  );
 }

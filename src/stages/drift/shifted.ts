@@ -66,8 +66,24 @@ export function sampleShifted(image: Grid, rows: number, cols: number, dx: numbe
   return { values, usable };
 }
 
-/** Derivatives along x and y by five points, per pixel; `usable` where the pixels they need are known. */
-export function gradientOf(image: Grid): { x: Float32Array; y: Float32Array; usable: Uint8Array } {
+/** An image with its derivatives along x and y (per pixel, by five points). */
+export class Sloped {
+  /** For use at the pixels themselves: `usable` where the pixels that the derivatives need are known. */
+  readonly gradient: { readonly x: Float32Array; readonly y: Float32Array; readonly usable: Uint8Array };
+  /** The same for interpolation. */
+  readonly gradientX: Grid;
+  readonly gradientY: Grid;
+
+  constructor(readonly grid: Grid) {
+    const { rows, cols } = grid;
+    this.gradient = gradientOf(grid);
+    const known = this.gradient.usable.map((u) => 2 * u);
+    this.gradientX = { rows, cols, values: this.gradient.x, known };
+    this.gradientY = { rows, cols, values: this.gradient.y, known };
+  }
+}
+
+function gradientOf(image: Grid): { x: Float32Array; y: Float32Array; usable: Uint8Array } {
   const { rows, cols, values: v, known } = image;
   const x = new Float32Array(v.length);
   const y = new Float32Array(v.length);
