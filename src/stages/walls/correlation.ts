@@ -4,9 +4,72 @@ import { PARAMETERS, type ProfileFitter } from "./profile_fit.js";
 /** Correlations below this are left out of the sums. */
 const NEGLIGIBLE = 0.01;
 
+/** Autocorrelation of the pixel noise along one axis at lags 0, 1, 2 … pixels. */
+export type LagCorrelation = readonly number[];
+
+/** Lags that are looked at, and lags whose mean product stands for slow structure that is no noise (tilt of a level, stray light). */
+const LAGS = 6;
+const FAR_FROM = 9;
+const FAR_TO = 12;
+/** Pairs of pixels needed; below, the two neighbour correlations that come with the levels are continued as powers. */
+const LEAST_PAIRS = 2000;
+
+/** Autocorrelation along x or y of `deviation` (NaN where the pixel does not count), from pairs of pixels that both count.
+ *  @returns null where there are too few */
+export function measureLags(
+  deviation: Float32Array,
+  rows: number,
+  cols: number,
+  along: "x" | "y",
+): LagCorrelation | null {
+  const step = along === "x" ? 1 : cols;
+  const sum = new Float64Array(FAR_TO + 1);
+  const pairs = new Float64Array(FAR_TO + 1);
+  for (let i = 0; i < rows; i++) {
+    for (let j = 0; j < cols; j++) {
+      const p = i * cols + j;
+      const v = deviation[p];
+      if (Number.isNaN(v)) continue;
+      const room = Math.min(FAR_TO, along === "x" ? cols - 1 - j : rows - 1 - i);
+      for (let k = 0; k <= room; k++) {
+        const w = deviation[p + k * step];
+        if (Number.isNaN(w)) continue;
+        sum[k] += v * w;
+        pairs[k]++;
+      }
+    }
+  }
+  if (pairs[LAGS] < LEAST_PAIRS) return null;
+  let far = 0;
+  let farPairs = 0;
+  for (let k = FAR_FROM; k <= FAR_TO; k++) {
+    far += sum[k];
+    farPairs += pairs[k];
+  }
+  const floor = farPairs > LEAST_PAIRS ? far / farPairs : 0;
+  const variance = sum[0] / pairs[0] - floor;
+  if (!(variance > 0)) return null;
+  const out = [1];
+  for (let k = 1; k < LAGS; k++) {
+    const rho = (sum[k] / pairs[k] - floor) / variance;
+    // the first lag that cannot be told from nothing ends it
+    if (Math.abs(rho) < Math.max(0.02, 3 / Math.sqrt(pairs[k]))) break;
+    out.push(Math.max(-0.9, Math.min(0.95, rho)));
+  }
+  return out;
+}
+
+/** ρ, ρ², ρ³ … : all that can be said from neighbours alone (a first-order filter in time has just this). */
+export function powersOf(rho: number): LagCorrelation {
+  const r = Math.max(-0.9, Math.min(0.9, rho));
+  const out = [1];
+  for (let k = 1; k < LAGS && Math.abs(r) ** k >= NEGLIGIBLE; k++) out.push(r ** k);
+  return out;
+}
+
 /** Effect of noise correlated between neighbouring pixels on a fit that treats them as independent: the sandwich
  *  (JᵀJ)⁻¹ JᵀCJ (JᵀJ)⁻¹ (White 1980, Econometrica 48, 817; Liang & Zeger 1986, Biometrika 73, 13) with the measured correlation,
- *  ρ_x^|columns| · ρ_y^|rows|. */
+ *  taken as the product of those along the two axes. */
 export class CorrelatedNoise {
   readonly white: boolean;
   private readonly slot: Int32Array;
@@ -16,17 +79,14 @@ export class CorrelatedNoise {
   private readonly meat = new Float64Array(PARAMETERS * PARAMETERS);
 
   constructor(
-    rhoX: number,
-    rhoY: number,
+    alongX: LagCorrelation,
+    alongY: LagCorrelation,
     rows: number,
     private readonly cols: number,
   ) {
-    const x = Math.abs(rhoX) < NEGLIGIBLE ? 0 : Math.max(-0.9, Math.min(0.9, rhoX));
-    const y = Math.abs(rhoY) < NEGLIGIBLE ? 0 : Math.max(-0.9, Math.min(0.9, rhoY));
-    const most = 8;
-    for (let di = 0; di <= most; di++) {
-      for (let dj = di === 0 ? 1 : -most; dj <= most; dj++) {
-        const rho = x ** Math.abs(dj) * y ** di;
+    for (let di = 0; di < alongY.length; di++) {
+      for (let dj = di === 0 ? 1 : 1 - alongX.length; dj < alongX.length; dj++) {
+        const rho = alongX[Math.abs(dj)] * alongY[di];
         if (Math.abs(rho) >= NEGLIGIBLE) this.offsets.push({ di, dj, rho });
       }
     }

@@ -26,6 +26,7 @@ export class Projector {
   constructor(
     private readonly signal: Signal,
     private readonly levels: FrameLevels,
+    private readonly tipSigma: number,
   ) {
     const { insulating: a, metallic: b } = levels;
     this.hasPhase = signal.im !== null;
@@ -65,7 +66,7 @@ export class Projector {
   }
 
   /** Value, alpha, beta and weight of pixel `pixel` into slot k of `data`; w and σ say where between the states it is expected,
-   *  `turnRad` by how much a fringe turns the signal there (radial direction only). */
+   *  `turnRad` by how much a fringe turns the signal there and `turnSlope` its slope in rad/nm (radial direction only). */
   put(
     data: ProfileData,
     k: number,
@@ -75,6 +76,7 @@ export class Projector {
     sigma: number,
     direction: Direction,
     turnRad: number,
+    turnSlope: number,
   ): void {
     fastKink(distanceNm, w, sigma, this.u);
     const u = this.u[0];
@@ -85,6 +87,7 @@ export class Projector {
     let im = 0;
     let alpha = 1;
     let beta = 1;
+    let bend = 0;
     if (this.signal.im !== null) {
       im = this.signal.im[pixel];
       ex = this.ex;
@@ -97,6 +100,9 @@ export class Projector {
         ey = zi / size;
         alpha = (a.re * ex + a.im * ey) / this.sizeI;
         beta = (b.re * ex + b.im * ey) / this.sizeM;
+        // what the tip's blur makes of a turn that changes across the wall, to first order
+        const twist = b.im * a.re - b.re * a.im;
+        bend = (turnSlope * this.tipSigma * this.tipSigma * this.u[1] * twist) / size;
         const c = Math.cos(turnRad);
         const s = Math.sin(turnRad);
         const turned = ex * c - ey * s;
@@ -104,11 +110,24 @@ export class Projector {
         ex = turned;
       }
     }
-    data.value[k] = re * ex + im * ey;
+    data.value[k] = re * ex + im * ey + bend;
     data.alpha[k] = alpha;
     data.beta[k] = beta;
     const variance = (1 - u) * varianceAlong(noiseInsulating, ex, ey) + u * varianceAlong(noiseMetallic, ex, ey);
     data.weight[k] = 1 / Math.sqrt(Math.max(variance, 1e-12 * this.contrast * this.contrast));
+  }
+
+  /** Departure of a pixel well inside a state from that state's level, along the level's own direction, where no fringe is seen;
+   *  NaN where it is too large to be noise (specks, domains too small for the map). */
+  plateauNoise(pixel: number, metallic: boolean): number {
+    const z = metallic ? this.levels.metallic : this.levels.insulating;
+    const noise = metallic ? this.levels.noiseMetallic : this.levels.noiseInsulating;
+    const zi = this.signal.im === null ? 0 : z.im;
+    const size = Math.hypot(z.re, zi) || 1;
+    const im = this.signal.im === null ? 0 : this.signal.im[pixel];
+    const off = (this.signal.re[pixel] * z.re + im * zi) / size - size;
+    const variance = varianceAlong(noise, z.re / size, zi / size);
+    return off * off < 25 * variance ? off : Number.NaN;
   }
 
   /** Complex signal of a pixel turned so that the two-state mixture at share u is real: its argument is what a fringe adds. */

@@ -2,7 +2,7 @@ import type { Tip } from "../../model/cooldown.js";
 import type { FrameStates, Signal } from "../../model/signal.js";
 import { FWHM_PER_SIGMA, RISE_PER_SIGMA, RISE_PER_W } from "../../model/units.js";
 import type { FrameWalls, Wall, WallProfile } from "../../model/walls.js";
-import { CorrelatedNoise } from "./correlation.js";
+import { CorrelatedNoise, measureLags, powersOf } from "./correlation.js";
 import { Projector, type Direction } from "./direction.js";
 import { estimateWithTip, estimateWithoutTip, type ProfileEstimate } from "./estimate.js";
 import { flagOf, type Surroundings } from "./flags.js";
@@ -38,7 +38,7 @@ class FrameFit {
   private readonly segments: Segments;
   private readonly near: NearestWall;
   private readonly projector: Projector;
-  private readonly noise: CorrelatedNoise;
+  private noise: CorrelatedNoise;
   private readonly data = new ProfileData();
   private readonly fitter = new ProfileFitter();
   private readonly sigmaNm: number;
@@ -65,19 +65,38 @@ class FrameFit {
   ) {
     const { rows, cols, pixel } = signal;
     this.stepNm = Math.min(pixel.xNm, pixel.yNm);
+    this.sigmaNm = tip === null ? 0 : tip.resolutionNm / FWHM_PER_SIGMA;
     this.edgeNm = distanceFromEdge(signal);
     this.segments = segmentsOf(walls);
     this.near = nearestWall(this.segments, rows, cols, pixel);
-    this.projector = new Projector(signal, states.levels);
-    const { noiseCorrelationX, noiseCorrelationY } = states.levels;
-    this.noise = new CorrelatedNoise(noiseCorrelationX, noiseCorrelationY, rows, cols);
-    this.sigmaNm = tip === null ? 0 : tip.resolutionNm / FWHM_PER_SIGMA;
+    this.projector = new Projector(signal, states.levels, this.sigmaNm);
     this.spacingNm = s.spacingNm > 0 ? s.spacingNm : tip === null ? 6 * this.stepNm : 2 * tip.resolutionNm;
     // 10–90 from the slope at the middle (1.02 for a blurred step, 1.10 for a tanh), without the blur of the tracing
     const seen = 1.06 / slopePerNm;
     const least = Math.max(RISE_PER_SIGMA * this.sigmaNm, 2 * this.stepNm);
     this.apparentNm = Math.max(least, Math.sqrt(Math.max(0, seen * seen - (RISE_PER_SIGMA * blurNm) ** 2)));
+    this.noise = this.correlatedNoise();
     this.pooledSigma = tip === null ? this.apparentNm / RISE_PER_SIGMA : this.sigmaNm;
+  }
+
+  /** Noise correlation from pixels well away from every wall; where they are few, from what came with the levels. */
+  private correlatedNoise(): CorrelatedNoise {
+    const { signal, near, projector, states } = this;
+    const { rows, cols, usable } = signal;
+    const deviation = new Float32Array(rows * cols).fill(Number.NaN);
+    const clear = 1.5 * this.apparentNm;
+    for (let p = 0; p < deviation.length; p++) {
+      const d = near.distanceNm[p];
+      if (usable[p] === 0 || !(Math.abs(d) > clear)) continue;
+      deviation[p] = projector.plateauNoise(p, d >= 0);
+    }
+    const { noiseCorrelationX, noiseCorrelationY } = states.levels;
+    return new CorrelatedNoise(
+      measureLags(deviation, rows, cols, "x") ?? powersOf(noiseCorrelationX),
+      measureLags(deviation, rows, cols, "y") ?? powersOf(noiseCorrelationY),
+      rows,
+      cols,
+    );
   }
 
   /** Which pixels belong to which stretch, the width of all walls together, and the direction for each wall. */
@@ -164,7 +183,7 @@ class FrameFit {
       data.distance[k] = d;
       data.arc[k] = near.arcNm[pixel] - t.middleNm;
       data.pixel[k] = pixel;
-      projector.put(data, k, pixel, d, this.pooledW, this.pooledSigma, direction, turn === null ? 0 : turn.at(d));
+      projector.put(data, k, pixel, d, this.pooledW, this.pooledSigma, direction, turn?.at(d) ?? 0, turn?.slope(d) ?? 0);
     }
   }
 

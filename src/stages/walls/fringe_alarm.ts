@@ -32,6 +32,11 @@ export class PhaseTurn {
     const k = Math.min(n - 2, Math.floor(x));
     return this.angle[k] + (x - k) * (this.angle[k + 1] - this.angle[k]);
   }
+
+  /** Its slope, rad/nm, over one bin. */
+  slope(distanceNm: number): number {
+    return (this.at(distanceNm + this.binNm / 2) - this.at(distanceNm - this.binNm / 2)) / this.binNm;
+  }
 }
 
 /** For which walls the signal leaves the chord between the two levels as it does at a fringe: bins of the component across
