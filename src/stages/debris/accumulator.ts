@@ -22,7 +22,7 @@ export class DebrisAccumulator {
   readonly #drifts: readonly Drift[];
   readonly #tip: Tip | null;
   readonly #settings: DebrisSettings;
-  grid: Grid | null = null;
+  #grid: Grid | null = null;
 
   /** @param drifts of all frames: they say how large a grid is needed */
   constructor(drifts: readonly Drift[], tip: Tip | null, settings: DebrisSettings) {
@@ -36,8 +36,8 @@ export class DebrisAccumulator {
     const { pixel } = clean;
     if (drift.xNm === null || drift.yNm === null) return;
     if ((drift.sdNm ?? 0) > Math.min(pixel.xNm, pixel.yNm)) return;
-    this.grid ??= this.#makeGrid(clean);
-    const grid = this.grid;
+    this.#grid ??= this.#makeGrid(clean);
+    const grid = this.#grid;
     const rows = rowsOf(clean.amplitude);
     const cols = colsOf(clean.amplitude);
     const { ringXPx, ringYPx } = reaches(pixel, this.#tip, this.#settings);
@@ -51,6 +51,7 @@ export class DebrisAccumulator {
     addChannel(grid.amplitude, byAmplitude.strict, grid, rows, cols, atRow, atCol);
     addChannel(grid.looseAmplitude, byAmplitude.loose, grid, rows, cols, atRow, atCol);
     grid.frames++;
+    if (byAmplitude.twoStates) grid.twoStateFrames++;
     if (clean.phase !== null && grid.phase !== null) {
       const phase = dataOf(clean.phase);
       const ring = ringOf(phase, rows, cols, ringXPx, ringYPx);
@@ -72,11 +73,11 @@ export class DebrisAccumulator {
 
   /** The map of debris. Empty (0 × 0) where no frame was added. */
   finish(): DebrisMap {
-    if (this.grid === null) {
+    if (this.#grid === null) {
       const pixel = { xNm: 1, yNm: 1 };
       return { originXNm: 0, originYNm: 0, pixel, rows: 0, cols: 0, mask: new Uint8Array(0), spots: 0 };
     }
-    return decide(this.grid, this.#tip, this.#settings);
+    return decide(this.#grid, this.#tip, this.#settings);
   }
 
   #makeGrid(first: CleanFrame): Grid {
@@ -103,6 +104,7 @@ export class DebrisAccumulator {
       pixel,
       height: { sum: new Float32Array(n), squares: new Float32Array(n), count: new Uint16Array(n) },
       frames: 0,
+      twoStateFrames: 0,
       amplitude: channel(),
       looseAmplitude: channel(),
       phase: channel(),

@@ -24,27 +24,34 @@ export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMa
   const n = rows * cols;
   const seed = new Uint8Array(n);
   const candidate = new Uint8Array(n);
+  const byHeight = new Uint8Array(n);
   const height = grid.height === null ? null : heightScores(grid.height, rows, cols);
   if (height !== null) {
     for (let p = 0; p < n; p++) {
       if (height[p] > s.heightSigmas) seed[p] = 1;
-      if (height[p] > REACH_SHARE * s.heightSigmas) candidate[p] = 1;
+      if (height[p] > REACH_SHARE * s.heightSigmas) candidate[p] = byHeight[p] = 1;
     }
   }
-  const least = Math.max(s.leastFrames, s.leastCoverage * grid.frames);
+  // where no frame shows two states no domain can be taken for debris
+  const least = grid.twoStateFrames > 0 ? Math.max(s.leastFrames, s.leastCoverage * grid.frames) : s.leastFrames;
   for (const channel of [grid.amplitude, grid.phase]) {
     if (channel !== null) markChannel(channel, least, height, rows, cols, s, seed, candidate);
   }
   markChannel(grid.looseAmplitude, Infinity, height, rows, cols, s, seed, candidate);
   const spots = growSpots(seed, candidate, rows, cols, s.leastPixels);
   const { marginXPx, marginYPx } = reaches(grid.pixel, tip, s);
+  const mask = widen(spots, rows, cols, marginXPx, marginYPx);
+  // the optical signal of a bump reaches further than its height: the tip blurs the one and not, or less, the other
+  for (let p = 0; p < n; p++) if (spots[p] === 0) byHeight[p] = 0;
+  const wider = widen(byHeight, rows, cols, 2 * marginXPx, 2 * marginYPx);
+  for (let p = 0; p < n; p++) mask[p] |= wider[p];
   return {
     originXNm: grid.originXNm,
     originYNm: grid.originYNm,
     pixel: grid.pixel,
     rows,
     cols,
-    mask: widen(spots, rows, cols, marginXPx, marginYPx),
+    mask,
     spots: n === 0 ? 0 : connectedComponents(spots, rows, cols, 8).count,
   };
 }

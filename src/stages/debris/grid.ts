@@ -36,6 +36,8 @@ export interface Grid {
   readonly height: HeightSums | null;
   /** Frames that were added. */
   frames: number;
+  /** Of them, frames seen to show both states. */
+  twoStateFrames: number;
   readonly amplitude: ChannelSums;
   /** The same with pixels between the levels of a frame's two states: no proof of debris by itself. */
   readonly looseAmplitude: ChannelSums;

@@ -46,5 +46,5 @@ export function findDebrisInFrame(clean: CleanFrame, tip: Tip | null, s: DebrisS
     if (score[p] > s.loneFrameHeightSigmas) seed[p] = 1;
     if (score[p] > 0.5 * s.loneFrameHeightSigmas) candidate[p] = 1;
   }
-  return widen(growSpots(seed, candidate, rows, cols, s.leastPixels), rows, cols, marginXPx, marginYPx);
+  return widen(growSpots(seed, candidate, rows, cols, s.leastPixels), rows, cols, 2 * marginXPx, 2 * marginYPx);
 }

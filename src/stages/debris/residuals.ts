@@ -28,7 +28,7 @@ export function departures(
   allowed: Uint8Array | null,
   rows: number,
   cols: number,
-): { readonly strict: Departure; readonly loose: Departure; readonly flat: Uint8Array } {
+): { readonly strict: Departure; readonly loose: Departure; readonly flat: Uint8Array; readonly twoStates: boolean } {
   const sd0 = pixelNoise(values, rows, cols);
   const tolerance = 0.8 * sd0 + 0.03;
   const blocks = ring.reference.length;
@@ -62,7 +62,7 @@ export function departures(
       strict[p] = z;
     }
   }
-  return { strict, loose, flat };
+  return { strict, loose, flat, twoStates: second !== undefined };
 }
 
 function classify(

@@ -43,9 +43,10 @@ export const settings = {
   },
   leastPixels: { default: 3, unit: "1", means: "smaller spots are not debris", min: 1 },
   marginTips: {
-    default: 0.8,
+    default: 0.4,
     unit: "1",
-    means: "margin left out around debris, in tip resolutions (of 3 pixels where there is no tip)",
+    means:
+      "margin left out around debris, in tip resolutions (3 pixels where there is no tip); twice this around bumps",
     min: 0,
   },
   loneFrameHeightSigmas: {
