@@ -130,24 +130,20 @@ export class Projector {
     return off * off < 25 * variance ? off : Number.NaN;
   }
 
-  /** Complex signal of a pixel turned so that the two-state mixture at share u is real: its argument is what a fringe adds. */
-  turned(pixel: number, u: number): { re: number; im: number } {
-    const { insulating: a, metallic: b } = this.levels;
+  /** Into `out`: the signal of a pixel across the chord (0 on it) and the variance of its noise there; then the signal turned so that
+   *  the two-state mixture at share u is real (its argument is what a fringe adds), real and imaginary part. */
+  offChord(pixel: number, u: number, out: Float64Array): void {
+    const { insulating: a, metallic: b, noiseInsulating, noiseMetallic } = this.levels;
+    const re = this.signal.re[pixel];
+    const im = (this.signal.im as Float32Array)[pixel];
+    const variance =
+      (1 - u) * varianceAlong(noiseInsulating, -this.ey, this.ex) + u * varianceAlong(noiseMetallic, -this.ey, this.ex);
+    out[0] = -(re - a.re) * this.ey + (im - a.im) * this.ex;
+    out[1] = Math.max(variance, 1e-12 * this.contrast * this.contrast);
     const zr = a.re + (b.re - a.re) * u;
     const zi = a.im + (b.im - a.im) * u;
     const size = Math.hypot(zr, zi) || 1;
-    const re = this.signal.re[pixel];
-    const im = (this.signal.im as Float32Array)[pixel];
-    return { re: (re * zr + im * zi) / size, im: (im * zr - re * zi) / size };
-  }
-
-  /** Signal of a pixel across the chord, and the variance of its noise there; 0 on the chord. */
-  across(pixel: number, u: number): { value: number; variance: number } {
-    const { insulating: a, noiseInsulating, noiseMetallic } = this.levels;
-    const im = (this.signal.im as Float32Array)[pixel];
-    const value = -(this.signal.re[pixel] - a.re) * this.ey + (im - a.im) * this.ex;
-    const variance =
-      (1 - u) * varianceAlong(noiseInsulating, -this.ey, this.ex) + u * varianceAlong(noiseMetallic, -this.ey, this.ex);
-    return { value, variance: Math.max(variance, 1e-12 * this.contrast * this.contrast) };
+    out[2] = (re * zr + im * zi) / size;
+    out[3] = (im * zr - re * zi) / size;
   }
 }

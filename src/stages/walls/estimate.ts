@@ -17,6 +17,9 @@ import {
 const DELTA_CHI2 = 2.705543454095404;
 const Z95 = Math.sqrt(DELTA_CHI2);
 
+/** w² in its own standard deviations beyond which its likelihood is taken as Gaussian. */
+const CLEAR = 12;
+
 //                           I     M     c     tilt  w²     σ
 const SHAPE = /*        */ [true, true, true, true, true, false];
 const SHAPE_AND_TIP = /**/ [true, true, true, true, true, true];
@@ -125,7 +128,8 @@ export function estimateWithTip(
   let resolved = q > 0;
   if (q > 0 && q < 6 * totalSd) resolved = rise(0) > 0;
   p.set(atMinimum);
-  const upperQ = riseTo(rise, bestQ, totalSd);
+  // far from the boundary the likelihood of w² is Gaussian where it matters
+  const upperQ = bestQ > CLEAR * totalSd ? bestQ + Z95 * totalSd : riseTo(rise, bestQ, totalSd);
 
   // The width as seen: where the fit sits on the boundary the tip is let go, so that a wall sharper than the tip shows.
   let apparentNm: number;

@@ -183,7 +183,17 @@ class FrameFit {
       data.distance[k] = d;
       data.arc[k] = near.arcNm[pixel] - t.middleNm;
       data.pixel[k] = pixel;
-      projector.put(data, k, pixel, d, this.pooledW, this.pooledSigma, direction, turn?.at(d) ?? 0, turn?.slope(d) ?? 0);
+      projector.put(
+        data,
+        k,
+        pixel,
+        d,
+        this.pooledW,
+        this.pooledSigma,
+        direction,
+        turn?.at(d) ?? 0,
+        turn?.slope(d) ?? 0,
+      );
     }
   }
 

@@ -57,6 +57,7 @@ export function fringeAlarms(
   const sums = Array.from({ length: o.walls }, () => new Bins(bins));
   const all = new Bins(bins);
   const u = new Float64Array(4);
+  const off = new Float64Array(4);
   const shareAt = new Float64Array(bins);
   for (let b = 0; b < bins; b++) {
     kink((b + 0.5 - bins / 2) * o.binNm, o.w, o.sigma, u);
@@ -68,10 +69,9 @@ export function fringeAlarms(
       const d = near.distanceNm[pixel];
       if (Math.abs(d) >= o.reachNm || Math.abs(d) > stretches.freeNm[m] - o.marginNm) continue;
       const b = Math.min(bins - 1, Math.max(0, Math.floor(d / o.binNm + bins / 2)));
-      const { value, variance } = projector.across(pixel, shareAt[b]);
-      const z = projector.turned(pixel, shareAt[b]);
-      sums[t.wall].add(b, value, variance, z);
-      all.add(b, value, variance, z);
+      projector.offChord(pixel, shareAt[b], off);
+      sums[t.wall].add(b, off);
+      all.add(b, off);
     }
   }
   const everywhere = all.tail(shareAt, noise.areaFactor) < o.level;
@@ -100,12 +100,13 @@ class Bins {
     this.im = new Float64Array(count);
   }
 
-  add(b: number, value: number, variance: number, z: { re: number; im: number }): void {
-    this.weight[b] += 1 / variance;
-    this.sum[b] += value / variance;
+  /** `off` as from `Projector.offChord`. */
+  add(b: number, off: Float64Array): void {
+    this.weight[b] += 1 / off[1];
+    this.sum[b] += off[0] / off[1];
     this.pixels[b]++;
-    this.re[b] += z.re;
-    this.im[b] += z.im;
+    this.re[b] += off[2];
+    this.im[b] += off[3];
   }
 
   /** Mean argument in each bin. Bins of few pixels lean on `support` (all walls together), or on no turn at all. */

@@ -13,8 +13,7 @@ export function shareNoise(levels: FrameLevels): { sd: number; areaFactor: numbe
   if (!(contrast > 0)) return { sd: 0, areaFactor: 1 };
   const ex = dre / contrast;
   const ey = dim / contrast;
-  const variance =
-    (varianceAlong(levels.noiseInsulating, ex, ey) + varianceAlong(levels.noiseMetallic, ex, ey)) / 2;
+  const variance = (varianceAlong(levels.noiseInsulating, ex, ey) + varianceAlong(levels.noiseMetallic, ex, ey)) / 2;
   return {
     sd: Math.sqrt(Math.max(0, variance)) / contrast,
     areaFactor: longWave(levels.noiseCorrelationX) * longWave(levels.noiseCorrelationY),

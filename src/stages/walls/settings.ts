@@ -23,7 +23,8 @@ export const settings = {
   geometryBlurNm: {
     default: -1,
     unit: "nm",
-    means: "standard deviation of the blur before walls are traced (fits never see it); -1 = as much as the noise asks for",
+    means:
+      "standard deviation of the blur before walls are traced (fits never see it); -1 = as much as the noise asks for",
     min: -1,
   },
   lineSmoothingPx: {
@@ -49,7 +50,8 @@ export const settings = {
   fringeAlarm: {
     default: 0.001,
     unit: "1",
-    means: "p-value of structure across the line between the two levels below which a wall is fitted along the radial direction, which a fringe does not bend",
+    means:
+      "p-value of structure across the line between the two levels below which a wall is fitted along the radial direction, which a fringe does not bend",
     min: 0,
     max: 1,
   },

@@ -110,9 +110,7 @@ function vertexSlopes(points: Float64Array, total: Float64Array, closed: boolean
     for (let c = 0; c < 2; c++) {
       const down = even ? (points[2 * k + c] - points[2 * a + c]) / before : 0;
       const up = even ? (points[2 * b + c] - points[2 * k + c]) / after : 0;
-      out[2 * k + c] = even
-        ? (down * after + up * before) / both
-        : (points[2 * b + c] - points[2 * a + c]) / both;
+      out[2 * k + c] = even ? (down * after + up * before) / both : (points[2 * b + c] - points[2 * a + c]) / both;
     }
   }
   return out;
