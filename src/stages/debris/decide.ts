@@ -41,8 +41,9 @@ export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMa
   const spots = growSpots(seed, candidate, rows, cols, s.leastPixels);
   const { marginXPx, marginYPx } = reaches(grid.pixel, tip, s);
   const mask = widen(spots, rows, cols, marginXPx, marginYPx);
-  // the optical signal of a bump reaches further than its height: the tip blurs the one and not, or less, the other
-  for (let p = 0; p < n; p++) if (spots[p] === 0) byHeight[p] = 0;
+  // the optical signal of a bump reaches further than its height, since the tip blurs it more; where the frames could not show how far
+  // it reaches the margin is wider
+  for (let p = 0; p < n; p++) if (spots[p] === 0 || grid.amplitude.count[p] >= s.leastFrames) byHeight[p] = 0;
   const wider = widen(byHeight, rows, cols, 2 * marginXPx, 2 * marginYPx);
   for (let p = 0; p < n; p++) mask[p] |= wider[p];
   return {

@@ -99,7 +99,7 @@ function render(scene: Scene): { frames: CleanFrame[]; drifts: Drift[] } {
 function mapOf(scene: Scene): { map: DebrisMap; frames: CleanFrame[]; drifts: Drift[] } {
   const { frames, drifts } = render(scene);
   const accumulator = new DebrisAccumulator(drifts, tip, settings);
-  frames.forEach((f, k) => accumulator.accumulate(f, drifts[k] as Drift));
+  frames.forEach((f, k) => accumulator.accumulate(f, drifts[k]));
   return { map: accumulator.finish(), frames, drifts };
 }
 
@@ -118,7 +118,7 @@ const masked = (mask: Uint8Array): number => mask.reduce((a, b) => a + b, 0) / m
 const at = (mask: Uint8Array, drift: Drift, d: Dot): number => {
   const j = Math.round((d.xNm - (drift.xNm ?? 0)) / PIXEL_NM);
   const i = Math.round((d.yNm - (drift.yNm ?? 0)) / PIXEL_NM);
-  return mask[i * SIZE + j] as number;
+  return mask[i * SIZE + j];
 };
 
 const dot = (xNm: number, yNm: number, o: Partial<Dot>): Dot => ({
@@ -153,7 +153,7 @@ describe("debris over a cooldown", () => {
 
   test("what is left beside the mask departs by less than the pixel noise", () => {
     const { map, drifts } = mapOf({ seed: 2, dots, frames: crossing() });
-    const drift = drifts[4] as Drift;
+    const drift = drifts[4];
     const mask = debrisInFrame(map, drift, SIZE, SIZE);
     for (const d of dots) {
       for (let p = 0; p < mask.length; p++) {
@@ -186,22 +186,22 @@ describe("debris over a cooldown", () => {
 
   test("amplitude alone is enough for what shows in it", () => {
     const { map, drifts } = mapOf({ seed: 7, dots, frames: crossing(), withPhase: false, withTopography: false });
-    const mask = debrisInFrame(map, drifts[2] as Drift, SIZE, SIZE);
-    expect([1, 2, 4].map((k) => at(mask, drifts[2] as Drift, dots[k] as Dot))).toEqual([1, 1, 1]);
-    expect(at(mask, drifts[2] as Drift, dots[0] as Dot)).toBe(0);
+    const mask = debrisInFrame(map, drifts[2], SIZE, SIZE);
+    expect([1, 2, 4].map((k) => at(mask, drifts[2], dots[k]))).toEqual([1, 1, 1]);
+    expect(at(mask, drifts[2], dots[0])).toBe(0);
   });
 
   test("a series that never leaves one state: dark spots without a bump are debris", () => {
     const frames = Array.from({ length: 5 }, (_, k) => ({ xNm: 20 * k, yNm: 15 * k, share: metallic }));
     const { map, drifts } = mapOf({ seed: 8, dots: dots.slice(1, 3), frames });
-    const mask = debrisInFrame(map, drifts[4] as Drift, SIZE, SIZE);
-    for (const d of dots.slice(1, 3)) expect(at(mask, drifts[4] as Drift, d)).toBe(1);
+    const mask = debrisInFrame(map, drifts[4], SIZE, SIZE);
+    for (const d of dots.slice(1, 3)) expect(at(mask, drifts[4], d)).toBe(1);
   });
 
   test("the map does not depend on the order of the frames", () => {
     const { map, frames, drifts } = mapOf({ seed: 9, dots, frames: crossing() });
     const backwards = new DebrisAccumulator(drifts, tip, settings);
-    for (let k = frames.length - 1; k >= 0; k--) backwards.accumulate(frames[k] as CleanFrame, drifts[k] as Drift);
+    for (let k = frames.length - 1; k >= 0; k--) backwards.accumulate(frames[k], drifts[k]);
     expect(backwards.finish().mask).toEqual(map.mask);
   });
 });
@@ -210,11 +210,11 @@ describe("frames without a place", () => {
   test("only clear bumps count; a dark spot may be a domain", () => {
     const dots = [dot(250, 300, { heightNm: 20 }), dot(600, 600, { logFactor: -0.8 })];
     const { frames } = render({ seed: 10, dots, frames: [{ xNm: 0, yNm: 0, share: metallic }] });
-    const mask = findDebrisInFrame(frames[0] as CleanFrame, tip, settings);
-    expect(at(mask, { frame: 0, xNm: 0, yNm: 0, sdNm: 0 }, dots[0] as Dot)).toBe(1);
-    expect(at(mask, { frame: 0, xNm: 0, yNm: 0, sdNm: 0 }, dots[1] as Dot)).toBe(0);
+    const mask = findDebrisInFrame(frames[0], tip, settings);
+    expect(at(mask, { frame: 0, xNm: 0, yNm: 0, sdNm: 0 }, dots[0])).toBe(1);
+    expect(at(mask, { frame: 0, xNm: 0, yNm: 0, sdNm: 0 }, dots[1])).toBe(0);
     for (const seed of [11, 12, 13, 14]) {
-      const bare = render({ seed, dots: [], frames: [{ xNm: 0, yNm: 0, share: front(400) }] }).frames[0] as CleanFrame;
+      const bare = render({ seed, dots: [], frames: [{ xNm: 0, yNm: 0, share: front(400) }] }).frames[0];
       expect(masked(findDebrisInFrame(bare, tip, settings))).toBe(0);
       expect(masked(findDebrisInFrame({ ...bare, topography: null }, null, settings))).toBe(0);
     }
@@ -228,7 +228,7 @@ describe("frames without a place", () => {
     });
     const lost: Drift = { frame: 0, xNm: null, yNm: null, sdNm: null };
     const accumulator = new DebrisAccumulator([lost], tip, settings);
-    accumulator.accumulate(frames[0] as CleanFrame, lost);
+    accumulator.accumulate(frames[0], lost);
     const map = accumulator.finish();
     expect(map.mask.length).toBe(0);
     expect(masked(debrisInFrame(map, lost, 8, 9))).toBe(0);
