@@ -16,8 +16,12 @@ import { differenceNoise, splitStates } from "./split.js";
 /** Frames with fewer usable pixels tell nothing. */
 const LEAST_PIXELS = 200;
 const ROUNDS = 3;
+/** Turns of levels, contour and walls' width beyond that, where few pixels lie far from walls; and when they have settled, as a share of
+ *  the contrast. */
+const MOST_ROUNDS = 10;
+const SETTLED = 0.001;
 /** How wrong the tail of a wall may be as a tanh, as a share of itself: it enters the uncertainty of the levels. */
-const TAIL_ERROR = 0.15;
+const TAIL_ERROR = 0.25;
 const SMOOTHING_PX = 1.3;
 
 type Levels = readonly [ComplexValue, ComplexValue];
@@ -91,11 +95,16 @@ function twoStates(
     { re: 0, im: 0 },
     { re: 0, im: 0 },
   ];
+  let last = levels;
   let noise: [NoiseCovariance, NoiseCovariance] | null = null;
   let inflation = { x: 0, y: 0 };
-  for (let round = 0; round < ROUNDS; round++) {
+  for (let round = 0; round < MOST_ROUNDS; round++) {
     const u = smoothedShare(z, round === 0 ? smooth : null, eRe, eIm, low, high, by);
-    pure = purePixels(u, z);
+    pure = purePixels(u, z, {
+      smoothingNm: Math.sqrt(by.xPx * z.pixel.xNm * by.yPx * z.pixel.yNm),
+      tipNm: tip === null ? 0 : tip.resolutionNm / FWHM_PER_SIGMA,
+      noiseSd: Math.hypot(noise0.re * eRe, noise0.im * eIm) / (high - low),
+    });
     if (pure.count[0] === 0 || pure.count[1] === 0) return null;
     levels = levelsOf(z, pure, null, Infinity);
     noise = [noiseCovariance(z, pure, 0, levels), noiseCovariance(z, pure, 1, levels)];
@@ -113,6 +122,9 @@ function twoStates(
     const di = levels[1].im - levels[0].im;
     const d = Math.hypot(dr, di);
     if (!(d > 0)) return null;
+    const moved = Math.hypot(levels[0].re - last[0].re, levels[0].im - last[0].im, levels[1].re - last[1].re, levels[1].im - last[1].im);
+    last = levels;
+    if (round >= ROUNDS - 1 && moved < SETTLED * d) break;
     eRe = dr / d;
     eIm = di / d;
     low = levels[0].re * eRe + levels[0].im * eIm;
@@ -222,6 +234,7 @@ function assemble(
       level,
       logSd: Math.sqrt((along * along) / n + tail * tail + rowGain2 / 2),
       phaseSdRad: Math.sqrt((across * across) / n + tail * tail + rowPhase2 / 2),
+      tailSd: tail,
       noise: noise[k],
       purePixels: pure.count[k],
       share: k === 1 ? share1 : 1 - share1,
@@ -284,6 +297,7 @@ function oneState(frame: number, raw: Pixels, tip: Tip | null, s: StatesSettings
     level,
     logSd: sdAlong(noise, level.re / m, level.im / m) / m / Math.sqrt(n),
     phaseSdRad: sdAlong(noise, -level.im / m, level.re / m) / m / Math.sqrt(n),
+    tailSd: 0,
     noise,
     purePixels: pure.count[0],
     share: 1,

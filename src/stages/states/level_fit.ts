@@ -8,6 +8,8 @@ export interface StateEstimate {
   /** Standard deviation of the logarithm of its amplitude, and of its phase in rad. */
   readonly logSd: number;
   readonly phaseSdRad: number;
+  /** The part of either that comes from the tails of the walls: it is alike in frames that are alike, and does not average out. */
+  readonly tailSd: number;
   /** Covariance of the pixel noise. */
   readonly noise: NoiseCovariance;
   /** Pixels of this state far from walls. */

@@ -10,7 +10,6 @@ import {
   type Signal,
 } from "../../model/signal.js";
 import { FWHM_PER_SIGMA } from "../../model/units.js";
-import { maskedBlur } from "../../raster/masked_blur.js";
 import { mixedFraction } from "./fraction.js";
 import { clearIslands, fillState } from "./islands.js";
 import type { LevelFit } from "./level_fit.js";
@@ -18,6 +17,7 @@ import { pixelsPerIndependent } from "./noise.js";
 import { correctPixels, readPixels, type Pixels } from "./pixels.js";
 import { projectionOf, type Projection } from "./projection.js";
 import type { StatesSettings } from "./settings.js";
+import { smoothShare } from "./smooth_share.js";
 
 /** Two-sided 95 % of a normal, for what is left of a domain that could have been missed. */
 const LOST_BY_BLUR = 2;
@@ -69,10 +69,9 @@ export function mapStates(
   const noiseSd = Math.sqrt((e.sdInsulating ** 2 + e.sdMetallic ** 2) / 2);
   const perIndependent = pixelsPerIndependent(levels.noiseCorrelationX, levels.noiseCorrelationY);
   const smoothingNm = smoothingFor(noiseSd * Math.sqrt(perIndependent), z, tip, s);
-  const u = maskedBlur(share, z.usable, rows, cols, smoothingNm / pixel.xNm, smoothingNm / pixel.yNm).values;
+  const u = smoothShare(share, z.usable, rows, cols, smoothingNm / pixel.xNm, smoothingNm / pixel.yNm);
   for (let p = 0; p < share.length; p++) {
     if (z.usable[p] === 1) map.states[p] = u[p] > 0.5 ? METALLIC : INSULATING;
-    else u[p] = Number.NaN;
   }
   const leastPx = leastDomainPx(z, tip, s);
   const pixelsOff = (pixels: Int32Array, state: 0 | 1): boolean => onChord(pixels, state, z, share, levels, e);

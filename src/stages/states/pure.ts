@@ -1,6 +1,7 @@
 import type { ComplexValue } from "../../model/signal.js";
 import { RISE_PER_W } from "../../model/units.js";
-import { distanceToBoundary } from "./distance.js";
+import { fastKink, KINK_VARIANCE } from "../../numerics/kink.js";
+import { distanceToContour } from "./distance.js";
 import type { Pixels } from "./pixels.js";
 
 /** Pixels whose state is known, with the small share of the other one that the tail of the nearest wall leaves there. */
@@ -23,39 +24,70 @@ const REACHES = [1.6, 1.4, 1.25, 1.1, 1, 0.9, 0.8, 0.7, 0.6, 0.5] as const;
 const ENOUGH = 600;
 const ENOUGH_SHARE = 0.02;
 
-/** Mean 10–90 rise of the walls of a smoothed map of the mixing u, without tracing them: by the co-area formula
- *  ∫ L(c) dc = Σ |∇u| p² over 0.25 < u < 0.75, L(c) being the length of the contour u = c; the band's area over its length is
- *  2 w artanh ½ for u = ½(1 + tanh(x/w)). */
-export function apparentWidth(u: Float32Array, z: Pixels): number {
-  const { rows, cols } = z;
-  let band = 0;
+/** What blurs the map that the pure pixels are found in, and what blurs the raw pixels they are. */
+export interface WallBlur {
+  /** Smoothing of the map, sd in nm. */
+  readonly smoothingNm: number;
+  /** The tip's response, sd in nm; 0 where it is not known. */
+  readonly tipNm: number;
+  /** Standard deviation of the noise of u before the smoothing, of white noise. */
+  readonly noiseSd: number;
+}
+
+/** Mean width w of the walls of a smoothed map of the mixing u, as if u = ½(1 + tanh(x/w)), without tracing them: there
+ *  |∇u| = 2u(1 − u)/w, averaged over the walls' length (weights |∇u| in a band about ½, by the co-area formula) so that flat spots
+ *  between walls count little. What noise adds to |∇u|² is taken off. */
+function tanhWidth(u: Float32Array, z: Pixels, blur: WallBlur): number {
+  const { rows, cols, pixel } = z;
+  // variance of a component of the gradient of white noise after a Gaussian blur: s²p²/(8πσ⁴)
+  const noise2 = (2 * blur.noiseSd ** 2 * pixel.xNm * pixel.yNm) / (8 * Math.PI * blur.smoothingNm ** 4);
   let slopes = 0;
+  let inverse = 0;
   for (let i = 1; i < rows - 1; i++) {
     for (let j = 1; j < cols - 1; j++) {
       const p = i * cols + j;
-      if (!(u[p] > 0.25 && u[p] < 0.75) || z.usable[p] === 0) continue;
-      const gx = (u[p + 1] - u[p - 1]) / (2 * z.pixel.xNm);
-      const gy = (u[p + cols] - u[p - cols]) / (2 * z.pixel.yNm);
-      const g = Math.sqrt(gx * gx + gy * gy);
-      if (!Number.isFinite(g)) continue;
-      band++;
-      slopes += g;
+      const v = u[p];
+      if (!(v > 0.25 && v < 0.75) || z.usable[p] === 0) continue;
+      const gx = (u[p + 1] - u[p - 1]) / (2 * pixel.xNm);
+      const gy = (u[p + cols] - u[p - cols]) / (2 * pixel.yNm);
+      const g2 = gx * gx + gy * gy;
+      if (!Number.isFinite(g2)) continue;
+      slopes += Math.sqrt(g2);
+      inverse += (g2 - noise2) / (2 * v * (1 - v));
     }
   }
-  if (band === 0) return Number.NaN;
-  const w = (band * 0.5) / (slopes * 2 * Math.atanh(0.5));
-  return RISE_PER_W * w;
+  return inverse > 0 ? slopes / inverse : Number.NaN;
+}
+
+/** Steps of the table of a wall's tail, and how far it goes in apparent widths. */
+const TABLE = 256;
+const TABLE_WIDTHS = 3;
+
+/** Share of the other state at a distance from a wall in the raw pixels: the wall as the tip sees it, without the map's smoothing. */
+function tailTable(mapWidth: number, widthNm: number, blur: WallBlur): Float64Array {
+  const out = new Float64Array(TABLE + 1);
+  const blur2 = blur.smoothingNm ** 2 + blur.tipNm ** 2;
+  const w = Math.sqrt(Math.max(mapWidth ** 2 - blur2 / KINK_VARIANCE, (0.1 * mapWidth) ** 2));
+  const value = new Float64Array(4);
+  for (let k = 0; k <= TABLE; k++) {
+    const d = (k * TABLE_WIDTHS * widthNm) / TABLE;
+    fastKink(-d, w, blur.tipNm, value);
+    out[k] = value[0];
+  }
+  return out;
 }
 
 /** Pixels far from any wall of a smoothed map of the mixing u (NaN outside), on either side of u = ½.
  *  Each state takes the farthest reach that leaves it enough pixels, and never less than half a width. */
-export function purePixels(u: Float32Array, z: Pixels): PurePixels {
+export function purePixels(u: Float32Array, z: Pixels, blur: WallBlur): PurePixels {
   const n = u.length;
   const labels = new Uint8Array(n);
   for (let p = 0; p < n; p++) labels[p] = z.usable[p] === 0 || Number.isNaN(u[p]) ? 255 : u[p] > 0.5 ? 1 : 0;
-  const distance = distanceToBoundary(labels, z.rows, z.cols, z.pixel);
-  const widthNm = apparentWidth(u, z);
-  const w = widthNm / RISE_PER_W;
+  const distance = distanceToContour(u, labels, z.rows, z.cols, z.pixel);
+  const mapWidth = tanhWidth(u, z, blur);
+  const widthNm = RISE_PER_W * mapWidth;
+  const table = Number.isNaN(widthNm) ? null : tailTable(mapWidth, widthNm, blur);
+  const perNm = TABLE / (TABLE_WIDTHS * widthNm);
   const counts = [new Float64Array(REACHES.length), new Float64Array(REACHES.length)];
   for (let p = 0; p < n; p++) {
     if (labels[p] > 1) continue;
@@ -74,7 +106,7 @@ export function purePixels(u: Float32Array, z: Pixels): PurePixels {
   for (let p = 0; p < n; p++) {
     const k = labels[p];
     if (k > 1 || !(distance[p] >= reach[k])) continue;
-    const other = Number.isFinite(distance[p]) && w > 0 ? 0.5 * (1 - Math.tanh(distance[p] / w)) : 0;
+    const other = table === null ? 0 : (table[Math.round(distance[p] * perNm)] ?? 0);
     state[p] = k;
     share[p] = k === 0 ? other : 1 - other;
     count[k]++;

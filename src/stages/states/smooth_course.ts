@@ -14,6 +14,7 @@ const DIFFUSE = 100;
 /** Quadratic in temperature with priors that keep slope and bend small, fitted with Huber's weights: where there are few frames it
  *  is a constant or a line, with a standard deviation that grows away from them.
  *  @param slopeSd prior standard deviation of the change over the whole range of temperature; a third of it for the bend
+ *  @param commonSds the part of each measurement's standard deviation that is common to all of them: it is not averaged
  *  Sources: Huber 1964, Ann. Math. Stat. 35, 73; the prior is that of a penalised polynomial. */
 export function fitCourse(
   temperaturesK: readonly number[],
@@ -21,6 +22,7 @@ export function fitCourse(
   sds: readonly number[],
   rangeK: readonly [number, number],
   slopeSd: number,
+  commonSds: readonly number[] = [],
 ): Course | null {
   if (values.length === 0) return null;
   const middle = 0.5 * (rangeK[0] + rangeK[1]);
@@ -56,11 +58,14 @@ export function fitCourse(
       weights[n] = r <= HUBER ? 1 : HUBER / r;
     });
   }
+  const precision = sds.map((sd, n) => weights[n] / (sd * sd));
+  const all = precision.reduce((a, b) => a + b, 0);
+  const common2 = commonSds.reduce((a, sd, n) => a + (precision[n] * sd * sd) / all, 0);
   return {
     at(temperatureK) {
       const x = basis(temperatureK);
       let mean = 0;
-      let variance = 0;
+      let variance = common2;
       for (let k = 0; k < 3; k++) {
         mean += x[k] * coefficients[k];
         for (let l = 0; l < 3; l++) variance += x[k] * x[l] * covariance[3 * k + l];

@@ -13,6 +13,7 @@ export interface Pin {
   readonly logRatioSd: number;
   readonly stepRad: number;
   readonly stepSdRad: number;
+  readonly tailSd: number;
 }
 
 /** The contrast of the two states along temperature: what does not depend on a frame's gain or phase reference. */
@@ -47,6 +48,7 @@ function makePin(index: number, upper: StateEstimate, lower: StateEstimate, s: S
     logRatioSd: Math.sqrt(upper.logSd ** 2 + lower.logSd ** 2 + scatter2),
     stepRad: wrapAngle(Math.atan2(upper.level.im, upper.level.re) - Math.atan2(lower.level.im, lower.level.re)),
     stepSdRad: Math.sqrt(upper.phaseSdRad ** 2 + lower.phaseSdRad ** 2 + scatter2),
+    tailSd: Math.hypot(upper.tailSd, lower.tailSd),
   };
 }
 
@@ -139,12 +141,14 @@ function courses(
   s: StatesSettings,
 ): Contrast | null {
   const at = pins.map((p) => frames[p.index].temperatureK);
+  const tails = pins.map((p) => p.tailSd);
   const logRatio = fitCourse(
     at,
     pins.map((p) => p.logRatio),
     pins.map((p) => p.logRatioSd),
     rangeK,
     s.levelSlope,
+    tails,
   );
   if (logRatio === null) return null;
   const stepRad = hasPhase
@@ -154,6 +158,7 @@ function courses(
         pins.map((p) => p.stepSdRad),
         rangeK,
         s.levelSlope,
+        tails,
       )
     : null;
   return { logRatio, stepRad };
