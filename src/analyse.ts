@@ -129,6 +129,7 @@ async function analyseWith(
         : null;
     return {
       frame: k,
+      imagesSha256: (cleaned[k] as (typeof cleaned)[number]).imagesSha256,
       verdict: levels.verdict,
       drift: drifts[k] as Drift,
       fraction: m.fraction,

@@ -4,7 +4,9 @@ import { plainText } from "../model/text.js";
 import { readCooldown } from "../input/index.js";
 import { settingRecord, settingsWith } from "../settings.js";
 import { openForWriting } from "../store/open.js";
-import { checkName, findAnalysis, saveAnalysis, workHash } from "../store/save.js";
+import { contentHash, description, workHash } from "../store/identity.js";
+import { findAnalysis, saveAnalysis } from "../store/save.js";
+import { refuseChangedSources, refuseOtherContent } from "./sources.js";
 import { loopText, sayNotices } from "./summary.js";
 import { programVersion } from "./main.js";
 import { makeProgress } from "./progress.js";
@@ -36,15 +38,15 @@ export async function ingest(yaml: string, o: IngestOptions): Promise<number> {
   process.once("SIGTERM", onInterrupt);
   try {
     const cooldown = await readCooldown(yaml, { allowOutside: o.allowOutside === true });
-    checkName(db, cooldown);
     const version = programVersion();
-    const there = findAnalysis(db, workHash(cooldown, settingRecord(settings), version));
+    const there = findAnalysis(db, workHash(contentHash(description(cooldown)), settingRecord(settings), version));
     if (there !== null) {
       print(
         `${plainText(cooldown.cooldown)}: already in ${o.db} as analysis ${there}, from the same files and settings; nothing to do\n`,
       );
       return there;
     }
+    await refuseOtherContent(db, cooldown);
     // Loaded only now: a repeated ingest needs none of the numerics.
     const { analyse } = await import("../analyse.js");
     const progress = makeProgress(plainText(cooldown.cooldown), cooldown.frames.length);
@@ -61,6 +63,7 @@ export async function ingest(yaml: string, o: IngestOptions): Promise<number> {
       progress.stop();
     }
     abort.signal.throwIfAborted();
+    await refuseChangedSources(cooldown);
     const saved = saveAnalysis(db, analysis, new Date());
     print(
       `${plainText(cooldown.cooldown)}: ${analysis.frames.length} frames stored in ${o.db} as analysis ${saved.id}\n`,

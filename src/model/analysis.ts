@@ -16,6 +16,8 @@ export type DecidedFringe = FringeTest & { readonly detected: boolean; readonly 
 /** Everything found in one frame; small, so that the results of a whole cooldown fit in memory. */
 export interface FrameResult {
   readonly frame: number;
+  /** SHA-256 of the pixel values of its images, by which the frame is known again. */
+  readonly imagesSha256: string;
   readonly verdict: FrameVerdict;
   readonly drift: Drift;
   readonly fraction: { readonly value: number; readonly low: number; readonly high: number } | null;

@@ -1,129 +1,174 @@
 import Database from "better-sqlite3";
-import { copyFileSync, existsSync, readdirSync, readFileSync, statSync } from "node:fs";
+import { closeSync, existsSync, openSync, readFileSync, readSync, statSync } from "node:fs";
 import path from "node:path";
-import { fileURLToPath } from "node:url";
 import { InputError } from "../model/errors.js";
+import { APPLICATION_ID, migrate, newestVersion, schemaVersion } from "./migrate.js";
+import { databaseProblem, inWords, notSound } from "./problem.js";
 
 export type Db = Database.Database;
 
-/** "cold" in ASCII: marks the file as ours in SQLite's header, so that a foreign database is refused instead of written to. */
-const APPLICATION_ID = 0x636f6c64;
+/** How long another program's lock is waited for, ms. */
+const PATIENCE_MS = 60_000;
+/** A database that can only be read as a copy in memory may be this large. */
+const MOST_IN_MEMORY = 1 << 30;
 
-interface Migration {
-  readonly version: number;
-  readonly sql: string;
-}
-
-function migrations(): Migration[] {
-  const dir = path.join(path.dirname(fileURLToPath(import.meta.url)), "../../migrations");
-  return readdirSync(dir)
-    .filter((f) => /^\d{4}-.*\.sql$/.test(f))
-    .sort()
-    .map((f) => ({ version: Number(f.slice(0, 4)), sql: readFileSync(path.join(dir, f), "utf8") }));
-}
-
-const number = (db: Db, pragma: string): number => Number(db.pragma(pragma, { simple: true }));
-
-function sqliteProblem(file: string, e: unknown): InputError {
-  const message = e instanceof Error ? e.message : String(e);
-  const code = e instanceof Database.SqliteError ? e.code : "";
-  if (code === "SQLITE_NOTADB" || code === "SQLITE_CORRUPT")
-    return new InputError(
-      { at: file, problem: `not a sound SQLite database (${message})`, fix: "name another file with --db; this one was left as it is" },
-      e,
-    );
-  return new InputError(
-    { at: file, problem: `cannot be opened as a database: ${message}`, fix: "check that the file and its folder exist and may be read and written" },
-    e,
-  );
-}
-
-/** Opens an existing database for reading. Throws InputError where it is missing, foreign, damaged, or of another schema version. */
+/** Opens an existing database for reading; its file keeps every byte. Throws InputError where it is missing, foreign, damaged, or of
+ *  another schema version. */
 export function openForReading(file: string): Db {
-  if (!existsSync(file))
-    throw new InputError({ at: file, problem: "no such database", fix: "make one with `coldseam ingest COOLDOWN.yaml --db FILE`" });
-  return open(file, false);
-}
-
-/** Opens a database for an ingest, making it where there is none; an older schema is migrated after a copy is put beside it. */
-export function openForWriting(file: string): Db {
-  const folder = path.dirname(path.resolve(file));
-  if (!existsSync(folder) || !statSync(folder).isDirectory())
-    throw new InputError({ at: file, problem: `the folder ${folder} does not exist`, fix: "make the folder first, or name another file with --db" });
-  return open(file, true);
-}
-
-function open(file: string, writing: boolean): Db {
-  const existed = existsSync(file) && statSync(file).size > 0;
-  let db: Db;
+  const db = openUnchecked(file);
   try {
-    // A file that is not ours must stay untouched to the byte: look at it read-only first.
-    if (existed) inspect(file);
-    db = new Database(file, { readonly: !writing, fileMustExist: !writing, timeout: 60_000 });
-  } catch (e) {
-    throw e instanceof InputError ? e : sqliteProblem(file, e);
-  }
-  try {
-    db.pragma("foreign_keys = ON");
-    if (writing) {
-      db.pragma("journal_mode = WAL");
-      db.pragma("synchronous = FULL");
-      migrate(db, file, existed);
-    } else if (number(db, "user_version") < newestVersion()) {
+    const version = inWords(file, () => schemaVersion(db));
+    if (version > newestVersion()) throw newer(file, version);
+    if (version === 0)
       throw new InputError({
         at: file,
-        problem: `schema version ${number(db, "user_version")}, this program reads version ${newestVersion()}`,
+        problem: "an empty database: no ingest into it was ever finished",
+        fix: "run `coldseam ingest COOLDOWN.yaml --db FILE` (again)",
+      });
+    if (version < newestVersion())
+      throw new InputError({
+        at: file,
+        problem: `schema version ${version}, this program reads version ${newestVersion()}`,
         fix: "any `coldseam ingest … --db FILE` migrates it, after putting a copy beside it",
       });
-    }
     return db;
   } catch (e) {
     db.close();
-    throw e instanceof InputError ? e : sqliteProblem(file, e);
+    throw e;
   }
 }
 
-const newestVersion = (): number => Math.max(...migrations().map((m) => m.version));
-
-function inspect(file: string): void {
-  const db = new Database(file, { readonly: true, fileMustExist: true, timeout: 60_000 });
+/** As `openForReading`, of any schema version up to this program's: the caller looks at it. */
+export function openUnchecked(file: string): Db {
+  if (!existsSync(file))
+    throw new InputError({
+      at: file,
+      problem: "no such database",
+      fix: "make one with `coldseam ingest COOLDOWN.yaml --db FILE`",
+    });
+  look(file);
   try {
-    const version = number(db, "user_version");
-    const id = number(db, "application_id");
-    const tables = Number(db.prepare("SELECT count(*) FROM sqlite_master").pluck().get());
-    if (id !== APPLICATION_ID && tables > 0)
-      throw new InputError({
-        at: file,
-        problem: "an SQLite database, but not one made by coldseam",
-        fix: "name another file with --db; this one was left as it is",
-      });
-    if (version > newestVersion())
-      throw new InputError({
-        at: file,
-        problem: `schema version ${version}, newer than this program's ${newestVersion()}`,
-        fix: "use the newer coldseam that made it; this file was left as it is",
-      });
+    // With nothing waiting in the log beside it, a connection that may write cleans its lock files away when it closes, and
+    // changes nothing else; one that may not leaves them lying. With something waiting, closing would move it into the file.
+    const db = new Database(file, { readonly: bytesOf(`${file}-wal`) > 0, fileMustExist: true, timeout: PATIENCE_MS });
+    try {
+      db.pragma("query_only = ON");
+      db.prepare("SELECT count(*) FROM sqlite_master").get();
+      return db;
+    } catch (e) {
+      db.close();
+      throw e;
+    }
+  } catch (e) {
+    const copy = inMemory(file, e);
+    if (copy !== null) return copy;
+    throw databaseProblem(file, e) ?? e;
+  }
+}
+
+/** Opens a database for an ingest, making it where there is none; an older schema is migrated after a copy is put beside it. Throws
+ *  InputError, before anything is written, where the file is foreign, damaged, newer than this program, or may not be written. */
+export function openForWriting(file: string): Db {
+  const folder = path.dirname(path.resolve(file));
+  if (!existsSync(folder) || !statSync(folder).isDirectory())
+    throw new InputError({
+      at: file,
+      problem: `the folder ${folder} does not exist`,
+      fix: "make the folder first, or name another file with --db",
+    });
+  if (bytesOf(file) > 0) checkSound(file);
+  return inWords(file, () => {
+    const db = new Database(file, { timeout: PATIENCE_MS });
+    try {
+      db.pragma("foreign_keys = ON");
+      if (db.pragma("journal_mode", { simple: true }) !== "wal") db.pragma("journal_mode = WAL");
+      db.pragma("synchronous = FULL");
+      // A file that may not be written is found out now, not after an hour of analysis.
+      db.transaction(() => undefined).immediate();
+      migrate(db, file);
+      return db;
+    } catch (e) {
+      db.close();
+      throw e;
+    }
+  });
+}
+
+/** Opens an existing database to change what is in it. Throws InputError as `openForWriting`, and where there is none. */
+export function openForChange(file: string): Db {
+  openUnchecked(file).close();
+  return openForWriting(file);
+}
+
+/** Reads the whole file before anything may write to it: a damaged database must stay as it is, for whoever wants to save it. */
+function checkSound(file: string): void {
+  const db = openUnchecked(file);
+  try {
+    const version = inWords(file, () => schemaVersion(db));
+    if (version > newestVersion()) throw newer(file, version);
+    const found = inWords(file, () => db.pragma("quick_check(1)", { simple: true }));
+    if (found !== "ok") throw notSound(file, String(found).replace(/\s+/g, " "));
   } finally {
     db.close();
   }
 }
 
-function migrate(db: Db, file: string, existed: boolean): void {
-  const from = number(db, "user_version");
-  const pending = migrations().filter((m) => m.version > from);
-  if (pending.length === 0) return;
-  if (existed && from > 0) {
-    db.pragma("wal_checkpoint(TRUNCATE)");
-    copyFileSync(file, `${file}.schema-${from}.bak`);
-  }
-  db.transaction(() => {
-    // Another process may have migrated between the look and the lock.
-    const now = number(db, "user_version");
-    for (const m of pending) {
-      if (m.version <= now) continue;
-      db.exec(m.sql);
-      db.pragma(`user_version = ${m.version}`);
+const newer = (file: string, version: number): InputError =>
+  new InputError({
+    at: file,
+    problem: `schema version ${version}, newer than this program's ${newestVersion()}`,
+    fix: "use the newer coldseam that made it; this file was left as it is",
+  });
+
+const bytesOf = (file: string): number => statSync(file, { throwIfNoEntry: false })?.size ?? 0;
+
+/** Refuses a file that is not ours by its first bytes alone: SQLite itself would put lock files beside it.
+ *  Offsets: "The SQLite Database File Format", sqlite.org/fileformat2.html, sections 1.3 and 1.6. */
+function look(file: string): void {
+  const head = Buffer.alloc(108);
+  let read: number;
+  try {
+    const fd = openSync(file, "r");
+    try {
+      read = readSync(fd, head, 0, head.length, 0);
+    } finally {
+      closeSync(fd);
     }
-    db.pragma(`application_id = ${APPLICATION_ID}`);
-  }).immediate();
+  } catch (e) {
+    throw new InputError(
+      {
+        at: file,
+        problem: `cannot be read: ${e instanceof Error ? e.message : String(e)}`,
+        fix: "name a file that may be read",
+      },
+      e,
+    );
+  }
+  if (read === 0) return;
+  if (read < head.length || head.toString("latin1", 0, 16) !== "SQLite format 3\0")
+    throw notSound(file, "it does not begin like one");
+  const ours = head.readUInt32BE(68) === APPLICATION_ID;
+  // A leaf page without cells as first page: no table yet, as an ingest stopped in its first moment leaves it.
+  const blank = head[100] === 0x0d && head.readUInt16BE(103) === 0;
+  if (!ours && !blank)
+    throw new InputError({
+      at: file,
+      problem: "an SQLite database, but not one made by coldseam",
+      fix: "name another file with --db; this one was left as it is",
+    });
+}
+
+/** The database as a copy in memory, where its folder may not be written (write-ahead mode wants lock files there). Null where that
+ *  is not what `e` is about, or where part of the content waits in the log beside the file. */
+function inMemory(file: string, e: unknown): Db | null {
+  const code = e instanceof Database.SqliteError ? e.code : "";
+  if (!/^SQLITE_(CANTOPEN|READONLY)/.test(code) || bytesOf(`${file}-wal`) > 0) return null;
+  if (bytesOf(file) > MOST_IN_MEMORY) return null;
+  const bytes = readFileSync(file);
+  // Bytes 18 and 19: write-ahead (2) or rollback mode (1); memory knows no write-ahead log.
+  bytes[18] = 1;
+  bytes[19] = 1;
+  const db = new Database(bytes);
+  db.pragma("query_only = ON");
+  return db;
 }

@@ -11,32 +11,41 @@ export interface Selection {
   readonly analysis?: number;
 }
 
-function where(sel: Selection): { sql: string; values: (string | number)[] } {
+/** The analyses to answer from, in the order of the exported rows. */
+function analysesOf(sel: Selection): { sql: string; values: (string | number)[] } {
   const parts: string[] = [];
   const values: (string | number)[] = [];
   if (sel.cooldowns !== undefined && sel.cooldowns.length > 0) {
-    parts.push(`cooldown IN (${sel.cooldowns.map(() => "?").join(", ")})`);
+    parts.push(`c.name IN (${sel.cooldowns.map(() => "?").join(", ")})`);
     values.push(...sel.cooldowns);
   }
   if (sel.sample !== undefined) {
-    parts.push("cooldown IN (SELECT name FROM cooldown WHERE sample = ?)");
+    parts.push("c.sample = ?");
     values.push(sel.sample);
   }
   if (sel.analysis !== undefined) {
-    parts.push("analysis = ?");
+    parts.push("a.id = ?");
     values.push(sel.analysis);
-  }
-  return { sql: parts.length === 0 ? "" : ` WHERE ${parts.join(" AND ")}`, values };
+  } else parts.push("a.id IN (SELECT id FROM newest_analysis)");
+  return {
+    sql: `SELECT a.id FROM analysis a JOIN cooldown c ON c.id = a.cooldown_id WHERE ${parts.join(" AND ")} ORDER BY c.name, a.id`,
+    values,
+  };
 }
 
-/** The rows of an exported table, one at a time, so that a large export needs little memory. */
-export function readTable(db: Db, table: ExportedTable, sel: Selection = {}): IterableIterator<Row> {
-  const w = where(sel);
-  const view = sel.analysis === undefined ? table.view : `${table.view}_all`;
-  const columns = table.columns.map((c) => c.name).join(", ");
-  return db
-    .prepare<(string | number)[], Row>(`SELECT ${columns} FROM ${view}${w.sql} ORDER BY ${table.orderBy.join(", ")}`)
-    .iterate(...w.values);
+/** The statement that gives one analysis's rows of a table, in the order of the export: it walks the primary key, sorts nothing and
+ *  never touches the rows of another analysis. */
+export function tableStatement(table: ExportedTable): string {
+  const order = table.orderBy.filter((c) => c !== "cooldown" && c !== "analysis");
+  return `SELECT ${table.columns.map((c) => c.name).join(", ")} FROM ${table.view}_all WHERE analysis = ? ORDER BY ${order.join(", ")}`;
+}
+
+/** The rows of an exported table, one at a time, so that a large export needs little memory. All of them are from one moment, whatever
+ *  other processes write meanwhile: the outer statement stays open and holds it. */
+export function* readTable(db: Db, table: ExportedTable, sel: Selection = {}): Generator<Row, void> {
+  const { sql, values } = analysesOf(sel);
+  const rows = db.prepare<[number], Row>(tableStatement(table));
+  for (const { id } of db.prepare<(string | number)[], { id: number }>(sql).iterate(...values)) yield* rows.iterate(id);
 }
 
 export interface CooldownSummary {
@@ -89,16 +98,22 @@ export function unknownCooldowns(db: Db, names: readonly string[]): string[] {
 }
 
 export function cooldownNames(db: Db): string[] {
-  return db.prepare<[], { name: string }>("SELECT name FROM cooldown ORDER BY name").all().map((r) => r.name);
+  return db
+    .prepare<[], { name: string }>("SELECT name FROM cooldown ORDER BY name")
+    .all()
+    .map((r) => r.name);
 }
 
 /** A stored two-state map, still deflated. */
-export function readMap(db: Db, analysis: number, frame: number): { rows: number; cols: number; deflated: Uint8Array } | null {
+export function readMap(
+  db: Db,
+  analysis: number,
+  frame: number,
+): { rows: number; cols: number; deflated: Uint8Array } | null {
   const r = db
-    .prepare<
-      [number, number],
-      { map_rows: number; map_cols: number; map_deflated: Uint8Array }
-    >("SELECT map_rows, map_cols, map_deflated FROM frame WHERE analysis_id = ? AND frame = ?")
+    .prepare<[number, number], { map_rows: number; map_cols: number; map_deflated: Uint8Array }>(
+      "SELECT map_rows, map_cols, map_deflated FROM frame WHERE analysis_id = ? AND frame = ?",
+    )
     .get(analysis, frame);
   return r === undefined ? null : { rows: r.map_rows, cols: r.map_cols, deflated: r.map_deflated };
 }

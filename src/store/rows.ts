@@ -8,7 +8,8 @@ type Value = number | string | null | Uint8Array;
 /** SQLite stores NaN as NULL without a word; a NaN here is a fault of the program and must not pass for "not measured". */
 function checked(table: string, row: Record<string, Value>): Record<string, Value> {
   for (const [column, v] of Object.entries(row))
-    if (typeof v === "number" && !Number.isFinite(v)) throw new Error(`${table}.${column} is ${v} (frame ${String(row["frame"])})`);
+    if (typeof v === "number" && !Number.isFinite(v))
+      throw new Error(`${table}.${column} is ${v} (frame ${String(row["frame"])})`);
   return row;
 }
 
@@ -18,7 +19,9 @@ function inserter(db: Db, table: string): (row: Record<string, Value>) => void {
   return (row) => {
     if (run === null) {
       const keys = Object.keys(row);
-      const statement = db.prepare(`INSERT INTO ${table} (${keys.join(", ")}) VALUES (${keys.map((k) => `@${k}`).join(", ")})`);
+      const statement = db.prepare(
+        `INSERT INTO ${table} (${keys.join(", ")}) VALUES (${keys.map((k) => `@${k}`).join(", ")})`,
+      );
       run = (r) => void statement.run(checked(table, r));
     }
     run(row);
@@ -77,7 +80,8 @@ function frameRow(id: number, info: FrameInfo, r: FrameResult): Record<string, V
 /** Inserts every row of an analysis; must run inside the transaction that made the analysis row. */
 export function insertAnalysisRows(db: Db, id: number, analysis: Analysis): void {
   const source = inserter(db, "source");
-  for (const s of analysis.cooldown.sources) source({ analysis_id: id, path: s.path, sha256: s.sha256, bytes: s.bytes });
+  for (const s of analysis.cooldown.sources)
+    source({ analysis_id: id, path: s.path, sha256: s.sha256, bytes: s.bytes });
   const notice = inserter(db, "notice");
   for (const n of analysis.notices) notice({ analysis_id: id, frame: n.frame, code: n.code, message: n.message });
 

@@ -2,7 +2,7 @@ import { setMaxListeners } from "node:events";
 import { fileURLToPath } from "node:url";
 import path from "node:path";
 import { Piscina } from "piscina";
-import { fromErrorRecord } from "../model/errors.js";
+import { fromErrorRecord, InputError } from "../model/errors.js";
 import { tasks, type Reply, type TaskInput, type TaskName, type TaskOutput } from "./tasks.js";
 
 /** Runs named tasks, in threads or in line; results come back in the order of the inputs whatever the number of workers. */
@@ -19,16 +19,60 @@ function workerFile(): string {
     : path.join(path.dirname(here), "worker.js");
 }
 
+const DOING: Readonly<Record<TaskName, string>> = {
+  clean: "cleaning",
+  pair: "placing",
+  debris: "looking for debris in",
+  levels: "finding the levels of",
+  measure: "measuring",
+};
+
+/** `frame 3`, `frames 3 and 4`, or the whole cooldown: what a task is about. */
+function aboutOf(input: object): string {
+  if ("frame" in input) return `frame ${String(input.frame)}`;
+  if ("info" in input && typeof input.info === "object" && input.info !== null && "frame" in input.info)
+    return `frame ${String(input.info.frame)}`;
+  if ("reference" in input && "moving" in input) return `frames ${String(input.reference)} and ${String(input.moving)}`;
+  return "all frames";
+}
+
+/** An error with the frame that it came from in front. Bad input names its file already. */
+function named(e: unknown, name: TaskName, input: object): unknown {
+  if (e instanceof InputError || !(e instanceof Error)) return e;
+  const out = new Error(`${DOING[name]} ${aboutOf(input)}: ${e.message}`, { cause: e });
+  if (e.stack !== undefined) out.stack = e.stack;
+  return out;
+}
+
+/** A thread that ended under its task: out of memory, or killed from inside a library. */
+function lost(e: unknown, name: TaskName, input: object): InputError {
+  const why = e instanceof Error ? e.message : String(e);
+  return new InputError(
+    {
+      at: aboutOf(input),
+      problem: `its worker thread ended while ${DOING[name]} it (${why})`,
+      fix: "if memory ran out, use fewer threads with --workers; otherwise please report it with the frame's files",
+    },
+    e,
+  );
+}
+
 /** @param workers number of threads; 0 runs everything in the calling thread, with the same results to the bit
- *  @param signal aborts the run: pending tasks reject with the signal's reason */
-export function makeRunner(workers: number, signal?: AbortSignal): Runner {
+ *  @param signal aborts the run: pending tasks reject with the signal's reason
+ *  @param file   module that the threads run; it answers as `worker.ts` does
+ *  The tasks reject with InputError where a file or the end of a thread stopped them; any other error names its frame. */
+export function makeRunner(workers: number, signal?: AbortSignal, file = workerFile()): Runner {
   if (workers === 0) {
     return {
       async map<N extends TaskName>(name: N, inputs: readonly TaskInput<N>[], onDone?: () => void) {
         const out: TaskOutput<N>[] = [];
         for (const input of inputs) {
           signal?.throwIfAborted();
-          out.push(await tasks[name](input));
+          try {
+            out.push(await tasks[name](input));
+          } catch (e) {
+            throw named(e, name, input);
+          }
           onDone?.();
         }
         return out;
@@ -39,18 +83,25 @@ export function makeRunner(workers: number, signal?: AbortSignal): Runner {
   // One listener a waiting task; that many are no leak.
   if (signal !== undefined) setMaxListeners(0, signal);
   const pool = new Piscina({
-    filename: workerFile(),
+    filename: file,
     minThreads: workers,
     maxThreads: workers,
     idleTimeout: 60_000,
     maxQueue: Infinity,
   });
+  // A thread that ends while idle is replaced; one that ends under a task rejects that task.
+  pool.on("error", () => undefined);
   return {
     async map<N extends TaskName>(name: N, inputs: readonly TaskInput<N>[], onDone?: () => void) {
       return Promise.all(
         inputs.map(async (input) => {
-          const reply = (await pool.run({ name, input }, signal ? { signal } : {})) as Reply<TaskOutput<N>>;
-          if (!reply.ok) throw fromErrorRecord(reply.error);
+          let reply: Reply<TaskOutput<N>>;
+          try {
+            reply = (await pool.run({ name, input }, signal ? { signal } : {})) as Reply<TaskOutput<N>>;
+          } catch (e) {
+            throw signal?.aborted === true ? e : lost(e, name, input);
+          }
+          if (!reply.ok) throw named(fromErrorRecord(reply.error), name, input);
           onDone?.();
           return reply.value;
         }),

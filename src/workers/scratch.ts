@@ -2,13 +2,33 @@ import { mkdtempSync, readFileSync, rmSync, writeFileSync } from "node:fs";
 import { tmpdir } from "node:os";
 import path from "node:path";
 import { deserialize, serialize } from "node:v8";
+import { InputError } from "../model/errors.js";
 import { colsOf, dataOf, makeRaster, rowsOf, type PixelSize, type Raster } from "../model/raster.js";
 import type { CleanFrame } from "../model/signal.js";
 
 /** Full-size rasters between the passes lie in a folder of their own on disk, so that memory does not grow with the number of
  *  frames and no source is read and cleaned twice. The folder is removed at the end of the run. */
 export function makeScratch(): string {
-  return mkdtempSync(path.join(tmpdir(), "coldseam-"));
+  return spaceFor(tmpdir(), () => mkdtempSync(path.join(tmpdir(), "coldseam-")));
+}
+
+/** Runs `write`; a disk that is full or may not be written is no fault of the program's. */
+function spaceFor<T>(dir: string, write: () => T): T {
+  try {
+    return write();
+  } catch (e) {
+    const code = e instanceof Error && "code" in e ? e.code : "";
+    const full = code === "ENOSPC" || code === "EDQUOT";
+    if (!full && code !== "EROFS" && code !== "EACCES" && code !== "ENOENT") throw e;
+    throw new InputError(
+      {
+        at: dir,
+        problem: full ? "no space left for the scratch files" : "scratch files cannot be written there",
+        fix: "set TMPDIR to a folder with some space, on a local disk",
+      },
+      e,
+    );
+  }
 }
 
 export function removeScratch(dir: string): void {
@@ -17,7 +37,7 @@ export function removeScratch(dir: string): void {
 
 /** Keeps any structured-cloneable value under a name. */
 export function keep(dir: string, name: string, value: unknown): void {
-  writeFileSync(path.join(dir, name), serialize(value));
+  spaceFor(dir, () => writeFileSync(path.join(dir, name), serialize(value)));
 }
 
 /** Reads a kept value back; the caller names its type, as it was the one to keep it. */

@@ -5,7 +5,7 @@ import type { DomainRegion, FrameDomains } from "../model/domains.js";
 import type { ErrorRecord } from "../model/errors.js";
 import type { DomainMap, Drift, FrameLevels, FrameStates } from "../model/signal.js";
 import type { FringeTest, FrameWalls, WidthSummary } from "../model/walls.js";
-import { inspectFrame, loadFrame } from "../input/index.js";
+import { frameDigest, inspectFrame, loadFrame } from "../input/index.js";
 import type { Settings } from "../settings.js";
 import { cleanFrame, type CleanReport } from "../stages/clean/index.js";
 import { DebrisAccumulator, debrisInFrame, findDebrisInFrame, type DebrisMap } from "../stages/debris/index.js";
@@ -29,6 +29,7 @@ interface CleanInput extends Run {
   readonly info: FrameInfo;
 }
 export interface CleanOutput {
+  readonly imagesSha256: string;
   readonly report: CleanReport;
   readonly notices: readonly Notice[];
 }
@@ -40,7 +41,7 @@ async function clean(input: CleanInput): Promise<CleanOutput> {
   const { clean: frame, report } = cleanFrame(raw, input.settings.clean);
   keepClean(input.scratch, frame);
   keep(input.scratch, `drift-${frame.frame}`, prepareForDrift(frame, input.settings.drift));
-  return { report, notices: [...notices, ...report.notices] };
+  return { imagesSha256: frameDigest(raw), report, notices: [...notices, ...report.notices] };
 }
 
 interface PairInput extends Run {

@@ -59,6 +59,7 @@ export function sampleAnalysis(
   };
   const base: FrameResult = {
     frame: 0,
+    imagesSha256: "a".repeat(64),
     verdict: "mixed",
     drift: { frame: 0, xNm: 0, yNm: 0, sdNm: 0 },
     fraction: { value: 0.5, low: 0.49, high: 0.51 },
@@ -114,6 +115,7 @@ export function sampleAnalysis(
   const single: FrameResult = {
     ...base,
     frame: 1,
+    imagesSha256: "b".repeat(64),
     verdict: "undecided",
     drift: { frame: 1, xNm: null, yNm: null, sdNm: null },
     fraction: null,

@@ -94,7 +94,7 @@ test("a name that stands for another sample is refused, and what is stored stays
   const db = openForWriting(file);
   saveAnalysis(db, sampleAnalysis(), NOW);
   expect(() => saveAnalysis(db, sampleAnalysis({ sample: "other" }), NOW)).toThrow(
-    /sample "KV-14" there, "other" here/,
+    /sample "KV-14" there, sample "other" here/,
   );
   expect(readCooldowns(db)).toHaveLength(1);
   db.close();

@@ -1,0 +1,27 @@
+import { createHash } from "node:crypto";
+import type { RawFrame } from "../model/cooldown.js";
+import { colsOf, dataOf, rowsOf, type Raster } from "../model/raster.js";
+
+/** SHA-256 of the values of a frame's images, as loaded: the same whatever kind of file or page they come from, so that a frame is
+ *  known again in a longer stack or another format. A pixel that was not measured counts as such, however its NaN is written. */
+export function frameDigest(frame: Pick<RawFrame, "topography" | "amplitude" | "phase">): string {
+  const hash = createHash("sha256");
+  for (const image of [frame.topography, frame.amplitude, frame.phase]) {
+    hash.update(image === null ? "none;" : `${rowsOf(image)} x ${colsOf(image)};`);
+    if (image !== null) hash.update(plainBytes(image));
+  }
+  return hash.digest("hex");
+}
+
+const NAN_BITS = 0x7fc00000;
+
+/** Little-endian float32, every NaN alike. */
+function plainBytes(image: Raster): Uint8Array {
+  const data = dataOf(image);
+  const out = new DataView(new ArrayBuffer(4 * data.length));
+  for (let p = 0; p < data.length; p++) {
+    if (Number.isNaN(data[p])) out.setUint32(4 * p, NAN_BITS, true);
+    else out.setFloat32(4 * p, data[p], true);
+  }
+  return new Uint8Array(out.buffer);
+}
