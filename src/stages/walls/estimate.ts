@@ -78,7 +78,8 @@ export function estimateWithTip(
     const kept = p.slice();
     const s2 = prior.sigmaNm * prior.sigmaNm;
     let best = first;
-    for (const q of [0.09 * s2, s2, 9 * s2]) {
+    // the minimum on the boundary is checked from one side of the tip's width, a lost fit from three
+    for (const q of first.ok ? [s2] : [0.09 * s2, s2, 9 * s2]) {
       const again = tryFrom(q);
       if ((again.ok && !best.ok) || (again.ok === best.ok && again.cost < best.cost - 1e-3)) {
         best = again;
@@ -129,7 +130,8 @@ export function estimateWithTip(
   if (q > 0 && q < 6 * totalSd) resolved = rise(0) > 0;
   p.set(atMinimum);
   // far from the boundary the likelihood of w² is Gaussian where it matters
-  const upperQ = bestQ > CLEAR * totalSd ? bestQ + Z95 * totalSd : riseTo(rise, bestQ, totalSd);
+  const upperQ =
+    bestQ > CLEAR * totalSd ? bestQ + Z95 * totalSd : riseTo(rise, bestQ, totalSd, 100 * (bestQ + prior.sigmaNm ** 2));
 
   // The width as seen: where the fit sits on the boundary the tip is let go, so that a wall sharper than the tip shows.
   let apparentNm: number;
@@ -169,15 +171,15 @@ export function estimateWithTip(
   };
 }
 
-/** The w² above `from` where `rise` passes zero, by secants; null where none is found. */
-function riseTo(rise: (q: number) => number, from: number, sd: number): number | null {
+/** The w² above `from` where `rise` passes zero, by secants; null where none is found below `most`. */
+function riseTo(rise: (q: number) => number, from: number, sd: number, most: number): number | null {
   if (!(sd > 0)) return null;
   let a = from;
   let fa = -Z95;
   let b = from + Z95 * sd;
   let fb = rise(b);
-  for (let k = 0; k < 30; k++) {
-    if (Math.abs(fb) < 2e-3) return b;
+  for (let k = 0; k < 20 && b < most; k++) {
+    if (Math.abs(fb) < 5e-3) return b;
     let next: number;
     if (fb < 0) {
       // not far enough: extrapolate, but by no more than fourfold
@@ -190,7 +192,7 @@ function riseTo(rise: (q: number) => number, from: number, sd: number): number |
       // keep the root bracketed
       if (!(next > a && next < b)) next = (a + b) / 2;
       const f = rise(next);
-      if (Math.abs(f) < 2e-3) return next;
+      if (Math.abs(f) < 5e-3) return next;
       if (f < 0) {
         a = next;
         fa = f;
