@@ -1,15 +1,19 @@
 import type { Tip } from "../../model/cooldown.js";
 import { colsOf, dataOf, rowsOf } from "../../model/raster.js";
 import type { CleanFrame, Drift } from "../../model/signal.js";
+import { wrapAngle } from "../../numerics/quantile.js";
+import { contrastOf } from "./chord.js";
 import { decide } from "./decide.js";
 import type { ChannelSums, DebrisMap, Grid, HeightSums } from "./grid.js";
 import { departures, heights } from "./residuals.js";
-import { ringOf } from "./ring.js";
+import { type Ring, ringOf } from "./ring.js";
 import { reaches } from "./reaches.js";
 import type { DebrisSettings } from "./settings.js";
 
 /** Departures beyond this many standard deviations count no more: one frame's domain must not outweigh the others. */
 const CLIP = 3;
+/** Departure of the logarithm of the amplitude beyond which noise rules. */
+const MOST_LOG = 2;
 /** A departure that counts as seen. */
 const SEEN = 1;
 
@@ -47,16 +51,22 @@ export class DebrisAccumulator {
     const amplitude = dataOf(clean.amplitude);
     const log = new Float32Array(amplitude.length);
     for (let p = 0; p < log.length; p++) log[p] = amplitude[p] > 0 ? Math.log(amplitude[p]) : Number.NaN;
-    const byAmplitude = departures(log, ringOf(log, rows, cols, ringXPx, ringYPx), null, rows, cols);
+    const ringOfLog = ringOf(log, rows, cols, ringXPx, ringYPx);
+    const byAmplitude = departures(log, ringOfLog, null, rows, cols);
     addChannel(grid.amplitude, byAmplitude.strict, grid, rows, cols, atRow, atCol);
     addChannel(grid.looseAmplitude, byAmplitude.loose, grid, rows, cols, atRow, atCol);
     grid.frames++;
-    if (byAmplitude.twoStates) grid.twoStateFrames++;
+    if (byAmplitude.levels.length === 2) grid.twoStateFrames++;
     if (clean.phase !== null && grid.phase !== null) {
       const phase = dataOf(clean.phase);
       const ring = ringOf(phase, rows, cols, ringXPx, ringYPx);
       const byPhase = departures(phase, ring, byAmplitude.flat, rows, cols);
       addChannel(grid.phase, byPhase.strict, grid, rows, cols, atRow, atCol);
+      addPairs(grid, log, ringOfLog, phase, ring, byPhase.flat, rows, cols, atRow, atCol);
+      grid.pair.noise = Math.max(grid.pair.noise, byAmplitude.noise, byPhase.noise);
+      const [first, second] = byAmplitude.levels;
+      const contrast = second === undefined ? null : contrastOf([first, second], ringOfLog, ring, byPhase.flat);
+      if (contrast !== null) grid.pair.contrasts.push(contrast);
     }
     if (clean.topography !== null && grid.height !== null) {
       addHeights(
@@ -107,6 +117,7 @@ export class DebrisAccumulator {
       twoStateFrames: 0,
       amplitude: channel(),
       looseAmplitude: channel(),
+      pair: { log: new Float32Array(n), turn: new Float32Array(n), count: new Uint16Array(n), noise: 0, contrasts: [] },
       phase: channel(),
     };
   }
@@ -146,6 +157,32 @@ function addChannel(
     sums.count[g]++;
     if (z > SEEN) sums.above[g]++;
     else if (z < -SEEN) sums.below[g]++;
+  });
+}
+
+function addPairs(
+  grid: Grid,
+  log: Float32Array,
+  ringOfLog: Ring,
+  phase: Float32Array,
+  ringOfPhase: Ring,
+  flat: Uint8Array,
+  rows: number,
+  cols: number,
+  atRow: number,
+  atCol: number,
+): void {
+  const { pair } = grid;
+  overGrid(grid, rows, cols, atRow, atCol, (g, p) => {
+    const i = Math.floor(p / cols);
+    const b = (i >> 1) * ringOfLog.blockCols + ((p - i * cols) >> 1);
+    if (flat[b] === 0) return;
+    const a = log[p] - ringOfLog.reference[b];
+    const t = phase[p] - ringOfPhase.reference[b];
+    if (Number.isNaN(a) || Number.isNaN(t)) return;
+    pair.log[g] += Math.max(-MOST_LOG, Math.min(MOST_LOG, a));
+    pair.turn[g] += wrapAngle(t);
+    pair.count[g]++;
   });
 }
 

@@ -1,7 +1,8 @@
 import type { Tip } from "../../model/cooldown.js";
 import { median } from "../../numerics/quantile.js";
 import { connectedComponents } from "../../raster/opencv.js";
-import type { ChannelSums, DebrisMap, Grid, HeightSums } from "./grid.js";
+import { distanceFromChord } from "./chord.js";
+import type { ChannelSums, DebrisMap, Grid, HeightSums, PairSums } from "./grid.js";
 import { reaches } from "./reaches.js";
 import type { DebrisSettings } from "./settings.js";
 import { growSpots, smoothedMean, widen } from "./spots.js";
@@ -10,6 +11,9 @@ import { growSpots, smoothedMean, widen } from "./spots.js";
 const SIGNIFICANT = 5;
 /** Height that lends support to a departure in amplitude or phase, in standard deviations of the roughness. */
 const SUPPORT = 2.5;
+/** Distance from the chord of the two states that no gain or texture makes, and least departure in the amplitude with it. */
+const OFF_CHORD = 0.12;
+const LEAST_LOG = 0.2;
 /** Spots reach out to where the departure falls below this share of what it takes to be one. */
 const REACH_SHARE = 0.5;
 
@@ -17,7 +21,8 @@ const REACH_SHARE = 0.5;
  *  - its mean height stands `heightSigmas` above the roughness of the film; or
  *  - its mean departure in amplitude or phase is at least `effectSigmas` of the pixel noise and significant, with the same sign in
  *    `leastShare` of at least `leastFrames` frames; or
- *  - the same in fewer frames, with a height of half the threshold there.
+ *  - the same in fewer frames, with a bump of `SUPPORT` there; or
+ *  - amplitude and phase depart as no mixture of the two states can.
  *  Spots grow to half the thresholds and get a margin for the tip. */
 export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMap {
   const { rows, cols } = grid;
@@ -38,6 +43,7 @@ export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMa
     if (channel !== null) markChannel(channel, least, height, rows, cols, s, seed, candidate);
   }
   markChannel(grid.looseAmplitude, Infinity, height, rows, cols, s, seed, candidate);
+  markOffChord(grid.pair, rows, cols, seed, candidate);
   const spots = growSpots(seed, candidate, rows, cols, s.leastPixels);
   const { marginXPx, marginYPx } = reaches(grid.pixel, tip, s);
   const mask = widen(spots, rows, cols, marginXPx, marginYPx);
@@ -55,6 +61,25 @@ export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMa
     mask,
     spots: n === 0 ? 0 : connectedComponents(spots, rows, cols, 8).count,
   };
+}
+
+/** Departures that no mixture of the two states can make are debris from the first frame on. */
+function markOffChord(pair: PairSums, rows: number, cols: number, seed: Uint8Array, candidate: Uint8Array): void {
+  if (pair.contrasts.length === 0) return;
+  const contrast = {
+    logRatio: median(pair.contrasts.map((c) => c.logRatio)),
+    turnRad: median(pair.contrasts.map((c) => c.turnRad)),
+  };
+  const log = smoothedMean(pair.log, pair.count, rows, cols);
+  const turn = smoothedMean(pair.turn, pair.count, rows, cols);
+  for (let p = 0; p < seed.length; p++) {
+    // beside a wall fringes take the phase off the chord, but leave the amplitude on it
+    if (pair.count[p] === 0 || !(Math.abs(log.mean[p]) > LEAST_LOG)) continue;
+    const sd = pair.noise / Math.sqrt(log.effective[p]);
+    const distance = distanceFromChord(log.mean[p], turn.mean[p], contrast);
+    if (distance > OFF_CHORD + SIGNIFICANT * sd) seed[p] = 1;
+    if (Math.hypot(log.mean[p], turn.mean[p]) > REACH_SHARE * (OFF_CHORD + SIGNIFICANT * sd)) candidate[p] = 1;
+  }
 }
 
 /** Marks cores (`seed`) and what belongs to them (`candidate`); seen in fewer than `leastFrames` frames only with a bump. */

@@ -1,4 +1,5 @@
 import type { PixelSize } from "../../model/raster.js";
+import type { Contrast } from "./chord.js";
 
 /** Debris on the sample, in the cooldown's coordinates: the grid's pixel (row, column) lies at x = originXNm + column·pixel.xNm. */
 export interface DebrisMap {
@@ -27,6 +28,17 @@ export interface HeightSums {
   readonly count: Uint16Array;
 }
 
+/** Plain departures of logarithm of amplitude and phase, where both could be judged. */
+export interface PairSums {
+  readonly log: Float32Array;
+  readonly turn: Float32Array;
+  readonly count: Uint16Array;
+  /** Largest pixel noise met, of either. */
+  noise: number;
+  /** The step between the states in each frame that showed both. */
+  readonly contrasts: Contrast[];
+}
+
 export interface Grid {
   readonly rows: number;
   readonly cols: number;
@@ -41,5 +53,6 @@ export interface Grid {
   readonly amplitude: ChannelSums;
   /** The same with pixels between the levels of a frame's two states: no proof of debris by itself. */
   readonly looseAmplitude: ChannelSums;
+  readonly pair: PairSums;
   readonly phase: ChannelSums | null;
 }

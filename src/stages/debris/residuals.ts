@@ -16,6 +16,17 @@ interface Classes {
   readonly sds: readonly number[];
 }
 
+export interface Departures {
+  readonly strict: Departure;
+  readonly loose: Departure;
+  /** Blocks with surroundings of one state. */
+  readonly flat: Uint8Array;
+  /** One level, or two where the frame shows both states. */
+  readonly levels: readonly number[];
+  /** Pixel noise, the larger where there are two states. */
+  readonly noise: number;
+}
+
 /** Departures of the logarithm of the amplitude, or of the phase, from surroundings of one state.
  *
  *  A small domain in the midst of the other state, or the foot of a wall, departs like debris. In frames that show both states a pixel
@@ -28,7 +39,7 @@ export function departures(
   allowed: Uint8Array | null,
   rows: number,
   cols: number,
-): { readonly strict: Departure; readonly loose: Departure; readonly flat: Uint8Array; readonly twoStates: boolean } {
+): Departures {
   const sd0 = pixelNoise(values, rows, cols);
   const tolerance = 0.8 * sd0 + 0.03;
   const blocks = ring.reference.length;
@@ -62,7 +73,7 @@ export function departures(
       strict[p] = z;
     }
   }
-  return { strict, loose, flat, twoStates: second !== undefined };
+  return { strict, loose, flat, levels: classes.levels, noise: Math.max(...classes.sds.filter(Number.isFinite), sd0) };
 }
 
 function classify(

@@ -10,6 +10,7 @@ import {
   debrisSettings,
   findDebrisInFrame,
 } from "../../../src/stages/debris/index.js";
+import { distanceFromChord } from "../../../src/stages/debris/chord.js";
 
 const settings = defaultsOf(debrisSettings);
 const tip = { resolutionNm: 30, resolutionSdNm: 1 };
@@ -203,6 +204,41 @@ describe("debris over a cooldown", () => {
     const backwards = new DebrisAccumulator(drifts, tip, settings);
     for (let k = frames.length - 1; k >= 0; k--) backwards.accumulate(frames[k], drifts[k]);
     expect(backwards.finish().mask).toEqual(map.mask);
+  });
+});
+
+describe("the chord between the states", () => {
+  const contrast = { logRatio: Math.log(2.2), turnRad: 0.6 };
+
+  test("mixtures of the two states, seen from either and averaged with nothing, lie on it", () => {
+    for (const end of [1, -1]) {
+      const ratio = 2.2 ** end;
+      for (let u = 0; u <= 1; u += 0.07) {
+        const re = 1 + u * (ratio * Math.cos(end * 0.6) - 1);
+        const im = u * ratio * Math.sin(end * 0.6);
+        for (const share of [0.2, 0.7, 1]) {
+          const far = distanceFromChord(share * Math.log(Math.hypot(re, im)), share * Math.atan2(im, re), contrast);
+          expect(far).toBeLessThan(0.01);
+        }
+      }
+    }
+  });
+
+  test("brighter with the phase back, or darker with the phase as it was, does not", () => {
+    expect(distanceFromChord(0.5, -0.3, contrast)).toBeGreaterThan(0.4);
+    expect(distanceFromChord(-0.8, 0, contrast)).toBeGreaterThan(0.3);
+    expect(distanceFromChord(Math.log(2.2) + 0.5, 0.6, contrast)).toBeGreaterThan(0.35);
+  });
+
+  test("a particle without a bump that only two frames reach is found by it; a domain there is not taken", () => {
+    const corner = dot(1350, 1350, { logFactor: -0.7, turnRad: 0.3, radiusNm: 40 });
+    const island = (x: number, y: number): number => 0.5 * (1 + Math.tanh((Math.hypot(x - 1150, y - 1350) - 60) / 20));
+    const frames = [...crossing(12), { xNm: 700, yNm: 700, share: island }, { xNm: 720, yNm: 690, share: island }];
+    const { map, drifts } = mapOf({ seed: 16, dots: [corner], frames });
+    const last = drifts[13];
+    const mask = debrisInFrame(map, last, SIZE, SIZE);
+    expect(at(mask, last, corner)).toBe(1);
+    expect(at(mask, last, { ...corner, xNm: 1150 })).toBe(0);
   });
 });
 
