@@ -31,13 +31,14 @@ export function workerCount(text: string | undefined): number {
 export async function ingest(yaml: string, o: IngestOptions): Promise<number> {
   const workers = workerCount(o.workers);
   const settings = settingsWith(o.set);
+  // Before the database is made: a description that cannot be used leaves nothing behind.
+  const cooldown = await readCooldown(yaml, { allowOutside: o.allowOutside === true });
   const db = openForWriting(o.db);
   const abort = new AbortController();
   const onInterrupt = (): void => abort.abort();
   process.once("SIGINT", onInterrupt);
   process.once("SIGTERM", onInterrupt);
   try {
-    const cooldown = await readCooldown(yaml, { allowOutside: o.allowOutside === true });
     const version = programVersion();
     const there = findAnalysis(db, workHash(contentHash(description(cooldown)), settingRecord(settings), version));
     if (there !== null) {

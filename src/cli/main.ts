@@ -1,5 +1,6 @@
 import { Command, CommanderError, Option } from "commander";
 import { readFileSync } from "node:fs";
+import { databaseProblem } from "../store/problem.js";
 import { sayError } from "./say.js";
 
 export function programVersion(): string {
@@ -74,6 +75,30 @@ function build(): Command {
     .action(async (table: string, o: object) => (await import("./export.js")).exportTable(table, o as never));
 
   program
+    .command("verify")
+    .description("check a database from outside: its file, its schema, and what its numbers owe each other")
+    .addOption(db())
+    .option("--sources", "also read the source files and compare their SHA-256")
+    .option("--folder <dir>", "where the cooldowns' folders are now, if they were moved")
+    .action(async (o: object) => (await import("./verify.js")).verify(o as never));
+
+  program
+    .command("forget")
+    .description("remove one cooldown, or one of its analyses, after asking; the images are not touched")
+    .argument("<cooldown>", "name of the cooldown")
+    .addOption(db())
+    .option("--analysis <number>", "only this analysis")
+    .option("--yes", "do not ask")
+    .action(async (name: string, o: object) => (await import("./forget.js")).forget(name, o as never));
+
+  program
+    .command("merge")
+    .description("bring several databases together in one; all or nothing, and the same work is kept once")
+    .argument("<files...>", "the databases to take from; they are only read")
+    .requiredOption("--into <file>", "the database to bring them together in; made where there is none")
+    .action(async (files: string[], o: object) => (await import("./merge.js")).merge(files, o as never));
+
+  program
     .command("settings")
     .description("every setting: name, default, unit, meaning")
     .addOption(format())
@@ -90,6 +115,12 @@ function build(): Command {
   return program;
 }
 
+/** The database that the command line names, for messages. */
+function databaseOf(argv: readonly string[]): string {
+  const at = argv.findIndex((a) => a === "--db" || a === "--into");
+  return argv[at + 1] ?? "the database";
+}
+
 /** Runs the command line and sets the exit code: 0 done, 1 the input or the data stopped it, 2 the command line was wrong. */
 export async function main(argv: readonly string[]): Promise<void> {
   // A closed pipe (`coldseam export … | head`) is the reader's choice, not an error.
@@ -102,6 +133,6 @@ export async function main(argv: readonly string[]): Promise<void> {
     await program.parseAsync([...argv]);
   } catch (e) {
     if (e instanceof CommanderError) process.exitCode = e.exitCode === 0 ? 0 : 2;
-    else process.exitCode = sayError(e, argv.includes("--verbose"));
+    else process.exitCode = sayError(databaseProblem(databaseOf(argv), e) ?? e, argv.includes("--verbose"));
   }
 }
