@@ -200,9 +200,9 @@ function cleanSignal(
 }
 
 function join(a: Scars, b: Scars): Scars {
-  const mask = a.mask.map((m, p) => m | b.mask[p]);
+  const mask = a.mask.slice();
   let pixels = 0;
-  for (const m of mask) pixels += m;
+  for (let p = 0; p < mask.length; p++) pixels += mask[p] |= b.mask[p];
   return { mask, pixels, runs: a.runs + b.runs };
 }
 

@@ -2,7 +2,7 @@ import { SD_PER_MAD, median, medianInPlace } from "../../numerics/quantile.js";
 import { choleskyInPlace, choleskySolve } from "../../numerics/cholesky.js";
 
 /** Pixels looked at: a surface of six numbers is no better known from more than it is spoiled by relief. */
-const MOST_PIXELS = 6_000;
+const MOST_PIXELS = 4_000;
 const ITERATIONS = 8;
 /** Tukey's constant for 95 % efficiency at the normal distribution. */
 const BISQUARE = 4.685;

@@ -5,7 +5,7 @@ import { type NoiseByLevel, sdAt, shortWay } from "./noise.js";
 const LONGEST_GAP = 16;
 /** Bisquare constant: wide, so that nearly all pixels of one state keep a weight near 1 (see `v` below). */
 const BISQUARE = 6;
-const ITERATIONS = 4;
+const ITERATIONS = 3;
 
 /** Differences from one measured row to the next. Index k ≥ 1 is the link from `rows[k − 1]` to `rows[k]`; index 0 is empty. */
 export interface RowLinks {

@@ -35,16 +35,20 @@ export function findScars(
   let runs = 0;
   const depart = new Float64Array(cols);
   const sd = new Float64Array(cols).fill(noise.sd * SD_OF_DEPARTURE);
+  const quiet = 0.5 * sigmas * SD_OF_DEPARTURE * (level === null ? noise.sd : Math.min(...noise.sds));
   for (let thick = 1; thick <= MOST_ROWS; thick++) {
     for (let i = 1; i + thick < rows; i++) {
       departures(scene, i, thick, depart);
-      if (level !== null)
-        for (let j = 0; j < cols; j++) sd[j] = SD_OF_DEPARTURE * sdAt(noise, level[(i - 1) * cols + j]);
+      const up = (i - 1) * cols;
       for (let j = 0; j < cols; j++) {
-        if (!(Math.abs(depart[j]) > 0.5 * sigmas * sd[j]) || mask[i * cols + j] === 1) continue;
+        // most pixels are settled by the smallest noise of all: only the others ask for their own
+        if (!(Math.abs(depart[j]) > quiet) || mask[i * cols + j] === 1) continue;
         const from = j;
         const sign = Math.sign(depart[j]);
-        while (j < cols && depart[j] * sign > 0.5 * sigmas * sd[j] && mask[i * cols + j] === 0) j++;
+        for (; j < cols && mask[i * cols + j] === 0; j++) {
+          if (level !== null) sd[j] = SD_OF_DEPARTURE * sdAt(noise, level[up + j]);
+          if (!(depart[j] * sign > 0.5 * sigmas * sd[j])) break;
+        }
         if (j - from < leastPixels || !isScar(scene, i, thick, from, j, depart, sd, sigmas)) continue;
         for (let t = 0; t < thick; t++) mask.fill(1, (i + t) * cols + from, (i + t) * cols + j);
         runs++;
