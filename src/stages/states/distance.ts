@@ -64,28 +64,36 @@ export function nearestSource(source: Uint8Array, rows: number, cols: number, pi
   return out;
 }
 
-/** Unsigned distance in nm from each pixel of either label to the contour u = ½ between labels 0 and 1; Infinity where there is none,
- *  and where the label is neither. It goes to the nearest pixel of the own label that touches the other, and on from there by that
+/** Distance in nm from each pixel of `from` (0 or 1) to the contour u = level between labels 0 and 1; Infinity where there is none, and
+ *  for all other pixels. It goes to the nearest pixel of the own label that touches the other, and on from there by that
  *  pixel's own sub-pixel distance (value over slope): to the pixel alone it would be short by up to half a pixel, more so for walls
  *  across the grid than along it.
- *  @param u a smooth map, the labels being u > ½ */
+ *  @param u a smooth map, the labels being u > level (255: no label) */
 export function distanceToContour(
   u: Float32Array,
+  level: number,
   labels: Uint8Array,
+  from: 0 | 1,
   rows: number,
   cols: number,
   pixel: PixelSize,
 ): Float32Array {
   const edge = new Uint8Array(rows * cols);
   let any = false;
+  const other = 1 - from;
   for (let i = 0; i < rows; i++) {
     for (let j = 0; j < cols; j++) {
       const p = i * cols + j;
-      const own = labels[p];
-      if (own > 1) continue;
-      if (j + 1 < cols && labels[p + 1] === 1 - own) edge[p] = edge[p + 1] = 1;
-      if (i + 1 < rows && labels[p + cols] === 1 - own) edge[p] = edge[p + cols] = 1;
-      any ||= edge[p] === 1;
+      if (labels[p] !== from) continue;
+      if (
+        (j + 1 < cols && labels[p + 1] === other) ||
+        (j > 0 && labels[p - 1] === other) ||
+        (i + 1 < rows && labels[p + cols] === other) ||
+        (i > 0 && labels[p - cols] === other)
+      ) {
+        edge[p] = 1;
+        any = true;
+      }
     }
   }
   const out = new Float32Array(rows * cols).fill(Infinity);
@@ -98,10 +106,10 @@ export function distanceToContour(
     const gx = slope(u, labels, p, p % cols > 0 ? -1 : 0, p % cols < cols - 1 ? 1 : 0) / pixel.xNm;
     const gy = slope(u, labels, p, p >= cols ? -cols : 0, p + cols < depth.length ? cols : 0) / pixel.yNm;
     const g = Math.sqrt(gx * gx + gy * gy);
-    depth[p] = g > 0 ? Math.min(2 * half, Math.abs(u[p] - 0.5) / g) : half;
+    depth[p] = g > 0 ? Math.min(2 * half, Math.abs(u[p] - level) / g) : half;
   }
   for (let p = 0; p < out.length; p++) {
-    if (labels[p] > 1) continue;
+    if (labels[p] !== from) continue;
     const q = nearest[p];
     const dx = ((p % cols) - (q % cols)) * pixel.xNm;
     const dy = (Math.floor(p / cols) - Math.floor(q / cols)) * pixel.yNm;

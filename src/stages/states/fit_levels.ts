@@ -9,7 +9,6 @@ import { mainPixels } from "./one_state.js";
 import { correctPixels, noCorrection, readPixels, type Pixels, type RowCorrection } from "./pixels.js";
 import { levelsOf, purePixels, type PurePixels } from "./pure.js";
 import { refineRows, type RowRefinement } from "./refine_rows.js";
-import { offsetVariance } from "./row_smoother.js";
 import type { StatesSettings } from "./settings.js";
 import { differenceNoise, splitStates } from "./split.js";
 
@@ -111,7 +110,7 @@ function twoStates(
     const clip2 = 16 * Math.max(noise[0].rr + noise[0].ii, noise[1].rr + noise[1].ii);
     levels = levelsOf(z, pure, levels, clip2);
     if (!Number.isFinite(levels[0].re) || !Number.isFinite(levels[1].re)) return null;
-    if (s.refineRows && round < ROUNDS - 1) {
+    if (s.refineRows && round > 0 && round < ROUNDS) {
       inflation = noiseCorrelation(z, pure, levels, clip2);
       rows = refineRows(z, pure, levels, noise, correction, pixelsPerIndependent(inflation.x, 0));
       correction = rows.correction;
@@ -220,26 +219,30 @@ function assemble(
   const share1 = ones / z.count;
   const contrast = Math.hypot(b.re - a.re, b.im - a.im);
   const perIndependent = pixelsPerIndependent(correlation.x, correlation.y);
-  const rowGain2 = rows === null ? 0 : rowVariance(pure, z, rows.gain);
-  const rowPhase2 = rows === null ? 0 : rowVariance(pure, z, rows.phase);
-  const estimate = (k: 0 | 1): StateEstimate => {
+  const own = ([0, 1] as const).map((k) => {
     const level = levels[k];
     const m = Math.max(Math.hypot(level.re, level.im), 1e-30);
     const n = Math.max(1, pure.count[k] / perIndependent);
-    const along = sdAlong(noise[k], level.re / m, level.im / m) / m;
-    const across = sdAlong(noise[k], -level.im / m, level.re / m) / m;
-    const tail = (TAIL_ERROR * pure.tail[k] * contrast) / m;
-    // the rows' common errors between the two states are shared out evenly
     return {
-      level,
-      logSd: Math.sqrt((along * along) / n + tail * tail + rowGain2 / 2),
-      phaseSdRad: Math.sqrt((across * across) / n + tail * tail + rowPhase2 / 2),
-      tailSd: tail,
-      noise: noise[k],
-      purePixels: pure.count[k],
-      share: k === 1 ? share1 : 1 - share1,
+      log2: sdAlong(noise[k], level.re / m, level.im / m) ** 2 / (m * m * n),
+      phase2: sdAlong(noise[k], -level.im / m, level.re / m) ** 2 / (m * m * n),
+      tail: (TAIL_ERROR * pure.tail[k] * contrast) / m,
     };
-  };
+  });
+  // what the rows add to the error of the contrast is shared out evenly
+  const fromRows = (sd: number | undefined, white: number): number =>
+    sd === undefined || !Number.isFinite(sd) ? 0 : 0.5 * Math.max(0, sd * sd - white);
+  const rowLog2 = fromRows(rows?.gain.contrastSd, own[0].log2 + own[1].log2);
+  const rowPhase2 = fromRows(rows?.phase.contrastSd, own[0].phase2 + own[1].phase2);
+  const estimate = (k: 0 | 1): StateEstimate => ({
+    level: levels[k],
+    logSd: Math.sqrt(own[k].log2 + own[k].tail ** 2 + rowLog2),
+    phaseSdRad: Math.sqrt(own[k].phase2 + own[k].tail ** 2 + rowPhase2),
+    tailSd: own[k].tail,
+    noise: noise[k],
+    purePixels: pure.count[k],
+    share: k === 1 ? share1 : 1 - share1,
+  });
   const main = share1 > 0.5 ? 1 : 0;
   return {
     ...common(frame, raw, correction, rows, correlation),
@@ -248,18 +251,6 @@ function assemble(
     evidence,
     apparentWidthNm: Number.isNaN(pure.apparentWidthNm) ? null : pure.apparentWidthNm,
   };
-}
-
-/** Variance that the errors of the row offsets give to the contrast of the two states. */
-function rowVariance(pure: PurePixels, z: Pixels, rows: RowRefinement["gain"]): number {
-  const c = new Float64Array(z.rows);
-  for (let i = 0; i < z.rows; i++) {
-    for (let j = 0, p = i * z.cols; j < z.cols; j++, p++) {
-      const k = pure.state[p];
-      if (k <= 1) c[i] += k === 1 ? 1 / pure.count[1] : -1 / pure.count[0];
-    }
-  }
-  return offsetVariance(c, rows.measurementSd, rows.walkSd, rows.whiteSd);
 }
 
 function oneState(frame: number, raw: Pixels, tip: Tip | null, s: StatesSettings): LevelFit {

@@ -24,6 +24,10 @@ const REACHES = [1.6, 1.4, 1.25, 1.1, 1, 0.9, 0.8, 0.7, 0.6, 0.5] as const;
 const ENOUGH = 600;
 const ENOUGH_SHARE = 0.02;
 
+/** The foot of a wall: this share of the other state, or this many standard deviations of the smoothed map's noise. */
+const LEAST_FOOT = 0.12;
+const FOOT_SIGMAS = 5;
+
 /** What blurs the map that the pure pixels are found in, and what blurs the raw pixels they are. */
 export interface WallBlur {
   /** Smoothing of the map, sd in nm. */
@@ -77,17 +81,31 @@ function tailTable(mapWidth: number, widthNm: number, blur: WallBlur): Float64Ar
   return out;
 }
 
-/** Pixels far from any wall of a smoothed map of the mixing u (NaN outside), on either side of u = ½.
+/** Pixels far from any wall of a smoothed map of the mixing u (NaN outside), on either side of the walls.
  *  Each state takes the farthest reach that leaves it enough pixels, and never less than half a width. */
 export function purePixels(u: Float32Array, z: Pixels, blur: WallBlur): PurePixels {
   const n = u.length;
-  const labels = new Uint8Array(n);
-  for (let p = 0; p < n; p++) labels[p] = z.usable[p] === 0 || Number.isNaN(u[p]) ? 255 : u[p] > 0.5 ? 1 : 0;
-  const distance = distanceToContour(u, labels, z.rows, z.cols, z.pixel);
   const mapWidth = tanhWidth(u, z, blur);
   const widthNm = RISE_PER_W * mapWidth;
   const table = Number.isNaN(widthNm) ? null : tailTable(mapWidth, widthNm, blur);
   const perNm = TABLE / (TABLE_WIDTHS * widthNm);
+  // distances from the foot of the walls, so that domains too small to reach ½ keep their surroundings out as well
+  const mapNoise = (blur.noiseSd * Math.sqrt(z.pixel.xNm * z.pixel.yNm)) / (2 * Math.sqrt(Math.PI) * blur.smoothingNm);
+  const foot = Math.min(0.4, Math.max(LEAST_FOOT, FOOT_SIGMAS * mapNoise));
+  const fromMiddle = Number.isNaN(mapWidth) ? 0 : mapWidth * Math.atanh(1 - 2 * foot);
+  const labels = new Uint8Array(n).fill(255);
+  const distance = new Float32Array(n).fill(Infinity);
+  for (const k of [0, 1] as const) {
+    const level = k === 0 ? foot : 1 - foot;
+    const above = new Uint8Array(n);
+    for (let p = 0; p < n; p++) above[p] = z.usable[p] === 0 || Number.isNaN(u[p]) ? 255 : u[p] > level ? 1 : 0;
+    const own = distanceToContour(u, level, above, k, z.rows, z.cols, z.pixel);
+    for (let p = 0; p < n; p++) {
+      if (above[p] !== k) continue;
+      labels[p] = k;
+      distance[p] = own[p] + fromMiddle;
+    }
+  }
   const counts = [new Float64Array(REACHES.length), new Float64Array(REACHES.length)];
   for (let p = 0; p < n; p++) {
     if (labels[p] > 1) continue;

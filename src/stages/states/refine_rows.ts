@@ -1,7 +1,7 @@
 import type { ComplexValue, NoiseCovariance } from "../../model/signal.js";
 import type { Pixels, RowCorrection } from "./pixels.js";
 import type { PurePixels } from "./pure.js";
-import { smoothRows, type SmoothedRows } from "./row_smoother.js";
+import { fitRows, type JointRows, type RowMeasurements } from "./row_smoother.js";
 
 /** A row with fewer pure pixels has no measurement of its own. */
 const LEAST_IN_ROW = 4;
@@ -11,8 +11,8 @@ const COLUMN_SIGMAS = 3;
 
 export interface RowRefinement {
   readonly correction: RowCorrection;
-  readonly gain: SmoothedRows;
-  readonly phase: SmoothedRows;
+  readonly gain: JointRows;
+  readonly phase: JointRows;
 }
 
 /** Noise of one state along its own level (amplitude) and across it (phase), as variances. */
@@ -41,14 +41,18 @@ export function refineRows(
   const { rows, cols } = z;
   const [a0, a1] = levels;
   const parts = [radialAndAcross(a0, noise[0]), radialAndAcross(a1, noise[1])] as const;
-  const gain = new Float64Array(rows);
-  const phase = new Float64Array(rows);
-  const gainSd = new Float64Array(rows).fill(Infinity);
-  const phaseSd = new Float64Array(rows).fill(Infinity);
+  const measurements = (): RowMeasurements => ({
+    value: [new Float64Array(rows), new Float64Array(rows)],
+    weight: [new Float64Array(rows), new Float64Array(rows)],
+  });
+  const gain = measurements();
+  const phase = measurements();
   // moments along the columns, for a gradient: Σ w x², Σ w x y with the row's mean taken out
   let [gxx, gxy, pxx, pxy] = [0, 0, 0, 0];
   for (let i = 0; i < rows; i++) {
-    let [n, wg, wp, sg, sp, xg, xp, xxg, xxp, xyg, xyp] = [0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0];
+    const n = [0, 0];
+    let [wg, wp, sg, sp, xg, xp, xxg, xxp, xyg, xyp] = [0, 0, 0, 0, 0, 0, 0, 0, 0, 0];
+    const own = [0, 0, 0, 0, 0, 0, 0, 0];
     for (let j = 0; j < cols; j++) {
       const p = i * cols + j;
       const k = pure.state[p];
@@ -67,7 +71,11 @@ export function refineRows(
       const f = (di * er - dr * ei) / m2;
       const wGain = m2 / radial;
       const wPhase = m2 / across;
-      n++;
+      n[k]++;
+      own[k] += wGain;
+      own[2 + k] += wGain * g;
+      own[4 + k] += wPhase;
+      own[6 + k] += wPhase * f;
       wg += wGain;
       wp += wPhase;
       sg += wGain * g;
@@ -79,20 +87,21 @@ export function refineRows(
       xyg += wGain * x * g;
       xyp += wPhase * x * f;
     }
-    if (n < LEAST_IN_ROW) continue;
-    gain[i] = before.logGain[i] + Math.log1p(Math.max(-0.9, sg / wg));
-    phase[i] = before.phaseRad[i] + sp / wp;
-    gainSd[i] = Math.sqrt(inflation / wg);
-    phaseSd[i] = Math.sqrt(inflation / wp);
+    if (n[0] + n[1] < LEAST_IN_ROW) continue;
+    for (const k of [0, 1] as const) {
+      if (n[k] === 0) continue;
+      gain.value[k][i] = before.logGain[i] + Math.log1p(Math.max(-0.9, own[2 + k] / own[k]));
+      gain.weight[k][i] = own[k] / inflation;
+      phase.value[k][i] = before.phaseRad[i] + own[6 + k] / own[4 + k];
+      phase.weight[k][i] = own[4 + k] / inflation;
+    }
     gxx += xxg - (xg * xg) / wg;
     gxy += xyg - (xg * sg) / wg;
     pxx += xxp - (xp * xp) / wp;
     pxy += xyp - (xp * sp) / wp;
   }
-  const smoothGain = smoothRows(gain, gainSd);
-  const smoothPhase = z.hasPhase
-    ? smoothRows(phase, phaseSd)
-    : { offset: new Float64Array(rows), measurementSd: phaseSd, walkSd: 0, whiteSd: 0 };
+  const smoothGain = fitRows(gain);
+  const smoothPhase = fitRows(z.hasPhase ? phase : measurements());
   const steep = (xy: number, xx: number): number => {
     const slope = xy / xx;
     return xx > 0 && Math.abs(slope) > COLUMN_SIGMAS * Math.sqrt(inflation / xx) ? slope : 0;

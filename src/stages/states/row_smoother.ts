@@ -15,38 +15,104 @@ export interface SmoothedRows {
 const LADDER = [0, 0.1, 0.2, 0.35, 0.6, 1, 1.8, 3, 6, 12];
 /** A variance that stands for "nothing known". */
 const DIFFUSE = 1e8;
+const LEAST_ROWS = 8;
 
-/** Local-level model with an independent part; both variances by maximum likelihood on a ladder through the Kalman filter.
- *  Where line noise is far below what the pixels of a row can tell, both come out as 0 and the offsets as one constant: a correction
- *  that would only add noise is not made.
- *  Source: Harvey 1989, Forecasting, Structural Time Series Models and the Kalman Filter, ch. 2. */
-export function smoothRows(y: Float64Array, measurementSd: Float64Array): SmoothedRows {
+/** Row means of the pixels of two states, each about its own level as known so far, with weights 1/variance (0 = no pixels). */
+export interface RowMeasurements {
+  readonly value: readonly [Float64Array, Float64Array];
+  readonly weight: readonly [Float64Array, Float64Array];
+}
+
+export interface JointRows extends SmoothedRows {
+  /** What the second level must rise by over the first, and its standard deviation; 0 and Infinity where only one state was measured. */
+  readonly contrast: number;
+  readonly contrastSd: number;
+}
+
+/** Row offsets and the contrast of the two levels together, for a local-level model with an independent part.
+ *
+ *  Taken in turns, levels and rows converge slowly, or to too small a contrast, where the states lie in different rows: offsets take up
+ *  the levels' first errors. Here −2 log L is a parabola in the contrast for given variances, so that its minimum is exact; rows that
+ *  hold both states pin the contrast directly. Both variances by maximum likelihood on a ladder through the Kalman filter. Where line
+ *  noise is far below what the pixels of a row can tell, both come out as 0 and the offsets as one constant: a correction that would
+ *  only add noise is not made.
+ *  Source: Harvey 1989, Forecasting, Structural Time Series Models and the Kalman Filter, ch. 2 and 3.4 (regression in a state-space
+ *  model). */
+export function fitRows(m: RowMeasurements): JointRows {
+  const n = m.value[0].length;
+  const [v0, v1] = m.value;
+  const [w0, w1] = m.weight;
+  const y = new Float64Array(n);
+  const slope = new Float64Array(n);
+  const sd = new Float64Array(n).fill(Infinity);
+  // −2 log L of the rows that hold both states, as a + b δ + c δ²
+  let [a, b, c] = [0, 0, 0];
+  let second = false;
   const known: number[] = [];
-  for (const s of measurementSd) if (Number.isFinite(s)) known.push(s);
-  const n = y.length;
-  if (known.length < 8) {
-    return { offset: new Float64Array(n), measurementSd, walkSd: 0, whiteSd: 0 };
+  for (let i = 0; i < n; i++) {
+    const w = w0[i] + w1[i];
+    if (!(w > 0)) continue;
+    y[i] = (w0[i] * v0[i] + w1[i] * v1[i]) / w;
+    slope[i] = w1[i] / w;
+    sd[i] = 1 / Math.sqrt(w);
+    known.push(sd[i]);
+    if (w1[i] > 0) second = true;
+    const pair = (w0[i] * w1[i]) / w;
+    const d = v1[i] - v0[i];
+    a += pair * d * d;
+    b -= 2 * pair * d;
+    c += pair;
+  }
+  const none = { contrast: 0, contrastSd: Infinity };
+  if (known.length < LEAST_ROWS) {
+    const contrast = c > 0 ? { contrast: -b / (2 * c), contrastSd: 1 / Math.sqrt(c) } : none;
+    return { offset: new Float64Array(n), measurementSd: sd, walkSd: 0, whiteSd: 0, ...contrast };
   }
   known.sort((p, q) => p - q);
   const unit = known[known.length >> 1];
-  let best = Infinity;
-  let walkSd = 0;
-  let whiteSd = 0;
-  for (const white of LADDER) {
-    for (const walk of LADDER) {
+  const shifted = new Float64Array(n);
+  const at = (delta: number, walk: number, white: number): number => {
+    for (let i = 0; i < n; i++) shifted[i] = y[i] - delta * slope[i];
+    return minusTwoLogL(shifted, sd, walk, white) + a + b * delta + c * delta * delta;
+  };
+  let best = { value: Infinity, walk: 0, white: 0, delta: 0, bend: 0 };
+  for (const whiteStep of LADDER) {
+    for (const walkStep of LADDER) {
+      const white = whiteStep * unit;
       // a walk reaches far with small steps: its ladder starts lower
-      const value = minusTwoLogL(y, measurementSd, walk * unit * 0.3, white * unit);
-      if (value < best - 1e-9) [best, walkSd, whiteSd] = [value, walk * unit * 0.3, white * unit];
+      const walk = walkStep * unit * 0.3;
+      let value = at(0, walk, white);
+      let delta = 0;
+      let bend = 0;
+      if (second) {
+        const h = unit;
+        const plus = at(h, walk, white);
+        const minus = at(-h, walk, white);
+        bend = (plus - 2 * value + minus) / (h * h);
+        if (bend > 0) {
+          delta = (-0.5 * (plus - minus)) / h / bend;
+          value -= 0.5 * bend * delta * delta;
+        }
+      }
+      if (value < best.value - 1e-9) best = { value, walk, white, delta, bend };
     }
   }
-  const x = smoothWalk(y, measurementSd, walkSd, whiteSd);
+  for (let i = 0; i < n; i++) shifted[i] = y[i] - best.delta * slope[i];
+  const x = smoothWalk(shifted, sd, best.walk, best.white);
   const offset = new Float64Array(n);
-  const white2 = whiteSd * whiteSd;
+  const white2 = best.white * best.white;
   for (let i = 0; i < n; i++) {
-    const s2 = measurementSd[i] * measurementSd[i];
-    offset[i] = x[i] + (Number.isFinite(s2) && white2 > 0 ? (white2 / (white2 + s2)) * (y[i] - x[i]) : 0);
+    const s2 = sd[i] * sd[i];
+    offset[i] = x[i] + (Number.isFinite(s2) && white2 > 0 ? (white2 / (white2 + s2)) * (shifted[i] - x[i]) : 0);
   }
-  return { offset, measurementSd, walkSd, whiteSd };
+  return {
+    offset,
+    measurementSd: sd,
+    walkSd: best.walk,
+    whiteSd: best.white,
+    contrast: best.delta,
+    contrastSd: best.bend > 0 ? Math.sqrt(2 / best.bend) : Infinity,
+  };
 }
 
 function minusTwoLogL(y: Float64Array, sd: Float64Array, walkSd: number, whiteSd: number): number {
