@@ -36,7 +36,8 @@ export class FringeTable {
     readonly blur: Blur,
     reachNm: number,
   ) {
-    const h = Math.max(0.5, blur.sigmaNm / 6);
+    // A quarter of σ: the search needs a percent, the fit has its own sums.
+    const h = Math.max(0.5, blur.sigmaNm / 4);
     const taps = Math.ceil((5 * blur.sigmaNm) / h);
     const n = Math.ceil(reachNm / h) + taps + 2;
     this.stepNm = h;

@@ -29,13 +29,14 @@ export function estimateFringe(
   chord: Chord,
   candidate: Candidate,
   reachNm: number,
+  levelSdRad: number,
   free: boolean,
   s: FringeSettings,
 ): FringeEstimate {
   const n = profile.count;
   const l = noiseFactor(profile, null);
   const forward = new FringeForward(candidate.side, chord, table.blur, reachNm);
-  const nuisances = nuisanceMatrix(profile, table, chord, reachNm, s.levelSdRad);
+  const nuisances = nuisanceMatrix(profile, table, chord, reachNm, levelSdRad);
   const sideReach = candidate.side === "metallic" ? profile.reachMetallicNm : profile.reachInsulatingNm;
   const member = table.members[candidate.member];
   const shortest = Math.log(table.members.reduce((a, m) => Math.min(a, m.periodNm), Infinity) / 1.5);

@@ -7,7 +7,8 @@ import { median } from "../../numerics/quantile.js";
 import { childSeed } from "../../numerics/random.js";
 import { FringeTable, type Blur, type Member } from "./basis.js";
 import { acrossChord, chordOf } from "./chord.js";
-import { estimateFringe } from "./estimate.js";
+import { estimateFringe, type FringeEstimate } from "./estimate.js";
+import { levelScatter } from "./level_scatter.js";
 import { measureNoise } from "./noise.js";
 import { Profiler, type Profile } from "./profile.js";
 import type { FringeSettings } from "./settings.js";
@@ -23,6 +24,8 @@ const LEAST_SHARE = 0.5;
 const NEAR_WIDTHS = 1.25;
 /** Period and decay are fitted only where the test says there may be something. */
 const FIT_BELOW_P = 0.05;
+/** Share of a fringe's contrast by which a level of the frame may be off. */
+const LEVEL_SHARE = 0.3;
 /** A stretch with fewer bins is not tested. */
 const LEAST_BINS = 12;
 
@@ -55,15 +58,22 @@ export function testFringes(
   const shortest = Math.max(s.leastPeriodTips * (tip?.resolutionNm ?? 0), 4 * binNm);
   const table = new FringeTable(membersFrom(shortest, s.reachNm / LEAST_SHARE), blur, s.reachNm);
 
+  const profiles = cut.stretches.map((stretch) => profiler.profile(stretch));
+  const levelSdRad = levelScatter(profiles, chord, nearNm, s.leastLevelSdRad, s.mostLevelSdRad);
+
   const tests: FringeTest[] = [];
-  for (const stretch of cut.stretches) {
-    const profile = profiler.profile(stretch);
+  cut.stretches.forEach((stretch, k) => {
+    const profile = profiles[k];
     const candidates = candidatesFor(profile, table, s);
-    if (profile.count < LEAST_BINS || candidates.length === 0) continue;
+    if (profile.count < LEAST_BINS || candidates.length === 0) return;
     const drawn = childSeed(seed, stretch.wall, stretch.stretch);
-    const found = supTest(profile, table, chord, candidates, s.reachNm, s.levelSdRad, s.draws, drawn);
-    if (found === null) continue;
+    const found = supTest(profile, table, chord, candidates, s.reachNm, levelSdRad, s.draws, drawn);
+    if (found === null) return;
     const free = found.pValue < FIT_BELOW_P;
+    const estimate = (sd: number, withPeriod: boolean): FringeEstimate =>
+      estimateFringe(profile, table, chord, found.best, s.reachNm, sd, withPeriod, s);
+    // Where there is a fringe the frame's own levels, averaged over pixels that carry it, are off by a share of it.
+    const rough = estimate(levelSdRad, false).contrastRad ?? 0;
     tests.push({
       frame: signal.frame,
       wall: stretch.wall,
@@ -72,9 +82,9 @@ export function testFringes(
       arcToNm: stretch.arcToNm,
       pValue: found.pValue,
       side: found.best.side,
-      ...estimateFringe(profile, table, chord, found.best, s.reachNm, free, s),
+      ...estimate(Math.hypot(levelSdRad, LEVEL_SHARE * rough), free),
     });
-  }
+  });
   return tests;
 }
 

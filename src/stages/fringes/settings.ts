@@ -5,15 +5,21 @@ export const settings = {
   leastStretchNm: { default: 200, unit: "nm", means: "shorter walls are not tested", min: 20 },
   reachNm: { default: 600, unit: "nm", means: "largest distance from the wall that enters a test", min: 50 },
   leastReachNm: {
-    default: 50,
+    default: 75,
     unit: "nm",
     means: "a stretch is tested only where its pixels reach this far on both sides: else nothing tells on which side a fringe is",
     min: 10,
   },
-  levelSdRad: {
-    default: 0.03,
+  leastLevelSdRad: {
+    default: 0.002,
     unit: "rad",
-    means: "by how much the optical phase of a state may differ beside one wall from that of the frame (1 sd), and turn slowly over the reach",
+    means: "by how much the optical phase of a state may differ beside one wall from that of the frame (1 sd), at least; more where the frame shows more",
+    min: 0.0001,
+  },
+  mostLevelSdRad: {
+    default: 0.05,
+    unit: "rad",
+    means: "the same, at most; taken where nothing in the frame tells",
     min: 0.001,
   },
   binNm: {
@@ -43,13 +49,13 @@ export const settings = {
     min: 0.5,
   },
   largestPeriodError: {
-    default: 0.1,
+    default: 0.06,
     unit: "1",
     means: "… and only if its standard deviation is at most this share of it",
     min: 0.01,
   },
   largestDecayError: {
-    default: 0.2,
+    default: 0.12,
     unit: "1",
     means: "a decay length is reported only if its standard deviation is at most this share of it",
     min: 0.01,
