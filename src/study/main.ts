@@ -8,7 +8,7 @@ import { studyTables } from "./table.js";
 const BEGIN = "<!-- study: begin -->";
 const END = "<!-- study: end -->";
 
-/** `npm run study [-- CONDITION …] [--runs N] [--seed N] [--write]`: the accuracy study. Returns the exit code. */
+/** `npm run study [-- CONDITION …] [--runs N] [--seed N] [--write]`: the accuracy study; `-- survival` kills ingests instead. Returns the exit code. */
 export async function runStudy(args: readonly string[], guide: string): Promise<number> {
   const option = (name: string, usual: number): number => {
     const at = args.indexOf(name);
@@ -16,6 +16,10 @@ export async function runStudy(args: readonly string[], guide: string): Promise<
   };
   const runs = option("--runs", 4);
   const seed = option("--seed", 1);
+  if (args[0] === "survival") {
+    const { runSurvival } = await import("./survival.js");
+    return runSurvival(option("--kills", 50), seed);
+  }
   const names = args.filter((a, k) => !a.startsWith("--") && !(args[k - 1] ?? "").match(/^--(runs|seed)$/));
   const unknown = names.filter((n) => !CONDITIONS.some((c) => c.name === n));
   if (unknown.length > 0 || !Number.isInteger(runs) || runs < 1 || !Number.isInteger(seed)) {

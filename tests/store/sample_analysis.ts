@@ -25,9 +25,18 @@ const profile = (n: number, change: Partial<WallProfile> = {}): WallProfile => (
   ...change,
 });
 
-/** A small analysis made by hand: two frames, one of them of a single state and not placed. */
+/** A small analysis made by hand, sound in itself: two frames, the second undecided and not placed. */
 export function sampleAnalysis(
-  change: { name?: string; sample?: string; settings?: Record<string, number> } = {},
+  change: {
+    name?: string;
+    sample?: string;
+    settings?: Record<string, number>;
+    /** A hexadecimal digit that stands for the pixel values of its images. */
+    images?: string;
+    /** Number of frames, two or more: those after the second are warming ones like it, a kelvin apart. */
+    frames?: number;
+    programVersion?: string;
+  } = {},
 ): Analysis {
   const info = (frame: number, branch: "cooling" | "warming", temperatureK: number): FrameInfo => ({
     frame,
@@ -43,6 +52,8 @@ export function sampleAnalysis(
     cols: 3,
     sources: { amplitude: { file: "/nowhere/a.tif", label: `a.tif#${frame}`, format: "tiff", page: frame, scale: 1 } },
   });
+  const images = change.images ?? "a";
+  const later = Array.from({ length: (change.frames ?? 2) - 1 }, (_, k) => k + 1);
   const cooldown: Cooldown = {
     yamlFile: "/nowhere/cooldown.yaml",
     sample: change.sample ?? "KV-14",
@@ -53,13 +64,15 @@ export function sampleAnalysis(
     photonEnergyMeV: 100,
     filmThicknessNm: null,
     amplitudeUnit: "",
-    frames: [info(0, "cooling", 160), info(1, "warming", 150)],
-    sources: [{ path: "a.tif", sha256: "0".repeat(64), bytes: 48 }],
+    frames: [info(0, "cooling", 160), ...later.map((frame) => info(frame, "warming", 149 + frame))],
+    sources: [
+      { path: "a.tif", sha256: `${images.repeat(63)}${later.length.toString(16)}`, bytes: 24 * (1 + later.length) },
+    ],
     notices: [],
   };
   const base: FrameResult = {
     frame: 0,
-    imagesSha256: "a".repeat(64),
+    imagesSha256: images.repeat(64),
     verdict: "mixed",
     drift: { frame: 0, xNm: 0, yNm: 0, sdNm: 0 },
     fraction: { value: 0.5, low: 0.49, high: 0.51 },
@@ -75,9 +88,9 @@ export function sampleAnalysis(
     walls: [
       {
         wall: 0,
-        points: Float64Array.of(0, 0, 10, 5),
-        normals: Float64Array.of(0, 1, 0, 1),
-        arcNm: Float64Array.of(0, 11.18),
+        points: Float64Array.of(0, 0, 96, 72),
+        normals: Float64Array.of(-0.6, 0.8, -0.6, 0.8),
+        arcNm: Float64Array.of(0, 120),
         closed: false,
         lengthNm: 120,
       },
@@ -112,12 +125,12 @@ export function sampleAnalysis(
     debrisPixels: 1,
     scarPixels: 0,
   };
-  const single: FrameResult = {
+  const single = (frame: number): FrameResult => ({
     ...base,
-    frame: 1,
-    imagesSha256: "b".repeat(64),
+    frame,
+    imagesSha256: `${images.repeat(62)}${frame.toString(16).padStart(2, "0")}`,
     verdict: "undecided",
-    drift: { frame: 1, xNm: null, yNm: null, sdNm: null },
+    drift: { frame, xNm: null, yNm: null, sdNm: null },
     fraction: null,
     amplitudeInsulating: null,
     amplitudeMetallic: null,
@@ -128,12 +141,12 @@ export function sampleAnalysis(
     widths: { profiles: 0, medianNm: null, medianLowNm: null, medianHighNm: null, unresolvedShare: null },
     fringes: [],
     fringeShare: null,
-  };
+  });
   return {
     cooldown,
-    programVersion: "0.0.0-test",
+    programVersion: change.programVersion ?? "0.0.0-test",
     settings: { "walls.reachNm": 300, ...change.settings },
-    frames: [base, single],
+    frames: [base, ...later.map(single)],
     domains: [
       { domain: 0, kind: "metallic", origin: "first-frame", fate: "last-frame", appearances: [{ frame: 0, label: 1 }] },
       { domain: 1, kind: "insulating", origin: "first-frame", fate: "vanished", appearances: [{ frame: 0, label: 2 }] },
