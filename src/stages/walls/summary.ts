@@ -5,7 +5,7 @@ import type { WallsSettings } from "./settings.js";
 
 /** Neighbouring profiles of one wall that are drawn together: they share the wall's own history, and its noise where that is
  *  correlated. */
-const BLOCK = 4;
+const BLOCK = 2;
 const Z = 1.959963984540054;
 
 /** Statistics of one frame's unflagged profiles, limits treated as limits.
