@@ -1,7 +1,11 @@
+import { mkdtempSync, rmSync } from "node:fs";
+import { tmpdir } from "node:os";
+import path from "node:path";
 import Database from "better-sqlite3";
 import { expect, test } from "vitest";
 import { migrate } from "../../src/store/migrate.js";
-import type { Db } from "../../src/store/open.js";
+import { planRemoval, remove } from "../../src/store/forget.js";
+import { openForReading, openForWriting, type Db } from "../../src/store/open.js";
 import { readTable, tableStatement } from "../../src/store/read.js";
 import { saveAnalysis } from "../../src/store/save.js";
 import { TABLES, tableNamed, type ExportedTable } from "../../src/tables/columns.js";
@@ -70,14 +74,28 @@ test("names with quotes and SQL in them are only names", () => {
   expect([...readTable(db, tableNamed("loops") as ExportedTable, { cooldowns: ["' OR 1=1 --"] })]).toEqual([]);
 });
 
-test("an export that is under way does not see what is removed or added meanwhile, and may be left half way", () => {
-  const db = stored();
-  const table = tableNamed("temperature") as ExportedTable;
-  const rows = readTable(db, table);
-  const first = rows.next();
-  expect(first.done).toBe(false);
-  // Reading something else in between is allowed.
-  expect([...readTable(db, tableNamed("loops") as ExportedTable)]).toHaveLength(3);
-  rows.return();
-  expect(() => saveAnalysis(db, sampleAnalysis({ name: "d" }), new Date("2026-03-02T00:00:00Z"))).not.toThrow();
+test("an export that is under way gives what was there when it began, and may be left half way", () => {
+  const dir = mkdtempSync(path.join(tmpdir(), "coldseam-queries-"));
+  const file = path.join(dir, "lab.sqlite");
+  const db = openForWriting(file);
+  saveAnalysis(db, sampleAnalysis({ name: "a" }), new Date("2026-01-01T00:00:00Z"));
+  saveAnalysis(db, sampleAnalysis({ name: "b" }), new Date("2026-01-02T00:00:00Z"));
+  const reader = openForReading(file);
+  const rows = readTable(reader, tableNamed("temperature") as ExportedTable);
+  const seen = [rows.next().value?.["cooldown"]];
+  remove(db, planRemoval(db, "b", null));
+  saveAnalysis(db, sampleAnalysis({ name: "c" }), new Date("2026-01-03T00:00:00Z"));
+  // Reading something else on the same connection in between is allowed, and sees the same moment.
+  expect([...readTable(reader, tableNamed("loops") as ExportedTable)].map((r) => r["cooldown"])).toEqual(["a", "b"]);
+  for (const r of rows) seen.push(r["cooldown"]);
+  expect(seen).toEqual(["a", "a", "b", "b"]);
+  expect([...readTable(reader, tableNamed("loops") as ExportedTable)].map((r) => r["cooldown"])).toEqual(["a", "c"]);
+
+  const left = readTable(db, tableNamed("temperature") as ExportedTable);
+  left.next();
+  left.return();
+  expect(() => saveAnalysis(db, sampleAnalysis({ name: "d" }), new Date("2026-01-04T00:00:00Z"))).not.toThrow();
+  reader.close();
+  db.close();
+  rmSync(dir, { recursive: true });
 });
