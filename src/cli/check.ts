@@ -1,22 +1,25 @@
 import type { Notice } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
 import { plainText } from "../model/text.js";
-import { describeCooldown, inspectFrame, loadFrame, readCooldown } from "../input/index.js";
+import { describeCooldown, inspectFrame, loadFrame, surveyCooldown } from "../input/index.js";
 import { print, say } from "./say.js";
 
 interface CheckOptions {
   readonly allowOutside?: boolean;
 }
 
-/** `coldseam check`: everything is read, every pixel too; all problems are said at once. */
+/** `coldseam check`: everything is read, every pixel too; all problems of description, files and pixels are said at once. */
 export async function check(yaml: string, o: CheckOptions): Promise<void> {
-  const cooldown = await readCooldown(yaml, { allowOutside: o.allowOutside === true, hashSources: false });
-  print(`${describeCooldown(cooldown).join("\n")}\n`);
-  const problems: Problem[] = [];
-  const notices: Notice[] = [...cooldown.notices];
-  for (const info of cooldown.frames) {
+  const survey = await surveyCooldown(yaml, { allowOutside: o.allowOutside === true, hashSources: false });
+  const { cooldown, frames } = survey;
+  if (cooldown !== null) print(`${describeCooldown(cooldown).join("\n")}\n`);
+  const problems: Problem[] = [...survey.problems];
+  const notices: Notice[] = [...(cooldown ?? survey).notices];
+  // The images that can be read are looked at also where the description has mistakes; a size of 1 nm stands in for a missing one.
+  const pixel = survey.pixel ?? { xNm: 1, yNm: 1 };
+  for (const info of frames) {
     try {
-      notices.push(...inspectFrame(await loadFrame(cooldown, info)));
+      notices.push(...inspectFrame(await loadFrame({ pixel }, info), info));
     } catch (e) {
       if (!(e instanceof InputError)) throw e;
       problems.push(...e.problems);
@@ -25,7 +28,7 @@ export async function check(yaml: string, o: CheckOptions): Promise<void> {
   for (const n of notices) say(`note: ${n.frame === null ? "" : `frame ${n.frame}: `}${plainText(n.message)}`);
   if (problems.length > 0) throw new InputError(problems);
   print(
-    `ready: ${cooldown.frames.length} frames read, ${notices.length === 0 ? "nothing to remark" : `${notices.length} remarks`}\n`,
+    `ready: ${frames.length} frames read, ${notices.length === 0 ? "nothing to remark" : `${notices.length} remarks`}\n`,
   );
   print(`next: coldseam ingest ${plainText(yaml)} --db FILE.sqlite\n`);
 }

@@ -9,8 +9,9 @@ export function describeCooldown(c: Cooldown): string[] {
   ];
   for (const run of seriesOf(c.frames)) {
     const [first, last] = [run[0], run[run.length - 1]];
+    const kelvin = (f: FrameInfo): number => Number(f.temperatureK.toFixed(3));
     lines.push(
-      `  cycle ${first.cycle}, ${first.branch}: ${countOf(run.length, "frame")}, ${first.temperatureK} to ${last.temperatureK} K`,
+      `  cycle ${first.cycle}, ${first.branch}: ${countOf(run.length, "frame")}, ${kelvin(first)} to ${kelvin(last)} K`,
     );
   }
   lines.push(`  channels: ${channelText(c)}`);
@@ -51,7 +52,11 @@ function seriesOf(frames: readonly FrameInfo[]): FrameInfo[][] {
 function channelText(c: Cooldown): string {
   return CHANNELS.map((channel) => {
     const n = c.frames.filter((f) => f.sources[channel] !== undefined).length;
-    const unit = channel === "amplitude" && c.amplitudeUnit !== "" ? ` in ${plainText(c.amplitudeUnit)}` : "";
+    const harmonic = c.amplitudeHarmonic ?? null;
+    const unit =
+      channel === "amplitude"
+        ? `${harmonic === null ? "" : ` (harmonic ${harmonic})`}${c.amplitudeUnit === "" ? "" : ` in ${plainText(c.amplitudeUnit)}`}`
+        : "";
     if (n === 0) return `no ${channel}`;
     return n === c.frames.length ? `${channel}${unit}` : `${channel}${unit} (${n} of ${c.frames.length} frames)`;
   }).join(", ");

@@ -1,30 +1,41 @@
 import { CsvError, parse } from "csv-parse/sync";
-import { CHANNELS, type ChannelName } from "../model/cooldown.js";
 import type { Problem } from "../model/errors.js";
 import { closestWord, plainText } from "../model/text.js";
+import { IMAGE_KEYS, type ImageKey } from "./schema.js";
 import { foundText } from "./schema_problems.js";
+import { signalProblem } from "./signal_form.js";
+import { ISO_TIME, parseTime } from "./times.js";
 
 /** One row of a frames table, checked as far as it goes without opening images. */
 export interface TableRow {
   readonly line: number;
-  readonly temperatureK: number;
-  /** Path as written, by channel. */
-  readonly paths: Partial<Record<ChannelName, string>>;
+  /** null where the log of the thermometer has to say it. */
+  readonly temperatureK: number | null;
+  /** Path as written, by image. */
+  readonly paths: Partial<Record<ImageKey, string>>;
   readonly startedAt: string | null;
   readonly endedAt: string | null;
   readonly stageXNm: number | null;
   readonly stageYNm: number | null;
 }
 
-const COLUMNS: readonly string[] = ["temperature_K", ...CHANNELS, "started_at", "ended_at", "stage_x_nm", "stage_y_nm"];
+const COLUMNS: readonly string[] = [
+  "temperature_K",
+  ...IMAGE_KEYS,
+  "started_at",
+  "ended_at",
+  "stage_x_nm",
+  "stage_y_nm",
+];
 const MAX_ROWS = 10_000;
 
 /**
  * Reads a frames table: comma-separated with a header, one row a frame. Every mistake is appended to `problems` with its line
  * and column name; rows with a mistake are left out of what is returned.
- * @param name how the file is called in messages
+ * @param name      how the file is called in messages
+ * @param fromLog   temperatures come from a log: the column may be missing or empty
  */
-export function parseFramesTable(text: string, name: string, problems: Problem[]): TableRow[] {
+export function parseFramesTable(text: string, name: string, problems: Problem[], fromLog = false): TableRow[] {
   const records = parseCsv(text, name, problems);
   if (records === null) return [];
   if (records.length === 0) {
@@ -34,7 +45,7 @@ export function parseFramesTable(text: string, name: string, problems: Problem[]
   const [head, ...body] = records;
   const columns = head.cells.map((c) => c.trim());
   const before = problems.length;
-  checkHead(columns, `${name}:${head.line}`, problems);
+  checkHead(columns, `${name}:${head.line}`, problems, fromLog);
   if (problems.length > before) return [];
   if (body.length === 0) {
     problems.push({ at: name, problem: "a header but no row; expected one row a frame", fix: "add the frames" });
@@ -44,7 +55,7 @@ export function parseFramesTable(text: string, name: string, problems: Problem[]
     return [];
   }
   return body.flatMap((record) => {
-    const row = checkRow(record, columns, name, problems);
+    const row = checkRow(record, columns, name, problems, fromLog);
     return row === null ? [] : [row];
   });
 }
@@ -76,7 +87,7 @@ function parseCsv(text: string, name: string, problems: Problem[]): CsvRecord[] 
   }
 }
 
-function checkHead(columns: readonly string[], at: string, problems: Problem[]): void {
+function checkHead(columns: readonly string[], at: string, problems: Problem[], fromLog: boolean): void {
   columns.forEach((c, i) => {
     if (!COLUMNS.includes(c)) {
       const likely = closestWord(c, COLUMNS);
@@ -89,7 +100,9 @@ function checkHead(columns: readonly string[], at: string, problems: Problem[]):
       problems.push({ at, problem: `column "${c}" stands twice`, fix: "keep one of the two" });
     }
   });
-  for (const c of ["temperature_K", "amplitude"]) {
+  const required = fromLog ? [] : ["temperature_K"];
+  if (!columns.includes("signal") && !columns.includes("real")) required.push("amplitude");
+  for (const c of required) {
     if (!columns.includes(c)) problems.push({ at, problem: `no column "${c}"`, fix: `add it: it is required` });
   }
   if (columns.includes("stage_x_nm") !== columns.includes("stage_y_nm")) {
@@ -97,7 +110,13 @@ function checkHead(columns: readonly string[], at: string, problems: Problem[]):
   }
 }
 
-function checkRow(record: CsvRecord, columns: readonly string[], name: string, problems: Problem[]): TableRow | null {
+function checkRow(
+  record: CsvRecord,
+  columns: readonly string[],
+  name: string,
+  problems: Problem[],
+  fromLog: boolean,
+): TableRow | null {
   const before = problems.length;
   const at = `${name}:${record.line}`;
   if (record.cells.length !== columns.length) {
@@ -111,7 +130,8 @@ function checkRow(record: CsvRecord, columns: readonly string[], name: string, p
     problems.push({ at, problem: `${column} is ${found}; expected ${expected}`, fix });
   };
   const temperatureK = plainNumber(cell("temperature_K"));
-  if (!(temperatureK !== null && temperatureK > 0 && temperatureK <= 1000)) {
+  const left = fromLog && cell("temperature_K") === "";
+  if (!left && !(temperatureK !== null && temperatureK > 0 && temperatureK <= 1000)) {
     complain("temperature_K", "a temperature in K above 0 and at most 1000", "give it in kelvin (0 °C is 273.15 K)");
   }
   const stage = (column: string): number | null => {
@@ -126,7 +146,7 @@ function checkRow(record: CsvRecord, columns: readonly string[], name: string, p
   }
   const time = (column: string): string | null => {
     if (cell(column) === "") return null;
-    if (isIsoTime(cell(column))) return cell(column);
+    if (ISO_TIME.test(cell(column)) && !Number.isNaN(parseTime(cell(column)))) return cell(column);
     complain(column, "a time as ISO 8601", "write for example 2024-05-17T09:30:00+02:00");
     return null;
   };
@@ -134,26 +154,16 @@ function checkRow(record: CsvRecord, columns: readonly string[], name: string, p
   if (startedAt !== null && endedAt !== null && parseTime(endedAt) < parseTime(startedAt)) {
     problems.push({ at, problem: "ended_at lies before started_at", fix: "mend the times" });
   }
-  const paths: Partial<Record<ChannelName, string>> = {};
-  for (const c of CHANNELS) if (cell(c) !== "") paths[c] = cell(c);
-  if (paths.amplitude === undefined)
-    complain("amplitude", "a file: every frame needs it", "give the file, or drop the row");
-  if (problems.length > before || temperatureK === null) return null;
+  const paths: Partial<Record<ImageKey, string>> = {};
+  for (const c of IMAGE_KEYS) if (cell(c) !== "") paths[c] = cell(c);
+  const wrong = signalProblem(paths);
+  if (wrong === "none") complain("amplitude", "a file: every frame needs it", "give the file, or drop the row");
+  else if (wrong !== null) problems.push({ at, ...wrong });
+  if (problems.length > before) return null;
   return { line: record.line, temperatureK, paths, startedAt, endedAt, stageXNm, stageYNm };
 }
 
 /** A decimal number and nothing else; null for the rest (JavaScript would take "0x10", "" and " " too). */
 function plainNumber(s: string): number | null {
   return /^[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?$/.test(s) ? Number(s) : null;
-}
-
-/** A date with a time, to the minute or finer; with or without an offset from UTC. */
-function isIsoTime(s: string): boolean {
-  return (
-    /^\d{4}-\d\d-\d\d[T ]\d\d:\d\d(:\d\d([.,]\d+)?)?(Z|[+-]\d\d(:?\d\d)?)?$/.test(s) && !Number.isNaN(parseTime(s))
-  );
-}
-
-function parseTime(s: string): number {
-  return Date.parse(s.replace(" ", "T").replace(",", "."));
 }

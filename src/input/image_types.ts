@@ -1,20 +1,57 @@
+import type { PixelSize } from "../model/raster.js";
 import { ImageFileError } from "./byte_file.js";
+
+export type ImageFormat = "tiff" | "npy" | "hdf5" | "text";
 
 /** What a header says of one page. */
 export interface PageShape {
   readonly rows: number;
   readonly cols: number;
-  /** Pixel type in short: `float32`, `uint16`. */
+  /** Pixel type in short: `float32`, `uint16`, `complex64`. */
   readonly type: string;
+  /** Values a pixel: samples of a TIFF; 2, the real and the imaginary part, of complex numbers. */
+  readonly planes: number;
+  readonly complex: boolean;
 }
 
-/** An open image file: pages known from the headers, pixels read on demand. */
+/** What a file says of itself beyond its pixels; null where it says nothing that can be used. */
+export interface FileClaims {
+  readonly pixel: PixelSize | null;
+  /** A temperature a page. */
+  readonly temperaturesK: readonly number[] | null;
+}
+export const NO_CLAIMS: FileClaims = { pixel: null, temperaturesK: null };
+
+/** An open image file (one dataset of an HDF5 file): pages known from the headers, pixels read on demand. */
 export interface OpenImage {
-  readonly format: "tiff" | "npy";
+  readonly format: ImageFormat;
   readonly pages: readonly PageShape[];
-  /** Row-major pixels of one page, times `scale` (in double precision, then rounded to float32 once). Throws ImageFileError. */
-  read(page: number, scale: number): Promise<Float32Array>;
+  readonly claims: FileClaims;
+  /**
+   * Row-major pixels of one page, times `scale` (in double precision, then rounded to float32 once).
+   * @param plane which of several values a pixel; may be left out only where there is one. Throws ImageFileError.
+   */
+  read(page: number, scale: number, plane?: number): Promise<Float32Array>;
   close(): Promise<void>;
+}
+
+/** The plane that a read asks for, from 0. Throws ImageFileError where it does not exist, or where one must be named. */
+export function choosePlane(shape: PageShape, plane: number | undefined, page: number): number {
+  if (plane === undefined && shape.planes === 1) return 0;
+  if (plane !== undefined && plane >= 0 && plane < shape.planes) return plane;
+  if (shape.complex) {
+    const fix = "name it `signal`: it gives amplitude and phase";
+    throw new ImageFileError("complex numbers; expected one number a pixel", fix, page);
+  }
+  const found = `${shape.planes} samples a pixel`;
+  if (plane !== undefined) {
+    throw new ImageFileError(`no sample ${plane}: ${found}`, "samples count from 0", page);
+  }
+  throw new ImageFileError(
+    `${found} (a colour picture?); expected one number`,
+    "name the sample (`#0:1` is the second of the first page), or export the measured values",
+    page,
+  );
 }
 
 /** Scans of this kind have 64 to 2048 pixels a side; beyond these limits a header is damaged or hostile. */

@@ -1,6 +1,6 @@
 export { closeImages } from "./image_file.js";
 export { loadFrame } from "./load_frame.js";
-export { readCooldown, type ReadOptions } from "./read_cooldown.js";
+export { readCooldown, surveyCooldown, type ReadOptions, type Survey } from "./read_cooldown.js";
 export { describeCooldown } from "./describe_cooldown.js";
 export { frameDigest } from "./frame_digest.js";
 export { inspectFrame } from "./inspect_frame.js";

@@ -1,6 +1,7 @@
 import { CHANNELS, type ChannelName, type FrameInfo, type Notice, type RawFrame } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
 import type { Raster } from "../model/raster.js";
+import { type Oddity, swappedChannels } from "./swapped_channels.js";
 import { countOf, plainText } from "../model/text.js";
 
 /**
@@ -12,7 +13,15 @@ import { countOf, plainText } from "../model/text.js";
  */
 export function inspectFrame(raw: RawFrame, info?: FrameInfo): Notice[] {
   const problems: Problem[] = [];
-  const notices: Notice[] = [];
+  const notices: Notice[] = [...(raw.notices ?? [])];
+  const { frame } = raw;
+  if (info?.excluded !== undefined) {
+    return [{ frame, code: "excluded-frame", message: `left out: ${plainText(info.excluded)}` }];
+  }
+  for (const r of info?.excludedRegions ?? []) {
+    const place = `(${r.x0Nm}, ${r.y0Nm}) to (${r.x1Nm}, ${r.y1Nm}) nm`;
+    notices.push({ frame, code: "excluded-region", message: `${place} left out: ${plainText(r.reason)}` });
+  }
   for (const channel of CHANNELS) {
     const raster = raw[channel];
     const source = info?.sources[channel];
@@ -32,6 +41,8 @@ export function inspectFrame(raw: RawFrame, info?: FrameInfo): Notice[] {
     else oddities(channel, raster, range).forEach(notice);
   }
   if (problems.length > 0) throw new InputError(problems);
+  const swapped = swappedChannels(raw);
+  if (swapped !== null) notices.push({ frame, ...swapped });
   return notices;
 }
 
@@ -122,8 +133,6 @@ function unusable(channel: ChannelName, r: Range): Omit<Problem, "at"> | null {
   }
   return null;
 }
-
-type Oddity = Pick<Notice, "code" | "message">;
 
 /** A plateau: so many pixels at the extreme, and far more than at the next value inwards, as no smooth distribution has. */
 const MIN_PLATEAU_SHARE = 0.002;

@@ -1,19 +1,25 @@
 import { dirname, resolve } from "node:path";
-import { CHANNELS, type Cooldown, type FrameInfo, type SourceFile } from "../model/cooldown.js";
+import type { Cooldown, FrameInfo, Notice, SourceFile } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
+import type { PixelSize } from "../model/raster.js";
 import { plainText } from "../model/text.js";
-import { checkImages, type CheckedFrame } from "./check_images.js";
+import { checkImages } from "./check_images.js";
 import { checkOrder } from "./check_order.js";
 import { crossProblems } from "./cross_checks.js";
-import { cycleNumbers } from "./cycles.js";
+import { withExclusions } from "./exclusions.js";
 import { systemWords } from "./image_file.js";
-import { cooldownSchema, seriesSchema, type CooldownEntry, type SeriesEntry } from "./schema.js";
+import { HeaderBook } from "./image_headers.js";
+import { numberFrames } from "./number_frames.js";
+import { findPixelSize } from "./pixel_size.js";
+import { cooldownSchema, excludeSchema, seriesSchema, thermometrySchema, type CooldownEntry } from "./schema.js";
+import type { SeriesEntry } from "./schema.js";
 import { schemaProblems } from "./schema_problems.js";
 import { readTextFile, writtenSeries, type WrittenSeries } from "./series_frames.js";
-import { hashFile, sourceOf } from "./source_files.js";
+import { hashFile, imageFiles, sourceOf } from "./source_files.js";
 import { shownPath } from "./source_path.js";
+import { hashLog, readThermometry, temperaturesFromLog, type Thermometry } from "./thermometry.js";
 import { channelScales, photonEnergyMeV } from "./units.js";
-import { parseYaml, type YamlDocument } from "./yaml_document.js";
+import { isRecord, parseYaml, type YamlDocument } from "./yaml_document.js";
 
 export interface ReadOptions {
   /** Follow paths that leave the YAML file's folder. Default false. */
@@ -22,12 +28,30 @@ export interface ReadOptions {
   readonly hashSources?: boolean;
 }
 
+/** What was found of a cooldown, sound or not. */
+export interface Survey {
+  /** null where there is a problem. */
+  readonly cooldown: Cooldown | null;
+  readonly problems: readonly Problem[];
+  /** The frames whose images can be read, also where something else is wrong; numbered as far as they were found. */
+  readonly frames: readonly FrameInfo[];
+  readonly pixel: PixelSize | null;
+  readonly notices: readonly Notice[];
+}
+
 /**
  * Reads a `cooldown.yaml`, its frame tables and the headers of its images, and checks all of it; no pixel is read. Frames stand in
  * the order of the YAML file, units are nm, K, meV, and each source carries the factor that takes its file to nm or rad.
  * Throws one InputError with every problem found: place in the file, what was found and expected, what to do.
  */
 export async function readCooldown(yamlFile: string, options: ReadOptions = {}): Promise<Cooldown> {
+  const { cooldown, problems } = await surveyCooldown(yamlFile, options);
+  if (cooldown === null) throw new InputError(problems);
+  return cooldown;
+}
+
+/** As `readCooldown`, but hands back the problems beside what is sound. Throws InputError only where the file is no YAML at all. */
+export async function surveyCooldown(yamlFile: string, options: ReadOptions = {}): Promise<Survey> {
   const yamlPath = resolve(yamlFile);
   const folder = dirname(yamlPath);
   const yaml = readYaml(yamlPath, yamlFile);
@@ -35,23 +59,42 @@ export async function readCooldown(yamlFile: string, options: ReadOptions = {}):
   const whole = cooldownSchema.safeParse(doc.value);
   const problems: Problem[] = whole.success ? [] : schemaProblems(whole.error.issues, doc);
   problems.push(...crossProblems(doc));
+  const notices: Notice[] = [];
 
-  // Each series that is sound in itself is followed to its files even where something else is wrong: all is told in one go.
-  const entries = seriesEntries(doc);
-  const context = { doc, folder, allowOutside: options.allowOutside ?? false, problems };
-  const written = entries.map((s) => writtenSeries(s.entry, ["series", s.index], context));
-  const scales = channelScales(whole.success ? whole.data.channels : undefined);
-  const checked = await checkImages(written, scales, problems);
-  if (problems.length > 0 || !whole.success) throw new InputError(problems.sort(byPlace(plainText(yamlFile))));
-
-  const frames = numberFrames(entries, checked);
-  return {
-    ...described(whole.data),
-    yamlFile: yamlPath,
-    frames,
-    sources: options.hashSources === false ? [] : await hashAll(yamlPath, folder, yaml, written, frames),
-    notices: checkOrder(frames, pixelOf(whole.data), whole.data.tip?.resolution_nm ?? null),
+  // Each part that is sound in itself is followed to its files even where something else is wrong: all is told in one go.
+  const top = isRecord(doc.value) ? doc.value : {};
+  const { channels, scan } = cooldownSchema.shape;
+  const thermometryEntry = thermometrySchema.safeParse(top["thermometry"]).data;
+  const context = {
+    doc,
+    folder,
+    allowOutside: options.allowOutside ?? false,
+    problems,
+    fromLog: top["thermometry"] !== undefined,
   };
+  const thermometry = thermometryEntry === undefined ? null : readThermometry(thermometryEntry, context);
+  const entries = seriesEntries(doc);
+  const written = entries.map((s) => writtenSeries(s.entry, ["series", s.index], context));
+  const headers = new HeaderBook(problems);
+  const scales = channelScales(channels.safeParse(top["channels"]).data);
+  const checked = await checkImages(written, scales, headers, problems, notices);
+  const pixel = findPixelSize(scan.safeParse(top["scan"]).data, headers.pixelClaims, doc, problems, notices);
+  const temperatures = thermometry === null ? [] : temperaturesFromLog(checked.flat(), thermometry, problems, notices);
+
+  const series = entries.map((s) => ({ index: s.index, branch: s.entry.branch }));
+  const numbered = numberFrames(series, checked, temperatures);
+  // Numbers of frames mean something only where none is missing.
+  const exclusions = problems.length > 0 ? [] : (excludeSchema.safeParse(top["exclude"]).data ?? []);
+  const frames = withExclusions(numbered, exclusions, pixel, doc, problems);
+  problems.sort(byPlace(plainText(yamlFile)));
+  if (problems.length > 0 || !whole.success || pixel === null) {
+    return { cooldown: null, problems, frames, pixel, notices };
+  }
+  const sources =
+    options.hashSources === false ? [] : await hashAll(yamlPath, folder, yaml, written, thermometry, frames);
+  notices.push(...checkOrder(frames, pixel, whole.data.tip?.resolution_nm ?? null));
+  const cooldown = { ...described(whole.data), pixel, yamlFile: yamlPath, frames, sources, notices };
+  return { cooldown, problems, frames, pixel, notices };
 }
 
 /** Problems of the YAML file first, in its order; the others as they came. */
@@ -89,72 +132,34 @@ function seriesEntries(doc: YamlDocument): IndexedEntry[] {
   });
 }
 
-const pixelOf = (y: CooldownEntry): Cooldown["pixel"] => ({
-  xNm: y.scan.pixel_size_nm[0],
-  yNm: y.scan.pixel_size_nm[1],
-});
-
-function described(y: CooldownEntry): Omit<Cooldown, "yamlFile" | "frames" | "sources" | "notices"> {
+function described(y: CooldownEntry): Omit<Cooldown, "yamlFile" | "pixel" | "frames" | "sources" | "notices"> {
   return {
     sample: y.sample,
     cooldown: y.cooldown,
     region: y.region ?? null,
-    pixel: pixelOf(y),
     tip:
       y.tip === undefined ? null : { resolutionNm: y.tip.resolution_nm, resolutionSdNm: y.tip.resolution_sd_nm ?? 0 },
     photonEnergyMeV: photonEnergyMeV(y.light),
     filmThicknessNm: y.film?.thickness_nm ?? null,
     amplitudeUnit: y.channels?.amplitude?.unit ?? "",
+    amplitudeHarmonic: y.channels?.amplitude?.harmonic ?? null,
   };
 }
 
-function numberFrames(entries: readonly IndexedEntry[], checked: readonly CheckedFrame[][]): FrameInfo[] {
-  const temperature = (f: CheckedFrame | undefined): number => f?.written.temperatureK ?? NaN;
-  const cycles = cycleNumbers(
-    entries.map((s, i) => ({
-      branch: s.entry.branch,
-      firstK: temperature(checked[i][0]),
-      lastK: temperature(checked[i].at(-1)),
-    })),
-  );
-  const frames: FrameInfo[] = [];
-  entries.forEach((s, i) => {
-    for (const { written, rows, cols, sources } of checked[i]) {
-      const { temperatureK, startedAt, endedAt, stageXNm, stageYNm } = written;
-      frames.push({
-        frame: frames.length,
-        series: s.index,
-        branch: s.entry.branch,
-        cycle: cycles[i],
-        temperatureK,
-        startedAt,
-        endedAt,
-        stageXNm,
-        stageYNm,
-        rows,
-        cols,
-        sources,
-      });
-    }
-  });
-  return frames;
-}
-
-/** The YAML file, the tables and the images, each file once, in the order in which they are named. */
+/** The YAML file, the tables, the log and the images, each file once, in the order in which they are named. */
 async function hashAll(
   yamlPath: string,
   folder: string,
   yaml: Buffer,
   written: readonly WrittenSeries[],
+  thermometry: Thermometry | null,
   frames: readonly FrameInfo[],
 ): Promise<SourceFile[]> {
   const out = new Map<string, SourceFile>([[yamlPath, sourceOf(yamlPath, folder, yaml)]]);
   for (const s of written) if (s.table !== null) out.set(s.table.path, sourceOf(s.table.path, folder, s.table.bytes));
-  for (const frame of frames) {
-    for (const channel of CHANNELS) {
-      const file = frame.sources[channel]?.file;
-      if (file !== undefined && !out.has(file)) out.set(file, await hashFile(file, shownPath(folder, file)));
-    }
+  if (thermometry !== null && !out.has(thermometry.path)) out.set(thermometry.path, await hashLog(thermometry, folder));
+  for (const file of imageFiles(frames)) {
+    if (!out.has(file)) out.set(file, await hashFile(file, shownPath(folder, file)));
   }
   return [...out.values()];
 }

@@ -5,22 +5,68 @@ const name = z.string().trim().min(1).max(200);
 const path = z.string().min(1).max(4096);
 export const kelvin = z.number().positive().max(1000);
 
+/** The images that a frame can have, by their name in `stacks` and in the head of a frames table. */
+export const IMAGE_KEYS = [
+  "topography",
+  "amplitude",
+  "phase",
+  "signal",
+  "real",
+  "imaginary",
+  "topography_retrace",
+  "amplitude_retrace",
+  "phase_retrace",
+] as const;
+export type ImageKey = (typeof IMAGE_KEYS)[number];
+
 const lengthUnit = z.enum(["nm", "um", "m", "V"]);
 
 export const seriesSchema = z.strictObject({
   branch: z.enum(["cooling", "warming"]),
-  stacks: z.strictObject({ topography: path.optional(), amplitude: path, phase: path.optional() }).optional(),
+  stacks: z
+    .strictObject({
+      topography: path.optional(),
+      amplitude: path.optional(),
+      phase: path.optional(),
+      signal: path.optional(),
+      real: path.optional(),
+      imaginary: path.optional(),
+      topography_retrace: path.optional(),
+      amplitude_retrace: path.optional(),
+      phase_retrace: path.optional(),
+    } satisfies Record<ImageKey, unknown>)
+    .optional(),
   temperatures_K: z.array(kelvin).min(1).optional(),
   frames: path.optional(),
 });
 export type SeriesEntry = z.infer<typeof seriesSchema>;
+
+export const thermometrySchema = z.strictObject({
+  log: path,
+  time: z.string().min(1).max(200),
+  temperature: z.string().min(1).max(200),
+  unit: z.enum(["K", "C"]),
+  lag_s: z.number().nonnegative().max(86_400).optional(),
+  time_zone: z.string().min(1).max(60).optional(),
+});
+export type ThermometryEntry = z.infer<typeof thermometrySchema>;
+
+const length = z.number().finite();
+export const excludeSchema = z.array(
+  z.strictObject({
+    frame: z.number().int().nonnegative(),
+    region_nm: z.tuple([length, length, length, length]).optional(),
+    reason: z.string().trim().min(1).max(400),
+  }),
+);
+export type ExcludeEntry = z.infer<typeof excludeSchema>[number];
 
 /** `cooldown.yaml`, as far as types, ranges and spelling go; what depends on several keys at once is checked apart. */
 export const cooldownSchema = z.strictObject({
   sample: name,
   cooldown: name,
   region: name.optional(),
-  scan: z.strictObject({ pixel_size_nm: z.tuple([positive, positive]) }),
+  scan: z.strictObject({ pixel_size_nm: z.tuple([positive, positive]).optional() }).optional(),
   tip: z.strictObject({ resolution_nm: positive, resolution_sd_nm: z.number().nonnegative().optional() }).optional(),
   light: z
     .strictObject({
@@ -33,11 +79,15 @@ export const cooldownSchema = z.strictObject({
   channels: z
     .strictObject({
       topography: z.strictObject({ unit: lengthUnit.optional(), nm_per_unit: z.number().optional() }).optional(),
-      amplitude: z.strictObject({ unit: z.string().max(40).optional() }).optional(),
+      amplitude: z
+        .strictObject({ unit: z.string().max(40).optional(), harmonic: z.number().int().min(1).max(20).optional() })
+        .optional(),
       phase: z.strictObject({ unit: z.enum(["rad", "deg"]).optional() }).optional(),
     })
     .optional(),
+  thermometry: thermometrySchema.optional(),
   series: z.array(seriesSchema).min(1),
+  exclude: excludeSchema.optional(),
 });
 export type CooldownEntry = z.infer<typeof cooldownSchema>;
 export type ChannelsEntry = NonNullable<CooldownEntry["channels"]>;
@@ -50,7 +100,7 @@ interface KeyWords {
 }
 
 const fileWords: KeyWords = {
-  expected: "the name of a .tif or .npy file",
+  expected: "the name of an image file",
   fix: "give the file's name relative to the YAML file",
 };
 
@@ -100,8 +150,31 @@ export const keyWords: Readonly<Record<string, KeyWords>> = {
   "channels.topography.nm_per_unit": { expected: "a number, not 0", fix: "give the nm of one volt" },
   "channels.amplitude": { expected: "a map, with unit if you like", fix: "write `amplitude: {}`" },
   "channels.amplitude.unit": { expected: "text of at most 40 letters", fix: "write for example `unit: mV`" },
+  "channels.amplitude.harmonic": {
+    expected: "the harmonic of the tip's frequency, a whole number from 1 to 20",
+    fix: "write for example `harmonic: 3`",
+  },
   "channels.phase": { expected: "a map with unit", fix: "write for example `phase: { unit: rad }`" },
   "channels.phase.unit": { expected: "rad or deg", fix: "convert the file to rad or deg" },
+  thermometry: {
+    expected: "a map with log, time, temperature and unit",
+    fix: "name the log's file and two of its columns, or leave `thermometry` out",
+  },
+  "thermometry.log": { expected: "the name of a file with a column a quantity", fix: "give the log's file name" },
+  "thermometry.time": { expected: "the name of a column", fix: "give the head of the column with the times" },
+  "thermometry.temperature": {
+    expected: "the name of a column",
+    fix: "give the head of the column of the sensor next to the sample",
+  },
+  "thermometry.unit": { expected: "K or C", fix: "write `unit: K` or `unit: C`" },
+  "thermometry.lag_s": {
+    expected: "the seconds that the sample lags behind the sensor, 0 or more",
+    fix: "give the measured time constant, or leave it out",
+  },
+  "thermometry.time_zone": {
+    expected: "an offset such as +02:00, or the name of a zone",
+    fix: 'write for example `time_zone: "+02:00"` or `time_zone: Europe/Paris`',
+  },
   series: {
     expected: "a list with at least one series",
     fix: "add a series: branch, stacks and temperatures_K, or frames",
@@ -112,9 +185,7 @@ export const keyWords: Readonly<Record<string, KeyWords>> = {
   },
   "series[].branch": { expected: "cooling or warming", fix: "give the direction of temperature of this series" },
   "series[].stacks": { expected: "a map: one file a channel, amplitude at least", fix: "add `amplitude: FILE`" },
-  "series[].stacks.topography": fileWords,
-  "series[].stacks.amplitude": { ...fileWords, fix: "the amplitude is required: give its file" },
-  "series[].stacks.phase": fileWords,
+  ...Object.fromEntries(IMAGE_KEYS.map((key) => [`series[].stacks.${key}`, fileWords])),
   "series[].temperatures_K": {
     expected: "a list of temperatures, one a page",
     fix: "write for example `temperatures_K: [180, 175, 170]`",
@@ -124,4 +195,19 @@ export const keyWords: Readonly<Record<string, KeyWords>> = {
     fix: "give it in kelvin (0 °C is 273.15 K)",
   },
   "series[].frames": { expected: "the name of a .csv file", fix: "give the file's name relative to the YAML file" },
+  exclude: { expected: "a list of what to leave out", fix: "write `- { frame: 12, reason: tip changed }`" },
+  "exclude[]": {
+    expected: "a map with frame and reason, and region_nm for a part of the frame",
+    fix: "write `- { frame: 12, reason: tip changed }`",
+  },
+  "exclude[].frame": {
+    expected: "the number of a frame, from 0 in the order of this file",
+    fix: "`coldseam check` prints the frames of each series",
+  },
+  "exclude[].region_nm": {
+    expected: "four numbers: left, top, right, bottom, in nm from the frame's first pixel",
+    fix: "write for example `region_nm: [0, 0, 500, 300]`",
+  },
+  "exclude[].region_nm[]": { expected: "a number of nm", fix: "write for example `region_nm: [0, 0, 500, 300]`" },
+  "exclude[].reason": { expected: "why, as text", fix: "say why: it is stored with the result" },
 };

@@ -35,15 +35,26 @@ export function schemaProblems(issues: readonly z.core.$ZodIssue[], doc: YamlDoc
   return [...wrong, ...unknown];
 }
 
-function wrongValue(path: readonly Step[], value: unknown, doc: YamlDocument): Problem {
+/** A value that is missing or wrong, in words. */
+export function wrongValue(path: readonly Step[], value: unknown, doc: YamlDocument): Problem {
   const words = keyWords[pattern(path)];
   const name = path.length === 0 ? "the file" : pathText(path);
   const fix = words?.fix ?? "see the description of cooldown.yaml in the README";
+  if ((value === null || value === undefined) && doc.isLeftToFill(path)) {
+    return { at: doc.at(path), problem: `${name} is left to fill in; expected ${words?.expected ?? "a value"}`, fix };
+  }
   return {
     at: doc.at(path),
     problem: `${name} is ${foundText(value)}; expected ${words?.expected ?? "a map with sample, cooldown, scan and series"}`,
     fix: value === undefined ? (words?.add ?? fix) : fix,
   };
+}
+
+/** Whether the map at `path` has a key that does not exist and that `key` was probably meant by. */
+export function isMisspelt(doc: YamlDocument, path: readonly Step[], key: string): boolean {
+  const map = valueAt(doc.value, path);
+  const known = keysBelow(path);
+  return isRecord(map) && Object.keys(map).some((k) => !known.includes(k) && closestWord(k, known) === key);
 }
 
 /** `series[0].temperatures_K[2]` */

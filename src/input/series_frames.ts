@@ -1,42 +1,55 @@
 import { readFileSync, statSync } from "node:fs";
-import { CHANNELS, type ChannelName } from "../model/cooldown.js";
 import type { Problem } from "../model/errors.js";
 import { countOf, plainText } from "../model/text.js";
 import { parseFramesTable } from "./frames_table.js";
 import { systemWords } from "./image_file.js";
-import type { SeriesEntry } from "./schema.js";
-import { locate, splitPage } from "./source_path.js";
+import { IMAGE_KEYS, type ImageKey, type SeriesEntry } from "./schema.js";
+import { signalProblem } from "./signal_form.js";
+import { locate, splitPath, withPage } from "./source_path.js";
 import type { Step, YamlDocument } from "./yaml_document.js";
 
-/** One channel of one frame as written; `page` null where the file itself must say (a stack of one). */
+/** One image of one frame as written; `page` null where the file itself must say (a stack of one). */
 export interface WrittenSource {
   /** Absolute path. */
   readonly path: string;
   readonly written: string;
+  readonly dataset: string | null;
   readonly page: number | null;
+  readonly sample: number | null;
   /** Where it was written, for messages. */
   readonly at: string;
 }
 
 /** A frame before its images are looked at. */
 export interface WrittenFrame {
-  readonly temperatureK: number;
-  readonly sources: Partial<Record<ChannelName, WrittenSource>>;
+  /** null where the log of the thermometer has to say it. */
+  readonly temperatureK: number | null;
+  readonly sources: Partial<Record<ImageKey, WrittenSource>>;
+  /** Where the frame stands, for messages. */
+  readonly at: string;
   readonly startedAt: string | null;
   readonly endedAt: string | null;
   readonly stageXNm: number | null;
   readonly stageYNm: number | null;
 }
 
-/** A stack that must hold one page a temperature. */
+/** A stack, which must hold one page a temperature. */
 export interface WrittenStack extends WrittenSource {
-  readonly channel: ChannelName;
-  readonly temperatures: number;
+  readonly image: ImageKey;
+}
+
+export interface WrittenStacks {
+  readonly stacks: readonly WrittenStack[];
+  /** null where they are left out: the file itself may say them. */
+  readonly temperaturesK: readonly number[] | null;
+  /** Where the series stands, for messages. */
+  readonly at: string;
 }
 
 export interface WrittenSeries {
+  /** Of a table; those of stacks are made when the pages are known. */
   readonly frames: readonly WrittenFrame[];
-  readonly stacks: readonly WrittenStack[];
+  readonly stacks: WrittenStacks | null;
   /** Absolute path and content of the frames table. */
   readonly table: { readonly path: string; readonly bytes: Buffer } | null;
 }
@@ -47,6 +60,8 @@ export interface SeriesContext {
   readonly folder: string;
   readonly allowOutside: boolean;
   readonly problems: Problem[];
+  /** Temperatures come from a log. */
+  readonly fromLog: boolean;
 }
 
 const MAX_TABLE_BYTES = 16 * 1024 * 1024;
@@ -54,7 +69,7 @@ const MAX_TABLE_BYTES = 16 * 1024 * 1024;
 /** The frames of one series, from its stacks or its table. Problems are appended to `context.problems`. */
 export function writtenSeries(entry: SeriesEntry, path: readonly Step[], context: SeriesContext): WrittenSeries {
   const { doc, problems } = context;
-  const none: WrittenSeries = { frames: [], stacks: [], table: null };
+  const none: WrittenSeries = { frames: [], stacks: null, table: null };
   if ((entry.stacks === undefined) === (entry.frames === undefined)) {
     const both = entry.stacks !== undefined;
     problems.push({
@@ -82,46 +97,54 @@ function stackSeries(
   context: SeriesContext,
 ): WrittenSeries {
   const { doc, problems } = context;
-  if (temperatures === undefined) {
+  const wrong = signalProblem(stacks);
+  const at = doc.at([...path, "stacks"]);
+  if (wrong === "none") {
+    const name = `${path.map((s) => (typeof s === "number" ? `[${s}]` : s)).join("")}.stacks.amplitude`;
     problems.push({
-      at: doc.at(path),
-      problem: "stacks without temperatures_K",
-      fix: "add `temperatures_K: [ … ]`, one temperature a page",
+      at,
+      problem: `${name} is missing; expected the name of an image file`,
+      fix: "the amplitude is required: give its file (or `signal`, or `real` and `imaginary`)",
     });
-  }
+  } else if (wrong !== null) problems.push({ at, ...wrong });
   const found: WrittenStack[] = [];
-  for (const channel of CHANNELS) {
-    const written = stacks[channel];
+  for (const image of IMAGE_KEYS) {
+    const written = stacks[image];
     if (written === undefined) continue;
-    const at = doc.at([...path, "stacks", channel]);
-    const { page } = splitPage(written);
+    const at = doc.at([...path, "stacks", image]);
+    const { file, dataset, page, sample } = splitPath(written);
     if (page !== null) {
       problems.push({
         at,
         problem: `"${plainText(written)}" names one page; a stack gives all of its pages`,
-        fix: `write "${plainText(splitPage(written).file)}", or use a frames table`,
+        fix: `write "${plainText(withPage(written, null))}", or use a frames table`,
       });
       continue;
     }
-    const place = locate(context.folder, written, context.allowOutside);
+    const place = locate(context.folder, file, context.allowOutside);
     if ("refused" in place) {
-      problems.push({ at, problem: `${channel} is ${place.refused}: "${plainText(written)}"`, fix: place.fix });
+      problems.push({ at, problem: `${image} is ${place.refused}: "${plainText(written)}"`, fix: place.fix });
       continue;
     }
-    // Without temperatures the file itself is still looked at, so that all its problems are told at once.
-    found.push({ channel, path: place.path, written, page: null, at, temperatures: temperatures?.length ?? -1 });
+    found.push({ image, path: place.path, written, dataset, page: null, sample, at });
   }
-  const frames = (temperatures ?? []).map((temperatureK, page): WrittenFrame => {
-    const sources: Partial<Record<ChannelName, WrittenSource>> = {};
-    for (const s of found) sources[s.channel] = { path: s.path, written: `${s.written}#${page}`, page, at: s.at };
-    return { temperatureK, sources, startedAt: null, endedAt: null, stageXNm: null, stageYNm: null };
+  const stacked = { stacks: found, temperaturesK: temperatures ?? null, at: doc.at(path) };
+  return { frames: [], stacks: stacked, table: null };
+}
+
+/** One frame a temperature, from the pages of the stacks in their order. */
+export function framesOfStacks(s: WrittenStacks, temperaturesK: readonly number[]): WrittenFrame[] {
+  return temperaturesK.map((temperatureK, page): WrittenFrame => {
+    const sources: Partial<Record<ImageKey, WrittenSource>> = {};
+    for (const stack of s.stacks) sources[stack.image] = { ...stack, written: withPage(stack.written, page), page };
+    const none = { startedAt: null, endedAt: null, stageXNm: null, stageYNm: null };
+    return { temperatureK, sources, at: s.at, ...none };
   });
-  return { frames, stacks: found, table: null };
 }
 
 function tableSeries(written: string, path: readonly Step[], context: SeriesContext): WrittenSeries {
   const { doc, problems, folder, allowOutside } = context;
-  const none: WrittenSeries = { frames: [], stacks: [], table: null };
+  const none: WrittenSeries = { frames: [], stacks: null, table: null };
   const at = doc.at([...path, "frames"]);
   const place = locate(folder, written, allowOutside);
   if ("refused" in place) {
@@ -137,21 +160,21 @@ function tableSeries(written: string, path: readonly Step[], context: SeriesCont
     return none;
   }
   const before = problems.length;
-  const rows = parseFramesTable(bytes.toString("utf8"), name, problems);
+  const rows = parseFramesTable(bytes.toString("utf8"), name, problems, context.fromLog);
   const frames = rows.map((row): WrittenFrame => {
-    const sources: Partial<Record<ChannelName, WrittenSource>> = {};
-    for (const channel of CHANNELS) {
-      const cell = row.paths[channel];
+    const sources: Partial<Record<ImageKey, WrittenSource>> = {};
+    const line = `${name}:${row.line}`;
+    for (const image of IMAGE_KEYS) {
+      const cell = row.paths[image];
       if (cell === undefined) continue;
-      const { file, page } = splitPage(cell);
+      const { file, dataset, page, sample } = splitPath(cell);
       const where = locate(folder, file, allowOutside);
-      const line = `${name}:${row.line}`;
       if ("refused" in where) {
-        problems.push({ at: line, problem: `${channel} is ${where.refused}: "${plainText(cell)}"`, fix: where.fix });
-      } else sources[channel] = { path: where.path, written: cell, page, at: line };
+        problems.push({ at: line, problem: `${image} is ${where.refused}: "${plainText(cell)}"`, fix: where.fix });
+      } else sources[image] = { path: where.path, written: cell, dataset, page, sample, at: line };
     }
     const { temperatureK, startedAt, endedAt, stageXNm, stageYNm } = row;
-    return { temperatureK, sources, startedAt, endedAt, stageXNm, stageYNm };
+    return { temperatureK, sources, at: line, startedAt, endedAt, stageXNm, stageYNm };
   });
   const most = 60;
   if (problems.length - before > most) {
@@ -159,7 +182,7 @@ function tableSeries(written: string, path: readonly Step[], context: SeriesCont
     problems.length = before + most;
     problems.push({ at: name, problem: `and ${countOf(dropped, "problem")} more`, fix: "mend the first ones first" });
   }
-  return { frames, stacks: [], table: { path: place.path, bytes } };
+  return { frames, stacks: null, table: { path: place.path, bytes } };
 }
 
 /** A small text file. Throws where it is missing, not a regular file, or larger than `most` bytes. */

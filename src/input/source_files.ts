@@ -1,7 +1,7 @@
 import { createHash } from "node:crypto";
 import { createReadStream } from "node:fs";
 import { finished } from "node:stream/promises";
-import type { SourceFile } from "../model/cooldown.js";
+import type { FrameInfo, SourceFile } from "../model/cooldown.js";
 import { InputError } from "../model/errors.js";
 import { plainText } from "../model/text.js";
 import { systemWords } from "./image_file.js";
@@ -27,4 +27,16 @@ export async function hashFile(path: string, shown: string): Promise<SourceFile>
 export function sourceOf(path: string, folder: string, content: Buffer): SourceFile {
   const sha256 = createHash("sha256").update(content).digest("hex");
   return { path: shownPath(folder, path), sha256, bytes: content.length };
+}
+
+/** Every image file of the frames, once each, in the order in which they are named. */
+export function imageFiles(frames: readonly FrameInfo[]): string[] {
+  const files = new Set<string>();
+  for (const frame of frames) {
+    for (const channel of ["topography", "amplitude", "phase"] as const) {
+      const s = frame.sources[channel];
+      for (const place of [s, s?.imaginary, s?.retrace]) if (place !== undefined) files.add(place.file);
+    }
+  }
+  return [...files];
 }

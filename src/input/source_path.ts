@@ -1,16 +1,32 @@
 import { realpathSync } from "node:fs";
 import { isAbsolute, relative, resolve, sep } from "node:path";
 
-/** A path as written in the YAML file or a table: the file, and the page where one is named (`stack.tif#3`). */
+/** A path as written in the YAML file or a table: `stack.tif`, `stack.tif#3`, `stack.tif#3:1`, `run.h5:/entry/data/amplitude#3`. */
 export interface WrittenPath {
   readonly file: string;
+  /** Path inside an HDF5 file, from its root; null: none named. */
+  readonly dataset: string | null;
   /** null: no page named. */
   readonly page: number | null;
+  /** Which of several values a pixel; null: none named. `#:1` names a sample of all pages. */
+  readonly sample: number | null;
 }
 
-export function splitPage(written: string): WrittenPath {
-  const m = /^(.+)#(\d{1,6})$/.exec(written);
-  return m === null ? { file: written, page: null } : { file: m[1], page: Number(m[2]) };
+/** The parts of a written path. A colon before a slash begins a dataset, but for a drive letter. */
+export function splitPath(written: string): WrittenPath {
+  const m = /^(.+)#(?=[\d:])(\d{1,6})?(?::(\d{1,3}))?$/s.exec(written);
+  const place = m?.[1] ?? written;
+  const d = /^(.{2,}?):(\/.*)$/s.exec(place);
+  const number = (text: string | undefined): number | null => (text === undefined ? null : Number(text));
+  return { file: d?.[1] ?? place, dataset: d?.[2] ?? null, page: number(m?.[2]), sample: number(m?.[3]) };
+}
+
+/** The same path with another page, `null` for none. */
+export function withPage(written: string, page: number | null): string {
+  const { file, dataset, sample } = splitPath(written);
+  const place = dataset === null ? file : `${file}:${dataset}`;
+  if (page === null && sample === null) return place;
+  return `${place}#${page ?? ""}${sample === null ? "" : `:${sample}`}`;
 }
 
 /** Where a written path leads, or why it must not be followed. */

@@ -1,4 +1,4 @@
-import { inflateSync } from "node:zlib";
+import * as zlib from "node:zlib";
 import { ImageFileError } from "./byte_file.js";
 
 const DAMAGED = "the file is damaged: copy it again, or save it uncompressed";
@@ -13,6 +13,7 @@ export function decompress(data: Uint8Array, compression: number, least: number,
   if (compression === 1) out = data.length > most ? data.subarray(0, most) : data;
   else if (compression === 5) out = unpackLzw(data, most);
   else if (compression === 32773) out = unpackBits(data, most);
+  else if (compression === ZSTD) out = unpackZstd(data, most);
   else out = inflate(data, most);
   if (out.length < least) {
     throw new ImageFileError(`a strip or tile unpacks to ${out.length} bytes; expected ${least}`, DAMAGED);
@@ -20,9 +21,26 @@ export function decompress(data: Uint8Array, compression: number, least: number,
   return out;
 }
 
+export const ZSTD = 50000;
+type Unpack = (data: Uint8Array, options: { readonly maxOutputLength: number }) => Uint8Array;
+const isUnpack = (v: unknown): v is Unpack => typeof v === "function";
+/** Node's own from 22.15 on; older ones have none. */
+const zstd: unknown = Reflect.get(zlib, "zstdDecompressSync");
+export const canUnpackZstd = isUnpack(zstd);
+
+function unpackZstd(data: Uint8Array, most: number): Uint8Array {
+  if (!isUnpack(zstd)) throw new ImageFileError("ZSTD data, which this Node.js cannot unpack", "save it uncompressed");
+  try {
+    return zstd(data, { maxOutputLength: most });
+  } catch (e) {
+    const words = e instanceof Error ? e.message : String(e);
+    throw new ImageFileError(`its ZSTD data cannot be unpacked (${words})`, DAMAGED, null, e);
+  }
+}
+
 function inflate(data: Uint8Array, most: number): Uint8Array {
   try {
-    return inflateSync(data, { maxOutputLength: most });
+    return zlib.inflateSync(data, { maxOutputLength: most });
   } catch (e) {
     throw new ImageFileError(
       `its deflate data cannot be unpacked (${e instanceof Error ? e.message : String(e)})`,
@@ -118,7 +136,8 @@ function unpackBits(data: Uint8Array, most: number): Uint8Array {
 
 /**
  * Undoes TIFF's predictors in place: 2 stores differences along a row, 3 differences of the bytes of floats sorted by significance.
- * @param rows rows of `cols` values that lie whole in `data`
+ * @param rows    rows of `cols` values that lie whole in `data`
+ * @param samples values a pixel; differences are between values of the same kind
  * @returns whether the values are now big-endian whatever the file's byte order (predictor 3 stores them so)
  * Source: TIFF Revision 6.0, section 14; Adobe Photoshop TIFF Technical Note 3 (2005) for predictor 3.
  */
@@ -129,17 +148,18 @@ export function unpredict(
   cols: number,
   bytes: number,
   littleEndian: boolean,
+  samples = 1,
 ): boolean {
   if (predictor === 1) return !littleEndian;
   const rowBytes = cols * bytes;
   if (predictor === 2) {
-    for (let i = 0; i < rows; i++) addAlong(data, i * rowBytes, cols, bytes, littleEndian);
+    for (let i = 0; i < rows; i++) addAlong(data, i * rowBytes, cols, bytes, littleEndian, samples);
     return !littleEndian;
   }
   const sorted = new Uint8Array(rowBytes);
   for (let i = 0; i < rows; i++) {
     const row = data.subarray(i * rowBytes, (i + 1) * rowBytes);
-    for (let k = 1; k < rowBytes; k++) row[k] = row[k] + row[k - 1];
+    for (let k = samples; k < rowBytes; k++) row[k] = row[k] + row[k - samples];
     for (let j = 0; j < cols; j++) for (let b = 0; b < bytes; b++) sorted[j * bytes + b] = row[b * cols + j];
     row.set(sorted);
   }
@@ -147,14 +167,22 @@ export function unpredict(
 }
 
 /** Running sums modulo 2^(8·bytes) along one row, in the file's byte order, a byte at a time with the carry. */
-function addAlong(data: Uint8Array, start: number, cols: number, bytes: number, littleEndian: boolean): void {
+function addAlong(
+  data: Uint8Array,
+  start: number,
+  cols: number,
+  bytes: number,
+  littleEndian: boolean,
+  samples: number,
+): void {
   const first = littleEndian ? 0 : bytes - 1;
   const step = littleEndian ? 1 : -1;
-  for (let j = 1; j < cols; j++) {
+  const back = bytes * samples;
+  for (let j = samples; j < cols; j++) {
     const at = start + j * bytes + first;
     let carry = 0;
     for (let b = 0, k = at; b < bytes; b++, k += step) {
-      const s = data[k] + data[k - bytes] + carry;
+      const s = data[k] + data[k - back] + carry;
       data[k] = s;
       carry = s >> 8;
     }

@@ -15,6 +15,8 @@ export interface YamlDocument {
   at(path: readonly Step[]): string;
   /** `file:line:column` of the key `key` in the map at `path`. */
   atKey(path: readonly Step[], key: string): string;
+  /** Whether the line of the value at `path` has a comment that asks for it to be filled in, as a draft has. */
+  isLeftToFill(path: readonly Step[]): boolean;
 }
 
 /** A longer description of one cooldown is not the user's own; it costs memory before it can be checked. */
@@ -61,6 +63,10 @@ export function parseYaml(text: string, name: string): YamlDocument {
   return {
     value,
     at: (path) => place(startOf(doc, path)),
+    isLeftToFill(path) {
+      const { line } = lines.linePos(startOf(doc, path));
+      return /#\s*FILL\b/.test(text.split("\n", line)[line - 1] ?? "");
+    },
     atKey(path, key) {
       const map = nodeAt(doc, path);
       const pair = isMap(map) ? map.items.find((p) => String(keyOf(p)) === key) : undefined;

@@ -37,7 +37,7 @@ export interface CleanOutput {
 /** Load one frame, clean it, keep the clean rasters and the registration image in the scratch folder. */
 async function clean(input: CleanInput): Promise<CleanOutput> {
   const raw = await loadFrame(input.cooldown, input.info);
-  const notices = inspectFrame(raw);
+  const notices = inspectFrame(raw, input.info);
   const { clean: frame, report } = cleanFrame(raw, input.settings.clean);
   keepClean(input.scratch, frame);
   keep(input.scratch, `drift-${frame.frame}`, prepareForDrift(frame, input.settings.drift));

@@ -131,7 +131,7 @@ test("stacks written by the demo's own writer come back to the bit", async () =>
 describe("what is not an image of measured values is refused with words", () => {
   test.each([
     ["colour.tif", /3 samples a pixel/, /measured values/],
-    ["npy-complex.npy", /type "<c8"/, /amplitude and phase/],
+    ["npy-complex.npy", /complex numbers/, /`signal`: it gives amplitude and phase/],
     ["npy-record.npy", /type record/, /float32/],
     ["npy-object.npy", /type "\|O"/, /float32/],
     ["npy-line.npy", /shape \(16\)/, /shapes/],

@@ -212,7 +212,7 @@ series:
     );
     const found = (await problemsOf(readCooldown(file))).map((p) => p.replaceAll(file, "F"));
     expect(found).toEqual([
-      'F:1:1: no key "sampel"; did you mean "sample"? | the keys here are sample, cooldown, region, scan, tip, light, film, channels, series',
+      'F:1:1: no key "sampel"; did you mean "sample"? | the keys here are sample, cooldown, region, scan, tip, light, film, channels, thermometry, series, exclude',
       "F:2:11: cooldown is 14; expected the cooldown's own name, as text | write it in quotes if it is a number",
       "F:4:23: scan.pixel_size_nm[1] is -10; expected a number of nm above 0 | write for example `pixel_size_nm: [10, 10]`",
       'F:6:3: no key "resolution" in tip; did you mean "resolution_nm"? | the keys here are resolution_nm, resolution_sd_nm',
@@ -316,7 +316,8 @@ c: &c [*b, *b, *b, *b, *b, *b, *b, *b, *b, *b]\nd: &d [*c, *c, *c, *c, *c, *c, *
     const whole = readFileSync(file);
     folder.text("wa.tif", "");
     expect(await problemsOf(readCooldown(yaml(STACKS)))).toEqual([
-      'ct.tif: text that begins with "not an i"; TIFF and .npy are read | save it as 32-bit float TIFF or as .npy',
+      'ct.tif: text that begins with "not an image", not a matrix of numbers; TIFF, .npy, HDF5 and text matrices are read | ' +
+        "save it as 32-bit float TIFF or as .npy; begin lines above a matrix with #",
       "wa.tif: the file is empty | copy it again from where it was measured",
       "cp.tif#0: 5 × 5 pixels (and 2 pages more of this file); ca.tif#0 has 5 × 6 | " +
         "all images of a cooldown need one size (columns × rows): crop them alike, or leave this channel or frame out",

@@ -1,0 +1,68 @@
+import type { Problem } from "../model/errors.js";
+import type { PixelSize } from "../model/raster.js";
+import { plainText } from "../model/text.js";
+import { ImageFileError } from "./byte_file.js";
+import { withImage } from "./image_file.js";
+import type { OpenImage } from "./image_types.js";
+import type { WrittenSource } from "./series_frames.js";
+import { withPage } from "./source_path.js";
+
+export type Headers = Pick<OpenImage, "format" | "pages" | "claims">;
+type Place = Pick<WrittenSource, "path" | "dataset" | "written">;
+
+/** What the headers of a cooldown's files say; each is read once, and complained of once. */
+export class HeaderBook {
+  readonly #known = new Map<string, Headers | { readonly error: Problem }>();
+  readonly #complained = new Set<string>();
+  readonly #problems: Problem[];
+  /** Pixel sizes that files claim, by the name of the first one with each. */
+  readonly pixelClaims: { readonly label: string; readonly pixel: PixelSize }[] = [];
+
+  constructor(problems: Problem[]) {
+    this.#problems = problems;
+  }
+
+  /** null where the file cannot be used, which stands among the problems then. */
+  async of(s: Place): Promise<Headers | null> {
+    const key = placeKey(s);
+    let h = this.#known.get(key);
+    if (h === undefined) {
+      h = await readHeaders(s);
+      this.#known.set(key, h);
+      if (!("error" in h)) this.#claim(withPage(s.written, null), h.claims.pixel);
+    }
+    if (!("error" in h)) return h;
+    if (!this.#complained.has(key)) this.#problems.push(h.error);
+    this.#complained.add(key);
+    return null;
+  }
+
+  #claim(label: string, pixel: PixelSize | null): void {
+    if (pixel === null) return;
+    if (this.pixelClaims.some((c) => samePixel(c.pixel, pixel))) return;
+    this.pixelClaims.push({ label, pixel });
+  }
+}
+
+/** One file, or one dataset in it. */
+export const placeKey = (s: Pick<WrittenSource, "path" | "dataset">): string => `${s.path}\0${s.dataset ?? ""}`;
+
+/** Alike to a part in a thousand: sizes written with few digits. */
+export function samePixel(a: PixelSize, b: PixelSize): boolean {
+  const alike = (x: number, y: number): boolean => Math.abs(x - y) <= 1e-3 * Math.abs(y);
+  return alike(a.xNm, b.xNm) && alike(a.yNm, b.yNm);
+}
+
+async function readHeaders(s: Place): Promise<Headers | { readonly error: Problem }> {
+  try {
+    return await withImage(s.path, ({ format, pages, claims }) => ({ format, pages, claims }), s.dataset);
+  } catch (e) {
+    if (!(e instanceof ImageFileError)) throw e;
+    return { error: imageProblem(e, s.written) };
+  }
+}
+
+/** What is wrong with an image file, under the name the user gave it. */
+export function imageProblem(e: ImageFileError, written: string): Problem {
+  return { at: plainText(e.page === null ? written : withPage(written, e.page)), problem: e.message, fix: e.fix };
+}

@@ -1,0 +1,92 @@
+/** What comes of a trace and its retrace. */
+export interface Joined {
+  /** Noise of the average, one standard deviation a pixel; null where the two could not be averaged. */
+  readonly noiseSd: number | null;
+  /** What the user must be told; null where the two agree. */
+  readonly disagreement: string | null;
+}
+
+/** Pixels further apart than so many standard deviations of the difference do not show the same thing. */
+const OUTLIER_SD = 8;
+/** With more of them than this the two lines as a whole do not belong together. */
+const MOST_OUTLIERS = 0.05;
+/** With less likeness than this they do not show the same place. */
+const LEAST_CORRELATION = 0.2;
+/** Normal distribution: standard deviation over median absolute deviation, 1/Φ⁻¹(3/4). */
+const SD_PER_MAD = 1.482602218505602;
+
+/**
+ * Averages a retrace into its trace, in place, where the two agree; a pixel where they do not becomes NaN, and so does one that either
+ * lacks. Their difference d, less its median, holds the noise of both and nothing of the sample: sd(d) = √2 σ of one scan, 2 σ of
+ * the average. sd(d) is taken from the median absolute deviation, which walls that are shifted a little between the two do not move.
+ * Where as a whole they do not agree (too many pixels apart, or no likeness), the trace stays as it is.
+ * @param trace   the values, overwritten with the average
+ * @param angle   values are angles in rad: differences are taken around the circle
+ */
+export function joinRetrace(trace: Float32Array, retrace: Float32Array, angle: boolean): Joined {
+  const turn = 2 * Math.PI;
+  const difference = (k: number): number => {
+    const d = trace[k] - retrace[k];
+    return angle ? d - turn * Math.round(d / turn) : d;
+  };
+  const all = new Float64Array(trace.length);
+  let n = 0;
+  for (let k = 0; k < trace.length; k++) {
+    const d = difference(k);
+    if (Number.isFinite(d)) all[n++] = d;
+  }
+  const d = all.subarray(0, n);
+  if (n < 16) return { noiseSd: null, disagreement: "trace and retrace have hardly a pixel in common: trace alone" };
+  const middle = medianOf(d.slice());
+  const sd = SD_PER_MAD * medianOf(d.map((v) => Math.abs(v - middle)));
+  const reach = OUTLIER_SD * sd;
+  const outliers = d.reduce((count, v) => count + (Math.abs(v - middle) > reach ? 1 : 0), 0);
+  const percent = ((100 * outliers) / n).toFixed(1);
+  if (sd > 0 && outliers > MOST_OUTLIERS * n) {
+    return { noiseSd: null, disagreement: `trace and retrace differ in ${percent} % of the pixels: trace alone` };
+  }
+  if (!angle) {
+    const r = correlation(trace, retrace);
+    if (r < LEAST_CORRELATION) {
+      return {
+        noiseSd: null,
+        disagreement: `trace and retrace do not look alike (correlation ${r.toFixed(2)}): trace alone`,
+      };
+    }
+  }
+  for (let k = 0; k < trace.length; k++) {
+    const here = difference(k);
+    // Also NaN where the difference is no number.
+    trace[k] = sd === 0 || Math.abs(here - middle) <= reach ? trace[k] - here / 2 : NaN;
+  }
+  const disagreement =
+    sd > 0 && outliers > 0 && outliers > 0.005 * n
+      ? `trace and retrace differ in ${percent} % of the pixels, which count as not measured`
+      : null;
+  return { noiseSd: sd / 2, disagreement };
+}
+
+function medianOf(values: Float64Array): number {
+  const sorted = values.sort();
+  return (sorted[(sorted.length - 1) >> 1] + sorted[sorted.length >> 1]) / 2;
+}
+
+function correlation(a: Float32Array, b: Float32Array): number {
+  let [n, sa, sb] = [0, 0, 0];
+  const sound = (k: number): boolean => Number.isFinite(a[k]) && Number.isFinite(b[k]);
+  for (let k = 0; k < a.length; k++) {
+    if (!sound(k)) continue;
+    n++;
+    sa += a[k];
+    sb += b[k];
+  }
+  let [aa, bb, ab] = [0, 0, 0];
+  for (let k = 0; k < a.length; k++) {
+    if (!sound(k)) continue;
+    const [u, v] = [a[k] - sa / n, b[k] - sb / n];
+    aa += u * u;
+    bb += v * v;
+    ab += u * v;
+  }
+  return aa > 0 && bb > 0 ? ab / Math.sqrt(aa * bb) : 1;
+}
