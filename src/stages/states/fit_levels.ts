@@ -7,7 +7,7 @@ import { QUANTILES, type LevelFit, type StateEstimate, type StateEvidence } from
 import { noiseCorrelation, noiseCovariance, pixelsPerIndependent, sdAlong } from "./noise.js";
 import { mainPixels } from "./one_state.js";
 import { correctPixels, noCorrection, readPixels, type Pixels, type RowCorrection } from "./pixels.js";
-import { levelsOf, purePixels, type PurePixels } from "./pure.js";
+import { amplitudesOf, levelsOf, purePixels, type PurePixels } from "./pure.js";
 import { refineRows, type RowRefinement } from "./refine_rows.js";
 import type { StatesSettings } from "./settings.js";
 import { differenceNoise, splitStates } from "./split.js";
@@ -107,7 +107,7 @@ function twoStates(
     if (pure.count[0] === 0 || pure.count[1] === 0) return null;
     levels = levelsOf(z, pure, null, Infinity);
     noise = [noiseCovariance(z, pure, 0, levels), noiseCovariance(z, pure, 1, levels)];
-    const clip2 = 16 * Math.max(noise[0].rr + noise[0].ii, noise[1].rr + noise[1].ii);
+    const clip2 = clip2Of(noise);
     levels = levelsOf(z, pure, levels, clip2);
     if (!Number.isFinite(levels[0].re) || !Number.isFinite(levels[1].re)) return null;
     if (s.refineRows && round > 0 && round < ROUNDS) {
@@ -132,7 +132,21 @@ function twoStates(
   if (pure === null || noise === null) return null;
   const evidence = judge(z, pure, levels, noise, split.deltaBic, eRe, eIm, s);
   if (!evidence.twoStates) return null;
+  if (raw.hasPhase) levels = amplitudesOf(z, pure, levels, acrossOf(levels, noise), clip2Of(noise));
   return assemble(frame, raw, z, pure, levels, noise, evidence, correction, rows, inflation);
+}
+
+/** Residuals beyond 4 sd of the noisier state are left out. */
+const clip2Of = (noise: readonly [NoiseCovariance, NoiseCovariance]): number =>
+  16 * Math.max(noise[0].rr + noise[0].ii, noise[1].rr + noise[1].ii);
+
+/** Variance of the noise across each level. */
+function acrossOf(levels: Levels, noise: readonly [NoiseCovariance, NoiseCovariance]): [number, number] {
+  const one = (k: 0 | 1): number => {
+    const m = Math.hypot(levels[k].re, levels[k].im) || 1;
+    return sdAlong(noise[k], -levels[k].im / m, levels[k].re / m) ** 2;
+  };
+  return [one(0), one(1)];
 }
 
 /** Share of state 1 in the smoothed signal, along the chord between the levels. */

@@ -15,7 +15,7 @@ import { clearIslands, fillState } from "./islands.js";
 import type { LevelFit } from "./level_fit.js";
 import { pixelsPerIndependent } from "./noise.js";
 import { correctPixels, readPixels, type Pixels } from "./pixels.js";
-import { projectionOf, type Projection } from "./projection.js";
+import { readShare, shareCurve, turnAtWalls, type ShareCurve } from "./share_curve.js";
 import type { StatesSettings } from "./settings.js";
 import { smoothShare } from "./smooth_share.js";
 
@@ -24,7 +24,7 @@ const LOST_BY_BLUR = 2;
 
 /** Signal, share of the metallic signal, domain map and metallic fraction of one frame.
  *
- *  The signal is the clean frame with the row corrections of `fit` taken off. The share is its projection (see `projectionOf`), noise
+ *  The signal is the clean frame with the row corrections of `fit` taken off. The share is read from it (see `shareCurve`), noise
  *  and all; the map is read from the share smoothed just enough to keep noise from making domains, its small islands cleared. The
  *  fraction is of the usable pixels; its interval is for this field of view (see `mixedFraction`). In a frame that holds one state it
  *  is exactly 0 or 1, and the other end of the interval is the largest domain that could have been missed.
@@ -62,19 +62,27 @@ export function mapStates(
   });
   if (levels.verdict === "undecided" || z.count === 0) return result({ ...levels, verdict: "undecided" }, null);
 
-  const e = projectionOf(levels.insulating, levels.metallic, levels.noiseInsulating, levels.noiseMetallic);
-  for (let p = 0; p < share.length; p++) {
-    if (z.usable[p] === 1) share[p] = (z.re[p] * e.eRe + z.im[p] * e.eIm - e.offset) * e.scale;
-  }
-  const noiseSd = Math.sqrt((e.sdInsulating ** 2 + e.sdMetallic ** 2) / 2);
+  const curve = shareCurve(
+    levels.insulating,
+    levels.metallic,
+    levels.noiseInsulating,
+    levels.noiseMetallic,
+    z.hasPhase ? null : s.assumedPhaseStepRad,
+  );
+  const noiseSd = curve.sdHalf;
   const perIndependent = pixelsPerIndependent(levels.noiseCorrelationX, levels.noiseCorrelationY);
   const smoothingNm = smoothingFor(noiseSd * Math.sqrt(perIndependent), z, tip, s);
+  share.set(readShare(z, curve, smoothingNm / pixel.xNm, smoothingNm / pixel.yNm));
   const u = smoothShare(share, z.usable, rows, cols, smoothingNm / pixel.xNm, smoothingNm / pixel.yNm);
+  const dip = dipAtWalls(z, u, levels, curve);
+  if (dip.value > 0) {
+    for (let p = 0; p < u.length; p++) if (u[p] > 0 && u[p] < 1) u[p] += 4 * dip.value * u[p] * (1 - u[p]);
+  }
   for (let p = 0; p < share.length; p++) {
     if (z.usable[p] === 1) map.states[p] = u[p] > 0.5 ? METALLIC : INSULATING;
   }
   const leastPx = leastDomainPx(z, tip, s);
-  const pixelsOff = (pixels: Int32Array, state: 0 | 1): boolean => onChord(pixels, state, z, share, levels, e);
+  const pixelsOff = (pixels: Int32Array, state: 0 | 1): boolean => onChord(pixels, state, z, share, levels, curve);
   const cleared = clearIslands(map.states, rows, cols, leastPx, pixelsOff);
   const [insulatingPx, metallicPx] = cleared.totalPx;
   const rarer = metallicPx < insulatingPx ? METALLIC : INSULATING;
@@ -85,7 +93,6 @@ export function mapStates(
     return result({ ...levels, verdict: state === METALLIC ? "metallic" : "insulating" }, oneStateFraction(state, z, leastPx, tip, s));
   }
   const sigmaNm = tip === null ? 0 : tip.resolutionNm / FWHM_PER_SIGMA;
-  const middle = 0.5;
   const fraction = mixedFraction({
     rows,
     cols,
@@ -97,14 +104,39 @@ export function mapStates(
     noiseSd,
     perIndependent,
     smoothingNm,
-    thresholdSd: levels.thresholdSd,
+    thresholdSd: Math.hypot(levels.thresholdSd, dip.sd, z.hasPhase ? 0 : curve.perStepRad * s.assumedPhaseStepSdRad),
     rowSd: fit.rowLogGainSd,
     rowWalkSd: fit.rowWalkSd,
     rowWhiteSd: fit.rowWhiteSd,
-    // a gain g moves the halfway signal v by g v: in units of u
-    perLogGain: Math.abs(e.offset * e.scale + middle),
+    perLogGain: curve.perLogGain,
   });
   return result({ ...levels, verdict: "mixed" }, fraction);
+}
+
+/** Loss of amplitude at a wall over the square of the turn seen there, and its standard deviation: ⅓ where the turn begins with a jump at
+ *  the wall, 1 where it grows from there (second order of exp(iθ) under the blur). */
+const DIP_PER_TURN2 = 0.8;
+const DIP_SD_PER_TURN2 = 0.5;
+const TURN_SIGMAS = 3;
+
+/** What a fringe takes off the share at the walls: phases that differ under the tip add up to less amplitude than they have. The turn is
+ *  measured at the walls; what the correction leaves is in its standard deviation. Along the chord a turn acts to first order, and
+ *  counts as uncertainty only. */
+function dipAtWalls(
+  z: Pixels,
+  u: Float32Array,
+  levels: FrameLevels,
+  curve: ShareCurve,
+): { readonly value: number; readonly sd: number } {
+  const turn = turnAtWalls(z, u, levels.insulating, levels.metallic);
+  if (turn === null || Math.abs(turn.meanRad) < TURN_SIGMAS * turn.sdRad) return { value: 0, sd: 0 };
+  if (curve.reads === "chord") {
+    const { insulating: a, metallic: b } = levels;
+    const cross = 0.5 * Math.abs((a.im + b.im) * (b.re - a.re) - (a.re + b.re) * (b.im - a.im));
+    return { value: 0, sd: (Math.abs(turn.meanRad) * cross) / ((b.re - a.re) ** 2 + (b.im - a.im) ** 2) };
+  }
+  const unit = turn.meanRad ** 2 * curve.perLogGain;
+  return { value: DIP_PER_TURN2 * unit, sd: DIP_SD_PER_TURN2 * unit };
 }
 
 /** Smoothing of the map in nm: enough that its noise is a small share of the contrast, within the limits of the settings. */
@@ -132,7 +164,7 @@ function onChord(
   z: Pixels,
   share: Float32Array,
   levels: FrameLevels,
-  e: Projection,
+  curve: ShareCurve,
 ): boolean {
   const { insulating, metallic } = levels;
   const dRe = metallic.re - insulating.re;
@@ -146,7 +178,7 @@ function onChord(
     u += share[p];
   }
   const off = Math.abs((im * dRe - re * dIm) / n / d2);
-  const noise = Math.max(e.sdInsulating, e.sdMetallic) / Math.sqrt(n);
+  const noise = Math.max(curve.sdInsulating, curve.sdMetallic) / Math.sqrt(n);
   const reach = state === METALLIC ? u / n : 1 - u / n;
   return (!z.hasPhase || off < OFF_CHORD + 3 * noise) && reach < BEYOND + 3 * noise;
 }

@@ -172,3 +172,35 @@ export function levelsOf(
     { re: (aa * br - ab * ar) / det, im: (aa * bi - ab * ai) / det },
   ];
 }
+
+/** The levels with their amplitudes taken from |z| instead of the mean of z: where a fringe still turns pixels of a state, their mean is
+ *  short by half the mean square of the turn, their amplitudes are not. Noise across the level (variance `across`) lengthens |z| by
+ *  across/(2|z|), which is taken off. */
+export function amplitudesOf(
+  z: Pixels,
+  pure: PurePixels,
+  levels: readonly [ComplexValue, ComplexValue],
+  across: readonly [number, number],
+  clip2: number,
+): [ComplexValue, ComplexValue] {
+  const seen = [0, 0];
+  const expected = [0, 0];
+  for (let p = 0; p < pure.state.length; p++) {
+    const k = pure.state[p];
+    if (k > 1) continue;
+    const u = pure.share[p];
+    const er = (1 - u) * levels[0].re + u * levels[1].re;
+    const ei = (1 - u) * levels[0].im + u * levels[1].im;
+    const dr = z.re[p] - er;
+    const di = z.im[p] - ei;
+    if (dr * dr + di * di > clip2) continue;
+    const m = Math.sqrt(er * er + ei * ei);
+    seen[k] += Math.sqrt(z.re[p] * z.re[p] + z.im[p] * z.im[p]) - across[k] / (2 * m);
+    expected[k] += m;
+  }
+  const scaled = (k: 0 | 1): ComplexValue => {
+    const g = expected[k] > 0 ? seen[k] / expected[k] : 1;
+    return { re: levels[k].re * g, im: levels[k].im * g };
+  };
+  return [scaled(0), scaled(1)];
+}

@@ -92,6 +92,20 @@ export const settings = {
     min: 0,
     max: 0.2,
   },
+  assumedPhaseStepRad: {
+    default: 0.5,
+    unit: "rad",
+    means: "step of the optical phase between the states where no phase was recorded: it bends the amplitude across a wall",
+    min: 0,
+    max: 1.5,
+  },
+  assumedPhaseStepSdRad: {
+    default: 0.25,
+    unit: "rad",
+    means: "standard deviation of that assumption; it widens the interval of the fraction",
+    min: 0,
+    max: 1.5,
+  },
 } as const satisfies SettingTable;
 
 export type StatesSettings = SettingValues<typeof settings>;
