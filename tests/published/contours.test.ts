@@ -40,7 +40,7 @@ test("noisy two-state map: points, lengths, openness and areas of every contour"
     expect(lines[k].closed).toBe(closed);
     // whole-number pixels are exact in single precision, so only rounding of the sums is left
     expect(Math.abs(lines[k].length / length - 1)).toBeLessThan(1e-9);
-    if (area !== null) expect(Math.abs((lines[k].area as number) / area - 1)).toBeLessThan(1e-9);
+    if (area !== null) expect(Math.abs((lines[k].area ?? Number.NaN) / area - 1)).toBeLessThan(1e-9);
   });
   const total = lines.reduce((s, l) => s + l.length, 0);
   expect(Math.abs(total / published.total_length_px - 1)).toBeLessThan(1e-9);

@@ -135,7 +135,7 @@ export class Projector {
   offChord(pixel: number, u: number, out: Float64Array): void {
     const { insulating: a, metallic: b, noiseInsulating, noiseMetallic } = this.levels;
     const re = this.signal.re[pixel];
-    const im = (this.signal.im as Float32Array)[pixel];
+    const im = this.signal.im === null ? 0 : this.signal.im[pixel];
     const variance =
       (1 - u) * varianceAlong(noiseInsulating, -this.ey, this.ex) + u * varianceAlong(noiseMetallic, -this.ey, this.ex);
     out[0] = -(re - a.re) * this.ey + (im - a.im) * this.ex;

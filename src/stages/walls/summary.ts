@@ -33,7 +33,7 @@ export function summariseWidths(
   if (tip === null || limits > count / 2) return { ...none, unresolvedShare };
 
   const order = Array.from({ length: count }, (_, k) => k).sort((a, b) => sortKey(sound[a]) - sortKey(sound[b]));
-  const value = Float64Array.from(order, (k) => sound[k].widthNm ?? (limitOf(sound[k]) as number));
+  const value = Float64Array.from(order, (k) => valueOf(sound[k]));
   const measured = Uint8Array.from(order, (k) => (sound[k].widthNm === null ? 0 : 1));
   const median = weightedMedian(value, measured, new Float64Array(count).fill(1));
   if (median === null) return { ...none, unresolvedShare };
@@ -72,9 +72,14 @@ function limitOf(p: WallProfile): number | null {
   return p.detectionLimitNm ?? p.widthUpper95Nm;
 }
 
+/** The width, or the limit that stands for it. */
+function valueOf(p: WallProfile): number {
+  return p.widthNm ?? limitOf(p) ?? Number.NaN;
+}
+
 /** Limits go just above a measured value of the same size: "below 20" comes after "20". */
 function sortKey(p: WallProfile): number {
-  return p.widthNm ?? (limitOf(p) as number) * (1 + 1e-12);
+  return p.widthNm ?? valueOf(p) * (1 + 1e-12);
 }
 
 /** Median of the left-censored product-limit estimate; values rising, weights ≥ 0. Null where the half lies among the limits below
@@ -136,7 +141,7 @@ function nearestSd(sound: readonly WallProfile[], median: number): number | null
   let best: WallProfile | null = null;
   for (const p of sound) {
     if (p.widthNm === null) continue;
-    if (best === null || Math.abs(p.widthNm - median) < Math.abs((best.widthNm as number) - median)) best = p;
+    if (best === null || Math.abs(p.widthNm - median) < Math.abs(valueOf(best) - median)) best = p;
   }
   return best?.widthSdNm ?? null;
 }

@@ -95,7 +95,7 @@ describe("walls too sharp to tell", () => {
     none.forEach((p, k) => {
       if (more[k].widthNm !== null) expect(more[k].widthNm).toBe(p.widthNm);
       if (some[k].widthSdTipNm !== null && more[k].widthSdTipNm !== null) {
-        expect((more[k].widthSdTipNm as number) / (some[k].widthSdTipNm as number)).toBeCloseTo(2, 9);
+        expect(more[k].widthSdTipNm / some[k].widthSdTipNm).toBeCloseTo(2, 9);
       }
     });
   });
@@ -189,7 +189,7 @@ describe("flagged or right", () => {
     for (const p of found) {
       expect(p.widthNm).toBeNull();
       expect(p.resolved).toBe(false);
-      expect(p.widthUpper95Nm).toBeGreaterThan(p.apparentWidthNm as number);
+      expect(p.widthUpper95Nm).toBeGreaterThan(p.apparentWidthNm ?? Number.NaN);
     }
     // 60 nm through 30 nm is seen as 68.9 nm
     expect(Math.abs(mean(found.map((p) => p.apparentWidthNm ?? 0)) / 68.9 - 1)).toBeLessThan(0.02);
@@ -243,25 +243,26 @@ function rearranged(f: MadeFrame, how: "transposed" | "mirrored" | "turned"): Ma
     if (how === "transposed") return j * cols + i;
     return j * cols + (cols - 1 - i);
   };
-  const move = <T extends Float32Array | Uint8Array>(v: T): T => {
-    const out = v.slice() as T;
+  const fill = <T extends Float32Array | Uint8Array>(v: T, out: T): T => {
     for (let i = 0; i < outRows; i++) for (let j = 0; j < outCols; j++) out[i * outCols + j] = v[from(i, j)];
     return out;
   };
+  const moveReal = (v: Float32Array): Float32Array => fill(v, v.slice());
+  const moveBytes = (v: Uint8Array): Uint8Array => fill(v, v.slice());
   const share = f.states.share;
   return {
     signal: {
       ...f.signal,
       rows: outRows,
       cols: outCols,
-      re: move(f.signal.re),
-      im: f.signal.im === null ? null : move(f.signal.im),
-      usable: move(f.signal.usable),
+      re: moveReal(f.signal.re),
+      im: f.signal.im === null ? null : moveReal(f.signal.im),
+      usable: moveBytes(f.signal.usable),
     },
     states: {
       ...f.states,
-      share: makeRaster(move(share.values.data), outRows, outCols, share.pixel),
-      map: { ...f.states.map, rows: outRows, cols: outCols, states: move(f.states.map.states) },
+      share: makeRaster(moveReal(share.values.data), outRows, outCols, share.pixel),
+      map: { ...f.states.map, rows: outRows, cols: outCols, states: moveBytes(f.states.map.states) },
     },
   };
 }

@@ -69,7 +69,7 @@ describe("the frame's median", () => {
       profile({ profile: k, widthNm: 40 + 2 * random.normal(), widthSdTipNm: 3 }),
     );
     const found = summariseWidths(list, tip, s, 1);
-    const half = ((found.medianHighNm as number) - (found.medianLowNm as number)) / 2;
+    const half = ((found.medianHighNm ?? Number.NaN) - (found.medianLowNm ?? Number.NaN)) / 2;
     expect(half).toBeGreaterThan(1.96 * 3);
     expect(half).toBeLessThan(1.96 * 3 + 0.1);
     const own = summariseWidths(
@@ -79,7 +79,7 @@ describe("the frame's median", () => {
       1,
     );
     // 1.2533·2/√400, to the accuracy of a bootstrap of one sample
-    expect((own.medianHighNm as number) - (own.medianLowNm as number)).toBeLessThan(2 * 1.96 * 0.125 * 1.6);
+    expect((own.medianHighNm ?? Number.NaN) - (own.medianLowNm ?? Number.NaN)).toBeLessThan(2 * 1.96 * 0.125 * 1.6);
   });
 
   test("the same seed gives the same interval", () => {
@@ -96,10 +96,10 @@ describe("the frame's median", () => {
       for (let k = 0; k < frames; k++) {
         const { signal, states } = makeFrame({ distance: straight(470, 490, 137.5 * k), widthNm: 15, noise, seed: k });
         const found = summariseWidths(fitWalls(signal, states, tip, s).profiles, tip, s, k);
-        shares += (found.unresolvedShare as number) / frames;
+        shares += (found.unresolvedShare ?? Number.NaN) / frames;
         if (found.medianNm === null) continue;
         medians.push(found.medianNm);
-        if ((found.medianLowNm as number) <= 15 && (found.medianHighNm as number) >= 15) held++;
+        if ((found.medianLowNm ?? Number.NaN) <= 15 && (found.medianHighNm ?? Number.NaN) >= 15) held++;
       }
       expect(medians.length).toBeGreaterThan(30);
       if (noise === 0.06) expect(shares).toBeGreaterThan(0.2);
