@@ -1,6 +1,6 @@
 import { plainText } from "../model/text.js";
 import { ImageFileError } from "./byte_file.js";
-import { callHdf5, hdf5Library, type Hdf5Library } from "./hdf5_library.js";
+import { callHdf5, forgetRefused, hdf5Library, lieElsewhere, type Hdf5Library } from "./hdf5_library.js";
 import type { Dataset, Entity, File, Metadata } from "./hdf5_types.js";
 import { checkSize, choosePlane, MAX_PAGES, type OpenImage, type PageShape } from "./image_types.js";
 import { defaultSignal, nexusClaims } from "./nexus.js";
@@ -27,7 +27,9 @@ export async function openHdf5(path: string, dataset: string | null): Promise<Op
   try {
     const { set, values, pages, rows, cols, claims } = callHdf5(path, () => {
       const found = findDataset(file, dataset);
-      return { ...describe(found), claims: nexusClaims(file, found) };
+      const claims = nexusClaims(file, found);
+      forgetRefused(); // an axis in another file claims nothing
+      return { ...describe(found), claims };
     });
     const complex = values.planes === 2;
     const type = complex ? `complex${16 * values.type.bytes}` : typeName(values.type);
@@ -66,6 +68,7 @@ export async function listHdf5(path: string): Promise<string[]> {
 function findDataset(file: File, written: string | null): Dataset {
   const entity = written === null ? null : file.get(written);
   if (isDataset(entity)) return entity;
+  if (entity !== null && "filename" in entity && "obj_path" in entity) throw lieElsewhere(String(entity.filename));
   const signal = entity !== null && "keys" in entity ? defaultSignal(file, entity) : null;
   if (signal !== null) return signal;
   const images = imagesIn(file);
@@ -101,6 +104,7 @@ function imagesIn(file: File): { path: string; shape: readonly number[] }[] {
       } else if (child !== null && "keys" in child) queue.push(path);
     }
   }
+  forgetRefused();
   return out;
 }
 

@@ -1,8 +1,9 @@
 import type { File, H5Module } from "./hdf5_types.js";
+import { plainText } from "../model/text.js";
 import { ImageFileError } from "./byte_file.js";
 
 /** Memory that the HDF5 library may take: an ordinary page with its chunks needs far less; a chunk that swells without end stops here. */
-const MAX_HEAP_BYTES = 512 * 1024 * 1024;
+const MAX_HEAP_BYTES = 384 * 1024 * 1024;
 
 export interface Hdf5Library {
   readonly module: H5Module;
@@ -94,9 +95,17 @@ export function callHdf5<T>(path: string, f: () => T): T {
 
 function throwRefused(): void {
   const other = refused[0];
-  if (other === undefined) return;
-  throw new ImageFileError(
-    `its data lie in another file, "${other}", which is not followed`,
+  if (other !== undefined) throw lieElsewhere(other);
+}
+
+/** For a walk through a file that meets links to others without wanting what they hold. */
+export function forgetRefused(): void {
+  refused = [];
+}
+
+export function lieElsewhere(other: string): ImageFileError {
+  return new ImageFileError(
+    `its data lie in another file, "${plainText(other)}", which is not followed`,
     "name that file itself, or write the data into this one",
   );
 }
