@@ -109,7 +109,7 @@ export function formatOf(path: string): ImageFormat {
     if (/^(II[*+]\0|MM\0[*+])/.test(text)) return "tiff";
     if (text.startsWith("\x93NUMPY")) return "npy";
     if (text.startsWith(HDF5_MARK) || hasLateMark(file)) return "hdf5";
-    if (isGzip(lead) || /^(\xef\xbb\xbf|\xff\xfe|\xfe\xff)?[\t\n\r\x20-\x7e\x80-\xff]+$/.test(text)) return "text";
+    if (isGzip(lead) || TEXT.test(text)) return "text";
     throw new ImageFileError(
       `${whatItIs(text)}; TIFF, .npy, HDF5 and text matrices are read`,
       "save it as 32-bit float TIFF or as .npy",
@@ -119,6 +119,8 @@ export function formatOf(path: string): ImageFormat {
   }
 }
 
+/** Printable characters of any one-byte coding; or the mark that begins UTF-16, which is refused in words of its own. */
+const TEXT = /^(\xff\xfe|\xfe\xff|[\t\n\r\x20-\x7e\x80-\xff]+$)/;
 const HDF5_MARK = "\x89HDF\r\n\x1a\n";
 
 /** HDF5 may begin behind a block of somebody else's, of 512 bytes or a power of two times that. */

@@ -50,7 +50,7 @@ export function readText(path: string, most = MAX_TEXT_BYTES): string {
     if (!isGzip(bytes)) return decode(bytes);
     // The last four bytes promise the length; a false promise ends where `most` or the packing's own limit is reached.
     const promised = bytes.length >= 18 ? bytes.readUInt32LE(bytes.length - 4) : 0;
-    if (promised > most) throw tooLong(promised);
+    if (promised > most && promised <= bytes.length * MAX_RATIO) throw tooLong(promised);
     try {
       return decode(gunzipSync(bytes, { maxOutputLength: Math.min(most, Math.max(64, bytes.length * MAX_RATIO)) }));
     } catch (e) {
