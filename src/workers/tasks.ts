@@ -8,7 +8,7 @@ import type { FringeTest, FrameWalls, WidthSummary } from "../model/walls.js";
 import { frameDigest, inspectFrame, loadFrame } from "../input/index.js";
 import type { Settings } from "../settings.js";
 import { cleanFrame, type CleanReport } from "../stages/clean/index.js";
-import { DebrisAccumulator, debrisInFrame, findDebrisInFrame, type DebrisMap } from "../stages/debris/index.js";
+import { CORE, DebrisAccumulator, debrisInFrame, findDebrisInFrame, type DebrisMap } from "../stages/debris/index.js";
 import { labelDomains } from "../stages/domains/index.js";
 import { measurePair, prepareForDrift, type DriftImage, type PairShift } from "../stages/drift/index.js";
 import { testFringes } from "../stages/fringes/index.js";
@@ -90,7 +90,7 @@ function debris(input: DebrisInput): { readonly share: number } {
   const map = accumulator.finish();
   keep(input.scratch, "debris", map);
   let marked = 0;
-  for (const v of map.mask) marked += v;
+  for (const v of map.mask) if (v === CORE) marked++;
   return { share: map.mask.length === 0 ? 0 : marked / map.mask.length };
 }
 
@@ -154,7 +154,7 @@ function measure(input: MeasureInput): MeasureOutput {
   let usablePixels = 0;
   for (const u of signal.usable) usablePixels += u;
   let debrisPixels = 0;
-  for (const d of mask) debrisPixels += d === 0 ? 0 : 1;
+  for (const d of mask) if (d === CORE) debrisPixels++;
   return {
     fraction: states.fraction,
     map: packMap(states.map),

@@ -4,6 +4,7 @@ import type { CleanFrame, Drift } from "../../model/signal.js";
 import { wrapAngle } from "../../numerics/quantile.js";
 import { contrastOf } from "./chord.js";
 import { decide } from "./decide.js";
+import { addEffect, emptyEffect, ratiosOf } from "./effect.js";
 import type { ChannelSums, DebrisMap, Grid, HeightSums } from "./grid.js";
 import { departures, heights } from "./residuals.js";
 import { type Ring, ringOf } from "./ring.js";
@@ -57,14 +58,27 @@ export class DebrisAccumulator {
     addChannel(grid.looseAmplitude, byAmplitude.loose, grid, rows, cols, atRow, atCol);
     grid.frames++;
     if (byAmplitude.levels.length === 2) grid.twoStateFrames++;
-    if (clean.phase !== null && grid.phase !== null) {
+    const sums = byAmplitude.levels.length === 2 ? grid.effect.mixed : grid.effect.lone;
+    const exactRow = (drift.yNm - grid.originYNm) / grid.pixel.yNm;
+    const exactCol = (drift.xNm - grid.originXNm) / grid.pixel.xNm;
+    const addRatios = (phase: Float32Array | null, ring: Ring | null, calm: Uint8Array): void => {
+      const reference = ring?.reference ?? null;
+      const ratio = ratiosOf(log, ringOfLog.reference, phase, reference, calm, rows, cols, ringOfLog.blockCols);
+      addEffect(sums, ratio.re, ratio.im, rows, cols, grid.rows, grid.cols, exactRow, exactCol);
+    };
+    grid.pair.noise = Math.max(grid.pair.noise, byAmplitude.noise);
+    const [first, second] = byAmplitude.levels;
+    if (clean.phase === null) {
+      addRatios(null, null, byAmplitude.calm);
+      if (second !== undefined) grid.pair.contrasts.push({ logRatio: second - first, turnRad: 0 });
+    } else if (grid.phase !== null) {
       const phase = dataOf(clean.phase);
       const ring = ringOf(phase, rows, cols, ringXPx, ringYPx);
       const byPhase = departures(phase, ring, byAmplitude.flat, rows, cols);
       addChannel(grid.phase, byPhase.strict, grid, rows, cols, atRow, atCol);
       addPairs(grid, log, ringOfLog, phase, ring, byPhase.flat, rows, cols, atRow, atCol);
-      grid.pair.noise = Math.max(grid.pair.noise, byAmplitude.noise, byPhase.noise);
-      const [first, second] = byAmplitude.levels;
+      addRatios(phase, ring, byPhase.calm.map((c, b) => c & byAmplitude.calm[b]));
+      grid.pair.noise = Math.max(grid.pair.noise, byPhase.noise);
       const contrast = second === undefined ? null : contrastOf([first, second], ringOfLog, ring, byPhase.flat);
       if (contrast !== null) grid.pair.contrasts.push(contrast);
     }
@@ -85,7 +99,7 @@ export class DebrisAccumulator {
   finish(): DebrisMap {
     if (this.#grid === null) {
       const pixel = { xNm: 1, yNm: 1 };
-      return { originXNm: 0, originYNm: 0, pixel, rows: 0, cols: 0, mask: new Uint8Array(0), spots: 0 };
+      return { originXNm: 0, originYNm: 0, pixel, rows: 0, cols: 0, mask: new Uint8Array(0), strength: new Float32Array(0), spots: 0 };
     }
     return decide(this.#grid, this.#tip, this.#settings);
   }
@@ -119,6 +133,7 @@ export class DebrisAccumulator {
       looseAmplitude: channel(),
       pair: { log: new Float32Array(n), turn: new Float32Array(n), count: new Uint16Array(n), noise: 0, contrasts: [] },
       phase: channel(),
+      effect: { lone: emptyEffect(n), mixed: emptyEffect(n) },
     };
   }
 }

@@ -2,7 +2,8 @@ import type { Tip } from "../../model/cooldown.js";
 import { median } from "../../numerics/quantile.js";
 import { connectedComponents } from "../../raster/opencv.js";
 import { distanceFromChord } from "./chord.js";
-import type { ChannelSums, DebrisMap, Grid, HeightSums, PairSums } from "./grid.js";
+import { coreStrength } from "./effect.js";
+import { type ChannelSums, CORE, type DebrisMap, type Grid, type HeightSums, MARGIN, type PairSums } from "./grid.js";
 import { reaches } from "./reaches.js";
 import type { DebrisSettings } from "./settings.js";
 import { growSpots, smoothedMean, widen } from "./spots.js";
@@ -17,13 +18,13 @@ const LEAST_LOG = 0.2;
 /** Spots reach out to where the departure falls below this share of what it takes to be one. */
 const REACH_SHARE = 0.5;
 
-/** Debris from what all frames said. A pixel is the core of a spot where
+/** Debris from what all frames said. A pixel starts a spot where
  *  - its mean height stands `heightSigmas` above the roughness of the film; or
  *  - its mean departure in amplitude or phase is at least `effectSigmas` of the pixel noise and significant, with the same sign in
  *    `leastShare` of at least `leastFrames` frames; or
  *  - the same in fewer frames, with a bump of `SUPPORT` there; or
  *  - amplitude and phase depart as no mixture of the two states can.
- *  Spots grow to half the thresholds and get a margin for the tip. */
+ *  Spots grow to half the thresholds and get a margin for the tip. Of all this, the core is what `coreStrength` makes it. */
 export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMap {
   const { rows, cols } = grid;
   const n = rows * cols;
@@ -46,12 +47,17 @@ export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMa
   markOffChord(grid.pair, rows, cols, seed, candidate);
   const spots = growSpots(seed, candidate, rows, cols, s.leastPixels);
   const { marginXPx, marginYPx } = reaches(grid.pixel, tip, s);
-  const mask = widen(spots, rows, cols, marginXPx, marginYPx);
+  const near = widen(spots, rows, cols, marginXPx, marginYPx);
   // the optical signal of a bump reaches further than its height, since the tip blurs it more; where the frames could not show how far
   // it reaches the margin is wider
-  for (let p = 0; p < n; p++) if (spots[p] === 0 || grid.amplitude.count[p] >= s.leastFrames) byHeight[p] = 0;
-  const wider = widen(byHeight, rows, cols, 2 * marginXPx, 2 * marginYPx);
-  for (let p = 0; p < n; p++) mask[p] |= wider[p];
+  for (let p = 0; p < n; p++) if (spots[p] === 0) byHeight[p] = 0;
+  const bumps = widen(byHeight, rows, cols, marginXPx, marginYPx);
+  const unseen = byHeight.map((b, p) => (grid.amplitude.count[p] >= s.leastFrames ? 0 : b));
+  const wider = widen(unseen, rows, cols, 2 * marginXPx, 2 * marginYPx);
+  // one pixel more than is marked, so that between pixels the strength goes on
+  const strength = coreStrength(grid, spots, bumps, widen(near, rows, cols, 1, 1), s.coreShare, s.leastFrames);
+  const mask = new Uint8Array(n);
+  for (let p = 0; p < n; p++) mask[p] = strength[p] >= 1 ? CORE : near[p] === 1 || wider[p] === 1 ? MARGIN : 0;
   return {
     originXNm: grid.originXNm,
     originYNm: grid.originYNm,
@@ -59,6 +65,7 @@ export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMa
     rows,
     cols,
     mask,
+    strength,
     spots: n === 0 ? 0 : connectedComponents(spots, rows, cols, 8).count,
   };
 }

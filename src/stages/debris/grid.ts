@@ -1,6 +1,12 @@
 import type { PixelSize } from "../../model/raster.js";
 import type { Contrast } from "./chord.js";
 
+/** Pixels whose signal is so affected that their state cannot be trusted. */
+export const CORE = 1;
+/** Pixels about them whose signal is disturbed, or could be by the tip's blur: their state holds, but levels and walls are not to be
+ *  fitted to them. */
+export const MARGIN = 2;
+
 /** Debris on the sample, in the cooldown's coordinates: the grid's pixel (row, column) lies at x = originXNm + column·pixel.xNm. */
 export interface DebrisMap {
   readonly originXNm: number;
@@ -8,8 +14,10 @@ export interface DebrisMap {
   readonly pixel: PixelSize;
   readonly rows: number;
   readonly cols: number;
-  /** 1 = debris or its margin. */
+  /** CORE, MARGIN or 0. */
   readonly mask: Uint8Array;
+  /** What debris does to the signal, in multiples of what makes a core; between the pixels it goes straight. 0 away from debris. */
+  readonly strength: Float32Array;
   /** Separate spots. */
   readonly spots: number;
 }
@@ -20,6 +28,14 @@ export interface ChannelSums {
   readonly count: Uint16Array;
   readonly above: Uint16Array;
   readonly below: Uint16Array;
+}
+
+/** Weighted sums of complex departures z/z_surroundings − 1 on the grid, of their weights, and of the weights' squares. */
+export interface EffectSums {
+  readonly re: Float32Array;
+  readonly im: Float32Array;
+  readonly weight: Float32Array;
+  readonly squares: Float32Array;
 }
 
 export interface HeightSums {
@@ -55,4 +71,6 @@ export interface Grid {
   readonly looseAmplitude: ChannelSums;
   readonly pair: PairSums;
   readonly phase: ChannelSums | null;
+  /** From frames that show one state only, and from all others. */
+  readonly effect: { readonly lone: EffectSums; readonly mixed: EffectSums };
 }

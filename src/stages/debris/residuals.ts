@@ -21,6 +21,8 @@ export interface Departures {
   readonly loose: Departure;
   /** Blocks with surroundings of one state. */
   readonly flat: Uint8Array;
+  /** The same, but in a frame that shows both states the surroundings are so all round. */
+  readonly calm: Uint8Array;
   /** One level, or two where the frame shows both states. */
   readonly levels: readonly number[];
   /** Pixel noise, the larger where there are two states. */
@@ -51,6 +53,9 @@ export function departures(
   const strict = new Float32Array(rows * cols).fill(Number.NaN);
   const loose = new Float32Array(rows * cols).fill(Number.NaN);
   const [first, second] = classes.levels;
+  const calm = flat.slice();
+  // walls reach to where their sectors already agree again, so in such frames all sectors must agree
+  if (second !== undefined) for (let b = 0; b < blocks; b++) if (ring.widest[b] > tolerance) calm[b] = 0;
   for (let i = 0; i < rows; i++) {
     for (let j = 0; j < cols; j++) {
       const b = (i >> 1) * ring.blockCols + (j >> 1);
@@ -63,8 +68,7 @@ export function departures(
       const z = (v - reference) / classes.sds[own];
       loose[p] = z;
       if (second !== undefined) {
-        // walls reach to where their sectors already agree again, so in such frames all sectors must agree
-        if (ring.widest[b] > tolerance) continue;
+        if (calm[b] === 0) continue;
         const other = own === 0 ? second : first;
         const towards = (v - reference) / (other - reference);
         const beyond = 1 + Math.max(0.25, (3 * classes.sds[1 - own]) / Math.abs(other - reference));
@@ -73,7 +77,8 @@ export function departures(
       strict[p] = z;
     }
   }
-  return { strict, loose, flat, levels: classes.levels, noise: Math.max(...classes.sds.filter(Number.isFinite), sd0) };
+  const noise = Math.max(...classes.sds.filter(Number.isFinite), sd0);
+  return { strict, loose, flat, calm, levels: classes.levels, noise };
 }
 
 function classify(

@@ -42,11 +42,19 @@ export const settings = {
     max: 1,
   },
   leastPixels: { default: 3, unit: "1", means: "smaller spots are not debris", min: 1 },
+  coreShare: {
+    default: 1 / 6,
+    unit: "1",
+    means:
+      "a pixel has no state where debris changes its signal by this share of the step between the states (of the level where no frame shows both)",
+    min: 0.02,
+    max: 1,
+  },
   marginTips: {
     default: 0.4,
     unit: "1",
     means:
-      "margin left out around debris, in tip resolutions (3 pixels where there is no tip); twice this around bumps",
+      "margin around debris that levels and walls are not fitted to, in tip resolutions (of 3 pixels where there is no tip); twice this around bumps whose effect was not seen",
     min: 0,
   },
   loneFrameHeightSigmas: {

@@ -4,11 +4,13 @@ import { makeRaster } from "../../../src/model/raster.js";
 import { defaultsOf } from "../../../src/model/settings.js";
 import { makeRandom } from "../../../src/numerics/random.js";
 import {
+  CORE,
   DebrisAccumulator,
   type DebrisMap,
   debrisInFrame,
   debrisSettings,
   findDebrisInFrame,
+  MARGIN,
 } from "../../../src/stages/debris/index.js";
 import { distanceFromChord } from "../../../src/stages/debris/chord.js";
 
@@ -115,7 +117,10 @@ const crossing = (n = 10): Scene["frames"] =>
     share: k < 3 ? metallic : k >= n - 3 ? insulating : front(150 + (800 * (k - 3)) / (n - 6)),
   }));
 
-const masked = (mask: Uint8Array): number => mask.reduce((a, b) => a + b, 0) / mask.length;
+const share = (mask: Uint8Array, of: (v: number) => boolean): number =>
+  mask.reduce((n, v) => n + (of(v) ? 1 : 0), 0) / mask.length;
+/** Share of core and margin together. */
+const masked = (mask: Uint8Array): number => share(mask, (v) => v !== 0);
 const at = (mask: Uint8Array, drift: Drift, d: Dot): number => {
   const j = Math.round((d.xNm - (drift.xNm ?? 0)) / PIXEL_NM);
   const i = Math.round((d.yNm - (drift.yNm ?? 0)) / PIXEL_NM);
@@ -146,7 +151,8 @@ describe("debris over a cooldown", () => {
     expect(map.spots).toBe(dots.length);
     for (const drift of drifts) {
       const mask = debrisInFrame(map, drift, SIZE, SIZE);
-      for (const d of dots) expect(at(mask, drift, d)).toBe(1);
+      // the first is a bump that the signal does not show
+      expect(dots.map((d) => at(mask, drift, d))).toEqual([MARGIN, CORE, CORE, CORE, CORE]);
       // five discs of 30 nm and the blur around them, 80 nm at most
       expect(masked(mask)).toBeLessThan((5 * Math.PI * 80 ** 2) / (SIZE * PIXEL_NM) ** 2);
     }
@@ -158,7 +164,7 @@ describe("debris over a cooldown", () => {
     const mask = debrisInFrame(map, drift, SIZE, SIZE);
     for (const d of dots) {
       for (let p = 0; p < mask.length; p++) {
-        if (mask[p] === 1) continue;
+        if (mask[p] !== 0) continue;
         const x = (drift.xNm ?? 0) + (p % SIZE) * PIXEL_NM;
         const y = (drift.yNm ?? 0) + Math.floor(p / SIZE) * PIXEL_NM;
         const c = profile(Math.hypot(x - d.xNm, y - d.yNm), d.radiusNm);
@@ -166,6 +172,72 @@ describe("debris over a cooldown", () => {
         expect(Math.max(Math.abs(d.logFactor), Math.abs(d.turnRad)) * c).toBeLessThan(0.05);
       }
     }
+  });
+
+  test("the core is what changes the signal by a sixth of the contrast, to half a pixel, wherever the frame lies", () => {
+    // levels 1 and 2.2 e^{0.6i}: the brighter state's ratio to the step between them
+    const perContrast = 2.2 / Math.hypot(2.2 * Math.cos(0.6) - 1, 2.2 * Math.sin(0.6));
+    const strong = dots.map((d) => ({ ...d, radiusNm: d.radiusNm * 1.5 }));
+    for (const [seed, frames] of [
+      [21, crossing(16)],
+      [22, crossing(16).map((f, k) => ({ ...f, xNm: k === 0 ? 0 : 4.4, yNm: k === 0 ? 0 : -3.7 }))],
+    ] as const) {
+      const { map, drifts } = mapOf({ seed, dots: strong, frames });
+      for (const drift of [drifts[0], drifts[5], drifts[12]]) {
+        const mask = debrisInFrame(map, drift, SIZE, SIZE);
+        const effect = (xNm: number, yNm: number): number => {
+          let log = 0;
+          let turn = 0;
+          for (const d of strong) {
+            const c = profile(Math.hypot(xNm - d.xNm, yNm - d.yNm), d.radiusNm);
+            log += d.logFactor * c;
+            turn += d.turnRad * c;
+          }
+          return perContrast * Math.hypot(Math.exp(log) * Math.cos(turn) - 1, Math.exp(log) * Math.sin(turn));
+        };
+        let affected = 0;
+        let missed = 0;
+        let core = 0;
+        let idle = 0;
+        let tooFar = 0;
+        for (let p = 0; p < mask.length; p++) {
+          const x = (drift.xNm ?? 0) + (p % SIZE) * PIXEL_NM;
+          const y = (drift.yNm ?? 0) + Math.floor(p / SIZE) * PIXEL_NM;
+          const here = effect(x, y);
+          if (here > 0.25) {
+            affected++;
+            if (mask[p] !== CORE) missed++;
+          }
+          if (mask[p] !== CORE) continue;
+          core++;
+          if (here < 0.1) idle++;
+          const h = 0.5 * PIXEL_NM;
+          const reach = Math.max(...[-h, h].flatMap((dx) => [-h, h].map((dy) => effect(x + dx, y + dy))));
+          if (reach < 1 / 6 - 0.03) tooFar++;
+        }
+        expect(affected).toBeGreaterThan(150);
+        expect(missed / affected).toBeLessThan(0.01);
+        expect(idle / core).toBeLessThan(0.05);
+        expect(tooFar / core).toBeLessThan(0.02);
+      }
+    }
+  });
+
+  test("a bump is core where the frames could not show what it does, and only there", () => {
+    const bumps = [dot(200, 200, { heightNm: 15 }), dot(1480, 500, { heightNm: 15 })];
+    // the second comes into view at the end, with a wall through it
+    const frames = [...crossing(10), { xNm: 720, yNm: 0, share: front(1600) }, { xNm: 725, yNm: 4, share: front(1620) }];
+    const { map, drifts } = mapOf({ seed: 23, dots: bumps, frames });
+    expect(at(debrisInFrame(map, drifts[0], SIZE, SIZE), drifts[0], bumps[0])).toBe(MARGIN);
+    expect(at(debrisInFrame(map, drifts[10], SIZE, SIZE), drifts[10], bumps[1])).toBe(CORE);
+  });
+
+  test("a frame whose place is known to half a pixel only gets a wider core", () => {
+    const { map, drifts } = mapOf({ seed: 24, dots, frames: crossing() });
+    const core = (sdNm: number): number =>
+      share(debrisInFrame(map, { ...drifts[4], sdNm }, SIZE, SIZE), (v) => v === CORE);
+    expect(core(5)).toBeGreaterThan(1.1 * core(0.5));
+    expect(core(5)).toBeLessThan(1.6 * core(0.5));
   });
 
   test("without debris nothing is masked, though walls cross and one stands still for half of the frames", () => {
