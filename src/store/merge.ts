@@ -4,7 +4,7 @@ import path from "node:path";
 import { InputError } from "../model/errors.js";
 import { difference, storedIdentity } from "./identity.js";
 import { newestVersion, schemaVersion } from "./migrate.js";
-import { openForWriting, openUnchecked, type Db } from "./open.js";
+import { openForWriting, openUntouched, type Db } from "./open.js";
 import { inWords } from "./problem.js";
 import { folderFrom } from "./save.js";
 
@@ -19,7 +19,7 @@ export interface MergeSource {
 /** Opens a database to take from; it keeps every byte. One of an older schema is migrated as a copy in the system's temporary folder.
  *  Throws InputError where it is missing, foreign, damaged or newer than this program. */
 export async function openSource(file: string): Promise<MergeSource> {
-  const db = openUnchecked(file);
+  const db = openUntouched(file);
   try {
     const version = inWords(file, () => schemaVersion(db));
     if (version === newestVersion()) return { file, db, close: () => db.close() };

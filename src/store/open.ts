@@ -12,10 +12,10 @@ const PATIENCE_MS = 60_000;
 /** A database that can only be read as a copy in memory may be this large. */
 const MOST_IN_MEMORY = 1 << 30;
 
-/** Opens an existing database for reading; its file keeps every byte. Throws InputError where it is missing, foreign, damaged, or of
- *  another schema version. */
+/** Opens an existing database for reading. Nothing is changed; what a killed program has left in the log beside the file is moved into
+ *  it at the end, as the next writer would. Throws InputError where it is missing, foreign, damaged, or of another schema version. */
 export function openForReading(file: string): Db {
-  const db = openUnchecked(file);
+  const db = open(file, false);
   try {
     const version = inWords(file, () => schemaVersion(db));
     if (version > newestVersion()) throw newer(file, version);
@@ -38,8 +38,14 @@ export function openForReading(file: string): Db {
   }
 }
 
-/** As `openForReading`, of any schema version up to this program's: the caller looks at it. */
-export function openUnchecked(file: string): Db {
+/** As `openForReading`, of any schema version, and the file keeps every byte whatever lies beside it. */
+export function openUntouched(file: string): Db {
+  return open(file, bytesOf(`${file}-wal`) > 0);
+}
+
+/** A connection that may write, though it never does, takes the log and its lock files away when it is the last to close; one that
+ *  may not leaves them lying, and a copy of the file alone would then miss what is in the log. */
+function open(file: string, readonly: boolean): Db {
   if (!existsSync(file))
     throw new InputError({
       at: file,
@@ -48,9 +54,7 @@ export function openUnchecked(file: string): Db {
     });
   look(file);
   try {
-    // With nothing waiting in the log beside it, a connection that may write cleans its lock files away when it closes, and
-    // changes nothing else; one that may not leaves them lying. With something waiting, closing would move it into the file.
-    const db = new Database(file, { readonly: bytesOf(`${file}-wal`) > 0, fileMustExist: true, timeout: PATIENCE_MS });
+    const db = new Database(file, { readonly, fileMustExist: true, timeout: PATIENCE_MS });
     try {
       db.pragma("query_only = ON");
       db.prepare("SELECT count(*) FROM sqlite_master").get();
@@ -83,8 +87,7 @@ export function openForWriting(file: string): Db {
       db.pragma("foreign_keys = ON");
       if (db.pragma("journal_mode", { simple: true }) !== "wal") db.pragma("journal_mode = WAL");
       db.pragma("synchronous = FULL");
-      // A file that may not be written is found out now, not after an hour of analysis.
-      db.transaction(() => undefined).immediate();
+      mustBeWritable(db);
       migrate(db, file);
       return db;
     } catch (e) {
@@ -94,15 +97,26 @@ export function openForWriting(file: string): Db {
   });
 }
 
+/** A file that may not be written is found out now, not after an hour of analysis: SQLite opens it without a word, and begins to complain
+ *  at the first change. This one is taken back before it reaches the disk. */
+function mustBeWritable(db: Db): void {
+  db.exec("BEGIN IMMEDIATE");
+  try {
+    db.pragma(`user_version = ${schemaVersion(db)}`);
+  } finally {
+    db.exec("ROLLBACK");
+  }
+}
+
 /** Opens an existing database to change what is in it. Throws InputError as `openForWriting`, and where there is none. */
 export function openForChange(file: string): Db {
-  openUnchecked(file).close();
+  openUntouched(file).close();
   return openForWriting(file);
 }
 
 /** Reads the whole file before anything may write to it: a damaged database must stay as it is, for whoever wants to save it. */
 function checkSound(file: string): void {
-  const db = openUnchecked(file);
+  const db = openUntouched(file);
   try {
     const version = inWords(file, () => schemaVersion(db));
     if (version > newestVersion()) throw newer(file, version);

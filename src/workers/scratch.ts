@@ -37,7 +37,7 @@ export function removeScratch(dir: string): void {
 
 /** Keeps any structured-cloneable value under a name. */
 export function keep(dir: string, name: string, value: unknown): void {
-  spaceFor(dir, () => writeFileSync(path.join(dir, name), serialize(value)));
+  spaceFor(path.dirname(dir), () => writeFileSync(path.join(dir, name), serialize(value)));
 }
 
 /** Reads a kept value back; the caller names its type, as it was the one to keep it. */

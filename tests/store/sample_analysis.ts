@@ -66,7 +66,11 @@ export function sampleAnalysis(
     amplitudeUnit: "",
     frames: [info(0, "cooling", 160), ...later.map((frame) => info(frame, "warming", 149 + frame))],
     sources: [
-      { path: "a.tif", sha256: `${images.repeat(63)}${later.length.toString(16)}`, bytes: 24 * (1 + later.length) },
+      {
+        path: "a.tif",
+        sha256: `${images.repeat(62)}${later.length.toString(16).padStart(2, "0")}`,
+        bytes: 24 * (1 + later.length),
+      },
     ],
     notices: [],
   };
