@@ -54,7 +54,7 @@ function repeatedImages(frames: readonly FrameInfo[]): Notice[] {
   const notices: Notice[] = [];
   for (const f of frames) {
     for (const [channel, s] of Object.entries(f.sources)) {
-      const key = `${s.file}#${s.page}`;
+      const key = JSON.stringify([s.file, s.dataset, s.page, s.sample, s.complex]);
       const here = `frame ${f.frame} ${channel}`;
       const before = first.get(key);
       if (before === undefined) first.set(key, here);

@@ -28,7 +28,7 @@ export async function loadFrame(cooldown: Pick<Cooldown, "pixel">, info: FrameIn
   const load = async (channel: ChannelName, s: ChannelSource): Promise<Raster> => {
     const data = s.complex === undefined ? await read(s, s.scale) : await readComplex(s, read);
     if (s.retrace !== undefined) {
-      const joined = joinRetrace(data, await read(s.retrace, s.scale), channel === "phase");
+      const joined = joinRetrace(data, await read(s.retrace, s.scale), info.cols, channel === "phase");
       if (joined.noiseSd !== null) retraceNoise[channel] = joined.noiseSd;
       if (joined.disagreement !== null) {
         const message = `${channel} (${plainText(s.label)}): ${joined.disagreement}`;

@@ -10,6 +10,8 @@ export interface Joined {
 const OUTLIER_SD = 8;
 /** With more of them than this the two lines as a whole do not belong together. */
 const MOST_OUTLIERS = 0.05;
+/** An average of two images further apart than this, in pixels along the scan line, would widen every wall. */
+const MOST_SHIFT_PX = 0.1;
 /** With less likeness than this they do not show the same place. */
 const LEAST_CORRELATION = 0.2;
 /** Normal distribution: standard deviation over median absolute deviation, 1/Φ⁻¹(3/4). */
@@ -19,16 +21,13 @@ const SD_PER_MAD = 1.482602218505602;
  * Averages a retrace into its trace, in place, where the two agree; a pixel where they do not becomes NaN, and so does one that either
  * lacks. Their difference d, less its median, holds the noise of both and nothing of the sample: sd(d) = √2 σ of one scan, 2 σ of
  * the average. sd(d) is taken from the median absolute deviation, which walls that are shifted a little between the two do not move.
- * Where as a whole they do not agree (too many pixels apart, or no likeness), the trace stays as it is.
- * @param trace   the values, overwritten with the average
+ * Where as a whole they do not agree (shifted against each other, too many pixels apart, no likeness), the trace stays as it is.
+ * @param trace   the values, row-major, overwritten with the average
+ * @param cols    columns, along the scan line
  * @param angle   values are angles in rad: differences are taken around the circle
  */
-export function joinRetrace(trace: Float32Array, retrace: Float32Array, angle: boolean): Joined {
-  const turn = 2 * Math.PI;
-  const difference = (k: number): number => {
-    const d = trace[k] - retrace[k];
-    return angle ? d - turn * Math.round(d / turn) : d;
-  };
+export function joinRetrace(trace: Float32Array, retrace: Float32Array, cols: number, angle: boolean): Joined {
+  const difference = (k: number): number => between(trace[k], retrace[k], angle);
   const all = new Float64Array(trace.length);
   let n = 0;
   for (let k = 0; k < trace.length; k++) {
@@ -40,6 +39,11 @@ export function joinRetrace(trace: Float32Array, retrace: Float32Array, angle: b
   const middle = medianOf(d.slice());
   const sd = SD_PER_MAD * medianOf(d.map((v) => Math.abs(v - middle)));
   const reach = OUTLIER_SD * sd;
+  const shift = shiftPx(trace, retrace, cols, angle, middle, sd);
+  if (Math.abs(shift.px) > Math.max(MOST_SHIFT_PX, 4 * shift.sdPx)) {
+    const words = `the retrace lies ${Math.abs(shift.px).toFixed(2)} pixels further along the scan line: trace alone`;
+    return { noiseSd: null, disagreement: words };
+  }
   const outliers = d.reduce((count, v) => count + (Math.abs(v - middle) > reach ? 1 : 0), 0);
   const percent = ((100 * outliers) / n).toFixed(1);
   if (sd > 0 && outliers > MOST_OUTLIERS * n) {
@@ -64,6 +68,44 @@ export function joinRetrace(trace: Float32Array, retrace: Float32Array, angle: b
       ? `trace and retrace differ in ${percent} % of the pixels, which count as not measured`
       : null;
   return { noiseSd: sd / 2, disagreement };
+}
+
+function between(a: number, b: number, angle: boolean): number {
+  const d = a - b;
+  return angle ? d - 2 * Math.PI * Math.round(d / (2 * Math.PI)) : d;
+}
+
+/**
+ * Shift of the retrace against the trace along the rows, by one step of least squares on the slope g of their mean: d = s g. What the
+ * noise adds to Σ g², sd²/8 a pixel, is taken off. Right for shifts below a pixel, too small for larger ones, which is enough
+ * to tell that they are not small.
+ */
+function shiftPx(
+  trace: Float32Array,
+  retrace: Float32Array,
+  cols: number,
+  angle: boolean,
+  middle: number,
+  sd: number,
+): { readonly px: number; readonly sdPx: number } {
+  let [dg, gg, n] = [0, 0, 0];
+  for (let k = 1; k + 1 < trace.length; k++) {
+    if (k % cols === 0 || k % cols === cols - 1) continue;
+    const d = between(trace[k], retrace[k], angle) - middle;
+    const ga = between(trace[k + 1], trace[k - 1], angle) / 2;
+    const gb = between(retrace[k + 1], retrace[k - 1], angle) / 2;
+    const g = (ga + gb) / 2;
+    // A speck on one of the two is no shift: a wall has a slope on both.
+    const reach = OUTLIER_SD * sd + 4 * Math.min(Math.abs(ga), Math.abs(gb));
+    if (!Number.isFinite(d + g) || Math.abs(d) > reach) continue;
+    dg += d * g;
+    gg += g * g;
+    n++;
+  }
+  const slope = gg - (n * sd * sd) / 8;
+  // Hardly any slope above the noise: no shift can be seen, and none does harm.
+  if (!(slope > 0.05 * gg)) return { px: 0, sdPx: Infinity };
+  return { px: dg / slope, sdPx: (sd * Math.sqrt(gg)) / slope };
 }
 
 function medianOf(values: Float64Array): number {

@@ -87,7 +87,7 @@ describe("a file that is cut off", () => {
     const whole = fixture(name);
     expect(await readAll(whole)).not.toBeInstanceOf(ImageFileError);
     const ends = new Set([0, 1, 2, 4, 7, 8, 9, 16, whole.length - 1, whole.length - 4]);
-    for (let k = 0; k < whole.length; k += Math.ceil(whole.length / 120)) ends.add(k);
+    for (let k = 0; k < whole.length; k += Math.ceil(whole.length / 40)) ends.add(k);
     for (const end of ends) {
       const error = await errorOf(whole.subarray(0, end));
       expect(error.message).toMatch(/cut off|empty|at least 8|neither a TIFF|damaged|text that begins/);
@@ -189,7 +189,7 @@ test("a file that changes between two readings is read afresh", async () => {
   expect(other).toEqual([new Float32Array(16).fill(3)]);
 });
 
-test("900 files with bytes changed at random: pixels or an error in words, nothing else, and soon", async () => {
+test("300 files with bytes changed at random: pixels or an error in words, nothing else, and soon", async () => {
   const random = makeRandom(20240517);
   const below = (n: number): number => random.below(n);
   const names = [
@@ -201,7 +201,7 @@ test("900 files with bytes changed at random: pixels or an error in words, nothi
     "npy-stack.npy",
   ];
   let refused = 0;
-  for (let k = 0; k < 900; k++) {
+  for (let k = 0; k < 300; k++) {
     const bytes = Buffer.from(fixture(names[k % names.length]));
     // Most changes go where the structure is: the first bytes, and a TIFF's directories wherever they are.
     for (let n = 1 + below(6); n > 0; n--) {
@@ -217,5 +217,5 @@ test("900 files with bytes changed at random: pixels or an error in words, nothi
       expect(got.fix.length).toBeGreaterThan(5);
     } else expect(got.length).toBeGreaterThan(0);
   }
-  expect(refused).toBeGreaterThan(100);
+  expect(refused).toBeGreaterThan(33);
 });

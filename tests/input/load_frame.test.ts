@@ -45,7 +45,7 @@ test("a file that has gone, shrunk or changed its size since it was checked", as
   ]);
 });
 
-test("500 descriptions with characters changed at random: a cooldown or an error in words, nothing else", async () => {
+test("160 descriptions with characters changed at random: a cooldown or an error in words, nothing else", async () => {
   const random = makeRandom(7);
   const table = "temperature_K,amplitude,started_at\n180,a.tif#0,2024-05-17T09:00:00Z\n170,a.tif#1,\n";
   const text =
@@ -65,7 +65,7 @@ test("500 descriptions with characters changed at random: a cooldown or an error
   let sound = 0;
   folder.text("f.csv", table);
   expect((await readCooldown(folder.text("fuzz.yaml", text))).frames).toHaveLength(5);
-  for (let k = 0; k < 500; k++) {
+  for (let k = 0; k < 160; k++) {
     const file = folder.text("fuzz.yaml", k % 2 === 0 ? mutate(text) : text);
     folder.text("f.csv", k % 2 === 1 ? mutate(table) : table);
     try {
@@ -78,6 +78,6 @@ test("500 descriptions with characters changed at random: a cooldown or an error
       for (const p of e.problems) expect(p.at !== "" && p.problem.length > 5 && p.fix.length > 5).toBe(true);
     }
   }
-  expect(sound).toBeGreaterThan(20);
-  expect(sound).toBeLessThan(480);
+  expect(sound).toBeGreaterThan(6);
+  expect(sound).toBeLessThan(154);
 });
