@@ -28,16 +28,42 @@ const PEAKS = 4;
 const APART_PX = 3;
 
 /** Best shifts of `moving` against `reference` over all lags, highest first, by masked normalised cross-correlation: at each lag means and
- *  variances are those of the pixels that both frames measured there. Empty where no lag has overlap enough.
+ *  variances are those of the pixels that both frames measured there. Where there are several channels their heights are added, so that what
+ *  they agree on stands out. Empty where no lag has overlap enough.
+ *  @param channels [reference, moving] of each, all of the same size and pixels
  *  Source: Padfield 2012, IEEE Trans. Image Process. 21, 2706 (all sums by zero-padded transforms). Peaks are ranked by significance,
  *  not by the coefficient itself, which is large by chance where few pixels overlap. */
-export function coarsePeaks(reference: CoarseImage, moving: CoarseImage, options: CoarseOptions): Peak[] {
+export function coarsePeaks(
+  channels: readonly (readonly [reference: CoarseImage, moving: CoarseImage])[],
+  options: CoarseOptions,
+): Peak[] {
+  const [first] = channels;
+  const reachY = Math.floor(options.largestJump * Math.max(first[0].rows, first[1].rows));
+  const reachX = Math.floor(options.largestJump * Math.max(first[0].cols, first[1].cols));
+  const sum = new Float64Array((2 * reachX + 1) * (2 * reachY + 1)).fill(Number.NaN);
+  for (const [reference, moving] of channels) {
+    const heights = heightsOf(reference, moving, reachX, reachY, options);
+    if (heights === null) continue;
+    for (let p = 0; p < sum.length; p++) {
+      if (Number.isNaN(heights[p])) continue;
+      sum[p] = (Number.isNaN(sum[p]) ? 0 : sum[p]) + heights[p] / Math.sqrt(channels.length);
+    }
+  }
+  return findPeaks(sum, 2 * reachX + 1, 2 * reachY + 1, reachX, reachY);
+}
+
+/** Height at each lag, −reach … reach row by row: Fisher's transform of the correlation times √(pixels), over its robust spread. */
+function heightsOf(
+  reference: CoarseImage,
+  moving: CoarseImage,
+  reachX: number,
+  reachY: number,
+  options: CoarseOptions,
+): Float64Array | null {
   const { rows, cols } = paddedSize(reference, moving, options);
   const a = reference.spectra(rows, cols);
   const b = moving.spectra(rows, cols);
-  if (a === null || b === null) return [];
-  const reachY = Math.floor(options.largestJump * Math.max(reference.rows, moving.rows));
-  const reachX = Math.floor(options.largestJump * Math.max(reference.cols, moving.cols));
+  if (a === null || b === null) return null;
   const lag = (p: Float64Array, q: Float64Array): Float64Array => idft2(conjugateProduct(p, q), rows, cols);
   const n = lag(a.mask, b.mask);
   const sumA = lag(a.value, b.mask);
@@ -48,8 +74,7 @@ export function coarsePeaks(reference: CoarseImage, moving: CoarseImage, options
 
   const least = Math.max(50, options.leastOverlap * Math.min(a.count, b.count));
   const width = 2 * reachX + 1;
-  const height = 2 * reachY + 1;
-  const score = new Float64Array(width * height).fill(Number.NaN);
+  const score = new Float64Array(width * (2 * reachY + 1)).fill(Number.NaN);
   for (let y = -reachY; y <= reachY; y++) {
     const wrapped = (y < 0 ? y + rows : y) * cols;
     for (let x = -reachX; x <= reachX; x++) {
@@ -63,7 +88,15 @@ export function coarsePeaks(reference: CoarseImage, moving: CoarseImage, options
       score[(y + reachY) * width + x + reachX] = Math.atanh(r) * Math.sqrt(m);
     }
   }
-  return findPeaks(score, width, height, reachX, reachY);
+  const spread = spreadOf(score);
+  return spread === null ? null : score.map((v) => v / spread);
+}
+
+/** Robust standard deviation about 0 of what is not NaN. */
+function spreadOf(score: Float64Array): number | null {
+  const sizes = score.map(Math.abs);
+  const count = dropNaNInPlace(sizes);
+  return count === 0 ? null : Math.max(1e-12, SD_PER_MAD * selectInPlace(sizes, count >> 1, count));
 }
 
 function paddedSize(a: CoarseImage, b: CoarseImage, o: CoarseOptions): { rows: number; cols: number } {
@@ -192,11 +225,9 @@ function boxMean(grid: Grid, halfX: number, halfY: number): Float64Array {
 }
 
 function findPeaks(score: Float64Array, width: number, height: number, reachX: number, reachY: number): Peak[] {
+  const spread = spreadOf(score);
+  if (spread === null) return [];
   const maxima: number[] = [];
-  const sizes = score.map(Math.abs);
-  const count = dropNaNInPlace(sizes);
-  if (count === 0) return [];
-  const spread = Math.max(1e-12, SD_PER_MAD * selectInPlace(sizes, count >> 1, count));
   for (let y = 1; y < height - 1; y++) {
     for (let x = 1; x < width - 1; x++) {
       const p = y * width + x;

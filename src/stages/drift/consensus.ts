@@ -3,7 +3,8 @@ import { closuresOf, type Difference } from "./closures.js";
 
 /** A pair as the search for agreement sees it. */
 export interface Claim extends Difference {
-  /** Believed by itself; false: one of several peaks, to be believed only where others agree. */
+  /** Believed by itself; false: one of several peaks, or a peak made by one or two particles. Such a peak comes back in every pair that sees the same
+   *  particles, so that agreement among doubtful claims proves nothing: they place no frame, and sharpen those that sure ones have placed. */
   readonly sure: boolean;
   /** 0 … 1, larger is better. */
   readonly quality: number;
@@ -22,31 +23,32 @@ const TREES = 60;
 
 /** The largest set of claims that agree with one another. A wrong peak of a correlation is off by many pixels and no robust
  *  loss is sure to reject it where few pairs meet: so trees are drawn that span the graph, preferring pairs whose triangles close, and the tree with which
- *  most pairs agree is kept. A group that hangs on the rest by a single pair is cut off where that pair is not sure, or where
- *  another sure pair over the same gap contradicts it.
+ *  most pairs agree is kept. A group that hangs on the rest by a single pair is cut off where another sure pair over the same gap contradicts
+ *  it.
  *  @param seed of the trees' order; the same input gives the same answer */
 export function agreeingPairs(nodes: number, claims: readonly Claim[], seed: number): Consensus {
   const support = supportOf(claims);
+  const sure = claims.flatMap((c, k) => (c.sure ? [k] : []));
   const random = makeRandom(seed);
   let best: { agrees: boolean[]; score: number } | null = null;
   for (let t = 0; t < TREES; t++) {
-    const key = claims.map(
-      (c, k) => support[k] + 0.3 * c.quality + (c.sure ? 1 : 0) + (t === 0 ? 0 : 0.8 * random.uniform()),
-    );
-    const order = claims.map((_, k) => k).sort((p, q) => key[q] - key[p] || p - q);
+    const key = claims.map((c, k) => support[k] + 0.3 * c.quality + (t === 0 ? 0 : 0.8 * random.uniform()));
+    const order = [...sure].sort((p, q) => key[q] - key[p] || p - q);
     const places = spanningPlaces(nodes, claims, order);
     let score = 0;
     const agrees = claims.map((c) => {
       const off = Math.hypot(places[2 * c.b] - places[2 * c.a] - c.x, places[2 * c.b + 1] - places[2 * c.a + 1] - c.y);
       const fits = off <= c.tolerance;
-      if (fits) score += c.sure ? 1 : 0.3;
+      if (fits && c.sure) score++;
       return fits;
     });
     if (best === null || score > best.score) best = { agrees, score };
   }
   const agrees = best?.agrees ?? [];
   cutDoubtfulBridges(nodes, claims, agrees);
-  return { agrees, group: groupsOf(nodes, claims, agrees) };
+  const group = groupsOf(nodes, claims, agrees);
+  // places of different groups have nothing to do with one another
+  return { agrees: agrees.map((a, k) => a && group[claims[k].a] === group[claims[k].b]), group };
 }
 
 /** −1 … 1: share of a claim's triangles that close minus share that do not; 0 where it is in none. */
@@ -109,7 +111,7 @@ function groupsOf(nodes: number, claims: readonly Claim[], used: readonly boolea
     return r;
   };
   claims.forEach((c, k) => {
-    if (!used[k] || k === without) return;
+    if (!used[k] || !c.sure || k === without) return;
     const ra = root(c.a);
     const rb = root(c.b);
     if (ra !== rb) parent[Math.max(ra, rb)] = Math.min(ra, rb);
@@ -123,11 +125,15 @@ function groupsOf(nodes: number, claims: readonly Claim[], used: readonly boolea
   });
 }
 
-/** Takes out, in place, single pairs on which a group hangs and which cannot be believed. */
+/** Takes out, in place, single sure pairs on which a group hangs and which another sure pair contradicts. */
 function cutDoubtfulBridges(nodes: number, claims: readonly Claim[], agrees: boolean[]): void {
   for (let again = true; again;) {
     again = false;
-    for (const k of bridgesOf(nodes, claims, agrees)) {
+    for (const k of bridgesOf(
+      nodes,
+      claims,
+      agrees.map((a, q) => a && claims[q].sure),
+    )) {
       const group = groupsOf(nodes, claims, agrees, k);
       const a = group[claims[k].a];
       const b = group[claims[k].b];
@@ -138,7 +144,7 @@ function cutDoubtfulBridges(nodes: number, claims: readonly Claim[], agrees: boo
           c.quality > 0.5 * claims[k].quality &&
           ((group[c.a] === a && group[c.b] === b) || (group[c.a] === b && group[c.b] === a)),
       );
-      if (claims[k].sure && !contradicted) continue;
+      if (!contradicted) continue;
       agrees[k] = false;
       again = true;
     }

@@ -15,6 +15,8 @@ export interface FineShift {
   readonly slope: { readonly x: number; readonly y: number; readonly sdX: number; readonly sdY: number };
   /** Correlation of the two over the overlap, row offsets off. */
   readonly correlation: number;
+  /** Number of places that make this correlation. */
+  readonly features: number;
   /** Pixels that entered. */
   readonly pixels: number;
   readonly iterations: number;
@@ -103,6 +105,7 @@ export function fineShift(
     framed: work.framed(a),
     slope: { x: -tiltBy.x, y: -tiltBy.y, sdX: Math.sqrt(tilt.xx), sdY: Math.sqrt(tilt.yy) },
     correlation: work.correlation,
+    features: work.features,
     pixels,
     iterations: iteration,
   };

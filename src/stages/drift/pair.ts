@@ -1,8 +1,9 @@
 import { coarsePeaks, type Peak } from "./coarse.js";
 import { fineShift, type FineShift } from "./fine.js";
+import type { PixelSize } from "../../model/raster.js";
 import { pyramidOf, type Pyramid } from "./pyramid.js";
 import type { DriftSettings } from "./settings.js";
-import type { DriftImage, FailedShift, MeasuredShift, PairShift } from "./types.js";
+import type { DriftImage, MeasuredShift, PairShift } from "./types.js";
 
 /** The coarse step works on images of about this side. */
 const COARSE_SIDE = 128;
@@ -10,16 +11,17 @@ const COARSE_SIDE = 128;
 const LEAST_PIXELS = 200;
 /** Steps shrink tenfold and more each time: after one of this length what is left is below 1e-4 px. */
 const TOLERANCE_PX = 5e-4;
+/** A shift less certain than this is none. */
+const WORST_SD_PX = 1;
 /** Peaks down to this share of `leastPeak` are kept as ambiguous. */
 const DOUBTFUL = 0.8;
 /** White noise blurred by σ is correlated as exp(−x²/4σ²): nothing is left at five. Noise correlated before the blur has room as well. */
 const NOISE_REACH = 6;
 
-type Attempt = Omit<MeasuredShift, "reference" | "moving"> | FailedShift["reason"];
-
 /** Shift of `moving` against `reference`.
  *  Coarse: masked normalised cross-correlation over every shift up to `largestJump`, whatever is predicted; then Gauss–Newton on the
- *  overlap, both frames blurred alike, with the gain and every row's offset free.
+ *  overlap, both frames blurred alike, with the gain, every row's offset, tilt and bow free. Without topography the coarse step adds up what the amplitude and
+ *  the marks in it say, and the fine step uses the marks; only where they do not hold a shift, the amplitude itself (`channel` tells).
  *  @param predicted position of `moving` minus that of `reference` as known from elsewhere; only chooses between peaks
  *  that are alike (the status says `ambiguous` all the same)
  *  @returns `failed` with the reason where no peak stands out of the correlation, or the fine step does not settle
@@ -31,66 +33,96 @@ export function measurePair(
   s: DriftSettings,
 ): PairShift {
   const names = { reference: reference.frame, moving: moving.frame };
-  let answer: Attempt;
-  if (reference.marks !== null && moving.marks !== null) {
-    const blurNm = Math.max(reference.marks.blurNm, moving.marks.blurNm);
-    answer = attempt(reference, moving, reference.marks, moving.marks, blurNm, predicted, "marks", s);
-    if (typeof answer === "string") {
-      const wide = Math.max(reference.blurNm, moving.blurNm);
-      answer = attempt(reference, moving, reference, moving, wide, predicted, "amplitude", s);
-    }
-  } else if (reference.channel !== moving.channel) {
-    answer = "no-structure";
-  } else {
-    const blurNm = Math.max(reference.blurNm, moving.blurNm);
-    answer = attempt(reference, moving, reference, moving, blurNm, predicted, reference.channel, s);
+  if (reference.channel !== moving.channel) return { ...names, status: "failed", reason: "no-structure" };
+  const whole = channelOf(reference.channel, reference, moving, reference, moving, s);
+  const marks =
+    reference.marks === null || moving.marks === null
+      ? null
+      : channelOf("marks", reference.marks, moving.marks, reference, moving, s);
+  const channels = marks === null ? [whole] : [marks, whole];
+  const found = findPeak(channels, s) ?? (marks === null ? null : findPeak([whole], s));
+  if (found === null) return { ...names, status: "failed", reason: "no-peak" };
+
+  const { peaks, factor } = found;
+  const { pixel } = reference;
+  const ratio = peaks.length > 1 ? peaks[1].height / peaks[0].height : 0;
+  const doubtful = ratio > s.peakRatio || peaks[0].height < s.leastPeak;
+  const peak = ratio > s.peakRatio ? nearestTo(predicted, peaks, factor, pixel, s) : peaks[0];
+  for (const channel of channels) {
+    const smaller = Math.min(channel.r.whole, channel.m.whole);
+    const least = Math.max(LEAST_PIXELS, s.leastOverlap * smaller);
+    const fine = refine(channel, peak, factor, least);
+    if (fine === null || Math.max(fine.covariance.xx, fine.covariance.yy) > WORST_SD_PX ** 2) continue;
+    return {
+      ...names,
+      status: doubtful || fine.features < s.leastFeatures ? "ambiguous" : "ok",
+      ...inNm(fine, pixel),
+      overlap: fine.pixels / smaller,
+      peak: peaks[0].height,
+      ratio,
+      framed: fine.framed,
+      correlation: fine.correlation,
+      features: fine.features,
+      channel: channel.name,
+      pixel,
+      widthNm: moving.cols * pixel.xNm,
+      heightNm: moving.rows * pixel.yNm,
+    };
   }
-  return typeof answer === "string" ? { ...names, status: "failed", reason: answer } : { ...names, ...answer };
+  return { ...names, status: "failed", reason: "not-converged" };
 }
 
 interface Image {
   readonly values: Float32Array;
   readonly usable: Uint8Array;
+  readonly blurNm: number;
 }
 
-function attempt(
-  reference: DriftImage,
-  moving: DriftImage,
+/** The same channel of both frames, blurred alike. */
+interface Channel {
+  readonly name: MeasuredShift["channel"];
+  readonly r: Pyramid;
+  readonly m: Pyramid;
+}
+
+function channelOf(
+  name: MeasuredShift["channel"],
   imageR: Image,
   imageM: Image,
-  blurNm: number,
-  predicted: { readonly xNm: number; readonly yNm: number } | null,
-  channel: MeasuredShift["channel"],
+  reference: DriftImage,
+  moving: DriftImage,
   s: DriftSettings,
-): Attempt {
+): Channel {
   const { pixel } = reference;
+  const blurNm = Math.max(imageR.blurNm, imageM.blurNm);
   const sigmaX = Math.max(s.leastBlurPx, blurNm / pixel.xNm);
   const sigmaY = Math.max(s.leastBlurPx, blurNm / pixel.yNm);
-  const r = pyramidOf(imageR, reference.rows, reference.cols, sigmaX, sigmaY);
-  const m = pyramidOf(imageM, moving.rows, moving.cols, sigmaX, sigmaY);
-  const smaller = Math.min(r.whole, m.whole);
-  const least = Math.max(LEAST_PIXELS, s.leastOverlap * smaller);
-
-  const side = Math.max(reference.rows, reference.cols, moving.rows, moving.cols);
-  let found: { peaks: Peak[]; factor: number } | null = null;
-  for (let factor = Math.max(1, Math.round(side / COARSE_SIDE)); ; factor = Math.floor(factor / 2)) {
-    const peaks = coarsePeaks(r.coarse(factor), m.coarse(factor), s);
-    if (peaks.length > 0 && peaks[0].height >= DOUBTFUL * s.leastPeak) found = { peaks, factor };
-    // fine structure drowns when pixels are put together: once more with smaller blocks
-    if (found !== null || factor === 1) break;
-  }
-  if (found === null) return "no-peak";
-  const { peaks, factor } = found;
-  const ratio = peaks.length > 1 ? peaks[1].height / peaks[0].height : 0;
-  const ambiguous = ratio > s.peakRatio || peaks[0].height < s.leastPeak;
-  const peak = ambiguous ? nearestTo(predicted, peaks, factor, pixel, s) : peaks[0];
-
-  const reachPx = { x: Math.ceil(NOISE_REACH * sigmaX), y: Math.ceil(NOISE_REACH * sigmaY) };
-  const fine = refine(r, m, peak, factor, least, reachPx);
-  if (fine === null) return "not-converged";
-  const overlap = fine.pixels / smaller;
   return {
-    status: ambiguous ? "ambiguous" : "ok",
+    name,
+    r: pyramidOf(imageR, reference.rows, reference.cols, sigmaX, sigmaY),
+    m: pyramidOf(imageM, moving.rows, moving.cols, sigmaX, sigmaY),
+  };
+}
+
+function findPeak(channels: readonly Channel[], s: DriftSettings): { peaks: Peak[]; factor: number } | null {
+  const { r, m } = channels[0];
+  const side = Math.max(r.grid.rows, r.grid.cols, m.grid.rows, m.grid.cols);
+  for (let factor = Math.max(1, Math.round(side / COARSE_SIDE)); factor >= 1; factor = Math.floor(factor / 2)) {
+    const peaks = coarsePeaks(
+      channels.map((c) => [c.r.coarse(factor), c.m.coarse(factor)] as const),
+      s,
+    );
+    // fine structure drowns when pixels are put together: once more with smaller blocks
+    if (peaks.length > 0 && peaks[0].height >= DOUBTFUL * s.leastPeak) return { peaks, factor };
+  }
+  return null;
+}
+
+type Lengths = Pick<MeasuredShift, "xNm" | "yNm" | "xxNm2" | "xyNm2" | "yyNm2" | "stretch">;
+
+/** A feature that moved by +d in the image gives its frame a drift of −d. */
+function inNm(fine: FineShift, pixel: PixelSize): Lengths {
+  return {
     xNm: -fine.dx * pixel.xNm,
     yNm: -fine.dy * pixel.yNm,
     xxNm2: fine.covariance.xx * pixel.xNm * pixel.xNm,
@@ -102,15 +134,6 @@ function attempt(
       sdXNm: fine.slope.sdX * pixel.xNm,
       sdYNm: fine.slope.sdY * pixel.yNm,
     },
-    overlap,
-    peak: peaks[0].height,
-    ratio,
-    framed: fine.framed,
-    correlation: fine.correlation,
-    channel,
-    pixel,
-    widthNm: moving.cols * pixel.xNm,
-    heightNm: moving.rows * pixel.yNm,
   };
 }
 
@@ -119,7 +142,7 @@ function nearestTo(
   predicted: { readonly xNm: number; readonly yNm: number } | null,
   peaks: readonly Peak[],
   factor: number,
-  pixel: { readonly xNm: number; readonly yNm: number },
+  pixel: PixelSize,
   s: DriftSettings,
 ): Peak {
   if (predicted === null) return peaks[0];
@@ -131,14 +154,7 @@ function nearestTo(
 }
 
 /** From whole pixels of the coarse grid to the full one: first on the coarse grid itself, whose basin is wider. */
-function refine(
-  r: Pyramid,
-  m: Pyramid,
-  peak: Peak,
-  factor: number,
-  leastPixels: number,
-  reachPx: { readonly x: number; readonly y: number },
-): FineShift | null {
+function refine({ r, m }: Channel, peak: Peak, factor: number, leastPixels: number): FineShift | null {
   let dx = peak.lagX * factor;
   let dy = peak.lagY * factor;
   if (factor > 1 || peak.widthPx > 3) {
@@ -158,6 +174,11 @@ function refine(
     r.sloped(1),
     m.sloped(1),
     { dx, dy },
-    { leashPx: factor + 1, tolerancePx: TOLERANCE_PX, leastPixels, reachPx },
+    {
+      leashPx: factor + 1,
+      tolerancePx: TOLERANCE_PX,
+      leastPixels,
+      reachPx: { x: Math.ceil(NOISE_REACH * r.sigmaXPx), y: Math.ceil(NOISE_REACH * r.sigmaYPx) },
+    },
   );
 }

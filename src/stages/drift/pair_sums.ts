@@ -22,6 +22,8 @@ export class PairSums {
   /** Correlation and ratio of the spreads, nuisance off; set by `residuals`. */
   correlation = 0;
   gain = 1;
+  /** Number of places that make the correlation: (Σ c)²/Σ c² over blocks of 2 × 2 blocks, c the block's part of Σ R M. One particle on another makes 1. */
+  features = 0;
   private readonly rows: number;
   private readonly cols: number;
   private readonly residual: Float32Array;
@@ -83,6 +85,7 @@ export class PairSums {
     }
     if (!(rr > 0 && mm > 0)) return 0;
     this.correlation = rm / Math.sqrt(rr * mm);
+    this.features = this.countFeatures();
     // the ratio of the spreads: noise in R would pull down the regression of M on R
     const gain = Math.sqrt(mm / rr);
     this.gain = gain;
@@ -98,6 +101,27 @@ export class PairSums {
     const spread = SD_PER_MAD * selectInPlace(sample, sample.length >> 1);
     this.weigh(Math.max(spread, 1e-7 * Math.sqrt(mm / pixels)));
     return pixels;
+  }
+
+  private countFeatures(): number {
+    const { rows, cols, residual, weight, level } = this;
+    const side = 2 * BLOCK;
+    const across = Math.ceil(cols / side);
+    const parts = new Float64Array(across * Math.ceil(rows / side));
+    for (let i = 0; i < rows; i++) {
+      const row = Math.floor(i / side) * across;
+      for (let j = 0; j < cols; j++) {
+        const p = i * cols + j;
+        if (weight[p] !== 0) parts[row + ((j / side) | 0)] += level[p] * residual[p];
+      }
+    }
+    let sum = 0;
+    let square = 0;
+    for (const c of parts) {
+      sum += c;
+      square += c * c;
+    }
+    return square > 0 ? (sum * sum) / square : 0;
   }
 
   private weigh(spread: number): void {

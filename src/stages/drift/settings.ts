@@ -29,6 +29,13 @@ export const settings = {
     min: 0.1,
     max: 1,
   },
+  leastFeatures: {
+    default: 2.5,
+    unit: "1",
+    means: "number of separate features that must make the correlation; one particle lying on another makes 1",
+    min: 1,
+    max: 100,
+  },
   leastBlurPx: {
     default: 0.8,
     unit: "px",

@@ -24,7 +24,7 @@ export interface DriftImage {
 export interface MeasuredShift {
   readonly reference: number;
   readonly moving: number;
-  /** `ambiguous`: another peak of the correlation is nearly as high; to be believed only where other pairs agree. */
+  /** `ambiguous`: another peak of the correlation is nearly as high, or the peak is low or made by one or two particles: alone it places no frame. */
   readonly status: "ok" | "ambiguous";
   readonly xNm: number;
   readonly yNm: number;
@@ -43,6 +43,8 @@ export interface MeasuredShift {
   readonly framed: number;
   /** Correlation over the overlap after the fine step. */
   readonly correlation: number;
+  /** Number of places in the overlap that make it: about 1 where a single particle lies on another. */
+  readonly features: number;
   readonly channel: "topography" | "amplitude" | "marks";
   /** Pixel, and size of the moving frame, nm. */
   readonly pixel: PixelSize;
@@ -54,7 +56,7 @@ export interface FailedShift {
   readonly reference: number;
   readonly moving: number;
   readonly status: "failed";
-  readonly reason: "too-few-pixels" | "no-peak" | "not-converged" | "too-little-overlap" | "no-structure";
+  readonly reason: "no-peak" | "not-converged" | "no-structure";
 }
 
 /** The answer of one pair; a failed pair has no numbers to misuse. */
