@@ -77,7 +77,11 @@ export class DebrisAccumulator {
       const byPhase = departures(phase, ring, byAmplitude.flat, rows, cols);
       addChannel(grid.phase, byPhase.strict, grid, rows, cols, atRow, atCol);
       addPairs(grid, log, ringOfLog, phase, ring, byPhase.flat, rows, cols, atRow, atCol);
-      addRatios(phase, ring, byPhase.calm.map((c, b) => c & byAmplitude.calm[b]));
+      addRatios(
+        phase,
+        ring,
+        byPhase.calm.map((c, b) => c & byAmplitude.calm[b]),
+      );
       grid.pair.noise = Math.max(grid.pair.noise, byPhase.noise);
       const contrast = second === undefined ? null : contrastOf([first, second], ringOfLog, ring, byPhase.flat);
       if (contrast !== null) grid.pair.contrasts.push(contrast);
@@ -99,7 +103,16 @@ export class DebrisAccumulator {
   finish(): DebrisMap {
     if (this.#grid === null) {
       const pixel = { xNm: 1, yNm: 1 };
-      return { originXNm: 0, originYNm: 0, pixel, rows: 0, cols: 0, mask: new Uint8Array(0), strength: new Float32Array(0), spots: 0 };
+      return {
+        originXNm: 0,
+        originYNm: 0,
+        pixel,
+        rows: 0,
+        cols: 0,
+        mask: new Uint8Array(0),
+        strength: new Float32Array(0),
+        spots: 0,
+      };
     }
     return decide(this.#grid, this.#tip, this.#settings);
   }

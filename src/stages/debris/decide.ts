@@ -55,7 +55,7 @@ export function decide(grid: Grid, tip: Tip | null, s: DebrisSettings): DebrisMa
   const unseen = byHeight.map((b, p) => (grid.amplitude.count[p] >= s.leastFrames ? 0 : b));
   const wider = widen(unseen, rows, cols, 2 * marginXPx, 2 * marginYPx);
   // one pixel more than is marked, so that between pixels the strength goes on
-  const strength = coreStrength(grid, spots, bumps, widen(near, rows, cols, 1, 1), s.coreShare, s.leastFrames);
+  const strength = coreStrength(grid, spots, bumps, widen(near, rows, cols, 1, 1), s.coreShare);
   const mask = new Uint8Array(n);
   for (let p = 0; p < n; p++) mask[p] = strength[p] >= 1 ? CORE : near[p] === 1 || wider[p] === 1 ? MARGIN : 0;
   return {

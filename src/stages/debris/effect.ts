@@ -8,11 +8,18 @@ const MOST_RATIO = 5;
 const ENOUGH_FRAMES = 4;
 /** A departure of its own standard deviations that is not noise. */
 const SIGNIFICANT = 3;
+/** In fewer frames, or where noise hides a core's departure, a bump is taken for debris that takes the state away. */
+const LEAST_FRAMES = 2;
 /** Mark of a place where debris is known, but not what it does to the signal. */
 const KNOWN = 2;
 
 export function emptyEffect(n: number): EffectSums {
-  return { re: new Float32Array(n), im: new Float32Array(n), weight: new Float32Array(n), squares: new Float32Array(n) };
+  return {
+    re: new Float32Array(n),
+    im: new Float32Array(n),
+    weight: new Float32Array(n),
+    squares: new Float32Array(n),
+  };
 }
 
 /** Adds one frame's ratios z/z_surroundings − 1 (complex; real where there is no phase), each shared out among the four grid
@@ -105,7 +112,6 @@ export function contrastOverLevel(contrasts: readonly Contrast[]): number {
  *  brighter state departs by more; the figure is for that one.
  *  @param spots 1 = debris, `bumps` 1 = debris known by its height, row-major on the grid
  *  @param within 1 = look here; 0 elsewhere in the result
- *  @param leastFrames in fewer frames than this a bump is taken for debris that takes the state away
  *  @returns row-major on the grid; at least 1 in the core */
 export function coreStrength(
   grid: Grid,
@@ -113,7 +119,6 @@ export function coreStrength(
   bumps: Uint8Array,
   within: Uint8Array,
   coreShare: number,
-  leastFrames: number,
 ): Float32Array {
   const { lone, mixed } = grid.effect;
   const out = new Float32Array(spots.length);
@@ -122,6 +127,7 @@ export function coreStrength(
     if (within[p] === 0) continue;
     const alone = lone.weight[p] >= ENOUGH_FRAMES;
     const frames = lone.weight[p] + (alone ? 0 : mixed.weight[p]);
+    let measured = frames >= LEAST_FRAMES;
     if (frames > 0) {
       const re = (lone.re[p] + (alone ? 0 : mixed.re[p])) / frames;
       const im = (lone.im[p] + (alone ? 0 : mixed.im[p])) / frames;
@@ -129,8 +135,9 @@ export function coreStrength(
       const sd = (grid.pair.noise * Math.sqrt(squares)) / frames;
       const size = Math.hypot(re, im);
       out[p] = size >= SIGNIFICANT * sd ? size / least : Math.min(size / least, 0.99);
+      if (SIGNIFICANT * sd > least) measured = false;
     }
-    if (frames < leastFrames && (bumps[p] === 1 || (frames === 0 && spots[p] === 1))) out[p] = Math.max(out[p], KNOWN);
+    if (!measured && (bumps[p] === 1 || (frames === 0 && spots[p] === 1))) out[p] = Math.max(out[p], KNOWN);
   }
   return out;
 }

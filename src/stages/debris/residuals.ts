@@ -129,6 +129,9 @@ function pixelNoise(values: Float32Array, rows: number, cols: number): number {
   return n === 0 ? 0 : (SD_PER_MEDIAN_ABS / Math.sqrt(6)) * medianInPlace(r, n);
 }
 
+/** The film's height is the same all round, so a corner of the image, with three sectors, does for it. */
+const LEAST_SECTORS_OF_HEIGHT = 3;
+
 /** Heights over the surroundings, nm; NaN where not measured. */
 export function heights(
   topography: Float32Array,
@@ -137,7 +140,7 @@ export function heights(
   radiusXPx: number,
   radiusYPx: number,
 ): Float32Array {
-  const ring = ringOf(topography, rows, cols, radiusXPx, radiusYPx);
+  const ring = ringOf(topography, rows, cols, radiusXPx, radiusYPx, LEAST_SECTORS_OF_HEIGHT);
   const out = new Float32Array(rows * cols);
   for (let i = 0; i < rows; i++) {
     for (let j = 0; j < cols; j++) {

@@ -1,6 +1,6 @@
 /** Boxes whose means stand for the surroundings, evenly round the ring. */
 const SECTORS = 8;
-/** So many of them must have been measured. */
+/** So many of them must have been measured: an edge of the image leaves five, a corner three. */
 const LEAST_SECTORS = 5;
 
 /** The surroundings of each block of 2 × 2 pixels: [blockRows, blockCols], blocks in reading order. */
@@ -18,8 +18,16 @@ export interface Ring {
  *  itself and what lies inside the ring do not enter. By summed areas, so the cost does not depend on the sizes (Crow 1984,
  *  Comput. Graph. 18, 207).
  *  @param values row-major [rows, cols], NaN = not measured
- *  @param radiusXPx, radiusYPx of the ring, in columns and rows */
-export function ringOf(values: Float32Array, rows: number, cols: number, radiusXPx: number, radiusYPx: number): Ring {
+ *  @param radiusXPx, radiusYPx of the ring, in columns and rows
+ *  @param leastSectors of the eight that must have been measured; with fewer than three there is no spread */
+export function ringOf(
+  values: Float32Array,
+  rows: number,
+  cols: number,
+  radiusXPx: number,
+  radiusYPx: number,
+  leastSectors = LEAST_SECTORS,
+): Ring {
   const width = cols + 1;
   const sum = new Float64Array((rows + 1) * width);
   const count = new Int32Array((rows + 1) * width);
@@ -70,7 +78,7 @@ export function ringOf(values: Float32Array, rows: number, cols: number, radiusX
           sum[bottom * width + right] - sum[bottom * width + left] - sum[top * width + right] + sum[top * width + left];
         insert(found, n++, s / c);
       }
-      if (n < LEAST_SECTORS) continue;
+      if (n < leastSectors) continue;
       const middle = n % 2 === 1 ? found[n >> 1] : 0.5 * (found[(n >> 1) - 1] + found[n >> 1]);
       for (let k = 0; k < n; k++) insert(away, k, Math.abs(found[k] - middle));
       const b = bi * blockCols + bj;

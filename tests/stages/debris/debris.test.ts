@@ -226,7 +226,11 @@ describe("debris over a cooldown", () => {
   test("a bump is core where the frames could not show what it does, and only there", () => {
     const bumps = [dot(200, 200, { heightNm: 15 }), dot(1480, 500, { heightNm: 15 })];
     // the second comes into view at the end, with a wall through it
-    const frames = [...crossing(10), { xNm: 720, yNm: 0, share: front(1600) }, { xNm: 725, yNm: 4, share: front(1620) }];
+    const frames = [
+      ...crossing(10),
+      { xNm: 720, yNm: 0, share: front(1600) },
+      { xNm: 725, yNm: 4, share: front(1620) },
+    ];
     const { map, drifts } = mapOf({ seed: 23, dots: bumps, frames });
     expect(at(debrisInFrame(map, drifts[0], SIZE, SIZE), drifts[0], bumps[0])).toBe(MARGIN);
     expect(at(debrisInFrame(map, drifts[10], SIZE, SIZE), drifts[10], bumps[1])).toBe(CORE);
