@@ -12,8 +12,12 @@ export interface Assignment {
   readonly shown: Shown[];
   /** Contrast used; from groups of single-state frames where no frame shows both. */
   readonly contrast: Contrast | null;
+  /** For frames that amplitude could not tell: whether it allows either state. */
+  readonly allows: readonly { readonly upper: boolean; readonly lower: boolean }[];
 }
 
+/** A state is allowed within this many standard deviations of what is predicted for it. */
+const ALLOWED_SIGMAS = 3;
 /** Odds that decide between the two states. */
 const LEAST_LOG_ODDS = Math.log(100);
 /** A single-state frame this near to a state, in units of the contrast, may be that state; in between it is neither. */
@@ -41,6 +45,7 @@ export function assignStates(
     return lowerLevel(p, contrast.logRatio.at(temperatureK), frames[p.index]);
   });
   const skip = new Set(rejected.filter((k) => (fits[k]?.second?.share ?? 0) > NEAR));
+  const allows = fits.map(() => ({ upper: false, lower: false }));
   const open = new Set(fits.flatMap((f, k) => (f?.main && shown[k] === "unknown" && !skip.has(k) ? [k] : [])));
   while (open.size > 0) {
     // the frame next to what is known: gains are nearest there
@@ -56,13 +61,14 @@ export function assignStates(
     const ratio = contrast.logRatio.at(temperatureK);
     const predicted = predictLogLevel(known, frame, temperatureK, s.gainSd, s.levelSlope, rangeK);
     const decided = nearerState(logAmplitude(fit), fit.main?.logSd ?? 0, predicted, ratio, s.contrastScatter);
-    shown[at] = decided;
-    if (decided === "unknown") continue;
-    const value = logAmplitude(fit) - (decided === "upper" ? ratio.mean : 0);
-    const sd = Math.hypot(fit.main?.logSd ?? 0, decided === "upper" ? Math.hypot(ratio.sd, s.contrastScatter) : 0);
+    shown[at] = decided.state;
+    allows[at] = { upper: decided.upper, lower: decided.lower };
+    if (decided.state === "unknown") continue;
+    const value = logAmplitude(fit) - (decided.state === "upper" ? ratio.mean : 0);
+    const sd = Math.hypot(fit.main?.logSd ?? 0, decided.state === "upper" ? Math.hypot(ratio.sd, s.contrastScatter) : 0);
     known.push({ frame, temperatureK, value, sd: Math.max(sd, 1e-4) });
   }
-  return { shown, contrast };
+  return { shown, contrast, allows };
 }
 
 /** Lower level of a frame that shows both, from both: precision-weighted. */
@@ -85,16 +91,20 @@ function nearerState(
   predicted: { mean: number; sd: number },
   ratio: { mean: number; sd: number },
   scatter: number,
-): Shown {
-  if (!Number.isFinite(predicted.mean)) return "unknown";
+): { readonly state: Shown; readonly upper: boolean; readonly lower: boolean } {
+  if (!Number.isFinite(predicted.mean)) return { state: "unknown", upper: true, lower: true };
   const d = value - predicted.mean;
   const lowSd = Math.hypot(predicted.sd, valueSd);
   const highSd = Math.hypot(lowSd, ratio.sd, scatter);
   const logOdds = 0.5 * ((d / lowSd) ** 2 - ((d - ratio.mean) / highSd) ** 2) + Math.log(lowSd / highSd);
   const place = d / ratio.mean;
   const between = place > NEAR && place < 1 - NEAR;
-  if (between || Math.abs(logOdds) < LEAST_LOG_ODDS) return "unknown";
-  return logOdds > 0 ? "upper" : "lower";
+  const unknown = between || Math.abs(logOdds) < LEAST_LOG_ODDS;
+  return {
+    state: unknown ? "unknown" : logOdds > 0 ? "upper" : "lower",
+    upper: Math.abs(d - ratio.mean) < ALLOWED_SIGMAS * highSd,
+    lower: Math.abs(d) < ALLOWED_SIGMAS * lowSd,
+  };
 }
 
 /** Two groups need this gap in the logarithm of the amplitude, and this many times the scatter inside them. */
@@ -120,7 +130,8 @@ function groupBySingles(
     const d = v(order[k]) - v(order[k - 1]);
     if (d > gap) [gap, cut] = [d, k];
   }
-  const none: Assignment = { shown, contrast: null };
+  const allows = fits.map(() => ({ upper: false, lower: false }));
+  const none: Assignment = { shown, contrast: null, allows };
   const lower = order.slice(0, Math.max(0, cut));
   const upper = order.slice(Math.max(0, cut));
   if (lower.length < 2 || upper.length < 2) return none;
@@ -134,7 +145,7 @@ function groupBySingles(
   if (!sense.consistent || gap < least || gap < GAP_OVER_SCATTER * inside) return none;
   const ratio = { mean: mean(upper) - mean(lower), sd: Math.hypot(inside, s.gainSd) };
   for (const k of used) shown[k] = upperSet.has(k) ? "upper" : "lower";
-  return { shown, contrast: { logRatio: { at: () => ratio } satisfies Course, stepRad: null } };
+  return { shown, contrast: { logRatio: { at: () => ratio } satisfies Course, stepRad: null }, allows };
 }
 
 /** Whether the groups divide every series at one temperature, the same way round in all. */

@@ -82,8 +82,13 @@ export function mapStates(
     if (z.usable[p] === 1) map.states[p] = u[p] > 0.5 ? METALLIC : INSULATING;
   }
   const leastPx = leastDomainPx(z, tip, s);
-  const pixelsOff = (pixels: Int32Array, state: 0 | 1): boolean => onChord(pixels, state, z, share, levels, curve);
-  const cleared = clearIslands(map.states, rows, cols, leastPx, pixelsOff);
+  const cleared = clearIslands(
+    map.states,
+    rows,
+    cols,
+    leastPx,
+    (pixels, state) => onChord(pixels, state, z, share, levels, curve) && !isScar(pixels, state, z, share, tip),
+  );
   const [insulatingPx, metallicPx] = cleared.totalPx;
   const rarer = metallicPx < insulatingPx ? METALLIC : INSULATING;
   // a few lone spots in a frame of one state: believed only from a size that noise and missed particles do not reach
@@ -155,7 +160,7 @@ function leastDomainPx(z: Pixels, tip: Tip | null, s: StatesSettings): number {
 }
 
 /** An island whose signal lies far off the line between the two levels, or far beyond them, is a particle and not a domain. */
-const OFF_CHORD = 0.35;
+const OFF_CHORD = 0.25;
 const BEYOND = 1.5;
 
 function onChord(
@@ -181,6 +186,40 @@ function onChord(
   const noise = Math.max(curve.sdInsulating, curve.sdMetallic) / Math.sqrt(n);
   const reach = state === METALLIC ? u / n : 1 - u / n;
   return (!z.hasPhase || off < OFF_CHORD + 3 * noise) && reach < BEYOND + 3 * noise;
+}
+
+/** Rows over which an island may still be a scar, and how far the rows beside it must lag behind what the tip's blur would carry over. */
+const SCAR_ROWS = 2;
+const SCAR_LAG = 0.6;
+
+/** A scar that the cleaning missed: a run along one or two rows whose neighbours above and below know nothing of it, although the tip
+ *  would spread anything on the sample over them. */
+function isScar(pixels: Int32Array, state: 0 | 1, z: Pixels, share: Float32Array, tip: Tip | null): boolean {
+  const { rows, cols, pixel } = z;
+  const inside = new Set(pixels);
+  let first = rows;
+  let last = -1;
+  for (const p of pixels) {
+    const i = Math.floor(p / cols);
+    first = Math.min(first, i);
+    last = Math.max(last, i);
+  }
+  if (last - first + 1 > SCAR_ROWS) return false;
+  const sigmaNm = tip === null ? pixel.yNm : tip.resolutionNm / FWHM_PER_SIGMA;
+  const departure = (p: number): number => (state === METALLIC ? share[p] : 1 - share[p]);
+  let [inner, innerN, outer, outerN] = [0, 0, 0, 0];
+  for (const p of pixels) {
+    inner += departure(p);
+    innerN++;
+    for (const q of [p - cols, p + cols]) {
+      if (q < 0 || q >= share.length || inside.has(q) || z.usable[q] === 0) continue;
+      outer += departure(q);
+      outerN++;
+    }
+  }
+  if (outerN === 0) return false;
+  const carried = Math.exp(-0.5 * (pixel.yNm / sigmaNm) ** 2);
+  return outer / outerN < SCAR_LAG * carried * (inner / innerN);
 }
 
 /** Exactly 0 or 1, with the largest domain that could have been missed as the other end of the interval: the least area, made smaller

@@ -48,13 +48,18 @@ export function nameStates(frames: readonly FrameInfo[], upperShare: readonly nu
 
 /** Single-state frames that amplitude could not tell, by their place among the others of their series: the metallic share rises with
  *  temperature, so a single-state frame above one that holds metal is metallic, and one below a frame that holds insulator insulating.
- *  Frames with evidence both ways stay unknown.
- *  @param may which unknown frames may be told this way */
-export function tellByOrder(frames: readonly FrameInfo[], shown: readonly Shown[], metallicIsUpper: boolean, may: readonly boolean[]): Shown[] {
+ *  Frames with evidence both ways stay unknown, and those whose amplitude speaks against the state.
+ *  @param allows whether the amplitude of an unknown frame allows either state */
+export function tellByOrder(
+  frames: readonly FrameInfo[],
+  shown: readonly Shown[],
+  metallicIsUpper: boolean,
+  allows: readonly { readonly upper: boolean; readonly lower: boolean }[],
+): Shown[] {
   const metallic: Shown = metallicIsUpper ? "upper" : "lower";
   const insulating: Shown = metallicIsUpper ? "lower" : "upper";
   return shown.map((own, k) => {
-    if (own !== "unknown" || !may[k]) return own;
+    if (own !== "unknown") return own;
     let [above, below] = [false, false];
     frames.forEach((f, n) => {
       const other = shown[n];
@@ -62,6 +67,8 @@ export function tellByOrder(frames: readonly FrameInfo[], shown: readonly Shown[
       if (f.temperatureK < frames[k].temperatureK && (other === metallic || other === "both")) above = true;
       if (f.temperatureK > frames[k].temperatureK && (other === insulating || other === "both")) below = true;
     });
-    return above === below ? "unknown" : above ? metallic : insulating;
+    if (above === below) return "unknown";
+    const state = above ? metallic : insulating;
+    return allows[k][state === "upper" ? "upper" : "lower"] ? state : "unknown";
   });
 }

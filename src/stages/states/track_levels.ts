@@ -7,7 +7,7 @@ import type { LevelFit, StateEstimate } from "./level_fit.js";
 import { nameStates, tellByOrder } from "./name_states.js";
 import { fromPolarNoise, medianNoise, toPolarNoise, type PolarNoise } from "./polar_noise.js";
 import type { StatesSettings } from "./settings.js";
-import { trackContrast, type Contrast, type Pin } from "./track_contrast.js";
+import { trackContrast, type Pin } from "./track_contrast.js";
 
 const NOTHING: ComplexValue = { re: Number.NaN, im: Number.NaN };
 const NO_NOISE: NoiseCovariance = { rr: Number.NaN, ri: Number.NaN, ii: Number.NaN };
@@ -32,12 +32,10 @@ export function trackLevels(
   const temperatures = frames.map((f) => f.temperatureK);
   const rangeK: [number, number] = [Math.min(...temperatures), Math.max(...temperatures)];
   const { pins, rejected, contrast: pinned } = trackContrast(fits, frames, rangeK, s);
-  const { shown, contrast } = assignStates(fits, frames, pins, rejected, pinned, rangeK, s);
+  const { shown, contrast, allows } = assignStates(fits, frames, pins, rejected, pinned, rangeK, s);
   const upperShare = shown.map((what, k) => shareOf(what, pins, k));
   const naming = nameStates(frames, upperShare, s);
-  // amplitude that lies between the states, or a contrast of its own, is not overruled by the order of temperatures
-  const may = fits.map((fit, k) => fit?.main != null && contrast !== null && orderMayTell(fit, k, rejected, contrast, frames[k], s));
-  const told = tellByOrder(frames, shown, naming.metallicIsUpper, may);
+  const told = tellByOrder(frames, shown, naming.metallicIsUpper, allows);
 
   const pinOf = new Map(pins.map((p) => [p.index, p]));
   const polar = told.map((what, k): PolarLevels | null => {
@@ -81,20 +79,6 @@ function shareOf(what: Shown, pins: readonly Pin[], index: number): number {
   if (what === "upper") return 1;
   if (what === "lower") return 0;
   return what === "both" ? (pins.find((p) => p.index === index)?.upper.share ?? Number.NaN) : Number.NaN;
-}
-
-/** The order of temperatures may only tell frames whose amplitude says nothing: where the contrast in amplitude is small against the
- *  gain's changes. */
-function orderMayTell(
-  fit: LevelFit,
-  index: number,
-  rejected: readonly number[],
-  contrast: Contrast,
-  info: FrameInfo,
-  s: StatesSettings,
-): boolean {
-  if (rejected.includes(index) && fit.second !== null && fit.second.share > 0.1) return false;
-  return Math.abs(contrast.logRatio.at(info.temperatureK).mean) < 4 * s.gainSd;
 }
 
 /** Noise of each state along and across its level, relative to it: the median over the frames that show it. */
