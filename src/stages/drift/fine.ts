@@ -1,7 +1,7 @@
 import { stationaryCovariance } from "./noise_covariance.js";
 import { larger, scoreCovariance, type Sym2 } from "./score_covariance.js";
 import { PairSums, type Slope } from "./pair_sums.js";
-import { sampleShifted, type Shifted, type Sloped } from "./shifted.js";
+import { offsetFor, sampleShifted, type Shifted, type Sloped } from "./shifted.js";
 
 export interface FineShift {
   /** The feature at (row, col) of the reference lies at (row + dy, col + dx) of the moving frame; pixels. */
@@ -54,37 +54,36 @@ export function fineShift(
 ): FineShift | null {
   const { rows, cols } = reference.grid;
   const work = new PairSums(reference.grid, reference.gradient);
-  const slopesAt = (dx: number, dy: number): [Shifted, Shifted] => [
-    sampleShifted(moving.gradientX, rows, cols, dx, dy),
-    sampleShifted(moving.gradientY, rows, cols, dx, dy),
+  let at = offsetFor(start.dx, start.dy, null);
+  const slopes = (): [Shifted, Shifted] => [
+    sampleShifted(moving.gradientX, rows, cols, at),
+    sampleShifted(moving.gradientY, rows, cols, at),
   ];
-  let { dx, dy } = start;
   let slope: { xx: number; xy: number; yx: number; yy: number } | null = null;
   let iteration = 0;
   let step = Number.POSITIVE_INFINITY;
   for (; iteration < ITERATIONS && step > options.tolerancePx; iteration++) {
-    const sampled = sampleShifted(moving.grid, rows, cols, dx, dy);
+    const sampled = sampleShifted(moving.grid, rows, cols, at);
     if (work.residuals(sampled) < options.leastPixels) return null;
     // the gradients change little on the way: once at the start, once near the end
     if (iteration === 0 || (iteration <= 3 && step > 0.1)) {
       work.levelGradient();
-      slope = work.slope(...slopesAt(dx, dy), false);
+      slope = work.slope(...slopes(), false);
     }
     const score = work.score();
     const delta = slope === null ? null : solve(slope, score.x, score.y);
     if (delta === null) return null;
     const length = Math.hypot(delta.x, delta.y);
     const shorter = length > 1 ? 1 / length : 1;
-    dx -= shorter * delta.x;
-    dy -= shorter * delta.y;
-    if (!(Math.hypot(dx - start.dx, dy - start.dy) <= options.leashPx)) return null;
+    at = offsetFor(at.dx - shorter * delta.x, at.dy - shorter * delta.y, at);
+    if (!(Math.hypot(at.dx - start.dx, at.dy - start.dy) <= options.leashPx)) return null;
     step = length;
   }
   if (step > options.tolerancePx) return null;
 
-  const pixels = work.residuals(sampleShifted(moving.grid, rows, cols, dx, dy));
+  const pixels = work.residuals(sampleShifted(moving.grid, rows, cols, at));
   if (pixels < options.leastPixels) return null;
-  const [gx, gy] = slopesAt(dx, dy);
+  const [gx, gy] = slopes();
   work.levelGradient();
   const a = work.slope(gx, gy, true);
   const score = work.score();
@@ -99,8 +98,8 @@ export function fineShift(
   const tiltBy = solve(level.slope, level.score.x, level.score.y);
   if (mean === null || tilt === null || tiltBy === null || !Number.isFinite(score.x + score.y)) return null;
   return {
-    dx,
-    dy,
+    dx: at.dx,
+    dy: at.dy,
     covariance: mean,
     framed: work.framed(a),
     slope: { x: -tiltBy.x, y: -tiltBy.y, sdX: Math.sqrt(tilt.xx), sdY: Math.sqrt(tilt.yy) },
