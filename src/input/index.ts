@@ -5,3 +5,4 @@ export { describeCooldown } from "./describe_cooldown.js";
 export { frameDigest } from "./frame_digest.js";
 export { inspectFrame } from "./inspect_frame.js";
 export { hashFile } from "./source_files.js";
+export { draftCooldown } from "./draft.js";

@@ -96,7 +96,8 @@ function kelvins(axis: Axis | null, pages: number): readonly number[] | null {
   if (axis === null || axis.values.length !== pages || pages > MAX_PAGES) return null;
   const unit = axis.unit.trim();
   if (/^(k|kelvins?)$/i.test(unit)) return axis.values;
-  if (/^(°\s?c|℃|c|deg_?c|celsius|degrees? ?celsius)$/i.test(unit)) return axis.values.map((c) => c + 273.15);
+  if (/^(°\s?c|℃|c|deg_?c|celsius|degrees? ?celsius)$/i.test(unit))
+    return axis.values.map((c) => Number((c + 273.15).toFixed(9)));
   return null;
 }
 
