@@ -41,6 +41,12 @@ function build(): Command {
     .action(async (yaml: string, o: object) => (await import("./check.js")).check(yaml, o));
 
   program
+    .command("draft")
+    .description("write a cooldown.yaml for a folder of images from their names, with what is left to fill in marked")
+    .argument("<folder>", "the folder of one cooldown's images")
+    .action(async (folder: string) => (await import("./draft.js")).draft(folder));
+
+  program
     .command("ingest")
     .description("analyse a cooldown and store the result; the same work is recognised and not done twice")
     .argument("<yaml>", "the cooldown's description")
