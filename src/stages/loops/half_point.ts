@@ -73,28 +73,37 @@ export function drawHalf(b: BranchData, fit: Float64Array, smoothness: number, r
   return c.belowK + crossingInGap(level, concentration, random) * (c.aboveK - c.belowK);
 }
 
+const MOST_STICKS = 1200;
+const weightAt = new Float64Array(MOST_STICKS);
+const places = new Float64Array(MOST_STICKS);
+
 /** Position in 0..1 at which a Dirichlet process on it, of given concentration, passes `level`: by stick breaking (Sethuraman 1994,
  *  Stat. Sin. 4, 639). */
 function crossingInGap(level: number, concentration: number, random: Random): number {
   if (concentration < 1e-6) return random.uniform();
-  // beyond this the process is the straight line to 2 % of the gap
-  if (concentration > 150) {
+  // beyond this the process is normal to a few per cent of its own width
+  if (concentration > 60) {
     const sd = Math.sqrt((level * (1 - level)) / (concentration + 1));
     return Math.min(1, Math.max(0, level + sd * random.normal()));
   }
-  const atoms: { at: number; weight: number }[] = [];
+  // sticks until next to nothing is left; what matters is the order of their places
+  let count = 0;
   let left = 1;
-  while (left > 1e-3) {
+  while (left > 1e-3 && count < MOST_STICKS) {
     const part = 1 - random.uniform() ** (1 / concentration);
-    atoms.push({ at: random.uniform(), weight: left * part });
+    weightAt[count] = left * part;
+    places[count] = random.uniform();
     left *= 1 - part;
+    count++;
   }
-  atoms.sort((p, q) => p.at - q.at);
-  let sum = 0;
+  // the place where the weights before it first add to the level: bisection on places needs no sorting
   const goal = level * (1 - left);
-  for (const a of atoms) {
-    sum += a.weight;
-    if (sum >= goal) return a.at;
+  let at = 1;
+  for (let k = 0; k < count; k++) {
+    if (places[k] >= at) continue;
+    let sum = 0;
+    for (let n = 0; n < count; n++) if (places[n] <= places[k]) sum += weightAt[n];
+    if (sum >= goal) at = places[k];
   }
-  return 1;
+  return at;
 }

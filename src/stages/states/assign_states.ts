@@ -65,7 +65,10 @@ export function assignStates(
     allows[at] = { upper: decided.upper, lower: decided.lower };
     if (decided.state === "unknown") continue;
     const value = logAmplitude(fit) - (decided.state === "upper" ? ratio.mean : 0);
-    const sd = Math.hypot(fit.main?.logSd ?? 0, decided.state === "upper" ? Math.hypot(ratio.sd, s.contrastScatter) : 0);
+    const sd = Math.hypot(
+      fit.main?.logSd ?? 0,
+      decided.state === "upper" ? Math.hypot(ratio.sd, s.contrastScatter) : 0,
+    );
     known.push({ frame, temperatureK, value, sd: Math.max(sd, 1e-4) });
   }
   return { shown, contrast, allows };

@@ -82,7 +82,10 @@ export function combineLevels(
     Math.hypot(step.sd, scatter),
   );
   const hasPhase = contrast.stepRad !== null;
-  const value = (l: number, f: number): ComplexValue => ({ re: Math.exp(l) * Math.cos(f), im: Math.exp(l) * Math.sin(f) });
+  const value = (l: number, f: number): ComplexValue => ({
+    re: Math.exp(l) * Math.cos(f),
+    im: Math.exp(l) * Math.sin(f),
+  });
   const lower = value(gain.lower, phase.lower);
   const upper = value(gain.upper, phase.upper);
   return {
@@ -103,7 +106,5 @@ function thresholdVariance(upper: ComplexValue, lower: ComplexValue, gain: Pair,
   const turned = (z: ComplexValue): number => (-z.im * dr + z.re * di) / d2;
   const form = (u: number, l: number, p: Pair): number =>
     0.25 * (u * u * p.upperVariance + l * l * p.lowerVariance + 2 * u * l * p.covariance);
-  return (
-    form(along(upper), along(lower), gain) + (phase === null ? 0 : form(turned(upper), turned(lower), phase))
-  );
+  return form(along(upper), along(lower), gain) + (phase === null ? 0 : form(turned(upper), turned(lower), phase));
 }

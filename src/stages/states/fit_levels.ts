@@ -38,10 +38,7 @@ export function fitLevels(clean: CleanFrame, debris: Uint8Array | null, tip: Tip
   const raw = readPixels(clean, debris);
   if (raw.count < LEAST_PIXELS) return emptyFit(clean.frame, raw);
   const before = noCorrection(raw.rows);
-  return (
-    twoStates(clean.frame, raw, raw, before, tip, s) ??
-    oneState(clean.frame, raw, tip, s)
-  );
+  return twoStates(clean.frame, raw, raw, before, tip, s) ?? oneState(clean.frame, raw, tip, s);
 }
 
 interface Smoothing {
@@ -51,7 +48,8 @@ interface Smoothing {
 
 /** For finding the states: one tip sigma, 1 to 2 pixels. */
 function smoothingOf(z: Pixels, tip: Tip | null): Smoothing {
-  const sigmaNm = tip === null ? SMOOTHING_PX * Math.sqrt(z.pixel.xNm * z.pixel.yNm) : tip.resolutionNm / FWHM_PER_SIGMA;
+  const sigmaNm =
+    tip === null ? SMOOTHING_PX * Math.sqrt(z.pixel.xNm * z.pixel.yNm) : tip.resolutionNm / FWHM_PER_SIGMA;
   const within = (px: number): number => Math.min(2, Math.max(1, px));
   return { xPx: within(sigmaNm / z.pixel.xNm), yPx: within(sigmaNm / z.pixel.yNm) };
 }
@@ -121,7 +119,12 @@ function twoStates(
     const di = levels[1].im - levels[0].im;
     const d = Math.hypot(dr, di);
     if (!(d > 0)) return null;
-    const moved = Math.hypot(levels[0].re - last[0].re, levels[0].im - last[0].im, levels[1].re - last[1].re, levels[1].im - last[1].im);
+    const moved = Math.hypot(
+      levels[0].re - last[0].re,
+      levels[0].im - last[0].im,
+      levels[1].re - last[1].re,
+      levels[1].im - last[1].im,
+    );
     last = levels;
     if (round >= ROUNDS - 1 && moved < SETTLED * d) break;
     eRe = dr / d;

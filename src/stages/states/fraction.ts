@@ -93,7 +93,8 @@ export function mixedFraction(f: FractionInput): { value: number; low: number; h
   const noise2 = (slope2 * density) / (2 * Math.sqrt(Math.PI) * Math.max(f.smoothingNm, 0.3 * pixel.xNm));
   const c = rowSlope.map((v) => v * f.perLogGain);
   const rows2 = offsetVariance(c, f.rowSd, f.rowWalkSd, f.rowWhiteSd);
-  const curvatureSd = Math.abs(curvature) * Math.hypot(CURVATURE_ERROR, 2 * f.blurRelativeSd) + Math.PI * f.blurSigmaNm ** 2 * 0.3;
+  const curvatureSd =
+    Math.abs(curvature) * Math.hypot(CURVATURE_ERROR, 2 * f.blurRelativeSd) + Math.PI * f.blurSigmaNm ** 2 * 0.3;
   const subpixel2 = crossed * (WHOLE_PIXEL_SD * pixelArea) ** 2;
   const lengthNm = slope2 > 0 ? (slope1 * slope1) / slope2 : 0;
   const place = lengthNm * PLACE_ERROR * f.blurSigmaNm;

@@ -19,6 +19,9 @@ import { readShare, shareCurve, turnAtWalls, type ShareCurve } from "./share_cur
 import type { StatesSettings } from "./settings.js";
 import { smoothShare } from "./smooth_share.js";
 
+/** What `debris` calls a pixel whose state cannot be trusted. */
+const DEBRIS_CORE = 1;
+
 /** Two-sided 95 % of a normal, for what is left of a domain that could have been missed. */
 const LOST_BY_BLUR = 2;
 
@@ -28,6 +31,9 @@ const LOST_BY_BLUR = 2;
  *  and all; the map is read from the share smoothed just enough to keep noise from making domains, its small islands cleared. The
  *  fraction is of the usable pixels; its interval is for this field of view (see `mixedFraction`). In a frame that holds one state it
  *  is exactly 0 or 1, and the other end of the interval is the largest domain that could have been missed.
+ *  Debris: its core has no state and is left out of the fraction; around it, where the signal is disturbed less than would change a
+ *  state, the map goes on, but `signal.usable` is 0, so that nothing is fitted there.
+ *  @param debris 0 free, 1 core, 2 disturbed around it
  *  @param fit what `fitLevels` gave for the same frame, debris and tip
  *  @param levels what `trackLevels` gave for it
  *  @returns `states.levels` has the final verdict: `mixed` exactly where the map holds both states */
@@ -39,7 +45,7 @@ export function mapStates(
   tip: Tip | null,
   s: StatesSettings,
 ): { readonly signal: Signal; readonly states: FrameStates } {
-  const raw = readPixels(clean, debris);
+  const raw = readPixels(clean, debris === null ? null : debris.map((v) => (v === DEBRIS_CORE ? 1 : 0)));
   if (fit.rows !== raw.rows || fit.cols !== raw.cols) {
     throw new RangeError(`levels of ${fit.rows} × ${fit.cols} pixels for a frame of ${raw.rows} × ${raw.cols}`);
   }
@@ -52,7 +58,7 @@ export function mapStates(
     pixel,
     re: z.re,
     im: z.hasPhase ? z.im : null,
-    usable: z.usable,
+    usable: debris === null ? z.usable : z.usable.map((v, p) => (debris[p] === 0 ? v : 0)),
   };
   const map = { rows, cols, pixel, states: new Uint8Array(rows * cols).fill(NO_STATE) };
   const share = new Float32Array(rows * cols).fill(Number.NaN);
@@ -74,7 +80,7 @@ export function mapStates(
   const smoothingNm = smoothingFor(noiseSd * Math.sqrt(perIndependent), z, tip, s);
   share.set(readShare(z, curve, smoothingNm / pixel.xNm, smoothingNm / pixel.yNm));
   const u = smoothShare(share, z.usable, rows, cols, smoothingNm / pixel.xNm, smoothingNm / pixel.yNm);
-  const dip = dipAtWalls(z, u, levels, curve);
+  const dip = dipAtWalls({ ...z, usable: signal.usable }, u, levels, curve);
   if (dip.value > 0) {
     for (let p = 0; p < u.length; p++) if (u[p] > 0 && u[p] < 1) u[p] += 4 * dip.value * u[p] * (1 - u[p]);
   }
@@ -95,7 +101,10 @@ export function mapStates(
   if (cleared.largestPx[rarer] < s.leastLoneTips * leastPx) {
     const state = rarer === METALLIC ? INSULATING : METALLIC;
     fillState(map.states, state);
-    return result({ ...levels, verdict: state === METALLIC ? "metallic" : "insulating" }, oneStateFraction(state, z, leastPx, tip, s));
+    return result(
+      { ...levels, verdict: state === METALLIC ? "metallic" : "insulating" },
+      oneStateFraction(state, z, leastPx, tip, s),
+    );
   }
   const sigmaNm = tip === null ? 0 : tip.resolutionNm / FWHM_PER_SIGMA;
   const fraction = mixedFraction({

@@ -74,7 +74,8 @@ export const settings = {
   gainSd: {
     default: 0.06,
     unit: "1",
-    means: "how much the gain may change from frame to frame (1 sd of its logarithm) in telling single-state frames apart",
+    means:
+      "how much the gain may change from frame to frame (1 sd of its logarithm) in telling single-state frames apart",
     min: 0.005,
     max: 1,
   },
@@ -95,7 +96,8 @@ export const settings = {
   assumedPhaseStepRad: {
     default: 0.5,
     unit: "rad",
-    means: "step of the optical phase between the states where no phase was recorded: it bends the amplitude across a wall",
+    means:
+      "step of the optical phase between the states where no phase was recorded: it bends the amplitude across a wall",
     min: 0,
     max: 1.5,
   },

@@ -71,7 +71,9 @@ export function shareCurve(
   const separation = step / Math.max(radialI, radialM, 1e-30);
   const half = amplitudeAt(0.5);
   const usesAmplitude =
-    least >= LEAST_STEEPNESS * step && step > 0 && (assumedStepRad !== null || separation >= ENOUGH_OF_CHORD * chordSeparation);
+    least >= LEAST_STEEPNESS * step &&
+    step > 0 &&
+    (assumedStepRad !== null || separation >= ENOUGH_OF_CHORD * chordSeparation);
   if (!usesAmplitude) {
     const offset = insulating.re * eRe + insulating.im * eIm;
     return {
@@ -163,5 +165,8 @@ export function turnAtWalls(
     across2 += b * b;
   }
   if (n < LEAST_WALL_PIXELS || !(re > 0)) return null;
-  return { meanRad: Math.atan2(im, re), sdRad: Math.sqrt(Math.max(0, across2 / n - (im / n) ** 2) / n / Math.max(along2 / n, 1e-30)) };
+  return {
+    meanRad: Math.atan2(im, re),
+    sdRad: Math.sqrt(Math.max(0, across2 / n - (im / n) ** 2) / n / Math.max(along2 / n, 1e-30)),
+  };
 }

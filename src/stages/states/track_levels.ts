@@ -126,14 +126,16 @@ function noticesOf(
     notices.push({
       frame: null,
       code: "one-state-only",
-      message: "no frame shows two states and no jump of the amplitude divides the frames: nothing tells which state they show",
+      message:
+        "no frame shows two states and no jump of the amplitude divides the frames: nothing tells which state they show",
     });
   }
   for (const k of rejected) {
     notices.push({
       frame: levels[k].frame,
       code: "contrast-inconsistent",
-      message: "shows two levels whose contrast does not belong to the states of the other frames; they were not taken for states",
+      message:
+        "shows two levels whose contrast does not belong to the states of the other frames; they were not taken for states",
     });
   }
   if (contrastKnown) {
@@ -149,7 +151,8 @@ function noticesOf(
       notices.push({
         frame: null,
         code: "states-named-by-amplitude",
-        message: "the shares of the states do not change with temperature enough to name them: the higher amplitude was taken as metallic",
+        message:
+          "the shares of the states do not change with temperature enough to name them: the higher amplitude was taken as metallic",
       });
     }
   }
