@@ -152,7 +152,8 @@ function measure(input: MeasureInput): MeasureOutput {
   const fringes = testFringes(signal, states, walls, tip, s.fringes, input.seed);
   const domains: FrameDomains = labelDomains(states.map, input.frame, tip, s.domains);
   let usablePixels = 0;
-  for (const u of signal.usable) usablePixels += u;
+  const amplitude = frame.amplitude.values.data;
+  for (let p = 0; p < mask.length; p++) if (mask[p] !== CORE && Number.isFinite(amplitude[p])) usablePixels++;
   let debrisPixels = 0;
   for (const d of mask) if (d === CORE) debrisPixels++;
   return {
