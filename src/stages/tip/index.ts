@@ -13,3 +13,5 @@ export type {
   WarningCode,
   Width,
 } from "./types.js";
+export { expectedNmOf, findTipFeatures, lineWidthNm, type TipCandidate, type TipSearch } from "./find.js";
+export type { TipTogether } from "./combine.js";

@@ -73,7 +73,7 @@ export interface TipMeasured {
   /** 95 % interval by profile likelihood; 0 as lower end: nothing holds it from below. */
   readonly lowNm: number;
   readonly highNm: number;
-  /** Where 95 % lie below. */
+  /** Below this with 95 %; for a limit, of the width the feature shows. */
   readonly upper95Nm: number;
   /** Width of the feature as seen, tip included. For an edge: of its line spread, the same as `fwhmNm`. */
   readonly apparent: Width;

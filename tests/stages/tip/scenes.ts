@@ -24,7 +24,13 @@ export function draw(scene: Scene, value: (xNm: number, yNm: number) => number):
 }
 
 /** A sharp straight edge under a Gaussian tip: 1 at low, 1 + contrast beyond, the normal at `angleDeg` from +x. */
-export function edgeScene(scene: Scene, fwhmNm: number, angleDeg: number, offsetNm: number, contrast = 1): Float64Array {
+export function edgeScene(
+  scene: Scene,
+  fwhmNm: number,
+  angleDeg: number,
+  offsetNm: number,
+  contrast = 1,
+): Float64Array {
   const a = (angleDeg * Math.PI) / 180;
   const m = middleOf(scene);
   const sigma = fwhmNm / FWHM_PER_SIGMA;
@@ -63,10 +69,34 @@ export function discScene(
 }
 
 /** The image with white noise, ready to be measured. */
-export function noisy(scene: Scene, clean: Float64Array, sd: number, random: Random, channel: TipChannel = "amplitude"): TipImage {
+export function noisy(
+  scene: Scene,
+  clean: Float64Array,
+  sd: number,
+  random: Random,
+  channel: TipChannel = "amplitude",
+): TipImage {
   const data = Float32Array.from(clean, (v) => v + sd * random.normal());
   const raster = makeRaster(data, scene.rows, scene.cols, scene.pixel);
   const image = prepareTipImage({ topography: null, amplitude: raster, phase: null }, channel);
   if (image === null) throw new Error("the scene gives no image");
   return image;
+}
+
+/** A straight bar of `widthNm` without ends, its normal at `angleDeg` from +x. */
+export function barScene(
+  scene: Scene,
+  fwhmNm: number,
+  widthNm: number,
+  angleDeg: number,
+  offsetNm: number,
+  contrast = 1,
+): Float64Array {
+  const a = (angleDeg * Math.PI) / 180;
+  const m = middleOf(scene);
+  const sigma = fwhmNm / FWHM_PER_SIGMA;
+  return draw(scene, (x, y) => {
+    const d = (x - m.xNm) * Math.cos(a) + (y - m.yNm) * Math.sin(a) - offsetNm;
+    return 1 + contrast * (normalCdf((d + widthNm / 2) / sigma) - normalCdf((d - widthNm / 2) / sigma));
+  });
 }
