@@ -1,4 +1,5 @@
 import { InputError } from "../model/errors.js";
+import { analysisTables } from "./analysis_tables.js";
 import type { Db } from "./open.js";
 import { inWords } from "./problem.js";
 
@@ -65,19 +66,6 @@ export function planRemoval(db: Db, name: string, analysis: number | null): Remo
   };
 }
 
-/** Children before parents; by analysis, which every primary key begins with, so that no cascade has to search row by row. */
-const TABLES_OF_ANALYSIS = [
-  "domain_appearance",
-  "domain",
-  "fringe",
-  "profile",
-  "wall",
-  "frame",
-  "loop",
-  "notice",
-  "source",
-] as const;
-
 /** Removes in one transaction exactly what was planned. Throws InputError, and removes nothing, where another program has changed the
  *  cooldown since. */
 export function remove(db: Db, planned: Removal): void {
@@ -89,8 +77,10 @@ export function remove(db: Db, planned: Removal): void {
         problem: `cooldown "${planned.cooldown}" was changed by another program meanwhile; nothing was removed`,
         fix: "run again and look at what is to be removed",
       });
+    // Children before parents, and by analysis, which every key begins with: no cascade has to search row by row.
+    const tables = analysisTables(db).reverse();
     for (const { id } of planned.analyses) {
-      for (const table of TABLES_OF_ANALYSIS) db.prepare(`DELETE FROM ${table} WHERE analysis_id = ?`).run(id);
+      for (const t of tables) db.prepare(`DELETE FROM ${t.name} WHERE analysis_id = ?`).run(id);
       db.prepare("DELETE FROM analysis WHERE id = ?").run(id);
     }
     if (planned.whole) db.prepare("DELETE FROM cooldown WHERE name = ?").run(planned.cooldown);

@@ -2,6 +2,7 @@ import { mkdtempSync, rmSync } from "node:fs";
 import { tmpdir } from "node:os";
 import path from "node:path";
 import { InputError } from "../model/errors.js";
+import { analysisTables } from "./analysis_tables.js";
 import { difference, storedIdentity } from "./identity.js";
 import { newestVersion, schemaVersion } from "./migrate.js";
 import { openForWriting, openUntouched, type Db } from "./open.js";
@@ -80,19 +81,6 @@ interface StoredAnalysis extends AnyRow {
   readonly description_json: string;
   readonly made_at: string;
 }
-
-/** Parents before children. */
-const TABLES_OF_ANALYSIS = [
-  "source",
-  "notice",
-  "frame",
-  "wall",
-  "profile",
-  "fringe",
-  "domain",
-  "domain_appearance",
-  "loop",
-] as const;
 
 /** Brings every analysis of the sources into `db`, in one transaction: all of it or nothing. The same work is kept once; the others get
  *  new numbers, in the order of the sources. Throws InputError showing both where a cooldown's name stands for different content. */
@@ -173,14 +161,12 @@ function copyAnalysis(db: Db, s: MergeSource, c: StoredCooldown, a: StoredAnalys
     cooldown_id: owner?.id ?? null,
     description_json: movedDescription(a.description_json, s.file, db.name),
   });
-  for (const table of TABLES_OF_ANALYSIS) {
-    let add: ((r: AnyRow) => void) | null = null;
-    for (const r of s.db.prepare<[number], AnyRow>(`SELECT * FROM ${table} WHERE analysis_id = ?`).iterate(a.id)) {
-      // The one table with a number of its own that means nothing outside.
-      if (table === "notice") delete r["id"];
-      add ??= inserter(db, table, r);
-      add({ ...r, analysis_id: now });
-    }
+  for (const t of analysisTables(db)) {
+    const columns = t.columns.join(", ");
+    const values = t.columns.map((c) => (c === "analysis_id" ? "@now" : `@${c}`)).join(", ");
+    const add = db.prepare(`INSERT INTO ${t.name} (${columns}) VALUES (${values})`);
+    const rows = s.db.prepare<[number], AnyRow>(`SELECT ${columns} FROM ${t.name} WHERE analysis_id = ?`);
+    for (const r of rows.iterate(a.id)) add.run({ ...r, now });
   }
   return now;
 }
@@ -197,12 +183,4 @@ function insert(db: Db, table: string, row: AnyRow): number {
   const keys = Object.keys(row);
   const sql = `INSERT INTO ${table} (${keys.join(", ")}) VALUES (${keys.map((k) => `@${k}`).join(", ")})`;
   return Number(db.prepare(sql).run(row).lastInsertRowid);
-}
-
-function inserter(db: Db, table: string, like: AnyRow): (row: AnyRow) => void {
-  const keys = Object.keys(like);
-  const statement = db.prepare(
-    `INSERT INTO ${table} (${keys.join(", ")}) VALUES (${keys.map((k) => `@${k}`).join(", ")})`,
-  );
-  return (row) => void statement.run(row);
 }

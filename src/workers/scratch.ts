@@ -1,4 +1,4 @@
-import { mkdtempSync, readFileSync, rmSync, writeFileSync } from "node:fs";
+import { mkdtempSync, readFileSync, readdirSync, rmSync, statSync, writeFileSync } from "node:fs";
 import { tmpdir } from "node:os";
 import path from "node:path";
 import { deserialize, serialize } from "node:v8";
@@ -7,9 +7,43 @@ import { colsOf, dataOf, makeRaster, rowsOf, type PixelSize, type Raster } from 
 import type { CleanFrame } from "../model/signal.js";
 
 /** Full-size rasters between the passes lie in a folder of their own on disk, so that memory does not grow with the number of
- *  frames and no source is read and cleaned twice. The folder is removed at the end of the run. */
+ *  frames and no source is read and cleaned twice. The folder is removed at the end of the run; one that a killed run has left is
+ *  removed by a later run. */
 export function makeScratch(): string {
-  return spaceFor(tmpdir(), () => mkdtempSync(path.join(tmpdir(), "coldseam-")));
+  removeAbandoned(tmpdir());
+  return spaceFor(tmpdir(), () => mkdtempSync(path.join(tmpdir(), `coldseam-${process.pid}-`)));
+}
+
+const ABANDONED_MS = 7 * 24 * 3600 * 1000;
+
+/** Removes scratch folders of processes that are no more. Only old ones: where containers share a temporary folder, a process that cannot
+ *  be seen from here may still be at work. */
+export function removeAbandoned(folder: string, now = Date.now()): void {
+  let names: string[];
+  try {
+    names = readdirSync(folder);
+  } catch {
+    return; // what is wrong with the folder is said when it is written to
+  }
+  for (const name of names) {
+    const pid = /^coldseam-(\d+)-\w{6}$/.exec(name)?.[1];
+    if (pid === undefined || isAlive(Number(pid))) continue;
+    const dir = path.join(folder, name);
+    try {
+      if (now - statSync(dir).mtimeMs > ABANDONED_MS) removeScratch(dir);
+    } catch {
+      // somebody else's, or just removed by another run
+    }
+  }
+}
+
+function isAlive(pid: number): boolean {
+  try {
+    process.kill(pid, 0);
+    return true;
+  } catch (e) {
+    return e instanceof Error && "code" in e && e.code === "EPERM";
+  }
 }
 
 /** Runs `write`; a disk that is full or may not be written is no fault of the program's. */

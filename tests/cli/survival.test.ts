@@ -151,7 +151,12 @@ test("files that change or go while they are analysed stop the run; nothing is s
       rmSync(path.join(folder, "warming_topography.tif"));
     },
     {},
-    ...["ingest", yaml, "--db", file, "--workers", "0"],
+    "ingest",
+    yaml,
+    "--db",
+    file,
+    "--workers",
+    "0",
   );
   expect(done).toBe(true);
   expect(r.code).toBe(1);
@@ -175,7 +180,12 @@ test("scratch files spoilt under the run: the frame is named, the run ends clean
           if (f === "clean-2") writeFileSync(path.join(scratch, d, f), "spoilt");
     },
     { TMPDIR: scratch },
-    ...["ingest", yamlA, "--db", file, "--workers", "1"],
+    "ingest",
+    yamlA,
+    "--db",
+    file,
+    "--workers",
+    "1",
   );
   expect(done).toBe(true);
   expect(r.code).toBe(1);

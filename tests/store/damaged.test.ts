@@ -174,6 +174,6 @@ describe("what another program has left beside the file", () => {
       counts.add(after.prepare<[], number>("SELECT count(*) FROM cooldown").pluck().get() ?? -1);
       after.close();
     }
-    expect([...counts].sort()).toEqual([12, 13]);
+    expect([...counts].sort((a, b) => a - b)).toEqual([12, 13]);
   });
 });

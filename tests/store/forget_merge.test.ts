@@ -5,9 +5,10 @@ import path from "node:path";
 import Database from "better-sqlite3";
 import { afterEach, beforeEach, describe, expect, test } from "vitest";
 import type { Analysis } from "../../src/model/analysis.js";
+import { analysisTables } from "../../src/store/analysis_tables.js";
 import { planRemoval, remove } from "../../src/store/forget.js";
 import { mergeInto, openSource, type MergedAnalysis } from "../../src/store/merge.js";
-import { openForReading, openForWriting } from "../../src/store/open.js";
+import { openForReading, openForWriting, type Db } from "../../src/store/open.js";
 import { readTable, type Row } from "../../src/store/read.js";
 import { saveAnalysis } from "../../src/store/save.js";
 import { storedSources } from "../../src/store/verify_digests.js";
@@ -62,6 +63,26 @@ async function merge(into: string, ...files: string[]): Promise<MergedAnalysis[]
   }
 }
 
+const idsIn = (db: Db, table: string): unknown[] =>
+  db.prepare(`SELECT DISTINCT analysis_id FROM ${table}`).pluck().all();
+
+test("every table that keeps something of an analysis is known, its parents before it", () => {
+  const db = openForWriting(at("lab.sqlite"));
+  const names = analysisTables(db).map((t) => t.name);
+  const owners = db
+    .prepare<[], { name: string; parent: string }>(
+      `SELECT m.name, f."table" AS parent FROM sqlite_master m, pragma_foreign_key_list(m.name) f WHERE m.type = 'table'`,
+    )
+    .all();
+  for (const { name, parent } of owners) {
+    if (name === "analysis") continue;
+    expect(names).toContain(name);
+    if (parent !== "analysis")
+      expect(names.indexOf(parent), `${parent} before ${name}`).toBeLessThan(names.indexOf(name));
+  }
+  db.close();
+});
+
 describe("forgetting", () => {
   test("one of several analyses goes, the others keep every row, and the newest left answers", () => {
     const file = make("lab.sqlite", 1, sampleAnalysis(), sampleAnalysis({ settings: { "walls.reachNm": 400 } }));
@@ -79,7 +100,14 @@ describe("forgetting", () => {
     const file = make("lab.sqlite", 1, sampleAnalysis(), sampleAnalysis({ name: "stays", images: "c" }));
     const db = openForWriting(file);
     remove(db, planRemoval(db, "hand-made", null));
-    for (const table of [
+    const left = analysisTables(db).map((t) => [t.name, idsIn(db, t.name)] as const);
+    expect(left.length).toBeGreaterThan(8);
+    for (const [name, ids] of left)
+      expect(
+        ids.filter((id) => id !== 2),
+        name,
+      ).toEqual([]);
+    for (const name of [
       "frame",
       "wall",
       "profile",
@@ -90,7 +118,7 @@ describe("forgetting", () => {
       "source",
       "notice",
     ])
-      expect(db.prepare(`SELECT DISTINCT analysis_id FROM ${table}`).pluck().all()).toEqual([2]);
+      expect(idsIn(db, name), name).toEqual([2]);
     expect(db.prepare("SELECT name FROM cooldown").pluck().all()).toEqual(["stays"]);
     expect(saveAnalysis(db, sampleAnalysis({ sample: "KV-99" }), new Date()).alreadyThere).toBe(false);
     db.close();

@@ -3,7 +3,7 @@ export default function run({ input }) {
   if (input.frame === 2 && input.how === "exit") process.exit(3);
   if (input.frame === 2 && input.how === "memory") {
     const kept = [];
-    for (;;) kept.push(new Array(100_000).fill(kept.length));
+    for (;;) kept.push(Array.from({ length: 100_000 }, () => kept.length));
   }
   return { ok: true, value: input.frame };
 }

@@ -1,0 +1,80 @@
+import { mkdtempSync, rmSync } from "node:fs";
+import { tmpdir } from "node:os";
+import path from "node:path";
+import { afterEach, beforeEach, expect, test } from "vitest";
+import { refuseChangedSources, refuseOtherContent } from "../../src/cli/sources.js";
+import { generateStack, mergeSpec } from "../../src/demo/index.js";
+import { frameDigest, loadFrame, readCooldown } from "../../src/input/index.js";
+import type { Analysis } from "../../src/model/analysis.js";
+import type { Cooldown } from "../../src/model/cooldown.js";
+import { makeRaster } from "../../src/model/raster.js";
+import { openForWriting, type Db } from "../../src/store/open.js";
+import { saveAnalysis } from "../../src/store/save.js";
+import { tinyCooldown } from "../../src/study/survival.js";
+import { sampleAnalysis } from "../store/sample_analysis.js";
+
+let dir: string;
+let db: Db;
+beforeEach(() => {
+  dir = mkdtempSync(path.join(tmpdir(), "coldseam-sources-"));
+  db = openForWriting(path.join(dir, "lab.sqlite"));
+});
+afterEach(() => {
+  db.close();
+  rmSync(dir, { recursive: true, force: true });
+});
+
+/** Any analysis of a cooldown, with the digests of its real images: the store looks at nothing else of it. */
+async function analysisOf(cooldown: Cooldown): Promise<Analysis> {
+  const images = [];
+  for (const info of cooldown.frames) images.push(frameDigest(await loadFrame(cooldown, info)));
+  const made = sampleAnalysis({ frames: cooldown.frames.length });
+  return { ...made, cooldown, frames: made.frames.map((f, k) => ({ ...f, imagesSha256: images[k] })) };
+}
+
+test("a cooldown that has grown is welcome, in whatever files; one of the same name with other images is not", async () => {
+  const spec = tinyCooldown("kv30-a", 1, 3);
+  const first = await readCooldown(generateStack(spec, path.join(dir, "first")));
+  saveAnalysis(db, await analysisOf(first), new Date("2026-01-01T00:00:00Z"));
+  await expect(refuseOtherContent(db, first)).resolves.toBeUndefined();
+
+  // The run went on: one more temperature at the end of the warming series.
+  const grown = mergeSpec(spec, {
+    series: [spec.series[0], { branch: "warming", temperaturesK: [...spec.series[1].temperaturesK, 190] }],
+  });
+  const longer = await readCooldown(generateStack(grown, path.join(dir, "longer")));
+  expect(longer.frames).toHaveLength(7);
+  await expect(refuseOtherContent(db, longer)).resolves.toBeUndefined();
+  saveAnalysis(db, await analysisOf(longer), new Date("2026-01-02T00:00:00Z"));
+
+  // The shorter one again would answer for the whole; other images are another cooldown.
+  await expect(refuseOtherContent(db, first)).rejects.toThrow(
+    /a warming frame at 190 K there, no such frame in that place among 6 here/,
+  );
+  const other = await readCooldown(generateStack(mergeSpec(grown, { seed: 2 }), path.join(dir, "other")));
+  await expect(refuseOtherContent(db, other)).rejects.toThrow(
+    /a cooling frame at 163 K with images \w{12}… there, a cooling frame at 163 K with other images here/,
+  );
+  const elsewhere = await readCooldown(generateStack(mergeSpec(grown, { region: "B" }), path.join(dir, "elsewhere")));
+  await expect(refuseOtherContent(db, elsewhere)).rejects.toThrow(/region "A" there, region "B" here/);
+});
+
+test("a digest is of the values: not measured is not measured, however its NaN is written; one bit more is another image", () => {
+  const image = (...values: number[]) => makeRaster(Float32Array.from(values), 1, values.length, { xNm: 1, yNm: 1 });
+  const odd = image(1, 2, 3);
+  new Uint32Array(odd.values.data.buffer)[1] = 0x7fc12345;
+  const frame = { topography: null, phase: null };
+  const plain = frameDigest({ ...frame, amplitude: image(1, Number.NaN, 3) });
+  expect(frameDigest({ ...frame, amplitude: odd })).toBe(plain);
+  expect(frameDigest({ ...frame, amplitude: image(1, Number.NaN, 3.0000002) })).not.toBe(plain);
+  expect(frameDigest({ ...frame, amplitude: image(1, 2, 3), phase: image(0, 0, 1) })).not.toBe(
+    frameDigest({ topography: image(0, 0, 1), amplitude: image(1, 2, 3), phase: null }),
+  );
+});
+
+test("files that have not changed are not refused; the description may be edited meanwhile", async () => {
+  const yaml = generateStack(tinyCooldown("kv30-a", 1), path.join(dir, "a"));
+  const cooldown = await readCooldown(yaml);
+  rmSync(yaml);
+  await expect(refuseChangedSources(cooldown)).resolves.toBeUndefined();
+});
