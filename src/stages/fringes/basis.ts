@@ -102,3 +102,20 @@ export class FringeTable {
     }
   }
 }
+
+/** Tables made before: walls of one film are alike from frame to frame. */
+const made = new Map<string, FringeTable>();
+const TABLES_KEPT = 6;
+
+/** A table for these periods and decays; the wall's width is rounded to 3 %, which no search can feel, so that tables can be used again. */
+export function fringeTable(members: readonly Member[], blur: Blur, reachNm: number): FringeTable {
+  const wNm = blur.wNm > 0 ? Math.exp(Math.round(Math.log(blur.wNm) / 0.03) * 0.03) : 0;
+  const key = JSON.stringify([members, wNm, blur.sigmaNm, reachNm]);
+  let table = made.get(key);
+  if (table === undefined) {
+    const oldest = made.keys().next().value;
+    if (made.size >= TABLES_KEPT && oldest !== undefined) made.delete(oldest);
+    made.set(key, (table = new FringeTable(members, { wNm, sigmaNm: blur.sigmaNm }, reachNm)));
+  }
+  return table;
+}

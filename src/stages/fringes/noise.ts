@@ -94,18 +94,19 @@ export function measureNoise(
       }
     }
   }
-  const { row, rowLag } = measureRows(e, distanceNm, trusted, rows, cols, nearWallNm);
+  const { row, rowLag, common } = measureRows(e, distanceNm, trusted, rows, cols, nearWallNm);
   const variance = products[0][NEAR_LAG] / Math.max(1, pairs[0][NEAR_LAG]);
-  const common = row.reduce((a, v) => a + v, 0) / row.length;
+  // What a whole row shares is counted as such.
+  const beyondRow = (dy: number, dx: number): number => {
+    const m = pairs[dy][dx + NEAR_LAG];
+    if (m === 0) return 0;
+    const c = (products[dy][dx + NEAR_LAG] / m - (dy === 0 ? common : rowLag[dy])) / variance;
+    // Below what the number of pairs can tell it is left out.
+    return Math.abs(c) > 3 / Math.sqrt(m) ? c : 0;
+  };
+  // A filter along the rows and one across them: the correlation is the product of those along the axes, which many pairs tell well.
   const near = products.map((line, dy) =>
-    line.map((v, k) => {
-      if (dy === 0 && k === NEAR_LAG) return 1;
-      if (pairs[dy][k] === 0) return 0;
-      // What the whole row shares is counted as such.
-      const c = (v / pairs[dy][k] - (dy === 0 ? common : rowLag[dy])) / variance;
-      // Below what the number of pairs can tell it is left out.
-      return Math.abs(c) > 3 / Math.sqrt(pairs[dy][k]) ? c : 0;
-    }),
+    line.map((_, k) => (dy === 0 ? 1 : beyondRow(dy, 0)) * (k === NEAR_LAG ? 1 : beyondRow(0, Math.abs(k - NEAR_LAG)))),
   );
   return {
     near,
@@ -125,7 +126,7 @@ function measureRows(
   rows: number,
   cols: number,
   nearWallNm: number,
-): { row: Float64Array; rowLag: Float64Array } {
+): { row: Float64Array; rowLag: Float64Array; common: number } {
   const product = new Float64Array(CLASSES * CLASSES);
   const pair = new Float64Array(CLASSES * CLASSES);
   const sums = new Float64Array(rows * CLASSES);
@@ -156,7 +157,17 @@ function measureRows(
     }
   }
   const row = new Float64Array(CLASSES * CLASSES);
-  for (let k = 0; k < row.length; k++) row[k] = pair[k] > 0 ? product[k] / pair[k] : 0;
+  let common = 0;
+  let all = 0;
+  for (let k = 0; k < row.length; k++) {
+    common += product[k];
+    all += pair[k];
+    if (pair[k] <= 0) continue;
+    // Shrunk by what chance alone would give with so few pairs (positive-part James & Stein).
+    const c = product[k] / pair[k];
+    row[k] = c * Math.max(0, 1 - 1 / (pair[k] * c * c));
+  }
+  common = all > 0 ? common / all : 0;
   const rowLag = new Float64Array(ROW_LAG + 1);
   for (let lag = 1; lag <= ROW_LAG; lag++) {
     let s = 0;
@@ -181,5 +192,5 @@ function measureRows(
     }
     rowLag[lag] = m > 0 && s > 2 * Math.sqrt(m) ? s / m : 0;
   }
-  return { row, rowLag };
+  return { row, rowLag, common };
 }
