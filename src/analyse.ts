@@ -1,5 +1,6 @@
 import type { Analysis, FrameResult } from "./model/analysis.js";
 import type { Cooldown, Notice } from "./model/cooldown.js";
+import type { DriftPair } from "./model/pictures.js";
 import type { Drift, FrameLevels } from "./model/signal.js";
 import { childSeed } from "./numerics/random.js";
 import { settingRecord, type Settings } from "./settings.js";
@@ -62,7 +63,7 @@ async function analyseWith(
 
   // 2. Place every frame: pairs near in order first, then every useful pair that the first solution shows to overlap.
   begin("placing");
-  const drifts = await placeFrames(runner, run, cooldown, notices, step("placing"));
+  const { drifts, driftPairs } = await placeFrames(runner, run, cooldown, notices, step("placing"));
 
   // 3. Debris: what stays on the sample while the domains come and go.
   begin("debris");
@@ -151,6 +152,8 @@ async function analyseWith(
       usablePixels: m.usablePixels,
       debrisPixels: m.debrisPixels,
       scarPixels: (cleaned[k] as (typeof cleaned)[number]).report.scarPixels,
+      previews: m.previews,
+      profileBins: m.walls.bins ?? [],
     };
   });
   return {
@@ -161,6 +164,7 @@ async function analyseWith(
     domains,
     loops,
     notices,
+    driftPairs,
   };
 }
 
@@ -170,7 +174,7 @@ async function placeFrames(
   cooldown: Cooldown,
   notices: Notice[],
   onDone: () => void,
-): Promise<readonly Drift[]> {
+): Promise<{ readonly drifts: readonly Drift[]; readonly driftPairs: readonly DriftPair[] }> {
   const { frames } = cooldown;
   const s = run.settings.drift;
   const measure = async (
@@ -202,7 +206,14 @@ async function placeFrames(
   const second = await measure(more, rough.drifts);
   const solved = solveDrift(frames, [...first, ...second], s);
   notices.push(...solved.notices);
-  return solved.drifts;
+  const rejected = new Set(solved.rejected.map(([a, b]) => `${a} ${b}`));
+  const driftPairs = [...first, ...second].flatMap((p): DriftPair[] => {
+    if (p.status === "failed") return [];
+    const { reference, moving, xNm, yNm } = p;
+    const used = !rejected.has(`${reference} ${moving}`);
+    return [{ reference, moving, xNm, yNm, sdXNm: Math.sqrt(p.xxNm2), sdYNm: Math.sqrt(p.yyNm2), used }];
+  });
+  return { drifts: solved.drifts, driftPairs };
 }
 
 /** Progress over the whole run. Shares of the time are rough; they only steer the bar. */

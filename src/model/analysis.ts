@@ -1,6 +1,7 @@
 import type { Cooldown, Notice } from "./cooldown.js";
 import type { DomainRegion, TrackedDomain } from "./domains.js";
 import type { Loop } from "./loops.js";
+import type { DriftPair, Preview, ProfileBins } from "./pictures.js";
 import type { Drift, FrameVerdict } from "./signal.js";
 import type { FringeTest, Wall, WallProfile, WidthSummary } from "./walls.js";
 
@@ -36,6 +37,9 @@ export interface FrameResult {
   readonly usablePixels: number;
   readonly debrisPixels: number;
   readonly scarPixels: number;
+  /** For drawing. */
+  readonly previews?: readonly Preview[];
+  readonly profileBins?: readonly ProfileBins[];
 }
 
 export type SettingRecord = Readonly<Record<string, number | string | boolean>>;
@@ -50,4 +54,6 @@ export interface Analysis {
   readonly domains: readonly TrackedDomain[];
   readonly loops: readonly Loop[];
   readonly notices: readonly Notice[];
+  /** Every pair of frames that was compared with success, for drawing. */
+  readonly driftPairs?: readonly DriftPair[];
 }

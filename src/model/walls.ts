@@ -1,3 +1,5 @@
+import type { FringeBins, ProfileBins } from "./pictures.js";
+
 /** One connected boundary line between the states, in one frame. Points in the frame's own nm (x = col·pixel.xNm,
  *  y = row·pixel.yNm). Which side is metallic is told by `normals`, not by the walking direction. */
 export interface Wall {
@@ -14,7 +16,8 @@ export interface Wall {
 }
 
 /** Why a profile's numbers should not enter statistics; "" = sound. */
-export type ProfileFlag = "" | "near-other-wall" | "few-pixels" | "plateau-not-reached" | "not-converged" | "poor-fit" | "curved" | "no-tip";
+export type ProfileFlag =
+  "" | "near-other-wall" | "few-pixels" | "plateau-not-reached" | "not-converged" | "poor-fit" | "curved" | "no-tip";
 
 /** One fitted profile; see the `walls` table of the exported data for the columns. Frame nm, no drift added. */
 export interface WallProfile {
@@ -51,6 +54,8 @@ export interface FrameWalls {
   readonly walls: readonly Wall[];
   readonly profiles: readonly WallProfile[];
   readonly wallLengthNm: number;
+  /** The pixels of the profiles in bins, for drawing. */
+  readonly bins?: readonly ProfileBins[];
 }
 
 /** Width statistics of one frame, limits treated as limits. */
@@ -79,4 +84,6 @@ export interface FringeTest {
   readonly periodSdNm: number | null;
   readonly decayNm: number | null;
   readonly decaySdNm: number | null;
+  /** The signal beside it in bins, for drawing. */
+  readonly drawn?: FringeBins;
 }

@@ -14,7 +14,7 @@ function checked(table: string, row: Record<string, Value>): Record<string, Valu
 }
 
 /** A prepared insert whose columns are the keys of the first row. */
-function inserter(db: Db, table: string): (row: Record<string, Value>) => void {
+export function inserter(db: Db, table: string): (row: Record<string, Value>) => void {
   let run: ((row: Record<string, Value>) => void) | null = null;
   return (row) => {
     if (run === null) {

@@ -13,6 +13,7 @@ import {
   type CooldownIdentity,
 } from "./identity.js";
 import type { Db } from "./open.js";
+import { insertPictures } from "./pictures.js";
 import { inWords } from "./problem.js";
 import { insertAnalysisRows } from "./rows.js";
 
@@ -100,6 +101,7 @@ export function saveAnalysis(db: Db, analysis: Analysis, madeAt: Date): { id: nu
       );
     const id = Number(inserted.lastInsertRowid);
     insertAnalysisRows(db, id, analysis);
+    insertPictures(db, id, analysis);
     return { id, alreadyThere: false };
   });
   return inWords(db.name, () => save.immediate());

@@ -3,6 +3,7 @@ import type { PackedMap } from "../model/analysis.js";
 import type { Cooldown, FrameInfo, Notice, Tip } from "../model/cooldown.js";
 import type { DomainRegion, FrameDomains } from "../model/domains.js";
 import type { ErrorRecord } from "../model/errors.js";
+import type { Preview } from "../model/pictures.js";
 import type { DomainMap, Drift, FrameLevels, FrameStates } from "../model/signal.js";
 import type { FringeTest, FrameWalls, WidthSummary } from "../model/walls.js";
 import { frameDigest, inspectFrame, loadFrame } from "../input/index.js";
@@ -14,6 +15,7 @@ import { measurePair, prepareForDrift, type DriftImage, type PairShift } from ".
 import { testFringes } from "../stages/fringes/index.js";
 import { fitLevels, mapStates, type LevelFit } from "../stages/states/index.js";
 import { fitWalls, summariseWidths } from "../stages/walls/index.js";
+import { makePreviews } from "./previews.js";
 import { fetchClean, fetchKept, keep, keepClean } from "./scratch.js";
 
 export type Reply<T> = { readonly ok: true; readonly value: T } | { readonly ok: false; readonly error: ErrorRecord };
@@ -126,6 +128,7 @@ export interface MeasureOutput {
   readonly fringes: readonly FringeTest[];
   readonly usablePixels: number;
   readonly debrisPixels: number;
+  readonly previews: readonly Preview[];
 }
 
 export function packMap(map: DomainMap): PackedMap {
@@ -143,7 +146,7 @@ export function unpackMap(packed: PackedMap, pixel: DomainMap["pixel"]): DomainM
 }
 
 /** States, walls, fringes and domains of one frame, with the levels that the whole cooldown has settled. */
-function measure(input: MeasureInput): MeasureOutput {
+async function measure(input: MeasureInput): Promise<MeasureOutput> {
   const { settings: s, tip } = input;
   const frame = fetchClean(input.scratch, input.frame);
   const mask = debrisOf(input, frame);
@@ -165,6 +168,7 @@ function measure(input: MeasureInput): MeasureOutput {
     fringes,
     usablePixels,
     debrisPixels,
+    previews: await makePreviews(frame, input.fit, input.levels),
   };
 }
 

@@ -15,6 +15,14 @@ export interface FringeEstimate {
   readonly periodSdNm: number | null;
   readonly decayNm: number | null;
   readonly decaySdNm: number | null;
+  readonly fitted?: FittedCurve;
+}
+
+/** What the fit puts at each bin of the profile: the fringe's change across and along the chord, and the offsets of the levels (across). */
+export interface FittedCurve {
+  readonly across: Float64Array;
+  readonly along: Float64Array;
+  readonly offset: Float64Array;
 }
 
 const PARAMETERS = NUISANCES + FRINGE_PARAMETERS;
@@ -89,7 +97,13 @@ export function estimateFringe(
 
   const contrast = largestDeparture(forward, table, chord, candidate.side === "metallic" ? 1 : -1, sideReach);
   const variance = departureVariance(forward, table, chord, contrast.distanceNm, fit.covariance, fitted);
-  const nothing = { ...NOTHING, contrastRad: contrast.rad, contrastSdRad: Math.sqrt(variance), offsetNm: contrast.distanceNm };
+  const nothing = {
+    ...NOTHING,
+    contrastRad: contrast.rad,
+    contrastSdRad: Math.sqrt(variance),
+    offsetNm: contrast.distanceNm,
+    fitted: fittedCurve(profile, forward, nuisances, p),
+  };
   if (!free || fit.status !== "converged") return nothing;
 
   const sdLogPeriod = Math.sqrt(fit.covariance[(NUISANCES + 2) * fitted + NUISANCES + 2]);
@@ -118,6 +132,24 @@ const NOTHING: FringeEstimate = {
   decayNm: null,
   decaySdNm: null,
 };
+
+function fittedCurve(
+  profile: Profile,
+  forward: FringeForward,
+  nuisances: Float64Array,
+  p: Float64Array,
+): FittedCurve {
+  const n = profile.count;
+  const curve = { across: new Float64Array(n), along: new Float64Array(n), offset: new Float64Array(n) };
+  const out = new Float64Array(2 + 2 * FRINGE_PARAMETERS);
+  for (let k = 0; k < n; k++) {
+    forward.change(profile.distanceNm[k], out, false);
+    curve.across[k] = out[0];
+    curve.along[k] = out[1];
+    for (let c = 0; c < NUISANCES; c++) curve.offset[k] += p[c] * nuisances[k * NUISANCES + c];
+  }
+  return curve;
+}
 
 /** The two amplitudes and the nuisances are nearly linear: one step from zero finds them. */
 function linearStart(problem: LeastSquaresProblem, start: Float64Array): void {

@@ -10,6 +10,7 @@ import { acrossChord, chordOf } from "./chord.js";
 import { estimateFringe, type FringeEstimate } from "./estimate.js";
 import { levelScatter } from "./level_scatter.js";
 import { measureNoise } from "./noise.js";
+import { drawnFringe } from "./picture.js";
 import { Profiler, type Profile } from "./profile.js";
 import type { FringeSettings } from "./settings.js";
 import { cutStretches } from "./stretches.js";
@@ -74,6 +75,7 @@ export function testFringes(
       estimateFringe(profile, table, chord, found.best, s.reachNm, sd, withPeriod, s);
     // Where there is a fringe the frame's own levels, averaged over pixels that carry it, are off by a share of it.
     const rough = estimate(levelSdRad, false).contrastRad ?? 0;
+    const { fitted, ...numbers } = estimate(Math.hypot(levelSdRad, LEVEL_SHARE * rough), free);
     tests.push({
       frame: signal.frame,
       wall: stretch.wall,
@@ -82,7 +84,10 @@ export function testFringes(
       arcToNm: stretch.arcToNm,
       pValue: found.pValue,
       side: found.best.side,
-      ...estimate(Math.hypot(levelSdRad, LEVEL_SHARE * rough), free),
+      ...numbers,
+      ...(fitted === undefined
+        ? {}
+        : { drawn: drawnFringe(signal, states.levels, stretch, cut.distanceNm, binNm, profile, chord, blur, fitted) }),
     });
   });
   return tests;

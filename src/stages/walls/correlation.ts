@@ -108,6 +108,28 @@ export class CorrelatedNoise {
     return sum;
   }
 
+  /** For each bin the sum over its pairs of pixels of ρ·a·b, with a and b their `factor`s: in white noise the sum of squares. */
+  summedByBin(data: ProfileData, bin: ArrayLike<number>, factor: Float64Array, bins: number): Float64Array {
+    const { slot, cols } = this;
+    const n = data.count;
+    const sum = new Float64Array(bins);
+    if (!this.white) for (let k = 0; k < n; k++) slot[data.pixel[k]] = k;
+    for (let k = 0; k < n; k++) {
+      sum[bin[k]] += factor[k] * factor[k];
+      const p = data.pixel[k];
+      const j = p % cols;
+      for (const o of this.offsets) {
+        const q = p + o.di * cols + o.dj;
+        if (j + o.dj < 0 || j + o.dj >= cols || q >= slot.length) continue;
+        const other = slot[q];
+        if (other >= 0 && bin[other] === bin[k]) sum[bin[k]] += 2 * o.rho * factor[k] * factor[other];
+      }
+    }
+    if (!this.white) for (let k = 0; k < n; k++) slot[data.pixel[k]] = -1;
+    for (let b = 0; b < bins; b++) sum[b] = Math.max(0, sum[b]);
+    return sum;
+  }
+
   /** Turns `covariance` (unscaled inverse normal matrix over the free parameters, 6 × 6) into the sandwich, in place.
    *  @returns what the fit takes off the expected χ²: the trace of (JᵀJ)⁻¹ JᵀCJ, the number of free parameters in white noise */
   widen(data: ProfileData, fitter: ProfileFitter, free: readonly boolean[], covariance: Float64Array): number {

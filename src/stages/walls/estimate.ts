@@ -48,6 +48,8 @@ export interface ProfileEstimate {
   readonly reducedChi2: number;
   /** sd of `reducedChi2` where the model is right. */
   readonly reducedChi2Sd: number;
+  /** The fitted curve: kink of this w under a Gaussian of this sigma. */
+  readonly shape: { readonly wNm: number; readonly sigmaNm: number };
 }
 
 /** Fits one profile with the tip's response known to the prior: best width, test against a width of zero, upper limit.
@@ -168,6 +170,7 @@ export function estimateWithTip(
     apparentSdNm,
     reducedChi2: chi2 / dof,
     reducedChi2Sd: Math.sqrt((2 * noise.squaredSum) / dof),
+    shape: { wNm: w, sigmaNm: prior.sigmaNm },
   };
 }
 
@@ -256,6 +259,7 @@ export function estimateWithoutTip(
       apparentSdNm: widthSd,
       reducedChi2: fitter.cost / dof,
       reducedChi2Sd: Math.sqrt((2 * noise.squaredSum) / dof),
+      shape: { wNm: Math.sqrt(p[WIDTH_SQUARED]), sigmaNm: p[TIP_SIGMA] },
       chi2: fitter.cost,
     };
   }

@@ -1,4 +1,5 @@
 import type { Tip } from "../../model/cooldown.js";
+import type { ProfileBins } from "../../model/pictures.js";
 import type { FrameStates, Signal } from "../../model/signal.js";
 import { FWHM_PER_SIGMA, RISE_PER_SIGMA, RISE_PER_W } from "../../model/units.js";
 import type { FrameWalls, Wall, WallProfile } from "../../model/walls.js";
@@ -8,6 +9,7 @@ import { estimateWithTip, estimateWithoutTip, type ProfileEstimate } from "./est
 import { flagOf, type Surroundings } from "./flags.js";
 import { fringeAlarms, type PhaseTurn } from "./fringe_alarm.js";
 import { freeReach, nearestWall, segmentsOf, type NearestWall, type Segments } from "./nearest.js";
+import { drawnProfile } from "./picture.js";
 import { ProfileData } from "./profile_data.js";
 import { PARAMETERS, ProfileFitter, type SigmaPrior } from "./profile_fit.js";
 import type { WallsSettings } from "./settings.js";
@@ -31,7 +33,8 @@ export function fitWalls(signal: Signal, states: FrameStates, tip: Tip | null, s
   if (walls.length === 0) return { frame: signal.frame, walls, profiles: [], wallLengthNm: 0 };
   const fit = new FrameFit(signal, states, tip, s, traced.slopePerNm, traced.blurNm, walls);
   fit.prepare(traced.patches);
-  return { frame: signal.frame, walls, profiles: fit.profiles(), wallLengthNm };
+  const profiles = fit.profiles();
+  return { frame: signal.frame, walls, profiles, wallLengthNm, bins: fit.bins };
 }
 
 class FrameFit {
@@ -53,6 +56,8 @@ class FrameFit {
   /** Distance of each pixel from the edge of the measured field, nm. */
   private readonly edgeNm: Float32Array;
   private stretches!: Stretches;
+  /** Filled by `profiles`. */
+  readonly bins: ProfileBins[] = [];
 
   constructor(
     private readonly signal: Signal,
@@ -252,6 +257,13 @@ class FrameFit {
 
   private record(t: Stretch, direction: Direction, e: ProfileEstimate | null, reachNm: number): WallProfile {
     const { data, projector } = this;
+    if (e !== null)
+      this.bins.push({
+        wall: t.wall,
+        profile: t.profile,
+        ...e.shape,
+        bins: drawnProfile(data, e, this.noise, this.stepNm),
+      });
     const at = t.middle;
     const centre = e === null || !(Math.abs(e.centreNm) < 2 * this.apparentNm) ? 0 : e.centreNm;
     const around: Surroundings = {
