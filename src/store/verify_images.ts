@@ -103,35 +103,45 @@ function unpack(f: FrameRow): Uint8Array | string {
   return states;
 }
 
-/** Sizes in pixels of the connected regions of one state, largest first; flood fill with a stack of its own. */
-function regionSizes(states: Uint8Array, rows: number, cols: number, state: number): number[] {
-  const seen = new Uint8Array(states.length);
-  const stack = new Int32Array(states.length);
-  const corners = state === METALLIC;
-  const sizes: number[] = [];
-  for (let start = 0; start < states.length; start++) {
-    if (states[start] !== state || seen[start] === 1) continue;
-    let top = 0;
-    let size = 0;
-    stack[top++] = start;
-    seen[start] = 1;
-    while (top > 0) {
-      const p = stack[--top];
-      size++;
-      const i = Math.floor(p / cols);
-      const j = p - i * cols;
-      for (let a = Math.max(0, i - 1); a <= Math.min(rows - 1, i + 1); a++) {
-        for (let b = Math.max(0, j - 1); b <= Math.min(cols - 1, j + 1); b++) {
-          const q = a * cols + b;
-          if (states[q] !== state || seen[q] === 1 || (!corners && a !== i && b !== j)) continue;
-          seen[q] = 1;
-          stack[top++] = q;
-        }
+/** Sizes in pixels of the connected regions of one state, largest first: runs along the rows, joined with those of the row before that
+ *  they touch (metallic ones over corners too). */
+export function regionSizes(states: Uint8Array, rows: number, cols: number, state: number): number[] {
+  const reach = state === METALLIC ? 1 : 0;
+  const parent: number[] = [];
+  const size: number[] = [];
+  const rootOf = (run: number): number => {
+    let r = run;
+    while (parent[r] !== r) r = parent[r] = parent[parent[r]];
+    return r;
+  };
+  // Runs of the row before: first column, column after the last, number; in turn.
+  let before: number[] = [];
+  for (let i = 0; i < rows; i++) {
+    const row: number[] = [];
+    let k = 0;
+    const end = (i + 1) * cols;
+    for (let p = i * cols; p < end; p++) {
+      if (states[p] !== state) continue;
+      const from = p;
+      while (p < end && states[p] === state) p++;
+      const run = parent.length;
+      parent.push(run);
+      size.push(p - from);
+      const first = from - i * cols;
+      const last = p - i * cols;
+      while (k < before.length && before[k + 1] + reach <= first) k += 3;
+      for (let m = k; m < before.length && before[m] < last + reach; m += 3) {
+        const other = rootOf(before[m + 2]);
+        const own = rootOf(run);
+        if (other === own) continue;
+        parent[other] = own;
+        size[own] += size[other];
       }
+      row.push(first, last, run);
     }
-    sizes.push(size);
+    before = row;
   }
-  return sizes.sort((a, b) => b - a);
+  return size.filter((_n, run) => parent[run] === run).sort((x, y) => y - x);
 }
 
 interface WallRow {
