@@ -6,8 +6,7 @@ import { plainText } from "../model/text.js";
 import { ByteFile, ImageFileError } from "./byte_file.js";
 import { nameParts, type NameParts } from "./file_names.js";
 import { listHdf5 } from "./hdf5.js";
-import { formatOf, systemWords, withImage } from "./image_file.js";
-import { closeImages } from "./image_file.js";
+import { closeImages, formatOf, systemWords, withImage } from "./image_file.js";
 
 /** An image file, or one dataset of an HDF5 file, with what its headers and its name say. */
 export interface FoundImage {

@@ -34,18 +34,12 @@ interface Placed {
 export function planSeries(images: readonly FoundImage[]): Plan {
   const unplaced: { written: string; why: string }[] = [];
   const leave = (found: FoundImage, why: string): void => void unplaced.push({ written: found.written, why });
-  const single = new Map<string, Placed[]>();
-  const stacked = new Map<string, Placed[]>();
-  const add = (map: Map<string, Placed[]>, key: string, placed: Placed): void => {
-    const list = map.get(key);
-    if (list === undefined) map.set(key, [placed]);
-    else list.push(placed);
-  };
+  const single: Placed[] = [];
+  const stacked: Placed[] = [];
   for (const found of images) {
     const { parts } = found;
     // Complex numbers can be nothing but the signal.
     const image = parts.image ?? (found.complex ? "signal" : null);
-    const key = JSON.stringify([parts.cycle, parts.branch]);
     if (parts.doubts.length > 0) leave(found, `its name says two things: ${parts.doubts.join("; ")}`);
     else if (image === null && found.planes > 1) leave(found, `${found.planes} samples a pixel: name one as FILE#0:0`);
     else if (image === null) leave(found, "no word for a channel in its name (topography, amplitude, phase, …)");
@@ -57,18 +51,19 @@ export function planSeries(images: readonly FoundImage[]): Plan {
     else if (found.planes > 1 && !found.complex) leave(found, `${found.planes} samples a pixel: name one as FILE#0:0`);
     else if (found.pages > 1 && parts.temperatureK !== null)
       leave(found, `a stack of ${found.pages} pages at one temperature`);
-    else if (found.pages > 1) add(stacked, key, { found, image });
+    else if (found.pages > 1) stacked.push({ found, image });
     else if (parts.temperatureK === null) leave(found, "no temperature in its name (as in 165K, T165, 165p5K)");
-    else add(single, key, { found, image });
+    else single.push({ found, image });
   }
   const series: PlannedSeries[] = [];
-  for (const [key, list] of single) {
-    const [cycle, branch] = JSON.parse(key) as [number | null, Branch | null];
+  const inSeries = (p: Placed): string => `${p.found.parts.cycle} ${p.found.parts.branch}`;
+  for (const list of groupBy(single, inSeries).values()) {
+    const { branch = null, cycle = null } = list[0]?.found.parts ?? {};
     const tables = tablesOf(list, branch, leave);
     if (tables.length > 0) series.push({ branch, cycle, tables, stacks: null });
   }
-  for (const [key, list] of stacked) {
-    const [cycle, branch] = JSON.parse(key) as [number | null, Branch | null];
+  for (const list of groupBy(stacked, inSeries).values()) {
+    const { branch = null, cycle = null } = list[0]?.found.parts ?? {};
     for (const stacks of stacksOf(list, leave)) series.push({ branch, cycle, tables: [], stacks });
   }
   const rank = (s: PlannedSeries): number =>

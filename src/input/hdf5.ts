@@ -68,7 +68,7 @@ export async function listHdf5(path: string): Promise<string[]> {
 function findDataset(file: File, written: string | null): Dataset {
   const entity = written === null ? null : file.get(written);
   if (isDataset(entity)) return entity;
-  if (entity !== null && "filename" in entity && "obj_path" in entity) throw lieElsewhere(String(entity.filename));
+  if (entity !== null && "filename" in entity && "obj_path" in entity) throw lieElsewhere(entity.filename);
   const signal = entity !== null && "keys" in entity ? defaultSignal(file, entity) : null;
   if (signal !== null) return signal;
   const images = imagesIn(file);
@@ -125,7 +125,7 @@ function describe(set: Dataset): { set: Dataset; values: Values; pages: number; 
       "write the dataset in one of these shapes",
     );
   }
-  const [pages, rows, cols] = shape.length === 3 ? (shape as [number, number, number]) : [1, ...shape];
+  const [pages = 0, rows = 0, cols = 0] = shape.length === 3 ? shape : [1, ...shape];
   checkSize(rows, cols, null);
   if (!(pages >= 1 && pages <= MAX_PAGES)) {
     throw new ImageFileError(`${pages} pages; expected 1 to ${MAX_PAGES}`, "split the stack");
@@ -171,7 +171,7 @@ function readPage(
   plane: number,
 ): Float32Array {
   const shape = set.metadata.shape ?? [];
-  const [rows, cols] = shape.slice(-2) as [number, number];
+  const [rows = 0, cols = 0] = shape.slice(-2);
   const out = new Float32Array(rows * cols);
   const rowBytes = cols * planes * type.bytes;
   const rowsAPiece = Math.max(1, Math.min(rows, Math.floor(PIECE_BYTES / rowBytes)));

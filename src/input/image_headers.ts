@@ -1,3 +1,4 @@
+import type { Notice } from "../model/cooldown.js";
 import type { Problem } from "../model/errors.js";
 import type { PixelSize } from "../model/raster.js";
 import { plainText } from "../model/text.js";
@@ -15,11 +16,13 @@ export class HeaderBook {
   readonly #known = new Map<string, Headers | { readonly error: Problem }>();
   readonly #complained = new Set<string>();
   readonly #problems: Problem[];
+  readonly #notices: Notice[];
   /** Pixel sizes that files claim, by the name of the first one with each. */
   readonly pixelClaims: { readonly label: string; readonly pixel: PixelSize }[] = [];
 
-  constructor(problems: Problem[]) {
+  constructor(problems: Problem[], notices: Notice[]) {
     this.#problems = problems;
+    this.#notices = notices;
   }
 
   /** null where the file cannot be used, which stands among the problems then. */
@@ -29,7 +32,14 @@ export class HeaderBook {
     if (h === undefined) {
       h = await readHeaders(s);
       this.#known.set(key, h);
-      if (!("error" in h)) this.#claim(withPage(s.written, null), h.claims.pixel);
+      if (!("error" in h)) {
+        this.#claim(withPage(s.written, null), h.claims.pixel);
+        const other = misnamed(s.path, h.format);
+        if (other !== null) {
+          const message = `${plainText(withPage(s.written, null))} is ${other}, whatever its name says: read as that`;
+          this.#notices.push({ frame: null, code: "misnamed-file", message });
+        }
+      }
     }
     if (!("error" in h)) return h;
     if (!this.#complained.has(key)) this.#problems.push(h.error);
@@ -51,6 +61,19 @@ export const placeKey = (s: Pick<WrittenSource, "path" | "dataset">): string => 
 export function samePixel(a: PixelSize, b: PixelSize): boolean {
   const alike = (x: number, y: number): boolean => Math.abs(x - y) <= 1e-3 * Math.abs(y);
   return alike(a.xNm, b.xNm) && alike(a.yNm, b.yNm);
+}
+
+const FORMATS: Readonly<Record<OpenImage["format"], { readonly words: string; readonly names: RegExp }>> = {
+  tiff: { words: "a TIFF", names: /\.tiff?$/i },
+  npy: { words: "a .npy array", names: /\.npy$/i },
+  hdf5: { words: "an HDF5 file", names: /\.(h5|hdf5?|nxs)$/i },
+  text: { words: "a text matrix", names: /\.(csv|tsv|txt|dat|asc)(\.gz)?$/i },
+};
+
+/** What a file is in words, where the end of its name is that of another format; null where the two agree or the name says nothing. */
+function misnamed(path: string, format: OpenImage["format"]): string | null {
+  const says = Object.entries(FORMATS).find(([, f]) => f.names.test(path))?.[0];
+  return says === undefined || says === format ? null : FORMATS[format].words;
 }
 
 async function readHeaders(s: Place): Promise<Headers | { readonly error: Problem }> {

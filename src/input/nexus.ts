@@ -19,7 +19,7 @@ export function defaultSignal(file: File, group: Group, depth = 0): Dataset | nu
   const signal = text(group, "signal");
   if (signal !== null) {
     const found = file.get(join(group.path, signal));
-    if (found !== null && "slice" in found) return found as Dataset;
+    if (found !== null && "slice" in found) return found;
   }
   const below = text(group, "default");
   const next = below === null || depth > 4 ? null : file.get(join(group.path, below));
@@ -71,7 +71,7 @@ function axisNames(group: Group, set: Dataset, rank: number): (string | undefine
 
 function readAxis(entity: Entity | null, length: number): Axis | null {
   if (entity === null || !("slice" in entity)) return null;
-  const set = entity as Dataset;
+  const set = entity;
   const n = set.metadata.shape?.[0] ?? 0;
   const plain = set.metadata.shape?.length === 1 && (set.metadata.type === 0 || set.metadata.type === 1);
   if (!plain || n > MAX_AXIS || (n !== length && n !== length + 1)) return null;

@@ -75,7 +75,7 @@ export async function surveyCooldown(yamlFile: string, options: ReadOptions = {}
   const thermometry = thermometryEntry === undefined ? null : readThermometry(thermometryEntry, context);
   const entries = seriesEntries(doc);
   const written = entries.map((s) => writtenSeries(s.entry, ["series", s.index], context));
-  const headers = new HeaderBook(problems);
+  const headers = new HeaderBook(problems, notices);
   const scales = channelScales(channels.safeParse(top["channels"]).data);
   const checked = await checkImages(written, scales, headers, problems, notices);
   const pixel = findPixelSize(scan.safeParse(top["scan"]).data, headers.pixelClaims, doc, problems, notices);

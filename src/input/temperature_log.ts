@@ -27,7 +27,7 @@ export function parseTemperatureLog(
   const records = recordsOf(text, name, problems);
   if (records === null) return null;
   const head = records[0]?.cells.map((c) => c.trim()) ?? [];
-  const [timeAt, temperatureAt] = [entry.time, entry.temperature].map((column) => {
+  const [timeAt = -1, temperatureAt = -1] = [entry.time, entry.temperature].map((column) => {
     const at = head.indexOf(column);
     if (at < 0) {
       const likely = closestWord(column, head);
@@ -41,7 +41,7 @@ export function parseTemperatureLog(
       problems.push({ at: `${name}:${records[0]?.line ?? 1}`, problem, fix: "keep one of the two" });
     }
     return at;
-  }) as [number, number];
+  });
   if (problems.length > before) return null;
 
   const times: number[] = [];

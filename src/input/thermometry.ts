@@ -123,7 +123,7 @@ export function temperaturesFromLog(
       return NaN;
     });
     if (spans.some(Number.isNaN)) return null;
-    const [startS, endS] = spans as [number, number];
+    const [startS = NaN, endS = NaN] = spans;
     const scan = scanTemperature(t.log, startS, endS, t.lagS);
     if (scan === null)
       return keep(

@@ -73,7 +73,10 @@ describe("a complex signal", () => {
     const raw = await frame(c, 0);
     expect([...raw.amplitude.values.data]).toEqual([5, 2, 1, 13]);
     expect([...(raw.phase?.values.data ?? [])].map((v) => Number(v.toFixed(6)))).toEqual([
-      0.927295, 1.570796, 3.141593, 1.176005,
+      0.927295,
+      1.570796,
+      Number(Math.PI.toFixed(6)),
+      1.176005,
     ]);
   });
 
@@ -284,6 +287,13 @@ describe("what is told though nothing stops", () => {
       expect.stringMatching(/3 pages for 2 temperatures/),
     ]);
     expect(survey.frames.map((f) => f.sources.amplitude.label)).toEqual(["a.tif#0", "a.tif#1", "b.tif#0", "b.tif#1"]);
+  });
+
+  test("a file that is not what its name says is read as what it is", async () => {
+    copyFileSync(join(FILES, "complex-c8.npy"), join(folder.path, "z.tif"));
+    const c = await read(stacks("{ signal: z.tif }", "[180, 170, 160]"));
+    expect(c.notices.map((n) => n.message)).toEqual(["z.tif is a .npy array, whatever its name says: read as that"]);
+    expect((await frame(c, 1)).amplitude.values.shape).toEqual([19, 23]);
   });
 
   test("a topography and a phase that were swapped", async () => {

@@ -50,7 +50,10 @@ test("160 descriptions with characters changed at random: a cooldown or an error
   const table = "temperature_K,amplitude,started_at\n180,a.tif#0,2024-05-17T09:00:00Z\n170,a.tif#1,\n";
   const text =
     "sample: S\ncooldown: C\nscan:\n  pixel_size_nm: [10, 12]\nlight: { photon_energy_meV: 100 }\nchannels:\n  phase: { unit: deg }\n" +
-    "series:\n- branch: cooling\n  stacks: { amplitude: a.tif }\n  temperatures_K: [180, 170, 160]\n- { branch: warming, frames: f.csv }\n";
+    "series:\n- branch: cooling\n  stacks: { amplitude: a.tif }\n  temperatures_K: [180, 170, 160]\n- { branch: warming, frames: f.csv }\n" +
+    'thermometry: { log: log.csv, time: t, temperature: s, unit: C, lag_s: 9, time_zone: "+02:00" }\n' +
+    "exclude:\n- { frame: 1, region_nm: [0, 0, 20, 20], reason: speck }\n";
+  const log = "t;s\n2024-05-17T10:00:00;-93\n2024-05-17T11:00:00;-94\n2024-05-17T12:00:00Z;-95\n";
   const letters = "\n\t :-[]{},#&*!|>'\"%@`0.aeK\0\u00e9\u202e/..~";
   const mutate = (s: string): string => {
     let out = s;
@@ -64,10 +67,12 @@ test("160 descriptions with characters changed at random: a cooldown or an error
   };
   let sound = 0;
   folder.text("f.csv", table);
+  folder.text("log.csv", log);
   expect((await readCooldown(folder.text("fuzz.yaml", text))).frames).toHaveLength(5);
   for (let k = 0; k < 160; k++) {
     const file = folder.text("fuzz.yaml", k % 2 === 0 ? mutate(text) : text);
-    folder.text("f.csv", k % 2 === 1 ? mutate(table) : table);
+    folder.text("f.csv", k % 4 === 1 ? mutate(table) : table);
+    folder.text("log.csv", k % 4 === 3 ? mutate(log) : log);
     try {
       const c = await readCooldown(file);
       expect(c.frames.length).toBeGreaterThan(0);

@@ -174,7 +174,7 @@ describe("what is no image, or lies elsewhere, is refused with words", () => {
           "damaged.nxs:/entry/data",
           async (image) => {
             await image.read(0, 1);
-            return image.pages[0] as { rows: number };
+            return image.pages[0] ?? { rows: 0 };
           },
           scratch,
         );
