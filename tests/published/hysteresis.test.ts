@@ -11,7 +11,10 @@ interface PublishedLoop {
   cooling_fraction: number[];
   warming_T: number[];
   warming_fraction: number[];
-  [key: string]: unknown;
+  cooling_half_K_by_linear_interpolation?: number;
+  warming_half_K_by_linear_interpolation?: number;
+  area_K_by_trapezoid?: number;
+  area_K_by_trapezoid_on_the_common_interval_180_to_200?: number;
 }
 // Source: closed forms (tanh branches) and trapezoid sums; see the file.
 const { loops } = fixture<{ loops: PublishedLoop[] }>("hysteresis");
@@ -37,10 +40,10 @@ function rowsOf(loop: PublishedLoop): LoopRow[] {
 describe("loops, against computed ones", () => {
   test("tanh branches: half points and area", () => {
     const [loop] = findLoops(rowsOf(loops[0]), s, 1);
-    expect(loop.coolingHalfK.value).toBeCloseTo(loops[0]["cooling_half_K_by_linear_interpolation"] as number, 9);
-    expect(loop.warmingHalfK.value).toBeCloseTo(loops[0]["warming_half_K_by_linear_interpolation"] as number, 9);
+    expect(loop.coolingHalfK.value).toBeCloseTo(loops[0].cooling_half_K_by_linear_interpolation ?? Number.NaN, 9);
+    expect(loop.warmingHalfK.value).toBeCloseTo(loops[0].warming_half_K_by_linear_interpolation ?? Number.NaN, 9);
     expect(loop.widthK.value).toBeCloseTo(9, 9);
-    expect(loop.areaK).toBeCloseTo(loops[0]["area_K_by_trapezoid"] as number, 9);
+    expect(loop.areaK).toBeCloseTo(loops[0].area_K_by_trapezoid ?? Number.NaN, 9);
     expect(loop.complete).toBe(true);
   });
   test("incomplete: no half point is extrapolated, the area is of the common temperatures", () => {
@@ -48,7 +51,7 @@ describe("loops, against computed ones", () => {
     expect(loop.coolingHalfK.value).toBeNull();
     expect(loop.warmingHalfK.value).toBeNull();
     expect(loop.widthK).toEqual({ value: null, low: null, high: null });
-    expect(loop.areaK).toBeCloseTo(loops[1]["area_K_by_trapezoid_on_the_common_interval_180_to_200"] as number, 9);
+    expect(loop.areaK).toBeCloseTo(loops[1].area_K_by_trapezoid_on_the_common_interval_180_to_200 ?? Number.NaN, 9);
     expect(loop.complete).toBe(false);
     expect(loop.lowestFraction).toBe(0.58);
     expect(loop.highestFraction).toBe(1);

@@ -30,7 +30,8 @@ export function branchOf(rows: readonly LoopRow[], cycle: number, branch: Branch
   const sum: number[] = [];
   const weight: number[] = [];
   for (const r of own) {
-    const { value, low, high } = r.fraction as NonNullable<LoopRow["fraction"]>;
+    if (r.fraction === null) continue;
+    const { value, low, high } = r.fraction;
     const half = Math.max(value - low, high - value);
     const w = 1 / Math.max(leastSd, half / Z95) ** 2;
     const last = t.length - 1;

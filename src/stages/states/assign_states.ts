@@ -23,8 +23,8 @@ const LEAST_LOG_ODDS = Math.log(100);
 /** A single-state frame this near to a state, in units of the contrast, may be that state; in between it is neither. */
 const NEAR = 0.3;
 
-const logAmplitude = (fit: LevelFit): number =>
-  fit.main === null ? Number.NaN : Math.log(Math.hypot(fit.main.level.re, fit.main.level.im));
+const logAmplitude = (fit: LevelFit | null | undefined): number =>
+  fit?.main ? Math.log(Math.hypot(fit.main.level.re, fit.main.level.im)) : Number.NaN;
 
 /** Tells which state each single-state frame shows: by the nearness of its amplitude to what the frames already known predict for
  *  either state, the nearest frames first. Frames that amplitude cannot tell stay `unknown`. */
@@ -57,16 +57,16 @@ export function assignStates(
     }
     open.delete(at);
     const { temperatureK, frame } = frames[at];
-    const fit = fits[at] as LevelFit;
+    const fit = fits[at];
     const ratio = contrast.logRatio.at(temperatureK);
     const predicted = predictLogLevel(known, frame, temperatureK, s.gainSd, s.levelSlope, rangeK);
-    const decided = nearerState(logAmplitude(fit), fit.main?.logSd ?? 0, predicted, ratio, s.contrastScatter);
+    const decided = nearerState(logAmplitude(fit), fit?.main?.logSd ?? 0, predicted, ratio, s.contrastScatter);
     shown[at] = decided.state;
     allows[at] = { upper: decided.upper, lower: decided.lower };
     if (decided.state === "unknown") continue;
     const value = logAmplitude(fit) - (decided.state === "upper" ? ratio.mean : 0);
     const sd = Math.hypot(
-      fit.main?.logSd ?? 0,
+      fit?.main?.logSd ?? 0,
       decided.state === "upper" ? Math.hypot(ratio.sd, s.contrastScatter) : 0,
     );
     known.push({ frame, temperatureK, value, sd: Math.max(sd, 1e-4) });
@@ -124,8 +124,8 @@ function groupBySingles(
   shown: Shown[],
 ): Assignment {
   const used = fits.flatMap((f, k) => (f?.main ? [k] : []));
-  const value = new Map(used.map((k) => [k, logAmplitude(fits[k] as LevelFit)]));
-  const v = (k: number): number => value.get(k) as number;
+  const value = new Map(used.map((k) => [k, logAmplitude(fits[k])]));
+  const v = (k: number): number => value.get(k) ?? Number.NaN;
   const order = [...used].sort((a, b) => v(a) - v(b));
   let cut = -1;
   let gap = 0;

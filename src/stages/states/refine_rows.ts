@@ -64,7 +64,7 @@ export function refineRows(
       if (!(m2 > 0)) continue;
       const dr = z.re[p] - er;
       const di = z.im[p] - ei;
-      const [radial, across] = parts[k as 0 | 1];
+      const [radial, across] = k === 0 ? parts[0] : parts[1];
       if (dr * dr + di * di > CLIP2 * (radial + across)) continue;
       const x = (j + 0.5) / cols - 0.5;
       const g = (dr * er + di * ei) / m2;

@@ -49,14 +49,15 @@ export function trackLevels(
     const fit = fits[k] ?? null;
     const p = polar[k];
     if (fit === null || p === null || fit.main === null) return undecided(info.frame, fit);
+    const { main } = fit;
     const noiseAt = (state: "upper" | "lower", level: ComplexValue, own: StateEstimate | null): NoiseCovariance =>
-      own !== null ? own.noise : fromPolarNoise(noises[state] ?? toPolarNoise(fit.main as StateEstimate), level);
+      own !== null ? own.noise : fromPolarNoise(noises[state] ?? toPolarNoise(main), level);
     const pin = pinOf.get(k) ?? null;
     const what = told[k];
     const upperLevel = p.upper;
     const lowerLevel = p.lower;
-    const upperNoise = noiseAt("upper", upperLevel, pin?.upper ?? (what === "upper" ? fit.main : null));
-    const lowerNoise = noiseAt("lower", lowerLevel, pin?.lower ?? (what === "lower" ? fit.main : null));
+    const upperNoise = noiseAt("upper", upperLevel, pin?.upper ?? (what === "upper" ? main : null));
+    const lowerNoise = noiseAt("lower", lowerLevel, pin?.lower ?? (what === "lower" ? main : null));
     const up = naming.metallicIsUpper;
     const verdict: FrameVerdict = what === "both" ? "mixed" : (what === "upper") === up ? "metallic" : "insulating";
     return {
