@@ -12,6 +12,7 @@ import {
 import { FWHM_PER_SIGMA } from "../../model/units.js";
 import { mixedFraction } from "./fraction.js";
 import { clearIslands, fillState } from "./islands.js";
+import { isScar, onChord } from "./island_tests.js";
 import type { LevelFit } from "./level_fit.js";
 import { pixelsPerIndependent } from "./noise.js";
 import { correctPixels, readPixels, type Pixels } from "./pixels.js";
@@ -22,7 +23,7 @@ import { smoothShare } from "./smooth_share.js";
 /** What `debris` calls a pixel whose state cannot be trusted. */
 const DEBRIS_CORE = 1;
 
-/** Two-sided 95 % of a normal, for what is left of a domain that could have been missed. */
+/** A round domain loses πσ² to the blur (see `mixedFraction`), and the smallest ones more: twice that is allowed for. */
 const LOST_BY_BLUR = 2;
 
 /** Signal, share of the metallic signal, domain map and metallic fraction of one frame.
@@ -166,69 +167,6 @@ function leastDomainPx(z: Pixels, tip: Tip | null, s: StatesSettings): number {
   const pixelArea = z.pixel.xNm * z.pixel.yNm;
   const areaNm2 = s.leastDomainNm2 > 0 ? s.leastDomainNm2 : tip === null ? 0 : Math.PI * (tip.resolutionNm / 2) ** 2;
   return Math.max(s.leastDomainPx, areaNm2 / pixelArea);
-}
-
-/** An island whose signal lies far off the line between the two levels, or far beyond them, is a particle and not a domain. */
-const OFF_CHORD = 0.25;
-const BEYOND = 1.5;
-
-function onChord(
-  pixels: Int32Array,
-  state: 0 | 1,
-  z: Pixels,
-  share: Float32Array,
-  levels: FrameLevels,
-  curve: ShareCurve,
-): boolean {
-  const { insulating, metallic } = levels;
-  const dRe = metallic.re - insulating.re;
-  const dIm = metallic.im - insulating.im;
-  const d2 = dRe * dRe + dIm * dIm;
-  let [n, re, im, u] = [0, 0, 0, 0];
-  for (const p of pixels) {
-    n++;
-    re += z.re[p] - insulating.re;
-    im += z.im[p] - insulating.im;
-    u += share[p];
-  }
-  const off = Math.abs((im * dRe - re * dIm) / n / d2);
-  const noise = Math.max(curve.sdInsulating, curve.sdMetallic) / Math.sqrt(n);
-  const reach = state === METALLIC ? u / n : 1 - u / n;
-  return (!z.hasPhase || off < OFF_CHORD + 3 * noise) && reach < BEYOND + 3 * noise;
-}
-
-/** Rows over which an island may still be a scar, and how far the rows beside it must lag behind what the tip's blur would carry over. */
-const SCAR_ROWS = 2;
-const SCAR_LAG = 0.6;
-
-/** A scar that the cleaning missed: a run along one or two rows whose neighbours above and below know nothing of it, although the tip
- *  would spread anything on the sample over them. */
-function isScar(pixels: Int32Array, state: 0 | 1, z: Pixels, share: Float32Array, tip: Tip | null): boolean {
-  const { rows, cols, pixel } = z;
-  const inside = new Set(pixels);
-  let first = rows;
-  let last = -1;
-  for (const p of pixels) {
-    const i = Math.floor(p / cols);
-    first = Math.min(first, i);
-    last = Math.max(last, i);
-  }
-  if (last - first + 1 > SCAR_ROWS) return false;
-  const sigmaNm = tip === null ? pixel.yNm : tip.resolutionNm / FWHM_PER_SIGMA;
-  const departure = (p: number): number => (state === METALLIC ? share[p] : 1 - share[p]);
-  let [inner, innerN, outer, outerN] = [0, 0, 0, 0];
-  for (const p of pixels) {
-    inner += departure(p);
-    innerN++;
-    for (const q of [p - cols, p + cols]) {
-      if (q < 0 || q >= share.length || inside.has(q) || z.usable[q] === 0) continue;
-      outer += departure(q);
-      outerN++;
-    }
-  }
-  if (outerN === 0) return false;
-  const carried = Math.exp(-0.5 * (pixel.yNm / sigmaNm) ** 2);
-  return outer / outerN < SCAR_LAG * carried * (inner / innerN);
 }
 
 /** Exactly 0 or 1, with the largest domain that could have been missed as the other end of the interval: the least area, made smaller
