@@ -105,6 +105,31 @@ function build(): Command {
     .action(async (files: string[], o: object) => (await import("./merge.js")).merge(files, o as never));
 
   program
+    .command("tip")
+    .description("measure the tip's resolution on a line over a sharp edge or a small particle, or propose lines")
+    .argument("<yaml>", "the cooldown's description")
+    .requiredOption("--frame <n>", "frame of the cooldown, from 0")
+    .addOption(
+      new Option("--channel <channel>", "default: complex where there is a phase, else amplitude").choices([
+        "amplitude",
+        "phase",
+        "topography",
+        "complex",
+      ]),
+    )
+    .option("--from <x,y>", "start of the line, nm of the frame (column × pixel_x, row × pixel_y; no drift)")
+    .option("--to <x,y>", "end of the line, beyond the feature")
+    .option("--width <nm>", "use pixels up to half of this from the line (default: twice the stated resolution)")
+    .addOption(new Option("--model <model>", "only this kind of feature").choices(["edge", "particle"]))
+    .option("--size <nm>", "the particle's own diameter or width, where it is known")
+    .option("--find", "propose the sharpest features of the frame instead")
+    .option("--count <n>", "how many to propose", "10")
+    .option("--raw", "take the pixels as they are in the file: rows not aligned, scars not left out")
+    .option("--allow-outside", "allow image files outside the folder of the YAML file")
+    .addOption(format())
+    .action(async (yaml: string, o: object) => (await import("./tip.js")).tip(yaml, o as never));
+
+  program
     .command("settings")
     .description("every setting: name, default, unit, meaning")
     .addOption(format())

@@ -49,6 +49,8 @@ export async function tip(yaml: string, o: TipOptions): Promise<void> {
       widthNm: width ?? 0,
       expectedNm: cooldown.tip?.resolutionNm ?? 0,
     };
+    if (image.channel === "topography")
+      say("note: the topography shows how sharp the tip is to the touch, not what its near field resolves");
     const subject: TipSubject = { cooldown, info, channel: image.channel, yaml };
     if (wanted === null) {
       const search = findTipFeatures(image.image, s, count);

@@ -164,15 +164,19 @@ export function searchText(s: TipSubject, search: TipSearch): string {
   });
   const best = search.candidates[0] as TipCandidate;
   const t = search.together;
+  const together =
+    t === null
+      ? ""
+      : `\n${t.features} features that agree with the sharpest, one tip under all of them: ${width({ nm: t.nm, sdNm: t.sdNm })}, ` +
+        `95 % interval ${t.lowNm.toFixed(1)} to ${t.highNm.toFixed(1)} nm\n`;
   return (
     `${heading(s)}: sharpest features first, ${search.tried} places tried\n` +
-    `  #     from/nm       to/nm  what      FWHM / nm  95%below  c/n  remarks\n${lines.join("\n")}\n\n` +
-    (t === null
-      ? ""
-      : `${t.features} sound features agree with the sharpest of them: ${width({ nm: t.nm, sdNm: t.sdNm })} together\n`) +
+    `  #     from/nm       to/nm  what      FWHM / nm  95%below  c/n  remarks\n${lines.join("\n")}\n` +
     "`<`: upper limit, a particle's own size is in it; `!`: the width is in doubt\n" +
+    together +
     `measure one: coldseam tip ${plainText(s.yaml)} --frame ${s.info.frame} --channel ${s.channel} ` +
-    `--from ${place(best.line.from)} --to ${place(best.line.to)}\n`
+    `--from ${place(best.line.from)} --to ${place(best.line.to)}\n` +
+    (t === null ? "" : `\ntip:\n  resolution_nm: ${t.nm.toFixed(1)}\n  resolution_sd_nm: ${t.sdNm.toFixed(1)}\n`)
   );
 }
 
@@ -187,7 +191,16 @@ export function searchJson(s: TipSubject, search: TipSearch): string {
     {
       ...subjectRecord(s),
       tried: search.tried,
-      together: t === null ? null : { resolution_nm: t.nm, resolution_sd_nm: t.sdNm, features: t.features },
+      together:
+        t === null
+          ? null
+          : {
+              resolution_nm: t.nm,
+              resolution_sd_nm: t.sdNm,
+              resolution_low_nm: t.lowNm,
+              resolution_high_nm: t.highNm,
+              features: t.features,
+            },
       candidates,
     },
     null,

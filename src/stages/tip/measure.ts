@@ -1,13 +1,16 @@
 import { FWHM_PER_SIGMA } from "../../model/units.js";
 import { twoSided, testShape, heightStep } from "./checks.js";
 import { chooseModel, type Choice, type ChooseOptions } from "./choose.js";
-import { contrastToNoise, fitShape, sdOf, type ShapeFit } from "./fit_shape.js";
+import { contrastToNoise } from "./fit_shape.js";
 import { correlationFactor, profileEnd } from "./interval.js";
 import { judge, scatterLimit } from "./judge.js";
-import { apparentVariance, radiusOfVariance } from "./models.js";
+import { averageOver, sizeRoom, varianceSdOf } from "./marginal.js";
+import { apparentVariance } from "./models.js";
 import { lineFrame, pixelsAlong, placeOf } from "./pixels.js";
+import { firstStep, profileOfSigma } from "./profile.js";
 import { SIGMA, TILT } from "./shapes.js";
 import type { TipSettings } from "./settings.js";
+import { apparentWidth, directionsOf } from "./widths.js";
 import type { CutLine, TipImage, TipMeasured, TipResult, Width } from "./types.js";
 
 /** χ²₁ at 95 % two-sided, and at 95 % one-sided. */
@@ -103,21 +106,27 @@ function describe(image: TipImage, line: CutLine, s: TipSettings, choice: Choice
     return unusable("not-converged", "the pixels beside this line do not bound the width");
   }
   const halfNm = (highNm - lowNm) / 2;
-  const fwhm = FWHM_PER_SIGMA * sigma;
-  const measured = model === "edge" || options.sizeNm !== null || halfNm <= s.separableShare * fwhm;
+  const profiled = (nm: number): number => Math.max(0, profile(nm / FWHM_PER_SIGMA).chi2 - fit.chi2) / inflation;
+  const averaged =
+    model === "edge" || options.sizeNm !== null
+      ? null
+      : averageSize(model, fit.theta, apparent, profiled, lowNm, highNm);
+  const fwhm = averaged?.nm ?? FWHM_PER_SIGMA * sigma;
+  const sdNm = averaged?.sdNm ?? halfNm / Z95;
+  const measured = averaged === null || halfNm <= s.separableShare * fwhm;
   const tests = testShape(fit, data);
   const sideShare = tests.sides?.value ?? 0;
   const sideSd = (tests.sides?.sd ?? 0) * Math.sqrt(inflation);
   const side = (share: number): Width => ({
     nm: fwhm * (1 + share),
-    sdNm: fwhm * Math.hypot(sideSd, halfNm / Z95 / fwhm),
+    sdNm: fwhm * Math.hypot(sideSd, sdNm / fwhm),
   });
   const height = image.heightNm === null ? null : heightStep(fit, data, image.heightNm);
   const result: TipMeasured = {
     status: measured ? "measured" : "upper-limit",
     model,
     fwhmNm: measured ? fwhm : apparent.nm,
-    sdNm: measured ? halfNm / Z95 : apparent.sdNm,
+    sdNm: measured ? sdNm : apparent.sdNm,
     lowNm,
     highNm,
     // A limit claims no more than what stands without taking the particle's size off: the width as seen.
@@ -138,89 +147,22 @@ function describe(image: TipImage, line: CutLine, s: TipSettings, choice: Choice
     height: height === null ? null : { nm: height.nm, sdNm: height.sdNm },
     warnings: [],
   };
-  const rise = (nm: number): number => Math.max(0, profile(nm / FWHM_PER_SIGMA).chi2 - fit.chi2) / inflation;
+  const rise = averaged?.rise ?? profiled;
   return { rise, result: { ...result, warnings: judge(image, frame, s, choice, result, tests, inflation) } };
 }
 
-/** A first step along σ: its standard deviation, within reason. */
-function firstStep(fit: ShapeFit, sigma: number): number {
-  const sd = sdOf(fit, SIGMA);
-  return Number.isFinite(sd) ? Math.min(Math.max(1.9 * sd, 1e-3 * sigma), 0.5 * sigma) : 0.1 * sigma;
-}
-
-/** A fit with σ held: χ², and the half-size that goes with it. */
-interface Held {
-  readonly chi2: number;
-  readonly half: number;
-}
-
-/** Least χ² with σ held. A particle's size follows: it starts where the width as seen stays the same. */
-function profileOfSigma(choice: Choice, sizeNm: number | null): (sigma: number) => Held {
-  const { fit, data, model, particle } = choice;
-  if (model === "edge" || sizeNm !== null || particle === null) {
-    const free = fit.free.filter((f) => f !== SIGMA);
-    let last = fit.theta;
-    return (sigma) => {
-      const theta = last.slice();
-      theta[SIGMA] = sigma;
-      const held = fitShape(data, fit.shape, fit.base, theta, free);
-      if (held === null) return { chi2: Infinity, half: 0 };
-      last = held.theta;
-      return { chi2: held.chi2, half: 0 };
-    };
-  }
-  const variance = apparentVariance(particle.best.theta, model);
-  const basic = fit.free.filter((f) => f !== SIGMA && f !== 3);
-  return (sigma) => {
-    const theta = fit.theta.slice();
-    theta[SIGMA] = sigma;
-    theta[3] = Math.max(radiusOfVariance(variance - sigma * sigma, model), 0.3 * sigma);
-    const sized = fitShape(data, fit.shape, fit.base, theta, [...basic, 3]);
-    if (sized !== null && sized.converged && sized.theta[3] > 0.5 * sigma)
-      return { chi2: sized.chi2, half: sized.theta[3] };
-    theta[3] = 0;
-    const point = fitShape(data, fit.shape, fit.base, theta, basic);
-    if (point === null || (sized !== null && sized.chi2 < point.chi2)) {
-      return sized === null ? { chi2: Infinity, half: 0 } : { chi2: sized.chi2, half: sized.theta[3] };
-    }
-    return { chi2: point.chi2, half: 0 };
-  };
-}
-
-/** Width as seen, its standard deviation by the slopes of the shape's own parameters. */
-function apparentWidth(fit: ShapeFit, inflation: number): Width {
-  const nm = fit.shape.apparentNm(fit.theta);
-  const slopes = fit.free.map((f) => {
-    if (f !== SIGMA && (f !== 3 || fit.shape.model === "edge")) return 0;
-    const step = 1e-3 * fit.theta[SIGMA];
-    const theta = fit.theta.slice();
-    theta[f] += step;
-    return (fit.shape.apparentNm(theta) - nm) / step;
-  });
-  let variance = 0;
-  slopes.forEach((a, i) => slopes.forEach((b, j) => (variance += a * b * fit.covariance[i * slopes.length + j])));
-  return { nm, sdNm: Math.sqrt(variance * inflation) };
-}
-
-/** Widths along the two lines of a dot, from a fit whose outline may be an ellipse of any direction. */
-function directionsOf(fit: ShapeFit, choice: Choice, inflation: number): TipMeasured["directions"] {
-  const { data } = choice;
-  const oval = fitShape(data, fit.shape, fit.base, fit.theta, [...fit.free, 4, 5]);
-  if (oval === null || !oval.converged) return null;
-  const [e1, e2] = [oval.theta[4], oval.theta[5]];
-  const n = oval.free.length;
-  const a = oval.free.indexOf(4);
-  const b = oval.free.indexOf(5);
-  const v11 = oval.covariance[a * n + a] * inflation;
-  const v12 = oval.covariance[a * n + b] * inflation;
-  const v22 = oval.covariance[b * n + b] * inflation;
-  const det = v11 * v22 - v12 * v12;
-  const distance2 = (v22 * e1 * e1 - 2 * v12 * e1 * e2 + v11 * e2 * e2) / det;
-  const w = Math.sqrt(1 - e1 * e1 - e2 * e2);
-  const whole = apparentWidth(oval, inflation);
-  const one = (sign: 1 | -1): Width => {
-    const nm = whole.nm / Math.sqrt((1 + sign * e1) / w);
-    return { nm, sdNm: nm * Math.hypot(whole.sdNm / whole.nm, Math.sqrt(v11) / 2) };
-  };
-  return { along: one(1), across: one(-1), pValue: Math.exp(-0.5 * Math.max(0, distance2)) };
+/** The width with the particle's own size averaged over, and the likelihood that goes with it. */
+function averageSize(
+  model: "bar" | "dot",
+  theta: Float64Array,
+  apparent: Width,
+  profiled: (nm: number) => number,
+  lowNm: number,
+  highNm: number,
+): { nm: number; sdNm: number; rise: (nm: number) => number } {
+  const variance = apparentVariance(theta, model);
+  const room = sizeRoom(model, variance, varianceSdOf(variance, apparent));
+  const rise = (nm: number): number => profiled(nm) + room(nm / FWHM_PER_SIGMA);
+  const { nm, sdNm, least } = averageOver(rise, lowNm, highNm);
+  return { nm, sdNm, rise: (v) => Math.max(0, rise(v) - least) };
 }

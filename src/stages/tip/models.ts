@@ -7,7 +7,7 @@ const SCAN_PIXELS = 120;
 /** Starting widths (σ) in pixels. */
 const SCAN_SIGMAS = [0.7, 1.4, 2.8, 5.6];
 /** Variance of a uniform disc and of a bar along one axis: R²/4, a²/3. */
-const SIZE_VARIANCE = { dot: 1 / 4, bar: 1 / 3 } as const;
+export const SIZE_VARIANCE = { dot: 1 / 4, bar: 1 / 3 } as const;
 
 /** A line's extent and the pitch of its pixels, which set what is looked for. */
 export interface Extent {

@@ -68,7 +68,7 @@ export interface TipMeasured {
   readonly model: TipModel;
   /** Full width at half maximum of the tip's response; for a limit, the width the feature shows. */
   readonly fwhmNm: number;
-  /** Half of the 95 % interval over 1.96; for a limit, of the width the feature shows. */
+  /** Edge: half of the 95 % interval over 1.96. Particle: with its size averaged over. For a limit: of the width the feature shows. */
   readonly sdNm: number;
   /** 95 % interval by profile likelihood; 0 as lower end: nothing holds it from below. */
   readonly lowNm: number;
