@@ -33,6 +33,8 @@ export interface FineOptions {
 }
 
 const ITERATIONS = 25;
+/** Rounding and interpolation: no shift is known better, not even between two copies of one frame. */
+const LEAST_SD_PX = 1e-4;
 
 /** Shift between two equally blurred frames to a small fraction of a pixel.
  *
@@ -90,7 +92,7 @@ export function fineShift(
   const scatter = scoreCovariance(work.blocks.x, work.blocks.y, work.blocks.rows, work.blocks.cols, null);
   const reach = options.reachPx;
   const alike = reach === null ? null : stationaryCovariance(work.parts(), reach.x, reach.y);
-  const covariance = alike === null ? scatter : larger(alike, scatter);
+  const covariance = alike === null ? scatter : larger(alike, scatter, pixels / 64);
   const level = work.alongRows(gx, gy);
   const tilted = scoreCovariance(work.blocks.x, work.blocks.y, work.blocks.rows, work.blocks.cols, level.weights);
   const mean = sandwich(a, covariance);
@@ -123,6 +125,6 @@ function sandwich(a: Slope, s: Sym2): Sym2 | null {
   if (u === null || v === null) return null;
   const p = solve(a, u.x, v.x);
   const q = solve(a, u.y, v.y);
-  if (p === null || q === null || !(p.x > 0 && q.y > 0)) return null;
-  return { xx: p.x, xy: 0.5 * (p.y + q.x), yy: q.y };
+  if (p === null || q === null || !(p.x >= 0 && q.y >= 0)) return null;
+  return { xx: p.x + LEAST_SD_PX ** 2, xy: 0.5 * (p.y + q.x), yy: q.y + LEAST_SD_PX ** 2 };
 }

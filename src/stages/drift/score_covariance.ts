@@ -48,8 +48,9 @@ export function scoreCovariance(
   return { xx, xy, yy };
 }
 
-/** The first, scaled up to the second where that is larger over both axes together. */
-export function larger(a: Sym2, b: Sym2): Sym2 {
-  const factor = Math.max(1, 0.5 * (b.xx / a.xx + b.yy / a.yy));
+/** The first, scaled up to the second where that is larger over both axes by more than its own chance (`blocks` sums, nine products of each). */
+export function larger(a: Sym2, b: Sym2, blocks: number): Sym2 {
+  const chance = 1 + (2 * 3) / Math.sqrt(Math.max(1, blocks));
+  const factor = Math.max(1, (0.5 * (b.xx / a.xx + b.yy / a.yy)) / chance);
   return { xx: factor * a.xx, xy: factor * a.xy, yy: factor * a.yy };
 }

@@ -109,7 +109,9 @@ function gradientOf(image: Grid): { x: Float32Array; y: Float32Array; usable: Ui
   for (let i = 2; i < rows - 2; i++) {
     for (let j = 2; j < cols - 2; j++) {
       const p = i * cols + j;
-      if (known[p] < 2 || known[p - 1] < 2 || known[p + 1] < 2 || known[p - cols] < 2 || known[p + cols] < 2) continue;
+      // neighbours next to a gap will do: a gradient that is a little off costs a little precision, it does not move the shift
+      if (known[p] < 2) continue;
+      if (known[p - 1] === 0 || known[p + 1] === 0 || known[p - cols] === 0 || known[p + cols] === 0) continue;
       if (known[p - 2] === 0 || known[p + 2] === 0 || known[p - 2 * cols] === 0 || known[p + 2 * cols] === 0) continue;
       x[p] = (8 * (v[p + 1] - v[p - 1]) - (v[p + 2] - v[p - 2])) / 12;
       y[p] = (8 * (v[p + cols] - v[p - cols]) - (v[p + 2 * cols] - v[p - 2 * cols])) / 12;
