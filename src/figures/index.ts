@@ -1,0 +1,13 @@
+export { rgbOf } from "./colour.js";
+export { domainsFigure, type DomainsInput } from "./domains.js";
+export { driftFigure, type DriftInput } from "./drift.js";
+export { ptFromMm, svgDocument, type Figure, type FigureOptions } from "./figure.js";
+export { framesFigure, type FramePicture, type FramesInput } from "./frames.js";
+export { fringeFigure, type FringeInput } from "./fringe.js";
+export { loopFigure, type LoopInput } from "./loop.js";
+export { orbitFigure } from "./orbit.js";
+export { commonScale, paint, paintStates, valuesOf, type Codes, type Shown } from "./paint.js";
+export { must, num, word, type Cell, type FigureTable, type Row } from "./rows.js";
+export { styleNamed, type Style } from "./style.js";
+export { wallFigure, type WallInput } from "./wall.js";
+export { widthsFigure, type WidthsInput } from "./widths.js";
