@@ -5,7 +5,7 @@ import type { FrameWalls, FringeTest } from "../../model/walls.js";
 import { apparentWidth, kinkWidthFromApparent } from "../../numerics/kink.js";
 import { median } from "../../numerics/quantile.js";
 import { childSeed } from "../../numerics/random.js";
-import { FringeTable, type Blur, type Member } from "./basis.js";
+import { fringeTable, type FringeTable, type Blur, type Member } from "./basis.js";
 import { acrossChord, chordOf } from "./chord.js";
 import { estimateFringe, type FringeEstimate } from "./estimate.js";
 import { levelScatter } from "./level_scatter.js";
@@ -54,10 +54,11 @@ export function testFringes(
   const across = acrossChord(signal.re, signal.im, signal.usable, chord);
   const cut = cutStretches(walls.walls, signal.usable, rows, cols, pixel, s);
   const nearNm = NEAR_WIDTHS * apparentWidth(blur.wNm, Math.max(blur.sigmaNm, 1e-3));
-  const noise = measureNoise(across, cut.distanceNm, cut.trusted, rows, cols, chord, nearNm, binNm, s.reachNm);
-  const profiler = new Profiler(across, cut.distanceNm, rows, cols, binNm, s.reachNm, noise);
+  const grid = { across, distanceNm: cut.distanceNm, trusted: cut.trusted, rows, cols };
+  const noise = measureNoise(grid, chord, blur, nearNm, binNm, s.reachNm);
+  const profiler = new Profiler(grid, binNm, s.reachNm, nearNm, noise);
   const shortest = Math.max(s.leastPeriodTips * (tip?.resolutionNm ?? 0), 4 * binNm);
-  const table = new FringeTable(membersFrom(shortest, s.reachNm / LEAST_SHARE), blur, s.reachNm);
+  const table = fringeTable(membersFrom(shortest, s.reachNm / LEAST_SHARE), blur, s.reachNm);
 
   const profiles = cut.stretches.map((stretch) => profiler.profile(stretch));
   const levelSdRad = levelScatter(profiles, chord, nearNm, s.leastLevelSdRad, s.mostLevelSdRad);

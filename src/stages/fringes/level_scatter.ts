@@ -36,8 +36,7 @@ export function levelScatter(
       let variance = 0;
       for (const a of bins) {
         for (const b of bins) {
-          variance +=
-            profile.covariance[a * n + b] / (profile.covariance[a * n + a] * profile.covariance[b * n + b]);
+          variance += profile.covariance[a * n + b] / (profile.covariance[a * n + a] * profile.covariance[b * n + b]);
         }
       }
       const m2 = (mean / total / arm) ** 2;

@@ -1,196 +1,113 @@
+import type { Blur } from "./basis.js";
 import type { Chord } from "./chord.js";
+import { Local } from "./local.js";
+import { measureRows, NEAR_LAG, type RowNoise } from "./row_noise.js";
+import { CLIP, type Grid } from "./grid.js";
 
-/** Lags up to which neighbouring pixels' noise is taken to be correlated. */
-export const NEAR_LAG = 3;
-/** Neighbouring rows whose offsets may be related. */
-export const ROW_LAG = 6;
-export const CLASSES = 4;
-
-/** Noise across the chord as measured in one frame, in units of the pixel noise of the state (`sd`). */
+/** Noise across the chord as measured in one frame. */
 export interface NoiseModel {
+  readonly local: Local;
   /** Correlation of pixels `dy` rows and `dx` columns apart at [dy][dx + NEAR_LAG]; 1 at [0][NEAR_LAG]. */
   readonly near: readonly Float64Array[];
-  /** Covariance of two distant pixels of one row by their classes (see `classOf`), CLASSES × CLASSES. */
-  readonly row: Float64Array;
-  /** Covariance of distant pixels 1 … ROW_LAG rows apart, at index 1 …. */
-  readonly rowLag: Float64Array;
-  /** Standard deviation of a pixel's noise per state, in signal units. */
-  readonly sdInsulating: number;
-  readonly sdMetallic: number;
-  /** Distance that divides the classes, nm. */
-  readonly nearWallNm: number;
+  readonly rows: RowNoise;
 }
 
-/** Rows' offsets were taken off from pixels far from walls, so what is left of them is not the same there as near the walls, nor
- *  the same for the two states: 0 insulating near, 1 insulating far, 2 metallic near, 3 metallic far. */
-export function classOf(distanceNm: number, nearWallNm: number): number {
-  return distanceNm < 0 ? (distanceNm < -nearWallNm ? 1 : 0) : distanceNm > nearWallNm ? 3 : 2;
-}
+/** Enough pixels of one state to correct the noise that was measured along with its level. */
+const ENOUGH = 200;
 
 /** Measures the noise from what is left of the component across the chord after its mean at each distance from the walls is taken
- *  off: pixel noise, its correlation between neighbours, and what is left of the offsets of whole rows (pixels of one row too far apart to
- *  be neighbours). A fringe goes with its mean profile; only where it is strong and irregular does it add to the noise. */
+ *  off: pixel noise, its correlation between neighbours, and what is left of the offsets of whole rows. A fringe goes with its mean
+ *  profile; only where it is strong and irregular does it add to the noise.
+ *  @param nearWallNm rows were referenced on pixels farther from the walls than this */
 export function measureNoise(
-  across: Float32Array,
-  distanceNm: Float32Array,
-  trusted: Uint8Array,
-  rows: number,
-  cols: number,
+  grid: Grid,
   chord: Chord,
+  blur: Blur,
   nearWallNm: number,
   binNm: number,
   reachNm: number,
 ): NoiseModel {
+  const { across, distanceNm, trusted, rows, cols } = grid;
   const n = rows * cols;
+  const first = new Local(chord, blur, reachNm);
+  const e = residuals(grid, first, binNm, reachNm);
+  const square = [0, 0];
+  const many = [0, 0];
+  for (let p = 0; p < n; p++) {
+    if (trusted[p] === 0 || Math.abs(distanceNm[p]) <= nearWallNm) continue;
+    const state = distanceNm[p] > 0 ? 1 : 0;
+    square[state] += e[p] * e[p];
+    many[state]++;
+  }
+  const excess = (k: number): number => (many[k] > ENOUGH ? Math.max(0.5, Math.sqrt(square[k] / many[k])) : 1);
+  const local = new Local(chord, blur, reachNm, [excess(0), excess(1)]);
+  for (let p = 0; p < n; p++) {
+    if (trusted[p] === 1) e[p] *= first.sd(distanceNm[p]) / local.sd(distanceNm[p]);
+  }
+
+  const lag = lagProducts(e, grid);
+  const variance = lag.products[0][NEAR_LAG] / Math.max(1, lag.pairs[0][NEAR_LAG]);
+  const x = [1, 2, 3].reduce((a, dx) => a + lag.products[0][NEAR_LAG + dx] / lag.products[0][NEAR_LAG], 0);
+  const found = measureRows(grid, e, across, local, nearWallNm, 1 + 2 * Math.max(0, x));
+  const correlation = (dy: number, dx: number): number => {
+    const m = lag.pairs[dy][dx + NEAR_LAG];
+    if (m === 0) return 0;
+    // What a whole row shares is counted as such.
+    const c = (lag.products[dy][dx + NEAR_LAG] / m - found.common[dy]) / variance;
+    // Below what the number of pairs can tell it is left out.
+    return Math.abs(c) > 3 / Math.sqrt(m) ? c : 0;
+  };
+  // A filter along the rows and one across them: the correlation is the product of those along the axes, which many pairs tell well.
+  const near = lag.products.map((line, dy) =>
+    line.map(
+      (_, k) => (dy === 0 ? 1 : correlation(dy, 0)) * (k === NEAR_LAG ? 1 : correlation(0, Math.abs(k - NEAR_LAG))),
+    ),
+  );
+  return { local, near, rows: found };
+}
+
+/** The component across the chord less its mean at that distance, in units of the pixel noise; 0 where it is not trusted. */
+function residuals(grid: Grid, local: Local, binNm: number, reachNm: number): Float64Array {
+  const { across, distanceNm, trusted } = grid;
   const half = Math.ceil(reachNm / binNm);
   const sum = new Float64Array(2 * half);
   const count = new Int32Array(2 * half);
   const binOf = (d: number): number => Math.max(0, Math.min(2 * half - 1, Math.floor(d / binNm) + half));
-  for (let p = 0; p < n; p++) {
+  for (let p = 0; p < across.length; p++) {
     if (trusted[p] === 0) continue;
     const b = binOf(distanceNm[p]);
     sum[b] += across[p];
     count[b]++;
   }
-  const e = new Float64Array(n);
-  const square = [0, 0];
-  const many = [0, 0];
-  const clip = 5;
-  for (let p = 0; p < n; p++) {
+  const e = new Float64Array(across.length);
+  for (let p = 0; p < e.length; p++) {
     if (trusted[p] === 0) continue;
     const b = binOf(distanceNm[p]);
     // Each bin's mean has eaten its share of the noise.
     const scale = count[b] > 1 ? Math.sqrt(count[b] / (count[b] - 1)) : 0;
-    const metal = distanceNm[p] > 0 ? 1 : 0;
-    const sd = metal === 1 ? chord.noiseMetallic : chord.noiseInsulating;
-    const v = ((across[p] - sum[b] / count[b]) * scale) / sd;
-    e[p] = Math.max(-clip, Math.min(clip, v));
-    if (Math.abs(distanceNm[p]) > nearWallNm) {
-      square[metal] += e[p] * e[p];
-      many[metal]++;
-    }
+    e[p] = Math.max(-CLIP, Math.min(CLIP, ((across[p] - sum[b] / count[b]) * scale) / local.sd(distanceNm[p])));
   }
-  // The states' noise was measured along with the levels; where it is larger here, believe what is seen.
-  const excess = [0, 1].map((k) => (many[k] > 200 ? Math.max(0.5, Math.sqrt(square[k] / many[k])) : 1));
-  for (let p = 0; p < n; p++) if (trusted[p] === 1) e[p] /= excess[distanceNm[p] > 0 ? 1 : 0];
-
-  const products = Array.from({ length: NEAR_LAG + 1 }, () => new Float64Array(2 * NEAR_LAG + 1));
-  const pairs = Array.from({ length: NEAR_LAG + 1 }, () => new Float64Array(2 * NEAR_LAG + 1));
-  for (let i = 0; i < rows; i++) {
-    for (let dy = 0; dy <= NEAR_LAG && i + dy < rows; dy++) {
-      for (let dx = -NEAR_LAG; dx <= NEAR_LAG; dx++) {
-        const from = Math.max(0, -dx);
-        const to = Math.min(cols, cols - dx);
-        const q = (i + dy) * cols + dx;
-        let s = 0;
-        let m = 0;
-        for (let j = from; j < to; j++) {
-          const both = trusted[i * cols + j] & trusted[q + j];
-          m += both;
-          s += e[i * cols + j] * e[q + j];
-        }
-        products[dy][dx + NEAR_LAG] += s;
-        pairs[dy][dx + NEAR_LAG] += m;
-      }
-    }
-  }
-  const { row, rowLag, common } = measureRows(e, distanceNm, trusted, rows, cols, nearWallNm);
-  const variance = products[0][NEAR_LAG] / Math.max(1, pairs[0][NEAR_LAG]);
-  // What a whole row shares is counted as such.
-  const beyondRow = (dy: number, dx: number): number => {
-    const m = pairs[dy][dx + NEAR_LAG];
-    if (m === 0) return 0;
-    const c = (products[dy][dx + NEAR_LAG] / m - (dy === 0 ? common : rowLag[dy])) / variance;
-    // Below what the number of pairs can tell it is left out.
-    return Math.abs(c) > 3 / Math.sqrt(m) ? c : 0;
-  };
-  // A filter along the rows and one across them: the correlation is the product of those along the axes, which many pairs tell well.
-  const near = products.map((line, dy) =>
-    line.map((_, k) => (dy === 0 ? 1 : beyondRow(dy, 0)) * (k === NEAR_LAG ? 1 : beyondRow(0, Math.abs(k - NEAR_LAG)))),
-  );
-  return {
-    near,
-    row,
-    rowLag,
-    sdInsulating: chord.noiseInsulating * excess[0],
-    sdMetallic: chord.noiseMetallic * excess[1],
-    nearWallNm,
-  };
+  return e;
 }
 
-/** Covariances of distant pixels of one row, by class; and how they go on over neighbouring rows. */
-function measureRows(
-  e: Float64Array,
-  distanceNm: Float32Array,
-  trusted: Uint8Array,
-  rows: number,
-  cols: number,
-  nearWallNm: number,
-): { row: Float64Array; rowLag: Float64Array; common: number } {
-  const product = new Float64Array(CLASSES * CLASSES);
-  const pair = new Float64Array(CLASSES * CLASSES);
-  const sums = new Float64Array(rows * CLASSES);
-  const counts = new Float64Array(rows * CLASSES);
-  const classes = new Uint8Array(cols);
-  for (let i = 0; i < rows; i++) {
-    for (let j = 0; j < cols; j++) {
-      const p = i * cols + j;
-      classes[j] = trusted[p] === 0 ? CLASSES : classOf(distanceNm[p], nearWallNm);
-      if (classes[j] === CLASSES) continue;
-      sums[i * CLASSES + classes[j]] += e[p];
-      counts[i * CLASSES + classes[j]]++;
-    }
-    // All pairs of the row, less those of near neighbours.
-    for (let a = 0; a < CLASSES; a++) {
-      for (let b = 0; b < CLASSES; b++) {
-        product[a * CLASSES + b] += sums[i * CLASSES + a] * sums[i * CLASSES + b];
-        pair[a * CLASSES + b] += counts[i * CLASSES + a] * counts[i * CLASSES + b];
-      }
-    }
-    for (let j = 0; j < cols; j++) {
-      if (classes[j] === CLASSES) continue;
-      for (let k = Math.max(0, j - NEAR_LAG); k <= Math.min(cols - 1, j + NEAR_LAG); k++) {
-        if (classes[k] === CLASSES) continue;
-        product[classes[j] * CLASSES + classes[k]] -= e[i * cols + j] * e[i * cols + k];
-        pair[classes[j] * CLASSES + classes[k]]--;
-      }
-    }
-  }
-  const row = new Float64Array(CLASSES * CLASSES);
-  let common = 0;
-  let all = 0;
-  for (let k = 0; k < row.length; k++) {
-    common += product[k];
-    all += pair[k];
-    if (pair[k] <= 0) continue;
-    // Shrunk by what chance alone would give with so few pairs (positive-part James & Stein).
-    const c = product[k] / pair[k];
-    row[k] = c * Math.max(0, 1 - 1 / (pair[k] * c * c));
-  }
-  common = all > 0 ? common / all : 0;
-  const rowLag = new Float64Array(ROW_LAG + 1);
-  for (let lag = 1; lag <= ROW_LAG; lag++) {
+function lagProducts(e: Float64Array, { trusted, rows, cols }: Grid) {
+  const products = Array.from({ length: NEAR_LAG + 1 }, () => new Float64Array(2 * NEAR_LAG + 1));
+  const pairs = Array.from({ length: NEAR_LAG + 1 }, () => new Float64Array(2 * NEAR_LAG + 1));
+  // Only the axes are needed.
+  const lags = [];
+  for (let k = 0; k <= NEAR_LAG; k++) lags.push([0, k], ...(k > 0 ? [[k, 0]] : []));
+  for (const [dy, dx] of lags) {
     let s = 0;
     let m = 0;
-    for (let i = 0; i + lag < rows; i++) {
-      const a = i * CLASSES;
-      const b = (i + lag) * CLASSES;
-      // Near the walls only: nothing was taken off there.
-      s += (sums[a] + sums[a + 2]) * (sums[b] + sums[b + 2]);
-      m += (counts[a] + counts[a + 2]) * (counts[b] + counts[b + 2]);
-      if (lag > NEAR_LAG) continue;
-      for (let j = 0; j < cols; j++) {
-        const p = i * cols + j;
-        if (trusted[p] === 0 || Math.abs(distanceNm[p]) > nearWallNm) continue;
-        for (let k = Math.max(0, j - NEAR_LAG); k <= Math.min(cols - 1, j + NEAR_LAG); k++) {
-          const q = (i + lag) * cols + k;
-          if (trusted[q] === 0 || Math.abs(distanceNm[q]) > nearWallNm) continue;
-          s -= e[p] * e[q];
-          m--;
-        }
+    for (let i = 0; i + dy < rows; i++) {
+      const q = (i + dy) * cols + dx;
+      for (let j = 0; j + dx < cols; j++) {
+        m += trusted[i * cols + j] & trusted[q + j];
+        s += e[i * cols + j] * e[q + j];
       }
     }
-    rowLag[lag] = m > 0 && s > 2 * Math.sqrt(m) ? s / m : 0;
+    products[dy][dx + NEAR_LAG] = s;
+    pairs[dy][dx + NEAR_LAG] = m;
   }
-  return { row, rowLag, common };
+  return { products, pairs };
 }

@@ -1,5 +1,6 @@
+import type { Grid } from "./grid.js";
 import type { NoiseModel } from "./noise.js";
-import { classOf, CLASSES, NEAR_LAG, ROW_LAG } from "./noise.js";
+import { NEAR_LAG, ROW_LAG } from "./row_noise.js";
 import type { Stretch } from "./stretches.js";
 
 /** The component across the chord against signed distance, averaged over one stretch. Bins ordered by distance. */
@@ -24,19 +25,18 @@ export class Profiler {
   private readonly slot: Int16Array;
 
   constructor(
-    private readonly across: Float32Array,
-    private readonly distanceNm: Float32Array,
-    private readonly rows: number,
-    private readonly cols: number,
+    private readonly grid: Grid,
     private readonly binNm: number,
     private readonly reachNm: number,
+    private readonly nearWallNm: number,
     private readonly noise: NoiseModel,
   ) {
-    this.slot = new Int16Array(rows * cols).fill(-1);
+    this.slot = new Int16Array(grid.across.length).fill(-1);
   }
 
   profile(stretch: Stretch): Profile {
-    const { across, distanceNm, binNm, slot } = this;
+    const { binNm, slot } = this;
+    const { across, distanceNm } = this.grid;
     const half = Math.ceil(this.reachNm / binNm);
     const many = new Int32Array(2 * half);
     const sum = new Float64Array(2 * half);
@@ -67,8 +67,7 @@ export class Profiler {
       slot[p] = index[b];
       kept.push(p);
     }
-    const classes = Uint8Array.from(distance, (d) => classOf(d, this.noise.nearWallNm));
-    const covariance = this.covariance(kept, count, pixels, classes);
+    const covariance = this.covariance(kept, distance, pixels);
     for (const p of kept) slot[p] = -1;
     return {
       count,
@@ -80,15 +79,12 @@ export class Profiler {
     };
   }
 
-  private covariance(
-    kept: readonly number[],
-    count: number,
-    pixels: Float64Array,
-    classes: Uint8Array,
-  ): Float64Array {
-    const { slot, rows, cols, noise, distanceNm } = this;
+  private covariance(kept: readonly number[], distance: Float64Array, pixels: Float64Array): Float64Array {
+    const { slot, noise } = this;
+    const { rows, cols, distanceNm } = this.grid;
+    const count = pixels.length;
     const c = new Float64Array(count * count);
-    const sd = (p: number): number => (distanceNm[p] < 0 ? noise.sdInsulating : noise.sdMetallic);
+    const sd = (p: number): number => noise.local.sd(distanceNm[p]);
     const lags: { dy: number; dx: number; rho: number }[] = [];
     for (let dy = 0; dy <= NEAR_LAG; dy++) {
       for (let dx = -NEAR_LAG; dx <= NEAR_LAG; dx++) {
@@ -111,41 +107,46 @@ export class Profiler {
         c[b * count + a] += v;
       }
     }
-    this.addRows(kept, count, c, classes);
+    this.addRows(kept, distance, c);
     for (let a = 0; a < count; a++) for (let b = 0; b < count; b++) c[a * count + b] /= pixels[a] * pixels[b];
     return c;
   }
 
   /** Σ over pairs of pixels of one row (and of rows near each other) of what they share; a bin lies wholly in few rows or in many. */
-  private addRows(kept: readonly number[], count: number, c: Float64Array, classes: Uint8Array): void {
-    const { slot, cols, noise, distanceNm } = this;
+  private addRows(kept: readonly number[], distance: Float64Array, c: Float64Array): void {
+    const { slot, noise, nearWallNm } = this;
+    const { cols, distanceNm } = this.grid;
+    const count = distance.length;
     if (kept.length === 0) return;
-    // Per row and bin the sum of the pixels' standard deviations; `kept` goes from row to row.
+    // Per row and bin how far a turn, and a stretch, of all its pixels moves their sum; `kept` goes from row to row.
     const top = Math.floor(kept[0] / cols);
     const lines = Math.floor(kept[kept.length - 1] / cols) - top + 1;
-    const weight = new Float64Array(lines * count);
+    const turn = new Float64Array(lines * count);
+    const stretch = new Float64Array(lines * count);
+    const met: number[][] = Array.from({ length: lines }, () => []);
     for (const p of kept) {
-      const sd = distanceNm[p] < 0 ? noise.sdInsulating : noise.sdMetallic;
-      weight[(Math.floor(p / cols) - top) * count + slot[p]] += sd;
+      const i = Math.floor(p / cols) - top;
+      const at = i * count + slot[p];
+      if (stretch[at] === 0 && turn[at] === 0) met[i].push(slot[p]);
+      turn[at] += noise.local.along(distanceNm[p]);
+      stretch[at] += noise.local.chord.height;
     }
-    const met = Array.from({ length: lines }, (_, i) => {
-      const bins: number[] = [];
-      for (let a = 0; a < count; a++) if (weight[i * count + a] !== 0) bins.push(a);
-      return bins;
-    });
+    const group = Array.from(distance, (d) => (Math.abs(d) > nearWallNm ? 1 : 0));
     for (let i = 0; i < lines; i++) {
       const at = i * count;
       for (const a of met[i]) {
-        const row = classes[a] * CLASSES;
-        for (const b of met[i]) c[a * count + b] += weight[at + a] * weight[at + b] * noise.row[row + classes[b]];
+        for (const b of met[i]) {
+          const moved = turn[at + a] * turn[at + b] + stretch[at + a] * stretch[at + b];
+          c[a * count + b] += moved * noise.rows.same[2 * group[a] + group[b]];
+        }
       }
       for (let lag = 1; lag <= ROW_LAG && i + lag < lines; lag++) {
-        const shared = noise.rowLag[lag];
+        const shared = noise.rows.apart[lag];
         if (shared === 0) continue;
         const below = (i + lag) * count;
         for (const a of met[i]) {
           for (const b of met[i + lag]) {
-            const v = shared * weight[at + a] * weight[below + b];
+            const v = shared * (turn[at + a] * turn[below + b] + stretch[at + a] * stretch[below + b]);
             c[a * count + b] += v;
             c[b * count + a] += v;
           }

@@ -7,13 +7,15 @@ export const settings = {
   leastReachNm: {
     default: 75,
     unit: "nm",
-    means: "a stretch is tested only where its pixels reach this far on both sides: else nothing tells on which side a fringe is",
+    means:
+      "a stretch is tested only where its pixels reach this far on both sides: else nothing tells on which side a fringe is",
     min: 10,
   },
   leastLevelSdRad: {
     default: 0.002,
     unit: "rad",
-    means: "by how much the optical phase of a state may differ beside one wall from that of the frame (1 sd), at least; more where the frame shows more",
+    means:
+      "by how much the optical phase of a state may differ beside one wall from that of the frame (1 sd), at least; more where the frame shows more",
     min: 0.0001,
   },
   mostLevelSdRad: {
