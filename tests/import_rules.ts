@@ -12,11 +12,13 @@ export const MAY_IMPORT: Readonly<Record<string, readonly string[]>> = {
   "analyse.ts": ["model", "numerics", "stages", "settings.ts", "workers"],
   tables: ["model"],
   store: ["model", "tables"],
+  figures: ["model", "numerics", "tables"],
   demo: ["model", "numerics", "raster", "input"],
   study: ["model", "numerics", "input", "settings.ts", "analyse.ts", "tables", "store", "demo"],
   cli: ["model", "numerics", "raster", "input", "stages", "settings.ts", "workers", "analyse.ts"].concat([
     "tables",
     "store",
+    "figures",
     "demo",
     "study",
   ]),
@@ -30,7 +32,7 @@ const ONLY_IN: Readonly<Record<string, string>> = {
 };
 
 /** Folders of pure values: no files, processes or threads, so nothing of Node's own. */
-const WITHOUT_NODE: readonly string[] = ["model", "numerics", "stages", "tables"];
+const WITHOUT_NODE: readonly string[] = ["model", "numerics", "stages", "tables", "figures"];
 
 /** Every breach of the rules as a line of text. `files`: path below `src/` with forward slashes → TypeScript text. */
 export function breaches(files: ReadonlyMap<string, string>): string[] {

@@ -80,6 +80,25 @@ function build(): Command {
     .option("--out <file>", "write here instead of standard output")
     .action(async (table: string, o: object) => (await import("./export.js")).exportTable(table, o as never));
 
+  selecting(program.command("figure"))
+    .description("draw a figure of what is stored: loop, frames, widths, wall, fringe, drift, domains or orbit")
+    .argument("<kind>", "what to draw")
+    .requiredOption("--out <file>", "an .svg (text stays text) or a .png")
+    .option("--frame <n...>", "only these frames; for wall, fringe and orbit the frame to look into")
+    .option("--wall <n>", "for wall, fringe and orbit: the wall; what is not named is chosen")
+    .option("--profile <n>", "for wall: the profile along it")
+    .option("--stretch <n>", "for fringe and orbit: the stretch along it")
+    .addOption(
+      new Option("--channel <channel>", "for frames: what to show")
+        .choices(["amplitude", "phase", "topography", "states"])
+        .default("amplitude"),
+    )
+    .option("--width-mm <mm>", "width of the figure", "86")
+    .option("--dpi <n>", "dots an inch of a .png", "300")
+    .addOption(new Option("--style <style>", "dark on light, or light on dark").choices(["paper", "screen"]).default("paper"))
+    .option("--data <file>", "also write the figure's numbers, as CSV")
+    .action(async (kind: string, o: object) => (await import("./figure.js")).figure(kind, o as never));
+
   program
     .command("verify")
     .description("check a database from outside: its file, its schema, and what its numbers owe each other")
