@@ -12,7 +12,7 @@ import type { StatesSettings } from "./settings.js";
 import { differenceNoise } from "./split.js";
 import { commonPart } from "./summarise_fit.js";
 
-const ROUNDS = 3;
+const ROUNDS = 2;
 
 /** One state and its rows; what is unlike it is left out. Two states after all, where they show once the rows are corrected. */
 export function fitOneState(frame: number, raw: Pixels, tip: Tip | null, s: StatesSettings): LevelFit {
