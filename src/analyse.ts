@@ -125,13 +125,13 @@ async function analyseWith(
     const levels = track.levels[k] as FrameLevels;
     const own = fringes.filter((t) => t.frame === k);
     const shown = (state: "insulating" | "metallic"): number | null =>
-      levels.verdict === "mixed" || levels.verdict === state
+      (m.verdict === "mixed" || m.verdict === state) && Number.isFinite(levels[state].re)
         ? Math.hypot(levels[state].re, levels[state].im) / levels.gain
         : null;
     return {
       frame: k,
       imagesSha256: (cleaned[k] as (typeof cleaned)[number]).imagesSha256,
-      verdict: levels.verdict,
+      verdict: m.verdict,
       drift: drifts[k] as Drift,
       fraction: m.fraction,
       amplitudeInsulating: shown("insulating"),

@@ -4,7 +4,7 @@ import type { Cooldown, FrameInfo, Notice, Tip } from "../model/cooldown.js";
 import type { DomainRegion, FrameDomains } from "../model/domains.js";
 import type { ErrorRecord } from "../model/errors.js";
 import type { Preview } from "../model/pictures.js";
-import type { DomainMap, Drift, FrameLevels, FrameStates } from "../model/signal.js";
+import type { DomainMap, Drift, FrameLevels, FrameStates, FrameVerdict } from "../model/signal.js";
 import type { FringeTest, FrameWalls, WidthSummary } from "../model/walls.js";
 import { frameDigest, inspectFrame, loadFrame } from "../input/index.js";
 import type { Settings } from "../settings.js";
@@ -120,6 +120,8 @@ interface MeasureInput extends FrameInput {
   readonly seed: number;
 }
 export interface MeasureOutput {
+  /** Final: the levels propose, the map decides. */
+  readonly verdict: FrameVerdict;
   readonly fraction: FrameStates["fraction"];
   readonly map: PackedMap;
   readonly regions: readonly DomainRegion[];
@@ -160,6 +162,7 @@ async function measure(input: MeasureInput): Promise<MeasureOutput> {
   let debrisPixels = 0;
   for (const d of mask) if (d === CORE) debrisPixels++;
   return {
+    verdict: states.levels.verdict,
     fraction: states.fraction,
     map: packMap(states.map),
     regions: domains.regions,
