@@ -4,8 +4,7 @@
  *  @returns for each row its column, or −1 */
 export function largestAssignment(weight: ArrayLike<number>, rows: number, cols: number): Int32Array {
   const n = Math.max(rows, cols);
-  const cost = (i: number, j: number): number =>
-    i < rows && j < cols ? -Math.max(0, weight[i * cols + j] as number) : 0;
+  const cost = (i: number, j: number): number => (i < rows && j < cols ? -Math.max(0, weight[i * cols + j]) : 0);
   // 1-based potentials and matches; column 0 is a helper that stands for the row being placed.
   const u = new Float64Array(n + 1);
   const v = new Float64Array(n + 1);
@@ -49,7 +48,7 @@ export function largestAssignment(weight: ArrayLike<number>, rows: number, cols:
   const out = new Int32Array(rows).fill(-1);
   for (let j = 1; j <= cols; j++) {
     const i = rowOf[j] - 1;
-    if (i >= 0 && i < rows && (weight[i * cols + j - 1] as number) > 0) out[i] = j - 1;
+    if (i >= 0 && i < rows && weight[i * cols + j - 1] > 0) out[i] = j - 1;
   }
   return out;
 }

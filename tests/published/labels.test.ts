@@ -1,8 +1,8 @@
-import { readFileSync } from "node:fs";
 import { describe, expect, test } from "vitest";
 import { defaultsOf } from "../../src/model/settings.js";
 import { INSULATING, METALLIC } from "../../src/model/signal.js";
 import { labelDomains, settings } from "../../src/stages/domains/index.js";
+import { fixture } from "./fixture.js";
 
 /** Source of the values: fixtures/segmentation.json (scikit-image and SciPy). */
 interface Counted {
@@ -18,7 +18,7 @@ interface Published {
   threshold_120: { connectivity_4: Counted; connectivity_8: Counted; perimeter_crofton: Record<string, number> };
   small_map: Record<string, number> & { rows: string[] };
 }
-const published = JSON.parse(readFileSync("fixtures/segmentation.json", "utf8")) as Published;
+const published = fixture<Published>("segmentation");
 const s = { ...defaultsOf(settings), leastPixels: 1 };
 
 function found(above: number[][], asMetallic: boolean) {
@@ -51,7 +51,7 @@ describe("labels against other programs", () => {
 
   test("a small map with corners in every arrangement", () => {
     const map = published.small_map;
-    const above = map.rows.map((r) => [...r].map(Number));
+    const above = map.rows.map((r) => Array.from(r, Number));
     const metal = found(above, true);
     expect(metal.mine.length).toBe(map["components_8"]);
     expect(metal.rest.length).toBe(map["rest_components_4"]);

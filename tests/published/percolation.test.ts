@@ -1,9 +1,9 @@
-import { readFileSync } from "node:fs";
 import { describe, expect, test } from "vitest";
 import { defaultsOf } from "../../src/model/settings.js";
 import { INSULATING, METALLIC, type DomainMap } from "../../src/model/signal.js";
 import { makeRandom } from "../../src/numerics/random.js";
 import { labelDomains, settings } from "../../src/stages/domains/index.js";
+import { fixture } from "./fixture.js";
 
 /** Source of the values: fixtures/percolation.json, where each says how it was obtained. */
 interface Published {
@@ -13,7 +13,7 @@ interface Published {
   exact_3x3: { counts_k_0_to_9: number[] };
   exact_4x4: { counts_k_0_to_16: number[] };
 }
-const published = JSON.parse(readFileSync("fixtures/percolation.json", "utf8")) as Published;
+const published = fixture<Published>("percolation");
 
 const s = { ...defaultsOf(settings), leastPixels: 1 };
 const label = (rows: number, cols: number, states: Uint8Array) => {

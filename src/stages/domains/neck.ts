@@ -45,8 +45,7 @@ export function neckIsNarrow(
     let meets = 0;
     kept[start] = 0;
     stack.push(start);
-    while (stack.length > 0) {
-      const at = stack.pop() as number;
+    for (let at = stack.pop(); at !== undefined; at = stack.pop()) {
       const i = Math.floor(at / cols);
       const j = at - i * cols;
       const ib = i + shiftRows;

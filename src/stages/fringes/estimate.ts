@@ -62,7 +62,8 @@ export function estimateFringe(
       p.set(q);
       if (!free) p.set(fixed, NUISANCES + 2);
       const [logPeriod, logDecay] = [p[NUISANCES + 2], p[NUISANCES + 3]];
-      if (logPeriod < shortest || logPeriod > longest || logDecay < shortest - 2 || logDecay > longest + 1) return false;
+      if (logPeriod < shortest || logPeriod > longest || logDecay < shortest - 2 || logDecay > longest + 1)
+        return false;
       if (!forward.set(p, NUISANCES)) return false;
       for (let k = 0; k < n; k++) {
         forward.change(profile.distanceNm[k], out, jacobian !== null);
@@ -79,7 +80,8 @@ export function estimateFringe(
         if (jacobian === null) continue;
         for (let a = 0; a < fitted; a++) jacobian[(n + c) * fitted + a] = a === c ? 1 : 0;
       }
-      for (let c = 0; jacobian !== null && c < fitted; c++) {
+      if (jacobian === null) return true;
+      for (let c = 0; c < fitted; c++) {
         for (let k = 0; k < n; k++) column[k] = jacobian[k * fitted + c];
         whiten(l, n, column);
         for (let k = 0; k < n; k++) jacobian[k * fitted + c] = column[k];
@@ -133,12 +135,7 @@ const NOTHING: FringeEstimate = {
   decaySdNm: null,
 };
 
-function fittedCurve(
-  profile: Profile,
-  forward: FringeForward,
-  nuisances: Float64Array,
-  p: Float64Array,
-): FittedCurve {
+function fittedCurve(profile: Profile, forward: FringeForward, nuisances: Float64Array, p: Float64Array): FittedCurve {
   const n = profile.count;
   const curve = { across: new Float64Array(n), along: new Float64Array(n), offset: new Float64Array(n) };
   const out = new Float64Array(2 + 2 * FRINGE_PARAMETERS);

@@ -125,4 +125,3 @@ function candidatesFor(profile: Profile, table: FringeTable, s: FringeSettings):
   }
   return out;
 }
-

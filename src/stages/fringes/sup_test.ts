@@ -64,14 +64,15 @@ export function noiseFactor(profile: Profile, nuisances: Float64Array | null): F
   const n = profile.count;
   let mean = 0;
   for (let i = 0; i < n; i++) mean += Math.max(0, profile.covariance[i * n + i]) / n;
+  const offsets = nuisances ?? new Float64Array(n * NUISANCES);
   // The lift is common to all bins: one with a variance near zero or below it, from a correlation that is poorly measured, must gain too.
   for (let lift = 0; ; lift = lift === 0 ? 1e-6 : lift * 10) {
     if (!(lift < 1e9)) throw new Error("the noise of a fringe profile has no covariance");
     const l = Float64Array.from(profile.covariance);
     for (let i = 0; i < n; i++) {
       l[i * n + i] = Math.max(l[i * n + i], lift === 0 ? l[i * n + i] : 0) + lift * mean;
-      for (let j = 0; nuisances !== null && j <= i; j++) {
-        for (let c = 0; c < NUISANCES; c++) l[i * n + j] += nuisances[i * NUISANCES + c] * nuisances[j * NUISANCES + c];
+      for (let j = 0; j <= i; j++) {
+        for (let c = 0; c < NUISANCES; c++) l[i * n + j] += offsets[i * NUISANCES + c] * offsets[j * NUISANCES + c];
       }
     }
     if (choleskyInPlace(l, n)) return l;
