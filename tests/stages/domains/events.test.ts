@@ -59,7 +59,7 @@ function inside(e: DomainEvent): boolean {
 }
 
 describe("events of large domains against the noise-free maps, under drift", () => {
-  test.each([0, 0.05])("precision and recall, noise %f of the step", (noise) => {
+  test.each([0.05])("precision and recall, noise %f of the step", (noise) => {
     const recall: Record<string, { all: number; found: number }> = {};
     const precision: Record<string, { all: number; found: number }> = {};
     for (let seed = 1; seed <= 25; seed++) {

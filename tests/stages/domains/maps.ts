@@ -29,7 +29,7 @@ export function mapFrom(
 export function randomField(seed: number, lengthNm: number) {
   const random = makeRandom(seed);
   // A Gaussian spectrum: correlation length `lengthNm`.
-  const waves = Array.from({ length: 60 }, () => ({
+  const waves = Array.from({ length: 32 }, () => ({
     kx: random.normal() / lengthNm,
     ky: random.normal() / lengthNm,
     phase: random.uniform() * 2 * Math.PI,
