@@ -6,6 +6,7 @@ import { errorsOf, largest, rms, scoreCooldown, type Score } from "../study/scor
 import { TABLES } from "../tables/columns.js";
 import { demo } from "./demo.js";
 import { exportTable } from "./export.js";
+import { figure } from "./figure.js";
 import { ingest } from "./ingest.js";
 import { loops } from "./loops.js";
 import { print, sayError } from "./say.js";
@@ -93,6 +94,9 @@ export async function runDemo(args: readonly string[]): Promise<number> {
     mkdirSync(tables);
     for (const t of TABLES) await exportTable(t.name, { db, format: "csv", out: path.join(tables, `${t.name}.csv`) });
 
+    const drawing = path.join(dir, "loop.svg");
+    await figure("loop", { db, out: drawing });
+
     print("\nHow far that is from the truth:\n");
     let all = true;
     const handle = openForReading(db);
@@ -111,6 +115,7 @@ export async function runDemo(args: readonly string[]): Promise<number> {
     print(
       `\ndatabase: ${db} (${(statSync(db).size / 1e6).toFixed(1)} MB)   tables: ${tables}/*.csv   truth: beside each cooldown.yaml\n`,
     );
+    print(`loop figure: ${drawing}\n`);
     print(`next: npm run -s coldseam -- walls --db ${db}\n`);
     return all ? 0 : 1;
   } catch (e) {

@@ -1,6 +1,13 @@
 import { renameSync, rmSync, writeFileSync } from "node:fs";
 import path from "node:path";
-import { ptFromMm, styleNamed, svgDocument, type Figure, type FigureOptions, type FigureTable } from "../figures/index.js";
+import {
+  ptFromMm,
+  styleNamed,
+  svgDocument,
+  type Figure,
+  type FigureOptions,
+  type FigureTable,
+} from "../figures/index.js";
 import { InputError, UsageError } from "../model/errors.js";
 import { closestWord } from "../model/text.js";
 import { formatTable } from "../tables/format.js";
@@ -31,6 +38,7 @@ export async function figure(kind: string, o: FigureCommandOptions): Promise<voi
       `the kinds are ${FIGURE_KINDS.join(", ")}`,
     );
   }
+  refuseUnused(kind, o);
   const format = path.extname(o.out).toLowerCase();
   if (format !== ".svg" && format !== ".png")
     throw new UsageError(`--out ${o.out}: the name must end in .svg or .png`, "SVG is the better one for papers");
@@ -60,6 +68,27 @@ export async function figure(kind: string, o: FigureCommandOptions): Promise<voi
   }
 }
 
+/** Which options say what a kind shows; given to another kind they would be passed over without a word. */
+const CHOOSES: Readonly<Record<string, readonly string[]>> = {
+  frames: ["frame", "channel"],
+  wall: ["frame", "wall", "profile"],
+  fringe: ["frame", "wall", "stretch"],
+  orbit: ["frame", "wall", "stretch"],
+};
+
+function refuseUnused(kind: string, o: FigureCommandOptions): void {
+  const given = { frame: o.frame, wall: o.wall, profile: o.profile, stretch: o.stretch, channel: o.channel };
+  const takes = CHOOSES[kind] ?? [];
+  for (const [name, value] of Object.entries(given))
+    if (value !== undefined && !takes.includes(name))
+      throw new UsageError(
+        `the figure ${kind} has no --${name}`,
+        takes.length === 0
+          ? "it shows the whole cooldown; leave it out"
+          : `it takes ${takes.map((t) => `--${t}`).join(", ")}`,
+      );
+}
+
 function within(name: string, text: string, low: number, high: number): number {
   const v = Number(text);
   if (text.trim() === "" || !(v >= low && v <= high))
@@ -70,7 +99,10 @@ function within(name: string, text: string, low: number, high: number): number {
 function index(name: string, text: string): number {
   const v = Number(text);
   if (text.trim() === "" || !Number.isInteger(v) || v < 0)
-    throw new UsageError(`${name} ${text}: expected a whole number from 0`, "they are counted from 0, as in the tables");
+    throw new UsageError(
+      `${name} ${text}: expected a whole number from 0`,
+      "they are counted from 0, as in the tables",
+    );
   return v;
 }
 

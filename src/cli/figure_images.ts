@@ -31,7 +31,7 @@ export async function pngOf(f: Figure, dpi: number): Promise<Uint8Array> {
       fix: "install one (on Debian: apt-get install fonts-dejavu-core), or write an .svg: its text is drawn where it is opened",
     });
   // librsvg counts a point as a pixel at 72 dots an inch.
-  return sharp(Buffer.from(svgDocument(f, "px")), { density: dpi })
+  return sharp(Buffer.from(svgDocument(f, "px")), { density: dpi, unlimited: true })
     .flatten({ background: f.style.background })
     .withMetadata({ density: dpi })
     .png({ compressionLevel: 9 })

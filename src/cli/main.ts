@@ -89,9 +89,8 @@ function build(): Command {
     .option("--profile <n>", "for wall: the profile along it")
     .option("--stretch <n>", "for fringe and orbit: the stretch along it")
     .addOption(
-      new Option("--channel <channel>", "for frames: what to show")
-        .choices(["amplitude", "phase", "topography", "states"])
-        .default("amplitude"),
+      new Option("--channel <channel>", "for frames: what to show (default: amplitude)")
+        .choices(["amplitude", "phase", "topography", "states"]),
     )
     .option("--width-mm <mm>", "width of the figure", "86")
     .option("--dpi <n>", "dots an inch of a .png", "300")

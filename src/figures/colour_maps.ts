@@ -18,7 +18,7 @@ export const PHASE_MAP = tabulated((v) => fromLch(0.2 + 0.77 * v, 0.04 + 0.36 * 
 
 /** For a phase that goes round: ends where it begins; darkest at 0 and lightest at half a turn, so that grey print tells near from far. */
 export const CYCLIC_PHASE_MAP = tabulated((v) =>
-  fromLch(0.66 - 0.2 * Math.cos(2 * Math.PI * (v - 0.5)), 0.13, 300 + 360 * (v - 0.5)),
+  fromLch(0.66 - 0.2 * Math.cos(2 * Math.PI * (v - 0.5)), 0.1, 300 + 360 * (v - 0.5)),
 );
 
 /** For heights. */

@@ -1,9 +1,10 @@
+import { countOf } from "../model/text.js";
 import type { Figure, FigureOptions } from "./figure.js";
 import { legend, type LegendItem } from "./legend.js";
 import { marker, type Shape } from "./marks.js";
 import { axes, bottomRoom, clipped, leftRoom, type Panel } from "./panel.js";
 import { must, num, word, type Cell, type Row } from "./rows.js";
-import { extent, linear, logarithmic, logTicks, numberText } from "./scale.js";
+import { extent, linear, logarithmic, logTicks, minorLogTicks, numberText } from "./scale.js";
 import { label, line, polyline } from "./svg.js";
 import { seriesMarks, unfold, unfoldedTicks } from "./unfold.js";
 
@@ -52,17 +53,37 @@ export function domainsFigure(input: DomainsInput, o: FigureOptions): Figure {
     const drawn = all.slice(0, MOST_A_KIND).flatMap((d) => {
       const own = input.appearances.filter((r) => must(r, "domain") === must(d, "domain"));
       for (const r of own)
-        rows.push([must(d, "domain"), kind, word(d, "origin"), word(d, "fate"), num(r, "frame"), num(r, "temperature_K"), num(r, "area_nm2"), num(r, "touches_border")]);
+        rows.push([
+          must(d, "domain"),
+          kind,
+          word(d, "origin"),
+          word(d, "fate"),
+          num(r, "frame"),
+          num(r, "temperature_K"),
+          num(r, "area_nm2"),
+          num(r, "touches_border"),
+        ]);
       return [history(d, own, panel, run.at, colour, o)];
     });
     const last = kind === "insulating";
     parts.push(
       seriesMarks(run, x, top, height, s, !last),
-      axes(panel, { title: last ? "Temperature (K), in the order of the run" : "", ...ticks, labelled: last }, { title: yTitle(kind), ticks: yTicks, labels: yLabels }, s),
+      axes(
+        panel,
+        { title: last ? "Temperature (K), in the order of the run" : "", ...ticks, labelled: last },
+        { title: yTitle(kind), ticks: yTicks, labels: yLabels, minor: minorLogTicks(low, high) },
+        s,
+      ),
       clipped(panel, `domains-${kind}`, ...drawn),
     );
     if (all.length === 0)
-      parts.push(label(left + width / 2, top + height / 2, `no ${kind} domain`, { size: s.textPt, fill: s.faint, anchor: "middle" }));
+      parts.push(
+        label(left + width / 2, top + height / 2, `no ${kind} domain`, {
+          size: s.textPt,
+          fill: s.faint,
+          anchor: "middle",
+        }),
+      );
     top += height + 5;
   }
   return {
@@ -73,15 +94,25 @@ export function domainsFigure(input: DomainsInput, o: FigureOptions): Figure {
     notes: [
       "Area of each tracked domain along the run; dashed where it touches the edge of the measured area: a lower bound.",
       "Open signs: how a history begins (circle: nucleated, diamond: split off, square: over the border); filled: how it ends (circle: vanished, cross: merged, square: over the border).",
-      ...(hidden > 0 ? [`${hidden} smaller domains are not drawn.`] : []),
+      ...(hidden > 0 ? [`Not drawn: ${countOf(hidden, "smaller domain")}.`] : []),
     ],
     body: parts.join(""),
-    table: { columns: ["domain", "kind", "origin", "fate", "frame", "temperature_K", "area_nm2", "touches_border"], rows },
+    table: {
+      columns: ["domain", "kind", "origin", "fate", "frame", "temperature_K", "area_nm2", "touches_border"],
+      rows,
+    },
   };
 }
 
 /** One line: solid between frames in which the domain lies free, dashed where it touches the border in one of them. */
-function history(d: Row, own: readonly Row[], panel: Panel, at: ReadonlyMap<number, number>, colour: string, o: FigureOptions): string {
+function history(
+  d: Row,
+  own: readonly Row[],
+  panel: Panel,
+  at: ReadonlyMap<number, number>,
+  colour: string,
+  o: FigureOptions,
+): string {
   const s = o.style;
   const points = own.map((r) => ({
     x: panel.x(at.get(must(r, "frame")) ?? 0),
@@ -92,15 +123,26 @@ function history(d: Row, own: readonly Row[], panel: Panel, at: ReadonlyMap<numb
   const parts: string[] = [];
   for (let k = 1; k < points.length; k++) {
     const [a, b] = [points[k - 1], points[k]];
-    parts.push(line(a.x, a.y, b.x, b.y, { stroke: colour, "stroke-width": 0.8, "stroke-dasharray": a.border || b.border ? "2 1.4" : undefined }));
+    parts.push(
+      line(a.x, a.y, b.x, b.y, {
+        stroke: colour,
+        "stroke-width": 0.8,
+        "stroke-dasharray": a.border || b.border ? "2 1.4" : undefined,
+      }),
+    );
   }
   points.forEach((p, k) =>
     parts.push(
-      marker(p.x, p.y, { shape: "circle", size: 1.5, fill: colour, stroke: "none" }, {
-        ...data,
-        "data-frame": must(own[k], "frame"),
-        "data-area-nm2": must(own[k], "area_nm2"),
-      }),
+      marker(
+        p.x,
+        p.y,
+        { shape: "circle", size: 1.5, fill: colour, stroke: "none" },
+        {
+          ...data,
+          "data-frame": must(own[k], "frame"),
+          "data-area-nm2": must(own[k], "area_nm2"),
+        },
+      ),
     ),
   );
   const first = points[0];
@@ -108,17 +150,38 @@ function history(d: Row, own: readonly Row[], panel: Panel, at: ReadonlyMap<numb
   const begin = BEGINS[word(d, "origin")];
   const end = ENDS[word(d, "fate")];
   if (begin !== undefined && first !== undefined)
-    parts.push(marker(first.x, first.y, { shape: begin, size: 3.8, fill: s.background, stroke: s.ink, strokeWidth: 0.6 }, { "data-domain": must(d, "domain"), "data-origin": word(d, "origin") }));
+    parts.push(
+      marker(
+        first.x,
+        first.y,
+        { shape: begin, size: 3.8, fill: s.background, stroke: s.ink, strokeWidth: 0.6 },
+        { "data-domain": must(d, "domain"), "data-origin": word(d, "origin") },
+      ),
+    );
   if (end !== undefined && last !== undefined)
-    parts.push(marker(last.x, last.y, { shape: end, size: 3.8, fill: colour, stroke: s.ink, strokeWidth: end === "cross" ? 0.9 : 0.6 }, { "data-domain": must(d, "domain"), "data-fate": word(d, "fate") }));
+    parts.push(
+      marker(
+        last.x,
+        last.y,
+        { shape: end, size: 3.8, fill: colour, stroke: s.ink, strokeWidth: end === "cross" ? 0.9 : 0.6 },
+        { "data-domain": must(d, "domain"), "data-fate": word(d, "fate") },
+      ),
+    );
   return parts.join("");
 }
 
 function legendItems(input: DomainsInput, o: FigureOptions): LegendItem[] {
   const s = o.style;
   const has = (column: string, value: string): boolean => input.domains.some((r) => word(r, column) === value);
-  const open = (text: string, shape: Shape): LegendItem => ({ text, sign: (x, y) => marker(x, y, { shape, size: 3.8, fill: s.background, stroke: s.ink, strokeWidth: 0.6 }) });
-  const full = (text: string, shape: Shape): LegendItem => ({ text, sign: (x, y) => marker(x, y, { shape, size: 3.8, fill: s.faint, stroke: s.ink, strokeWidth: shape === "cross" ? 0.9 : 0.6 }) });
+  const open = (text: string, shape: Shape): LegendItem => ({
+    text,
+    sign: (x, y) => marker(x, y, { shape, size: 3.8, fill: s.background, stroke: s.ink, strokeWidth: 0.6 }),
+  });
+  const full = (text: string, shape: Shape): LegendItem => ({
+    text,
+    sign: (x, y) =>
+      marker(x, y, { shape, size: 3.8, fill: s.faint, stroke: s.ink, strokeWidth: shape === "cross" ? 0.9 : 0.6 }),
+  });
   const items: LegendItem[] = [];
   if (has("origin", "nucleated")) items.push(open("born", "circle"));
   if (has("origin", "split")) items.push(open("split off", "diamond"));
@@ -128,7 +191,8 @@ function legendItems(input: DomainsInput, o: FigureOptions): LegendItem[] {
   items.push({
     text: "cut by the border",
     wide: 12,
-    sign: (x, y) => polyline([x - 6, x + 6], [y, y], { stroke: s.ink, "stroke-width": 0.8, "stroke-dasharray": "2 1.4" }),
+    sign: (x, y) =>
+      polyline([x - 6, x + 6], [y, y], { stroke: s.ink, "stroke-width": 0.8, "stroke-dasharray": "2 1.4" }),
   });
   return items;
 }

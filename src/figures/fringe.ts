@@ -4,7 +4,7 @@ import { barPath, marker, stroke } from "./marks.js";
 import { axes, bottomRoom, clipped, leftRoom, zeroLine, type Panel } from "./panel.js";
 import { must, num, word, type Cell, type Row } from "./rows.js";
 import { extent, linear, niceTicks, numberText, tickLabels } from "./scale.js";
-import { element, label, line, polyline } from "./svg.js";
+import { element, fitText, label, line, polyline } from "./svg.js";
 
 export interface FringeInput {
   /** The stretch's row of the table `fringes`. */
@@ -32,10 +32,25 @@ export interface FringeBin {
 /** The bins with their phases; null and fit follow the data over ±π. */
 export function binsOf(flat: ArrayLike<number>): FringeBin[] {
   return Array.from({ length: Math.floor(flat.length / 8) }, (_, k) => {
-    const [distanceNm, re, im, sdRad, nullRe, nullIm, fitRe, fitIm] = Array.from({ length: 8 }, (__, j) => flat[8 * k + j]);
+    const [distanceNm, re, im, sdRad, nullRe, nullIm, fitRe, fitIm] = Array.from(
+      { length: 8 },
+      (__, j) => flat[8 * k + j],
+    );
     const phaseRad = Math.atan2(im, re);
     const near = (y: number, x: number): number => phaseRad + Math.atan2(y * re - x * im, x * re + y * im);
-    return { distanceNm, re, im, sdRad, phaseRad, nullRe, nullIm, nullRad: near(nullIm, nullRe), fitRe, fitIm, fitRad: near(fitIm, fitRe) };
+    return {
+      distanceNm,
+      re,
+      im,
+      sdRad,
+      phaseRad,
+      nullRe,
+      nullIm,
+      nullRad: near(nullIm, nullRe),
+      fitRe,
+      fitIm,
+      fitRad: near(fitIm, fitRe),
+    };
   });
 }
 
@@ -46,17 +61,37 @@ export function fringeFigure(input: FringeInput, o: FigureOptions): Figure {
   const bins = binsOf(input.bins);
   const phaseTitle = "Optical phase (rad)";
   const restTitle = "Departure (rad)";
-  const [x0, x1] = extent(bins.map((b) => b.distanceNm), 0.03);
-  const [p0, p1] = extent(bins.flatMap((b) => [b.phaseRad - b.sdRad, b.phaseRad + b.sdRad, b.nullRad, b.fitRad]), 0.06);
-  const [d0, d1] = extent(bins.flatMap((b) => [b.phaseRad - b.nullRad - b.sdRad, b.phaseRad - b.nullRad + b.sdRad, b.fitRad - b.nullRad]), 0.06);
+  const [x0, x1] = extent(
+    bins.map((b) => b.distanceNm),
+    0.03,
+  );
+  const [p0, p1] = extent(
+    bins.flatMap((b) => [b.phaseRad - b.sdRad, b.phaseRad + b.sdRad, b.nullRad, b.fitRad]),
+    0.06,
+  );
+  const contrast = num(row, "contrast_rad");
+  const contrastSd = num(row, "contrast_sd_rad") ?? 0;
+  const marked = contrast === null || num(row, "detected") !== 1 ? [] : [contrast - contrastSd, contrast + contrastSd];
+  const [d0, d1] = extent(
+    [
+      ...marked,
+      ...bins.flatMap((b) => [
+        b.phaseRad - b.nullRad - b.sdRad,
+        b.phaseRad - b.nullRad + b.sdRad,
+        b.fitRad - b.nullRad,
+      ]),
+    ],
+    0.06,
+  );
   const yTicks = niceTicks(p0, p1, 5);
   const dTicks = niceTicks(d0, d1, 4);
   const left = Math.max(leftRoom(tickLabels(yTicks), phaseTitle, s), leftRoom(tickLabels(dTicks), restTitle, s)) + 2;
   const width = o.widthPt - left - 4;
   const x = linear(x0, x1, left, left + width);
   const detected = num(row, "detected") === 1;
-  const key = legend(legendItems(detected, o), left, s.textPt * 1.4 + 2, width, s);
-  const top = key.height + s.textPt * 1.4 + 6;
+  const heads = [placeText(row), ...numbersText(row)];
+  const key = legend(legendItems(detected, o), left, s.textPt * 1.4 * heads.length + 2, width, s);
+  const top = key.height + s.textPt * 1.4 * heads.length + 6;
   const h1 = width * 0.42;
   const h2 = width * 0.34;
   const main: Panel = { left, top, width, height: h1, x, y: linear(p0, p1, top + h1, top) };
@@ -64,33 +99,77 @@ export function fringeFigure(input: FringeInput, o: FigureOptions): Figure {
   const rest: Panel = { left, top: below, width, height: h2, x, y: linear(d0, d1, below + h2, below) };
 
   const xs = bins.map((b) => x(b.distanceNm));
-  const nullLook = { class: "null", stroke: s.faint, "stroke-width": 0.9, "stroke-dasharray": "3 1.8" };
-  const fitLook = { class: "fit", stroke: s.ink, "stroke-width": 1, ...(detected ? {} : { "stroke-dasharray": "1 1.6" }) };
+  const nullLook = { class: "null-curve", stroke: s.faint, "stroke-width": 0.9, "stroke-dasharray": "3 1.8" };
+  const fitLook = {
+    class: "fit",
+    stroke: s.ink,
+    "stroke-width": 1,
+    ...(detected ? {} : { "stroke-dasharray": "1 1.6" }),
+  };
   const colour = (d: number): string => (d < 0 ? s.insulating : s.metallic);
-  const wallAt = (p: Panel): string => line(x(0), p.top, x(0), p.top + p.height, { stroke: s.faint, "stroke-width": 0.5 });
+  const wallAt = (p: Panel): string =>
+    line(x(0), p.top, x(0), p.top + p.height, { stroke: s.faint, "stroke-width": 0.5 });
   const upper = [wallAt(main)];
   const lower = [wallAt(rest), zeroLine(rest, 0, s)];
   const rows: Cell[][] = [];
   for (const b of bins) {
     const at = x(b.distanceNm);
     const off = b.phaseRad - b.nullRad;
-    upper.push(element("path", { d: barPath(at, main.y(b.phaseRad - b.sdRad), main.y(b.phaseRad + b.sdRad), 0), ...stroke(s.ink, 0.45) }));
     upper.push(
-      marker(at, main.y(b.phaseRad), { shape: "circle", size: 2.8, fill: colour(b.distanceNm), stroke: s.ink, strokeWidth: 0.35 }, {
-        "data-distance-nm": b.distanceNm,
-        "data-phase-rad": b.phaseRad,
-        "data-sd-rad": b.sdRad,
-        "data-null-rad": b.nullRad,
-        "data-fit-rad": b.fitRad,
+      element("path", {
+        d: barPath(at, main.y(b.phaseRad - b.sdRad), main.y(b.phaseRad + b.sdRad), 0),
+        ...stroke(s.ink, 0.45),
       }),
     );
-    lower.push(element("path", { d: barPath(at, rest.y(off - b.sdRad), rest.y(off + b.sdRad), 0), ...stroke(s.ink, 0.45) }));
-    lower.push(marker(at, rest.y(off), { shape: "circle", size: 2.8, fill: colour(b.distanceNm), stroke: s.ink, strokeWidth: 0.35 }));
+    upper.push(
+      marker(
+        at,
+        main.y(b.phaseRad),
+        { shape: "circle", size: 2.8, fill: colour(b.distanceNm), stroke: s.ink, strokeWidth: 0.35 },
+        {
+          "data-distance-nm": b.distanceNm,
+          "data-phase-rad": b.phaseRad,
+          "data-sd-rad": b.sdRad,
+          "data-null-rad": b.nullRad,
+          "data-fit-rad": b.fitRad,
+        },
+      ),
+    );
+    lower.push(
+      element("path", { d: barPath(at, rest.y(off - b.sdRad), rest.y(off + b.sdRad), 0), ...stroke(s.ink, 0.45) }),
+    );
+    lower.push(
+      marker(at, rest.y(off), {
+        shape: "circle",
+        size: 2.8,
+        fill: colour(b.distanceNm),
+        stroke: s.ink,
+        strokeWidth: 0.35,
+      }),
+    );
     rows.push([b.distanceNm, b.phaseRad, b.sdRad, b.nullRad, b.fitRad, off, b.fitRad - b.nullRad]);
   }
-  upper.push(polyline(xs, bins.map((b) => main.y(b.nullRad)), nullLook));
-  upper.push(polyline(xs, bins.map((b) => main.y(b.fitRad)), fitLook));
-  lower.push(polyline(xs, bins.map((b) => rest.y(b.fitRad - b.nullRad)), fitLook));
+  upper.push(
+    polyline(
+      xs,
+      bins.map((b) => main.y(b.nullRad)),
+      nullLook,
+    ),
+  );
+  upper.push(
+    polyline(
+      xs,
+      bins.map((b) => main.y(b.fitRad)),
+      fitLook,
+    ),
+  );
+  lower.push(
+    polyline(
+      xs,
+      bins.map((b) => rest.y(b.fitRad - b.nullRad)),
+      fitLook,
+    ),
+  );
   lower.push(contrastMark(row, rest, o));
 
   const look = { size: s.textPt, fill: s.ink };
@@ -107,20 +186,23 @@ export function fringeFigure(input: FringeInput, o: FigureOptions): Figure {
         : "Dotted: the best fringe, which is not told from noise.",
     ],
     body: [
-      label(left, s.textPt + 2, placeText(row), look),
+      ...heads.map((t, k) => label(left, s.textPt * (1 + 1.4 * k) + 2, fitText(t, s.textPt, width), look)),
       key.svg,
       axes(main, { title: "", labelled: false }, { title: phaseTitle, ticks: yTicks }, s),
       clipped(main, "fringe-main", ...upper),
       axes(rest, { title: "Distance from the wall (nm)" }, { title: restTitle, ticks: dTicks }, s),
       clipped(rest, "fringe-rest", ...lower),
-      ...numbersText(row).map((t, k, all) =>
-        label(left + 4, rest.top + h2 - 4 - 1.3 * s.textPt * (all.length - 1 - k), t, look),
-      ),
-      label(left + 4, main.top + s.textPt + 3, "insulating", { ...look, weight: "bold" }),
-      label(left + width - 4, main.top + s.textPt + 3, "metallic", { ...look, weight: "bold", anchor: "end" }),
     ].join(""),
     table: {
-      columns: ["distance_nm", "phase_rad", "phase_sd_rad", "null_rad", "fit_rad", "departure_rad", "fit_departure_rad"],
+      columns: [
+        "distance_nm",
+        "phase_rad",
+        "phase_sd_rad",
+        "null_rad",
+        "fit_rad",
+        "departure_rad",
+        "fit_departure_rad",
+      ],
       rows,
     },
   };
@@ -132,12 +214,22 @@ function contrastMark(row: Row, rest: Panel, o: FigureOptions): string {
   if (contrast === null || offset === null || num(row, "detected") !== 1) return "";
   const x = rest.x(offset);
   return (
-    (sd === null ? "" : element("path", { d: barPath(x, rest.y(contrast - sd), rest.y(contrast + sd), 2), ...stroke(o.style.ink, 0.9) })) +
-    marker(x, rest.y(contrast), { shape: "diamond", size: 5, fill: o.style.background, stroke: o.style.ink, strokeWidth: 0.9 }, {
-      "data-contrast-rad": contrast,
-      "data-contrast-sd-rad": sd,
-      "data-offset-nm": offset,
-    })
+    (sd === null
+      ? ""
+      : element("path", {
+          d: barPath(x, rest.y(contrast - sd), rest.y(contrast + sd), 2),
+          ...stroke(o.style.ink, 0.9),
+        })) +
+    marker(
+      x,
+      rest.y(contrast),
+      { shape: "diamond", size: 5, fill: o.style.background, stroke: o.style.ink, strokeWidth: 0.9 },
+      {
+        "data-contrast-rad": contrast,
+        "data-contrast-sd-rad": sd,
+        "data-offset-nm": offset,
+      },
+    )
   );
 }
 
@@ -149,10 +241,12 @@ export function placeText(r: Row): string {
 /** Contrast, period and decay in words. */
 function numbersText(r: Row): string[] {
   const pair = (name: string, value: number | null, sd: number | null, digits: number, unit: string): string[] =>
-    value === null ? [] : [`${name} ${numberText(value, digits)}${sd === null ? "" : ` ± ${numberText(sd, digits)}`} ${unit}`];
+    value === null
+      ? []
+      : [`${name} ${numberText(value, digits)}${sd === null ? "" : ` ± ${numberText(sd, digits)}`} ${unit}`];
   if (num(r, "detected") !== 1) return [`no fringe: adjusted p ${numberText(num(r, "adjusted_p") ?? 1, 2)}`];
   return [
-    ...pair("contrast", num(r, "contrast_rad"), num(r, "contrast_sd_rad"), 3, "rad"),
+    pair("contrast", num(r, "contrast_rad"), num(r, "contrast_sd_rad"), 3, "rad").join(""),
     [
       ...pair("period", num(r, "period_nm"), num(r, "period_sd_nm"), 1, "nm"),
       ...pair("decay", num(r, "decay_nm"), num(r, "decay_sd_nm"), 1, "nm"),
@@ -162,11 +256,13 @@ function numbersText(r: Row): string[] {
 
 function legendItems(detected: boolean, o: FigureOptions): LegendItem[] {
   const s = o.style;
+  const dot =
+    (fill: string) =>
+    (x: number, y: number): string =>
+      marker(x, y, { shape: "circle", size: 3, fill, stroke: s.ink, strokeWidth: 0.4 });
   return [
-    {
-      text: "signal",
-      sign: (x, y) => marker(x, y, { shape: "circle", size: 3, fill: s.metallic, stroke: s.ink, strokeWidth: 0.4 }),
-    },
+    { text: "insulating side", sign: dot(s.insulating) },
+    { text: "metallic side", sign: dot(s.metallic) },
     {
       text: "null",
       wide: 14,
@@ -176,7 +272,11 @@ function legendItems(detected: boolean, o: FigureOptions): LegendItem[] {
       text: detected ? "fit" : "best fringe, not told from noise",
       wide: 14,
       sign: (x, y) =>
-        line(x - 7, y, x + 7, y, { stroke: s.ink, "stroke-width": 1, ...(detected ? {} : { "stroke-dasharray": "1 1.6" }) }),
+        line(x - 7, y, x + 7, y, {
+          stroke: s.ink,
+          "stroke-width": 1,
+          ...(detected ? {} : { "stroke-dasharray": "1 1.6" }),
+        }),
     },
   ];
 }

@@ -1,5 +1,5 @@
 import type { Style } from "./style.js";
-import { group, label, textWidth } from "./svg.js";
+import { fitText, group, label, textWidth } from "./svg.js";
 
 export interface LegendItem {
   readonly text: string;
@@ -28,13 +28,14 @@ export function legend(
   const parts: string[] = [];
   items.forEach((item, k) => {
     const sign = item.wide ?? SIGN;
-    const wide = sign + 2 + textWidth(item.text, s.textPt);
+    const text = fitText(item.text, s.textPt, Math.max(10, width - sign - 2));
+    const wide = sign + 2 + textWidth(text, s.textPt);
     if (k > 0 && (item.breaks === true || x + wide > left + width)) {
       x = left;
       y += lineHeight;
     }
     parts.push(item.sign(x + sign / 2, y - 0.34 * s.textPt));
-    parts.push(label(x + sign + (sign > 0 ? 2 : 0), y, item.text, { size: s.textPt, fill: s.ink }));
+    parts.push(label(x + sign + (sign > 0 ? 2 : 0), y, text, { size: s.textPt, fill: s.ink }));
     x += wide + GAP;
   });
   const height = items.length === 0 ? 0 : y - top + 0.45 * s.textPt;

@@ -1,3 +1,4 @@
+import { countOf } from "../model/text.js";
 import type { Figure, FigureOptions } from "./figure.js";
 import { legend, type LegendItem } from "./legend.js";
 import { barPath, lyingBarPath, marker, stroke, type Shape } from "./marks.js";
@@ -48,7 +49,7 @@ export function loopFigure(input: LoopInput, o: FigureOptions): Figure {
   const rows: Cell[][] = [];
   names.forEach((name, c) => {
     const own = known.filter((r) => word(r, "cooldown") === name);
-    for (const cycle of [...new Set(own.map((r) => must(r, "cycle")))]) {
+    for (const cycle of new Set(own.map((r) => must(r, "cycle")))) {
       for (const branch of ["cooling", "warming"]) {
         const series = own
           .filter((r) => must(r, "cycle") === cycle && word(r, "branch") === branch)
@@ -64,16 +65,21 @@ export function loopFigure(input: LoopInput, o: FigureOptions): Figure {
           under.push(element("path", { d: barPath(xs[k], panel.y(low), panel.y(high)), ...stroke(colour, 0.7) }));
           const fill = branch === "cooling" ? colour : s.background;
           over.push(
-            marker(xs[k], ys[k], { shape: shapeOf(c, branch), size: 4.6, fill, stroke: colour, strokeWidth: 0.8 }, {
-              "data-cooldown": name,
-              "data-branch": branch,
-              "data-cycle": cycle,
-              "data-frame": num(r, "frame"),
-              "data-temperature-k": num(r, "temperature_K"),
-              "data-fraction": num(r, "metallic_fraction"),
-              "data-low": low,
-              "data-high": high,
-            }),
+            marker(
+              xs[k],
+              ys[k],
+              { shape: shapeOf(c, branch), size: 4.6, fill, stroke: colour, strokeWidth: 0.8 },
+              {
+                "data-cooldown": name,
+                "data-branch": branch,
+                "data-cycle": cycle,
+                "data-frame": num(r, "frame"),
+                "data-temperature-k": num(r, "temperature_K"),
+                "data-fraction": num(r, "metallic_fraction"),
+                "data-low": low,
+                "data-high": high,
+              },
+            ),
           );
           rows.push([
             "frame",
@@ -89,24 +95,28 @@ export function loopFigure(input: LoopInput, o: FigureOptions): Figure {
         });
       }
       const loop = input.loops.find((r) => word(r, "cooldown") === name && must(r, "cycle") === cycle);
-      for (const branch of loop === undefined ? [] : (["cooling", "warming"] as const)) {
-        const r = loop as Row;
-        const half = num(r, `${branch}_half_K`);
-        if (half === null) continue;
-        const low = num(r, `${branch}_half_low_K`) ?? half;
-        const high = num(r, `${branch}_half_high_K`) ?? half;
+      for (const branch of ["cooling", "warming"]) {
+        const half = loop === undefined ? null : num(loop, `${branch}_half_K`);
+        if (loop === undefined || half === null) continue;
+        const low = num(loop, `${branch}_half_low_K`) ?? half;
+        const high = num(loop, `${branch}_half_high_K`) ?? half;
         const colour = colourOf(c, branch);
         const y = panel.y(0.5);
         over.push(
           element("path", { d: lyingBarPath(y, panel.x(low), panel.x(high), 2), ...stroke(colour, 1.1) }),
-          marker(panel.x(half), y, { shape: "diamond", size: 5, fill: s.background, stroke: colour, strokeWidth: 1.1 }, {
-            "data-cooldown": name,
-            "data-cycle": cycle,
-            "data-branch": branch,
-            "data-half-k": half,
-            "data-low-k": low,
-            "data-high-k": high,
-          }),
+          marker(
+            panel.x(half),
+            y,
+            { shape: "diamond", size: 5, fill: s.background, stroke: colour, strokeWidth: 1.1 },
+            {
+              "data-cooldown": name,
+              "data-cycle": cycle,
+              "data-branch": branch,
+              "data-half-k": half,
+              "data-low-k": low,
+              "data-high-k": high,
+            },
+          ),
         );
         rows.push(["half", name, branch, cycle, null, half, 0.5, low, high]);
       }
@@ -119,7 +129,7 @@ export function loopFigure(input: LoopInput, o: FigureOptions): Figure {
     "stroke-dasharray": "1 2",
   });
   const xTicks = niceTicks(t0, t1, Math.max(3, width / 38));
-  const left_out = input.frames.length - known.length;
+  const leftOut = input.frames.length - known.length;
   return {
     widthPt: o.widthPt,
     heightPt: panel.top + panel.height + bottomRoom("Temperature (K)", s) + 3,
@@ -129,7 +139,7 @@ export function loopFigure(input: LoopInput, o: FigureOptions): Figure {
       "Metallic fraction of the field of view; bars: 95 % intervals.",
       "Filled, solid line: cooling; open, dashed line: warming.",
       "Diamonds: temperatures of fraction one half with 95 % intervals.",
-      ...(left_out > 0 ? [`${left_out} frames without a fraction are not shown.`] : []),
+      ...(leftOut > 0 ? [`Not shown for want of a fraction: ${countOf(leftOut, "frame")}.`] : []),
     ],
     body: [
       key.svg,
@@ -186,6 +196,8 @@ function legendItems(
     if (several) {
       items.push({ text: "", sign: sign(c, "cooling"), wide: 16, breaks: true });
       items.push({ text: found === "" ? name : `${name}: width ${found}`, sign: sign(c, "warming"), wide: 16 });
+      if (c === names.length - 1)
+        items.push({ text: "filled: cooling, open: warming", sign: () => "", wide: 0, breaks: true });
     } else {
       items.push({ text: "cooling", sign: sign(c, "cooling"), wide: 16 });
       items.push({ text: "warming", sign: sign(c, "warming"), wide: 16 });
@@ -199,7 +211,6 @@ function widthText(r: Row): string {
   const [v, low, high] = [num(r, "width_K"), num(r, "width_low_K"), num(r, "width_high_K")];
   if (v === null) return "";
   const digits = 1;
-  const range =
-    low === null || high === null ? "" : ` (${numberText(low, digits)} to ${numberText(high, digits)})`;
+  const range = low === null || high === null ? "" : ` (${numberText(low, digits)} to ${numberText(high, digits)})`;
   return `${numberText(v, digits)} K${range}`;
 }

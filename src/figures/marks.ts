@@ -1,26 +1,19 @@
 import { element, pt, type Attributes } from "./svg.js";
 
-export type Shape = "down" | "up" | "circle" | "square" | "diamond" | "cross" | "plus";
+export type Shape = "down" | "up" | "circle" | "square" | "diamond" | "cross";
 
 /** Path of a marker of about `size` across, centred on (x, y). */
 export function shapePath(shape: Shape, x: number, y: number, size: number): string {
   const r = size / 2;
-  switch (shape) {
-    case "down":
-      return `M${pt(x - r * 1.05)} ${pt(y - r * 0.75)}h${pt(2.1 * r)}L${pt(x)} ${pt(y + r * 1.1)}Z`;
-    case "up":
-      return `M${pt(x - r * 1.05)} ${pt(y + r * 0.75)}h${pt(2.1 * r)}L${pt(x)} ${pt(y - r * 1.1)}Z`;
-    case "circle":
-      return `M${pt(x - r)} ${pt(y)}a${pt(r)} ${pt(r)} 0 1 0 ${pt(2 * r)} 0a${pt(r)} ${pt(r)} 0 1 0 ${pt(-2 * r)} 0Z`;
-    case "square":
-      return `M${pt(x - 0.9 * r)} ${pt(y - 0.9 * r)}h${pt(1.8 * r)}v${pt(1.8 * r)}h${pt(-1.8 * r)}Z`;
-    case "diamond":
-      return `M${pt(x)} ${pt(y - 1.2 * r)}L${pt(x + 1.2 * r)} ${pt(y)}L${pt(x)} ${pt(y + 1.2 * r)}L${pt(x - 1.2 * r)} ${pt(y)}Z`;
-    case "cross":
-      return `M${pt(x - r)} ${pt(y - r)}l${pt(2 * r)} ${pt(2 * r)}M${pt(x - r)} ${pt(y + r)}l${pt(2 * r)} ${pt(-2 * r)}`;
-    case "plus":
-      return `M${pt(x - r)} ${pt(y)}h${pt(2 * r)}M${pt(x)} ${pt(y - r)}v${pt(2 * r)}`;
-  }
+  const paths: Readonly<Record<Shape, string>> = {
+    down: `M${pt(x - r * 1.05)} ${pt(y - r * 0.75)}h${pt(2.1 * r)}L${pt(x)} ${pt(y + r * 1.1)}Z`,
+    up: `M${pt(x - r * 1.05)} ${pt(y + r * 0.75)}h${pt(2.1 * r)}L${pt(x)} ${pt(y - r * 1.1)}Z`,
+    circle: `M${pt(x - r)} ${pt(y)}a${pt(r)} ${pt(r)} 0 1 0 ${pt(2 * r)} 0a${pt(r)} ${pt(r)} 0 1 0 ${pt(-2 * r)} 0Z`,
+    square: `M${pt(x - 0.9 * r)} ${pt(y - 0.9 * r)}h${pt(1.8 * r)}v${pt(1.8 * r)}h${pt(-1.8 * r)}Z`,
+    diamond: `M${pt(x)} ${pt(y - 1.2 * r)}L${pt(x + 1.2 * r)} ${pt(y)}L${pt(x)} ${pt(y + 1.2 * r)}L${pt(x - 1.2 * r)} ${pt(y)}Z`,
+    cross: `M${pt(x - r)} ${pt(y - r)}l${pt(2 * r)} ${pt(2 * r)}M${pt(x - r)} ${pt(y + r)}l${pt(2 * r)} ${pt(-2 * r)}`,
+  };
+  return paths[shape];
 }
 
 export interface MarkerLook {

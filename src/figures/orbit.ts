@@ -5,7 +5,7 @@ import { marker, stroke } from "./marks.js";
 import { axes, bottomRoom, clipped, leftRoom, ticksOf, type Panel } from "./panel.js";
 import { word, type Cell } from "./rows.js";
 import { extent, linear, tickLabels } from "./scale.js";
-import { element, label, line, polyline, pt } from "./svg.js";
+import { element, fitText, label, line, polyline, pt } from "./svg.js";
 
 /** The path that the signal takes in its complex plane from one side of a wall to the other, with the line of plain mixtures and the fit. */
 export function orbitFigure(input: FringeInput, o: FigureOptions): Figure {
@@ -45,8 +45,16 @@ export function orbitFigure(input: FringeInput, o: FigureOptions): Figure {
       "stroke-width": 0.9,
       "stroke-dasharray": "3 1.8",
     }),
-    polyline(bins.map((b) => panel.x(b.re)), bins.map((b) => panel.y(b.im)), { stroke: s.faint, "stroke-width": 0.5 }),
-    polyline(bins.map((b) => panel.x(b.fitRe)), bins.map((b) => panel.y(b.fitIm)), { class: "fit", stroke: s.ink, "stroke-width": 1 }),
+    polyline(
+      bins.map((b) => panel.x(b.re)),
+      bins.map((b) => panel.y(b.im)),
+      { stroke: s.faint, "stroke-width": 0.5 },
+    ),
+    polyline(
+      bins.map((b) => panel.x(b.fitRe)),
+      bins.map((b) => panel.y(b.fitIm)),
+      { class: "fit", stroke: s.ink, "stroke-width": 1 },
+    ),
   ];
   for (const b of bins) {
     const [x, y] = [panel.x(b.re), panel.y(b.im)];
@@ -54,14 +62,21 @@ export function orbitFigure(input: FringeInput, o: FigureOptions): Figure {
     const size = Math.hypot(b.re, b.im);
     const half = sdOf(b) * perUnit;
     const [dx, dy] = [(-b.im / size) * half, (-b.re / size) * half];
-    drawn.push(element("path", { d: `M${pt(x - dx)} ${pt(y - dy)}L${pt(x + dx)} ${pt(y + dy)}`, ...stroke(s.ink, 0.4) }));
     drawn.push(
-      marker(x, y, { shape: "circle", size: 3, fill: colour(b.distanceNm), stroke: s.ink, strokeWidth: 0.35 }, {
-        "data-distance-nm": b.distanceNm,
-        "data-re": b.re,
-        "data-im": b.im,
-        "data-phase-sd-rad": b.sdRad,
-      }),
+      element("path", { d: `M${pt(x - dx)} ${pt(y - dy)}L${pt(x + dx)} ${pt(y + dy)}`, ...stroke(s.ink, 0.4) }),
+    );
+    drawn.push(
+      marker(
+        x,
+        y,
+        { shape: "circle", size: 3, fill: colour(b.distanceNm), stroke: s.ink, strokeWidth: 0.35 },
+        {
+          "data-distance-nm": b.distanceNm,
+          "data-re": b.re,
+          "data-im": b.im,
+          "data-phase-sd-rad": b.sdRad,
+        },
+      ),
     );
     rows.push([b.distanceNm, b.re, b.im, b.sdRad, b.nullRe, b.nullIm, b.fitRe, b.fitIm]);
   }
@@ -69,7 +84,14 @@ export function orbitFigure(input: FringeInput, o: FigureOptions): Figure {
     [1, 0, s.insulating],
     [metallicRe, metallicIm, s.metallic],
   ] as const)
-    drawn.push(marker(panel.x(re), panel.y(im), { shape: "square", size: 6, fill, stroke: s.ink, strokeWidth: 0.8 }, { "data-level-re": re, "data-level-im": im }));
+    drawn.push(
+      marker(
+        panel.x(re),
+        panel.y(im),
+        { shape: "square", size: 6, fill, stroke: s.ink, strokeWidth: 0.8 },
+        { "data-level-re": re, "data-level-im": im },
+      ),
+    );
   const yTicks = ticksOf(panel.y, Math.max(3, height / 26));
   return {
     widthPt: o.widthPt,
@@ -81,7 +103,7 @@ export function orbitFigure(input: FringeInput, o: FigureOptions): Figure {
       "Squares: levels of the two states in this frame. Dashed: every mixture of the two, whatever the blur. Solid: fit with a fringe.",
     ],
     body: [
-      label(left, s.textPt + 2, placeText(input.row), { size: s.textPt, fill: s.ink }),
+      label(left, s.textPt + 2, fitText(placeText(input.row), s.textPt, width), { size: s.textPt, fill: s.ink }),
       key.svg,
       axes(panel, { title: xTitle }, { title: yTitle, ticks: yTicks, labels: tickLabels(yTicks) }, s),
       clipped(panel, "orbit", ...drawn),
@@ -92,8 +114,10 @@ export function orbitFigure(input: FringeInput, o: FigureOptions): Figure {
 
 function legendItems(o: FigureOptions): LegendItem[] {
   const s = o.style;
-  const square = (fill: string) => (x: number, y: number): string =>
-    marker(x, y, { shape: "square", size: 5, fill, stroke: s.ink, strokeWidth: 0.7 });
+  const square =
+    (fill: string) =>
+    (x: number, y: number): string =>
+      marker(x, y, { shape: "square", size: 5, fill, stroke: s.ink, strokeWidth: 0.7 });
   return [
     { text: "insulating", sign: square(s.insulating) },
     { text: "metallic", sign: square(s.metallic) },

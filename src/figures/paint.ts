@@ -34,7 +34,8 @@ export function commonScale(shown: Exclude<Shown, "states">, images: readonly Fl
   const all = Float32Array.from(images.flatMap((v) => Array.from(v.filter((x) => !Number.isNaN(x))))).sort();
   const at = (share: number): number => all[Math.round(share * (all.length - 1))] ?? 0;
   const [low, high] = [at(0.01), at(0.99)];
-  if (shown === "phase" && high - low > Math.PI) return { low: -Math.PI, high: Math.PI, map: CYCLIC_PHASE_MAP, cyclic: true };
+  if (shown === "phase" && high - low > Math.PI)
+    return { low: -Math.PI, high: Math.PI, map: CYCLIC_PHASE_MAP, cyclic: true };
   const map = shown === "phase" ? PHASE_MAP : shown === "topography" ? HEIGHT_MAP : AMPLITUDE_MAP;
   return { low, high: high > low ? high : low + 1, map, cyclic: false };
 }
@@ -54,7 +55,11 @@ export function paint(values: Float32Array, scale: ColourScale): Uint8Array {
 }
 
 /** RGBA pixels of a map of the two states (0 insulating, 1 metallic; anything else transparent). */
-export function paintStates(states: Uint8Array, insulating: readonly number[], metallic: readonly number[]): Uint8Array {
+export function paintStates(
+  states: Uint8Array,
+  insulating: readonly number[],
+  metallic: readonly number[],
+): Uint8Array {
   const out = new Uint8Array(4 * states.length);
   for (let k = 0; k < states.length; k++) {
     if (states[k] > 1) continue;

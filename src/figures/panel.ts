@@ -19,6 +19,8 @@ export interface Axis {
   readonly labels?: readonly string[];
   /** False: ticks without labels, as where another panel below has them. */
   readonly labelled?: boolean;
+  /** Short ticks without labels. */
+  readonly minor?: readonly number[];
 }
 
 const TICK = 2.6;
@@ -52,6 +54,10 @@ export function axes(p: Panel, xAxis: Axis, yAxis: Axis, s: Style): string {
   for (const t of yTicks) {
     const y = pt(p.y(t));
     d += `M${pt(p.left)} ${y}h${TICK}M${pt(right)} ${y}h${-TICK}`;
+  }
+  for (const t of yAxis.minor ?? []) {
+    const y = pt(p.y(t));
+    d += `M${pt(p.left)} ${y}h${TICK / 2}M${pt(right)} ${y}h${-TICK / 2}`;
   }
   const parts = [
     element("rect", {
@@ -89,9 +95,7 @@ export function axes(p: Panel, xAxis: Axis, yAxis: Axis, s: Style): string {
 /** Everything in `children` is cut at the panel's edges. `id` must be unique in the drawing. */
 export function clipped(p: Panel, id: string, ...children: readonly string[]): string {
   const rect = element("rect", { x: pt(p.left), y: pt(p.top), width: pt(p.width), height: pt(p.height) });
-  return (
-    element("clipPath", { id }, rect) + group({ "clip-path": `url(#${id})` }, ...children.filter((c) => c !== ""))
-  );
+  return element("clipPath", { id }, rect) + group({ "clip-path": `url(#${id})` }, ...children.filter((c) => c !== ""));
 }
 
 export const zeroLine = (p: Panel, v: number, s: Style): string =>

@@ -50,7 +50,7 @@ const SCREEN: Style = {
   linePt: 0.8,
   insulating: "#7d70c4",
   metallic: "#f2c25c",
-  series: ["#63b3b3", "#ee9a5b", "#c398d6", "#a4cf74", "#f08aa6", "#b9b9b2"],
+  series: ["#4b9da0", "#f5b27c", "#c398d6", "#a4cf74", "#f08aa6", "#b9b9b2"],
 };
 
 export const styleNamed = (name: "paper" | "screen"): Style => (name === "paper" ? PAPER : SCREEN);

@@ -64,8 +64,17 @@ export function label(x: number, y: number, content: string, look: TextLook, mor
 /** Width of a text in points, on the safe side: of the fonts named in the style the widest has digits of 0.64 em. */
 export function textWidth(content: string, size: number): number {
   let em = 0;
-  for (const ch of content) em += /[ijlI.,:;|' ]/.test(ch) ? 0.34 : /[mwMW]/.test(ch) ? 0.95 : /[A-Z%]/.test(ch) ? 0.72 : 0.62;
+  for (const ch of content)
+    em += /[ijlI.,:;|' ]/.test(ch) ? 0.34 : /[mwMW]/.test(ch) ? 0.95 : /[A-Z%]/.test(ch) ? 0.72 : 0.62;
   return em * size;
+}
+
+/** A text cut short with an ellipsis where it would not fit. */
+export function fitText(content: string, size: number, room: number): string {
+  if (textWidth(content, size) <= room) return content;
+  const letters = Array.from(content);
+  while (letters.length > 1 && textWidth(`${letters.join("")}…`, size) > room) letters.pop();
+  return `${letters.join("")}…`;
 }
 
 /** A line through points; a point that is not finite interrupts it. */

@@ -1,7 +1,7 @@
 import { must, word, type Row } from "./rows.js";
 import { niceTicks, tickLabels, type Scale } from "./scale.js";
 import type { Style } from "./style.js";
-import { label, line, pt, element } from "./svg.js";
+import { label, line } from "./svg.js";
 
 /** The frames of a cooldown laid out in the order they were taken: along each series the temperature, one series after the other. */
 export interface Unfolded {
@@ -21,13 +21,16 @@ export interface Unfolded {
 export function unfold(frames: readonly Row[]): Unfolded {
   const at = new Map<number, number>();
   const series: { branch: string; from: number; to: number; fromK: number; toK: number }[] = [];
-  const span = frames.reduce((a, r) => Math.max(a, must(r, "temperature_K")), 0) - frames.reduce((a, r) => Math.min(a, must(r, "temperature_K")), Infinity);
+  const span =
+    frames.reduce((a, r) => Math.max(a, must(r, "temperature_K")), 0) -
+    frames.reduce((a, r) => Math.min(a, must(r, "temperature_K")), Infinity);
   const gap = Math.max(0.06 * span, 0.5);
   let x = 0;
   let last: Row | null = null;
   for (const r of frames) {
     const t = must(r, "temperature_K");
-    const begins = last === null || word(last, "branch") !== word(r, "branch") || must(last, "cycle") !== must(r, "cycle");
+    const begins =
+      last === null || word(last, "branch") !== word(r, "branch") || must(last, "cycle") !== must(r, "cycle");
     if (last !== null) x += begins ? gap : Math.abs(t - must(last, "temperature_K"));
     const current = series[series.length - 1];
     if (begins) series.push({ branch: word(r, "branch"), from: x, to: x, fromK: t, toK: t });
@@ -69,17 +72,7 @@ export function seriesMarks(u: Unfolded, x: Scale, top: number, height: number, 
     }
     if (!named) return;
     const middle = x((part.from + part.to) / 2);
-    out += label(middle, top - 3, part.branch, { size: s.textPt, fill: s.ink, anchor: "middle" });
-    const half = Math.min(14, (x(part.to) - x(part.from)) / 2);
-    if (half > 4) {
-      const y = top + 5;
-      out += element("path", {
-        d: `M${pt(middle - half)} ${pt(y)}H${pt(middle + half)}m-2.4 -1.4l2.4 1.4l-2.4 1.4`,
-        fill: "none",
-        stroke: s.faint,
-        "stroke-width": 0.6,
-      });
-    }
+    out += label(middle, top - 3, `${part.branch} \u2192`, { size: s.textPt, fill: s.ink, anchor: "middle" });
   });
   return out;
 }

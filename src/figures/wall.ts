@@ -5,7 +5,7 @@ import { barPath, marker, stroke } from "./marks.js";
 import { axes, bottomRoom, clipped, leftRoom, zeroLine, type Panel } from "./panel.js";
 import { must, num, word, type Cell, type Row } from "./rows.js";
 import { extent, linear, niceTicks, numberText, tickLabels } from "./scale.js";
-import { element, group, label, line, polyline } from "./svg.js";
+import { element, fitText, group, label, line, polyline, pt } from "./svg.js";
 
 export interface WallInput {
   /** The profile's row of the table `walls`. */
@@ -32,8 +32,14 @@ export function wallFigure(input: WallInput, o: FigureOptions): Figure {
     return { d, share, sd, fit: fitted(d) };
   });
 
-  const [x0, x1] = extent(bins.map((b) => b.d), 0.03);
-  const [s0, s1] = extent(bins.flatMap((b) => [b.share - b.sd, b.share + b.sd, -0.05, 1.05]), 0.02);
+  const [x0, x1] = extent(
+    bins.map((b) => b.d),
+    0.03,
+  );
+  const [s0, s1] = extent(
+    bins.flatMap((b) => [b.share - b.sd, b.share + b.sd, -0.05, 1.05]),
+    0.02,
+  );
   const residualTitle = "Residual / sd";
   const yTitle = "Share of metallic signal";
   const rMost = Math.max(3.2, 1.1 * Math.max(...bins.map((b) => Math.abs((b.share - b.fit) / b.sd) + 1)));
@@ -48,11 +54,22 @@ export function wallFigure(input: WallInput, o: FigureOptions): Figure {
   const top = key.height + s.textPt * 1.4 + 6;
   const main: Panel = { left, top, width, height: width * 0.52, x, y: linear(s0, s1, top + width * 0.52, top) };
   const below = top + main.height + 5;
-  const rest: Panel = { left, top: below, width, height: width * 0.2, x, y: linear(-rMost, rMost, below + width * 0.2, below) };
+  const rest: Panel = {
+    left,
+    top: below,
+    width,
+    height: width * 0.2,
+    x,
+    y: linear(-rMost, rMost, below + width * 0.2, below),
+  };
 
   const grid = Float64Array.from({ length: 200 }, (_, k) => x0 + ((x1 - x0) * k) / 199);
   const curve = (f: (d: number) => number, attributes: Record<string, string | number>): string =>
-    polyline(grid.map((d) => x(d)), grid.map((d) => main.y(f(d))), attributes);
+    polyline(
+      grid.map((d) => x(d)),
+      grid.map((d) => main.y(f(d))),
+      attributes,
+    );
   const step = (d: number): number => {
     fastKink(d, 0, input.sigmaNm, u);
     return u[0];
@@ -64,36 +81,61 @@ export function wallFigure(input: WallInput, o: FigureOptions): Figure {
     // 10 and 90 % of the intrinsic profile lie half a width to either side of its middle
     for (const side of [-1, 1]) {
       const at = x((side * widthNm) / 2);
-      drawn.push(line(at, main.top, at, main.top + main.height, { stroke: s.faint, "stroke-width": 0.5, "stroke-dasharray": "1 1.6" }));
+      drawn.push(
+        line(at, main.top, at, main.top + main.height, {
+          stroke: s.faint,
+          "stroke-width": 0.5,
+          "stroke-dasharray": "1 1.6",
+        }),
+      );
     }
     const y = main.y(0.9);
+    const half = (widthNm / 2) * (x(1) - x(0));
     drawn.push(
       element("path", {
         class: "width",
-        d: `M${x(-widthNm / 2).toFixed(2)} ${y.toFixed(2)}H${x(widthNm / 2).toFixed(2)}`,
+        d: `M${pt(x(0) - half)} ${pt(y)}H${pt(x(0) + half)}m-2 -1.3l2 1.3l-2 1.3M${pt(x(0) - half + 2)} ${pt(y - 1.3)}l-2 1.3l2 1.3`,
         ...stroke(s.ink, 0.7),
         "data-width-nm": widthNm,
         "data-width-sd-nm": num(row, "width_sd_nm"),
       }),
     );
   }
-  if (hasTip) drawn.push(curve(step, { class: "tip", stroke: s.faint, "stroke-width": 0.9, "stroke-dasharray": "3 1.8" }));
+  if (hasTip)
+    drawn.push(curve(step, { class: "tip", stroke: s.faint, "stroke-width": 0.9, "stroke-dasharray": "3 1.8" }));
   drawn.push(curve(fitted, { class: "fit", stroke: s.ink, "stroke-width": 1 }));
   const residuals = [zeroLine(rest, 0, s)];
   const colour = (d: number): string => (d < 0 ? s.insulating : s.metallic);
   const rows: Cell[][] = [];
   for (const b of bins) {
     const r = (b.share - b.fit) / b.sd;
-    drawn.push(element("path", { d: barPath(x(b.d), main.y(b.share - b.sd), main.y(b.share + b.sd), 0.9), ...stroke(s.ink, 0.5) }));
     drawn.push(
-      marker(x(b.d), main.y(b.share), { shape: "circle", size: 3.4, fill: colour(b.d), stroke: s.ink, strokeWidth: 0.4 }, {
-        "data-distance-nm": b.d,
-        "data-share": b.share,
-        "data-sd": b.sd,
+      element("path", {
+        d: barPath(x(b.d), main.y(b.share - b.sd), main.y(b.share + b.sd), 0.9),
+        ...stroke(s.ink, 0.5),
       }),
     );
+    drawn.push(
+      marker(
+        x(b.d),
+        main.y(b.share),
+        { shape: "circle", size: 3.4, fill: colour(b.d), stroke: s.ink, strokeWidth: 0.4 },
+        {
+          "data-distance-nm": b.d,
+          "data-share": b.share,
+          "data-sd": b.sd,
+        },
+      ),
+    );
     residuals.push(element("path", { d: barPath(x(b.d), rest.y(r - 1), rest.y(r + 1), 0), ...stroke(s.ink, 0.5) }));
-    residuals.push(marker(x(b.d), rest.y(r), { shape: "circle", size: 2.6, fill: colour(b.d), stroke: s.ink, strokeWidth: 0.4 }, { "data-residual": r }));
+    residuals.push(
+      marker(
+        x(b.d),
+        rest.y(r),
+        { shape: "circle", size: 2.6, fill: colour(b.d), stroke: s.ink, strokeWidth: 0.4 },
+        { "data-residual": r },
+      ),
+    );
     rows.push([b.d, b.share, b.sd, b.fit, hasTip ? step(b.d) : null, r]);
   }
   const look = { size: s.textPt, fill: s.ink };
@@ -110,18 +152,18 @@ export function wallFigure(input: WallInput, o: FigureOptions): Figure {
         : "Solid: fit of the apparent profile (no tip resolution is known).",
     ],
     body: [
-      label(left, s.textPt + 2, head.place, look),
+      label(left, s.textPt + 2, fitText(head.place, s.textPt, width), look),
       key.svg,
       axes(main, { title: "", labelled: false }, { title: yTitle, ticks: yTicks, labels: yLabels }, s),
       clipped(main, "wall-main", ...drawn),
-      label(left + width - 4, main.top + main.height - 5, head.width, { ...look, anchor: "end" }),
-      label(left + width - 4, main.top + main.height - 5 - 1.35 * s.textPt, head.quality, { ...look, anchor: "end" }),
+      label(left + width - 4, main.y(0.05), head.quality, { ...look, anchor: "end" }),
+      label(left + width - 4, main.y(0.05) - 1.4 * s.textPt, head.width, { ...look, anchor: "end" }),
       axes(rest, { title: "Distance from the wall (nm)" }, { title: residualTitle, ticks: rTicks }, s),
       clipped(rest, "wall-rest", ...residuals),
       group(
         {},
-        label(left + 4, main.top + s.textPt + 3, "insulating", { ...look, weight: "bold" }),
-        label(left + width - 4, main.top + main.height * 0.42, "metallic", { ...look, weight: "bold", anchor: "end" }),
+        label(left + 4, main.y(0.62), "insulating", { ...look, weight: "bold" }),
+        label(left + width - 4, main.y(0.62), "metallic", { ...look, weight: "bold", anchor: "end" }),
       ),
     ].join(""),
     table: { columns: ["distance_nm", "share", "share_sd", "fit", "tip_alone", "residual_sd"], rows },
@@ -147,11 +189,24 @@ function headline(r: Row): { place: string; width: string; quality: string } {
 
 function legendItems(hasTip: boolean, o: FigureOptions): LegendItem[] {
   const s = o.style;
-  const stick = (attributes: Record<string, string | number>) => (x: number, y: number): string =>
-    line(x - 7, y, x + 7, y, { stroke: s.ink, "stroke-width": 1, ...attributes });
+  const stick =
+    (attributes: Record<string, string | number>) =>
+    (x: number, y: number): string =>
+      line(x - 7, y, x + 7, y, { stroke: s.ink, "stroke-width": 1, ...attributes });
   return [
-    { text: "pixels, binned", sign: (x, y) => marker(x, y, { shape: "circle", size: 3.4, fill: s.metallic, stroke: s.ink, strokeWidth: 0.4 }) },
+    {
+      text: "pixels, binned",
+      sign: (x, y) => marker(x, y, { shape: "circle", size: 3.4, fill: s.metallic, stroke: s.ink, strokeWidth: 0.4 }),
+    },
     { text: "fit", wide: 14, sign: stick({}) },
-    ...(hasTip ? [{ text: "tip alone", wide: 14, sign: stick({ stroke: s.faint, "stroke-width": 0.9, "stroke-dasharray": "3 1.8" }) }] : []),
+    ...(hasTip
+      ? [
+          {
+            text: "tip alone",
+            wide: 14,
+            sign: stick({ stroke: s.faint, "stroke-width": 0.9, "stroke-dasharray": "3 1.8" }),
+          },
+        ]
+      : []),
   ];
 }

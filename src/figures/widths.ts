@@ -18,7 +18,9 @@ const MOST_A_FRAME = 150;
 /** Wall widths by temperature, a panel a branch: every sound profile, limits as limits, medians with their intervals, the tip. */
 export function widthsFigure(input: WidthsInput, o: FigureOptions): Figure {
   const s = o.style;
-  const sound = input.walls.filter((r) => word(r, "flag") === "" && (num(r, "width_nm") ?? num(r, "width_upper95_nm")) !== null);
+  const sound = input.walls.filter(
+    (r) => word(r, "flag") === "" && (num(r, "width_nm") ?? num(r, "width_upper95_nm")) !== null,
+  );
   const withWalls = input.frames.filter((r) => (num(r, "profiles") ?? 0) > 0);
   const branches = ["cooling", "warming"].filter((b) => withWalls.some((r) => word(r, "branch") === b));
   const tip = input.walls.map((r) => num(r, "tip_resolution_nm")).find((v) => v !== null) ?? null;
@@ -31,7 +33,10 @@ export function widthsFigure(input: WidthsInput, o: FigureOptions): Figure {
   const most = Math.max(largest > 1.6 * far ? 1.15 * far : 1.04 * largest, 1.1 * highMedian, 1.3 * (tip ?? 0));
   const beyond = values.filter((v) => v > most).length;
 
-  const [t0, t1] = extent(withWalls.map((r) => must(r, "temperature_K")), 0.08);
+  const [t0, t1] = extent(
+    withWalls.map((r) => must(r, "temperature_K")),
+    0.08,
+  );
   const yTicks = niceTicks(0, most, 4);
   const yLabels = tickLabels(yTicks);
   const left = leftRoom(yLabels, title, s) + 2;
@@ -65,7 +70,19 @@ export function widthsFigure(input: WidthsInput, o: FigureOptions): Figure {
       profiles.forEach((r, k) => {
         const w = num(r, "width_nm");
         const upper = num(r, "width_upper95_nm");
-        rows.push(["profile", branch, num(f, "cycle"), frame, num(f, "temperature_K"), num(r, "wall"), num(r, "profile"), w, num(r, "width_sd_nm"), upper, num(r, "resolved")]);
+        rows.push([
+          "profile",
+          branch,
+          num(f, "cycle"),
+          frame,
+          num(f, "temperature_K"),
+          num(r, "wall"),
+          num(r, "profile"),
+          w,
+          num(r, "width_sd_nm"),
+          upper,
+          num(r, "resolved"),
+        ]);
         if (k % step !== 0) return;
         const at = x + slot * (spread(k / step) - 0.5);
         if (w !== null) dots += `M${pt(at)} ${pt(panel.y(w))}h0`;
@@ -74,35 +91,61 @@ export function widthsFigure(input: WidthsInput, o: FigureOptions): Figure {
       const median = num(f, "wall_width_median_nm");
       const low = num(f, "wall_width_median_low_nm");
       const high = num(f, "wall_width_median_high_nm");
-      rows.push(["median", branch, num(f, "cycle"), frame, num(f, "temperature_K"), null, null, median, low, high, num(f, "unresolved_share")]);
+      rows.push([
+        "median",
+        branch,
+        num(f, "cycle"),
+        frame,
+        num(f, "temperature_K"),
+        null,
+        null,
+        median,
+        low,
+        high,
+        num(f, "unresolved_share"),
+      ]);
       if (median === null) continue;
       const colour = s.series[branch === "cooling" ? 0 : 1];
       if (low !== null && high !== null) {
         // under the bar a wider line of the background keeps it apart from the points
-        medians.push(element("path", { d: barPath(x, panel.y(low), panel.y(high), 2.2), ...stroke(s.background, 2.4) }));
+        medians.push(
+          element("path", { d: barPath(x, panel.y(low), panel.y(high), 2.2), ...stroke(s.background, 2.4) }),
+        );
         medians.push(element("path", { d: barPath(x, panel.y(low), panel.y(high), 2.2), ...stroke(colour, 1.1) }));
       }
       medians.push(
-        marker(x, panel.y(median), {
-          shape: branch === "cooling" ? "down" : "up",
-          size: 5.4,
-          fill: branch === "cooling" ? colour : s.background,
-          stroke: colour,
-          strokeWidth: 1,
-        }, {
-          "data-frame": frame,
-          "data-branch": branch,
-          "data-temperature-k": num(f, "temperature_K"),
-          "data-median-nm": median,
-          "data-low-nm": low,
-          "data-high-nm": high,
-        }),
+        marker(
+          x,
+          panel.y(median),
+          {
+            shape: branch === "cooling" ? "down" : "up",
+            size: 4.6,
+            fill: branch === "cooling" ? colour : s.background,
+            stroke: colour,
+            strokeWidth: 1,
+          },
+          {
+            "data-frame": frame,
+            "data-branch": branch,
+            "data-temperature-k": num(f, "temperature_K"),
+            "data-median-nm": median,
+            "data-low-nm": low,
+            "data-high-nm": high,
+          },
+        ),
       );
     }
     const cut: string[] = [];
     if (dots !== "")
-      cut.push(element("path", { class: "profiles", d: dots, ...stroke(s.faint, 1.5, { "stroke-linecap": "round", opacity: 0.75 }) }));
-    if (limits !== "") cut.push(element("path", { class: "limits", d: limits, ...stroke(s.ink, 0.45, { opacity: 0.8 }) }));
+      cut.push(
+        element("path", {
+          class: "profiles",
+          d: dots,
+          ...stroke(s.faint, 1.5, { "stroke-linecap": "round", opacity: 0.75 }),
+        }),
+      );
+    if (limits !== "")
+      cut.push(element("path", { class: "limits", d: limits, ...stroke(s.ink, 0.45, { opacity: 0.8 }) }));
     if (tip !== null)
       cut.push(
         line(left, panel.y(tip), left + width, panel.y(tip), {
@@ -116,13 +159,20 @@ export function widthsFigure(input: WidthsInput, o: FigureOptions): Figure {
     const last = b === branches.length - 1;
     parts.push(
       clipped(panel, `widths-${branch}`, ...cut, group({ class: "medians" }, ...medians)),
-      axes(panel, { title: last ? "Temperature (K)" : "", labelled: last }, { title, ticks: yTicks, labels: yLabels }, s),
-      label(left + 4, top + s.textPt + 2, branch, { size: s.textPt, fill: s.ink, weight: "bold" }),
+      axes(
+        panel,
+        { title: last ? "Temperature (K)" : "", labelled: last },
+        { title, ticks: yTicks, labels: yLabels },
+        s,
+      ),
+      label(left + 5, top + height - 5, branch, { size: s.textPt, fill: s.ink, weight: "bold" }),
     );
     top += height + 5;
   });
   if (branches.length === 0)
-    parts.push(label(o.widthPt / 2, top + 20, "no walls in these frames", { size: s.textPt, fill: s.ink, anchor: "middle" }));
+    parts.push(
+      label(o.widthPt / 2, top + 20, "no walls in these frames", { size: s.textPt, fill: s.ink, anchor: "middle" }),
+    );
   const cooldown = word(input.frames[0] ?? {}, "cooldown");
   return {
     widthPt: o.widthPt,
@@ -135,12 +185,26 @@ export function widthsFigure(input: WidthsInput, o: FigureOptions): Figure {
         : "Dots: intrinsic widths of single profiles, the tip's blur taken out; arrows: 95 % upper limits where a profile resolves none.",
       "Triangles: medians that treat limits as limits, with 95 % intervals; missing where over half are limits.",
       ...(tip === null ? [] : ["Dashed: tip resolution, full width at half maximum."]),
-      ...(thinned > 1 ? [`Up to ${MOST_A_FRAME} profiles a frame are drawn, evenly along the walls; medians are of all.`] : []),
-      ...(beyond > 0 ? [`${beyond} of ${values.length} profiles lie above the axis.`] : []),
+      ...(thinned > 1
+        ? [`Up to ${MOST_A_FRAME} profiles a frame are drawn, evenly along the walls; medians are of all.`]
+        : []),
+      ...(beyond > 0 ? [`Above the axis: ${beyond} of ${values.length} profiles.`] : []),
     ],
     body: parts.join(""),
     table: {
-      columns: ["what", "branch", "cycle", "frame", "temperature_K", "wall", "profile", "width_nm", "width_sd_or_low_nm", "upper95_or_high_nm", "resolved_or_unresolved_share"],
+      columns: [
+        "what",
+        "branch",
+        "cycle",
+        "frame",
+        "temperature_K",
+        "wall",
+        "profile",
+        "width_nm",
+        "width_sd_or_low_nm",
+        "upper95_or_high_nm",
+        "resolved_or_unresolved_share",
+      ],
       rows,
     },
   };
@@ -167,10 +231,17 @@ function legendItems(tip: number | null, sound: readonly Row[], o: FigureOptions
   if (sound.some((r) => num(r, "width_nm") !== null))
     items.push({
       text: "profiles",
-      sign: (x, y) => element("path", { d: `M${pt(x - 2)} ${pt(y - 1)}h0M${pt(x + 2)} ${pt(y + 1)}h0`, ...stroke(s.faint, 1.5, { "stroke-linecap": "round" }) }),
+      sign: (x, y) =>
+        element("path", {
+          d: `M${pt(x - 2)} ${pt(y - 1)}h0M${pt(x + 2)} ${pt(y + 1)}h0`,
+          ...stroke(s.faint, 1.5, { "stroke-linecap": "round" }),
+        }),
     });
   if (sound.some((r) => num(r, "width_nm") === null))
-    items.push({ text: "upper limits", sign: (x, y) => element("path", { d: limitPath(x, y - 2, 4.2, 1), ...stroke(s.ink, 0.5) }) });
+    items.push({
+      text: "upper limits",
+      sign: (x, y) => element("path", { d: limitPath(x, y - 2, 4.2, 1), ...stroke(s.ink, 0.5) }),
+    });
   items.push({
     text: "median, 95 %",
     sign: (x, y) =>
