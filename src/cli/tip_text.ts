@@ -1,15 +1,6 @@
 import type { Cooldown, FrameInfo } from "../model/cooldown.js";
 import { plainText } from "../model/text.js";
-import type {
-  CutLine,
-  Place,
-  TipCandidate,
-  TipChannel,
-  TipMeasured,
-  TipModel,
-  TipSearch,
-  Width,
-} from "../stages/tip/index.js";
+import type { CutLine, Place, TipChannel, TipMeasured, TipModel, TipSearch, Width } from "../stages/tip/index.js";
 
 /** What was measured. */
 export interface TipSubject {
@@ -162,7 +153,7 @@ export function searchText(s: TipSubject, search: TipSearch): string {
       `${fwhm.padStart(14)}${r.upper95Nm.toFixed(1).padStart(9)}${r.contrastToNoise.toFixed(1).padStart(7)}  ${c.sound ? "" : "! "}${remarks.join(", ")}`
     );
   });
-  const best = search.candidates[0] as TipCandidate;
+  const best = search.candidates[0];
   const t = search.together;
   const together =
     t === null

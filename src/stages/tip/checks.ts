@@ -1,6 +1,6 @@
 import { FWHM_PER_SIGMA, RISE_PER_SIGMA, RISE_PER_W } from "../../model/units.js";
 import { erfc, normalQuantile } from "../../numerics/erf.js";
-import { fitShape, sdOf, type ShapeFit } from "./fit_shape.js";
+import { fitShape, sdOf, type Base, type ShapeFit } from "./fit_shape.js";
 import type { CutPixels } from "./pixels.js";
 import { SIGMA, TILT, withColumn } from "./shapes.js";
 
@@ -19,6 +19,11 @@ export interface Departure {
   readonly sd: number;
   /** χ² won. */
   readonly gain: number;
+  /** χ² that is left, and the parameters spent on it. */
+  readonly chi2: number;
+  readonly parameters: number;
+  /** Levels that the fit stood on. */
+  readonly base: Base;
 }
 
 function departure(fit: ShapeFit, data: CutPixels, column: Float64Array): Departure | null {
@@ -27,7 +32,9 @@ function departure(fit: ShapeFit, data: CutPixels, column: Float64Array): Depart
   const more = fitShape(data, shape, fit.base, Float64Array.of(...fit.theta, 0), [...fit.free, k]);
   if (more === null || !more.converged) return null;
   const sd = sdOf(more, k);
-  return Number.isFinite(sd) ? { value: more.theta[k], sd, gain: fit.chi2 - more.chi2 } : null;
+  if (!Number.isFinite(sd)) return null;
+  const parameters = more.solved.parameters.length;
+  return { value: more.theta[k], sd, gain: fit.chi2 - more.chi2, chi2: more.chi2, parameters, base: fit.base };
 }
 
 export interface ShapeTests {
@@ -62,27 +69,32 @@ export function testShape(fit: ShapeFit, data: CutPixels): ShapeTests {
     if (half < 0.02 * sigma) return 1 / (1 + (v / gamma) ** 2) - g[i];
     return (Math.atan((v + half) / gamma) - Math.atan((v - half) / gamma)) / (2 * Math.atan(half / gamma)) - g[i];
   });
-  const isEdge = model === "edge";
+  if (model !== "edge") {
+    return { sides: departure(fit, data, sides), lorentzian: departure(fit, data, lorentzian), tanh: null, rim: null };
+  }
   const w = (RISE_PER_SIGMA * sigma) / RISE_PER_W;
+  const tanh = z.map((v, i) => 0.5 * (1 + Math.tanh(v / w)) - g[i]);
+  // A slope beside the edge can be the far end of tails: level plateaus with tails are tried against it.
+  const level = fit.base === "plane" ? fitShape(data, fit.shape, "level", fit.theta, fit.free) : null;
+  const tail = (column: Float64Array): Departure | null => {
+    const own = departure(fit, data, column);
+    const other = level === null || !level.converged ? null : departure(level, data, column);
+    return own === null || (other !== null && cost(other, data) < cost(own, data)) ? other : own;
+  };
   return {
     sides: departure(fit, data, sides),
-    lorentzian: departure(fit, data, lorentzian),
-    tanh: isEdge
-      ? departure(
-          fit,
-          data,
-          z.map((v, i) => 0.5 * (1 + Math.tanh(v / w)) - g[i]),
-        )
-      : null,
-    rim: isEdge
-      ? departure(
-          fit,
-          data,
-          z.map((v) => Math.exp(-0.125 * (v / sigma) ** 2)),
-        )
-      : null,
+    lorentzian: tail(lorentzian),
+    tanh: tail(tanh),
+    rim: departure(
+      fit,
+      data,
+      z.map((v) => Math.exp(-0.125 * (v / sigma) ** 2)),
+    ),
   };
 }
+
+/** Bayesian information criterion of a fit with a departure. */
+export const cost = (d: Departure, data: CutPixels): number => d.chi2 + d.parameters * Math.log(data.n * data.y.length);
 
 /** Two-sided p-value of a normal deviate. */
 export const twoSided = (z: number): number => erfc(Math.abs(z) / Math.SQRT2);

@@ -33,6 +33,8 @@ const DAMNING: readonly WarningCode[] = [
   "coarse-sampling",
 ];
 const MOST_TRIED = 40;
+/** Half of a proposed line's length, in widths expected: a particle of two widths and a plateau beyond it. */
+const HALF_LENGTH = 3.5;
 
 /** Resolution that lines are laid out for: what the user expects, else 4 pixels. */
 export const expectedNmOf = (image: TipImage, s: TipSettings): number =>
@@ -48,8 +50,10 @@ export function findTipFeatures(image: TipImage, s: TipSettings, count: number):
   const expected = expectedNmOf(image, s);
   const { steep, blobs } = findSpots(image, expected, s.leastContrast, MOST_TRIED);
   const found: Found[] = [];
+  const half = HALF_LENGTH * expected;
   for (const spot of [...blobs, ...steep]) {
-    const line = lineOver(image, spot, 4 * expected, lineWidthNm(image, s));
+    if (blobs.some((b) => b !== spot && disturbs(b, spot, half + expected))) continue;
+    const line = lineOver(image, spot, half, lineWidthNm(image, s));
     if (line === null) continue;
     const { result, rise } = measureCut(image, line, s, { model: null, sizeNm: null });
     if (result.status === "unusable" || rise === null || result.contrastToNoise < s.leastContrast) continue;
@@ -64,6 +68,12 @@ export function findTipFeatures(image: TipImage, s: TipSettings, count: number):
   }
   const candidates = kept.slice(0, count).map(({ line, result, sound }) => ({ line, result, sound }));
   return { candidates, together: combine(kept.filter((c) => c.sound)), tried: blobs.length + steep.length };
+}
+
+/** A second particle close enough to lie in the plateau of the first. Rings of the detector round a strong one are weaker than that. */
+function disturbs(other: Spot, spot: Spot, reachNm: number): boolean {
+  const d = Math.hypot(other.at.xNm - spot.at.xNm, other.at.yNm - spot.at.yNm);
+  return d < reachNm && d > reachNm / 3 && other.score > 0.4 * spot.score;
 }
 
 type Found = TipCandidate & { readonly rise: NonNullable<MeasuredCut["rise"]> };

@@ -57,7 +57,8 @@ export function solveLevels(data: CutPixels, g: Float64Array, base: Base, levels
       }
       yy += w2 * y[k] * y[k];
     }
-    for (let p = 0; p < m; p++) a[p * m + p] *= 1 + 1e-12;
+    // a shape that is 0 everywhere has no height
+    for (let p = 0; p < m; p++) a[p * m + p] = a[p * m + p] === 0 ? 1 : a[p * m + p] * (1 + 1e-12);
     const right = rhs.slice();
     if (!choleskyInPlace(a, m)) {
       chi2 += Infinity;

@@ -1,4 +1,4 @@
-import { amplitudeDistortion, distances, type Departure, type ShapeTests } from "./checks.js";
+import { amplitudeDistortion, cost, distances, type Departure, type ShapeTests } from "./checks.js";
 import type { Choice } from "./choose.js";
 import type { ShapeFit } from "./fit_shape.js";
 import { correlationSquared } from "./interval.js";
@@ -74,9 +74,13 @@ export function judge(
     );
   }
   const lorentzian = z(tests.lorentzian);
-  const tanh = z(tests.tanh);
-  if (Math.max(lorentzian, tanh) > s.testSigmas) {
-    if ((tests.tanh?.gain ?? 0) > (tests.lorentzian?.gain ?? 0)) {
+  let tails: Departure | null = null;
+  for (const d of [tests.lorentzian, tests.tanh]) {
+    if (d === null || z(d) <= s.testSigmas) continue;
+    if (tails === null || cost(d, choice.data) < cost(tails, choice.data)) tails = d;
+  }
+  if (tails !== null) {
+    if (tails === tests.tanh) {
       warn(
         "soft-edge",
         "the profile has the tails of an edge with a width of its own (tanh): an upper limit of the tip's width",
@@ -100,7 +104,7 @@ export function judge(
         (isEdge ? "; an edge without relief is better" : ""),
     );
   }
-  if (fit.base === "plane" && isEdge)
+  if (fit.base === "plane" && isEdge && tails?.base !== "level")
     warn("uneven-plateaus", "the signal is not flat beside the edge; a common slope was fitted");
   const half = frame.lengthNm / 2;
   const free = half - Math.abs(fit.theta[0]) - (isEdge ? 0 : r.apparent.nm / 2);
@@ -155,9 +159,9 @@ function phaseTurn(choice: Choice, phaseRad: Float32Array): { low: number; high:
     }
     return n < 3 ? null : { rad: Math.atan2(s, c), value: v / n };
   };
-  const low = mean((k) => g[k] < 0.1);
+  const low = mean((k) => g[k] < 0.02);
   const high = mean((k) =>
-    fit.shape.model === "edge" ? g[k] > 0.9 : g[k] > 0.8 || Math.abs(z[k]) < 0.2 * fit.theta[2],
+    fit.shape.model === "edge" ? g[k] > 0.98 : g[k] > 0.8 || Math.abs(z[k]) < 0.2 * fit.theta[2],
   );
   if (low === null || high === null) return null;
   const d = high.rad - low.rad;

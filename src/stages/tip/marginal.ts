@@ -33,8 +33,8 @@ export function averageOver(
   highNm: number,
 ): { readonly nm: number; readonly sdNm: number; readonly least: number } {
   const n = 13;
-  const from = Math.max(0.85 * lowNm, 0.3 * highNm);
-  const to = 1.1 * highNm;
+  const from = Math.max(lowNm - 0.3 * (highNm - lowNm), 0.3 * highNm);
+  const to = highNm + 0.3 * (highNm - lowNm);
   const widths = Float64Array.from({ length: n }, (_, k) => from + ((to - from) * k) / (n - 1));
   const rises = widths.map(rise);
   const least = Math.min(...rises);

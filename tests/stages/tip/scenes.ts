@@ -2,7 +2,15 @@ import { FWHM_PER_SIGMA } from "../../../src/model/units.js";
 import { makeRaster, type PixelSize } from "../../../src/model/raster.js";
 import { normalCdf } from "../../../src/numerics/erf.js";
 import type { Random } from "../../../src/numerics/random.js";
-import { type TipChannel, type TipImage, prepareTipImage } from "../../../src/stages/tip/index.js";
+import {
+  type CutLine,
+  type TipChannel,
+  type TipImage,
+  type TipMeasured,
+  type TipResult,
+  type WarningCode,
+  prepareTipImage,
+} from "../../../src/stages/tip/index.js";
 
 export interface Scene {
   readonly rows: number;
@@ -67,6 +75,32 @@ export function discScene(
     return 1 + contrast * sum * (Math.PI / n);
   });
 }
+
+/** A line through a point near the frame's middle at an angle from +x, half-length `half`. */
+export function lineThrough(scene: Scene, half: number, angleDeg: number, widthNm: number): CutLine {
+  const a = (angleDeg * Math.PI) / 180;
+  const m = middleOf(scene);
+  return {
+    from: { xNm: m.xNm - half * Math.cos(a), yNm: m.yNm - half * Math.sin(a) },
+    to: { xNm: m.xNm + half * Math.cos(a), yNm: m.yNm + half * Math.sin(a) },
+    widthNm,
+  };
+}
+
+/** Signed distance from a straight edge through the frame's middle. */
+export function alongNormal(scene: Scene, angleDeg: number, offsetNm: number): (x: number, y: number) => number {
+  const a = (angleDeg * Math.PI) / 180;
+  const m = middleOf(scene);
+  return (x, y) => (x - m.xNm) * Math.cos(a) + (y - m.yNm) * Math.sin(a) - offsetNm;
+}
+
+/** The result, which must be a measurement. */
+export function measured(r: TipResult): TipMeasured {
+  if (r.status === "unusable") throw new Error(`unusable: ${r.message}`);
+  return r;
+}
+
+export const codes = (r: TipMeasured): WarningCode[] => r.warnings.map((w) => w.code);
 
 /** The image with white noise, ready to be measured. */
 export function noisy(
