@@ -62,8 +62,9 @@ export function walls(o: SelectOptions & { format: string }): void {
     }
     if (rows.length > 0)
       print(
-        '\nWidths are intrinsic 10-90 % widths, the tip\'s blur taken out. "limits" is the share of profiles that give only an\n' +
-          "upper limit; where it is over half, the median is empty. Every profile: coldseam export walls --db FILE\n",
+        '\nWidths are intrinsic 10-90 % widths, the tip\'s blur taken out. "limits" is the\n' +
+          "share of profiles that give only an upper limit; where it is over half, the\n" +
+          "median is empty. Every profile: coldseam export walls --db FILE\n",
       );
   } finally {
     db.close();

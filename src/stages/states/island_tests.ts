@@ -5,7 +5,7 @@ import type { Pixels } from "./pixels.js";
 import type { ShareCurve } from "./share_curve.js";
 
 /** An island whose signal lies far off the line between the two levels, or far beyond them, is a particle and not a domain. */
-const OFF_CHORD = 0.25;
+const OFF_CHORD = 0.45;
 const BEYOND = 1.5;
 
 export function onChord(
