@@ -33,6 +33,8 @@ export interface FineOptions {
 }
 
 const ITERATIONS = 25;
+/** Gradients are sampled anew where the shift has moved farther than this. */
+const GRADIENT_REACH_PX = 0.15;
 /** Rounding and interpolation: no shift is known better, not even between two copies of one frame. */
 const LEAST_SD_PX = 1e-4;
 
@@ -57,23 +59,22 @@ export function fineShift(
   const { rows, cols } = reference.grid;
   const work = new PairSums(reference.grid, reference.gradient);
   let at = offsetFor(start.dx, start.dy, null);
-  const slopes = (): [Shifted, Shifted] => [
-    sampleShifted(moving.gradientX, rows, cols, at),
-    sampleShifted(moving.gradientY, rows, cols, at),
-  ];
-  let slope: { xx: number; xy: number; yx: number; yy: number } | null = null;
+  let gradients: { mx: Shifted; my: Shifted; slope: Slope; dx: number; dy: number } | null = null;
+  let pixels = 0;
   let iteration = 0;
   let step = Number.POSITIVE_INFINITY;
   for (; iteration < ITERATIONS && step > options.tolerancePx; iteration++) {
-    const sampled = sampleShifted(moving.grid, rows, cols, at);
-    if (work.residuals(sampled) < options.leastPixels) return null;
-    // the gradients change little on the way: once at the start, once near the end
-    if (iteration === 0 || (iteration <= 3 && step > 0.1)) {
+    pixels = work.residuals(sampleShifted(moving.grid, rows, cols, at), at);
+    if (pixels < options.leastPixels) return null;
+    // gradients change little over a fraction of a pixel
+    if (gradients === null || Math.hypot(at.dx - gradients.dx, at.dy - gradients.dy) > GRADIENT_REACH_PX) {
+      const mx = sampleShifted(moving.gradientX, rows, cols, at);
+      const my = sampleShifted(moving.gradientY, rows, cols, at);
       work.levelGradient();
-      slope = work.slope(...slopes(), false);
+      gradients = { mx, my, slope: work.slope(mx, my, false), dx: at.dx, dy: at.dy };
     }
     const score = work.score();
-    const delta = slope === null ? null : solve(slope, score.x, score.y);
+    const delta = solve(gradients.slope, score.x, score.y);
     if (delta === null) return null;
     const length = Math.hypot(delta.x, delta.y);
     const shorter = length > 1 ? 1 / length : 1;
@@ -81,24 +82,23 @@ export function fineShift(
     if (!(Math.hypot(at.dx - start.dx, at.dy - start.dy) <= options.leashPx)) return null;
     step = length;
   }
-  if (step > options.tolerancePx) return null;
+  if (gradients === null || step > options.tolerancePx) return null;
 
-  const pixels = work.residuals(sampleShifted(moving.grid, rows, cols, at));
-  if (pixels < options.leastPixels) return null;
-  const [gx, gy] = slopes();
+  // the sums stand where the last, short step began
+  const { mx, my } = gradients;
   work.levelGradient();
-  const a = work.slope(gx, gy, true);
-  const score = work.score();
+  const a = work.slope(mx, my, true);
+  work.score();
   const scatter = scoreCovariance(work.blocks.x, work.blocks.y, work.blocks.rows, work.blocks.cols, null);
   const reach = options.reachPx;
   const alike = reach === null ? null : stationaryCovariance(work.parts(), reach.x, reach.y);
   const covariance = alike === null ? scatter : larger(alike, scatter, pixels / 64);
-  const level = work.alongRows(gx, gy);
+  const level = work.alongRows(mx, my);
   const tilted = scoreCovariance(work.blocks.x, work.blocks.y, work.blocks.rows, work.blocks.cols, level.weights);
   const mean = sandwich(a, covariance);
   const tilt = sandwich(level.slope, tilted);
   const tiltBy = solve(level.slope, level.score.x, level.score.y);
-  if (mean === null || tilt === null || tiltBy === null || !Number.isFinite(score.x + score.y)) return null;
+  if (mean === null || tilt === null || tiltBy === null) return null;
   return {
     dx: at.dx,
     dy: at.dy,

@@ -2,7 +2,7 @@ import { selectInPlace, SD_PER_MAD } from "../../numerics/quantile.js";
 import type { Grid } from "./grid.js";
 import type { ScoreParts } from "./noise_covariance.js";
 import { removeNuisance } from "./nuisance.js";
-import type { Shifted, Sloped } from "./shifted.js";
+import type { Offset, Shifted, Sloped } from "./shifted.js";
 
 export interface Slope {
   readonly xx: number;
@@ -32,6 +32,7 @@ export class PairSums {
   private readonly influence: Float32Array;
   /** The reference less its nuisance; the gradient less its own. */
   private readonly level: Float32Array;
+  private levelAt: Offset | null = null;
   private readonly gx: Float32Array;
   private readonly gy: Float32Array;
 
@@ -59,7 +60,7 @@ export class PairSums {
   }
 
   /** Residuals with nuisance and gain taken off, and their weights. @returns pixels that take part */
-  residuals(sampled: Shifted): number {
+  residuals(sampled: Shifted, at: Offset): number {
     const { rows, cols, residual, weight, level } = this;
     const { usable } = this.gradient;
     let pixels = 0;
@@ -68,9 +69,13 @@ export class PairSums {
       pixels += weight[p];
     }
     if (pixels === 0) return 0;
-    level.set(this.reference.values);
     residual.set(sampled.values);
-    removeNuisance(level, weight, rows, cols);
+    // which pixels take part hangs on the whole pixels of the shift alone
+    if (at.jx !== this.levelAt?.jx || at.iy !== this.levelAt.iy) {
+      level.set(this.reference.values);
+      removeNuisance(level, weight, rows, cols);
+      this.levelAt = at;
+    }
     removeNuisance(residual, weight, rows, cols);
     let rr = 0;
     let mm = 0;
