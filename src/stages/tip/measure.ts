@@ -1,7 +1,7 @@
 import { FWHM_PER_SIGMA } from "../../model/units.js";
 import { twoSided, testShape, heightStep } from "./checks.js";
 import { chooseModel, type Choice, type ChooseOptions } from "./choose.js";
-import { contrastToNoise } from "./fit_shape.js";
+import { contrastToNoise, sdOf, type ShapeFit } from "./fit_shape.js";
 import { correlationFactor, profileEnd } from "./interval.js";
 import { judge, scatterLimit } from "./judge.js";
 import { averageOver, sizeRoom, varianceSdOf } from "./marginal.js";
@@ -135,7 +135,7 @@ function describe(image: TipImage, line: CutLine, s: TipSettings, choice: Choice
     size:
       model === "edge" || options.sizeNm !== null
         ? null
-        : { nm: 2 * fit.theta[3], lowNm: 2 * profile(high).half, highNm: 2 * profile(low).half },
+        : sizeOf(fit, profile(high).half, profile(low).half, inflation),
     directions: model === "dot" ? directionsOf(fit, choice, inflation) : null,
     sides: { near: side(-sideShare), far: side(sideShare), pValue: sideSd > 0 ? twoSided(sideShare / sideSd) : 1 },
     at: placeOf(frame, fit.theta[0], model === "dot" ? fit.theta[TILT] : 0),
@@ -165,4 +165,13 @@ function averageSize(
   const rise = (nm: number): number => profiled(nm) + room(nm / FWHM_PER_SIGMA);
   const { nm, sdNm, least } = averageOver(rise, lowNm, highNm);
   return { nm, sdNm, rise: (v) => Math.max(0, rise(v) - least) };
+}
+
+/** The particle's own size. What it trades with the tip's width shows at the ends of that one's interval; a large one, which trades nothing,
+ *  has the uncertainty of its place in the fit. */
+function sizeOf(fit: ShapeFit, least: number, most: number, inflation: number): NonNullable<TipMeasured["size"]> {
+  const half = fit.theta[3];
+  const sd = sdOf(fit, 3) * Math.sqrt(inflation);
+  const own = sd < 0.3 * half ? Z95 * sd : 0;
+  return { nm: 2 * half, lowNm: 2 * Math.min(least, half - own), highNm: 2 * Math.max(most, half + own) };
 }

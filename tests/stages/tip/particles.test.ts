@@ -104,6 +104,11 @@ describe("many noisy particles", () => {
     const held = results.filter((r) => r.lowNm <= 30 && r.highNm >= 30).length / results.length;
     expect(held).toBeGreaterThanOrEqual(0.92);
     expect(held).toBeLessThanOrEqual(0.98);
+    // and so do those of the particles' own sizes
+    const sizes = results.filter(
+      (r, k) => (r.size?.lowNm ?? 0) <= [60, 75, 90][k % 3] && (r.size?.highNm ?? 0) >= [60, 75, 90][k % 3],
+    );
+    expect(sizes.length / results.length).toBeGreaterThanOrEqual(0.92);
     const pull = Math.sqrt(results.reduce((a, r) => a + ((r.fwhmNm - 30) / r.sdNm) ** 2, 0) / results.length);
     expect(pull).toBeGreaterThan(0.85);
     expect(pull).toBeLessThan(1.15);
