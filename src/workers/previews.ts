@@ -19,7 +19,11 @@ export interface Averaged {
 
 /** Every channel of one frame made small, as the analysis saw it: rows corrected, gain and phase reference taken off; what it left out as
  *  debris stays visible. */
-export async function makePreviews(clean: CleanFrame, fit: LevelFit, levels: FrameLevels): Promise<Preview[]> {
+export async function makePreviews(
+  clean: CleanFrame,
+  fit: Pick<LevelFit, "correction">,
+  levels: FrameLevels,
+): Promise<Preview[]> {
   const z = correctPixels(readPixels(clean, null), fit.correction);
   const { rows, cols } = z;
   const n = rows * cols;
