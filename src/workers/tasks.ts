@@ -109,6 +109,12 @@ function debrisOf(input: FrameInput, clean: ReturnType<typeof fetchClean>): Uint
   return debrisInFrame(map, input.drift, rows, cols);
 }
 
+/** Whether debris can be told apart in this frame: by its own topography, or by its place on the sample, well known. */
+function knowsDebris(input: FrameInput, clean: ReturnType<typeof fetchClean>): boolean {
+  const { sdNm } = input.drift;
+  return clean.topography !== null || (sdNm !== null && sdNm <= Math.max(clean.pixel.xNm, clean.pixel.yNm));
+}
+
 function levels(input: FrameInput): LevelFit {
   const frame = fetchClean(input.scratch, input.frame);
   return fitLevels(frame, debrisOf(input, frame), input.tip, input.settings.states);
@@ -154,7 +160,8 @@ async function measure(input: MeasureInput): Promise<MeasureOutput> {
   const mask = debrisOf(input, frame);
   const { signal, states } = mapStates(frame, mask, input.fit, input.levels, tip, s.states);
   const walls = fitWalls(signal, states, tip, s.walls);
-  const fringes = testFringes(signal, states, walls, tip, s.fringes, input.seed);
+  // A particle beside a wall turns the optical phase like a fringe: no test in a frame where nothing tells where the particles are.
+  const fringes = knowsDebris(input, frame) ? testFringes(signal, states, walls, tip, s.fringes, input.seed) : [];
   const domains: FrameDomains = labelDomains(states.map, input.frame, tip, s.domains);
   let usablePixels = 0;
   const amplitude = frame.amplitude.values.data;

@@ -23,10 +23,11 @@ export function coldseamInterrupted(signal: NodeJS.Signals, when: RegExp, ...arg
     const child = spawn(process.execPath, [ENTRY, ...args], { cwd: TOP });
     let out = "";
     let err = "";
+    let sent = false;
     child.stdout.on("data", (d: Buffer) => (out += d.toString()));
     child.stderr.on("data", (d: Buffer) => {
       err += d.toString();
-      if (when.test(err)) child.kill(signal);
+      if (!sent && when.test(err)) sent = child.kill(signal);
     });
     child.on("close", (code) => resolve({ code, out, err }));
   });

@@ -26,6 +26,8 @@ export function drawnProfile(
     low = Math.min(low, at[k]);
     high = Math.max(high, at[k]);
   }
+  // nothing left in reach, or a fit that has run away: there is nothing to draw
+  if (!Number.isFinite(high - low)) return new Float32Array(0);
   const binNm = Math.max(leastNm, (high - low) / (MOST_BINS - 1), 1e-6);
   const first = Math.floor(low / binNm);
   const many = Math.floor(high / binNm) - first + 1;
