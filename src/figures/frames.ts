@@ -137,12 +137,12 @@ function seriesLengths(frames: readonly FramePicture[]): number[] {
   return out;
 }
 
-/** The number of columns, from a little below the most to the most, that leaves the fewest cells empty. */
+/** The number of columns, from half of the most to the most, that leaves the fewest cells empty. */
 function columnsFor(lengths: readonly number[], most: number): number {
   const widest = Math.min(most, Math.max(1, ...lengths));
   let best = widest;
   let least = Infinity;
-  for (let c = widest; c >= Math.max(1, widest - 2); c--) {
+  for (let c = widest; c >= widest / 2; c--) {
     const empty = lengths.reduce((a, n) => a + ((c - (n % c)) % c), 0);
     if (empty < least) {
       least = empty;
@@ -152,10 +152,10 @@ function columnsFor(lengths: readonly number[], most: number): number {
   return best;
 }
 
-/** Middle of the range, so that the window suits all frames as well as it can. */
+/** Median, so that one frame that lies far off does not push all others out of the window. */
 function middle(values: readonly (number | null)[]): number {
-  const known = values.filter((v) => v !== null);
-  return known.length === 0 ? 0 : (Math.min(...known) + Math.max(...known)) / 2;
+  const known = values.filter((v) => v !== null).sort((a, b) => a - b);
+  return known.length === 0 ? 0 : (known[(known.length - 1) >> 1] + known[known.length >> 1]) / 2;
 }
 
 function heading(r: Row, left: number, top: number, cell: number, o: FigureOptions): string {

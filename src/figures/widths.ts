@@ -167,7 +167,7 @@ export function widthsFigure(input: WidthsInput, o: FigureOptions): Figure {
       ),
       label(left + 5, top + height - 5, branch, { size: s.textPt, fill: s.ink, weight: "bold" }),
     );
-    top += height + 5;
+    top += height + s.textPt + 2;
   });
   if (branches.length === 0)
     parts.push(
@@ -176,7 +176,7 @@ export function widthsFigure(input: WidthsInput, o: FigureOptions): Figure {
   const cooldown = word(input.frames[0] ?? {}, "cooldown");
   return {
     widthPt: o.widthPt,
-    heightPt: branches.length === 0 ? top + 40 : top - 5 + bottomRoom("Temperature (K)", s) + 3,
+    heightPt: branches.length === 0 ? top + 40 : top - s.textPt - 2 + bottomRoom("Temperature (K)", s) + 3,
     style: s,
     title: `Wall widths of ${cooldown}`,
     notes: [

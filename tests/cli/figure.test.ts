@@ -203,7 +203,7 @@ describe("what cannot be drawn is said", () => {
   test("several cooldowns where one is shown; a wall that is not there; a place that cannot be written", async () => {
     const both = await refused("drift", { cooldown: undefined });
     expect(both.message).toMatch(/shows one cooldown, and the choice holds 2/);
-    expect(both).toMatchObject({ fix: expect.stringContaining("kept-no-pictures, kv14-run1") as string });
+    expect(both).toMatchObject({ fix: expect.stringContaining("kept-no-pictures, kv14-run1") });
     expect((await refused("wall", { wall: "999" })).message).toMatch(/no profile for this choice/);
     const nowhere = await refused("loop", { out: path.join(dir, "no", "such.svg") });
     expect(nowhere).toBeInstanceOf(InputError);
@@ -216,7 +216,7 @@ describe("what cannot be drawn is said", () => {
       const e = await refused(kind, { cooldown: ["kept-no-pictures"] });
       expect(e).toBeInstanceOf(InputError);
       expect(e).toMatchObject({
-        problems: [{ fix: expect.stringContaining("ingest its cooldown again to draw this") as string }],
+        problems: [{ fix: expect.stringContaining("ingest its cooldown again to draw this") }],
       });
     },
   );

@@ -34,6 +34,7 @@ export function middleOf(d: string): { x: number; y: number } {
 /** An SVG made comparable: one element a line, coordinates to a tenth of a point, images left out. */
 export function normalised(f: Figure): string {
   return svgDocument(f)
+    .replace(/^<\?xml.*\?>\n/, "")
     .replace(/data:image\/png;base64,[A-Za-z0-9+/=]+/g, "data:…")
     .replace(/-?\d+\.\d+/g, (v) => String(Number(Number(v).toFixed(1))))
     .replace(/></g, ">\n<");

@@ -6,8 +6,10 @@ import type { FittedCurve } from "./estimate.js";
 import type { Profile } from "./profile.js";
 import type { Stretch } from "./stretches.js";
 
-/** Bins are drawn together until there are no more than this many. */
+/** With more bins than this, those far from the wall are drawn three together: so many on each side stay single. */
 const MOST_BINS = 60;
+const NEAR_BINS = 24;
+const TOGETHER = 3;
 
 /** The signal beside one stretch in the bins of its profile, with the null and the fit, for drawing. The phase's sd is that of the bin
  *  across the chord, carried over to the direction in which the phase turns by the pixel noise of the two. */
@@ -22,8 +24,8 @@ export function drawnFringe(
   blur: Blur,
   fitted: FittedCurve,
 ): FringeBins {
-  const together = Math.max(1, Math.ceil(profile.count / MOST_BINS));
-  const count = Math.ceil(profile.count / together);
+  const groups = groupsOf(profile, binNm);
+  const count = groups.length - 1;
   const means = meanSignal(signal, stretch, distanceNm, binNm, profile);
   const { insulating } = levels;
   const size2 = insulating.re ** 2 + insulating.im ** 2;
@@ -35,8 +37,8 @@ export function drawnFringe(
     bins[at + 1] += (weight * (im * insulating.re - re * insulating.im)) / size2;
   };
   for (let b = 0; b < count; b++) {
-    const from = b * together;
-    const to = Math.min(profile.count, from + together);
+    const from = groups[b];
+    const to = groups[b + 1];
     const at = b * FRINGE_COLUMNS;
     const weight = 1 / (to - from);
     let variance = 0;
@@ -68,6 +70,21 @@ export function drawnFringe(
     },
     bins,
   };
+}
+
+/** Where each group of bins that are drawn as one begins, and one past the last bin. */
+function groupsOf(profile: Profile, binNm: number): number[] {
+  const { count, distanceNm } = profile;
+  const near = count <= MOST_BINS ? Infinity : NEAR_BINS * binNm;
+  const starts: number[] = [];
+  for (let k = 0; k < count;) {
+    starts.push(k);
+    const isNear = Math.abs(distanceNm[k]) < near;
+    let next = k + 1;
+    if (!isNear) while (next < Math.min(count, k + TOGETHER) && !(Math.abs(distanceNm[next]) < near)) next++;
+    k = next;
+  }
+  return [...starts, count];
 }
 
 /** Mean of the complex signal in each bin of the profile. */

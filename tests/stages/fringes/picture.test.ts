@@ -25,7 +25,7 @@ test("the signal drawn beside a wall is the true one within its standard deviati
       const { drawn } = t;
       expect(Math.hypot(drawn.metallic.re, drawn.metallic.im)).toBeCloseTo(2.2, 1);
       expect(drawn.bins.length % 8).toBe(0);
-      expect(drawn.bins.length / 8).toBeLessThanOrEqual(60);
+      expect(drawn.bins.length / 8).toBeLessThanOrEqual(80);
       for (let k = 0; k < drawn.bins.length; k += 8) {
         const [d, re, im, sd, nullRe, nullIm, fitRe, fitIm] = drawn.bins.slice(k, k + 8);
         const [tr, ti] = truth(d);
