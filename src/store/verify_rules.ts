@@ -218,4 +218,13 @@ export const RULES: readonly Rule[] = [
         OR (l.complete = 1 AND (e.branches = 2 AND l.lowest_fraction <= ${setting("loops.completeLow")}
           AND l.highest_fraction >= ${setting("loops.completeHigh")}) IS NOT 1)`,
   },
+  {
+    name: "previews are images, and cover their frames",
+    of: "previews",
+    from: "preview",
+    wrong: `${frameLine("v.channel || ': ' || v.image_rows || ' × ' || v.image_cols || ' boxes of ' || v.step_y || ' × ' || v.step_x || ' for ' || f.map_rows || ' × ' || f.map_cols || ' pixels'")}
+      preview v JOIN place ON place.id = v.analysis_id JOIN frame f ON f.analysis_id = v.analysis_id AND f.frame = v.frame
+      WHERE hex(substr(v.image, 1, 4)) <> hex('RIFF') OR v.image_rows * v.step_y < f.map_rows OR v.image_cols * v.step_x < f.map_cols
+        OR (v.image_rows - 1) * v.step_y >= f.map_rows OR (v.image_cols - 1) * v.step_x >= f.map_cols`,
+  },
 ];

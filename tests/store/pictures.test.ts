@@ -42,7 +42,7 @@ function pictured(): Analysis {
     stepY: 1,
     low: -0.5,
     high: 0.75,
-    image: Uint8Array.of(7, 0, 9),
+    image: Uint8Array.of(0x52, 0x49, 0x46, 0x46, 7, 0, 9),
   };
   return {
     ...a,
@@ -69,7 +69,7 @@ function expectPictures(from: Db, id: number): void {
   expect(hasPictures(from, id)).toBe(true);
   const p = readPreview(from, id, 0, "phase");
   expect(p).toMatchObject({ rows: 2, cols: 3, step_x: 1, step_y: 1, low: -0.5, high: 0.75 });
-  expect(Array.from(p?.image ?? [])).toEqual([7, 0, 9]);
+  expect(Array.from(p?.image ?? [])).toEqual([0x52, 0x49, 0x46, 0x46, 7, 0, 9]);
   expect(readPreview(from, id, 0, "amplitude")).toBeNull();
   const b = readProfileBins(from, id, 0, 0, 0);
   expect(b).toMatchObject({ wNm: 38.5, sigmaNm: 12.75 });

@@ -15,6 +15,7 @@ function stored(): Db {
   migrate(db, ":memory:");
   saveAnalysis(db, sampleAnalysis(), NOW);
   saveAnalysis(db, sampleAnalysis({ name: "other", images: "c", frames: 4 }), NOW);
+  db.exec("INSERT INTO preview VALUES (1, 0, 'amplitude', 1, 3, 1, 2, 0, 1, CAST('RIFF…' AS BLOB))");
   return db;
 }
 
@@ -143,6 +144,9 @@ const FAULTS: [change: string, check: RegExp, words: RegExp][] = [
     /^what is described/,
     /other, analysis 2: an image file of SHA-256 c+… is not among/,
   ],
+  ["UPDATE preview SET step_y = 1", /^previews are/, /frame 0: amplitude: 1 × 3 boxes of 1 × 1 for 2 × 3 pixels/],
+  ["UPDATE preview SET image_cols = 4", /^previews are/, /1 × 4 boxes of 2 × 1 for 2 × 3/],
+  ["UPDATE preview SET image = x'00'", /^previews are/, /frame 0: amplitude/],
   ["DELETE FROM frame WHERE frame = 0 AND analysis_id = 1", /^foreign keys/, /rows of wall have no row in frame/],
   ["DROP INDEX notice_by_analysis", /^tables and views/, /notice_by_analysis is missing/],
   ["CREATE TABLE extra (x)", /^tables and views/, /extra is not part/],
