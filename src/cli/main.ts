@@ -89,12 +89,18 @@ function build(): Command {
     .option("--profile <n>", "for wall: the profile along it")
     .option("--stretch <n>", "for fringe and orbit: the stretch along it")
     .addOption(
-      new Option("--channel <channel>", "for frames: what to show (default: amplitude)")
-        .choices(["amplitude", "phase", "topography", "states"]),
+      new Option("--channel <channel>", "for frames: what to show (default: amplitude)").choices([
+        "amplitude",
+        "phase",
+        "topography",
+        "states",
+      ]),
     )
     .option("--width-mm <mm>", "width of the figure", "86")
     .option("--dpi <n>", "dots an inch of a .png", "300")
-    .addOption(new Option("--style <style>", "dark on light, or light on dark").choices(["paper", "screen"]).default("paper"))
+    .addOption(
+      new Option("--style <style>", "dark on light, or light on dark").choices(["paper", "screen"]).default("paper"),
+    )
     .option("--data <file>", "also write the figure's numbers, as CSV")
     .action(async (kind: string, o: object) => (await import("./figure.js")).figure(kind, o as never));
 

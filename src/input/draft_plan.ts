@@ -58,12 +58,12 @@ export function planSeries(images: readonly FoundImage[]): Plan {
   const series: PlannedSeries[] = [];
   const inSeries = (p: Placed): string => `${p.found.parts.cycle} ${p.found.parts.branch}`;
   for (const list of groupBy(single, inSeries).values()) {
-    const { branch = null, cycle = null } = list[0]?.found.parts ?? {};
+    const { branch, cycle } = list[0].found.parts;
     const tables = tablesOf(list, branch, leave);
     if (tables.length > 0) series.push({ branch, cycle, tables, stacks: null });
   }
   for (const list of groupBy(stacked, inSeries).values()) {
-    const { branch = null, cycle = null } = list[0]?.found.parts ?? {};
+    const { branch, cycle } = list[0].found.parts;
     for (const stacks of stacksOf(list, leave)) series.push({ branch, cycle, tables: [], stacks });
   }
   const rank = (s: PlannedSeries): number =>

@@ -28,6 +28,7 @@ export function description(c: Cooldown, images: readonly string[] | null = null
     photonEnergyMeV: c.photonEnergyMeV,
     filmThicknessNm: c.filmThicknessNm,
     amplitudeUnit: c.amplitudeUnit,
+    amplitudeHarmonic: c.amplitudeHarmonic ?? null,
     frames: c.frames.map((f, k) => ({
       ...f,
       ...(images === null ? {} : { imagesSha256: images[k] }),

@@ -10,7 +10,22 @@ import { scoreCooldown } from "../../src/study/score.js";
 import { TABLES } from "../../src/tables/columns.js";
 import { coldseam, coldseamInterrupted, TOP } from "./program.js";
 
-const COMMANDS = ["check", "ingest", "cooldowns", "loops", "walls", "export", "settings", "demo"];
+const COMMANDS = [
+  "check",
+  "draft",
+  "ingest",
+  "cooldowns",
+  "loops",
+  "walls",
+  "export",
+  "figure",
+  "tip",
+  "verify",
+  "forget",
+  "merge",
+  "settings",
+  "demo",
+];
 
 let dir: string;
 let db: string;

@@ -12,8 +12,14 @@ let found: Found;
 
 /** One frame of one state with four particles under a 30 nm tip. */
 const particle = (xNm: number, yNm: number, radiusNm: number, amplitudeFactor: number) => ({
-  ...{ xNm, yNm, radiusNm, amplitudeFactor },
-  ...{ lengthNm: 0, angleDeg: 0, heightNm: 12, phaseShiftRad: 0.2 },
+  xNm,
+  yNm,
+  radiusNm,
+  amplitudeFactor,
+  lengthNm: 0,
+  angleDeg: 0,
+  heightNm: 12,
+  phaseShiftRad: 0.2,
 });
 
 beforeAll(() => {
