@@ -1,6 +1,6 @@
 import type { Notice } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
-import { plainText } from "../model/text.js";
+import { countOf, plainText } from "../model/text.js";
 import { describeCooldown, inspectFrame, loadFrame, surveyCooldown } from "../input/index.js";
 import { print, say } from "./say.js";
 
@@ -28,7 +28,7 @@ export async function check(yaml: string, o: CheckOptions): Promise<void> {
   for (const n of notices) say(`note: ${n.frame === null ? "" : `frame ${n.frame}: `}${plainText(n.message)}`);
   if (problems.length > 0) throw new InputError(problems);
   print(
-    `ready: ${frames.length} frames read, ${notices.length === 0 ? "nothing to remark" : `${notices.length} remarks`}\n`,
+    `ready: ${frames.length} frames read, ${notices.length === 0 ? "nothing to remark" : countOf(notices.length, "remark")}\n`,
   );
   print(`next: coldseam ingest ${plainText(yaml)} --db FILE.sqlite\n`);
 }

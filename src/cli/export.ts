@@ -1,3 +1,4 @@
+import path from "node:path";
 import { createWriteStream, rmSync, renameSync } from "node:fs";
 import { pipeline } from "node:stream/promises";
 import { Readable } from "node:stream";
@@ -32,6 +33,7 @@ export async function exportTable(name: string, o: ExportOptions): Promise<void>
       await pipeline(chunks, process.stdout, { end: false });
       return;
     }
+    refuseUnlikely(o.out, o.format);
     const beside = `${o.out}.part`;
     try {
       await pipeline(chunks, createWriteStream(beside));
@@ -51,4 +53,13 @@ export async function exportTable(name: string, o: ExportOptions): Promise<void>
   } finally {
     db.close();
   }
+}
+
+/** A table may only replace a table: a slip in `--out` must not cost a database or an image. */
+function refuseUnlikely(out: string, format: Format): void {
+  if (out.toLowerCase().endsWith(`.${format}`) || out.toLowerCase().endsWith(".txt")) return;
+  throw new UsageError(
+    `--out ${out}: expected a name that ends in .${format}`,
+    `for example --out ${path.basename(out, path.extname(out))}.${format}; other files are never written over`,
+  );
 }

@@ -1,3 +1,4 @@
+import { plainText } from "../model/text.js";
 import { renameSync, rmSync, writeFileSync } from "node:fs";
 import path from "node:path";
 import {
@@ -60,8 +61,8 @@ export async function figure(kind: string, o: FigureCommandOptions): Promise<voi
     db.close();
   }
   write(o.out, format === ".svg" ? svgDocument(made) : await pngOf(made, dpi));
-  say(`${made.title}: written to ${o.out}`);
-  for (const note of made.notes) say(`  ${note}`);
+  say(`${plainText(made.title)}: written to ${plainText(o.out)}`);
+  for (const note of made.notes) say(`  ${plainText(note)}`);
   if (o.data !== undefined) {
     write(o.data, csvOf(made.table));
     say(`its numbers: ${o.data}`);

@@ -37,6 +37,9 @@ export function loopText(a: Analysis): string {
     `  walls: ${sound.length} sound profiles of ${profiles.length}, ${sound.filter((p) => p.widthNm !== null).length} resolved; ` +
       `fringes on ${fringes.filter((t) => t.detected).length} of ${fringes.length} stretches tested; ${a.domains.length} domains tracked`,
   );
+  const flags = new Map<string, number>();
+  for (const p of profiles) if (p.flag !== "") flags.set(p.flag, (flags.get(p.flag) ?? 0) + 1);
+  if (flags.size > 0) lines.push(`  left out of the widths: ${[...flags].map(([k, n]) => `${n} ${k}`).join(", ")}`);
   return `${lines.join("\n")}\n`;
 }
 

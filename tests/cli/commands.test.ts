@@ -116,6 +116,11 @@ describe("the demo's small copy, through the front door", () => {
     const bad = coldseam("export", "loops", "--db", db, "--out", path.join(dir, "no/such/folder.csv"));
     expect(bad.code).toBe(1);
     expect(bad.err).toContain("cannot be written");
+    const before = readFileSync(db);
+    const slip = coldseam("export", "loops", "--db", db, "--out", db);
+    expect(slip.code).toBe(2);
+    expect(slip.err).toContain("expected a name that ends in .csv");
+    expect(readFileSync(db).equals(before)).toBe(true);
   });
 
   test("loops and walls print within 80 columns", () => {
