@@ -58,7 +58,7 @@ export function halfPoint(b: BranchData): Crossing | null {
  *  again, and the crossing drawn inside its gap. NaN where the repetition does not cross.
  *
  *  Parametric draws because the bootstrap of an isotonic regression is inconsistent on flat parts. Inside a gap from f_1 to f_2 nothing
- *  was measured: the course there is a random rising one (a Dirichlet process, Ferguson 1973, Ann. Stat. 1, 209), whose concentration
+ *  was measured: the curve there is a random rising one (a Dirichlet process, Ferguson 1973, Ann. Stat. 1, 209), whose concentration
  *  goes to 0 as f_2 − f_1 → 1: after a jump from 0 to 1 the crossing is anywhere inside, with equal chances; after a small step it is
  *  near the straight line. */
 export function drawHalf(b: BranchData, fit: Float64Array, smoothness: number, random: Random): number {

@@ -2,7 +2,7 @@ import { choleskyInPlace, choleskyInvert } from "../../numerics/cholesky.js";
 
 /** A quantity that changes slowly along temperature, known from scattered measurements. */
 export interface Course {
-  /** Value and standard deviation of the course at a temperature (no scatter of single frames in it). */
+  /** Value and standard deviation of the curve at a temperature (no scatter of single frames in it). */
   at(temperatureK: number): { readonly mean: number; readonly sd: number };
 }
 

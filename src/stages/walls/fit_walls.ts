@@ -8,7 +8,7 @@ import { Projector, type Direction } from "./direction.js";
 import { estimateWithTip, estimateWithoutTip, type ProfileEstimate } from "./estimate.js";
 import { flagOf, type Surroundings } from "./flags.js";
 import { fringeAlarms, type PhaseTurn } from "./fringe_alarm.js";
-import { freeReach, nearestWall, segmentsOf, type NearestWall, type Segments } from "./nearest.js";
+import { freeReach, nearestWall, segmentsOf, type NearestWall, type Segments } from "../../raster/nearest_wall.js";
 import { drawnProfile } from "./picture.js";
 import { ProfileData } from "./profile_data.js";
 import { PARAMETERS, ProfileFitter, type SigmaPrior } from "./profile_fit.js";

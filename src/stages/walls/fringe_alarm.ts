@@ -2,7 +2,7 @@ import { chi2UpperTail } from "../../numerics/distributions.js";
 import { kink } from "../../numerics/kink.js";
 import type { CorrelatedNoise } from "./correlation.js";
 import type { Projector } from "./direction.js";
-import type { NearestWall } from "./nearest.js";
+import type { NearestWall } from "../../raster/nearest_wall.js";
 import type { Stretches } from "./stretches.js";
 
 export interface AlarmOptions {

@@ -1,5 +1,5 @@
 import type { Wall } from "../../model/walls.js";
-import type { NearestWall, Segments } from "./nearest.js";
+import type { NearestWall, Segments } from "../../raster/nearest_wall.js";
 
 /** One piece of a wall and the pixels that belong to it. */
 export interface Stretch {
