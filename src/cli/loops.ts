@@ -33,7 +33,8 @@ export function loops(o: SelectOptions & { format: string }): void {
       print(
         `  loop width                 ${intervalText(num(r, "width_K"), num(r, "width_low_K"), num(r, "width_high_K"), "K", 2)}\n`,
       );
-      print(`  loop area                  ${fixed(num(r, "area_K"), 2)} K\n`);
+      const area = num(r, "area_K");
+      print(`  loop area                  ${area === null ? "none" : `${area.toFixed(2)} K`}\n`);
       print(
         `  metallic fraction from ${fixed(num(r, "lowest_fraction"), 3)} to ${fixed(num(r, "highest_fraction"), 3)}: ` +
           `${r["complete"] === 1 ? "a complete loop" : "not a complete loop; its width is not the major loop's"}\n`,

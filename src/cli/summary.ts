@@ -13,7 +13,7 @@ export function intervalText(
   unit: string,
   digits = 1,
 ): string {
-  if (v === null) return "not reached";
+  if (v === null) return "none (no such series, or one half not crossed)";
   const range = low === null || high === null ? "" : ` (${low.toFixed(digits)} to ${high.toFixed(digits)})`;
   return `${v.toFixed(digits)} ${unit}${range}`;
 }

@@ -18,7 +18,7 @@ export function describeCooldown(c: Cooldown): string[] {
   lines.push(
     c.tip === null
       ? "  tip: resolution not given, so only apparent wall widths"
-      : `  tip: ${c.tip.resolutionNm} ± ${c.tip.resolutionSdNm} nm (full width at half maximum)`,
+      : `  tip: ${c.tip.resolutionNm} ${c.tip.resolutionSdNm > 0 ? `± ${c.tip.resolutionSdNm} nm` : "nm, taken as exact,"} (full width at half maximum)`,
   );
   lines.push(c.photonEnergyMeV === null ? "  light: not given" : `  light: ${lightText(c.photonEnergyMeV)}`);
   if (c.filmThicknessNm !== null) lines.push(`  film: ${c.filmThicknessNm} nm thick`);

@@ -127,6 +127,13 @@ function unusable(channel: ChannelName, r: Range): Omit<Problem, "at"> | null {
   if (r.measured === 0) {
     return { problem: "amplitude without a single measured pixel", fix: "leave this frame out, or give its image" };
   }
+  if (r.negative > 0.9 * r.measured) {
+    const problem = `amplitude below zero in ${percent(r.negative / r.measured)} of its pixels, and an amplitude has no sign`;
+    return {
+      problem,
+      fix: "name the amplitude's own image; a signed component belongs under `real`, with `imaginary`",
+    };
+  }
   if (r.low.value === r.high.value) {
     const problem = `amplitude with one value, ${r.low.value}, in all ${r.measured} measured pixels`;
     return { problem, fix: "leave this frame out, or give its image" };

@@ -123,6 +123,8 @@ describe("oddities are told and do not stop it", () => {
     ]);
     const swapped = raster((k) => amplitude.values.data[k] - 1.2);
     expect(told({ amplitude: swapped })).toEqual([expect.stringMatching(/below zero; is it the amplitude\?$/)]);
+    const signed = raster((k) => -amplitude.values.data[k]);
+    expect(() => told({ amplitude: signed })).toThrow(/below zero in 100(\.0)? % of its pixels/);
   });
 
   test("a phase in degrees taken for radians; a wrapped or a drifting one is not", () => {
