@@ -14,7 +14,7 @@ export const MAY_IMPORT: Readonly<Record<string, readonly string[]>> = {
   store: ["model", "tables"],
   figures: ["model", "numerics", "tables"],
   demo: ["model", "numerics", "raster", "input"],
-  study: ["model", "numerics", "input", "settings.ts", "analyse.ts", "tables", "store", "demo"],
+  study: ["model", "numerics", "input", "settings.ts", "analyse.ts", "stages", "workers", "tables", "store", "demo"],
   cli: ["model", "numerics", "raster", "input", "stages", "settings.ts", "workers", "analyse.ts"].concat([
     "tables",
     "store",

@@ -10,6 +10,10 @@ export interface Condition {
 const COOLING_K = [190, 172, 163, 157, 152, 147, 141, 120];
 const WARMING_K = [122, 146, 154, 159, 163, 168, 175, 192];
 
+/** From one temperature to another in steps of 1.5 K. */
+const fine = (fromK: number, toK: number): number[] =>
+  Array.from({ length: Math.abs(toK - fromK) / 1.5 + 1 }, (_, k) => fromK + Math.sign(toK - fromK) * 1.5 * k);
+
 /** Smaller than a laboratory's frames, so that many can be run: 128 × 128 pixels of 10 nm, 2 × 8 temperatures. */
 const BASE: SpecOverrides = {
   rows: 128,
@@ -74,6 +78,17 @@ export const CONDITIONS: readonly Condition[] = [
       domains: { scaleNm: 330 },
       rows: 192,
       cols: 192,
+    },
+  },
+  {
+    name: "fine-steps",
+    what: "temperatures 1.5 K apart, drift of 60 nm between frames: domain events",
+    spec: {
+      series: [
+        { branch: "cooling", temperaturesK: fine(160.5, 144) },
+        { branch: "warming", temperaturesK: fine(151.5, 168) },
+      ],
+      drift: { stepSdNm: 60, jumpChance: 0 },
     },
   },
 ];

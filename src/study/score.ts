@@ -2,6 +2,7 @@ import type { CooldownTruth, FrameTruth } from "../demo/index.js";
 import { tableNamed, type ExportedTable } from "../tables/columns.js";
 import { readTable, type Cell, type Row } from "../store/read.js";
 import type { Db } from "../store/open.js";
+import type { EventScore } from "./event_score.js";
 
 /** One estimate beside its truth. `sd` or the interval is what the program claims of it. */
 export interface Estimate {
@@ -15,8 +16,10 @@ export interface Score {
   /** Error of each axis in pixels of that axis, with the claimed sd in pixels; the reference frame left out. */
   readonly driftPx: readonly Estimate[];
   readonly framesNotPlaced: number;
-  /** Against the debris-free measured pixels. */
+  /** Against the truth over the pixels that the program gave a state. */
   readonly fraction: readonly Estimate[];
+  /** The same of frames of both states only: theirs is an interval, that of one state a limit. */
+  readonly mixedFraction: readonly Estimate[];
   readonly framesUndecided: number;
   readonly singleStateFrames: number;
   /** Among frames of one state: those whose fraction is not exactly 0 or 1, and profiles found in them. */
@@ -43,6 +46,8 @@ export interface Score {
   /** Relative errors where reported. */
   readonly period: readonly Estimate[];
   readonly decay: readonly Estimate[];
+  /** Births, deaths, splits and merges; null where nobody asked. */
+  readonly events: EventScore | null;
 }
 
 const LEAST_PROFILES = 5;
@@ -64,8 +69,16 @@ function estimate(
 const withSd = (found: number | null, truth: number, sd: number | null, scale: number): Estimate[] =>
   found === null ? [] : [{ error: (found - truth) / scale, sd: sd === null ? null : sd / scale, covered: null }];
 
-/** Reads the tables of the truth's cooldown back from the database and sets them beside the truth. */
-export function scoreCooldown(db: Db, truth: CooldownTruth): Score {
+/** What only the simulator knows, or only the analysis in memory. */
+export interface Beside {
+  /** True metallic fractions over the pixels that were given a state, one a frame. */
+  readonly fractions: readonly (number | null)[];
+  readonly events: EventScore;
+}
+
+/** Reads the tables of the truth's cooldown back from the database and sets them beside the truth.
+ *  @param beside without it the fraction is compared over the pixels that the simulator holds free of debris, and events are not scored */
+export function scoreCooldown(db: Db, truth: CooldownTruth, beside?: Beside): Score {
   const rows = (name: string): Row[] => [
     ...readTable(db, tableNamed(name) as ExportedTable, { cooldowns: [truth.cooldown] }),
   ];
@@ -80,8 +93,16 @@ export function scoreCooldown(db: Db, truth: CooldownTruth): Score {
   const fringes = rows("fringes").filter((r) => truthOf(r).singleState === null);
   const detected = fringes.filter((r) => r["detected"] === 1);
   const side = truth.spec.fringe.side;
+  const fractionOf = (r: Row): Estimate[] =>
+    estimate(
+      value(r["metallic_fraction"]),
+      beside === undefined ? truthOf(r).metallicFractionClean : (beside.fractions[r["frame"] as number] ?? null),
+      value(r["metallic_fraction_low"]),
+      value(r["metallic_fraction_high"]),
+    );
 
   return {
+    events: beside?.events ?? null,
     driftPx: later.flatMap((r) => {
       const sd = value(r["drift_sd_nm"]);
       return [
@@ -90,14 +111,8 @@ export function scoreCooldown(db: Db, truth: CooldownTruth): Score {
       ];
     }),
     framesNotPlaced: frames.filter((r) => r["drift_x_nm"] === null).length,
-    fraction: frames.flatMap((r) =>
-      estimate(
-        value(r["metallic_fraction"]),
-        truthOf(r).metallicFractionClean,
-        value(r["metallic_fraction_low"]),
-        value(r["metallic_fraction_high"]),
-      ),
-    ),
+    fraction: frames.flatMap(fractionOf),
+    mixedFraction: frames.filter((r) => truthOf(r).singleState === null).flatMap(fractionOf),
     framesUndecided: frames.filter((r) => r["metallic_fraction"] === null).length,
     singleStateFrames: single.length,
     singleStateWrong: single.filter((r) => r["metallic_fraction"] !== (truthOf(r).singleState === "metallic" ? 1 : 0))

@@ -43,13 +43,13 @@ export function studyTables(results: readonly { condition: Condition; scores: re
   const all = (s: readonly Score[], pick: (x: Score) => readonly Estimate[]): Summary => summarise(s.flatMap(pick));
   const sum = (s: readonly Score[], pick: (x: Score) => number): number => s.reduce((t, x) => t + pick(x), 0);
   const lines: string[] = [
-    "| condition | drift rms / px | worst / px | error/sd rms | fraction bias | worst | covers / % | half T worst / step | covers / % | one-state frames wrong; profiles |",
+    "| condition | drift rms / px | worst / px | error/sd rms | fraction of mixed frames: bias | worst | covers / % | half T worst / step | covers / % | one-state frames wrong; profiles |",
     "| --- | --- | --- | --- | --- | --- | --- | --- | --- | --- |",
   ];
   for (const { condition, scores } of results) {
     const drift = all(scores, (s) => s.driftPx);
     const pulls = scores.flatMap((s) => s.driftPx).flatMap((v) => (v.sd !== null && v.sd > 0 ? [v.error / v.sd] : []));
-    const fraction = all(scores, (s) => s.fraction);
+    const fraction = all(scores, (s) => s.mixedFraction);
     const half = all(scores, (s) => s.halfK);
     const halfWorst = Math.max(...scores.map((s) => largest(s.halfK) / s.stepK));
     lines.push(

@@ -4,9 +4,9 @@ import type { CleanFrame } from "../../model/signal.js";
 import { wrapAngle } from "../../numerics/quantile.js";
 import { flatPixels } from "./flat_pixels.js";
 import { levelSurface } from "./level.js";
-import { clippedShare, measureNoise } from "./noise.js";
+import { clippedShare, measureNoise, type NoiseByLevel } from "./noise.js";
 import { linkRows } from "./row_links.js";
-import { splitRowOffsets } from "./row_model.js";
+import { type RowOffsets, splitRowOffsets } from "./row_model.js";
 import { type Scars, findScars } from "./scars.js";
 import type { CleanSettings } from "./settings.js";
 
@@ -116,7 +116,7 @@ function cleanTopography(
     addRows(values, rows, cols, (i) => -(offsets.white[i] + offsets.outlying[i] + offsets.jumps[i]));
   }
   const scars = findScars(values, null, noise, rows, cols, false, s.scarSigmas, s.scarLeastPixels);
-  for (let p = 0; p < values.length; p++) if (scars.mask[p] === 1) values[p] = Number.NaN;
+  leaveOut(values, scars);
   return { values, scars, rowSdNm, noiseNm: noise.sd };
 }
 
@@ -142,12 +142,20 @@ function cleanSignal(
   // noise can carry a weak amplitude to zero or below: such pixels keep their value, only ratios leave them out
   for (let p = 0; p < log.length; p++) log[p] = amplitude[p] > 0 ? Math.log(amplitude[p]) : Number.NaN;
   const logNoise = measureNoise(log, amplitude, rows, cols, false);
+  const scarsOf = (values: Float32Array, noise: NoiseByLevel, isAngle: boolean): Scars =>
+    findScars(values, amplitude, noise, rows, cols, isAngle, s.scarSigmas, s.scarLeastPixels);
   let rowGainSd = 0;
   let flat: Uint8Array | null = null;
+  let scarred: Scars | null = null;
   if (s.correctRows) {
-    // twice: rows of another gain would look like boundaries to the search for flat pixels
+    // Twice: rows of another gain would look like boundaries to the search for flat pixels. Scars are taken out in between: among all
+    // pixels of a row they are few, among the flat ones of a row full of walls they may be the most.
     for (const pass of [0, 1]) {
-      if (pass === 1) flat = flatPixels(log, amplitude, logNoise, rows, cols);
+      if (pass === 1) {
+        scarred = scarsOf(amplitude, absolute(logNoise), false);
+        leaveOut(log, scarred);
+        flat = flatPixels(log, amplitude, logNoise, rows, cols, rowGainSd);
+      }
       const links = linkRows(log, amplitude, flat, logNoise, rows, cols, false, s.leastRowPixels);
       const offsets = splitRowOffsets(links, rows);
       rowGainSd = Math.hypot(rowGainSd, offsets.whiteSd);
@@ -163,18 +171,35 @@ function cleanSignal(
   if (phase !== null) {
     phaseNoise = measureNoise(phase, amplitude, rows, cols, true);
     if (s.correctRows) {
-      const links = linkRows(phase, amplitude, flat, phaseNoise, rows, cols, true, s.leastRowPixels);
-      const offsets = splitRowOffsets(links, rows);
+      const linked = phase.slice();
+      if (scarred !== null) leaveOut(linked, scarred);
+      const noise = phaseNoise;
+      const align = (values: Float32Array, by: Float32Array, among: Uint8Array | null): RowOffsets => {
+        const offsets = splitRowOffsets(
+          linkRows(by, amplitude, among, noise, rows, cols, true, s.leastRowPixels),
+          rows,
+        );
+        addRows(
+          values,
+          rows,
+          cols,
+          (i) => -(offsets.white[i] + offsets.walk[i] + offsets.outlying[i] + offsets.jumps[i]),
+        );
+        return offsets;
+      };
+      // the rows' gains are now better known than when their boundaries were first looked for
+      flat = flatPixels(log, amplitude, logNoise, rows, cols, rowGainSd);
+      const rough = phase.slice();
+      align(rough, linked, null);
+      leaveOut(linked, scarsOf(rough, phaseNoise, true));
+      const offsets = align(phase, linked, flat);
       rowPhaseSdRad = offsets.whiteSd;
       rowPhaseStepSdRad = offsets.walkSd;
-      addRows(phase, rows, cols, (i) => -(offsets.white[i] + offsets.walk[i] + offsets.outlying[i] + offsets.jumps[i]));
     }
     turnToMean(phase);
   }
-  let scars = findScars(amplitude, amplitude, absolute(logNoise), rows, cols, false, s.scarSigmas, s.scarLeastPixels);
-  if (phase !== null && phaseNoise !== null) {
-    scars = join(scars, findScars(phase, amplitude, phaseNoise, rows, cols, true, s.scarSigmas, s.scarLeastPixels));
-  }
+  let scars = scarsOf(amplitude, absolute(logNoise), false);
+  if (phase !== null && phaseNoise !== null) scars = join(scars, scarsOf(phase, phaseNoise, true));
   for (let p = 0; p < amplitude.length; p++) {
     if (scars.mask[p] === 0) continue;
     amplitude[p] = Number.NaN;
@@ -197,6 +222,10 @@ function cleanSignal(
     const typical = relative.low;
     return { ...relative, sds: relative.sds.map((sd, b) => sd * centre(b)) };
   }
+}
+
+function leaveOut(values: Float32Array, scars: Scars): void {
+  for (let p = 0; p < values.length; p++) if (scars.mask[p] === 1) values[p] = Number.NaN;
 }
 
 function join(a: Scars, b: Scars): Scars {

@@ -1,4 +1,4 @@
-import { median } from "../../numerics/quantile.js";
+import { median, medianInPlace } from "../../numerics/quantile.js";
 import { type NoiseByLevel, sdAt } from "./noise.js";
 
 /** Half windows compared: rows above and below, columns to either side. The small one sees sharp walls, the large one wide ones. */
@@ -9,11 +9,15 @@ const SCALES = [
 const SIGMAS = 3.5;
 /** The large window is given up where it leaves less than this share of the pixels. */
 const LEAST_SHARE = 0.25;
+/** A step that all pixels of a row share is the rows' own, up to this many standard deviations of their scatter. */
+const ROW_SIGMAS = 3;
 
 /** Pixels with no state boundary above or below them: the mean of the logarithm of the amplitude over a box of rows above equals
  *  that below within the noise. Differences from row to row over these pixels are offsets of the rows and not domains. A
- *  boundary that runs along the columns does not matter to such differences and is not excluded.
+ *  boundary that runs along the columns does not matter to such differences and is not excluded. A step that a whole row shares is no
+ *  boundary where the scatter of the rows explains it.
  *  @param logAmplitude row-major [rows, cols], NaN = not measured
+ *  @param rowSd scatter of the rows' logarithmic gains, as it was before they were aligned
  *  @returns 1 = flat, 0 = not, or not to be told */
 export function flatPixels(
   logAmplitude: Float32Array,
@@ -21,10 +25,11 @@ export function flatPixels(
   noise: NoiseByLevel,
   rows: number,
   cols: number,
+  rowSd: number,
 ): Uint8Array {
   const sums = integral(logAmplitude, rows, cols);
-  const small = flatAtScale(sums, amplitude, noise, rows, cols, SCALES[0]);
-  const large = flatAtScale(sums, amplitude, noise, rows, cols, SCALES[1]);
+  const small = flatAtScale(sums, amplitude, noise, rows, cols, SCALES[0], rowSd);
+  const large = flatAtScale(sums, amplitude, noise, rows, cols, SCALES[1], rowSd);
   let both = 0;
   for (let p = 0; p < large.length; p++) if ((large[p] &= small[p]) === 1) both++;
   return both >= LEAST_SHARE * rows * cols ? large : small;
@@ -63,9 +68,14 @@ function flatAtScale(
   rows: number,
   cols: number,
   scale: { readonly rows: number; readonly cols: number },
+  rowSd: number,
 ): Uint8Array {
   const width = cols + 1;
   const step = new Float32Array(rows * cols).fill(Number.NaN);
+  const difference = new Float64Array(cols);
+  const sds = new Float64Array(cols);
+  const scratch = new Float64Array(cols);
+  const mostShared = ROW_SIGMAS * rowSd * Math.sqrt(2 / scale.rows);
   const sample: number[] = [];
   for (let i = 0; i < rows; i++) {
     // at the frame's edge the window on that side shrinks, down to the pixel's own row
@@ -73,8 +83,10 @@ function flatAtScale(
     const upper = Math.max(1, i) * width;
     const lower = Math.min(rows - 1, i + 1) * width;
     const bottom = Math.min(rows, i + 1 + scale.rows) * width;
+    let told = 0;
     for (let j = 0; j < cols; j++) {
       const p = i * cols + j;
+      difference[j] = Number.NaN;
       const l = Math.max(0, j - scale.cols);
       const r = Math.min(cols, j + scale.cols + 1);
       const nUp = count[upper + r] - count[upper + l] - count[top + r] + count[top + l];
@@ -87,8 +99,17 @@ function flatAtScale(
       }
       const up = sum[upper + r] - sum[upper + l] - sum[top + r] + sum[top + l];
       const down = sum[bottom + r] - sum[bottom + l] - sum[lower + r] + sum[lower + l];
-      const sd = sdAt(noise, amplitude[p]) * Math.sqrt(1 / nUp + 1 / nDown);
-      step[p] = sd > 0 ? (down / nDown - up / nUp) / sd : 0;
+      sds[j] = sdAt(noise, amplitude[p]) * Math.sqrt(1 / nUp + 1 / nDown);
+      difference[j] = down / nDown - up / nUp;
+      scratch[told++] = difference[j];
+    }
+    if (told === 0) continue;
+    const shared = medianInPlace(scratch, told);
+    const rowStep = Math.max(-mostShared, Math.min(mostShared, shared));
+    for (let j = 0; j < cols; j++) {
+      if (Number.isNaN(difference[j])) continue;
+      const p = i * cols + j;
+      step[p] = sds[j] > 0 ? (difference[j] - rowStep) / sds[j] : 0;
       if (p % 11 === 0) sample.push(Math.abs(step[p]));
     }
   }

@@ -4,7 +4,7 @@ import { METALLIC, INSULATING, type DomainMap, type Drift } from "../../../src/m
 import { makeRandom } from "../../../src/numerics/random.js";
 import { labelDomains, settings, trackDomains } from "../../../src/stages/domains/index.js";
 import { randomField } from "./maps.js";
-import { answered, eventsBetween, eventsOf, type DomainEvent } from "./truth.js";
+import { answered, eventsBetween, eventsOf, type DomainEvent } from "../../../src/study/domain_events.js";
 
 const s = defaultsOf(settings);
 const tip = { resolutionNm: 30, resolutionSdNm: 0 };

@@ -1,4 +1,4 @@
-import type { FrameDomains, TrackedDomain } from "../../../src/model/domains.js";
+import type { FrameDomains, TrackedDomain } from "../model/domains.js";
 
 /** An event of one domain between frame − 1 and frame, with the pixels (of the reference grid) where it happened. */
 export interface DomainEvent {
