@@ -15,7 +15,7 @@ interface Disc {
 }
 /** The image: a formula with seeded noise, values 0 … 255. */
 const { image } = fixture<{ image: number[][] }>("segmentation");
-/** What scikit-image 0.19.3 finds on it at level 120.5, low values joined through saddles; and clean discs. */
+/** Source: what scikit-image 0.19.3 finds on it at level 120.5, low values joined through saddles; and clean discs. */
 const published = fixture<{
   contours: [number, number, boolean, number | null][];
   total_length_px: number;

@@ -6,7 +6,8 @@ import { FWHM_PER_SIGMA } from "../../src/model/units.js";
 import { settings, traceWalls } from "../../src/stages/walls/index.js";
 import { fixture } from "./fixture.js";
 
-/** Radius of the 50 % contour of a disc of radius R under a Gaussian of standard deviation 1: mpmath radial quadrature. */
+/** Source: radius of the 50 % contour of a disc of radius R under a Gaussian of standard deviation 1 by radial quadrature (mpmath, 22
+ *  digits); for large R it is R − 1/(2R), the curvature motion of the heat equation, and below √(2 ln 2) there is none. */
 const published = fixture<{ columns: string[]; rows: number[][]; vanishing_radius_over_sigma: number }>("disc_blur");
 const column = (row: number[], name: string): number => row[published.columns.indexOf(name)];
 

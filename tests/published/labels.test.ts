@@ -4,7 +4,7 @@ import { INSULATING, METALLIC } from "../../src/model/signal.js";
 import { labelDomains, settings } from "../../src/stages/domains/index.js";
 import { fixture } from "./fixture.js";
 
-/** Source of the values: fixtures/segmentation.json (scikit-image and SciPy). */
+/** Source: a seeded map, labelled by scikit-image 0.19.3 (measure.label, euler_number) and by SciPy's ndimage, which agree. */
 interface Counted {
   count: number;
   count_of_the_rest_in_the_dual_connectivity: number;

@@ -5,7 +5,9 @@ import { makeRandom } from "../../src/numerics/random.js";
 import { labelDomains, settings } from "../../src/stages/domains/index.js";
 import { fixture } from "./fixture.js";
 
-/** Source of the values: fixtures/percolation.json, where each says how it was obtained. */
+/** Sources: threshold 0.59274605 of site percolation on the square lattice (Jacobsen 2015, J. Phys. A 48, 454003), 1 − that for eight
+ *  neighbours (duality); τ = 187/91, d = 91/48 (Stauffer & Aharony 1994); crossing by Cardy 1992, J. Phys. A 25, L201; counts of small
+ *  maps by enumeration. */
 interface Published {
   thresholds: { site_square_4: number; site_square_8: number };
   exponents: { tau: number; fractal_dimension: number };
