@@ -23,8 +23,8 @@ beforeAll(async () => {
     cols: 128,
     seed: 77,
     series: [
-      { branch: "cooling", temperaturesK: [175, 150, 146, 120] },
-      { branch: "warming", temperaturesK: [122, 151, 155, 178] },
+      { branch: "cooling", temperaturesK: [172, 152, 148, 144, 124] },
+      { branch: "warming", temperaturesK: [128, 148, 152, 156, 176] },
     ],
     transition: { coolingHalfK: COOLING_HALF_K, warmingHalfK: WARMING_HALF_K },
     wall: { widthNm: WALL_NM },
