@@ -13,12 +13,14 @@ export const MAY_IMPORT: Readonly<Record<string, readonly string[]>> = {
   tables: ["model"],
   store: ["model", "tables"],
   figures: ["model", "numerics", "tables"],
+  report: ["model", "numerics", "tables", "figures"],
   demo: ["model", "numerics", "raster", "input"],
   study: ["model", "numerics", "input", "settings.ts", "analyse.ts", "stages", "workers", "tables", "store", "demo"],
   cli: ["model", "numerics", "raster", "input", "stages", "settings.ts", "workers", "analyse.ts"].concat([
     "tables",
     "store",
     "figures",
+    "report",
     "demo",
     "study",
   ]),
@@ -34,6 +36,9 @@ const ONLY_IN: Readonly<Record<string, string>> = {
 /** Folders of pure values: no files, processes or threads, so nothing of Node's own. */
 const WITHOUT_NODE: readonly string[] = ["model", "numerics", "stages", "tables", "figures"];
 
+/** The browser's side of the report: nothing but its own bundle imports from it, and it has no Node. What both sides share lies beside it. */
+const PAGE = "report/page/";
+
 /** Every breach of the rules as a line of text. `files`: path below `src/` with forward slashes → TypeScript text. */
 export function breaches(files: ReadonlyMap<string, string>): string[] {
   const found: string[] = [];
@@ -47,7 +52,7 @@ export function breaches(files: ReadonlyMap<string, string>): string[] {
     for (const specifier of importsOf(text)) {
       const problem = specifier.startsWith(".")
         ? ownBreach(files, file, top, allowed, specifier)
-        : outsideBreach(top, specifier);
+        : outsideBreach(file.startsWith(PAGE) ? PAGE : top, specifier);
       if (problem) found.push(`${file}: ${specifier}: ${problem}`);
     }
   }
@@ -64,6 +69,8 @@ function ownBreach(
   const target = posix.join(posix.dirname(file), specifier).replace(/\.js$/, ".ts");
   if (target.startsWith("../")) return "leads out of src";
   if (!files.has(target)) return "there is no such file";
+  if (target.startsWith(PAGE) && !file.startsWith(PAGE))
+    return "only the page itself may import what runs in the browser";
   const [folder, stage, inside] = target.split("/");
   if (folder !== top) {
     if (!allowed.includes(folder)) return `${top} may not import ${folder}`;
@@ -77,7 +84,7 @@ function ownBreach(
 
 function outsideBreach(top: string, specifier: string): string | null {
   if (specifier.startsWith("node:")) {
-    return WITHOUT_NODE.includes(top) ? `${top} may not use Node's own modules` : null;
+    return WITHOUT_NODE.includes(top) || top === PAGE ? `${top} may not use Node's own modules` : null;
   }
   const name = specifier
     .split("/")

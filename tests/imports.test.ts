@@ -52,6 +52,9 @@ describe("import directions", () => {
     ["tables/format.ts", `import { open } from "../store/open.js";`, "tables may not import store"],
     ["tables/format.ts", `import Database from "better-sqlite3";`, "better-sqlite3 belongs in store"],
     ["store/open.ts", `import { Command } from "commander";`, "commander belongs in cli"],
+    ["report/pack.ts", `import { open } from "../store/open.js";`, "report may not import store"],
+    ["report/pack.ts", `import { start } from "./page/main.js";`, "only the page itself may import"],
+    ["report/page/main.ts", `import { readFileSync } from "node:fs";`, "may not use Node's own modules"],
     ["demo/index.ts", `import { analyse } from "../analyse.js";`, "demo may not import analyse.ts"],
     ["cli/main.ts", `import { x } from "../nowhere.js";`, "there is no such file"],
     ["cli/main.ts", `import { x } from "../../tests/import_rules.js";`, "leads out of src"],
@@ -66,7 +69,7 @@ describe("import directions", () => {
           "stages/walls/settings.ts",
           "stages/states/index.ts",
         ])
-        .concat(["store/open.ts", "cli/main.ts", "raster/opencv.ts"])
+        .concat(["store/open.ts", "cli/main.ts", "raster/opencv.ts", "report/pack.ts", "report/page/main.ts"])
         .map((path) => [path, ""]),
     );
     expect(breaches(tree)).toEqual([]);

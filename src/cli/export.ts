@@ -1,14 +1,14 @@
 import path from "node:path";
-import { createWriteStream, rmSync, renameSync } from "node:fs";
 import { pipeline } from "node:stream/promises";
 import { Readable } from "node:stream";
-import { InputError, UsageError } from "../model/errors.js";
+import { UsageError } from "../model/errors.js";
 import { readTable } from "../store/read.js";
 import { TABLES, tableNamed } from "../tables/columns.js";
 import { formatTable, type Format } from "../tables/format.js";
 import { openSelected, type SelectOptions } from "./select.js";
 import { say } from "./say.js";
 import { closestWord } from "../model/text.js";
+import { writeFile } from "./write_file.js";
 
 interface ExportOptions extends SelectOptions {
   readonly format: Format;
@@ -28,27 +28,13 @@ export async function exportTable(name: string, o: ExportOptions): Promise<void>
   }
   const { db, selection } = openSelected(o);
   try {
-    const chunks = Readable.from(formatTable(table, readTable(db, table, selection), o.format));
+    const text = formatTable(table, readTable(db, table, selection), o.format);
     if (o.out === undefined) {
-      await pipeline(chunks, process.stdout, { end: false });
+      await pipeline(Readable.from(text), process.stdout, { end: false });
       return;
     }
     refuseUnlikely(o.out, o.format);
-    const beside = `${o.out}.part`;
-    try {
-      await pipeline(chunks, createWriteStream(beside));
-      renameSync(beside, o.out);
-    } catch (e) {
-      rmSync(beside, { force: true });
-      throw new InputError(
-        {
-          at: o.out,
-          problem: `cannot be written: ${e instanceof Error ? e.message : String(e)}`,
-          fix: "name a file in a folder that exists and may be written",
-        },
-        e,
-      );
-    }
+    writeFile(o.out, text);
     say(`${table.name}: written to ${o.out}`);
   } finally {
     db.close();

@@ -1,5 +1,4 @@
 import { plainText } from "../model/text.js";
-import { renameSync, rmSync, writeFileSync } from "node:fs";
 import path from "node:path";
 import {
   ptFromMm,
@@ -9,13 +8,14 @@ import {
   type FigureOptions,
   type FigureTable,
 } from "../figures/index.js";
-import { InputError, UsageError } from "../model/errors.js";
+import { UsageError } from "../model/errors.js";
 import { closestWord } from "../model/text.js";
 import { formatTable } from "../tables/format.js";
 import { FIGURE_KINDS, gatherFigure, type FigureChoice } from "./figure_data.js";
 import { pngOf } from "./figure_images.js";
 import { say } from "./say.js";
 import { openSelected, type SelectOptions } from "./select.js";
+import { writeFile } from "./write_file.js";
 
 export interface FigureCommandOptions extends SelectOptions {
   readonly out: string;
@@ -60,11 +60,11 @@ export async function figure(kind: string, o: FigureCommandOptions): Promise<voi
   } finally {
     db.close();
   }
-  write(o.out, format === ".svg" ? svgDocument(made) : await pngOf(made, dpi));
+  writeFile(o.out, [format === ".svg" ? svgDocument(made) : await pngOf(made, dpi)]);
   say(`${plainText(made.title)}: written to ${plainText(o.out)}`);
   for (const note of made.notes) say(`  ${plainText(note)}`);
   if (o.data !== undefined) {
-    write(o.data, csvOf(made.table));
+    writeFile(o.data, [csvOf(made.table)]);
     say(`its numbers: ${o.data}`);
   }
 }
@@ -111,23 +111,4 @@ function csvOf(table: FigureTable): string {
   const columns = table.columns.map((name) => ({ name, means: "" }));
   const rows = table.rows.map((r) => Object.fromEntries(table.columns.map((c, k) => [c, r[k] ?? null])));
   return [...formatTable({ name: "figure", view: "", row: "", orderBy: [], columns }, rows, "csv")].join("");
-}
-
-/** Written beside and renamed: no half of a file is left behind. */
-function write(file: string, content: string | Uint8Array): void {
-  const beside = `${file}.part`;
-  try {
-    writeFileSync(beside, content);
-    renameSync(beside, file);
-  } catch (e) {
-    rmSync(beside, { force: true });
-    throw new InputError(
-      {
-        at: file,
-        problem: `cannot be written: ${e instanceof Error ? e.message : String(e)}`,
-        fix: "name a file in a folder that exists and may be written",
-      },
-      e,
-    );
-  }
 }

@@ -104,6 +104,11 @@ function build(): Command {
     .option("--data <file>", "also write the figure's numbers, as CSV")
     .action(async (kind: string, o: object) => (await import("./figure.js")).figure(kind, o as never));
 
+  selecting(program.command("report"))
+    .description("write one page, a file of its own, on which to look through the cooldowns")
+    .requiredOption("--out <file>", "an .html; opens in any browser, without a network")
+    .action(async (o: object) => void (await (await import("./report.js")).report(o as never)));
+
   program
     .command("verify")
     .description("check a database from outside: its file, its schema, and what its numbers owe each other")

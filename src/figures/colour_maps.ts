@@ -23,3 +23,7 @@ export const CYCLIC_PHASE_MAP = tabulated((v) =>
 
 /** For heights. */
 export const HEIGHT_MAP = tabulated((v) => fromLch(0.18 + 0.8 * v, 0.012, 80));
+
+/** For widths of walls, drawn as lines with a dark edge over the other maps: from blue over violet to pale pink, away from the greens of the
+ *  amplitude, where the walls lie. */
+export const WIDTH_MAP = tabulated((v) => fromLch(0.5 + 0.42 * v, 0.2 - 0.06 * v, 258 + 92 * v));

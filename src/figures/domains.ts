@@ -1,5 +1,5 @@
 import { countOf } from "../model/text.js";
-import type { Figure, FigureOptions } from "./figure.js";
+import type { Figure, FigureOptions, Place } from "./figure.js";
 import { legend, type LegendItem } from "./legend.js";
 import { marker, type Shape } from "./marks.js";
 import { axes, bottomRoom, clipped, leftRoom, type Panel } from "./panel.js";
@@ -41,6 +41,7 @@ export function domainsFigure(input: DomainsInput, o: FigureOptions): Figure {
   const height = width * 0.42;
   const parts: string[] = [key.svg];
   const rows: Cell[][] = [];
+  const places: Place[] = [];
   let top = key.height + s.textPt + 8;
   let hidden = 0;
   for (const kind of ["metallic", "insulating"]) {
@@ -52,7 +53,12 @@ export function domainsFigure(input: DomainsInput, o: FigureOptions): Figure {
     const colour = kind === "metallic" ? s.metallic : s.insulating;
     const drawn = all.slice(0, MOST_A_KIND).flatMap((d) => {
       const own = input.appearances.filter((r) => must(r, "domain") === must(d, "domain"));
-      for (const r of own)
+      for (const r of own) {
+        places.push({
+          x: panel.x(run.at.get(must(r, "frame")) ?? 0),
+          y: panel.y(must(r, "area_nm2") / 1e6),
+          keys: { domain: must(d, "domain"), frame: must(r, "frame") },
+        });
         rows.push([
           must(d, "domain"),
           kind,
@@ -63,6 +69,7 @@ export function domainsFigure(input: DomainsInput, o: FigureOptions): Figure {
           num(r, "area_nm2"),
           num(r, "touches_border"),
         ]);
+      }
       return [history(d, own, panel, run.at, colour, o)];
     });
     const last = kind === "insulating";
@@ -101,6 +108,7 @@ export function domainsFigure(input: DomainsInput, o: FigureOptions): Figure {
       columns: ["domain", "kind", "origin", "fate", "frame", "temperature_K", "area_nm2", "touches_border"],
       rows,
     },
+    places,
   };
 }
 

@@ -2,6 +2,14 @@ import type { FigureTable } from "./rows.js";
 import type { Style } from "./style.js";
 import { element, escapeXml, pt } from "./svg.js";
 
+/** Where a thing of the tables is drawn, points, by which a page finds what is pointed at. */
+export interface Place {
+  readonly x: number;
+  readonly y: number;
+  /** What identifies it: `frame`, `wall` and `profile`, or `domain`; `cooldown` counts the cooldowns of the drawing. */
+  readonly keys: Readonly<Record<string, number>>;
+}
+
 /** A finished drawing. */
 export interface Figure {
   readonly widthPt: number;
@@ -12,6 +20,7 @@ export interface Figure {
   readonly notes: readonly string[];
   readonly body: string;
   readonly table: FigureTable;
+  readonly places?: readonly Place[];
 }
 
 export interface FigureOptions {

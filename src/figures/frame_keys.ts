@@ -4,11 +4,16 @@ import type { ColourScale, Shown } from "./paint.js";
 import { niceTicks, roundBelow, tickLabels } from "./scale.js";
 import { element, group, label, line, pt, textWidth } from "./svg.js";
 
+/** The round length of a bar that is at most so long, and how it is written. */
+export function scaleLength(mostNm: number): { nm: number; text: string } {
+  const nm = roundBelow(mostNm);
+  return { nm, text: nm >= 1000 ? `${Number((nm / 1000).toFixed(2))} µm` : `${nm} nm` };
+}
+
 /** A bar of a round length at the scale of the sheet. */
 export function scaleBar(left: number, top: number, windowNm: number, perNm: number, o: FigureOptions): string {
   const s = o.style;
-  const nm = roundBelow(0.8 * windowNm);
-  const text = nm >= 1000 ? `${Number((nm / 1000).toFixed(2))} µm` : `${nm} nm`;
+  const { nm, text } = scaleLength(0.8 * windowNm);
   const y = top + 3;
   return (
     line(left, y, left + nm * perNm, y, { stroke: s.ink, "stroke-width": 2, "data-length-nm": nm }) +

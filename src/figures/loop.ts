@@ -1,5 +1,5 @@
 import { countOf } from "../model/text.js";
-import type { Figure, FigureOptions } from "./figure.js";
+import type { Figure, FigureOptions, Place } from "./figure.js";
 import { legend, type LegendItem } from "./legend.js";
 import { barPath, lyingBarPath, marker, stroke, type Shape } from "./marks.js";
 import { axes, bottomRoom, leftRoom, type Panel } from "./panel.js";
@@ -47,6 +47,7 @@ export function loopFigure(input: LoopInput, o: FigureOptions): Figure {
   const under: string[] = [];
   const over: string[] = [];
   const rows: Cell[][] = [];
+  const places: Place[] = [];
   names.forEach((name, c) => {
     const own = known.filter((r) => word(r, "cooldown") === name);
     for (const cycle of new Set(own.map((r) => must(r, "cycle")))) {
@@ -64,6 +65,7 @@ export function loopFigure(input: LoopInput, o: FigureOptions): Figure {
           const high = must(r, "metallic_fraction_high");
           under.push(element("path", { d: barPath(xs[k], panel.y(low), panel.y(high)), ...stroke(colour, 0.7) }));
           const fill = branch === "cooling" ? colour : s.background;
+          places.push({ x: xs[k], y: ys[k], keys: { cooldown: c, frame: must(r, "frame") } });
           over.push(
             marker(
               xs[k],
@@ -157,6 +159,7 @@ export function loopFigure(input: LoopInput, o: FigureOptions): Figure {
       columns: ["what", "cooldown", "branch", "cycle", "frame", "temperature_K", "metallic_fraction", "low", "high"],
       rows,
     },
+    places,
   };
 }
 

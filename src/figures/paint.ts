@@ -35,9 +35,14 @@ export function commonScale(shown: Exclude<Shown, "states">, images: readonly Fl
   const at = (share: number): number => all[Math.round(share * (all.length - 1))] ?? 0;
   const [low, high] = [at(0.01), at(0.99)];
   if (shown === "phase" && high - low > Math.PI)
-    return { low: -Math.PI, high: Math.PI, map: CYCLIC_PHASE_MAP, cyclic: true };
-  const map = shown === "phase" ? PHASE_MAP : shown === "topography" ? HEIGHT_MAP : AMPLITUDE_MAP;
-  return { low, high: high > low ? high : low + 1, map, cyclic: false };
+    return { low: -Math.PI, high: Math.PI, map: mapOf(shown, true), cyclic: true };
+  return { low, high: high > low ? high : low + 1, map: mapOf(shown, false), cyclic: false };
+}
+
+/** The colours of a channel. */
+export function mapOf(shown: Exclude<Shown, "states">, cyclic: boolean): ColourMap {
+  if (shown === "phase") return cyclic ? CYCLIC_PHASE_MAP : PHASE_MAP;
+  return shown === "topography" ? HEIGHT_MAP : AMPLITUDE_MAP;
 }
 
 /** RGBA pixels of an image on a scale; transparent where nothing was measured. */

@@ -1,4 +1,4 @@
-import type { Figure, FigureOptions } from "./figure.js";
+import type { Figure, FigureOptions, Place } from "./figure.js";
 import { legend, type LegendItem } from "./legend.js";
 import { barPath, limitPath, marker, stroke } from "./marks.js";
 import { axes, bottomRoom, clipped, leftRoom, type Panel } from "./panel.js";
@@ -45,6 +45,7 @@ export function widthsFigure(input: WidthsInput, o: FigureOptions): Figure {
   const height = width * 0.42;
   const parts: string[] = [key.svg];
   const rows: Cell[][] = [];
+  const places: Place[] = [];
   let top = key.height + 6;
   let thinned = 1;
   branches.forEach((branch, b) => {
@@ -85,6 +86,13 @@ export function widthsFigure(input: WidthsInput, o: FigureOptions): Figure {
         ]);
         if (k % step !== 0) return;
         const at = x + slot * (spread(k / step) - 0.5);
+        const drawn = w ?? upper;
+        if (drawn !== null && drawn <= most)
+          places.push({
+            x: at,
+            y: panel.y(drawn),
+            keys: { frame, wall: must(r, "wall"), profile: must(r, "profile") },
+          });
         if (w !== null) dots += `M${pt(at)} ${pt(panel.y(w))}h0`;
         else if (upper !== null) limits += limitPath(at, panel.y(upper), 3.6, 0.8);
       });
@@ -207,6 +215,7 @@ export function widthsFigure(input: WidthsInput, o: FigureOptions): Figure {
       ],
       rows,
     },
+    places,
   };
 }
 

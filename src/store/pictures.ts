@@ -11,7 +11,7 @@ function bytesOf(values: Float32Array): Uint8Array {
   return out;
 }
 
-function floatsOf(bytes: Uint8Array): Float32Array {
+export function floatsOf(bytes: Uint8Array): Float32Array {
   const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
   return Float32Array.from({ length: bytes.byteLength >> 2 }, (_, k) => view.getFloat32(4 * k, true));
 }

@@ -19,6 +19,7 @@ const COMMANDS = [
   "walls",
   "export",
   "figure",
+  "report",
   "tip",
   "verify",
   "forget",
