@@ -9,6 +9,7 @@ import { exportTable } from "./export.js";
 import { figure } from "./figure.js";
 import { ingest } from "./ingest.js";
 import { loops } from "./loops.js";
+import { report } from "./report.js";
 import { print, sayError } from "./say.js";
 
 /** What the demo promises; the same bounds are asserted on its smaller copy by the tests. */
@@ -96,6 +97,8 @@ export async function runDemo(args: readonly string[]): Promise<number> {
 
     const drawing = path.join(dir, "loop.svg");
     await figure("loop", { db, out: drawing });
+    const page = path.join(dir, "report.html");
+    await report({ db, out: page });
 
     print("\nHow far that is from the truth:\n");
     let all = true;
@@ -116,6 +119,7 @@ export async function runDemo(args: readonly string[]): Promise<number> {
       `\ndatabase: ${db} (${(statSync(db).size / 1e6).toFixed(1)} MB)   tables: ${tables}/*.csv   truth: beside each cooldown.yaml\n`,
     );
     print(`loop figure: ${drawing}\n`);
+    print(`the page to look through it all, in any browser: ${page}\n`);
     print(`next: npm run -s coldseam -- walls --db ${db}\n`);
     return all ? 0 : 1;
   } catch (e) {
