@@ -124,13 +124,14 @@ async function analyseWith(
   const results = measured.map((m, k): FrameResult => {
     const levels = track.levels[k] as FrameLevels;
     const own = fringes.filter((t) => t.frame === k);
+    const { report, imagesSha256 } = cleaned[k] as (typeof cleaned)[number];
     const shown = (state: "insulating" | "metallic"): number | null =>
       (m.verdict === "mixed" || m.verdict === state) && Number.isFinite(levels[state].re)
         ? Math.hypot(levels[state].re, levels[state].im) / levels.gain
         : null;
     return {
       frame: k,
-      imagesSha256: (cleaned[k] as (typeof cleaned)[number]).imagesSha256,
+      imagesSha256,
       verdict: m.verdict,
       drift: drifts[k] as Drift,
       fraction: m.fraction,
@@ -151,7 +152,8 @@ async function analyseWith(
       fringeShare: fringeShare(own),
       usablePixels: m.usablePixels,
       debrisPixels: m.debrisPixels,
-      scarPixels: (cleaned[k] as (typeof cleaned)[number]).report.scarPixels,
+      scarPixels: report.scarPixels,
+      noise: report.noise,
       previews: m.previews,
       profileBins: m.walls.bins ?? [],
     };

@@ -9,6 +9,7 @@ import { framesOfStacks, type WrittenFrame, type WrittenSeries, type WrittenStac
 /**
  * Looks at the headers of every image: is it there, can it be read, has it the page, has it the size of the cooldown's first
  * signal. No pixels are read. Appends to `problems`, a line a file where several pages share one fault.
+ * @param fromLog there is a thermometer's log: stacks with scan times need no temperatures
  * @returns for each series its frames without fault
  */
 export async function checkImages(
@@ -17,12 +18,14 @@ export async function checkImages(
   headers: HeaderBook,
   problems: Problem[],
   notices: Notice[],
+  fromLog: boolean,
 ): Promise<CheckedFrame[][]> {
   const sizes = new SizeCheck();
   const out: CheckedFrame[][] = [];
   for (const s of series) {
     const wrongStacks = new Set<string>();
-    const written = s.stacks === null ? s.frames : await checkStacks(s.stacks, headers, wrongStacks, problems, notices);
+    const written =
+      s.stacks === null ? s.frames : await checkStacks(s.stacks, headers, wrongStacks, problems, notices, fromLog);
     const frames: CheckedFrame[] = [];
     for (const frame of written) {
       const checked = await checkFrame(frame, { headers, scales, sizes, problems, wrongStacks });
@@ -41,6 +44,7 @@ async function checkStacks(
   wrongStacks: Set<string>,
   problems: Problem[],
   notices: Notice[],
+  fromLog: boolean,
 ): Promise<WrittenFrame[]> {
   const claims: { readonly label: string; readonly temperaturesK: readonly number[] }[] = [];
   const pages = new Map<string, { readonly label: string; readonly key: string; readonly pages: number }>();
@@ -53,12 +57,15 @@ async function checkStacks(
     if (temperaturesK !== null) claims.push({ label: stack.written, temperaturesK });
   }
   const claim = claims[0];
-  const temperatures = s.temperaturesK ?? claim?.temperaturesK;
+  const timed = fromLog ? s.times?.map(() => null) : undefined;
+  const temperatures: readonly (number | null)[] | undefined = s.temperaturesK ?? claim?.temperaturesK ?? timed;
   if (temperatures === undefined) {
     problems.push({
       at: s.at,
       problem: "stacks without temperatures_K",
-      fix: "add `temperatures_K: [ … ]`, one temperature a page",
+      fix: fromLog
+        ? "add `temperatures_K: [ … ]`, or `started_at` and `ended_at` to look them up in the log; one a page"
+        : "add `temperatures_K: [ … ]`, one temperature a page",
     });
     return [];
   }
@@ -69,6 +76,13 @@ async function checkStacks(
       fix: "mend the axis or its unit, or give temperatures_K",
     });
     return [];
+  }
+  if (s.times !== null && s.times.length !== temperatures.length) {
+    problems.push({
+      at: s.at,
+      problem: `${countOf(s.times.length, "time")} in started_at; the axis of ${plainText(claim?.label ?? "")} has ${countOf(temperatures.length, "temperature")}`,
+      fix: "give one time a page",
+    });
   }
   for (const c of claims) {
     const off = c.temperaturesK.filter((t, k) => Math.abs(t - (temperatures[k] ?? t)) > 0.5).length;
@@ -81,8 +95,8 @@ async function checkStacks(
     wrongStacks.add(key);
     problems.push({
       at: plainText(label),
-      problem: `${countOf(found, "page")} for ${countOf(temperatures.length, "temperature")}`,
-      fix: `make temperatures_K (near ${s.at}) one temperature a page, or use a frames table to leave pages out`,
+      problem: `${countOf(found, "page")} for ${countOf(temperatures.length, temperatures === timed ? "scan time" : "temperature")}`,
+      fix: `make ${temperatures === timed ? "started_at and ended_at" : "temperatures_K"} (near ${s.at}) one ${temperatures === timed ? "time" : "temperature"} a page, or use a frames table to leave pages out`,
     });
   }
   return framesOfStacks(s, temperatures);

@@ -77,7 +77,7 @@ export async function surveyCooldown(yamlFile: string, options: ReadOptions = {}
   const written = entries.map((s) => writtenSeries(s.entry, ["series", s.index], context));
   const headers = new HeaderBook(problems, notices);
   const scales = channelScales(channels.safeParse(top["channels"]).data);
-  const checked = await checkImages(written, scales, headers, problems, notices);
+  const checked = await checkImages(written, scales, headers, problems, notices, context.fromLog);
   const pixel = findPixelSize(scan.safeParse(top["scan"]).data, headers.pixelClaims, doc, problems, notices);
   const temperatures = thermometry === null ? [] : temperaturesFromLog(checked.flat(), thermometry, problems, notices);
 

@@ -14,13 +14,16 @@ const MOST_OUTLIERS = 0.05;
 const MOST_SHIFT_PX = 0.1;
 /** With less likeness than this they do not show the same place. */
 const LEAST_CORRELATION = 0.2;
+/** The median of fewer pixels would take a good part of their noise with it. */
+const LEAST_IN_ROW = 16;
 /** Normal distribution: standard deviation over median absolute deviation, 1/Φ⁻¹(3/4). */
 const SD_PER_MAD = 1.482602218505602;
 
 /**
  * Averages a retrace into its trace, in place, where the two agree; a pixel where they do not becomes NaN, and so does one that either
  * lacks. Their difference d, less its median, holds the noise of both and nothing of the sample: sd(d) = √2 σ of one scan, 2 σ of
- * the average. sd(d) is taken from the median absolute deviation, which walls that are shifted a little between the two do not move.
+ * the average. sd(d) is taken from the median absolute deviation, which walls that are shifted a little between the two do not move; for
+ * the noise about the mean of each row.
  * Where as a whole they do not agree (shifted against each other, too many pixels apart, no likeness), the trace stays as it is.
  * @param trace   the values, row-major, overwritten with the average
  * @param cols    columns, along the scan line
@@ -49,9 +52,17 @@ export function joinRetrace(trace: Float32Array, retrace: Float32Array, cols: nu
   if (sd > 0 && outliers > MOST_OUTLIERS * n) {
     return { noiseSd: null, disagreement: `trace and retrace differ in ${percent} % of the pixels: trace alone` };
   }
+  if (d.every((v) => v === 0)) {
+    return {
+      noiseSd: null,
+      disagreement: "the retrace is a copy of the trace: nothing to average, no word on the noise",
+    };
+  }
+  const within = withoutRows(difference, trace.length, cols, reach);
   if (!angle) {
+    // A frame without structure is all noise, unlike on the way back. What two places differ by goes on from row to row; noise does not.
     const r = correlation(trace, retrace);
-    if (r < LEAST_CORRELATION) {
+    if (r < LEAST_CORRELATION && alikeAcrossRows(within.left, cols) > LEAST_CORRELATION) {
       return {
         noiseSd: null,
         disagreement: `trace and retrace do not look alike (correlation ${r.toFixed(2)}): trace alone`,
@@ -67,7 +78,51 @@ export function joinRetrace(trace: Float32Array, retrace: Float32Array, cols: nu
     sd > 0 && outliers > 0 && outliers > 0.005 * n
       ? `trace and retrace differ in ${percent} % of the pixels, which count as not measured`
       : null;
-  return { noiseSd: sd / 2, disagreement };
+  return { noiseSd: within.sd > 0 ? within.sd / 2 : null, disagreement };
+}
+
+/** The differences less what their whole row differs by: the mean of those near the row's median. NaN where the row has too few. */
+function withoutRows(
+  difference: (k: number) => number,
+  length: number,
+  cols: number,
+  reach: number,
+): { readonly left: Float64Array; readonly sd: number } {
+  const left = new Float64Array(length).fill(NaN);
+  const sizes = new Float64Array(length);
+  const row = new Float64Array(cols);
+  let n = 0;
+  for (let from = 0; from < length; from += cols) {
+    let m = 0;
+    for (let k = from; k < from + cols; k++) {
+      const d = difference(k);
+      if (Number.isFinite(d)) row[m++] = d;
+    }
+    if (m < Math.min(LEAST_IN_ROW, cols)) continue;
+    const middle = medianOf(row.slice(0, m));
+    const near = row.subarray(0, m).filter((d) => Math.abs(d - middle) <= reach);
+    const mean = near.reduce((sum, d) => sum + d, 0) / near.length;
+    for (let k = from; k < from + cols; k++) {
+      const d = difference(k);
+      if (!Number.isFinite(d)) continue;
+      left[k] = d - mean;
+      // The mean has taken its part of the noise with it.
+      sizes[n++] = Math.abs(left[k]) * Math.sqrt(near.length / Math.max(1, near.length - 1));
+    }
+  }
+  return { left, sd: n === 0 ? 0 : SD_PER_MAD * medianOf(sizes.subarray(0, n)) };
+}
+
+/** Correlation of a pixel with the one below it. */
+function alikeAcrossRows(left: Float64Array, cols: number): number {
+  let [cross, own] = [0, 0];
+  for (let k = 0; k + cols < left.length; k++) {
+    const [a, b] = [left[k], left[k + cols]];
+    if (!Number.isFinite(a + b)) continue;
+    cross += a * b;
+    own += (a * a + b * b) / 2;
+  }
+  return own > 0 ? cross / own : 0;
 }
 
 function between(a: number, b: number, angle: boolean): number {

@@ -1,9 +1,12 @@
 import * as z from "zod";
+import { ISO_TIME, parseTime } from "./times.js";
 
 const positive = z.number().positive();
 const name = z.string().trim().min(1).max(200);
 const path = z.string().min(1).max(4096);
 export const kelvin = z.number().positive().max(1000);
+
+const time = z.string().refine((s) => ISO_TIME.test(s) && !Number.isNaN(parseTime(s)));
 
 /** The images that a frame can have, by their name in `stacks` and in the head of a frames table. */
 export const IMAGE_KEYS = [
@@ -37,6 +40,8 @@ export const seriesSchema = z.strictObject({
     } satisfies Record<ImageKey, unknown>)
     .optional(),
   temperatures_K: z.array(kelvin).min(1).optional(),
+  started_at: z.array(time).min(1).optional(),
+  ended_at: z.array(time).min(1).optional(),
   frames: path.optional(),
 });
 export type SeriesEntry = z.infer<typeof seriesSchema>;
@@ -194,6 +199,15 @@ export const keyWords: Readonly<Record<string, KeyWords>> = {
     expected: "a temperature in K above 0 and at most 1000",
     fix: "give it in kelvin (0 °C is 273.15 K)",
   },
+  ...Object.fromEntries(
+    ["started_at", "ended_at"].flatMap((key) => [
+      [
+        `series[].${key}`,
+        { expected: "a list of times, one a page", fix: `write for example \`${key}: ["2024-05-17T09:30:00+02:00"]\`` },
+      ],
+      [`series[].${key}[]`, { expected: "a time as ISO 8601", fix: "write for example 2024-05-17T09:30:00+02:00" }],
+    ]),
+  ),
   "series[].frames": { expected: "the name of a .csv file", fix: "give the file's name relative to the YAML file" },
   exclude: { expected: "a list of what to leave out", fix: "write `- { frame: 12, reason: tip changed }`" },
   "exclude[]": {

@@ -5,6 +5,7 @@ import { parseFramesTable } from "./frames_table.js";
 import { systemWords } from "./image_file.js";
 import { IMAGE_KEYS, type ImageKey, type SeriesEntry } from "./schema.js";
 import { signalProblem } from "./signal_form.js";
+import { parseTime } from "./times.js";
 import { locate, splitPath, withPage } from "./source_path.js";
 import type { Step, YamlDocument } from "./yaml_document.js";
 
@@ -33,6 +34,11 @@ export interface WrittenFrame {
   readonly stageYNm: number | null;
 }
 
+interface ScanTimes {
+  readonly startedAt: string;
+  readonly endedAt: string;
+}
+
 /** A stack, which must hold one page a temperature. */
 export interface WrittenStack extends WrittenSource {
   readonly image: ImageKey;
@@ -40,8 +46,10 @@ export interface WrittenStack extends WrittenSource {
 
 export interface WrittenStacks {
   readonly stacks: readonly WrittenStack[];
-  /** null where they are left out: the file itself may say them. */
+  /** null where they are left out: the file itself may say them, or the log of the thermometer. */
   readonly temperaturesK: readonly number[] | null;
+  /** Begin and end of each page's scan; null where they are left out. */
+  readonly times: readonly ScanTimes[] | null;
   /** Where the series stands, for messages. */
   readonly at: string;
 }
@@ -79,12 +87,13 @@ export function writtenSeries(entry: SeriesEntry, path: readonly Step[], context
     });
     return none;
   }
-  if (entry.stacks !== undefined) return stackSeries(entry.stacks, entry.temperatures_K, path, context);
-  if (entry.temperatures_K !== undefined) {
+  if (entry.stacks !== undefined) return stackSeries(entry.stacks, entry, path, context);
+  for (const key of ["temperatures_K", "started_at", "ended_at"] as const) {
+    if (entry[key] === undefined) continue;
     problems.push({
-      at: doc.atKey(path, "temperatures_K"),
-      problem: "temperatures_K beside frames: the table holds the temperatures",
-      fix: "take temperatures_K out",
+      at: doc.atKey(path, key),
+      problem: `${key} beside frames: the table holds ${key === "temperatures_K" ? "the temperatures" : "the times"}`,
+      fix: `take ${key} out`,
     });
   }
   return entry.frames === undefined ? none : tableSeries(entry.frames, path, context);
@@ -92,7 +101,7 @@ export function writtenSeries(entry: SeriesEntry, path: readonly Step[], context
 
 function stackSeries(
   stacks: NonNullable<SeriesEntry["stacks"]>,
-  temperatures: readonly number[] | undefined,
+  entry: SeriesEntry,
   path: readonly Step[],
   context: SeriesContext,
 ): WrittenSeries {
@@ -128,17 +137,52 @@ function stackSeries(
     }
     found.push({ image, path: place.path, written, dataset, page: null, sample, at });
   }
-  const stacked = { stacks: found, temperaturesK: temperatures ?? null, at: doc.at(path) };
+  const temperaturesK = entry.temperatures_K ?? null;
+  const times = scanTimes(entry, temperaturesK, path, context);
+  const stacked = { stacks: found, temperaturesK, times, at: doc.at(path) };
   return { frames: [], stacks: stacked, table: null };
 }
 
-/** One frame a temperature, from the pages of the stacks in their order. */
-export function framesOfStacks(s: WrittenStacks, temperaturesK: readonly number[]): WrittenFrame[] {
+/** The times of a stack's scans. Problems are appended; null where there are none, or they cannot be used. */
+function scanTimes(
+  entry: SeriesEntry,
+  temperaturesK: readonly number[] | null,
+  path: readonly Step[],
+  { doc, problems }: SeriesContext,
+): ScanTimes[] | null {
+  const { started_at: started, ended_at: ended } = entry;
+  if (started === undefined && ended === undefined) return null;
+  if (started === undefined || ended === undefined) {
+    const [there, missing] = started === undefined ? ["ended_at", "started_at"] : ["started_at", "ended_at"];
+    problems.push({ at: doc.atKey(path, there), problem: `${there} without ${missing}`, fix: "give both, or neither" });
+    return null;
+  }
+  const pages = temperaturesK?.length ?? started.length;
+  for (const [key, times] of [["started_at", started] as const, ["ended_at", ended] as const]) {
+    if (times.length === pages) continue;
+    problems.push({
+      at: doc.atKey(path, key),
+      problem: `${countOf(times.length, "time")} in ${key}, ${pages} in ${temperaturesK === null ? "started_at" : "temperatures_K"}`,
+      fix: "give one time a page",
+    });
+    return null;
+  }
+  const back = started.findIndex((s, k) => parseTime(ended[k]) < parseTime(s));
+  if (back >= 0) {
+    const at = doc.at([...path, "ended_at", back]);
+    problems.push({ at, problem: "ended_at lies before started_at", fix: "mend the times" });
+    return null;
+  }
+  return started.map((startedAt, k) => ({ startedAt, endedAt: ended[k] }));
+}
+
+/** One frame a temperature (null: the log of the thermometer has it), from the pages of the stacks in their order. */
+export function framesOfStacks(s: WrittenStacks, temperaturesK: readonly (number | null)[]): WrittenFrame[] {
   return temperaturesK.map((temperatureK, page): WrittenFrame => {
     const sources: Partial<Record<ImageKey, WrittenSource>> = {};
     for (const stack of s.stacks) sources[stack.image] = { ...stack, written: withPage(stack.written, page), page };
-    const none = { startedAt: null, endedAt: null, stageXNm: null, stageYNm: null };
-    return { temperatureK, sources, at: s.at, ...none };
+    const times = s.times?.[page] ?? { startedAt: null, endedAt: null };
+    return { temperatureK, sources, at: s.at, ...times, stageXNm: null, stageYNm: null };
   });
 }
 

@@ -1,4 +1,4 @@
-import type { Cooldown, Notice } from "./cooldown.js";
+import type { ChannelName, Cooldown, Notice } from "./cooldown.js";
 import type { DomainRegion, TrackedDomain } from "./domains.js";
 import type { Loop } from "./loops.js";
 import type { DriftPair, Preview, ProfileBins } from "./pictures.js";
@@ -10,6 +10,16 @@ export interface PackedMap {
   readonly rows: number;
   readonly cols: number;
   readonly deflated: Uint8Array;
+}
+
+/** Noise of one frame's pixels as cleaning found it, one standard deviation; null where the channel is missing. */
+export interface FrameNoise {
+  /** Relative to the amplitude. */
+  readonly amplitudeRelative: number;
+  readonly phaseRad: number | null;
+  readonly topographyNm: number | null;
+  /** The channels whose noise comes from trace less retrace; that of the others from differences of neighbours along the row. */
+  readonly byRetrace: readonly ChannelName[];
 }
 
 export type DecidedFringe = FringeTest & { readonly detected: boolean; readonly adjustedP: number };
@@ -37,6 +47,7 @@ export interface FrameResult {
   readonly usablePixels: number;
   readonly debrisPixels: number;
   readonly scarPixels: number;
+  readonly noise?: FrameNoise;
   /** For drawing. */
   readonly previews?: readonly Preview[];
   readonly profileBins?: readonly ProfileBins[];

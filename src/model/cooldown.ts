@@ -115,7 +115,8 @@ export interface RawFrame {
   readonly topography: Raster | null;
   readonly amplitude: Raster;
   readonly phase: Raster | null;
-  /** Noise of a channel averaged over trace and retrace, one standard deviation a pixel, from their difference (nm, file's unit, rad). */
+  /** Noise of a channel averaged over trace and retrace, one standard deviation a pixel, from their difference less what whole rows
+   *  differ by (nm, file's unit, rad). */
   readonly retraceNoise?: Partial<Record<ChannelName, number>>;
   /** What was found while reading. */
   readonly notices?: readonly Notice[];

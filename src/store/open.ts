@@ -137,7 +137,7 @@ const newer = (file: string, version: number): InputError =>
 const bytesOf = (file: string): number => statSync(file, { throwIfNoEntry: false })?.size ?? 0;
 
 /** Refuses a file that is not ours by its first bytes alone: SQLite itself would put lock files beside it.
- *  Offsets: "The SQLite Database File Format", sqlite.org/fileformat2.html, sections 1.3 and 1.6. */
+ *  Offsets: "The SQLite Database File Format", sqlite.org/fileformat2.html, sections 1.3 and 1.6. Also one whose length is not that of whole pages. */
 function look(file: string): void {
   const head = Buffer.alloc(108);
   let read: number;
@@ -161,6 +161,10 @@ function look(file: string): void {
   if (read === 0) return;
   if (read < head.length || head.toString("latin1", 0, 16) !== "SQLite format 3\0")
     throw notSound(file, "it does not begin like one");
+  // SQLite fills up a last page that is cut short with zeros, without a word; what waits in a log may still make it whole.
+  const page = head.readUInt16BE(16) === 1 ? 65536 : head.readUInt16BE(16);
+  if (page >= 512 && bytesOf(file) % page !== 0 && bytesOf(`${file}-wal`) + bytesOf(`${file}-journal`) === 0)
+    throw notSound(file, `it is cut off: ${bytesOf(file)} bytes are no whole number of its pages of ${page}`);
   const ours = head.readUInt32BE(68) === APPLICATION_ID;
   // A leaf page without cells as first page: no table yet, as an ingest stopped in its first moment leaves it.
   const blank = head[100] === 0x0d && head.readUInt16BE(103) === 0;

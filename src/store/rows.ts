@@ -74,6 +74,13 @@ function frameRow(id: number, info: FrameInfo, r: FrameResult): Record<string, V
     map_rows: r.map.rows,
     map_cols: r.map.cols,
     map_deflated: r.map.deflated,
+    temperature_sd_k: info.temperatureSdK ?? null,
+    ramp_k_per_s: info.rampKPerS ?? null,
+    lag_shift_k: info.lagShiftK ?? null,
+    amplitude_noise_relative: r.noise?.amplitudeRelative ?? null,
+    phase_noise_rad: r.noise?.phaseRad ?? null,
+    topography_noise_nm: r.noise?.topographyNm ?? null,
+    noise_by_retrace: r.noise?.byRetrace.join(" ") ?? null,
   };
 }
 

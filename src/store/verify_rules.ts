@@ -44,6 +44,17 @@ export const RULES: readonly Rule[] = [
         OR f.map_rows IS NOT d.value ->> '$.rows' OR f.map_cols IS NOT d.value ->> '$.cols'`,
   },
   {
+    name: "spread, ramp and lag of the temperature are as described; a frame has all three or none",
+    of: "frames",
+    from: "frame",
+    wrong: `${frameLine(`'spread ' || ${shown("f.temperature_sd_k")} || ' K, ramp ' || ${shown("f.ramp_k_per_s")} || ' K/s, lag ' || ${shown("f.lag_shift_k")} || ' K; described as ' || d.value`)}
+      frame f JOIN place ON place.id = f.analysis_id JOIN analysis a ON a.id = f.analysis_id
+      JOIN json_each(a.description_json, '$.frames') d ON d.key = f.frame
+      WHERE f.temperature_sd_k IS NOT d.value ->> '$.temperatureSdK' OR f.ramp_k_per_s IS NOT d.value ->> '$.rampKPerS'
+        OR f.lag_shift_k IS NOT d.value ->> '$.lagShiftK' OR f.temperature_sd_k < 0
+        OR (f.temperature_sd_k IS NULL) <> (f.ramp_k_per_s IS NULL) OR (f.temperature_sd_k IS NULL) <> (f.lag_shift_k IS NULL)`,
+  },
+  {
     name: "sample, name and region are as described",
     of: "analyses",
     from: "analysis",

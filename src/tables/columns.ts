@@ -63,6 +63,22 @@ export const TABLES: readonly ExportedTable[] = [
       c("debris_pixels", "pixels left out as debris"),
       c("scar_pixels", "pixels left out as scars"),
       ANALYSIS,
+      c(
+        "temperature_sd_K",
+        "spread of the temperature over the scan, ramp included; empty without a thermometer's log",
+      ),
+      c("ramp_K_per_s", "slope of the temperature over the scan; empty without a log"),
+      c("lag_shift_K", "what the sample's lag behind the sensor added to the temperature; empty without a log"),
+      c(
+        "amplitude_noise_relative",
+        "noise of the amplitude a pixel, one standard deviation, relative to the amplitude",
+      ),
+      c("phase_noise_rad", "the same of the optical phase; empty where there is none"),
+      c("topography_noise_nm", "the same of the topography; empty where there is none"),
+      c(
+        "noise_by_retrace",
+        "channels whose noise is from trace less retrace; the others: from neighbours along the row",
+      ),
     ],
   },
   {

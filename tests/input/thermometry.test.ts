@@ -177,6 +177,78 @@ describe("a log in a cooldown", () => {
     ]);
   });
 
+  describe("stacks with scan times", () => {
+    const stack = (more: string, log = true): Promise<Cooldown> => {
+      folder.text("log.tsv", LOG);
+      return readCooldown(
+        folder.text(
+          "cooldown.yaml",
+          "sample: S\ncooldown: C\nscan: { pixel_size_nm: [10, 10] }\n" +
+            (log ? "thermometry: { log: log.tsv, time: time, temperature: sample, unit: C }\n" : "") +
+            `series:\n- branch: cooling\n  stacks: { amplitude: a.tif }\n${more}`,
+        ),
+      );
+    };
+    const STARTED = "  started_at: [2024-05-17T07:10:00Z, 2024-05-17T07:20:00Z, 2024-05-17T09:30:00+02:00]\n";
+    const ENDED = "  ended_at: [2024-05-17T07:20:00Z, 2024-05-17T07:30:00Z, 2024-05-17T09:40:00+02:00]\n";
+
+    test("have their temperatures from the log, and need none of their own", async () => {
+      const c = await stack(STARTED + ENDED);
+      expect(c.frames.map((f) => Number(f.temperatureK.toFixed(6)))).toEqual([178.5, 177.5, 176.5]);
+      expect(c.frames[2]).toMatchObject({
+        startedAt: "2024-05-17T09:30:00+02:00",
+        endedAt: "2024-05-17T09:40:00+02:00",
+      });
+      expect(c.frames.every((f) => (f.temperatureSdK ?? 0) > 0.28)).toBe(true);
+      expect(c.notices).toEqual([]);
+      // beside temperatures of their own the log's are used all the same; without a log the times are only kept
+      expect(
+        (await stack(`  temperatures_K: [178.5, 177.4, 176.4]\n${STARTED}${ENDED}`)).frames[1]?.temperatureK,
+      ).toBeCloseTo(177.5, 9);
+      const own = await stack(`  temperatures_K: [180, 170, 160]\n${STARTED}${ENDED}`, false);
+      expect(own.frames[1]).toMatchObject({ temperatureK: 170, startedAt: "2024-05-17T07:20:00Z" });
+    });
+
+    test.each([
+      ["one list alone", STARTED, /:\d+: started_at without ended_at \| give both/],
+      [
+        "lists of unlike length",
+        STARTED + ENDED.replace(", 2024-05-17T07:30:00Z", ""),
+        /2 times in ended_at, 3 in started_at/,
+      ],
+      [
+        "not one a temperature",
+        `  temperatures_K: [180, 170]\n${STARTED}${ENDED}`,
+        /3 times in started_at, 2 in temperatures_K/,
+      ],
+      [
+        "no time",
+        STARTED.replace("2024-05-17T07:20:00Z", "noon") + ENDED,
+        /started_at\[1\] is "noon"; expected a time as ISO 8601/,
+      ],
+      ["an end before its beginning", STARTED + ENDED.replace("07:20", "07:02"), /ended_at lies before started_at/],
+      [
+        "not one a page",
+        STARTED.replace(", 2024-05-17T07:20:00Z", "") + ENDED.replace(", 2024-05-17T07:30:00Z", ""),
+        /3 pages for 2 scan times \| make started_at and ended_at/,
+      ],
+      ["neither", "", /stacks without temperatures_K \| .*or `started_at` and `ended_at` to look them up/],
+    ])("%s", async (_, more, words) => {
+      const found = await problemsOf(stack(more));
+      expect(found.join("\n")).toMatch(words);
+    });
+
+    test("times without a log do not stand for temperatures, nor beside a table", async () => {
+      expect((await problemsOf(stack(STARTED + ENDED, false))).join("\n")).toMatch(/stacks without temperatures_K/);
+      folder.text("f.csv", TABLE);
+      const yaml =
+        "sample: S\ncooldown: C\nscan: { pixel_size_nm: [10, 10] }\nseries:\n- branch: cooling\n  frames: f.csv\n";
+      expect((await problemsOf(readCooldown(folder.text("c.yaml", yaml + STARTED)))).join("\n")).toMatch(
+        /started_at beside frames: the table holds the times/,
+      );
+    });
+  });
+
   test.each([
     [
       "no such column",

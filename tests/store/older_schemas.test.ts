@@ -88,6 +88,25 @@ describe.each(kept.filter((v) => v < newestVersion()))("a database of schema %i"
     expect(readdirSync(dir).sort()).toEqual(["old.sqlite", path.basename(copy)]);
   });
 
+  test("the temperature's spread, ramp and lag come from the description, where it has them; of the noise there is nothing", () => {
+    load(version);
+    openForWriting(file).close();
+    const db = new Database(file, { readonly: true });
+    const rows = db
+      .prepare<[], Record<string, number | null>>(
+        `SELECT frame, temperature_sd_K, ramp_K_per_s, lag_shift_K, phase_noise_rad, noise_by_retrace FROM temperature_all
+         WHERE analysis = 1 ORDER BY frame`,
+      )
+      .raw()
+      .all();
+    db.close();
+    const second = version < 3 ? [null, null, null] : [0.028867513459481287, 1 / 6000, -0.005];
+    expect(rows).toEqual([
+      [0, null, null, null, null, null],
+      [1, ...second, null, null],
+    ]);
+  });
+
   test("stays as it was where its copy cannot be written", () => {
     load(version);
     const before = content(file, null);

@@ -25,6 +25,9 @@ const profile = (n: number, change: Partial<WallProfile> = {}): WallProfile => (
   ...change,
 });
 
+/** As a thermometer's log gives them. */
+const FROM_LOG = { temperatureSdK: 0.028867513459481287, rampKPerS: 1 / 6000, lagShiftK: -0.005 };
+
 /** A small analysis made by hand, sound in itself: two frames, the second undecided and not placed. */
 export function sampleAnalysis(
   change: {
@@ -44,6 +47,7 @@ export function sampleAnalysis(
     branch,
     cycle: 1,
     temperatureK,
+    ...(frame === 1 ? FROM_LOG : {}),
     startedAt: null,
     endedAt: null,
     stageXNm: null,
@@ -128,6 +132,7 @@ export function sampleAnalysis(
     usablePixels: 5,
     debrisPixels: 1,
     scarPixels: 0,
+    noise: { amplitudeRelative: 0.05, phaseRad: 0.0625, topographyNm: null, byRetrace: ["amplitude", "phase"] },
   };
   const single = (frame: number): FrameResult => ({
     ...base,

@@ -40,12 +40,21 @@ test("an analysis comes back with the values that went in, and nothing where the
     unresolved_share: 0.5,
     fringe_share: 1,
     flag: "",
+    temperature_sd_K: null,
+    lag_shift_K: null,
+    amplitude_noise_relative: 0.05,
+    phase_noise_rad: 0.0625,
+    topography_noise_nm: null,
+    noise_by_retrace: "amplitude phase",
   });
   expect(second).toMatchObject({
     metallic_fraction: null,
     drift_x_nm: null,
     metallic_domains: null,
     flag: "undecided not-placed",
+    temperature_sd_K: 0.028867513459481287,
+    ramp_K_per_s: 1 / 6000,
+    lag_shift_K: -0.005,
   });
   const walls = [...readTable(db, table("walls"))];
   expect(walls).toHaveLength(2);

@@ -87,6 +87,16 @@ const FAULTS: [change: string, check: RegExp, words: RegExp][] = [
     /^branch, cycle and temp/,
     /warming, cycle 1, 151.0 K; described as/,
   ],
+  [
+    "UPDATE frame SET temperature_sd_k = 0.25 WHERE temperature_sd_k IS NOT NULL",
+    /^spread, ramp and lag/,
+    /spread 0.25 K, ramp 0.000167 K\/s, lag -0.005 K; described as/,
+  ],
+  [
+    "UPDATE frame SET lag_shift_k = NULL WHERE lag_shift_k IS NOT NULL",
+    /^spread, ramp and lag/,
+    /lag none K; described as/,
+  ],
   ["UPDATE frame SET frame = 9 WHERE frame = 3", /^frames are numbered/, /4 frames up to number 9/],
   ["UPDATE cooldown SET sample = 'KV-99' WHERE id = 2", /^sample, name and region/, /of sample KV-14/],
   ["UPDATE loop SET width_k = 7", /^a loop's width/, /warming none, width 7/],

@@ -1,10 +1,11 @@
-import type { Notice, RawFrame } from "../../model/cooldown.js";
+import type { FrameNoise } from "../../model/analysis.js";
+import { CHANNELS, type Notice, type RawFrame } from "../../model/cooldown.js";
 import { type Raster, colsOf, dataOf, makeRaster, rowsOf } from "../../model/raster.js";
 import type { CleanFrame } from "../../model/signal.js";
 import { wrapAngle } from "../../numerics/quantile.js";
 import { flatPixels } from "./flat_pixels.js";
 import { levelSurface } from "./level.js";
-import { clippedShare, measureNoise, type NoiseByLevel } from "./noise.js";
+import { clippedShare, measureNoise, scaledBy, type NoiseByLevel } from "./noise.js";
 import { linkRows } from "./row_links.js";
 import { type RowOffsets, splitRowOffsets } from "./row_model.js";
 import { type Scars, findScars } from "./scars.js";
@@ -28,10 +29,7 @@ export interface CleanReport {
   readonly topographyRowSdNm: number | null;
   /** Standard deviation of the optical phase's walk, a row's step. */
   readonly rowPhaseStepSdRad: number | null;
-  /** Pixel noise by differences along the rows: relative to the amplitude, rad, nm. */
-  readonly amplitudeNoise: number;
-  readonly phaseNoiseRad: number | null;
-  readonly topographyNoiseNm: number | null;
+  readonly noise: FrameNoise;
   readonly notices: readonly Notice[];
 }
 
@@ -58,16 +56,22 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
   }
   if (unmeasured.pixels === rows * cols) notice("empty-frame", "amplitude: no pixel was measured");
 
-  const topography = raw.topography === null ? null : cleanTopography(raw.topography, s);
-  const signal = cleanSignal(amplitude, raw.phase === null ? null : wrapped(finiteCopy(raw.phase)), rows, cols, s);
+  const topography = raw.topography === null ? null : cleanTopography(raw.topography, raw.retraceNoise?.topography, s);
+  const phase = raw.phase === null ? null : wrapped(finiteCopy(raw.phase));
+  const signal = cleanSignal(amplitude, phase, rows, cols, raw.retraceNoise ?? {}, s);
 
   const scarPixels = (topography?.scars.pixels ?? 0) + signal.scars.pixels;
   const scarRuns = (topography?.scars.runs ?? 0) + signal.scars.runs;
   if (scarPixels > s.badFrameScarShare * rows * cols) {
     notice("many-scars", `${scarPixels} pixels in ${scarRuns} scars were left out`);
   }
-  if (signal.phaseNoiseRad !== null && signal.phaseNoiseRad > 1) {
-    notice("phase-noisy", `phase: noise of ${signal.phaseNoiseRad.toFixed(2)} rad a pixel; it holds next to nothing`);
+  const noises = {
+    topography: topography?.noise ?? null,
+    amplitude: signal.amplitudeNoise,
+    phase: signal.phaseNoise,
+  };
+  if (noises.phase !== null && noises.phase.sd > 1) {
+    notice("phase-noisy", `phase: noise of ${noises.phase.sd.toFixed(2)} rad a pixel; it holds next to nothing`);
   }
   const pixel = raw.amplitude.pixel;
   const raster = (data: Float32Array): Raster => makeRaster(data, rows, cols, pixel);
@@ -90,9 +94,12 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
       rowPhaseSdRad: signal.rowPhaseSdRad,
       rowPhaseStepSdRad: signal.rowPhaseStepSdRad,
       topographyRowSdNm: topography?.rowSdNm ?? null,
-      amplitudeNoise: signal.amplitudeNoise,
-      phaseNoiseRad: signal.phaseNoiseRad,
-      topographyNoiseNm: topography?.noiseNm ?? null,
+      noise: {
+        amplitudeRelative: noises.amplitude.sd,
+        phaseRad: noises.phase?.sd ?? null,
+        topographyNm: noises.topography?.sd ?? null,
+        byRetrace: CHANNELS.filter((c) => noises[c]?.byRetrace === true),
+      },
       notices,
     },
   };
@@ -100,13 +107,15 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
 
 function cleanTopography(
   raster: Raster,
+  retraceNoise: number | undefined,
   s: CleanSettings,
-): { values: Float32Array; scars: Scars; rowSdNm: number; noiseNm: number } {
+): { values: Float32Array; scars: Scars; rowSdNm: number; noise: NoiseByLevel } {
   const rows = rowsOf(raster);
   const cols = colsOf(raster);
   const values = finiteCopy(raster);
   levelSurface(values, rows, cols, s.levelDegree);
-  const noise = measureNoise(values, null, rows, cols, false);
+  const differences = measureNoise(values, null, rows, cols, false);
+  const noise = scaledBy(differences, retraceNoise, differences.sd);
   let rowSdNm = 0;
   if (s.correctRows) {
     const links = linkRows(values, null, null, noise, rows, cols, false, s.leastRowPixels);
@@ -117,7 +126,7 @@ function cleanTopography(
   }
   const scars = findScars(values, null, noise, rows, cols, false, s.scarSigmas, s.scarLeastPixels);
   leaveOut(values, scars);
-  return { values, scars, rowSdNm, noiseNm: noise.sd };
+  return { values, scars, rowSdNm, noise };
 }
 
 interface CleanedSignal {
@@ -126,8 +135,9 @@ interface CleanedSignal {
   readonly rowGainSd: number;
   readonly rowPhaseSdRad: number | null;
   readonly rowPhaseStepSdRad: number | null;
-  readonly amplitudeNoise: number;
-  readonly phaseNoiseRad: number | null;
+  /** Relative. */
+  readonly amplitudeNoise: NoiseByLevel;
+  readonly phaseNoise: NoiseByLevel | null;
 }
 
 /** Amplitude and phase, both in place. */
@@ -136,12 +146,17 @@ function cleanSignal(
   phase: Float32Array | null,
   rows: number,
   cols: number,
+  retraceNoise: NonNullable<RawFrame["retraceNoise"]>,
   s: CleanSettings,
 ): CleanedSignal {
   const log = new Float32Array(amplitude.length);
   // noise can carry a weak amplitude to zero or below: such pixels keep their value, only ratios leave them out
   for (let p = 0; p < log.length; p++) log[p] = amplitude[p] > 0 ? Math.log(amplitude[p]) : Number.NaN;
-  const logNoise = measureNoise(log, amplitude, rows, cols, false);
+  const logNoise = scaledBy(
+    measureNoise(log, amplitude, rows, cols, false),
+    retraceNoise.amplitude,
+    measureNoise(amplitude, null, rows, cols, false).sd,
+  );
   const scarsOf = (values: Float32Array, noise: NoiseByLevel, isAngle: boolean): Scars =>
     findScars(values, amplitude, noise, rows, cols, isAngle, s.scarSigmas, s.scarLeastPixels);
   let rowGainSd = 0;
@@ -169,7 +184,8 @@ function cleanSignal(
   let rowPhaseSdRad: number | null = null;
   let rowPhaseStepSdRad: number | null = null;
   if (phase !== null) {
-    phaseNoise = measureNoise(phase, amplitude, rows, cols, true);
+    const differences = measureNoise(phase, amplitude, rows, cols, true);
+    phaseNoise = scaledBy(differences, retraceNoise.phase, differences.sd);
     if (s.correctRows) {
       const linked = phase.slice();
       if (scarred !== null) leaveOut(linked, scarred);
@@ -211,8 +227,8 @@ function cleanSignal(
     rowGainSd,
     rowPhaseSdRad,
     rowPhaseStepSdRad,
-    amplitudeNoise: logNoise.sd,
-    phaseNoiseRad: phaseNoise === null ? null : phaseNoise.sd,
+    amplitudeNoise: logNoise,
+    phaseNoise,
   };
 
   /** The relative noise as a noise in the amplitude's unit. */

@@ -13,6 +13,8 @@ export interface NoiseByLevel {
   readonly sds: Float64Array;
   /** Over all pixels. */
   readonly sd: number;
+  /** Whether its size is that of trace less retrace. */
+  readonly byRetrace: boolean;
 }
 
 export function sdAt(noise: NoiseByLevel, level: number): number {
@@ -58,11 +60,11 @@ export function measureNoise(
   const scale = SD_PER_MAD / Math.sqrt(6);
   const sd = n === 0 ? 0 : scale * medianInPlace(residuals.slice(0, n));
   const sds = new Float64Array(BINS).fill(sd);
-  if (level === null || n < 4 * LEAST_IN_BIN) return { low: 0, perLevel: 0, sds, sd };
+  if (level === null || n < 4 * LEAST_IN_BIN) return { low: 0, perLevel: 0, sds, sd, byRetrace: false };
   const sorted = levels.slice(0, n);
   const low = quantileInPlace(sorted, 0.01);
   const high = quantileInPlace(sorted, 0.99);
-  if (!(high > low)) return { low, perLevel: 0, sds, sd };
+  if (!(high > low)) return { low, perLevel: 0, sds, sd, byRetrace: false };
   const perLevel = BINS / (high - low);
   const inBin = new Float64Array(n);
   for (let bin = 0; bin < BINS; bin++) {
@@ -74,7 +76,19 @@ export function measureNoise(
     sds[bin] = m >= LEAST_IN_BIN ? scale * medianInPlace(inBin, m) : Number.NaN;
   }
   fillFromNeighbours(sds, sd);
-  return { low, perLevel, sds, sd };
+  return { low, perLevel, sds, sd, byRetrace: false };
+}
+
+/** The same noise, its course over the levels kept, at the size that trace and retrace say: what they share cancels, so it is right
+ *  where noise is correlated along the row and where the sample itself is rough from pixel to pixel.
+ *  @param retraceSd standard deviation by trace less retrace; undefined or 0: as it was
+ *  @param ownSd     what differences along the row say of the same values, all levels together */
+export function scaledBy(noise: NoiseByLevel, retraceSd: number | undefined, ownSd: number): NoiseByLevel {
+  if (retraceSd === undefined || !(retraceSd > 0)) return noise;
+  // Nothing to scale in values so coarse that most neighbours are alike.
+  if (!(ownSd > 0 && noise.sd > 0)) return noise;
+  const factor = retraceSd / ownSd;
+  return { ...noise, byRetrace: true, sd: factor * noise.sd, sds: noise.sds.map((v) => factor * v) };
 }
 
 /** A bin with too few pixels takes the nearest bin's value. */

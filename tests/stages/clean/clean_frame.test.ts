@@ -82,9 +82,9 @@ describe("line noise", () => {
       // ± 4 standard errors of a standard deviation from 200 rows
       expect(Math.abs(report.rowGainSd / 0.01 - 1)).toBeLessThan(0.25);
       expect(Math.abs((report.rowPhaseSdRad ?? 0) / 0.008 - 1)).toBeLessThan(0.4);
-      expect(Math.abs(report.amplitudeNoise / (0.05 / 2.2) - 1)).toBeLessThan(0.05);
-      expect(Math.abs((report.phaseNoiseRad ?? 0) / 0.035 - 1)).toBeLessThan(0.05);
-      expect(Math.abs((report.topographyNoiseNm ?? 0) / 0.12 - 1)).toBeLessThan(0.05);
+      expect(Math.abs(report.noise.amplitudeRelative / (0.05 / 2.2) - 1)).toBeLessThan(0.05);
+      expect(Math.abs((report.noise.phaseRad ?? 0) / 0.035 - 1)).toBeLessThan(0.05);
+      expect(Math.abs((report.noise.topographyNm ?? 0) / 0.12 - 1)).toBeLessThan(0.05);
     }
   });
 
