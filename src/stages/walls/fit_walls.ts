@@ -1,6 +1,7 @@
 import type { Tip } from "../../model/cooldown.js";
 import type { ProfileBins } from "../../model/pictures.js";
 import type { FrameStates, Signal } from "../../model/signal.js";
+import { median } from "../../numerics/quantile.js";
 import { FWHM_PER_SIGMA, RISE_PER_SIGMA, RISE_PER_W } from "../../model/units.js";
 import type { FrameWalls, Wall, WallProfile } from "../../model/walls.js";
 import { CorrelatedNoise, measureLags, powersOf } from "./correlation.js";
@@ -35,6 +36,18 @@ export function fitWalls(signal: Signal, states: FrameStates, tip: Tip | null, s
   fit.prepare(traced.patches);
   const profiles = fit.profiles();
   return { frame: signal.frame, walls, profiles, wallLengthNm, bins: fit.bins };
+}
+
+/** So many profiles on either side of one tell how wide its wall is. */
+const NEIGHBOURS = 3;
+
+/** A stretch with what its pixels say. */
+interface Fitted {
+  readonly stretch: Stretch;
+  readonly direction: Direction;
+  readonly estimate: ProfileEstimate | null;
+  /** Distance of each of its pixels from the fitted middle of the wall, nm. */
+  readonly offCentreNm: Float64Array | Float32Array;
 }
 
 class FrameFit {
@@ -203,10 +216,25 @@ class FrameFit {
   }
 
   profiles(): WallProfile[] {
-    return this.stretches.list.map((t) => this.profile(t));
+    const fitted = this.stretches.list.map((t) => this.fitted(t));
+    return fitted.map((f, k) => this.record(f, this.apparentBeside(fitted, k)));
   }
 
-  private profile(t: Stretch): WallProfile {
+  /** Width as seen of the profiles next to this one on its wall, without its own: what a profile is refused for must not depend on
+   *  which way its own noise has fallen, or those that are kept come out too narrow. Where a wall has no neighbours, the frame's. */
+  private apparentBeside(fitted: readonly Fitted[], k: number): number {
+    const beside: number[] = [];
+    const { wall } = fitted[k].stretch;
+    for (let m = Math.max(0, k - NEIGHBOURS); m <= Math.min(fitted.length - 1, k + NEIGHBOURS); m++) {
+      const { stretch, estimate } = fitted[m];
+      if (m !== k && stretch.wall === wall && estimate?.converged === true) beside.push(estimate.apparentNm);
+    }
+    if (beside.length < NEIGHBOURS) return this.apparentNm;
+    // a fit whose plateaux are out of reach comes out too narrow; the frame's width stands in for it
+    return Math.min(4, Math.max(0.7, median(beside) / this.apparentNm)) * this.apparentNm;
+  }
+
+  private fitted(t: Stretch): Fitted {
     const { data, projector, s } = this;
     const direction = this.directions[t.wall];
     const levels = projector.startLevels(direction);
@@ -225,7 +253,15 @@ class FrameFit {
       if (s.reachNm > 0 || Math.abs(wanted / reach - 1) < 0.2) break;
       reach = wanted;
     }
-    return this.record(t, direction, estimate, reach);
+    if (estimate !== null)
+      this.bins.push({
+        wall: t.wall,
+        profile: t.profile,
+        ...estimate.shape,
+        bins: drawnProfile(data, estimate, this.noise, this.stepNm),
+      });
+    const centre = estimate?.centreNm ?? 0;
+    return { stretch: t, direction, estimate, offCentreNm: data.distance.slice(0, data.count).map((d) => d - centre) };
   }
 
   private estimate(levels: { insulating: number; metallic: number }): ProfileEstimate | null {
@@ -255,27 +291,20 @@ class FrameFit {
     return true;
   }
 
-  private record(t: Stretch, direction: Direction, e: ProfileEstimate | null, reachNm: number): WallProfile {
-    const { data, projector } = this;
-    if (e !== null)
-      this.bins.push({
-        wall: t.wall,
-        profile: t.profile,
-        ...e.shape,
-        bins: drawnProfile(data, e, this.noise, this.stepNm),
-      });
+  private record(fitted: Fitted, apparentNm: number): WallProfile {
+    const { projector } = this;
+    const { stretch: t, direction, estimate: e, offCentreNm } = fitted;
     const at = t.middle;
     const centre = e === null || !(Math.abs(e.centreNm) < 2 * this.apparentNm) ? 0 : e.centreNm;
     const around: Surroundings = {
-      apparentNm: this.apparentNm,
-      reachNm,
+      apparentNm,
       freeInsulatingNm: t.freeInsulatingNm,
       freeMetallicNm: t.freeMetallicNm,
       curvaturePerNm: t.curvaturePerNm,
       contrast: Math.abs(projector.startLevels(direction).metallic - projector.startLevels(direction).insulating),
       frameLevels: projector.startLevels(direction),
     };
-    const flag = flagOf(data, e, around, this.s);
+    const flag = flagOf(offCentreNm, e, around, this.s);
     const resolved = e !== null && e.resolved && e.widthSdNm !== null;
     // the metallic side as the fit has turned it: the wall's line is distance = centre + tilt·arc
     const tilt = e === null || !(Math.abs(e.tilt) < 1) ? 0 : e.tilt;
@@ -300,7 +329,7 @@ class FrameFit {
       amplitudeInsulating: e === null ? null : projector.amplitude(direction, "insulating", e.insulating),
       amplitudeMetallic: e === null ? null : projector.amplitude(direction, "metallic", e.metallic),
       reducedChi2: e === null ? null : e.reducedChi2,
-      pixels: data.count,
+      pixels: offCentreNm.length,
       flag,
     };
   }

@@ -1,13 +1,11 @@
 import type { ProfileFlag } from "../../model/walls.js";
 import type { ProfileEstimate } from "./estimate.js";
-import type { ProfileData } from "./profile_data.js";
 import type { WallsSettings } from "./settings.js";
 
 /** What surrounds a profile, for judging it. Lengths in nm. */
 export interface Surroundings {
-  /** Width as seen of all the frame's walls together. */
+  /** Width as seen of the walls around, the profile's own left out. */
   readonly apparentNm: number;
-  readonly reachNm: number;
   readonly freeInsulatingNm: number;
   readonly freeMetallicNm: number;
   readonly curvaturePerNm: number;
@@ -28,26 +26,27 @@ const LEVEL_SLACK = 0.06;
 /** Largest product of curvature and apparent width. */
 const LARGEST_BEND = 1;
 
-/** Why a profile's numbers should not enter statistics; "" where they may. */
+/** Why a profile's numbers should not enter statistics; "" where they may. Nothing here depends on the profile's own fitted width: a limit
+ *  on it would keep the narrow half of the scatter.
+ *  @param offCentreNm distance of each pixel from the fitted middle of the wall */
 export function flagOf(
-  data: ProfileData,
+  offCentreNm: ArrayLike<number>,
   e: ProfileEstimate | null,
   around: Surroundings,
   s: WallsSettings,
 ): ProfileFlag {
-  if (e === null || data.count < s.leastPixels) return "few-pixels";
+  if (e === null || offCentreNm.length < s.leastPixels) return "few-pixels";
   if (!e.converged || Math.abs(e.centreNm) > around.apparentNm || e.upper95Nm === null) return "not-converged";
-  // a fit whose plateaux are out of reach comes out too narrow; the frame's width stands in for it
-  const apparent = Math.max(e.apparentNm, 0.7 * around.apparentNm);
+  const apparent = around.apparentNm;
   if (2 * Math.min(around.freeInsulatingNm, around.freeMetallicNm) < LEAST_GAP * apparent) return "near-other-wall";
   let below = 0;
   let above = 0;
-  for (let k = 0; k < data.count; k++) {
-    const x = data.distance[k] - e.centreNm;
+  for (let k = 0; k < offCentreNm.length; k++) {
+    const x = offCentreNm[k];
     if (x < -PLATEAU_FROM * apparent) below++;
     else if (x > PLATEAU_FROM * apparent) above++;
   }
-  if (Math.min(below, above) < Math.max(3, PLATEAU_SHARE * data.count)) return "plateau-not-reached";
+  if (Math.min(below, above) < Math.max(3, PLATEAU_SHARE * offCentreNm.length)) return "plateau-not-reached";
   for (const state of ["insulating", "metallic"] as const) {
     if (e.levelSd[state] > LEVEL_SD * around.contrast) return "plateau-not-reached";
     const off = Math.abs(e[state] - around.frameLevels[state]);
