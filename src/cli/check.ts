@@ -8,8 +8,8 @@ interface CheckOptions {
   readonly allowOutside?: boolean;
 }
 
-/** `coldseam check`: everything is read, every pixel too; all problems of description, files and pixels are said at once. */
-export async function check(yaml: string, o: CheckOptions): Promise<void> {
+/** `coldseam check`, of the files that describe one cooldown: everything is read, every pixel too; all problems of description, files and pixels are said at once. */
+export async function check(yaml: readonly string[], o: CheckOptions): Promise<void> {
   const survey = await surveyCooldown(yaml, { allowOutside: o.allowOutside === true, hashSources: false });
   const { cooldown, frames } = survey;
   if (cooldown !== null) print(`${describeCooldown(cooldown).join("\n")}\n`);
@@ -30,5 +30,5 @@ export async function check(yaml: string, o: CheckOptions): Promise<void> {
   print(
     `ready: ${frames.length} frames read, ${notices.length === 0 ? "nothing to remark" : countOf(notices.length, "remark")}\n`,
   );
-  print(`next: coldseam ingest ${plainText(yaml)} --db FILE.sqlite\n`);
+  print(`next: coldseam ingest ${yaml.map(plainText).join(" ")} --db FILE.sqlite\n`);
 }

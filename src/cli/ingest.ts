@@ -1,6 +1,6 @@
 import os from "node:os";
 import { UsageError } from "../model/errors.js";
-import { plainText } from "../model/text.js";
+import { countOf, plainText } from "../model/text.js";
 import { readCooldown } from "../input/index.js";
 import { settingRecord, settingsWith } from "../settings.js";
 import { openForWriting } from "../store/open.js";
@@ -27,8 +27,9 @@ export function workerCount(text: string | undefined): number {
   return n;
 }
 
-/** `coldseam ingest`: read, analyse, store in one transaction, and say what was found. Returns the number of the analysis. */
-export async function ingest(yaml: string, o: IngestOptions): Promise<number> {
+/** `coldseam ingest`, of the files that describe one cooldown: read, analyse, store in one transaction, and say what was found. Returns the
+ *  number of the analysis. */
+export async function ingest(yaml: string | readonly string[], o: IngestOptions): Promise<number> {
   const workers = workerCount(o.workers);
   const settings = settingsWith(o.set);
   // Before the database is made: a description that cannot be used leaves nothing behind.
@@ -47,7 +48,11 @@ export async function ingest(yaml: string, o: IngestOptions): Promise<number> {
       );
       return there;
     }
-    await refuseOtherContent(db, cooldown);
+    const known = await refuseOtherContent(db, cooldown);
+    if (known !== null && known < cooldown.frames.length)
+      say(
+        `${plainText(cooldown.cooldown)}: ${countOf(known, "frame")} known, ${cooldown.frames.length - known} new; the whole is analysed`,
+      );
     // Loaded only now: a repeated ingest needs none of the numerics.
     const { analyse } = await import("../analyse.js");
     const progress = makeProgress(plainText(cooldown.cooldown), cooldown.frames.length);

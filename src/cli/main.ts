@@ -36,9 +36,9 @@ function build(): Command {
   program
     .command("check")
     .description("read everything a cooldown.yaml names, say what was found and what is wrong; write nothing")
-    .argument("<yaml>", "the cooldown's description")
+    .argument("<yaml...>", "the cooldown's description; several files that describe parts of one cooldown are joined")
     .option("--allow-outside", "allow image files outside the folder of the YAML file")
-    .action(async (yaml: string, o: object) => (await import("./check.js")).check(yaml, o));
+    .action(async (yaml: string[], o: object) => (await import("./check.js")).check(yaml, o));
 
   program
     .command("draft")
@@ -49,12 +49,12 @@ function build(): Command {
   program
     .command("ingest")
     .description("analyse a cooldown and store the result; the same work is recognised and not done twice")
-    .argument("<yaml>", "the cooldown's description")
+    .argument("<yaml...>", "the cooldown's description; several files that describe parts of one cooldown are joined")
     .addOption(db())
     .option("--workers <n>", "worker threads (default: the cores; 0: none)")
     .option("--set <name=value>", "change a setting; may be repeated", collect, [])
     .option("--allow-outside", "allow image files outside the folder of the YAML file")
-    .action(async (yaml: string, o: object) => void (await (await import("./ingest.js")).ingest(yaml, o as never)));
+    .action(async (yaml: string[], o: object) => void (await (await import("./ingest.js")).ingest(yaml, o as never)));
 
   program
     .command("cooldowns")

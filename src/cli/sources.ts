@@ -7,13 +7,15 @@ import type { Db } from "../store/open.js";
 import path from "node:path";
 
 /** Refuses a cooldown whose name already stands for something else, before its long analysis. Its images are read only where the
- *  database knows the name. Throws InputError. */
-export async function refuseOtherContent(db: Db, cooldown: Cooldown): Promise<void> {
-  if (knownCooldown(db, cooldown.cooldown) === null) return;
+ *  database knows the name. Returns how many of its frames the newest analysis there has; null where the name is new. Throws InputError. */
+export async function refuseOtherContent(db: Db, cooldown: Cooldown): Promise<number | null> {
+  const known = knownCooldown(db, cooldown.cooldown);
+  if (known === null) return null;
   checkName(db, cooldown, null);
   const images: string[] = [];
   for (const info of cooldown.frames) images.push(frameDigest(await loadFrame(cooldown, info)));
   checkName(db, cooldown, images);
+  return known.frames.length;
 }
 
 /** Reads every image file once more and compares it with the SHA-256 it had when the cooldown was described: what is stored must be

@@ -1,165 +1,45 @@
-import { dirname, resolve } from "node:path";
-import type { Cooldown, FrameInfo, Notice, SourceFile } from "../model/cooldown.js";
+import type { Cooldown } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
-import type { PixelSize } from "../model/raster.js";
-import { plainText } from "../model/text.js";
-import { checkImages } from "./check_images.js";
 import { checkOrder } from "./check_order.js";
-import { crossProblems } from "./cross_checks.js";
-import { withExclusions } from "./exclusions.js";
-import { systemWords } from "./image_file.js";
-import { HeaderBook } from "./image_headers.js";
-import { numberFrames } from "./number_frames.js";
-import { findPixelSize } from "./pixel_size.js";
-import { cooldownSchema, excludeSchema, seriesSchema, thermometrySchema, type CooldownEntry } from "./schema.js";
-import type { SeriesEntry } from "./schema.js";
-import { schemaProblems } from "./schema_problems.js";
-import { readTextFile, writtenSeries, type WrittenSeries } from "./series_frames.js";
-import { hashFile, imageFiles, sourceOf } from "./source_files.js";
-import { shownPath } from "./source_path.js";
-import { hashLog, readThermometry, temperaturesFromLog, type Thermometry } from "./thermometry.js";
-import { channelScales, photonEnergyMeV } from "./units.js";
-import { isRecord, parseYaml, type YamlDocument } from "./yaml_document.js";
+import { joinFiles } from "./join_files.js";
+import { surveyFile, type FileSurvey, type ReadOptions, type Survey } from "./survey_file.js";
 
-export interface ReadOptions {
-  /** Follow paths that leave the YAML file's folder. Default false. */
-  readonly allowOutside?: boolean;
-  /** Read every file once for its SHA-256; without it `sources` is empty. Default true. */
-  readonly hashSources?: boolean;
-}
-
-/** What was found of a cooldown, sound or not. */
-export interface Survey {
-  /** null where there is a problem. */
-  readonly cooldown: Cooldown | null;
-  readonly problems: readonly Problem[];
-  /** The frames whose images can be read, also where something else is wrong; numbered as far as they were found. */
-  readonly frames: readonly FrameInfo[];
-  readonly pixel: PixelSize | null;
-  readonly notices: readonly Notice[];
-}
+export type { ReadOptions, Survey } from "./survey_file.js";
 
 /**
  * Reads a `cooldown.yaml`, its frame tables and the headers of its images, and checks all of it; no pixel is read. Frames stand in
  * the order of the YAML file, units are nm, K, meV, and each source carries the factor that takes its file to nm or rad.
+ * Several files that describe parts of one cooldown are joined in their order.
  * Throws one InputError with every problem found: place in the file, what was found and expected, what to do.
  */
-export async function readCooldown(yamlFile: string, options: ReadOptions = {}): Promise<Cooldown> {
-  const { cooldown, problems } = await surveyCooldown(yamlFile, options);
+export async function readCooldown(
+  yamlFiles: string | readonly string[],
+  options: ReadOptions = {},
+): Promise<Cooldown> {
+  const { cooldown, problems } = await surveyCooldown(yamlFiles, options);
   if (cooldown === null) throw new InputError(problems);
   return cooldown;
 }
 
-/** As `readCooldown`, but hands back the problems beside what is sound. Throws InputError only where the file is no YAML at all. */
-export async function surveyCooldown(yamlFile: string, options: ReadOptions = {}): Promise<Survey> {
-  const yamlPath = resolve(yamlFile);
-  const folder = dirname(yamlPath);
-  const yaml = readYaml(yamlPath, yamlFile);
-  const doc = parseYaml(yaml.toString("utf8"), plainText(yamlFile));
-  const whole = cooldownSchema.safeParse(doc.value);
-  const problems: Problem[] = whole.success ? [] : schemaProblems(whole.error.issues, doc);
-  problems.push(...crossProblems(doc));
-  const notices: Notice[] = [];
-
-  // Each part that is sound in itself is followed to its files even where something else is wrong: all is told in one go.
-  const top = isRecord(doc.value) ? doc.value : {};
-  const { channels, scan } = cooldownSchema.shape;
-  const thermometryEntry = thermometrySchema.safeParse(top["thermometry"]).data;
-  const context = {
-    doc,
-    folder,
-    allowOutside: options.allowOutside ?? false,
-    problems,
-    fromLog: top["thermometry"] !== undefined,
-  };
-  const thermometry = thermometryEntry === undefined ? null : readThermometry(thermometryEntry, context);
-  const entries = seriesEntries(doc);
-  const written = entries.map((s) => writtenSeries(s.entry, ["series", s.index], context));
-  const headers = new HeaderBook(problems, notices);
-  const scales = channelScales(channels.safeParse(top["channels"]).data);
-  const checked = await checkImages(written, scales, headers, problems, notices, context.fromLog);
-  const pixel = findPixelSize(scan.safeParse(top["scan"]).data, headers.pixelClaims, doc, problems, notices);
-  const temperatures = thermometry === null ? [] : temperaturesFromLog(checked.flat(), thermometry, problems, notices);
-
-  const series = entries.map((s) => ({ index: s.index, branch: s.entry.branch }));
-  const numbered = numberFrames(series, checked, temperatures);
-  // Numbers of frames mean something only where none is missing.
-  const exclusions = problems.length > 0 ? [] : (excludeSchema.safeParse(top["exclude"]).data ?? []);
-  const frames = withExclusions(numbered, exclusions, pixel, doc, problems);
-  problems.sort(byPlace(plainText(yamlFile)));
-  if (problems.length > 0 || !whole.success || pixel === null) {
-    return { cooldown: null, problems, frames, pixel, notices };
+/** As `readCooldown`, but hands back the problems beside what is sound. Throws InputError only where a file is no YAML at all. */
+export async function surveyCooldown(
+  yamlFiles: string | readonly string[],
+  options: ReadOptions = {},
+): Promise<Survey> {
+  const files: FileSurvey[] = [];
+  const unread: Problem[] = [];
+  for (const yamlFile of typeof yamlFiles === "string" ? [yamlFiles] : yamlFiles) {
+    try {
+      files.push(await surveyFile(yamlFile, options));
+    } catch (e) {
+      if (!(e instanceof InputError)) throw e;
+      unread.push(...e.problems);
+    }
   }
-  const sources =
-    options.hashSources === false ? [] : await hashAll(yamlPath, folder, yaml, written, thermometry, frames);
-  notices.push(...checkOrder(frames, pixel, whole.data.tip?.resolution_nm ?? null));
-  const cooldown = { ...described(whole.data), pixel, yamlFile: yamlPath, frames, sources, notices };
-  return { cooldown, problems, frames, pixel, notices };
-}
-
-/** Problems of the YAML file first, in its order; the others as they came. */
-function byPlace(yamlName: string): (a: Problem, b: Problem) => number {
-  const place = (p: Problem): number => {
-    const m = p.at.startsWith(`${yamlName}:`) ? /:(\d+):(\d+)$/.exec(p.at) : null;
-    return m === null ? Infinity : Number(m[1]) * 1e5 + Number(m[2]);
-  };
-  return (a, b) => {
-    const [x, y] = [place(a), place(b)];
-    return x === y ? 0 : x - y;
-  };
-}
-
-function readYaml(path: string, shown: string): Buffer {
-  try {
-    return readTextFile(path, 16 * 1024 * 1024);
-  } catch (e) {
-    const fix = "give the path of a cooldown.yaml";
-    throw new InputError({ at: plainText(shown), problem: systemWords(e), fix }, e);
-  }
-}
-
-interface IndexedEntry {
-  readonly index: number;
-  readonly entry: SeriesEntry;
-}
-
-function seriesEntries(doc: YamlDocument): IndexedEntry[] {
-  const value = doc.value;
-  if (typeof value !== "object" || value === null || !("series" in value) || !Array.isArray(value.series)) return [];
-  return value.series.flatMap((raw: unknown, index) => {
-    const parsed = seriesSchema.safeParse(raw);
-    return parsed.success ? [{ index, entry: parsed.data }] : [];
-  });
-}
-
-function described(y: CooldownEntry): Omit<Cooldown, "yamlFile" | "pixel" | "frames" | "sources" | "notices"> {
-  return {
-    sample: y.sample,
-    cooldown: y.cooldown,
-    region: y.region ?? null,
-    tip:
-      y.tip === undefined ? null : { resolutionNm: y.tip.resolution_nm, resolutionSdNm: y.tip.resolution_sd_nm ?? 0 },
-    photonEnergyMeV: photonEnergyMeV(y.light),
-    filmThicknessNm: y.film?.thickness_nm ?? null,
-    amplitudeUnit: y.channels?.amplitude?.unit ?? "",
-    amplitudeHarmonic: y.channels?.amplitude?.harmonic ?? null,
-  };
-}
-
-/** The YAML file, the tables, the log and the images, each file once, in the order in which they are named. */
-async function hashAll(
-  yamlPath: string,
-  folder: string,
-  yaml: Buffer,
-  written: readonly WrittenSeries[],
-  thermometry: Thermometry | null,
-  frames: readonly FrameInfo[],
-): Promise<SourceFile[]> {
-  const out = new Map<string, SourceFile>([[yamlPath, sourceOf(yamlPath, folder, yaml)]]);
-  for (const s of written) if (s.table !== null) out.set(s.table.path, sourceOf(s.table.path, folder, s.table.bytes));
-  if (thermometry !== null && !out.has(thermometry.path)) out.set(thermometry.path, await hashLog(thermometry, folder));
-  for (const file of imageFiles(frames)) {
-    if (!out.has(file)) out.set(file, await hashFile(file, shownPath(folder, file)));
-  }
-  return [...out.values()];
+  if (unread.length > 0) throw new InputError(unread);
+  const survey = joinFiles(files);
+  if (survey.cooldown === null) return survey;
+  const { frames, pixel, tip } = survey.cooldown;
+  const notices = [...survey.notices, ...checkOrder(frames, pixel, tip?.resolutionNm ?? null)];
+  return { ...survey, notices, cooldown: { ...survey.cooldown, notices } };
 }
