@@ -23,9 +23,13 @@ export function zeroPad(
 }
 
 /** conj(a)·b of two interleaved complex spectra. Its inverse transform is Σ_x a(x) b(x + lag) at each lag, negative lags
- *  wrapped to the far end. */
-export function conjugateProduct(a: Float64Array, b: Float64Array): Float64Array {
-  const out = new Float64Array(a.length);
+ *  wrapped to the far end.
+ *  @param out where the product goes, of the same length */
+export function conjugateProduct(
+  a: Float64Array,
+  b: Float64Array,
+  out: Float64Array = new Float64Array(a.length),
+): Float64Array {
   for (let k = 0; k < a.length; k += 2) {
     const ar = a[k];
     const ai = a[k + 1];

@@ -1,5 +1,6 @@
 import { createRequire } from "node:module";
 import type { OpenCv } from "opencv-wasm";
+import { conjugateProduct } from "./fourier.js";
 
 type Mat = InstanceType<OpenCv["Mat"]>;
 
@@ -18,13 +19,20 @@ function load(): OpenCv {
   return loaded.cv;
 }
 
-const cv = load();
+let loadedCv: OpenCv | null = null;
+
+/** Loaded at the first use: a thread or command that needs none of it does not wait for it. */
+function opencv(): OpenCv {
+  loadedCv ??= load();
+  return loadedCv;
+}
 
 /** Runs `work` with a maker of matrices that are all freed at the end; OpenCV's thrown pointers become Errors. */
-function withMats<T>(work: (make: (rows: number, cols: number, type: number) => Mat) => T): T {
+function withMats<T>(work: (cv: OpenCv, make: (rows: number, cols: number, type: number) => Mat) => T): T {
   const made: Mat[] = [];
+  const cv = opencv();
   try {
-    return work((rows, cols, type) => {
+    return work(cv, (rows, cols, type) => {
       const mat = rows === 0 ? new cv.Mat() : new cv.Mat(rows, cols, type);
       made.push(mat);
       return mat;
@@ -59,7 +67,7 @@ export function gaussianBlur(
 ): Float32Array {
   checkSize(data.length, rows, cols);
   if (!(sigmaXPx >= 0) || !(sigmaYPx >= 0)) throw new RangeError(`blur of ${sigmaXPx}, ${sigmaYPx} px`);
-  return withMats((make) => {
+  return withMats((cv, make) => {
     const src = make(rows, cols, cv.CV_32FC1);
     const dst = make(0, 0, 0);
     src.data32F.set(data);
@@ -74,7 +82,7 @@ export function gaussianBlur(
 /** Two-dimensional discrete Fourier transform of a real row-major image: interleaved complex, rows × cols × 2. */
 export function dft2(data: Float64Array, rows: number, cols: number): Float64Array {
   checkSize(data.length, rows, cols);
-  return withMats((make) => {
+  return withMats((cv, make) => {
     const src = make(rows, cols, cv.CV_64FC1);
     const dst = make(0, 0, 0);
     src.data64F.set(data);
@@ -86,12 +94,27 @@ export function dft2(data: Float64Array, rows: number, cols: number): Float64Arr
 /** Inverse of `dft2`, scaled by 1/(rows·cols), for spectra of real images: the real part, rows × cols. */
 export function idft2(spectrum: Float64Array, rows: number, cols: number): Float64Array {
   checkSize(spectrum.length, rows, cols, 2);
-  return withMats((make) => {
+  return withMats((cv, make) => {
     const src = make(rows, cols, cv.CV_64FC2);
     const dst = make(0, 0, 0);
     src.data64F.set(spectrum);
     cv.dft(src, dst, cv.DFT_INVERSE + cv.DFT_SCALE + cv.DFT_REAL_OUTPUT, 0);
     return dst.data64F.slice();
+  });
+}
+
+/** Σ_x a(x) b(x + lag) at each lag, rows × cols, negative lags wrapped to the far end, from the spectra that `dft2` gives.
+ *  @param out where the answer goes, rows·cols long: correlations are many, and new memory for each costs more than the transform */
+export function correlate2(a: Float64Array, b: Float64Array, rows: number, cols: number, out: Float64Array): void {
+  checkSize(a.length, rows, cols, 2);
+  checkSize(b.length, rows, cols, 2);
+  checkSize(out.length, rows, cols);
+  withMats((cv, make) => {
+    const src = make(rows, cols, cv.CV_64FC2);
+    const dst = make(0, 0, 0);
+    conjugateProduct(a, b, src.data64F);
+    cv.dft(src, dst, cv.DFT_INVERSE + cv.DFT_SCALE + cv.DFT_REAL_OUTPUT, 0);
+    out.set(dst.data64F);
   });
 }
 
@@ -104,7 +127,7 @@ export function connectedComponents(
   connectivity: 4 | 8,
 ): { count: number; labels: Int32Array } {
   checkSize(mask.length, rows, cols);
-  const raw = withMats((make) => {
+  const raw = withMats((cv, make) => {
     const src = make(rows, cols, cv.CV_8UC1);
     const dst = make(0, 0, 0);
     src.data.set(mask);
@@ -129,7 +152,7 @@ export function connectedComponents(
 export function distanceTransform(mask: Uint8Array, rows: number, cols: number): Float32Array {
   checkSize(mask.length, rows, cols);
   if (!mask.includes(0)) return new Float32Array(mask.length).fill(Number.POSITIVE_INFINITY);
-  return withMats((make) => {
+  return withMats((cv, make) => {
     const src = make(rows, cols, cv.CV_8UC1);
     const dst = make(0, 0, 0);
     src.data.set(mask);

@@ -1,7 +1,7 @@
 import { dropNaNInPlace, selectInPlace, SD_PER_MAD } from "../../numerics/quantile.js";
-import { conjugateProduct, fastLength } from "../../raster/fourier.js";
-import { dft2, idft2 } from "../../raster/opencv.js";
-import type { Grid } from "./grid.js";
+import { fastLength } from "../../raster/fourier.js";
+import { correlate2 } from "../../raster/opencv.js";
+import type { CoarseImage } from "./coarse_image.js";
 
 /** A maximum of the correlation, at lags in pixels of the grid: feature at x in the reference lies at x + lag in the moving frame. */
 export interface Peak {
@@ -19,10 +19,6 @@ export interface CoarseOptions {
   readonly leastOverlap: number;
 }
 
-/** Relief wider than this share of the side (tilt, bow) is taken off before correlating: it is the same at any shift. */
-const WIDEST = 0.2;
-/** Structure is bent smoothly to this many robust standard deviations, so that one high particle does not outvote the rest. */
-const CLIP = 4;
 const PEAKS = 4;
 /** Two maxima nearer than this are one. */
 const APART_PX = 3;
@@ -60,36 +56,93 @@ function heightsOf(
   reachY: number,
   options: CoarseOptions,
 ): Float64Array | null {
+  if (!reference.hasStructure || !moving.hasStructure) return null;
   const { rows, cols } = paddedSize(reference, moving, options);
-  const a = reference.spectra(rows, cols);
-  const b = moving.spectra(rows, cols);
-  if (a === null || b === null) return null;
-  const lag = (p: Float64Array, q: Float64Array): Float64Array => idft2(conjugateProduct(p, q), rows, cols);
-  const n = lag(a.mask, b.mask);
-  const sumA = lag(a.value, b.mask);
-  const sumB = lag(a.mask, b.value);
-  const squareA = lag(a.square, b.mask);
-  const squareB = lag(a.mask, b.square);
-  const product = lag(a.value, b.value);
+  const product = new Float64Array(rows * cols);
+  correlate2(reference.value(rows, cols), moving.value(rows, cols), rows, cols, product);
+  const overlap =
+    reference.isWhole && moving.isWhole
+      ? wholeOverlaps(reference, moving)
+      : maskedOverlaps(reference, moving, rows, cols);
 
-  const least = Math.max(50, options.leastOverlap * Math.min(a.count, b.count));
+  const least = Math.max(50, options.leastOverlap * Math.min(reference.count, moving.count));
   const width = 2 * reachX + 1;
   const score = new Float64Array(width * (2 * reachY + 1)).fill(Number.NaN);
+  const o = { n: 0, sumA: 0, sumB: 0, squareA: 0, squareB: 0 };
   for (let y = -reachY; y <= reachY; y++) {
     const wrapped = (y < 0 ? y + rows : y) * cols;
     for (let x = -reachX; x <= reachX; x++) {
-      const p = wrapped + (x < 0 ? x + cols : x);
-      const m = n[p];
+      overlap(y, x, o);
+      const m = o.n;
       if (m < least) continue;
-      const va = squareA[p] - (sumA[p] * sumA[p]) / m;
-      const vb = squareB[p] - (sumB[p] * sumB[p]) / m;
+      const va = o.squareA - (o.sumA * o.sumA) / m;
+      const vb = o.squareB - (o.sumB * o.sumB) / m;
       if (!(va > 1e-6 * m && vb > 1e-6 * m)) continue;
-      const r = Math.max(-0.9999, Math.min(0.9999, (product[p] - (sumA[p] * sumB[p]) / m) / Math.sqrt(va * vb)));
+      const p = wrapped + (x < 0 ? x + cols : x);
+      const r = Math.max(-0.9999, Math.min(0.9999, (product[p] - (o.sumA * o.sumB) / m) / Math.sqrt(va * vb)));
       score[(y + reachY) * width + x + reachX] = Math.atanh(r) * Math.sqrt(m);
     }
   }
   const spread = spreadOf(score);
   return spread === null ? null : score.map((v) => v / spread);
+}
+
+/** Sums over the pixels that both know at one lag. */
+interface Overlap {
+  n: number;
+  sumA: number;
+  sumB: number;
+  squareA: number;
+  squareB: number;
+}
+
+type OverlapAt = (lagY: number, lagX: number, out: Overlap) => void;
+
+/** Two images without gaps overlap in a rectangle: its sums come from summed areas (Crow 1984, Comput. Graph. 18, 207; for correlation Lewis 1995). */
+function wholeOverlaps(a: CoarseImage, b: CoarseImage): OverlapAt {
+  const areaA = a.areas();
+  const areaB = b.areas();
+  const box = (t: Float64Array, width: number, top: number, left: number, height: number, across: number): number => {
+    const upper = top * width + left;
+    const lower = upper + height * width;
+    return t[lower + across] - t[lower] - t[upper + across] + t[upper];
+  };
+  return (y, x, out) => {
+    const top = Math.max(0, -y);
+    const left = Math.max(0, -x);
+    const height = Math.min(a.rows, b.rows - y) - top;
+    const across = Math.min(a.cols, b.cols - x) - left;
+    out.n = height > 0 && across > 0 ? height * across : 0;
+    if (out.n === 0) return;
+    out.sumA = box(areaA.value, a.cols + 1, top, left, height, across);
+    out.squareA = box(areaA.square, a.cols + 1, top, left, height, across);
+    out.sumB = box(areaB.value, b.cols + 1, top + y, left + x, height, across);
+    out.squareB = box(areaB.square, b.cols + 1, top + y, left + x, height, across);
+  };
+}
+
+/** With gaps the sums are correlations too. */
+function maskedOverlaps(a: CoarseImage, b: CoarseImage, rows: number, cols: number): OverlapAt {
+  const lag = (p: Float64Array, q: Float64Array): Float64Array => {
+    const out = new Float64Array(rows * cols);
+    correlate2(p, q, rows, cols, out);
+    return out;
+  };
+  const gapsA = a.gaps(rows, cols);
+  const gapsB = b.gaps(rows, cols);
+  const n = lag(gapsA.mask, gapsB.mask);
+  const sumA = lag(a.value(rows, cols), gapsB.mask);
+  const sumB = lag(gapsA.mask, b.value(rows, cols));
+  const squareA = lag(gapsA.square, gapsB.mask);
+  const squareB = lag(gapsA.mask, gapsB.square);
+  return (y, x, out) => {
+    const p = (y < 0 ? y + rows : y) * cols + (x < 0 ? x + cols : x);
+    out.n = n[p];
+    out.sumA = sumA[p];
+    out.sumB = sumB[p];
+    out.squareA = squareA[p];
+    out.squareB = squareB[p];
+  };
 }
 
 /** Robust standard deviation about 0 of what is not NaN. */
@@ -106,122 +159,6 @@ function paddedSize(a: CoarseImage, b: CoarseImage, o: CoarseOptions): { rows: n
     rows: fastLength(rows + Math.floor(o.largestJump * rows) + 1),
     cols: fastLength(cols + Math.floor(o.largestJump * cols) + 1),
   };
-}
-
-interface Spectra {
-  readonly mask: Float64Array;
-  readonly value: Float64Array;
-  readonly square: Float64Array;
-  readonly count: number;
-}
-
-/** One image of the coarse step. What depends on it alone is computed once: it takes part in many pairs. */
-export class CoarseImage {
-  readonly rows: number;
-  readonly cols: number;
-  private readonly structure: Float64Array | null;
-  private kept: { rows: number; cols: number; spectra: Spectra } | null = null;
-
-  constructor(readonly grid: Grid) {
-    this.rows = grid.rows;
-    this.cols = grid.cols;
-    this.structure = structureOf(grid);
-  }
-
-  /** Transforms, zero-padded to rows × cols, of mask, mask·value and mask·value², the value being the structure alone in units of its
-   *  spread. null where there is none. */
-  spectra(rows: number, cols: number): Spectra | null {
-    if (this.structure === null) return null;
-    if (this.kept !== null && this.kept.rows === rows && this.kept.cols === cols) return this.kept.spectra;
-    const mask = new Float64Array(rows * cols);
-    const value = new Float64Array(rows * cols);
-    const square = new Float64Array(rows * cols);
-    let count = 0;
-    for (let i = 0; i < this.rows; i++) {
-      for (let j = 0; j < this.cols; j++) {
-        const p = i * this.cols + j;
-        if (this.grid.known[p] === 0) continue;
-        const q = i * cols + j;
-        const v = this.structure[p];
-        mask[q] = 1;
-        value[q] = v;
-        square[q] = v * v;
-        count++;
-      }
-    }
-    const spectra = {
-      mask: dft2(mask, rows, cols),
-      value: dft2(value, rows, cols),
-      square: dft2(square, rows, cols),
-      count,
-    };
-    this.kept = { rows, cols, spectra };
-    return spectra;
-  }
-}
-
-/** The grid without its wide relief and without row offsets, bent to ±CLIP robust standard deviations. */
-function structureOf(grid: Grid): Float64Array | null {
-  const { rows, cols } = grid;
-  const wide = boxMean(grid, Math.round(WIDEST * cols), Math.round(WIDEST * rows));
-  const out = new Float64Array(rows * cols);
-  const sizes = new Float64Array(rows * cols);
-  let count = 0;
-  for (let i = 0; i < rows; i++) {
-    let sum = 0;
-    let n = 0;
-    for (let p = i * cols; p < (i + 1) * cols; p++) {
-      if (grid.known[p] === 0) continue;
-      out[p] = grid.values[p] - wide[p];
-      sum += out[p];
-      n++;
-    }
-    for (let p = i * cols; p < (i + 1) * cols; p++) {
-      if (grid.known[p] === 0) continue;
-      out[p] -= sum / n;
-      sizes[count++] = Math.abs(out[p]);
-    }
-  }
-  if (count === 0) return null;
-  const spread = SD_PER_MAD * selectInPlace(sizes, count >> 1, count);
-  if (!(spread > 0)) return null;
-  for (let p = 0; p < out.length; p++) out[p] = CLIP * Math.tanh(out[p] / (CLIP * spread));
-  return out;
-}
-
-/** Mean of the known pixels in the box of ±halfX, ±halfY round each pixel, by summed areas. */
-function boxMean(grid: Grid, halfX: number, halfY: number): Float64Array {
-  const { rows, cols, values, known } = grid;
-  const width = cols + 1;
-  const sum = new Float64Array((rows + 1) * width);
-  const count = new Float64Array((rows + 1) * width);
-  for (let i = 0; i < rows; i++) {
-    let s = 0;
-    let n = 0;
-    for (let j = 0; j < cols; j++) {
-      const p = i * cols + j;
-      if (known[p] > 0) {
-        s += values[p];
-        n++;
-      }
-      const q = (i + 1) * width + j + 1;
-      sum[q] = sum[q - width] + s;
-      count[q] = count[q - width] + n;
-    }
-  }
-  const out = new Float64Array(rows * cols);
-  for (let i = 0; i < rows; i++) {
-    const top = Math.max(0, i - halfY) * width;
-    const bottom = Math.min(rows, i + halfY + 1) * width;
-    for (let j = 0; j < cols; j++) {
-      const left = Math.max(0, j - halfX);
-      const right = Math.min(cols, j + halfX + 1);
-      const n = count[bottom + right] - count[top + right] - count[bottom + left] + count[top + left];
-      if (n > 0)
-        out[i * cols + j] = (sum[bottom + right] - sum[top + right] - sum[bottom + left] + sum[top + left]) / n;
-    }
-  }
-  return out;
 }
 
 function findPeaks(score: Float64Array, width: number, height: number, reachX: number, reachY: number): Peak[] {

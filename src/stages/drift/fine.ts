@@ -1,7 +1,8 @@
-import { stationaryCovariance } from "./noise_covariance.js";
+import { stationaryCovariance, windowsOf } from "./noise_covariance.js";
 import { larger, scoreCovariance, type Sym2 } from "./score_covariance.js";
-import { PairSums, type Slope } from "./pair_sums.js";
-import { offsetFor, sampleShifted, type Shifted, type Sloped } from "./shifted.js";
+import { PairSums } from "./pair_sums.js";
+import { offsetFor, type Sloped } from "./shifted.js";
+import type { Slope } from "./slope_sums.js";
 
 export interface FineShift {
   /** The feature at (row, col) of the reference lies at (row + dy, col + dx) of the moving frame; pixels. */
@@ -33,8 +34,12 @@ export interface FineOptions {
 }
 
 const ITERATIONS = 25;
-/** Gradients are sampled anew where the shift has moved farther than this. */
-const GRADIENT_REACH_PX = 0.15;
+/** The derivative of the weighted residuals is a slope to go by where it has this share of the weights' own: near the answer, where few lie beyond the weights' bend. */
+const LEAST_EXACT = 0.6;
+/** A step leaves a few hundredths of itself: one shorter than this many standard deviations leaves less than a tenth of one, … */
+const ENOUGH_SDS = 2;
+/** … and must be short against the interpolation's and the weights' bend as well; pixels. */
+const LONGEST_LAST_PX = 0.02;
 /** Rounding and interpolation: no shift is known better, not even between two copies of one frame. */
 const LEAST_SD_PX = 1e-4;
 
@@ -56,46 +61,50 @@ export function fineShift(
   start: { readonly dx: number; readonly dy: number },
   options: FineOptions,
 ): FineShift | null {
-  const { rows, cols } = reference.grid;
-  const work = new PairSums(reference.grid, reference.gradient);
+  const work = new PairSums(reference, moving);
+  const { sums } = work;
   let at = offsetFor(start.dx, start.dy, null);
-  let gradients: { mx: Shifted; my: Shifted; slope: Slope; dx: number; dy: number } | null = null;
   let pixels = 0;
-  let iteration = 0;
-  let step = Number.POSITIVE_INFINITY;
-  for (; iteration < ITERATIONS && step > options.tolerancePx; iteration++) {
-    pixels = work.residuals(sampleShifted(moving.grid, rows, cols, at), at);
+  for (let iteration = 1; iteration <= ITERATIONS; iteration++) {
+    pixels = work.read(at);
     if (pixels < options.leastPixels) return null;
-    // gradients change little over a fraction of a pixel
-    if (gradients === null || Math.hypot(at.dx - gradients.dx, at.dy - gradients.dy) > GRADIENT_REACH_PX) {
-      const mx = sampleShifted(moving.gradientX, rows, cols, at);
-      const my = sampleShifted(moving.gradientY, rows, cols, at);
-      work.levelGradient();
-      gradients = { mx, my, slope: work.slope(mx, my, false), dx: at.dx, dy: at.dy };
-    }
-    const score = work.score();
-    const delta = solve(gradients.slope, score.x, score.y);
+    const score = sums.score();
+    const byWeight = sums.slope(false);
+    const exact = sums.slope(true);
+    const delta = solve(exact.xx + exact.yy > LEAST_EXACT * (byWeight.xx + byWeight.yy) ? exact : byWeight, score.x, score.y);
     if (delta === null) return null;
     const length = Math.hypot(delta.x, delta.y);
     const shorter = length > 1 ? 1 / length : 1;
     at = offsetFor(at.dx - shorter * delta.x, at.dy - shorter * delta.y, at);
     if (!(Math.hypot(at.dx - start.dx, at.dy - start.dy) <= options.leashPx)) return null;
-    step = length;
+    const scatter = scoreCovariance(sums.blocks.x, sums.blocks.y, sums.blocks.rows, sums.blocks.cols, null);
+    const rough = sandwich(exact, scatter);
+    const known = rough === null ? 0 : Math.min(LONGEST_LAST_PX, ENOUGH_SDS * Math.sqrt(0.5 * (rough.xx + rough.yy)));
+    if (length > Math.max(options.tolerancePx, known)) continue;
+    // the sums stand where the last, short step began
+    return answer(work, exact, scatter, at, pixels, iteration, options);
   }
-  if (gradients === null || step > options.tolerancePx) return null;
+  return null;
+}
 
-  // the sums stand where the last, short step began
-  const { mx, my } = gradients;
-  work.levelGradient();
-  const a = work.slope(mx, my, true);
-  work.score();
-  const scatter = scoreCovariance(work.blocks.x, work.blocks.y, work.blocks.rows, work.blocks.cols, null);
+function answer(
+  work: PairSums,
+  exact: Slope,
+  scatter: Sym2,
+  at: { readonly dx: number; readonly dy: number },
+  pixels: number,
+  iterations: number,
+  options: FineOptions,
+): FineShift | null {
+  const { sums } = work;
   const reach = options.reachPx;
-  const alike = reach === null ? null : stationaryCovariance(work.parts(), reach.x, reach.y);
+  const windows = reach === null ? [] : windowsOf(work.overlap).map((w) => work.parts(w));
+  const alike = reach === null ? null : stationaryCovariance(windows, sums.plain, reach.x, reach.y);
   const covariance = alike === null ? scatter : larger(alike, scatter, pixels / 64);
-  const level = work.alongRows(mx, my);
-  const tilted = scoreCovariance(work.blocks.x, work.blocks.y, work.blocks.rows, work.blocks.cols, level.weights);
-  const mean = sandwich(a, covariance);
+  const level = sums.alongRows();
+  const { blocks } = sums;
+  const tilted = scoreCovariance(blocks.x, blocks.y, blocks.rows, blocks.cols, level.weights);
+  const mean = sandwich(exact, covariance);
   const tilt = sandwich(level.slope, tilted);
   const tiltBy = solve(level.slope, level.score.x, level.score.y);
   if (mean === null || tilt === null || tiltBy === null) return null;
@@ -103,12 +112,12 @@ export function fineShift(
     dx: at.dx,
     dy: at.dy,
     covariance: mean,
-    framed: work.framed(a),
+    framed: work.framed(exact),
     slope: { x: -tiltBy.x, y: -tiltBy.y, sdX: Math.sqrt(tilt.xx), sdY: Math.sqrt(tilt.yy) },
     correlation: work.correlation,
     features: work.features,
     pixels,
-    iterations: iteration,
+    iterations,
   };
 }
 

@@ -1,37 +1,85 @@
-import { conjugateProduct, fastLength } from "../../raster/fourier.js";
-import { dft2, idft2 } from "../../raster/opencv.js";
+import { fastLength } from "../../raster/fourier.js";
+import { correlate2, dft2 } from "../../raster/opencv.js";
 import type { Sym2 } from "./score_covariance.js";
+import type { Span } from "./shifted.js";
 
 /** What the score Σ u·e is made of; all row-major [rows, cols], 0 where a pixel does not take part. */
 export interface ScoreParts {
   readonly rows: number;
   readonly cols: number;
   /** Weighted residuals with the mean of every row taken off. */
-  readonly residual: Float32Array;
+  readonly residual: Float64Array;
   /** 1 where a pixel takes part. */
-  readonly usable: Uint8Array;
+  readonly usable: Float64Array;
   /** Gradient with the mean of every row taken off. */
-  readonly ux: Float32Array;
-  readonly uy: Float32Array;
+  readonly ux: Float64Array;
+  readonly uy: Float64Array;
+  /** Pixels over which a row's mean was taken, on average. */
+  readonly rowPixels: number;
+}
+
+/** Side of a window in which the noise is looked at, and the overlap, in windows, up to which there is only one. */
+const SIDE = 128;
+const FEW = 2;
+
+/** Windows that stand for a whole overlap: all of it where it is small, else one in the middle of each quarter. */
+export function windowsOf({ row0, row1, col0, col1 }: Span): Span[] {
+  const rows = row1 - row0;
+  const cols = col1 - col0;
+  if (rows * cols <= FEW * SIDE * SIDE) return [{ row0, row1, col0, col1 }];
+  const high = Math.min(SIDE, rows >> 1);
+  const wide = Math.min(SIDE, cols >> 1);
+  return [0.25, 0.75].flatMap((y) =>
+    [0.25, 0.75].map((x): Span => {
+      const top = row0 + Math.round(y * rows - 0.5 * high);
+      const left = col0 + Math.round(x * cols - 0.5 * wide);
+      return { row0: top, row1: top + high, col0: left, col1: left + wide };
+    }),
+  );
 }
 
 /** Covariance of Σ u·e for noise e that is alike everywhere: Σ_lag C(lag) Γ(lag), C the autocovariance of the residuals up to `reach` pixels,
  *  Γ that of u. Steadier than the scatter of block sums where few blocks overlap, but blind to noise that sits where the structure is.
- *  Taking off row means lowers C by a constant along each row of lags, Σ_x C/N, which is put back. */
-export function stationaryCovariance(parts: ScoreParts, reachX: number, reachY: number): Sym2 | null {
+ *  Taking off row means lowers C by a constant along each row of lags, Σ_x C/N, which is put back.
+ *  @param windows parts of the overlap in which it is looked at
+ *  @param plain Σ|u|² over the whole overlap, to which the windows' sum is scaled
+ *  @returns null where too little overlaps to tell */
+export function stationaryCovariance(
+  windows: readonly ScoreParts[],
+  plain: number,
+  reachX: number,
+  reachY: number,
+): Sym2 | null {
+  let xx = 0;
+  let xy = 0;
+  let yy = 0;
+  let seen = 0;
+  for (const parts of windows) {
+    const s = inWindow(parts, reachX, reachY);
+    if (s === null) continue;
+    xx += s.xx;
+    xy += s.xy;
+    yy += s.yy;
+    for (let p = 0; p < parts.ux.length; p++) seen += parts.ux[p] * parts.ux[p] + parts.uy[p] * parts.uy[p];
+  }
+  if (!(xx > 0 && yy > 0 && xx * yy > xy * xy)) return null;
+  const share = plain / seen;
+  return { xx: share * xx, xy: share * xy, yy: share * yy };
+}
+
+function inWindow(parts: ScoreParts, reachX: number, reachY: number): Sym2 | null {
+  const { rowPixels } = parts;
+  if (!(rowPixels > 2 * (2 * reachX + 1))) return null;
   const rows = fastLength(parts.rows + reachY);
   const cols = fastLength(parts.cols + reachX);
-  const mask = pad(parts.usable, parts, rows, cols);
-  const maskT = dft2(mask, rows, cols);
+  const n = rows * cols;
+  const sum = new Float64Array(n);
+  const count = new Float64Array(n);
+  const mask = dft2(pad(parts.usable, parts, rows, cols), rows, cols);
   const e = dft2(pad(parts.residual, parts, rows, cols), rows, cols);
-  const sum = idft2(conjugateProduct(e, e), rows, cols);
-  const count = idft2(conjugateProduct(maskT, maskT), rows, cols);
-  let rowsSeen = 0;
-  for (let i = 0; i < parts.rows; i++)
-    if (parts.usable.subarray(i * parts.cols, (i + 1) * parts.cols).includes(1)) rowsSeen++;
-  const perRow = count[0] / Math.max(1, rowsSeen);
-  if (!(perRow > 2 * (2 * reachX + 1))) return null;
-  const c = new Float64Array(rows * cols);
+  correlate2(e, e, rows, cols, sum);
+  correlate2(mask, mask, rows, cols, count);
+  const c = new Float64Array(n);
   for (let y = -reachY; y <= reachY; y++) {
     const at = (y < 0 ? y + rows : y) * cols;
     let total = 0;
@@ -41,7 +89,7 @@ export function stationaryCovariance(parts: ScoreParts, reachX: number, reachY: 
       c[p] = sum[p] / count[p];
       total += c[p];
     }
-    const lost = total / (perRow - (2 * reachX + 1));
+    const lost = total / (rowPixels - (2 * reachX + 1));
     for (let x = -reachX; x <= reachX; x++) c[at + (x < 0 ? x + cols : x)] += lost;
   }
   // C is real and even: so is its transform
@@ -57,11 +105,10 @@ export function stationaryCovariance(parts: ScoreParts, reachX: number, reachY: 
     xy += w * (ux[k] * uy[k] + ux[k + 1] * uy[k + 1]);
     yy += w * (uy[k] * uy[k] + uy[k + 1] * uy[k + 1]);
   }
-  const n = rows * cols;
-  return xx > 0 && yy > 0 && xx * yy > xy * xy ? { xx: xx / n, xy: xy / n, yy: yy / n } : null;
+  return { xx: xx / n, xy: xy / n, yy: yy / n };
 }
 
-function pad(data: Float32Array | Uint8Array, parts: ScoreParts, rows: number, cols: number): Float64Array {
+function pad(data: Float64Array, parts: ScoreParts, rows: number, cols: number): Float64Array {
   const out = new Float64Array(rows * cols);
   for (let i = 0; i < parts.rows; i++) out.set(data.subarray(i * parts.cols, (i + 1) * parts.cols), i * cols);
   return out;

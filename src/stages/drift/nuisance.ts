@@ -1,70 +1,82 @@
 /** What is free in the difference of two frames, and so says nothing of their shift: an offset a row (line noise), and tilt and bow. Levelling takes
- *  from each frame the surface of second degree of that frame's own window, so two frames of one place differ by such a surface. Taken off a
- *  row-major image in place: with ξ along the columns and η along the rows, −1 … 1, the terms row offset, ξ, ξ², ξη. Pixels of weight 0
- *  neither enter nor change. */
-export function removeNuisance(values: Float32Array, weight: Float32Array, rows: number, cols: number): void {
-  const moments = new Float64Array(rows * 5);
-  // normal equations of the three terms that are not constant along a row, row means already taken out of them
-  let n11 = 0;
-  let n12 = 0;
-  let n13 = 0;
-  let n22 = 0;
-  let n23 = 0;
-  let n33 = 0;
-  let b1 = 0;
-  let b2 = 0;
-  let b3 = 0;
-  const step = 2 / Math.max(1, cols - 1);
-  const eta = (i: number): number => (2 * i) / Math.max(1, rows - 1) - 1;
-  for (let i = 0; i < rows; i++) {
-    let s0 = 0;
-    let s1 = 0;
-    let s2 = 0;
-    let s3 = 0;
-    let s4 = 0;
-    let v0 = 0;
-    let v1 = 0;
-    let v2 = 0;
-    for (let p = i * cols, x = -1; p < (i + 1) * cols; p++, x += step) {
-      const w = weight[p];
-      if (w === 0) continue;
-      const wx = w * x;
-      const wxx = wx * x;
-      const v = values[p];
-      s0 += w;
-      s1 += wx;
-      s2 += wxx;
-      s3 += wxx * x;
-      s4 += wxx * x * x;
-      v0 += w * v;
-      v1 += wx * v;
-      v2 += wxx * v;
-    }
-    if (s0 === 0) continue;
-    moments.set([s0, s1, s2, v0], 5 * i);
-    const h = eta(i);
-    const c11 = s2 - (s1 * s1) / s0;
-    const c12 = s3 - (s1 * s2) / s0;
-    const q1 = v1 - (s1 * v0) / s0;
-    n11 += c11;
-    n12 += c12;
-    n13 += h * c11;
-    n22 += s4 - (s2 * s2) / s0;
-    n23 += h * c12;
-    n33 += h * h * c11;
-    b1 += q1;
-    b2 += v2 - (s2 * v0) / s0;
-    b3 += h * q1;
+ *  from each frame the surface of second degree of that frame's own window, so two frames of one place differ by such a surface. With ξ along the
+ *  columns and η along the rows, −1 … 1, the terms are row offset, ξ, ξ², ξη. */
+export class RowSurface {
+  /** The surface at (row, ξ) is offset[row] + ξ·(tilt[row] + bow·ξ). */
+  readonly offset: Float64Array;
+  readonly tilt: Float64Array;
+  bow = 0;
+
+  constructor(rows: number) {
+    this.offset = new Float64Array(rows);
+    this.tilt = new Float64Array(rows);
   }
-  const [a1, a2, a3] = solve3(n11, n12, n13, n22, n23, n33, b1, b2, b3);
-  for (let i = 0; i < rows; i++) {
-    const s0 = moments[5 * i];
-    if (s0 === 0) continue;
-    const tilt = a1 + a3 * eta(i);
-    const offset = (moments[5 * i + 3] - tilt * moments[5 * i + 1] - a2 * moments[5 * i + 2]) / s0;
-    for (let p = i * cols, x = -1; p < (i + 1) * cols; p++, x += step) {
-      if (weight[p] !== 0) values[p] -= offset + x * (tilt + a2 * x);
+}
+
+/** Weighted fit of a `RowSurface` from sums along the rows alone, so that an image is read once and nothing is written. */
+export class RowFit {
+  /** Σw, Σwξ, Σwξ², Σwξ³, Σwξ⁴ of each row. */
+  readonly weights: Float64Array;
+  /** ξ of each column. */
+  readonly xi: Float64Array;
+
+  constructor(
+    private readonly rows: number,
+    cols: number,
+  ) {
+    this.weights = new Float64Array(5 * rows);
+    const step = 2 / Math.max(1, cols - 1);
+    this.xi = Float64Array.from({ length: cols }, (_, j) => -1 + j * step);
+  }
+
+  /** @param values Σwv, Σwξv, Σwξ²v of each row
+   *  @returns Σ w v·(surface): by so much the surface lowers Σ w v² */
+  solve(values: Float64Array, out: RowSurface): number {
+    const { rows, weights } = this;
+    const eta = (i: number): number => (2 * i) / Math.max(1, rows - 1) - 1;
+    // normal equations of the three terms that are not constant along a row, row means already taken out of them
+    let n11 = 0;
+    let n12 = 0;
+    let n13 = 0;
+    let n22 = 0;
+    let n23 = 0;
+    let n33 = 0;
+    let b1 = 0;
+    let b2 = 0;
+    let b3 = 0;
+    for (let i = 0; i < rows; i++) {
+      const s0 = weights[5 * i];
+      if (s0 === 0) continue;
+      const s1 = weights[5 * i + 1];
+      const s2 = weights[5 * i + 2];
+      const s3 = weights[5 * i + 3];
+      const h = eta(i);
+      const c11 = s2 - (s1 * s1) / s0;
+      const c12 = s3 - (s1 * s2) / s0;
+      const q1 = values[3 * i + 1] - (s1 * values[3 * i]) / s0;
+      n11 += c11;
+      n12 += c12;
+      n13 += h * c11;
+      n22 += weights[5 * i + 4] - (s2 * s2) / s0;
+      n23 += h * c12;
+      n33 += h * h * c11;
+      b1 += q1;
+      b2 += values[3 * i + 2] - (s2 * values[3 * i]) / s0;
+      b3 += h * q1;
     }
+    const [a1, a2, a3] = solve3(n11, n12, n13, n22, n23, n33, b1, b2, b3);
+    out.bow = a2;
+    let taken = 0;
+    for (let i = 0; i < rows; i++) {
+      const s0 = weights[5 * i];
+      if (s0 === 0) continue;
+      const tilt = a1 + a3 * eta(i);
+      const offset = (values[3 * i] - tilt * weights[5 * i + 1] - a2 * weights[5 * i + 2]) / s0;
+      out.tilt[i] = tilt;
+      out.offset[i] = offset;
+      taken += offset * values[3 * i] + tilt * values[3 * i + 1] + a2 * values[3 * i + 2];
+    }
+    return taken;
   }
 }
 

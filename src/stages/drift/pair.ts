@@ -153,22 +153,29 @@ function nearestTo(
     .reduce((best, p) => (away(p) < away(best) ? p : best));
 }
 
-/** From whole pixels of the coarse grid to the full one: first on the coarse grid itself, whose basin is wider. */
+/** From whole pixels of the coarse grid to the full one, over the grids between: a coarse grid's basin is wider, and what is found there spares
+ *  steps on the full one. */
 function refine({ r, m }: Channel, peak: Peak, factor: number, leastPixels: number): FineShift | null {
   let dx = peak.lagX * factor;
   let dy = peak.lagY * factor;
-  if (factor > 1 || peak.widthPx > 3) {
-    const start = { dx: peak.lagX, dy: peak.lagY };
-    const rough = fineShift(r.sloped(factor), m.sloped(factor), start, {
-      leashPx: 1 + peak.widthPx,
-      tolerancePx: 0.01,
-      leastPixels: Math.max(50, leastPixels / (2 * factor * factor)),
-      reachPx: null,
-    });
-    if (rough !== null) {
-      dx = rough.dx * factor;
-      dy = rough.dy * factor;
-    }
+  let leash = 1 + peak.widthPx;
+  for (let f = factor; f > 1 || (f === 1 && factor === 1 && peak.widthPx > 3); f = Math.floor(f / 2)) {
+    const rough = fineShift(
+      r.sloped(f),
+      m.sloped(f),
+      { dx: dx / f, dy: dy / f },
+      {
+        leashPx: leash,
+        tolerancePx: 0.01,
+        leastPixels: Math.max(50, leastPixels / (2 * f * f)),
+        reachPx: null,
+      },
+    );
+    if (rough === null) continue;
+    dx = rough.dx * f;
+    dy = rough.dy * f;
+    // on the next grid twice as many pixels
+    leash = 3;
   }
   return fineShift(
     r.sloped(1),

@@ -1,263 +1,339 @@
 import { selectInPlace, SD_PER_MAD } from "../../numerics/quantile.js";
-import type { Grid } from "./grid.js";
 import type { ScoreParts } from "./noise_covariance.js";
-import { removeNuisance } from "./nuisance.js";
-import type { Offset, Shifted, Sloped } from "./shifted.js";
-
-export interface Slope {
-  readonly xx: number;
-  readonly xy: number;
-  readonly yx: number;
-  readonly yy: number;
-}
+import { RowFit, RowSurface } from "./nuisance.js";
+import { buffersFor, type PairBuffers } from "./pair_buffers.js";
+import { sampleShifted, spanOf, type Offset, type Sloped, type Span } from "./shifted.js";
+import { BLOCK, SlopeSums, type Slope } from "./slope_sums.js";
 
 /** Residuals beyond this many robust standard deviations (a scar, a particle that moved) do not count at all. */
 const TUKEY = 6;
-/** Side of a block of pixels whose sums are taken as one, pixels. */
-const BLOCK = 8;
+/** Residuals from which their spread is told. */
+const SAMPLE = 4000;
 
-/** The buffers and sums of one pair: residuals, weights, score and its slope, all on the reference's pixels. */
+/** Residuals, weights, score and its slope of one pair, all on the reference's pixels. One reading at a shift is four passes over the overlap: sampling,
+ *  the sums of the nuisance, the weights, the score; buffers are shared by all pairs, one after the other. */
 export class PairSums {
-  readonly blocks: { readonly rows: number; readonly cols: number; readonly x: Float64Array; readonly y: Float64Array };
-  /** Correlation and ratio of the spreads, nuisance off; set by `residuals`. */
+  readonly sums: SlopeSums;
+  /** Correlation and ratio of the spreads, nuisance off. */
   correlation = 0;
   gain = 1;
   /** Number of places that make the correlation: (Σ c)²/Σ c² over blocks of 2 × 2 blocks, c the block's part of Σ R M. One particle on another makes 1. */
   features = 0;
   private readonly rows: number;
   private readonly cols: number;
-  private readonly residual: Float32Array;
-  private readonly weight: Float32Array;
-  /** Derivative of residual·weight by the residual. */
-  private readonly influence: Float32Array;
-  /** The reference less its nuisance; the gradient less its own. */
-  private readonly level: Float32Array;
-  private levelAt: Offset | null = null;
-  private readonly gx: Float32Array;
-  private readonly gy: Float32Array;
+  private readonly buffers: PairBuffers;
+  private readonly fit: RowFit;
+  private readonly values: Float64Array;
+  /** Of the residual under the weights, and of the gradient. */
+  private readonly ofResidual: RowSurface;
+  private readonly ofX: RowSurface;
+  private readonly ofY: RowSurface;
+  private span: Span = { row0: 0, row1: 0, col0: 0, col1: 0 };
+  private chosenAt: Offset | null = null;
+  /** Pixels of the overlap, and Σ R² over them, nuisance off. */
+  private pixels = 0;
+  private levelSquares = 0;
+  /** Sums of the pixels that both know, before any weighting. */
+  private readonly counts: Float64Array;
 
   constructor(
-    private readonly reference: Grid,
-    private readonly gradient: Sloped["gradient"],
+    private readonly reference: Sloped,
+    private readonly moving: Sloped,
   ) {
-    this.rows = reference.rows;
-    this.cols = reference.cols;
-    const n = this.rows * this.cols;
-    this.residual = new Float32Array(n);
-    this.weight = new Float32Array(n);
-    this.influence = new Float32Array(n);
-    this.level = new Float32Array(n);
-    this.gx = new Float32Array(n);
-    this.gy = new Float32Array(n);
-    const blockRows = Math.ceil(this.rows / BLOCK);
-    const blockCols = Math.ceil(this.cols / BLOCK);
-    this.blocks = {
-      rows: blockRows,
-      cols: blockCols,
-      x: new Float64Array(blockRows * blockCols),
-      y: new Float64Array(blockRows * blockCols),
-    };
+    this.rows = reference.grid.rows;
+    this.cols = reference.grid.cols;
+    this.buffers = buffersFor(this.rows, this.cols);
+    this.fit = new RowFit(this.rows, this.cols);
+    this.counts = new Float64Array(5 * this.rows);
+    this.values = new Float64Array(3 * this.rows);
+    this.ofResidual = new RowSurface(this.rows);
+    this.ofX = new RowSurface(this.rows);
+    this.ofY = new RowSurface(this.rows);
+    this.sums = new SlopeSums(this.rows, this.cols);
   }
 
-  /** Residuals with nuisance and gain taken off, and their weights. @returns pixels that take part */
-  residuals(sampled: Shifted, at: Offset): number {
-    const { rows, cols, residual, weight, level } = this;
-    const { usable } = this.gradient;
-    let pixels = 0;
-    for (let p = 0; p < weight.length; p++) {
-      weight[p] = usable[p] & sampled.usable[p];
-      pixels += weight[p];
-    }
-    if (pixels === 0) return 0;
-    residual.set(sampled.values);
+  /** Everything at a shift. @returns pixels that take part; 0 where nothing can be said */
+  read(at: Offset): number {
     // which pixels take part hangs on the whole pixels of the shift alone
-    if (at.jx !== this.levelAt?.jx || at.iy !== this.levelAt.iy) {
-      level.set(this.reference.values);
-      removeNuisance(level, weight, rows, cols);
-      this.levelAt = at;
-    }
-    removeNuisance(residual, weight, rows, cols);
-    let rr = 0;
-    let mm = 0;
-    let rm = 0;
-    for (let p = 0; p < weight.length; p++) {
-      if (weight[p] === 0) continue;
-      const r = level[p];
-      const m = residual[p];
-      rr += r * r;
-      mm += m * m;
-      rm += r * m;
-    }
-    if (!(rr > 0 && mm > 0)) return 0;
-    this.correlation = rm / Math.sqrt(rr * mm);
-    this.features = this.countFeatures();
-    // the ratio of the spreads: noise in R would pull down the regression of M on R
-    const gain = Math.sqrt(mm / rr);
-    this.gain = gain;
-    const every = Math.max(1, Math.floor(pixels / 4000));
-    const sample = new Float32Array(Math.ceil(pixels / every));
-    let k = 0;
-    for (let p = 0; p < weight.length; p++) {
-      if (weight[p] === 0) continue;
-      residual[p] -= gain * level[p];
-      if (k % every === 0) sample[k / every] = Math.abs(residual[p]);
-      k++;
-    }
-    const spread = SD_PER_MAD * selectInPlace(sample, sample.length >> 1);
-    this.weigh(Math.max(spread, 1e-7 * Math.sqrt(mm / pixels)));
-    return pixels;
+    if (at.jx !== this.chosenAt?.jx || at.iy !== this.chosenAt.iy) this.choosePixels(at);
+    if (this.pixels === 0) return 0;
+    sampleShifted(this.moving.grid, at, this.span, this.cols, this.buffers.moved);
+    if (!this.level()) return 0;
+    this.weigh(this.spread());
+    this.sums.add(
+      { ...this.buffers, gx: this.reference.gradient.x, gy: this.reference.gradient.y, xi: this.fit.xi },
+      { residual: this.ofResidual, gx: this.ofX, gy: this.ofY },
+      this.span,
+      { known: this.moving.slopes, from: at.iy * this.moving.grid.cols + at.jx, cols: this.moving.grid.cols },
+    );
+    return this.pixels;
   }
 
-  private countFeatures(): number {
-    const { rows, cols, residual, weight, level } = this;
-    const side = 2 * BLOCK;
-    const across = Math.ceil(cols / side);
-    const parts = new Float64Array(across * Math.ceil(rows / side));
-    for (let i = 0; i < rows; i++) {
-      const row = Math.floor(i / side) * across;
-      for (let j = 0; j < cols; j++) {
-        const p = i * cols + j;
-        if (weight[p] !== 0) parts[row + ((j / side) | 0)] += level[p] * residual[p];
+  /** Share of the covariance that is the frames' own: with J the structure's part of ΣGGᵀ and J′ the noise's, the sum's variance is 2J + J′. */
+  framed(a: Slope): number {
+    const structure = (a.xx + a.yy) / this.gain;
+    return Math.max(0, Math.min(1, (2 * structure) / (structure + this.sums.whole)));
+  }
+
+  /** Pixels that take part, the reference less its nuisance under them. */
+  private choosePixels(at: Offset): void {
+    const { rows, cols, fit, values } = this;
+    const { mask, level } = this.buffers;
+    this.chosenAt = at;
+    this.span = spanOf(this.moving.grid, rows, cols, at);
+    const { row0, row1, col0, col1 } = this.span;
+    const { usable } = this.reference.gradient;
+    const image = this.reference.grid.values;
+    const { samples } = this.moving;
+    const across = this.moving.grid.cols;
+    fit.weights.fill(0);
+    values.fill(0);
+    this.pixels = 0;
+    for (let i = row0; i < row1; i++) {
+      let s0 = 0;
+      let s1 = 0;
+      let s2 = 0;
+      let s3 = 0;
+      let s4 = 0;
+      let v0 = 0;
+      let v1 = 0;
+      let v2 = 0;
+      let p = i * cols + col0;
+      let q = (i + at.iy) * across + col0 + at.jx;
+      for (let j = col0; j < col1; j++, p++, q++) {
+        const known = usable[p] & samples[q];
+        mask[p] = known;
+        if (known === 0) continue;
+        const x = fit.xi[j];
+        const xx = x * x;
+        const v = image[p];
+        s0++;
+        s1 += x;
+        s2 += xx;
+        s3 += xx * x;
+        s4 += xx * xx;
+        v0 += v;
+        v1 += x * v;
+        v2 += xx * v;
+      }
+      this.pixels += s0;
+      setRow(fit.weights, i, s0, s1, s2, s3, s4);
+      setMoments(values, i, v0, v1, v2);
+    }
+    this.counts.set(fit.weights);
+    if (this.pixels === 0) return;
+    const surface = this.ofX;
+    fit.solve(values, surface);
+    let squares = 0;
+    for (let i = row0; i < row1; i++) {
+      const [offset, tilt] = [surface.offset[i], surface.tilt[i]];
+      let p = i * cols + col0;
+      for (let j = col0; j < col1; j++, p++) {
+        if (mask[p] === 0) continue;
+        const x = fit.xi[j];
+        const r = image[p] - offset - x * (tilt + surface.bow * x);
+        level[p] = r;
+        squares += r * r;
       }
     }
+    this.levelSquares = squares;
+  }
+
+  /** Nuisance of the sampled image under the plain mask, gain and correlation. @returns false where either image is flat */
+  private level(): boolean {
+    const { cols, fit, values, span } = this;
+    const { mask, level, moved } = this.buffers;
+    fit.weights.set(this.counts);
+    values.fill(0);
+    let mm = 0;
+    let rm = 0;
+    for (let i = span.row0; i < span.row1; i++) {
+      let v0 = 0;
+      let v1 = 0;
+      let v2 = 0;
+      let p = i * cols + span.col0;
+      for (let j = span.col0; j < span.col1; j++, p++) {
+        if (mask[p] === 0) continue;
+        const x = fit.xi[j];
+        const v = moved[p];
+        const xv = x * v;
+        v0 += v;
+        v1 += xv;
+        v2 += x * xv;
+        mm += v * v;
+        // the reference has no nuisance left, so what the moving frame has adds nothing to the product
+        rm += v * level[p];
+      }
+      setMoments(values, i, v0, v1, v2);
+    }
+    const whole = mm;
+    mm -= fit.solve(values, this.ofResidual);
+    if (!(this.levelSquares > 0 && mm > 1e-12 * whole)) return false;
+    this.correlation = rm / Math.sqrt(this.levelSquares * mm);
+    // the ratio of the spreads: noise in R would pull down the regression of M on R
+    this.gain = Math.sqrt(mm / this.levelSquares);
+    return true;
+  }
+
+  /** Robust standard deviation of the residuals, from some of them spread over the overlap. */
+  private spread(): number {
+    const { cols, fit, span, gain, ofResidual } = this;
+    const { mask, level, moved, sample } = this.buffers;
+    const { row0, row1, col0, col1 } = span;
+    const every = Math.max(1, Math.floor(((row1 - row0) * (col1 - col0)) / SAMPLE));
+    let n = 0;
+    for (let k = 0; k < (row1 - row0) * (col1 - col0) && n < sample.length; k += every) {
+      const i = row0 + Math.floor(k / (col1 - col0));
+      // the columns shift from row to row so that no stripe of the image is left out
+      const j = col0 + ((k + 7 * i) % (col1 - col0));
+      const p = i * cols + j;
+      if (mask[p] === 0) continue;
+      const x = fit.xi[j];
+      sample[n++] = Math.abs(
+        moved[p] - ofResidual.offset[i] - x * (ofResidual.tilt[i] + ofResidual.bow * x) - gain * level[p],
+      );
+    }
+    const least = 1e-7 * gain * Math.sqrt(this.levelSquares / this.pixels);
+    return n === 0 ? least : Math.max(SD_PER_MAD * selectInPlace(sample, n >> 1, n), least);
+  }
+
+  /** Residuals and Tukey's weights, and the nuisance of residual and gradient under these. */
+  private weigh(spread: number): void {
+    const { rows, cols, fit, span, gain, ofResidual } = this;
+    const { mask, level, moved, residual, closeness } = this.buffers;
+    const { x: gradientX, y: gradientY } = this.reference.gradient;
+    const scale = 1 / (TUKEY * spread);
+    const across = Math.ceil(cols / (2 * BLOCK));
+    const parts = new Float64Array(across * Math.ceil(rows / (2 * BLOCK)));
+    const valuesX = new Float64Array(3 * rows);
+    const valuesY = new Float64Array(3 * rows);
+    this.values.fill(0);
+    fit.weights.fill(0);
+    for (let i = span.row0; i < span.row1; i++) {
+      const offset = ofResidual.offset[i];
+      const tilt = ofResidual.tilt[i];
+      const bow = ofResidual.bow;
+      const part = Math.floor(i / (2 * BLOCK)) * across;
+      let s0 = 0;
+      let s1 = 0;
+      let s2 = 0;
+      let s3 = 0;
+      let s4 = 0;
+      let e0 = 0;
+      let e1 = 0;
+      let e2 = 0;
+      let x0 = 0;
+      let x1 = 0;
+      let x2 = 0;
+      let y0 = 0;
+      let y1 = 0;
+      let y2 = 0;
+      let p = i * cols + span.col0;
+      for (let j = span.col0; j < span.col1; j++, p++) {
+        if (mask[p] === 0) {
+          closeness[p] = 0;
+          continue;
+        }
+        const x = fit.xi[j];
+        const r = level[p];
+        const m = moved[p] - offset - x * (tilt + bow * x);
+        const e = m - gain * r;
+        parts[part + ((j / (2 * BLOCK)) | 0)] += r * m;
+        const u = e * scale;
+        const one = 1 - u * u;
+        residual[p] = e;
+        if (!(one > 0)) {
+          closeness[p] = 0;
+          continue;
+        }
+        closeness[p] = one;
+        const w = one * one;
+        const wx = w * x;
+        const wxx = wx * x;
+        s0 += w;
+        s1 += wx;
+        s2 += wxx;
+        s3 += wxx * x;
+        s4 += wxx * x * x;
+        e0 += w * e;
+        e1 += wx * e;
+        e2 += wxx * e;
+        const gx = gradientX[p];
+        x0 += w * gx;
+        x1 += wx * gx;
+        x2 += wxx * gx;
+        const gy = gradientY[p];
+        y0 += w * gy;
+        y1 += wx * gy;
+        y2 += wxx * gy;
+      }
+      setRow(fit.weights, i, s0, s1, s2, s3, s4);
+      setMoments(this.values, i, e0, e1, e2);
+      setMoments(valuesX, i, x0, x1, x2);
+      setMoments(valuesY, i, y0, y1, y2);
+    }
+    fit.solve(this.values, ofResidual);
+    fit.solve(valuesX, this.ofX);
+    fit.solve(valuesY, this.ofY);
     let sum = 0;
     let square = 0;
     for (const c of parts) {
       sum += c;
       square += c * c;
     }
-    return square > 0 ? (sum * sum) / square : 0;
+    this.features = square > 0 ? (sum * sum) / square : 0;
   }
 
-  private weigh(spread: number): void {
-    const { rows, cols, residual, weight, influence } = this;
-    const scale = 1 / (TUKEY * spread);
-    for (let p = 0; p < weight.length; p++) {
-      influence[p] = 0;
-      if (weight[p] === 0) continue;
-      const u2 = (residual[p] * scale) ** 2;
-      const one = 1 - u2;
-      weight[p] = u2 < 1 ? one * one : 0;
-      influence[p] = u2 < 1 ? one * (1 - 5 * u2) : 0;
-    }
-    removeNuisance(residual, weight, rows, cols);
-  }
-
-  /** The gradient less what the free terms would take of it, for the weights as they are now. To be called before `slope` and all that follows it. */
-  levelGradient(): void {
-    const { rows, cols, weight, gx, gy } = this;
-    gx.set(this.gradient.x);
-    gy.set(this.gradient.y);
-    removeNuisance(gx, weight, rows, cols);
-    removeNuisance(gy, weight, rows, cols);
-  }
-
-  /** Σ w G e, kept by blocks as well. */
-  score(): { x: number; y: number } {
-    const { rows, cols, residual, weight, gx, gy, blocks } = this;
-    blocks.x.fill(0);
-    blocks.y.fill(0);
-    for (let i = 0; i < rows; i++) {
-      const row = Math.floor(i / BLOCK) * blocks.cols;
-      for (let j = 0; j < cols; j++) {
-        const p = i * cols + j;
-        if (weight[p] === 0) continue;
-        const we = weight[p] * residual[p];
-        const b = row + ((j / BLOCK) | 0);
-        blocks.x[b] += we * gx[p];
-        blocks.y[b] += we * gy[p];
+  /** What `stationaryCovariance` needs, of the pixels within a window of the overlap, in new arrays. */
+  parts(window: Span): ScoreParts {
+    const { cols, fit, ofResidual, ofX, ofY } = this;
+    const { residual, closeness } = this.buffers;
+    const { x: gradientX, y: gradientY } = this.reference.gradient;
+    const width = window.col1 - window.col0;
+    const n = (window.row1 - window.row0) * width;
+    const e = new Float64Array(n);
+    const usable = new Float64Array(n);
+    const ux = new Float64Array(n);
+    const uy = new Float64Array(n);
+    let q = 0;
+    for (let i = window.row0; i < window.row1; i++) {
+      let p = i * cols + window.col0;
+      for (let j = window.col0; j < window.col1; j++, p++, q++) {
+        const one = closeness[p];
+        if (one === 0) continue;
+        const x = fit.xi[j];
+        usable[q] = 1;
+        e[q] = one * one * (residual[p] - ofResidual.offset[i] - x * (ofResidual.tilt[i] + ofResidual.bow * x));
+        ux[q] = gradientX[p] - ofX.offset[i] - x * (ofX.tilt[i] + ofX.bow * x);
+        uy[q] = gradientY[p] - ofY.offset[i] - x * (ofY.tilt[i] + ofY.bow * x);
       }
     }
-    let x = 0;
-    let y = 0;
-    for (let b = 0; b < blocks.x.length; b++) {
-      x += blocks.x[b];
-      y += blocks.y[b];
-    }
-    return { x, y };
+    return { rows: window.row1 - window.row0, cols: width, residual: e, usable, ux, uy, rowPixels: this.rowPixels() };
   }
 
-  /** What `stationaryCovariance` needs, in new arrays. */
-  parts(): ScoreParts {
-    const { rows, cols, residual, weight, gx, gy } = this;
-    const n = rows * cols;
-    const e = new Float32Array(n);
-    const usable = new Uint8Array(n);
-    const ux = new Float32Array(n);
-    const uy = new Float32Array(n);
-    for (let p = 0; p < n; p++) {
-      if (weight[p] === 0) continue;
-      usable[p] = 1;
-      e[p] = weight[p] * residual[p];
-      ux[p] = gx[p];
-      uy[p] = gy[p];
-    }
-    return { rows, cols, residual: e, usable, ux, uy };
+  /** The rows and columns of the reference that the overlap spans. */
+  get overlap(): Span {
+    return this.span;
   }
 
-  /** Σ w G ∂Mᵀ; with the derivative of the weighted residual instead of the weight where the covariance needs it. */
-  slope(mx: Shifted, my: Shifted, exact: boolean): Slope {
-    return this.slopeWith(mx, my, exact ? this.influence : this.weight, () => 1);
-  }
-
-  /** With J the structure's part of ΣGGᵀ and J′ the noise's, the sum's variance is 2J + J′: the frames' own share is 2J/(2J + J′). */
-  framed(a: Slope): number {
-    const { influence, gx, gy } = this;
-    let whole = 0;
-    for (let p = 0; p < gx.length; p++) whole += influence[p] * (gx[p] * gx[p] + gy[p] * gy[p]);
-    const structure = (a.xx + a.yy) / this.gain;
-    return Math.max(0, Math.min(1, (2 * structure) / (structure + whole)));
-  }
-
-  /** Slope and score of a shift that grows along the rows, −½ … ½ from the first to the last; `weights` are its factors for the rows of blocks. */
-  alongRows(mx: Shifted, my: Shifted): { slope: Slope; score: { x: number; y: number }; weights: Float64Array } {
-    const { rows, cols, weight, blocks } = this;
-    let sum = 0;
-    let sumI = 0;
-    for (let i = 0; i < rows; i++) {
-      for (let p = i * cols; p < (i + 1) * cols; p++) {
-        sum += weight[p];
-        sumI += weight[p] * i;
-      }
-    }
-    const middle = sumI / sum;
-    const at = (i: number): number => (i - middle) / rows;
-    const weights = Float64Array.from({ length: blocks.rows }, (_, b) => at(b * BLOCK + (BLOCK - 1) / 2));
-    const score = { x: 0, y: 0 };
-    for (let b = 0; b < blocks.rows; b++) {
-      for (let c = 0; c < blocks.cols; c++) {
-        score.x += weights[b] * blocks.x[b * blocks.cols + c];
-        score.y += weights[b] * blocks.y[b * blocks.cols + c];
-      }
-    }
-    return { slope: this.slopeWith(mx, my, this.influence, (i) => at(i) ** 2), score, weights };
-  }
-
-  private slopeWith(mx: Shifted, my: Shifted, weight: Float32Array, factor: (row: number) => number): Slope {
-    const { rows, cols, gx, gy } = this;
-    let xx = 0;
-    let xy = 0;
-    let yx = 0;
-    let yy = 0;
-    let all = 0;
+  /** Mean number of pixels of a row that takes part. */
+  private rowPixels(): number {
     let seen = 0;
-    for (let i = 0; i < rows; i++) {
-      const f = factor(i);
-      for (let p = i * cols; p < (i + 1) * cols; p++) {
-        const w = f * weight[p];
-        all += w;
-        if (w === 0 || mx.usable[p] === 0) continue;
-        seen += w;
-        const u = w * gx[p];
-        const v = w * gy[p];
-        xx += u * mx.values[p];
-        xy += u * my.values[p];
-        yx += v * mx.values[p];
-        yy += v * my.values[p];
-      }
-    }
-    // next to gaps the moving frame's gradient is not known: those pixels stand for their share
-    const share = seen > 0 ? all / seen : Number.NaN;
-    return { xx: xx * share, xy: xy * share, yx: yx * share, yy: yy * share };
+    for (let i = 0; i < this.rows; i++) if (this.counts[5 * i] > 0) seen++;
+    return this.pixels / Math.max(1, seen);
   }
+}
+
+function setRow(a: Float64Array, i: number, s0: number, s1: number, s2: number, s3: number, s4: number): void {
+  a[5 * i] = s0;
+  a[5 * i + 1] = s1;
+  a[5 * i + 2] = s2;
+  a[5 * i + 3] = s3;
+  a[5 * i + 4] = s4;
+}
+
+function setMoments(a: Float64Array, i: number, v0: number, v1: number, v2: number): void {
+  a[3 * i] = v0;
+  a[3 * i + 1] = v1;
+  a[3 * i + 2] = v2;
 }

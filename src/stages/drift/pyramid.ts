@@ -1,4 +1,4 @@
-import { CoarseImage } from "./coarse.js";
+import { CoarseImage } from "./coarse_image.js";
 import { Sloped } from "./shifted.js";
 import { blurredGrid, decimate, type Grid } from "./grid.js";
 
@@ -48,15 +48,16 @@ export class Pyramid {
   }
 }
 
-/** An image takes part in several pairs one after the other: what was computed from it lives as long as it does. Only a saving of time; the
- *  answer is the same. */
-const known = new WeakMap<Float32Array, Pyramid>();
+/** An image takes part in several pairs one after the other, with one or two partners' blurs: what was computed from it lives as long as it does. Only a
+ *  saving of time; the answer is the same. */
+const known = new WeakMap<Float32Array, Pyramid[]>();
+const BLURS_KEPT = 2;
 
 export function pyramidOf(image: Image, rows: number, cols: number, sigmaXPx: number, sigmaYPx: number): Pyramid {
-  let pyramid = known.get(image.values);
-  if (pyramid === undefined || pyramid.sigmaXPx !== sigmaXPx || pyramid.sigmaYPx !== sigmaYPx) {
-    pyramid = new Pyramid(image, rows, cols, sigmaXPx, sigmaYPx);
-    known.set(image.values, pyramid);
-  }
+  const kept = known.get(image.values) ?? [];
+  const found = kept.find((p) => p.sigmaXPx === sigmaXPx && p.sigmaYPx === sigmaYPx);
+  if (found !== undefined) return found;
+  const pyramid = new Pyramid(image, rows, cols, sigmaXPx, sigmaYPx);
+  known.set(image.values, [pyramid, ...kept].slice(0, BLURS_KEPT));
   return pyramid;
 }

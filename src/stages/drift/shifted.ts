@@ -1,12 +1,5 @@
 import type { Grid } from "./grid.js";
 
-/** Samples of one image at another's pixels moved by a constant (dx, dy). */
-export interface Shifted {
-  readonly values: Float32Array;
-  /** 1 where all samples that the interpolation needs are known. Indexed like the reference grid. */
-  readonly usable: Uint8Array;
-}
-
 /** A shift with the whole pixels that its interpolation starts from. */
 export interface Offset {
   readonly dx: number;
@@ -38,67 +31,122 @@ export function sixPointWeights(t: number): Float64Array {
   return w;
 }
 
-/** `image` sampled at (row + dy, col + dx) for each pixel (row, col) of a grid of `rows` × `cols`. As the shift is the same everywhere the weights are
- *  too, and the two axes are done one after the other. Values of partly known pixels enter as far samples only. */
-export function sampleShifted(image: Grid, rows: number, cols: number, at: Offset): Shifted {
-  const { dx, dy, jx, iy } = at;
-  const wx = sixPointWeights(dx - jx);
-  const wy = sixPointWeights(dy - iy);
-  const values = new Float32Array(rows * cols);
-  const usable = new Uint8Array(rows * cols);
-  // columns for which all six samples lie inside
-  const from = Math.max(0, 2 - jx);
-  const to = Math.min(cols, image.cols - 3 - jx);
-  const first = Math.max(0, 2 - iy);
-  const last = Math.min(rows, image.rows - 3 - iy);
-  if (from >= to || first >= last) return { values, usable };
-  const width = to - from;
-  const ring = Array.from({ length: 6 }, () => new Float32Array(width));
-  const ringOk = Array.from({ length: 6 }, () => new Uint8Array(width));
-  const [x0, x1, x2, x3, x4, x5] = wx;
-  const { values: v, known } = image;
-  let filled = first + iy - 2;
-  for (let i = first; i < last; i++) {
-    for (; filled <= i + iy + 3; filled++) {
-      const out = ring[filled % 6];
-      const ok = ringOk[filled % 6];
-      let p = filled * image.cols + from + jx - 2;
-      for (let j = 0; j < width; j++, p++) {
-        out[j] = x0 * v[p] + x1 * v[p + 1] + x2 * v[p + 2] + x3 * v[p + 3] + x4 * v[p + 4] + x5 * v[p + 5];
-        const inner = Math.min(known[p + 2], known[p + 3]);
-        const outer = Math.min(known[p], known[p + 1], known[p + 4], known[p + 5]);
-        ok[j] = outer === 0 ? 0 : inner;
-      }
-    }
-    const top = i + iy - 2;
-    const [r0, r1, r2, r3, r4, r5] = [0, 1, 2, 3, 4, 5].map((a) => ring[(top + a) % 6]);
-    const [k0, k1, k2, k3, k4, k5] = [0, 1, 2, 3, 4, 5].map((a) => ringOk[(top + a) % 6]);
-    const [y0, y1, y2, y3, y4, y5] = wy;
-    let q = i * cols + from;
-    for (let j = 0; j < width; j++, q++) {
-      if (k2[j] < 2 || k3[j] < 2 || k0[j] === 0 || k1[j] === 0 || k4[j] === 0 || k5[j] === 0) continue;
-      values[q] = y0 * r0[j] + y1 * r1[j] + y2 * r2[j] + y3 * r3[j] + y4 * r4[j] + y5 * r5[j];
-      usable[q] = 1;
-    }
-  }
-  return { values, usable };
+/** Rows and columns [from, to) of the reference for which all six samples of the moving image lie inside it. */
+export interface Span {
+  readonly row0: number;
+  readonly row1: number;
+  readonly col0: number;
+  readonly col1: number;
 }
 
-/** An image with its derivatives along x and y (per pixel, by five points). */
+export function spanOf(moving: Grid, rows: number, cols: number, at: Offset): Span {
+  const row0 = Math.max(0, 2 - at.iy);
+  const col0 = Math.max(0, 2 - at.jx);
+  return {
+    row0,
+    row1: Math.max(row0, Math.min(rows, moving.rows - 3 - at.iy)),
+    col0,
+    col1: Math.max(col0, Math.min(cols, moving.cols - 3 - at.jx)),
+  };
+}
+
+/** `image` sampled at (row + dy, col + dx) for each pixel (row, col) within `span`, into `out`, a grid of `cols` columns. As the shift is the same
+ *  everywhere the weights are too, and the two axes are done one after the other. Samples next to gaps mean nothing: `samplesOf` tells which. */
+export function sampleShifted(image: Grid, at: Offset, span: Span, cols: number, out: Float32Array): void {
+  const { row0, row1, col0, col1 } = span;
+  const [x0, x1, x2, x3, x4, x5] = sixPointWeights(at.dx - at.jx);
+  const [y0, y1, y2, y3, y4, y5] = sixPointWeights(at.dy - at.iy);
+  const width = col1 - col0;
+  const ring = Array.from({ length: 6 }, () => new Float32Array(width));
+  const { values: v } = image;
+  let filled = row0 + at.iy - 2;
+  for (let i = row0; i < row1; i++) {
+    for (; filled <= i + at.iy + 3; filled++) {
+      const row = ring[filled % 6];
+      let p = filled * image.cols + col0 + at.jx - 2;
+      let [v0, v1, v2, v3, v4] = [v[p], v[p + 1], v[p + 2], v[p + 3], v[p + 4]];
+      p += 5;
+      for (let j = 0; j < width; j++, p++) {
+        const v5 = v[p];
+        row[j] = x0 * v0 + x1 * v1 + x2 * v2 + x3 * v3 + x4 * v4 + x5 * v5;
+        v0 = v1;
+        v1 = v2;
+        v2 = v3;
+        v3 = v4;
+        v4 = v5;
+      }
+    }
+    const top = i + at.iy - 2;
+    const r0 = ring[top % 6];
+    const r1 = ring[(top + 1) % 6];
+    const r2 = ring[(top + 2) % 6];
+    const r3 = ring[(top + 3) % 6];
+    const r4 = ring[(top + 4) % 6];
+    const r5 = ring[(top + 5) % 6];
+    const q = i * cols + col0;
+    for (let j = 0; j < width; j++) {
+      out[q + j] = y0 * r0[j] + y1 * r1[j] + y2 * r2[j] + y3 * r3[j] + y4 * r4[j] + y5 * r5[j];
+    }
+  }
+}
+
+/** An image with what registration needs of it besides; computed once, as an image takes part in many pairs. */
 export class Sloped {
-  /** For use at the pixels themselves: `usable` where the pixels that the derivatives need are known. */
+  /** Derivatives along x and y (per pixel, by five points), at the pixels; `usable` where the pixels that they need are known. */
   readonly gradient: { readonly x: Float32Array; readonly y: Float32Array; readonly usable: Uint8Array };
-  /** The same for interpolation. */
-  readonly gradientX: Grid;
-  readonly gradientY: Grid;
+  private samplesKnown: Uint8Array | null = null;
+  private slopesKnown: Uint8Array | null = null;
 
   constructor(readonly grid: Grid) {
-    const { rows, cols } = grid;
     this.gradient = gradientOf(grid);
-    const known = this.gradient.usable.map((u) => 2 * u);
-    this.gradientX = { rows, cols, values: this.gradient.x, known };
-    this.gradientY = { rows, cols, values: this.gradient.y, known };
   }
+
+  /** 1 where the six samples each way from −2 to 3 do for interpolation: the middle ones whole, the outer ones at least in part. */
+  get samples(): Uint8Array {
+    this.samplesKnown ??= samplesOf(this.grid);
+    return this.samplesKnown;
+  }
+
+  /** 1 where five interpolated values each way do for a derivative. */
+  get slopes(): Uint8Array {
+    this.slopesKnown ??= erodeByCross(this.samples, this.grid.rows, this.grid.cols);
+    return this.slopesKnown;
+  }
+}
+
+function samplesOf({ rows, cols, known }: Grid): Uint8Array {
+  const along = new Uint8Array(known.length);
+  for (let i = 0; i < rows; i++) {
+    for (let p = i * cols + 2; p < (i + 1) * cols - 3; p++) {
+      const outer = known[p - 2] !== 0 && known[p - 1] !== 0 && known[p + 2] !== 0 && known[p + 3] !== 0;
+      along[p] = outer ? Math.min(known[p], known[p + 1]) : 0;
+    }
+  }
+  const out = new Uint8Array(known.length);
+  for (let p = 2 * cols; p < (rows - 3) * cols; p++) {
+    if (along[p] < 2 || along[p + cols] < 2 || along[p - cols] === 0 || along[p - 2 * cols] === 0) continue;
+    if (along[p + 2 * cols] !== 0 && along[p + 3 * cols] !== 0) out[p] = 1;
+  }
+  return out;
+}
+
+function erodeByCross(mask: Uint8Array, rows: number, cols: number): Uint8Array {
+  const out = new Uint8Array(mask.length);
+  for (let i = 2; i < rows - 2; i++) {
+    for (let p = i * cols + 2; p < (i + 1) * cols - 2; p++) {
+      out[p] =
+        mask[p] &
+        mask[p - 1] &
+        mask[p - 2] &
+        mask[p + 1] &
+        mask[p + 2] &
+        mask[p - cols] &
+        mask[p - 2 * cols] &
+        mask[p + cols] &
+        mask[p + 2 * cols];
+    }
+  }
+  return out;
 }
 
 function gradientOf(image: Grid): { x: Float32Array; y: Float32Array; usable: Uint8Array } {
