@@ -183,23 +183,27 @@ async function placeFrames(
     pairs: readonly (readonly [number, number])[],
     at: readonly Drift[] | null,
   ): Promise<PairShift[]> => {
-    return runner.map(
-      "pair",
-      pairs.map(([reference, moving]) => {
-        const a = at?.[reference];
-        const b = at?.[moving];
-        const known = a?.xNm != null && a.yNm != null && b?.xNm != null && b.yNm != null;
-        return {
-          ...run,
-          reference,
-          moving,
-          predicted: known
+    // by moving frame: a task reads that frame once
+    const moving = [...new Set(pairs.map(([, m]) => m))].sort((a, b) => a - b);
+    const found = await runner.map(
+      "pairs",
+      moving.map((frame) => ({
+        ...run,
+        frame,
+        against: pairs.flatMap(([reference, m]) => {
+          if (m !== frame) return [];
+          const a = at?.[reference];
+          const b = at?.[frame];
+          const known = a?.xNm != null && a.yNm != null && b?.xNm != null && b.yNm != null;
+          const predicted = known
             ? { xNm: (b.xNm as number) - (a.xNm as number), yNm: (b.yNm as number) - (a.yNm as number) }
-            : null,
-        };
-      }),
+            : null;
+          return [{ reference, predicted }];
+        }),
+      })),
       onDone,
     );
+    return found.flat();
   };
   const first = await measure(choosePairs(frames, null, s), null);
   const rough = solveDrift(frames, first, s);
@@ -220,9 +224,9 @@ async function placeFrames(
 
 /** Progress over the whole run. Shares of the time are rough; they only steer the bar. */
 function progressOf(frames: number, options: AnalyseOptions): (stage: string) => () => void {
-  // Clean, place (about six pairs a frame, cheap), levels, measure (the longest).
-  const weights: Record<string, number> = { cleaning: 1, placing: 0.25, levels: 1, measuring: 4 };
-  const total = frames * (1 + 6 * 0.25 + 1 + 4);
+  // Clean, place (each frame in two rounds), levels, measure (the longest).
+  const weights: Record<string, number> = { cleaning: 1, placing: 0.5, levels: 1, measuring: 4 };
+  const total = frames * (1 + 2 * 0.5 + 1 + 4);
   let done = 0;
   return (stage) => () => {
     done = Math.min(total, done + (weights[stage] ?? 0));

@@ -21,18 +21,17 @@ function workerFile(): string {
 
 const DOING: Readonly<Record<TaskName, string>> = {
   clean: "cleaning",
-  pair: "placing",
+  pairs: "placing",
   debris: "looking for debris in",
   levels: "finding the levels of",
   measure: "measuring",
 };
 
-/** `frame 3`, `frames 3 and 4`, or the whole cooldown: what a task is about. */
+/** `frame 3`, or the whole cooldown: what a task is about. */
 function aboutOf(input: object): string {
   if ("frame" in input) return `frame ${String(input.frame)}`;
   if ("info" in input && typeof input.info === "object" && input.info !== null && "frame" in input.info)
     return `frame ${String(input.info.frame)}`;
-  if ("reference" in input && "moving" in input) return `frames ${String(input.reference)} and ${String(input.moving)}`;
   return "all frames";
 }
 

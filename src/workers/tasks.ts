@@ -46,33 +46,34 @@ async function clean(input: CleanInput): Promise<CleanOutput> {
   return { imagesSha256: frameDigest(raw), report, notices: [...notices, ...report.notices] };
 }
 
-interface PairInput extends Run {
-  readonly reference: number;
-  readonly moving: number;
-  readonly predicted: { readonly xNm: number; readonly yNm: number } | null;
+interface PairsInput extends Run {
+  /** The moving frame of all these pairs. */
+  readonly frame: number;
+  readonly against: readonly {
+    readonly reference: number;
+    readonly predicted: { readonly xNm: number; readonly yNm: number } | null;
+  }[];
 }
 
-/** The last few registration images stay in memory: neighbouring pairs share them. */
+/** The registration images used last stay in memory with what was computed from them: neighbouring frames share their partners. */
 const images = new Map<string, DriftImage>();
-const IMAGES_KEPT = 8;
+const IMAGES_KEPT = 10;
 
 function image(scratch: string, frame: number): DriftImage {
   const key = `${scratch}/${frame}`;
-  let found = images.get(key);
-  if (found === undefined) {
-    found = fetchKept<DriftImage>(scratch, `drift-${frame}`);
-    if (images.size >= IMAGES_KEPT) images.delete(images.keys().next().value as string);
-    images.set(key, found);
-  }
+  const found = images.get(key) ?? fetchKept<DriftImage>(scratch, `drift-${frame}`);
+  // the one used last stands last
+  images.delete(key);
+  if (images.size >= IMAGES_KEPT) images.delete(images.keys().next().value as string);
+  images.set(key, found);
   return found;
 }
 
-function pair(input: PairInput): PairShift {
-  return measurePair(
-    image(input.scratch, input.reference),
-    image(input.scratch, input.moving),
-    input.predicted,
-    input.settings.drift,
+/** Shifts of one frame against several. */
+function pairs(input: PairsInput): PairShift[] {
+  const moving = image(input.scratch, input.frame);
+  return input.against.map(({ reference, predicted }) =>
+    measurePair(image(input.scratch, reference), moving, predicted, input.settings.drift),
   );
 }
 
@@ -182,7 +183,7 @@ async function measure(input: MeasureInput): Promise<MeasureOutput> {
   };
 }
 
-const all = { clean, pair, debris, levels, measure };
+const all = { clean, pairs, debris, levels, measure };
 export type TaskName = keyof typeof all;
 export type TaskInput<N extends TaskName> = Parameters<(typeof all)[N]>[0];
 export type TaskOutput<N extends TaskName> = Awaited<ReturnType<(typeof all)[N]>>;

@@ -1,4 +1,4 @@
-import { dropNaNInPlace, selectInPlace, SD_PER_MAD } from "../../numerics/quantile.js";
+import { selectInPlace, SD_PER_MAD } from "../../numerics/quantile.js";
 import { fastLength } from "../../raster/fourier.js";
 import { correlate2 } from "../../raster/opencv.js";
 import type { CoarseImage } from "./coarse_image.js";
@@ -80,11 +80,13 @@ function heightsOf(
       if (!(va > 1e-6 * m && vb > 1e-6 * m)) continue;
       const p = wrapped + (x < 0 ? x + cols : x);
       const r = Math.max(-0.9999, Math.min(0.9999, (product[p] - (o.sumA * o.sumB) / m) / Math.sqrt(va * vb)));
-      score[(y + reachY) * width + x + reachX] = Math.atanh(r) * Math.sqrt(m);
+      score[(y + reachY) * width + x + reachX] = 0.5 * Math.log((1 + r) / (1 - r)) * Math.sqrt(m);
     }
   }
   const spread = spreadOf(score);
-  return spread === null ? null : score.map((v) => v / spread);
+  if (spread === null) return null;
+  for (let p = 0; p < score.length; p++) score[p] /= spread;
+  return score;
 }
 
 /** Sums over the pixels that both know at one lag. */
@@ -145,10 +147,11 @@ function maskedOverlaps(a: CoarseImage, b: CoarseImage, rows: number, cols: numb
   };
 }
 
-/** Robust standard deviation about 0 of what is not NaN. */
+/** Robust standard deviation about 0 of what is not NaN; every third value will do. */
 function spreadOf(score: Float64Array): number | null {
-  const sizes = score.map(Math.abs);
-  const count = dropNaNInPlace(sizes);
+  const sizes = new Float64Array(Math.ceil(score.length / 3));
+  let count = 0;
+  for (let p = 0; p < score.length; p += 3) if (!Number.isNaN(score[p])) sizes[count++] = Math.abs(score[p]);
   return count === 0 ? null : Math.max(1e-12, SD_PER_MAD * selectInPlace(sizes, count >> 1, count));
 }
 

@@ -6,6 +6,7 @@ import type { Grid } from "./grid.js";
 const WIDEST = 0.2;
 /** Structure is bent smoothly to this many robust standard deviations, so that one high particle does not outvote the rest. */
 const CLIP = 4;
+const WHOLE = 0.98;
 
 /** Transforms of mask and mask·value², for images with gaps. */
 export interface GapSpectra {
@@ -45,9 +46,9 @@ export class CoarseImage {
     return this.structure !== null;
   }
 
-  /** Whether every pixel is known. */
+  /** Whether nearly every pixel is known: the few others may count as pixels without structure, which changes no peak. */
   get isWhole(): boolean {
-    return this.count === this.rows * this.cols;
+    return this.count >= WHOLE * this.rows * this.cols;
   }
 
   /** Transform of mask·value, zero-padded to rows × cols. */

@@ -1,8 +1,8 @@
-import { stationaryCovariance, windowsOf } from "./noise_covariance.js";
+import { stationaryCovariance, windowOf } from "./noise_covariance.js";
 import { larger, scoreCovariance, type Sym2 } from "./score_covariance.js";
 import { PairSums } from "./pair_sums.js";
 import { offsetFor, type Sloped } from "./shifted.js";
-import type { Slope } from "./slope_sums.js";
+import { BLOCK, type Slope } from "./slope_sums.js";
 
 export interface FineShift {
   /** The feature at (row, col) of the reference lies at (row + dy, col + dx) of the moving frame; pixels. */
@@ -36,9 +36,13 @@ export interface FineOptions {
 const ITERATIONS = 25;
 /** The derivative of the weighted residuals is a slope to go by where it has this share of the weights' own: near the answer, where few lie beyond the weights' bend. */
 const LEAST_EXACT = 0.6;
-/** A step leaves a few hundredths of itself: one shorter than this many standard deviations leaves less than a tenth of one, … */
-const ENOUGH_SDS = 2;
-/** … and must be short against the interpolation's and the weights' bend as well; pixels. */
+/** A step leaves a few hundredths of itself: one shorter than this many standard deviations leaves about a tenth of one, … */
+const ENOUGH_SDS = 4;
+/** … and of few blocks one shorter than this times the root of their number, or what it mends would pass for scatter; … */
+const ENOUGH_OF_BLOCKS = 0.07;
+/** … where that is told from noise: what the step takes off the squares of the residuals must be little of them; … */
+const MISFIT_SHARE = 0.1;
+/** … and where the step is short against the interpolation's and the weights' bend; pixels. */
 const LONGEST_LAST_PX = 0.02;
 /** Rounding and interpolation: no shift is known better, not even between two copies of one frame. */
 const LEAST_SD_PX = 1e-4;
@@ -46,7 +50,7 @@ const LEAST_SD_PX = 1e-4;
 /** Shift between two equally blurred frames to a small fraction of a pixel.
  *
  *  Solves Σ w G (M(x + d) − b R(x) − nuisance) = 0 for d, where G is the gradient of R: one gain b is free and so is the nuisance, an offset
- *  for each row, tilt and bow (`removeNuisance`). As G and the noise of M are independent and the
+ *  for each row, tilt and bow (`RowFit`). As G and the noise of M are independent and the
  *  noise of R is uncorrelated with its own gradient, the solution is not drawn towards half pixels by the noise that
  *  interpolation averages, as the minimum of the squared difference is. For the same reason the slope of the equation is taken from the
  *  gradients of both frames, Σ G ∂Mᵀ: the product of one gradient with itself is inflated by noise.
@@ -71,7 +75,11 @@ export function fineShift(
     const score = sums.score();
     const byWeight = sums.slope(false);
     const exact = sums.slope(true);
-    const delta = solve(exact.xx + exact.yy > LEAST_EXACT * (byWeight.xx + byWeight.yy) ? exact : byWeight, score.x, score.y);
+    const delta = solve(
+      exact.xx + exact.yy > LEAST_EXACT * (byWeight.xx + byWeight.yy) ? exact : byWeight,
+      score.x,
+      score.y,
+    );
     if (delta === null) return null;
     const length = Math.hypot(delta.x, delta.y);
     const shorter = length > 1 ? 1 / length : 1;
@@ -79,7 +87,10 @@ export function fineShift(
     if (!(Math.hypot(at.dx - start.dx, at.dy - start.dy) <= options.leashPx)) return null;
     const scatter = scoreCovariance(sums.blocks.x, sums.blocks.y, sums.blocks.rows, sums.blocks.cols, null);
     const rough = sandwich(exact, scatter);
-    const known = rough === null ? 0 : Math.min(LONGEST_LAST_PX, ENOUGH_SDS * Math.sqrt(0.5 * (rough.xx + rough.yy)));
+    const misfit = Math.abs(delta.x * score.x + delta.y * score.y);
+    const enough = Math.min(ENOUGH_SDS, (ENOUGH_OF_BLOCKS * Math.sqrt(pixels)) / BLOCK);
+    const noisy = rough !== null && misfit < MISFIT_SHARE * sums.squares;
+    const known = noisy ? Math.min(LONGEST_LAST_PX, enough * Math.sqrt(0.5 * (rough.xx + rough.yy))) : 0;
     if (length > Math.max(options.tolerancePx, known)) continue;
     // the sums stand where the last, short step began
     return answer(work, exact, scatter, at, pixels, iteration, options);
@@ -98,8 +109,8 @@ function answer(
 ): FineShift | null {
   const { sums } = work;
   const reach = options.reachPx;
-  const windows = reach === null ? [] : windowsOf(work.overlap).map((w) => work.parts(w));
-  const alike = reach === null ? null : stationaryCovariance(windows, sums.plain, reach.x, reach.y);
+  const alike =
+    reach === null ? null : stationaryCovariance(work.parts(windowOf(work.overlap)), sums.plain, reach.x, reach.y);
   const covariance = alike === null ? scatter : larger(alike, scatter, pixels / 64);
   const level = sums.alongRows();
   const { blocks } = sums;

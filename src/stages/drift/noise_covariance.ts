@@ -18,56 +18,25 @@ export interface ScoreParts {
   readonly rowPixels: number;
 }
 
-/** Side of a window in which the noise is looked at, and the overlap, in windows, up to which there is only one. */
-const SIDE = 128;
-const FEW = 2;
+/** Side of the window in which the noise is looked at. A covariance to a few percent will do, and noise is alike everywhere. */
+const SIDE = 144;
 
-/** Windows that stand for a whole overlap: all of it where it is small, else one in the middle of each quarter. */
-export function windowsOf({ row0, row1, col0, col1 }: Span): Span[] {
-  const rows = row1 - row0;
-  const cols = col1 - col0;
-  if (rows * cols <= FEW * SIDE * SIDE) return [{ row0, row1, col0, col1 }];
-  const high = Math.min(SIDE, rows >> 1);
-  const wide = Math.min(SIDE, cols >> 1);
-  return [0.25, 0.75].flatMap((y) =>
-    [0.25, 0.75].map((x): Span => {
-      const top = row0 + Math.round(y * rows - 0.5 * high);
-      const left = col0 + Math.round(x * cols - 0.5 * wide);
-      return { row0: top, row1: top + high, col0: left, col1: left + wide };
-    }),
-  );
+/** The part of an overlap that stands for it: all of it, or of a large one the middle. */
+export function windowOf({ row0, row1, col0, col1 }: Span): Span {
+  const high = Math.min(row1 - row0, Math.max(SIDE, Math.ceil(SIDE ** 2 / (col1 - col0))));
+  const wide = Math.min(col1 - col0, Math.max(SIDE, Math.ceil(SIDE ** 2 / (row1 - row0))));
+  const top = row0 + ((row1 - row0 - high) >> 1);
+  const left = col0 + ((col1 - col0 - wide) >> 1);
+  return { row0: top, row1: top + high, col0: left, col1: left + wide };
 }
 
 /** Covariance of Σ u·e for noise e that is alike everywhere: Σ_lag C(lag) Γ(lag), C the autocovariance of the residuals up to `reach` pixels,
  *  Γ that of u. Steadier than the scatter of block sums where few blocks overlap, but blind to noise that sits where the structure is.
  *  Taking off row means lowers C by a constant along each row of lags, Σ_x C/N, which is put back.
- *  @param windows parts of the overlap in which it is looked at
- *  @param plain Σ|u|² over the whole overlap, to which the windows' sum is scaled
+ *  @param parts of a window of the overlap
+ *  @param plain Σ|u|² over the whole overlap, to which the window's sum is scaled
  *  @returns null where too little overlaps to tell */
-export function stationaryCovariance(
-  windows: readonly ScoreParts[],
-  plain: number,
-  reachX: number,
-  reachY: number,
-): Sym2 | null {
-  let xx = 0;
-  let xy = 0;
-  let yy = 0;
-  let seen = 0;
-  for (const parts of windows) {
-    const s = inWindow(parts, reachX, reachY);
-    if (s === null) continue;
-    xx += s.xx;
-    xy += s.xy;
-    yy += s.yy;
-    for (let p = 0; p < parts.ux.length; p++) seen += parts.ux[p] * parts.ux[p] + parts.uy[p] * parts.uy[p];
-  }
-  if (!(xx > 0 && yy > 0 && xx * yy > xy * xy)) return null;
-  const share = plain / seen;
-  return { xx: share * xx, xy: share * xy, yy: share * yy };
-}
-
-function inWindow(parts: ScoreParts, reachX: number, reachY: number): Sym2 | null {
+export function stationaryCovariance(parts: ScoreParts, plain: number, reachX: number, reachY: number): Sym2 | null {
   const { rowPixels } = parts;
   if (!(rowPixels > 2 * (2 * reachX + 1))) return null;
   const rows = fastLength(parts.rows + reachY);
@@ -75,9 +44,9 @@ function inWindow(parts: ScoreParts, reachX: number, reachY: number): Sym2 | nul
   const n = rows * cols;
   const sum = new Float64Array(n);
   const count = new Float64Array(n);
-  const mask = dft2(pad(parts.usable, parts, rows, cols), rows, cols);
   const e = dft2(pad(parts.residual, parts, rows, cols), rows, cols);
   correlate2(e, e, rows, cols, sum);
+  const mask = dft2(pad(parts.usable, parts, rows, cols), rows, cols);
   correlate2(mask, mask, rows, cols, count);
   const c = new Float64Array(n);
   for (let y = -reachY; y <= reachY; y++) {
@@ -105,7 +74,11 @@ function inWindow(parts: ScoreParts, reachX: number, reachY: number): Sym2 | nul
     xy += w * (ux[k] * uy[k] + ux[k + 1] * uy[k + 1]);
     yy += w * (uy[k] * uy[k] + uy[k + 1] * uy[k + 1]);
   }
-  return { xx: xx / n, xy: xy / n, yy: yy / n };
+  if (!(xx > 0 && yy > 0 && xx * yy > xy * xy)) return null;
+  let seen = 0;
+  for (let p = 0; p < parts.ux.length; p++) seen += parts.ux[p] * parts.ux[p] + parts.uy[p] * parts.uy[p];
+  const share = plain / (n * seen);
+  return { xx: share * xx, xy: share * xy, yy: share * yy };
 }
 
 function pad(data: Float64Array, parts: ScoreParts, rows: number, cols: number): Float64Array {

@@ -11,6 +11,8 @@ const COARSE_SIDE = 128;
 const LEAST_PIXELS = 200;
 /** Steps shrink tenfold and more each time: after one of this length what is left is below 1e-4 px. */
 const TOLERANCE_PX = 5e-4;
+/** On the coarser grids, whose answer is only where the next one starts. */
+const ROUGH_PX = 0.03;
 /** A shift less certain than this is none. */
 const WORST_SD_PX = 1;
 /** Peaks down to this share of `leastPeak` are kept as ambiguous. */
@@ -166,7 +168,7 @@ function refine({ r, m }: Channel, peak: Peak, factor: number, leastPixels: numb
       { dx: dx / f, dy: dy / f },
       {
         leashPx: leash,
-        tolerancePx: 0.01,
+        tolerancePx: ROUGH_PX,
         leastPixels: Math.max(50, leastPixels / (2 * f * f)),
         reachPx: null,
       },

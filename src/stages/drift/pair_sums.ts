@@ -64,7 +64,7 @@ export class PairSums {
       { ...this.buffers, gx: this.reference.gradient.x, gy: this.reference.gradient.y, xi: this.fit.xi },
       { residual: this.ofResidual, gx: this.ofX, gy: this.ofY },
       this.span,
-      { known: this.moving.slopes, from: at.iy * this.moving.grid.cols + at.jx, cols: this.moving.grid.cols },
+      { known: this.moving.samples, from: at.iy * this.moving.grid.cols + at.jx, cols: this.moving.grid.cols },
     );
     return this.pixels;
   }
@@ -316,7 +316,7 @@ export class PairSums {
     return this.span;
   }
 
-  /** Mean number of pixels of a row that takes part. */
+  /** Mean number of pixels of a row over which its offset was taken. */
   private rowPixels(): number {
     let seen = 0;
     for (let i = 0; i < this.rows; i++) if (this.counts[5 * i] > 0) seen++;

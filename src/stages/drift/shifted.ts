@@ -90,27 +90,31 @@ export function sampleShifted(image: Grid, at: Offset, span: Span, cols: number,
   }
 }
 
-/** An image with what registration needs of it besides; computed once, as an image takes part in many pairs. */
-export class Sloped {
-  /** Derivatives along x and y (per pixel, by five points), at the pixels; `usable` where the pixels that they need are known. */
-  readonly gradient: { readonly x: Float32Array; readonly y: Float32Array; readonly usable: Uint8Array };
-  private samplesKnown: Uint8Array | null = null;
-  private slopesKnown: Uint8Array | null = null;
+export interface Gradient {
+  readonly x: Float32Array;
+  readonly y: Float32Array;
+  /** 1 where the pixels that the derivatives need are known. */
+  readonly usable: Uint8Array;
+}
 
-  constructor(readonly grid: Grid) {
-    this.gradient = gradientOf(grid);
+/** An image with what registration needs of it besides; computed once, as an image takes part in many pairs, and only in the role that it has there. */
+export class Sloped {
+  private slopes: Gradient | null = null;
+  private samplesKnown: Uint8Array | null = null;
+
+  constructor(readonly grid: Grid) {}
+
+  /** As a reference: derivatives along x and y (per pixel, by five points), at the pixels. */
+  get gradient(): Gradient {
+    this.slopes ??= gradientOf(this.grid);
+    return this.slopes;
   }
 
-  /** 1 where the six samples each way from −2 to 3 do for interpolation: the middle ones whole, the outer ones at least in part. */
+  /** As a moving image: 1 where the six samples each way from −2 to 3 do for interpolation, the middle ones whole, the outer ones at least in part. Where
+   *  it is 0 it is 0 over six pixels each way. */
   get samples(): Uint8Array {
     this.samplesKnown ??= samplesOf(this.grid);
     return this.samplesKnown;
-  }
-
-  /** 1 where five interpolated values each way do for a derivative. */
-  get slopes(): Uint8Array {
-    this.slopesKnown ??= erodeByCross(this.samples, this.grid.rows, this.grid.cols);
-    return this.slopesKnown;
   }
 }
 
@@ -130,26 +134,7 @@ function samplesOf({ rows, cols, known }: Grid): Uint8Array {
   return out;
 }
 
-function erodeByCross(mask: Uint8Array, rows: number, cols: number): Uint8Array {
-  const out = new Uint8Array(mask.length);
-  for (let i = 2; i < rows - 2; i++) {
-    for (let p = i * cols + 2; p < (i + 1) * cols - 2; p++) {
-      out[p] =
-        mask[p] &
-        mask[p - 1] &
-        mask[p - 2] &
-        mask[p + 1] &
-        mask[p + 2] &
-        mask[p - cols] &
-        mask[p - 2 * cols] &
-        mask[p + cols] &
-        mask[p + 2 * cols];
-    }
-  }
-  return out;
-}
-
-function gradientOf(image: Grid): { x: Float32Array; y: Float32Array; usable: Uint8Array } {
+function gradientOf(image: Grid): Gradient {
   const { rows, cols, values: v, known } = image;
   const x = new Float32Array(v.length);
   const y = new Float32Array(v.length);
