@@ -36,6 +36,8 @@ export interface FineOptions {
 const ITERATIONS = 25;
 /** The derivative of the weighted residuals is a slope to go by where it has this share of the weights' own: near the answer, where few lie beyond the weights' bend. */
 const LEAST_EXACT = 0.6;
+/** A step back over this share of the last one is not taken whole. */
+const OVERSHOT = 0.2;
 /** A step leaves a few hundredths of itself: one shorter than this many standard deviations leaves about a tenth of one, … */
 const ENOUGH_SDS = 4;
 /** … and of few blocks one shorter than this times the root of their number, or what it mends would pass for scatter; … */
@@ -69,6 +71,7 @@ export function fineShift(
   const { sums } = work;
   let at = offsetFor(start.dx, start.dy, null);
   let pixels = 0;
+  let taken: { x: number; y: number } | null = null;
   for (let iteration = 1; iteration <= ITERATIONS; iteration++) {
     pixels = work.read(at);
     if (pixels < options.leastPixels) return null;
@@ -82,8 +85,12 @@ export function fineShift(
     );
     if (delta === null) return null;
     const length = Math.hypot(delta.x, delta.y);
-    const shorter = length > 1 ? 1 / length : 1;
-    at = offsetFor(at.dx - shorter * delta.x, at.dy - shorter * delta.y, at);
+    // where the step goes back on the last one the weights make it jump over the answer: as much of it as the secant says
+    const back =
+      taken === null ? 0 : -(delta.x * taken.x + delta.y * taken.y) / (taken.x * taken.x + taken.y * taken.y);
+    const shorter = Math.min(1, 1 / length, back > OVERSHOT ? 1 / (1 + back) : 1);
+    taken = { x: shorter * delta.x, y: shorter * delta.y };
+    at = offsetFor(at.dx - taken.x, at.dy - taken.y, at);
     if (!(Math.hypot(at.dx - start.dx, at.dy - start.dy) <= options.leashPx)) return null;
     const scatter = scoreCovariance(sums.blocks.x, sums.blocks.y, sums.blocks.rows, sums.blocks.cols, null);
     const rough = sandwich(exact, scatter);
