@@ -161,7 +161,10 @@ function refine({ r, m }: Channel, peak: Peak, factor: number, leastPixels: numb
   let dx = peak.lagX * factor;
   let dy = peak.lagY * factor;
   let leash = 1 + peak.widthPx;
-  for (let f = factor; f > 1 || (f === 1 && factor === 1 && peak.widthPx > 3); f = Math.floor(f / 2)) {
+  const grids: number[] = [];
+  for (let f = factor; f > 1; f = Math.floor(f / 2)) grids.push(f);
+  if (grids.length === 0 && peak.widthPx > 3) grids.push(1);
+  for (const f of grids) {
     const rough = fineShift(
       r.sloped(f),
       m.sloped(f),
