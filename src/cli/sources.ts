@@ -1,4 +1,4 @@
-import { frameDigest, hashFile, loadFrame } from "../input/index.js";
+import { hashFile, imagesDigest } from "../input/index.js";
 import type { Cooldown } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
 import { plainText } from "../model/text.js";
@@ -13,7 +13,7 @@ export async function refuseOtherContent(db: Db, cooldown: Cooldown): Promise<nu
   if (known === null) return null;
   checkName(db, cooldown, null);
   const images: string[] = [];
-  for (const info of cooldown.frames) images.push(frameDigest(await loadFrame(cooldown, info)));
+  for (const info of cooldown.frames) images.push(await imagesDigest(cooldown, info));
   checkName(db, cooldown, images);
   return known.frames.length;
 }

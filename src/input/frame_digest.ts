@@ -1,6 +1,7 @@
 import { createHash } from "node:crypto";
-import type { RawFrame } from "../model/cooldown.js";
+import type { Cooldown, FrameInfo, RawFrame } from "../model/cooldown.js";
 import { colsOf, dataOf, rowsOf, type Raster } from "../model/raster.js";
+import { loadFrame } from "./load_frame.js";
 
 /** SHA-256 of the values of a frame's images, as loaded: the same whatever kind of file or page they come from, so that a frame is
  *  known again in a longer stack or another format. A pixel that was not measured counts as such, however its NaN is written. */
@@ -11,6 +12,18 @@ export function frameDigest(frame: Pick<RawFrame, "topography" | "amplitude" | "
     if (image !== null) hash.update(plainBytes(image));
   }
   return hash.digest("hex");
+}
+
+/** The digest of a frame's images whatever the user leaves out of them: a frame is the same frame after an exclusion as before.
+ *  @param loaded the frame as `loadFrame` gives it; it is read once more where something is left out */
+export async function imagesDigest(
+  cooldown: Pick<Cooldown, "pixel">,
+  info: FrameInfo,
+  loaded: RawFrame | null = null,
+): Promise<string> {
+  const { excluded, excludedRegions = [], ...whole } = info;
+  if (loaded !== null && excluded === undefined && excludedRegions.length === 0) return frameDigest(loaded);
+  return frameDigest(await loadFrame(cooldown, whole));
 }
 
 const NAN_BITS = 0x7fc00000;

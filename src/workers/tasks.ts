@@ -6,7 +6,7 @@ import type { ErrorRecord } from "../model/errors.js";
 import type { Preview } from "../model/pictures.js";
 import type { DomainMap, Drift, FrameLevels, FrameStates, FrameVerdict } from "../model/signal.js";
 import type { FringeTest, FrameWalls, WidthSummary } from "../model/walls.js";
-import { frameDigest, inspectFrame, loadFrame } from "../input/index.js";
+import { imagesDigest, inspectFrame, loadFrame } from "../input/index.js";
 import type { Settings } from "../settings.js";
 import { cleanFrame, type CleanReport } from "../stages/clean/index.js";
 import { CORE, DebrisAccumulator, debrisInFrame, findDebrisInFrame, type DebrisMap } from "../stages/debris/index.js";
@@ -43,7 +43,11 @@ async function clean(input: CleanInput): Promise<CleanOutput> {
   const { clean: frame, report } = cleanFrame(raw, input.settings.clean);
   keepClean(input.scratch, frame);
   keep(input.scratch, `drift-${frame.frame}`, prepareForDrift(frame, input.settings.drift));
-  return { imagesSha256: frameDigest(raw), report, notices: [...notices, ...report.notices] };
+  return {
+    imagesSha256: await imagesDigest(input.cooldown, input.info, raw),
+    report,
+    notices: [...notices, ...report.notices],
+  };
 }
 
 interface PairsInput extends Run {

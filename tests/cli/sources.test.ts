@@ -1,10 +1,10 @@
-import { mkdtempSync, rmSync } from "node:fs";
+import { appendFileSync, mkdtempSync, rmSync } from "node:fs";
 import { tmpdir } from "node:os";
 import path from "node:path";
 import { afterEach, beforeEach, expect, test } from "vitest";
 import { refuseChangedSources, refuseOtherContent } from "../../src/cli/sources.js";
 import { generateStack, mergeSpec } from "../../src/demo/index.js";
-import { frameDigest, loadFrame, readCooldown } from "../../src/input/index.js";
+import { frameDigest, imagesDigest, loadFrame, readCooldown } from "../../src/input/index.js";
 import type { Analysis } from "../../src/model/analysis.js";
 import type { Cooldown } from "../../src/model/cooldown.js";
 import { makeRaster } from "../../src/model/raster.js";
@@ -27,7 +27,7 @@ afterEach(() => {
 /** Any analysis of a cooldown, with the digests of its real images: the store looks at nothing else of it. */
 async function analysisOf(cooldown: Cooldown): Promise<Analysis> {
   const images = [];
-  for (const info of cooldown.frames) images.push(frameDigest(await loadFrame(cooldown, info)));
+  for (const info of cooldown.frames) images.push(await imagesDigest(cooldown, info, await loadFrame(cooldown, info)));
   const made = sampleAnalysis({ frames: cooldown.frames.length });
   return { ...made, cooldown, frames: made.frames.map((f, k) => ({ ...f, imagesSha256: images[k] })) };
 }
@@ -57,6 +57,22 @@ test("a cooldown that has grown is welcome, in whatever files; one of the same n
   );
   const elsewhere = await readCooldown(generateStack(mergeSpec(grown, { region: "B" }), path.join(dir, "elsewhere")));
   await expect(refuseOtherContent(db, elsewhere)).rejects.toThrow(/region "A" there, region "B" here/);
+});
+
+test("a cooldown of which a frame or a region is left out later is the same cooldown", async () => {
+  const yaml = generateStack(tinyCooldown("kv30-a", 1), path.join(dir, "a"));
+  const whole = await readCooldown(yaml);
+  saveAnalysis(db, await analysisOf(whole), new Date("2026-01-01T00:00:00Z"));
+  appendFileSync(
+    yaml,
+    "\nexclude:\n  - { frame: 1, reason: tip changed }\n  - { frame: 2, region_nm: [0, 0, 90, 90], reason: scratch }\n",
+  );
+  const less = await readCooldown(yaml);
+  expect([less.frames[1].excluded, less.frames[2].excludedRegions?.length]).toEqual(["tip changed", 1]);
+  await expect(refuseOtherContent(db, less)).resolves.toBe(4);
+  const made = await analysisOf(less);
+  expect(made.frames.map((f) => f.imagesSha256)).toEqual((await analysisOf(whole)).frames.map((f) => f.imagesSha256));
+  expect(saveAnalysis(db, made, new Date("2026-01-02T00:00:00Z")).id).toBe(2);
 });
 
 test("a digest is of the values: not measured is not measured, however its NaN is written; one bit more is another image", () => {
