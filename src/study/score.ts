@@ -76,12 +76,19 @@ export interface Beside {
   readonly events: EventScore;
 }
 
-/** Reads the tables of the truth's cooldown back from the database and sets them beside the truth.
- *  @param beside without it the fraction is compared over the pixels that the simulator holds free of debris, and events are not scored */
+/** Reads the tables of the truth's cooldown back from the database and sets them beside the truth; see `scoreTables`. */
 export function scoreCooldown(db: Db, truth: CooldownTruth, beside?: Beside): Score {
-  const rows = (name: string): Row[] => [
-    ...readTable(db, tableNamed(name) as ExportedTable, { cooldowns: [truth.cooldown] }),
-  ];
+  return scoreTables(
+    (name) => [...readTable(db, tableNamed(name) as ExportedTable, { cooldowns: [truth.cooldown] })],
+    truth,
+    beside,
+  );
+}
+
+/** Sets exported tables, wherever they come from, beside the truth of their cooldown.
+ *  @param rows the rows of a table by its name
+ *  @param beside without it the fraction is compared over the pixels that the simulator holds free of debris, and events are not scored */
+export function scoreTables(rows: (name: string) => readonly Row[], truth: CooldownTruth, beside?: Beside): Score {
   const frames = rows("temperature");
   const truthOf = (r: Row): FrameTruth => truth.frames[r["frame"] as number] as FrameTruth;
   const { xNm, yNm } = truth.spec.pixel;

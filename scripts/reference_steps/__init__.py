@@ -1,0 +1,1 @@
+"""The steps of reference.py, one file each."""
