@@ -27,7 +27,7 @@ export function timedNode(args) {
   });
   const wallS = (performance.now() - begin) / 1000;
   try {
-    if (r.status !== 0) throw new Error(`node ${args.join(" ")}: ${r.stderr}`);
+    if (r.status !== 0) throw new Error(`node ${args.join(" ")}: ${String(r.stderr)}`);
     return { wallS, ...JSON.parse(readFileSync(file, "utf8")) };
   } finally {
     rmSync(folder, { recursive: true, force: true });

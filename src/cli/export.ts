@@ -2,7 +2,7 @@ import path from "node:path";
 import { pipeline } from "node:stream/promises";
 import { Readable } from "node:stream";
 import { UsageError } from "../model/errors.js";
-import { readTable } from "../store/read.js";
+import { readCells } from "../store/read.js";
 import { TABLES, tableNamed } from "../tables/columns.js";
 import { formatTable, type Format } from "../tables/format.js";
 import { openSelected, type SelectOptions } from "./select.js";
@@ -28,7 +28,7 @@ export async function exportTable(name: string, o: ExportOptions): Promise<void>
   }
   const { db, selection } = openSelected(o);
   try {
-    const text = formatTable(table, readTable(db, table, selection), o.format);
+    const text = formatTable(table, readCells(db, table, selection), o.format);
     if (o.out === undefined) {
       await pipeline(Readable.from(text), process.stdout, { end: false });
       return;

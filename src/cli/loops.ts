@@ -1,5 +1,6 @@
 import { plainText } from "../model/text.js";
-import { readTable, type Row } from "../store/read.js";
+import type { Db } from "../store/open.js";
+import { readTable, type Row, type Selection } from "../store/read.js";
 import { tableNamed, type ExportedTable } from "../tables/columns.js";
 import { loopPlot, type LoopPoint } from "./loop_plot.js";
 import { intervalText, fixed } from "./summary.js";
@@ -7,6 +8,20 @@ import { openSelected, type SelectOptions } from "./select.js";
 import { print } from "./say.js";
 
 const num = (r: Row, k: string): number | null => (typeof r[k] === "number" ? r[k] : null);
+
+const keyOf = (r: Row): string => `${String(r["analysis"])} ${String(r["cycle"])}`;
+
+/** What the plots need of each frame, gathered in one pass: a database of years holds thousands. */
+function framesByCycle(db: Db, selection: Selection): Map<string, Row[]> {
+  const out = new Map<string, Row[]>();
+  const columns = ["analysis", "cycle", "branch", "temperature_K", "metallic_fraction"];
+  for (const f of readTable(db, tableNamed("temperature") as ExportedTable, selection, columns)) {
+    const cycle = out.get(keyOf(f));
+    if (cycle === undefined) out.set(keyOf(f), [f]);
+    else cycle.push(f);
+  }
+  return out;
+}
 
 /** `coldseam loops`: half temperatures, width and area of every cycle, each with a plot of the loop. */
 export function loops(o: SelectOptions & { format: string }): void {
@@ -18,11 +33,9 @@ export function loops(o: SelectOptions & { format: string }): void {
       return;
     }
     if (rows.length === 0) print("no loop for this choice; `coldseam cooldowns --db FILE` says what is in the file\n");
-    const frames = rows.length === 0 ? [] : [...readTable(db, tableNamed("temperature") as ExportedTable, selection)];
+    const framesOf = rows.length === 0 ? new Map<string, Row[]>() : framesByCycle(db, selection);
     for (const r of rows) {
-      const cycle = frames.filter(
-        (f) => f["cooldown"] === r["cooldown"] && f["cycle"] === r["cycle"] && f["analysis"] === r["analysis"],
-      );
+      const cycle = framesOf.get(keyOf(r)) ?? [];
       print(`${plainText(String(r["cooldown"]))}  cycle ${String(r["cycle"])}  (analysis ${String(r["analysis"])})\n`);
       print(
         `  half temperature, cooling  ${intervalText(num(r, "cooling_half_K"), num(r, "cooling_half_low_K"), num(r, "cooling_half_high_K"), "K", 2)}\n`,

@@ -6,8 +6,25 @@ import { expect, test } from "vitest";
 import { migrate } from "../../src/store/migrate.js";
 import { planRemoval, remove } from "../../src/store/forget.js";
 import { openForReading, openForWriting, type Db } from "../../src/store/open.js";
-import { readTable, tableStatement } from "../../src/store/read.js";
-import { saveAnalysis } from "../../src/store/save.js";
+import {
+  hasPictures,
+  readDriftPairs,
+  readFringeBins,
+  readPreview,
+  readProfileBins,
+  readWalls,
+} from "../../src/store/pictures.js";
+import {
+  cooldownNames,
+  readCells,
+  readCooldowns,
+  readMap,
+  readNotices,
+  readTable,
+  tableStatement,
+  unknownCooldowns,
+} from "../../src/store/read.js";
+import { findAnalysis, knownCooldown, saveAnalysis } from "../../src/store/save.js";
 import { TABLES, tableNamed, type ExportedTable } from "../../src/tables/columns.js";
 import { sampleAnalysis } from "./sample_analysis.js";
 
@@ -64,6 +81,92 @@ test.each(TABLES.map((t) => [t.name, t] as const))(
     expect([...readTable(db, table, { analysis: 1, cooldowns: ["a"] })]).toEqual([]);
   },
 );
+
+test("some columns, or bare cells, are the same values as whole rows", () => {
+  const db = stored();
+  for (const table of TABLES) {
+    const names = table.columns.map((c) => c.name);
+    const rows = [...readTable(db, table)];
+    expect(rows.length).toBeGreaterThan(0);
+    expect([...readCells(db, table)]).toEqual(rows.map((r) => names.map((n) => r[n])));
+    const few = [names[names.length - 1], names[0]];
+    expect([...readTable(db, table, {}, few)]).toEqual(rows.map((r) => Object.fromEntries(few.map((n) => [n, r[n]]))));
+  }
+});
+
+/** Every statement that `use` prepares, with its plan. */
+function plansOf(db: Db, use: (db: Db) => void): { sql: string; plan: string[] }[] {
+  const seen: string[] = [];
+  const watched = new Proxy(db, {
+    get(target, key) {
+      if (key !== "prepare") return Reflect.get(target, key) as unknown;
+      return (sql: string) => {
+        seen.push(sql);
+        return target.prepare(sql);
+      };
+    },
+  });
+  use(watched);
+  return seen.map((sql) => {
+    const values = Array.from(sql.matchAll(/\?/g), () => 1);
+    const rows = db.prepare<unknown[], { detail: string }>(`EXPLAIN QUERY PLAN ${sql}`).all(...values);
+    return { sql, plan: rows.map((r) => r.detail) };
+  });
+}
+
+test("no question walks a table that grows with frames, walls or profiles: indices lead to the analysis asked for", () => {
+  const db = stored();
+  const plans = plansOf(db, (d) => {
+    readCooldowns(d);
+    readNotices(d, 1);
+    cooldownNames(d);
+    unknownCooldowns(d, ["a"]);
+    knownCooldown(d, "a");
+    findAnalysis(d, "0".repeat(64));
+    readMap(d, 1, 0);
+    readWalls(d, 1, 0);
+    readPreview(d, 1, 0, "amplitude");
+    readProfileBins(d, 1, 0, 0, 0);
+    readFringeBins(d, 1, 0, 0, 0);
+    readDriftPairs(d, 1);
+    hasPictures(d, 1);
+    for (const table of TABLES) for (const _ of readTable(d, table, { cooldowns: ["a"], sample: "KV-14" })) break;
+  });
+  expect(plans.length).toBeGreaterThanOrEqual(13 + 2 * TABLES.length);
+  // One row a cooldown or an analysis; `b`, `na` and `newest_analysis` are those again.
+  const few = /^SCAN (c|a|b|na|cooldown|analysis|newest_analysis|s)( USING .*)?$/;
+  for (const { sql, plan } of plans)
+    expect(
+      plan.filter((d) => d.startsWith("SCAN") && !few.test(d)),
+      sql,
+    ).toEqual([]);
+  for (const { sql, plan } of plans.filter((p) =>
+    /FROM (frame|wall|preview|profile_bins|fringe_bins|drift_pair)\b/.test(p.sql),
+  ))
+    expect(plan.join("; "), sql).toMatch(/USING .*(PRIMARY KEY|INDEX).*\(analysis_id=\?/);
+});
+
+test("what hangs on a removed row is found by an index, whatever references it", () => {
+  const db = stored();
+  const tables = db.prepare<[], string>("SELECT name FROM sqlite_master WHERE type = 'table'").pluck().all();
+  let references = 0;
+  for (const child of tables) {
+    const keys = db
+      .prepare<[string], { id: number; from: string }>('SELECT id, "from" FROM pragma_foreign_key_list(?)')
+      .all(child);
+    for (const id of new Set(keys.map((k) => k.id))) {
+      const columns = keys.filter((k) => k.id === id).map((k) => k.from);
+      const plan = db
+        .prepare<unknown[], { detail: string }>(
+          `EXPLAIN QUERY PLAN SELECT 1 FROM ${child} WHERE ${columns.map((c) => `${c} = ?`).join(" AND ")}`,
+        )
+        .all(...columns.map(() => 1));
+      expect(plan[0]?.detail, `${child} (${columns.join(", ")})`).toMatch(/^SEARCH/);
+      references++;
+    }
+  }
+  expect(references).toBeGreaterThan(10);
+});
 
 test("names with quotes and SQL in them are only names", () => {
   const db = stored();

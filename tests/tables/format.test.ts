@@ -35,3 +35,15 @@ test("a name that a spreadsheet would run as a formula is kept as text; negative
 test("numbers keep all their digits", () => {
   expect(text([{ a: 0.1 + 0.2, b: 1e-9 }], "csv")).toBe("a,b\n0.30000000000000004,1e-9\n");
 });
+
+test("cells in the order of the columns give the same text as cells by name", () => {
+  for (const format of ["csv", "tsv", "json"] as const) {
+    const byName = [...formatTable(table, [{ a: "=1", b: null }], format)].join("");
+    expect([...formatTable(table, [["=1", null]], format)].join("")).toBe(byName);
+  }
+});
+
+test("a table longer than a batch is whole", () => {
+  const rows = Array.from({ length: 137 }, (_, k) => [k, "x"]);
+  expect([...formatTable(table, rows, "csv")].join("").split("\n")).toHaveLength(139);
+});
