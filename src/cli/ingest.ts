@@ -1,8 +1,10 @@
 import os from "node:os";
 import { UsageError } from "../model/errors.js";
+import type { Analysis } from "../model/analysis.js";
+import type { Cooldown } from "../model/cooldown.js";
 import { countOf, plainText } from "../model/text.js";
 import { readCooldown } from "../input/index.js";
-import { settingRecord, settingsWith } from "../settings.js";
+import { settingRecord, settingsWith, type Settings } from "../settings.js";
 import { openForWriting } from "../store/open.js";
 import { contentHash, description, workHash } from "../store/identity.js";
 import { findAnalysis, saveAnalysis } from "../store/save.js";
@@ -17,6 +19,9 @@ export interface IngestOptions {
   readonly workers?: string;
   readonly set?: readonly string[];
   readonly allowOutside?: boolean;
+  readonly watch?: boolean;
+  readonly until?: string;
+  readonly every?: string;
 }
 
 export function workerCount(text: string | undefined): number {
@@ -25,6 +30,25 @@ export function workerCount(text: string | undefined): number {
   if (!Number.isInteger(n) || n < 0 || n > 256)
     throw new UsageError(`--workers ${text}: expected a whole number from 0 to 256`, "leave it out to use every core");
   return n;
+}
+
+/** Analyses a cooldown with a progress bar on standard error. Throws what `analyse` throws, an AbortError where it was stopped. */
+export async function runAnalysis(
+  cooldown: Cooldown,
+  o: { readonly settings: Settings; readonly workers: number; readonly signal: AbortSignal },
+): Promise<Analysis> {
+  // Loaded only now: a repeated ingest needs none of the numerics.
+  const { analyse } = await import("../analyse.js");
+  const progress = makeProgress(plainText(cooldown.cooldown), cooldown.frames.length);
+  try {
+    return await analyse(cooldown, {
+      ...o,
+      programVersion: programVersion(),
+      onProgress: (stage, done, total) => progress.update(stage, done, total),
+    });
+  } finally {
+    progress.stop();
+  }
 }
 
 /** `coldseam ingest`, of the files that describe one cooldown: read, analyse, store in one transaction, and say what was found. Returns the
@@ -53,21 +77,7 @@ export async function ingest(yaml: string | readonly string[], o: IngestOptions)
       say(
         `${plainText(cooldown.cooldown)}: ${countOf(known, "frame")} known, ${cooldown.frames.length - known} new; the whole is analysed`,
       );
-    // Loaded only now: a repeated ingest needs none of the numerics.
-    const { analyse } = await import("../analyse.js");
-    const progress = makeProgress(plainText(cooldown.cooldown), cooldown.frames.length);
-    let analysis;
-    try {
-      analysis = await analyse(cooldown, {
-        settings,
-        programVersion: version,
-        workers,
-        signal: abort.signal,
-        onProgress: (stage, done, total) => progress.update(stage, done, total),
-      });
-    } finally {
-      progress.stop();
-    }
+    const analysis = await runAnalysis(cooldown, { settings, workers, signal: abort.signal });
     abort.signal.throwIfAborted();
     await refuseChangedSources(cooldown);
     const saved = saveAnalysis(db, analysis, new Date());

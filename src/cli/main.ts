@@ -1,6 +1,7 @@
 import { Command, CommanderError, Option } from "commander";
 import { readFileSync } from "node:fs";
 import { databaseProblem } from "../store/problem.js";
+import type { IngestOptions } from "./ingest.js";
 import { sayError } from "./say.js";
 
 export function programVersion(): string {
@@ -54,7 +55,14 @@ function build(): Command {
     .option("--workers <n>", "worker threads (default: the cores; 0: none)")
     .option("--set <name=value>", "change a setting; may be repeated", collect, [])
     .option("--allow-outside", "allow image files outside the folder of the YAML file")
-    .action(async (yaml: string[], o: object) => void (await (await import("./ingest.js")).ingest(yaml, o as never)));
+    .option("--watch", "while the run goes on: take in each new frame as it comes, and show the loop so far")
+    .option("--until <n>", "with --watch: end when so many frames are taken in (default: Ctrl-C ends it)")
+    .option("--every <s>", "with --watch: seconds from one look at the files to the next (default: 2)")
+    .action(async (yaml: string[], o: IngestOptions) =>
+      o.watch === true || o.until !== undefined || o.every !== undefined
+        ? (await import("./watch.js")).watch(yaml, o)
+        : void (await (await import("./ingest.js")).ingest(yaml, o)),
+    );
 
   program
     .command("cooldowns")

@@ -1,7 +1,9 @@
 import { hashFile, imagesDigest } from "../input/index.js";
+import type { Analysis } from "../model/analysis.js";
 import type { Cooldown } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
 import { plainText } from "../model/text.js";
+import { canonical } from "../store/identity.js";
 import { checkName, knownCooldown } from "../store/save.js";
 import type { Db } from "../store/open.js";
 import path from "node:path";
@@ -42,4 +44,30 @@ export async function refuseChangedSources(cooldown: Cooldown): Promise<void> {
     }
   }
   if (problems.length > 0) throw new InputError(problems);
+}
+
+/** The cooldown whose sources are the files as they are now, where these still hold the frames that were analysed, pixel by pixel: a stack
+ *  may have got another page meanwhile. null where they do not. */
+export async function settle(analysis: Analysis, read: () => Promise<Cooldown>): Promise<Cooldown | null> {
+  const { cooldown } = analysis;
+  try {
+    await refuseChangedSources(cooldown);
+    return cooldown;
+  } catch (e) {
+    if (!(e instanceof InputError)) throw e;
+  }
+  const now = await read();
+  const frames = now.frames.slice(0, cooldown.frames.length);
+  if (canonical(frames) !== canonical(cooldown.frames)) return null;
+  for (const info of frames) {
+    if ((await imagesDigest(now, info)) !== analysis.frames[info.frame].imagesSha256) return null;
+  }
+  const settled = { ...cooldown, sources: now.sources };
+  try {
+    await refuseChangedSources(settled);
+    return settled;
+  } catch (e) {
+    if (e instanceof InputError) return null;
+    throw e;
+  }
 }

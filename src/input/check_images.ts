@@ -6,46 +6,57 @@ import { placeKey, type HeaderBook } from "./image_headers.js";
 import { kelvin } from "./schema.js";
 import { framesOfStacks, type WrittenFrame, type WrittenSeries, type WrittenStacks } from "./series_frames.js";
 
+export interface ImageChecks {
+  readonly scales: Readonly<Record<ChannelName, number>>;
+  readonly headers: HeaderBook;
+  readonly problems: Problem[];
+  readonly notices: Notice[];
+  /** There is a thermometer's log: stacks with scan times need no temperatures. */
+  readonly fromLog: boolean;
+  /** Of a run that goes on: what is still to come is told here and is no problem. null: everything must be there. */
+  readonly waiting: Problem[] | null;
+}
+
+export interface CheckedSeries {
+  /** Without fault; of a run that goes on those before the first that cannot be used yet. */
+  readonly frames: readonly CheckedFrame[];
+  /** How many are described. */
+  readonly described: number;
+}
+
 /**
  * Looks at the headers of every image: is it there, can it be read, has it the page, has it the size of the cooldown's first
  * signal. No pixels are read. Appends to `problems`, a line a file where several pages share one fault.
- * @param fromLog there is a thermometer's log: stacks with scan times need no temperatures
- * @returns for each series its frames without fault
+ * @returns an entry a series
  */
-export async function checkImages(
-  series: readonly WrittenSeries[],
-  scales: Readonly<Record<ChannelName, number>>,
-  headers: HeaderBook,
-  problems: Problem[],
-  notices: Notice[],
-  fromLog: boolean,
-): Promise<CheckedFrame[][]> {
+export async function checkImages(series: readonly WrittenSeries[], checks: ImageChecks): Promise<CheckedSeries[]> {
   const sizes = new SizeCheck();
-  const out: CheckedFrame[][] = [];
+  const out: CheckedSeries[] = [];
+  const { headers, scales } = checks;
   for (const s of series) {
     const wrongStacks = new Set<string>();
-    const written =
-      s.stacks === null ? s.frames : await checkStacks(s.stacks, headers, wrongStacks, problems, notices, fromLog);
+    const stacked = s.stacks === null ? null : await checkStacks(s.stacks, wrongStacks, checks);
+    const written = stacked?.frames ?? s.frames;
     const frames: CheckedFrame[] = [];
     for (const frame of written) {
+      const problems = checks.waiting ?? checks.problems;
       const checked = await checkFrame(frame, { headers, scales, sizes, problems, wrongStacks });
       if (checked !== null) frames.push(checked);
+      else if (checks.waiting !== null) break;
     }
-    out.push(frames);
+    out.push({ frames, described: stacked?.described ?? written.length });
   }
-  problems.push(...sizes.problems());
+  checks.problems.push(...sizes.problems());
   return out;
 }
 
 /** The frames of stacks: one a temperature, as given, or else as the axis of one of the files says. */
 async function checkStacks(
   s: WrittenStacks,
-  headers: HeaderBook,
   wrongStacks: Set<string>,
-  problems: Problem[],
-  notices: Notice[],
-  fromLog: boolean,
-): Promise<WrittenFrame[]> {
+  { headers, problems, notices, fromLog, waiting }: ImageChecks,
+): Promise<{ readonly frames: WrittenFrame[]; readonly described: number }> {
+  const none = { frames: [], described: 0 };
   const claims: { readonly label: string; readonly temperaturesK: readonly number[] }[] = [];
   const pages = new Map<string, { readonly label: string; readonly key: string; readonly pages: number }>();
   for (const stack of s.stacks) {
@@ -67,7 +78,7 @@ async function checkStacks(
         ? "add `temperatures_K: [ … ]`, or `started_at` and `ended_at` to look them up in the log; one a page"
         : "add `temperatures_K: [ … ]`, one temperature a page",
     });
-    return [];
+    return none;
   }
   if (claim !== undefined && s.temperaturesK === null && temperatures.some((t) => !kelvin.safeParse(t).success)) {
     problems.push({
@@ -75,7 +86,7 @@ async function checkStacks(
       problem: "its axis holds temperatures outside 0 to 1000 K",
       fix: "mend the axis or its unit, or give temperatures_K",
     });
-    return [];
+    return none;
   }
   if (s.times !== null && s.times.length !== temperatures.length) {
     problems.push({
@@ -90,14 +101,24 @@ async function checkStacks(
     const message = `${countOf(off, "temperature")} of the axis of ${c.label} differ by more than 0.5 K from those that are used`;
     notices.push({ frame: null, code: "temperature-differs", message });
   }
+  const one = temperatures === timed ? "scan time" : "temperature";
+  let usable = temperatures.length;
   for (const { label, key, pages: found } of pages.values()) {
     if (found === temperatures.length || wrongStacks.has(key)) continue;
+    const where = temperatures === timed ? "started_at and ended_at" : "temperatures_K";
+    const problem = `${countOf(found, "page")} for ${countOf(temperatures.length, one)}`;
+    if (waiting !== null) {
+      usable = Math.min(usable, found);
+      const fix = found < temperatures.length ? "wait for its pages" : `add to ${where} (near ${s.at}) what is missing`;
+      waiting.push({ at: plainText(label), problem, fix });
+      continue;
+    }
     wrongStacks.add(key);
     problems.push({
       at: plainText(label),
-      problem: `${countOf(found, "page")} for ${countOf(temperatures.length, temperatures === timed ? "scan time" : "temperature")}`,
-      fix: `make ${temperatures === timed ? "started_at and ended_at" : "temperatures_K"} (near ${s.at}) one ${temperatures === timed ? "time" : "temperature"} a page, or use a frames table to leave pages out`,
+      problem,
+      fix: `make ${where} (near ${s.at}) one ${temperatures === timed ? "time" : "temperature"} a page, or use a frames table to leave pages out`,
     });
   }
-  return framesOfStacks(s, temperatures);
+  return { frames: framesOfStacks(s, temperatures.slice(0, usable)), described: temperatures.length };
 }

@@ -5,6 +5,25 @@ import { countOf } from "../model/text.js";
 import type { ExcludeEntry } from "./schema.js";
 import type { YamlDocument } from "./yaml_document.js";
 
+/** What is left out, by the numbers that the frames have as long as some of those described are still to come; what lies in those is left
+ *  for later. */
+export function renumberExclusions(
+  entries: readonly ExcludeEntry[],
+  series: readonly { readonly frames: readonly unknown[]; readonly described: number }[],
+): ExcludeEntry[] {
+  return entries.flatMap((e) => {
+    let [from, there] = [0, 0];
+    for (const s of series) {
+      const k = e.frame - from;
+      if (k < s.described) return k < s.frames.length ? [{ ...e, frame: there + k }] : [];
+      from += s.described;
+      there += s.frames.length;
+    }
+    // Beyond all that is described: told as ever.
+    return [{ ...e, frame: Math.max(there, e.frame) }];
+  });
+}
+
 /** The frames with what the user leaves out of them. A frame that does not exist, or a region that lies outside it, is a problem. */
 export function withExclusions(
   frames: readonly FrameInfo[],

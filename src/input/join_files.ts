@@ -20,9 +20,9 @@ export function joinFiles(files: readonly FileSurvey[]): Survey {
   const notices = [...joinNotices(files), ...continued];
   const pixel = files.find((f) => f.pixel !== null)?.pixel ?? null;
   const cooldowns = files.flatMap((f) => (f.cooldown === null ? [] : [f.cooldown]));
-  if (problems.length > 0 || cooldowns.length < files.length) {
-    return { cooldown: null, problems, frames, pixel, notices };
-  }
+  const waiting = files.flatMap((f) => f.waiting);
+  const survey = { problems, frames, pixel, notices, waiting, named: files.flatMap((f) => f.named) };
+  if (problems.length > 0 || cooldowns.length < files.length) return { ...survey, cooldown: null };
   const said = <K extends keyof Cooldown>(key: K): Cooldown[K] =>
     (cooldowns.find((c) => c[key] !== null && c[key] !== "" && c[key] !== undefined) ?? cooldowns[0])[key];
   const cooldown: Cooldown = {
@@ -37,7 +37,7 @@ export function joinFiles(files: readonly FileSurvey[]): Survey {
     sources: joinSources(cooldowns),
     notices,
   };
-  return { cooldown, problems, frames, pixel, notices };
+  return { ...survey, cooldown };
 }
 
 function joinTips(cooldowns: readonly Cooldown[]): Tip | null {

@@ -38,7 +38,7 @@ export async function surveyCooldown(
   }
   if (unread.length > 0) throw new InputError(unread);
   const survey = joinFiles(files);
-  if (survey.cooldown === null) return survey;
+  if (survey.cooldown === null || survey.frames.length === 0) return { ...survey, cooldown: null };
   const { frames, pixel, tip } = survey.cooldown;
   const notices = [...survey.notices, ...checkOrder(frames, pixel, tip?.resolutionNm ?? null)];
   return { ...survey, notices, cooldown: { ...survey.cooldown, notices } };

@@ -5,7 +5,7 @@ import type { PixelSize } from "../model/raster.js";
 import { plainText } from "../model/text.js";
 import { checkImages } from "./check_images.js";
 import { crossProblems } from "./cross_checks.js";
-import { withExclusions } from "./exclusions.js";
+import { renumberExclusions, withExclusions } from "./exclusions.js";
 import { systemWords } from "./image_file.js";
 import { HeaderBook } from "./image_headers.js";
 import { numberFrames } from "./number_frames.js";
@@ -25,6 +25,8 @@ export interface ReadOptions {
   readonly allowOutside?: boolean;
   /** Read every file once for its SHA-256; without it `sources` is empty. Default true. */
   readonly hashSources?: boolean;
+  /** The run goes on: what is described but not yet there, or not yet whole, is told in `waiting` and left out. Default false. */
+  readonly growing?: boolean;
 }
 
 /** What was found of a cooldown, sound or not. */
@@ -36,6 +38,10 @@ export interface Survey {
   readonly frames: readonly FrameInfo[];
   readonly pixel: PixelSize | null;
   readonly notices: readonly Notice[];
+  /** What is still to come, where the run goes on. */
+  readonly waiting: readonly Problem[];
+  /** Absolute paths of all files that are read or named, whether they are there or not. */
+  readonly named: readonly string[];
 }
 
 /** What was found in one YAML file. */
@@ -69,25 +75,31 @@ export async function surveyFile(yamlFile: string, options: ReadOptions): Promis
   const thermometry = thermometryEntry === undefined ? null : readThermometry(thermometryEntry, context);
   const entries = seriesEntries(doc);
   const written = entries.map((s) => writtenSeries(s.entry, ["series", s.index], context));
-  const headers = new HeaderBook(problems, notices);
+  const waiting: Problem[] | null = options.growing === true ? [] : null;
+  const headers = new HeaderBook(waiting ?? problems, notices);
   const scales = channelScales(channels.safeParse(top["channels"]).data);
-  const checked = await checkImages(written, scales, headers, problems, notices, context.fromLog);
+  const { fromLog } = context;
+  const found = await checkImages(written, { scales, headers, problems, notices, fromLog, waiting });
+  // A series that has not begun is none yet.
+  const begun = entries.flatMap((_, k) => (waiting !== null && found[k].frames.length === 0 ? [] : [k]));
+  const checked = begun.map((k) => found[k].frames);
   const pixel = findPixelSize(scan.safeParse(top["scan"]).data, headers.pixelClaims, doc, problems, notices);
   const temperatures = thermometry === null ? [] : temperaturesFromLog(checked.flat(), thermometry, problems, notices);
 
-  const series = entries.map((s) => ({ index: s.index, branch: s.entry.branch }));
+  const series = begun.map((k) => ({ index: entries[k].index, branch: entries[k].entry.branch }));
   const numbered = numberFrames(series, checked, temperatures);
   // Numbers of frames mean something only where none is missing.
-  const exclusions = problems.length > 0 ? [] : (excludeSchema.safeParse(top["exclude"]).data ?? []);
+  const excluded = problems.length > 0 ? [] : (excludeSchema.safeParse(top["exclude"]).data ?? []);
+  const exclusions = waiting === null ? excluded : renumberExclusions(excluded, found);
   const frames = withExclusions(numbered, exclusions, pixel, doc, problems);
   problems.sort(byPlace(plainText(yamlFile)));
-  if (problems.length > 0 || !whole.success || pixel === null) {
-    return { cooldown: null, problems, frames, pixel, notices, doc };
-  }
+  const named = [yamlPath, ...(thermometry === null ? [] : [thermometry.path]), ...namedFiles(written)];
+  const survey = { problems, frames, pixel, notices, doc, waiting: waiting ?? [], named };
+  if (problems.length > 0 || !whole.success || pixel === null) return { ...survey, cooldown: null };
   const sources =
     options.hashSources === false ? [] : await hashAll(yamlPath, folder, yaml, written, thermometry, frames);
   const cooldown = { ...described(whole.data), pixel, yamlFile: yamlPath, frames, sources, notices };
-  return { cooldown, problems, frames, pixel, notices, doc };
+  return { ...survey, cooldown };
 }
 
 /** Problems of the YAML file first, in its order; the others as they came. */
@@ -123,6 +135,15 @@ function seriesEntries(doc: YamlDocument): IndexedEntry[] {
     const parsed = seriesSchema.safeParse(raw);
     return parsed.success ? [{ index, entry: parsed.data }] : [];
   });
+}
+
+/** Tables and images, as far as they are named. */
+function namedFiles(written: readonly WrittenSeries[]): string[] {
+  return written.flatMap((s) => [
+    ...(s.table === null ? [] : [s.table.path]),
+    ...(s.stacks?.stacks ?? []).map((stack) => stack.path),
+    ...s.frames.flatMap((f) => Object.values(f.sources).map((source) => source.path)),
+  ]);
 }
 
 function described(y: CooldownEntry): Omit<Cooldown, "yamlFile" | "pixel" | "frames" | "sources" | "notices"> {

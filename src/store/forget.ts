@@ -66,6 +66,16 @@ export function planRemoval(db: Db, name: string, analysis: number | null): Remo
   };
 }
 
+/** Deletes analyses with all their rows; must run inside a transaction. */
+export function deleteAnalyses(db: Db, ids: readonly number[]): void {
+  // Children before parents, and by analysis, which every key begins with: no cascade has to search row by row.
+  const tables = analysisTables(db).reverse();
+  for (const id of ids) {
+    for (const t of tables) db.prepare(`DELETE FROM ${t.name} WHERE analysis_id = ?`).run(id);
+    db.prepare("DELETE FROM analysis WHERE id = ?").run(id);
+  }
+}
+
 /** Removes in one transaction exactly what was planned. Throws InputError, and removes nothing, where another program has changed the
  *  cooldown since. */
 export function remove(db: Db, planned: Removal): void {
@@ -77,12 +87,10 @@ export function remove(db: Db, planned: Removal): void {
         problem: `cooldown "${planned.cooldown}" was changed by another program meanwhile; nothing was removed`,
         fix: "run again and look at what is to be removed",
       });
-    // Children before parents, and by analysis, which every key begins with: no cascade has to search row by row.
-    const tables = analysisTables(db).reverse();
-    for (const { id } of planned.analyses) {
-      for (const t of tables) db.prepare(`DELETE FROM ${t.name} WHERE analysis_id = ?`).run(id);
-      db.prepare("DELETE FROM analysis WHERE id = ?").run(id);
-    }
+    deleteAnalyses(
+      db,
+      planned.analyses.map((a) => a.id),
+    );
     if (planned.whole) db.prepare("DELETE FROM cooldown WHERE name = ?").run(planned.cooldown);
   });
   inWords(db.name, () => run.immediate());

@@ -1,7 +1,8 @@
 import path from "node:path";
 import { InputError } from "../model/errors.js";
-import type { Analysis } from "../model/analysis.js";
+import type { Analysis, SettingRecord } from "../model/analysis.js";
 import type { Cooldown } from "../model/cooldown.js";
+import { deleteAnalyses } from "./forget.js";
 import {
   canonical,
   contentHash,
@@ -23,22 +24,39 @@ export function findAnalysis(db: Db, work: string): number | null {
   return id?.id ?? null;
 }
 
-/** What the database's newest analysis of the cooldown of this name was made from; null where it knows none. */
-export function knownCooldown(db: Db, name: string): CooldownIdentity | null {
+/** What the database's newest analysis of the cooldown of this name was made from; null where it knows none.
+ *  @param except analyses that do not count */
+export function knownCooldown(db: Db, name: string, except: readonly number[] = []): CooldownIdentity | null {
   const known = db
-    .prepare<[string], { description_json: string }>(
-      `SELECT a.description_json FROM cooldown c JOIN newest_analysis n ON n.cooldown_id = c.id
-       JOIN analysis a ON a.id = n.id WHERE c.name = ?`,
+    .prepare<[string], { id: number; description_json: string }>(
+      `SELECT a.id, a.description_json FROM cooldown c JOIN analysis a ON a.cooldown_id = c.id
+       WHERE c.name = ? ORDER BY a.made_at DESC, a.id DESC`,
     )
-    .get(name);
+    .all(name)
+    .find((a) => !except.includes(a.id));
   return known === undefined ? null : storedIdentity(known.description_json);
+}
+
+/** Code of the notice that marks an analysis made while its run went on. */
+export const WATCHED = "watched";
+
+/** The analyses of a cooldown that were made while its run went on, with these settings: a longer one takes their place. */
+export function watchedAnalyses(db: Db, name: string, settings: SettingRecord): number[] {
+  return db
+    .prepare<[string, string, string], number>(
+      `SELECT a.id FROM cooldown c JOIN analysis a ON a.cooldown_id = c.id WHERE c.name = ? AND a.settings_json = ?
+       AND EXISTS (SELECT 1 FROM notice n WHERE n.analysis_id = a.id AND n.code = ?)`,
+    )
+    .pluck()
+    .all(name, canonical(settings), WATCHED);
 }
 
 /** Refuses a cooldown whose name already stands for something else; one that has grown is welcome.
  *  @param images SHA-256 of each frame's pixel values; null: only sample, region, branches and temperatures are compared
+ *  @param except analyses that do not count
  *  Throws InputError showing both. */
-export function checkName(db: Db, c: Cooldown, images: readonly string[] | null): void {
-  const known = knownCooldown(db, c.cooldown);
+export function checkName(db: Db, c: Cooldown, images: readonly string[] | null, except: readonly number[] = []): void {
+  const known = knownCooldown(db, c.cooldown, except);
   if (known === null) return;
   const differ = difference(known, identityOf(c, images));
   if (differ === null) return;
@@ -60,6 +78,7 @@ export function folderFrom(dbFile: string, folder: string): string {
 }
 
 /** Saves an analysis in one transaction: all of it or none. Returns its number; an analysis of the same work is found, not repeated.
+ *  One that is marked as made while its run went on takes the place of those like it, in the same transaction.
  *  Throws InputError where the cooldown's name is taken by other content. */
 export function saveAnalysis(db: Db, analysis: Analysis, madeAt: Date): { id: number; alreadyThere: boolean } {
   const { cooldown } = analysis;
@@ -73,12 +92,14 @@ export function saveAnalysis(db: Db, analysis: Analysis, madeAt: Date): { id: nu
   const save = db.transaction(() => {
     const there = findAnalysis(db, work);
     if (there !== null) return { id: there, alreadyThere: true };
-    checkName(db, cooldown, images);
-    db.prepare("INSERT INTO cooldown (name, sample, region) VALUES (?, ?, ?) ON CONFLICT (name) DO NOTHING").run(
-      cooldown.cooldown,
-      cooldown.sample,
-      cooldown.region,
-    );
+    const watched = analysis.notices.some((n) => n.code === WATCHED);
+    const replaced = watched ? watchedAnalyses(db, cooldown.cooldown, analysis.settings) : [];
+    checkName(db, cooldown, images, replaced);
+    // Where the name is known its sample and region are these, or nothing stays of what they were said of.
+    db.prepare(
+      `INSERT INTO cooldown (name, sample, region) VALUES (?, ?, ?)
+       ON CONFLICT (name) DO UPDATE SET sample = excluded.sample, region = excluded.region`,
+    ).run(cooldown.cooldown, cooldown.sample, cooldown.region);
     const owner = db.prepare<[string], { id: number }>("SELECT id FROM cooldown WHERE name = ?").get(cooldown.cooldown);
     const inserted = db
       .prepare(
@@ -102,6 +123,7 @@ export function saveAnalysis(db: Db, analysis: Analysis, madeAt: Date): { id: nu
     const id = Number(inserted.lastInsertRowid);
     insertAnalysisRows(db, id, analysis);
     insertPictures(db, id, analysis);
+    deleteAnalyses(db, replaced);
     return { id, alreadyThere: false };
   });
   return inWords(db.name, () => save.immediate());

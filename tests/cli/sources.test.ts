@@ -2,9 +2,9 @@ import { appendFileSync, mkdtempSync, rmSync } from "node:fs";
 import { tmpdir } from "node:os";
 import path from "node:path";
 import { afterEach, beforeEach, expect, test } from "vitest";
-import { refuseChangedSources, refuseOtherContent } from "../../src/cli/sources.js";
+import { refuseChangedSources, refuseOtherContent, settle } from "../../src/cli/sources.js";
 import { generateStack, mergeSpec } from "../../src/demo/index.js";
-import { frameDigest, imagesDigest, loadFrame, readCooldown } from "../../src/input/index.js";
+import { frameDigest, hashFile, imagesDigest, loadFrame, readCooldown } from "../../src/input/index.js";
 import type { Analysis } from "../../src/model/analysis.js";
 import type { Cooldown } from "../../src/model/cooldown.js";
 import { makeRaster } from "../../src/model/raster.js";
@@ -93,4 +93,26 @@ test("files that have not changed are not refused; the description may be edited
   const cooldown = await readCooldown(yaml);
   rmSync(yaml);
   await expect(refuseChangedSources(cooldown)).resolves.toBeUndefined();
+});
+
+test("a stack that got another page under the analysis: its frames still stand; one whose pixels changed does not", async () => {
+  const spec = tinyCooldown("kv30-a", 1, 3);
+  const yaml = generateStack(spec, path.join(dir, "a"));
+  const read = (): Promise<Cooldown> => readCooldown(yaml, { growing: true });
+  const before = await read();
+  const analysis = await analysisOf(before);
+  expect((await settle(analysis, read))?.sources).toEqual(before.sources);
+
+  const file = path.join(dir, "a/warming_amplitude.tif");
+  appendFileSync(file, "what a longer stack has more");
+  const now = await settle(analysis, read);
+  expect(now?.frames).toEqual(before.frames);
+  const sha = (c: Cooldown | null): string | undefined =>
+    c?.sources.find((s) => s.path.endsWith("warming_amplitude.tif"))?.sha256;
+  expect(sha(now)).toBe((await hashFile(file, "")).sha256);
+  expect(sha(now)).not.toBe(sha(before));
+
+  // The same frames of another sample: other pixels under the same names.
+  generateStack(mergeSpec(spec, { seed: 2 }), path.join(dir, "a"));
+  expect(await settle(analysis, read)).toBeNull();
 });

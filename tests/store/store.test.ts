@@ -7,7 +7,8 @@ import { afterEach, beforeEach, expect, test } from "vitest";
 import { InputError } from "../../src/model/errors.js";
 import { openForReading, openForWriting } from "../../src/store/open.js";
 import { readCooldowns, readMap, readNotices, readTable } from "../../src/store/read.js";
-import { saveAnalysis } from "../../src/store/save.js";
+import { saveAnalysis, WATCHED } from "../../src/store/save.js";
+import { verifyDatabase } from "../../src/store/verify.js";
 import { TABLES, tableNamed, type ExportedTable } from "../../src/tables/columns.js";
 import { inflateSync } from "node:zlib";
 import { sampleAnalysis } from "./sample_analysis.js";
@@ -106,6 +107,38 @@ test("a name that stands for another sample is refused, and what is stored stays
     /sample "KV-14" there, sample "other" here/,
   );
   expect(readCooldowns(db)).toHaveLength(1);
+  db.close();
+});
+
+test("an analysis made while the run went on takes the place of those like it, and of no other", () => {
+  const db = openForWriting(file);
+  const watched = (change: Parameters<typeof sampleAnalysis>[0]) => {
+    const a = sampleAnalysis(change);
+    return { ...a, notices: [...a.notices, { frame: null, code: WATCHED, message: "the run goes on" }] };
+  };
+  const ids = (): number[] => db.prepare<[], number>("SELECT id FROM analysis ORDER BY id").pluck().all();
+  saveAnalysis(db, sampleAnalysis(), NOW);
+  saveAnalysis(db, watched({ frames: 3 }), NOW);
+  saveAnalysis(db, watched({ frames: 3, settings: { "walls.reachNm": 400 } }), NOW);
+  saveAnalysis(db, watched({ name: "other", frames: 3 }), NOW);
+  expect(ids()).toEqual([1, 2, 3, 4]);
+  // Frames that were corrected meanwhile are no contradiction to what is replaced, but they are to what stays.
+  const corrected = watched({ frames: 4 });
+  const frames = corrected.cooldown.frames.map((f) => (f.frame === 0 ? { ...f, temperatureK: 161 } : f));
+  expect(() => saveAnalysis(db, { ...corrected, cooldown: { ...corrected.cooldown, frames } }, NOW)).toThrow(
+    /with other content/,
+  );
+  expect(ids()).toEqual([1, 2, 3, 4]);
+  expect(saveAnalysis(db, watched({ frames: 4 }), NOW)).toEqual({ id: 5, alreadyThere: false });
+  expect(ids()).toEqual([1, 3, 4, 5]);
+  const other = watched({ name: "other", sample: "KV-15", frames: 4, images: "b" });
+  expect(saveAnalysis(db, other, NOW)).toEqual({ id: 6, alreadyThere: false });
+  expect(ids()).toEqual([1, 3, 5, 6]);
+  expect(readCooldowns(db)).toMatchObject([
+    { cooldown: "hand-made", sample: "KV-14" },
+    { cooldown: "other", sample: "KV-15" },
+  ]);
+  expect([...verifyDatabase(db)].flatMap((c) => c.problems)).toEqual([]);
   db.close();
 });
 
