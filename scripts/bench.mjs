@@ -14,6 +14,7 @@ const PARTS = {
   scaling: async () => (await import("./bench/scaling.mjs")).benchScaling(),
   startup: async () => (await import("./bench/startup.mjs")).benchStartup(),
   store: async () => (await import("./bench/store.mjs")).benchStore(long),
+  page: async () => (await import("./bench/page.mjs")).benchPage(),
   memory: async () => (await import("./bench/scaling.mjs")).benchMemory(),
 };
 const asked = process.argv.slice(2).filter((a) => a !== "--long");

@@ -1,4 +1,4 @@
-import { num, word } from "../../figures/rows.js";
+import { num, word, type Row } from "../../figures/rows.js";
 import { numberText } from "../../figures/scale.js";
 import {
   current,
@@ -22,6 +22,8 @@ export function frameReadout(context: Context): HTMLElement {
     const r = c.frameRow(frame);
     line.replaceChildren(h("strong", {}, frameText(c, frame)), `: metallic fraction ${fractionText(c, frame)}`);
     const rows: [string, string][] = [];
+    const spread = num(r, "temperature_sd_K");
+    if (spread !== null) rows.push(["temperature", `spread ${numberText(spread, 3)} K over the scan${rampText(r)}`]);
     const drift = c.drift(frame);
     rows.push([
       "place",
@@ -60,6 +62,14 @@ export function frameReadout(context: Context): HTMLElement {
     list.replaceChildren(...rows.flatMap(([k, v]) => [h("dt", {}, k), h("dd", {}, v)]));
   });
   return h("section", { class: "card", "aria-label": "this frame" }, line, list);
+}
+
+function rampText(r: Row): string {
+  const [ramp, lag] = [num(r, "ramp_K_per_s"), num(r, "lag_shift_K")];
+  return [
+    ramp === null ? "" : `, ramp ${numberText(1000 * ramp, 2)} mK/s`,
+    lag === null || lag === 0 ? "" : `, ${numberText(lag, 3)} K added for the lag`,
+  ].join("");
 }
 
 /** Where the pointer or the cross is, and what the stored images hold there. */
