@@ -33,10 +33,10 @@ export async function makeReport(): Promise<MadeReport> {
   const walls = defaultSpec({
     ...common,
     cooldown: `a ${HOSTILE}`,
-    rows: 64,
-    cols: 64,
+    rows: 48,
+    cols: 48,
     seed: 3,
-    domains: { scaleNm: 120 },
+    domains: { scaleNm: 100 },
     wall: { widthNm: 50 },
     fringe: { amplitudeRad: 0.5 },
     series: [

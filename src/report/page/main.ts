@@ -14,6 +14,7 @@ import { frameReadout, placeReadout } from "./readout.js";
 import { Spine } from "./spine.js";
 import { thumbBar } from "./thumb_bar.js";
 import { Store } from "./state.js";
+import type { Shown } from "../../figures/paint.js";
 import { must } from "../../figures/rows.js";
 
 async function start(): Promise<void> {
@@ -22,7 +23,7 @@ async function start(): Promise<void> {
   const store = new Store({
     cooldown: 0,
     frame: firstFrame(cooldowns[0]),
-    base: cooldowns[0].index.scales.amplitude === undefined ? "states" : "amplitude",
+    base: "amplitude",
     over: "none",
     mix: 0.5,
     walls: true,
@@ -43,7 +44,8 @@ async function start(): Promise<void> {
   await context.frames[0].load(store.now.frame);
   build(context, index.programVersion);
   document.documentElement.dataset["ready"] = String(Math.round(performance.now()));
-  store.on(["cooldown"], ({ cooldown, frame }) => {
+  store.on(["cooldown"], ({ cooldown, frame, base }) => {
+    if (!hasChannel(cooldowns[cooldown], base)) store.set({ base: "states" });
     void context.frames[cooldown]
       .loadAll(frame, () => undefined)
       .then(() => {
@@ -51,6 +53,8 @@ async function start(): Promise<void> {
       });
   });
 }
+
+const hasChannel = (c: Cooldown, shown: Shown): boolean => shown === "states" || c.index.scales[shown] !== undefined;
 
 /** Where there is most to see: the frame whose fraction is nearest one half. */
 function firstFrame(c: Cooldown): number {

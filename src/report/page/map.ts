@@ -6,7 +6,7 @@ import { h } from "./dom.js";
 import type { Frame } from "./frames.js";
 import { takeMapInput } from "./map_input.js";
 import { outlineOf } from "./outline.js";
-import { drawRaster } from "./raster_layer.js";
+import { drawRaster, drawVeil } from "./raster_layer.js";
 import type { MapView, Point } from "./state.js";
 import { fittedView, frameRect, Projection, wholeField, type Rect } from "./view.js";
 import { drawWalls, widthRange } from "./wall_layer.js";
@@ -178,12 +178,17 @@ export class FrameMap {
       pen.globalAlpha = 1;
     }
     for (const e of c.info.exclusions) if (e.frame === frame.frame) this.drawExclusion(p, frame, e.regionNm);
+    const pick = picked(context);
+    // under the walls, whose colours it must not hide
+    if (pick?.kind === "domain") {
+      if (s.pinned === null) this.drawDomain(p, frame, pick.domain);
+      else if (drawVeil(pen, p, c, frame, pick.domain, `${side}veil`)) this.drawDomain(p, frame, pick.domain);
+      else this.words(`domain ${pick.domain} is not in this frame`, this.width / 2, this.height - 16);
+    }
     if (s.walls) {
       if (!this.ranges.has(s.cooldown)) this.ranges.set(s.cooldown, widthRange(c));
       drawWalls(pen, p, c, this.ranges.get(s.cooldown) ?? null, frame);
     }
-    const pick = picked(context);
-    if (pick?.kind === "domain") this.drawDomain(p, frame, pick.domain);
     if (pick?.kind === "profile" && pick.frame === frame.frame) this.drawProfile(p, frame, pick.wall, pick.profile);
     if (c.drift(frame.frame) === null) this.words("not placed: drawn where the first frame lies", this.width / 2, 18);
   }
@@ -225,7 +230,8 @@ export class FrameMap {
       path,
       new DOMMatrix([pixelXNm / k, 0, 0, pixelYNm / k, p.x(d.xNm - pixelXNm / 2), p.y(d.yNm - pixelYNm / 2)]),
     );
-    this.twice(() => this.pen.stroke(scaled), 2);
+    this.pen.lineJoin = "round";
+    this.twice(() => this.pen.stroke(scaled), 1.6);
   }
 
   private drawProfile(p: Projection, frame: Frame, wall: number, profile: number): void {
@@ -321,7 +327,7 @@ export class FrameMap {
     const { nm, text } = scaleLength(this.width * p.view.nmPerPx * 0.3);
     const long = nm / p.view.nmPerPx;
     const { pen } = this;
-    Object.assign(pen, { fillStyle: "rgba(255, 255, 255, 0.86)" });
+    Object.assign(pen, { fillStyle: "#ffffff" });
     pen.fillRect(10, this.height - 30, Math.max(long, 40) + 12, 24);
     pen.fillStyle = DARK;
     pen.fillRect(16, this.height - 12, long, 3);

@@ -59,7 +59,16 @@ export async function showProfile(
     ),
     factsOf(row),
   ];
-  if (bins === null) parts.push(h("p", {}, "Its pixels were not kept: the flag says why there is no fit."));
+  if (bins === null)
+    parts.push(
+      h(
+        "p",
+        { class: "hint" },
+        word(row, "flag") === ""
+          ? "Its pixels were not kept with this analysis."
+          : "No fit was kept: the flag says why.",
+      ),
+    );
   else {
     const figure = wallFigure({ row, ...bins }, o);
     parts.push(

@@ -36,6 +36,29 @@ export function drawRaster(
 ): boolean {
   const image = shown === "states" ? statesImage(frame, use) : channelImage(cooldown, frame, shown, use);
   if (image === null) return false;
+  put(to, p, cooldown, frame, image);
+  return true;
+}
+
+/** Veils all of a frame but one of its domains. Returns false where the frame has no such domain. */
+export function drawVeil(
+  to: CanvasRenderingContext2D,
+  p: Projection,
+  cooldown: Cooldown,
+  frame: Frame,
+  domain: number,
+  use: string,
+): boolean {
+  const { domains, rows, cols } = frame;
+  if (domains === null || !domains.includes(domain + 1)) return false;
+  const canvas = filled(use, rows, cols, (out) => {
+    for (let k = 0; k < out.length; k++) if (domains[k] !== domain + 1) out[k] = VEIL;
+  });
+  put(to, p, cooldown, frame, { canvas, steps: [1, 1] });
+  return true;
+}
+
+function put(to: CanvasRenderingContext2D, p: Projection, cooldown: Cooldown, frame: Frame, image: Painted): void {
   const d = cooldown.drift(frame.frame) ?? { xNm: 0, yNm: 0 };
   const { pixelXNm, pixelYNm } = cooldown.info;
   const [stepX, stepY] = image.steps;
@@ -54,7 +77,18 @@ export function drawRaster(
     (image.canvas.height * stepY * pixelYNm) / p.view.nmPerPx,
   );
   to.restore();
-  return true;
+}
+
+/** A middle grey, through which the picture is seen: both states stand out against it. */
+const VEIL = (165 << 24) | 0x868a8a;
+
+/** An image of its own for each use, filled with colours; what is not set stays transparent. */
+function filled(use: string, rows: number, cols: number, fill: (out: Int32Array) => void): HTMLCanvasElement {
+  const to = pen(use, rows, cols);
+  const pixels = to.createImageData(cols, rows);
+  fill(new Int32Array(pixels.data.buffer));
+  to.putImageData(pixels, 0, 0);
+  return to.canvas;
 }
 
 interface Painted {
@@ -74,21 +108,17 @@ function channelImage(cooldown: Cooldown, frame: Frame, shown: Exclude<Shown, "s
     if (scale.cyclic) v -= Math.floor(v);
     table[k] = word(...colours(Math.min(1, Math.max(0, v))));
   }
-  const to = pen(use, rows, cols);
-  const pixels = to.createImageData(cols, rows);
-  const out = new Int32Array(pixels.data.buffer);
-  for (let k = 0; k < out.length; k++) if (c.codes[2 * k + 1] !== 0) out[k] = table[c.codes[2 * k]];
-  to.putImageData(pixels, 0, 0);
-  return { canvas: to.canvas, steps: [stepX, stepY] };
+  const canvas = filled(use, rows, cols, (out) => {
+    for (let k = 0; k < out.length; k++) if (c.codes[2 * k + 1] !== 0) out[k] = table[c.codes[2 * k]];
+  });
+  return { canvas, steps: [stepX, stepY] };
 }
 
 const STATE_COLOURS = [word(...rgbOf(STYLE.insulating)), word(...rgbOf(STYLE.metallic))];
 
 function statesImage(frame: Frame, use: string): Painted {
-  const to = pen(use, frame.rows, frame.cols);
-  const pixels = to.createImageData(frame.cols, frame.rows);
-  const out = new Int32Array(pixels.data.buffer);
-  for (let k = 0; k < out.length; k++) if (frame.states[k] <= 1) out[k] = STATE_COLOURS[frame.states[k]];
-  to.putImageData(pixels, 0, 0);
-  return { canvas: to.canvas, steps: [1, 1] };
+  const canvas = filled(use, frame.rows, frame.cols, (out) => {
+    for (let k = 0; k < out.length; k++) if (frame.states[k] <= 1) out[k] = STATE_COLOURS[frame.states[k]];
+  });
+  return { canvas, steps: [1, 1] };
 }
