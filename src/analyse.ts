@@ -12,7 +12,7 @@ import { trackLevels } from "./stages/states/index.js";
 import { checkTip } from "./stages/walls/index.js";
 import { makeRunner, type Runner } from "./workers/pool.js";
 import { makeScratch, removeScratch } from "./workers/scratch.js";
-import { unpackMap, type MeasureOutput } from "./workers/tasks.js";
+import { debrisParts, unpackMap, type MeasureOutput } from "./workers/tasks.js";
 
 export interface AnalyseOptions {
   readonly settings: Settings;
@@ -67,7 +67,14 @@ async function analyseWith(
 
   // 3. Debris: what stays on the sample while the domains come and go.
   begin("debris");
-  await runner.map("debris", [{ ...run, frames: frames.map((f) => f.frame), drifts, tip }]);
+  const size = { rows: Math.max(...frames.map((f) => f.rows)), cols: Math.max(...frames.map((f) => f.cols)) };
+  const parts = debrisParts(frames.length);
+  const debris = { ...run, drifts, size, tip };
+  await runner.map(
+    "debris",
+    parts.map((members, part) => ({ ...debris, part, frames: members })),
+  );
+  await runner.map("debrisMap", [{ ...debris, part: parts.length - 1 }]);
 
   // 4. Levels of the two states, frame by frame, then carried along the temperature.
   begin("levels");

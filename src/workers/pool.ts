@@ -23,6 +23,7 @@ const DOING: Readonly<Record<TaskName, string>> = {
   clean: "cleaning",
   pairs: "placing",
   debris: "looking for debris in",
+  debrisMap: "mapping debris in",
   levels: "finding the levels of",
   measure: "measuring",
 };
@@ -32,6 +33,8 @@ function aboutOf(input: object): string {
   if ("frame" in input) return `frame ${String(input.frame)}`;
   if ("info" in input && typeof input.info === "object" && input.info !== null && "frame" in input.info)
     return `frame ${String(input.info.frame)}`;
+  if ("frames" in input && Array.isArray(input.frames))
+    return `frames ${String(input.frames[0])} to ${String(input.frames.at(-1))}`;
   return "all frames";
 }
 

@@ -79,6 +79,11 @@ export function fetchKept<T>(dir: string, name: string): T {
   return deserialize(readFileSync(path.join(dir, name))) as T;
 }
 
+/** Removes a kept value. */
+export function drop(dir: string, name: string): void {
+  rmSync(path.join(dir, name), { force: true });
+}
+
 interface FlatRaster {
   readonly data: Float32Array;
   readonly rows: number;

@@ -16,7 +16,7 @@ import { testFringes } from "../stages/fringes/index.js";
 import { fitLevels, mapStates, type LevelFit } from "../stages/states/index.js";
 import { fitWalls, summariseWidths } from "../stages/walls/index.js";
 import { makePreviews } from "./previews.js";
-import { fetchClean, fetchKept, keep, keepClean } from "./scratch.js";
+import { drop, fetchClean, fetchKept, keep, keepClean } from "./scratch.js";
 
 export type Reply<T> = { readonly ok: true; readonly value: T } | { readonly ok: false; readonly error: ErrorRecord };
 
@@ -82,17 +82,38 @@ function pairs(input: PairsInput): PairShift[] {
 }
 
 interface DebrisInput extends Run {
-  readonly frames: readonly number[];
   readonly drifts: readonly Drift[];
+  /** Of the largest frame. */
+  readonly size: { readonly rows: number; readonly cols: number };
   readonly tip: Tip | null;
+  readonly part: number;
 }
 
-/** One pass over all clean frames: what stays on the sample while domains come and go. */
-function debris(input: DebrisInput): { readonly share: number } {
-  const accumulator = new DebrisAccumulator(input.drifts, input.tip, input.settings.debris);
+/** Frames whose debris is collected together, in order. Fixed by the number of frames alone: sums are rounded, and the answer must not hang on the
+ *  number of workers. */
+export function debrisParts(frames: number): number[][] {
+  const each = Math.max(8, Math.ceil(frames / 4));
+  return Array.from({ length: Math.ceil(frames / each) }, (_, k) =>
+    Array.from({ length: Math.min(each, frames - k * each) }, (_, i) => k * each + i),
+  );
+}
+
+/** What stays on the sample while domains come and go, as some of the frames show it. */
+function debris(input: DebrisInput & { readonly frames: readonly number[] }): void {
+  const accumulator = new DebrisAccumulator(input.drifts, input.tip, input.settings.debris, input.size);
   for (const frame of input.frames) {
     const drift = input.drifts[frame];
     if (drift !== undefined && drift.xNm !== null) accumulator.accumulate(fetchClean(input.scratch, frame), drift);
+  }
+  keep(input.scratch, `debris-${input.part}`, accumulator.part);
+}
+
+/** The map from all parts, 0 … `part`. */
+function debrisMap(input: DebrisInput): { readonly share: number } {
+  const accumulator = new DebrisAccumulator(input.drifts, input.tip, input.settings.debris, input.size);
+  for (let k = 0; k <= input.part; k++) {
+    accumulator.addPart(fetchKept<DebrisAccumulator["part"]>(input.scratch, `debris-${k}`));
+    drop(input.scratch, `debris-${k}`);
   }
   const map = accumulator.finish();
   keep(input.scratch, "debris", map);
@@ -187,7 +208,7 @@ async function measure(input: MeasureInput): Promise<MeasureOutput> {
   };
 }
 
-const all = { clean, pairs, debris, levels, measure };
+const all = { clean, pairs, debris, debrisMap, levels, measure };
 export type TaskName = keyof typeof all;
 export type TaskInput<N extends TaskName> = Parameters<(typeof all)[N]>[0];
 export type TaskOutput<N extends TaskName> = Awaited<ReturnType<(typeof all)[N]>>;

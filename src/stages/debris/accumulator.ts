@@ -1,11 +1,11 @@
 import type { Tip } from "../../model/cooldown.js";
-import { colsOf, dataOf, rowsOf } from "../../model/raster.js";
+import { colsOf, dataOf, type PixelSize, rowsOf } from "../../model/raster.js";
 import type { CleanFrame, Drift } from "../../model/signal.js";
 import { wrapAngle } from "../../numerics/quantile.js";
 import { contrastOf } from "./chord.js";
 import { decide } from "./decide.js";
 import { addEffect, emptyEffect, ratiosOf } from "./effect.js";
-import type { ChannelSums, DebrisMap, Grid, HeightSums } from "./grid.js";
+import { addGrid, type ChannelSums, type DebrisMap, type Grid, type HeightSums } from "./grid.js";
 import { departures, heights } from "./residuals.js";
 import { type Ring, ringOf } from "./ring.js";
 import { reaches } from "./reaches.js";
@@ -18,6 +18,11 @@ const MOST_LOG = 2;
 /** A departure that counts as seen. */
 const SEEN = 1;
 
+export interface FrameSize {
+  readonly rows: number;
+  readonly cols: number;
+}
+
 /** Collects what all placed frames of a cooldown say about debris, on one grid over the sample. The memory is that of the grid,
  *  whatever the number of frames.
  *
@@ -25,13 +30,16 @@ const SEEN = 1;
  *  last two count only where the surroundings are of one state. Debris departs in nearly all frames; walls and small domains in few. */
 export class DebrisAccumulator {
   readonly #drifts: readonly Drift[];
+  readonly #size: FrameSize | null;
   readonly #tip: Tip | null;
   readonly #settings: DebrisSettings;
   #grid: Grid | null = null;
 
-  /** @param drifts of all frames: they say how large a grid is needed */
-  constructor(drifts: readonly Drift[], tip: Tip | null, settings: DebrisSettings) {
+  /** @param drifts of all frames: they say how large a grid is needed
+   *  @param size of the largest frame; null: as large as the first that is added */
+  constructor(drifts: readonly Drift[], tip: Tip | null, settings: DebrisSettings, size: FrameSize | null = null) {
     this.#drifts = drifts;
+    this.#size = size;
     this.#tip = tip;
     this.#settings = settings;
   }
@@ -41,10 +49,10 @@ export class DebrisAccumulator {
     const { pixel } = clean;
     if (drift.xNm === null || drift.yNm === null) return;
     if ((drift.sdNm ?? 0) > Math.min(pixel.xNm, pixel.yNm)) return;
-    this.#grid ??= this.#makeGrid(clean);
-    const grid = this.#grid;
     const rows = rowsOf(clean.amplitude);
     const cols = colsOf(clean.amplitude);
+    this.#grid ??= this.#makeGrid(pixel, this.#size ?? { rows, cols });
+    const grid = this.#grid;
     const { ringXPx, ringYPx } = reaches(pixel, this.#tip, this.#settings);
     const atCol = Math.round((drift.xNm - grid.originXNm) / grid.pixel.xNm);
     const atRow = Math.round((drift.yNm - grid.originYNm) / grid.pixel.yNm);
@@ -99,6 +107,19 @@ export class DebrisAccumulator {
     }
   }
 
+  /** What was collected, plain data; null where no frame was added. */
+  get part(): Grid | null {
+    return this.#grid;
+  }
+
+  /** Adds what another accumulator of the same drifts, frame size and settings has collected. Sums are rounded: the same parts in the same order give
+   *  the same bits. */
+  addPart(part: Grid | null): void {
+    if (part === null) return;
+    if (this.#grid === null) this.#grid = part;
+    else addGrid(this.#grid, part);
+  }
+
   /** The map of debris. Empty (0 × 0) where no frame was added. */
   finish(): DebrisMap {
     if (this.#grid === null) {
@@ -117,15 +138,14 @@ export class DebrisAccumulator {
     return decide(this.#grid, this.#tip, this.#settings);
   }
 
-  #makeGrid(first: CleanFrame): Grid {
-    const { pixel } = first;
+  #makeGrid(pixel: PixelSize, size: FrameSize): Grid {
     const placed = this.#drifts.filter((d) => d.xNm !== null && d.yNm !== null);
     const xs = placed.map((d) => d.xNm ?? 0);
     const ys = placed.map((d) => d.yNm ?? 0);
     const originXNm = Math.min(0, ...xs);
     const originYNm = Math.min(0, ...ys);
-    const cols = colsOf(first.amplitude) + Math.ceil((Math.max(0, ...xs) - originXNm) / pixel.xNm) + 1;
-    const rows = rowsOf(first.amplitude) + Math.ceil((Math.max(0, ...ys) - originYNm) / pixel.yNm) + 1;
+    const cols = size.cols + Math.ceil((Math.max(0, ...xs) - originXNm) / pixel.xNm) + 1;
+    const rows = size.rows + Math.ceil((Math.max(0, ...ys) - originYNm) / pixel.yNm) + 1;
     const n = rows * cols;
     const channel = (): ChannelSums => ({
       sum: new Float32Array(n),
@@ -151,22 +171,20 @@ export class DebrisAccumulator {
   }
 }
 
-/** Calls `add` for every frame pixel that lies on the grid. Frames of one cooldown may differ in size. */
+/** Calls `add` for every row of a frame that lies on the grid, with the first pixel's index on the grid and in the frame and their number. Frames
+ *  of one cooldown may differ in size. */
 function overGrid(
   grid: Grid,
   rows: number,
   cols: number,
   atRow: number,
   atCol: number,
-  add: (onGrid: number, inFrame: number) => void,
+  add: (onGrid: number, inFrame: number, count: number) => void,
 ): void {
-  for (let i = 0; i < rows; i++) {
-    const r = i + atRow;
-    if (r < 0 || r >= grid.rows) continue;
-    const from = Math.max(0, -atCol);
-    const to = Math.min(cols, grid.cols - atCol);
-    for (let j = from; j < to; j++) add(r * grid.cols + j + atCol, i * cols + j);
-  }
+  const from = Math.max(0, -atCol);
+  const to = Math.min(cols, grid.cols - atCol);
+  for (let i = Math.max(0, -atRow); i < Math.min(rows, grid.rows - atRow); i++)
+    add((i + atRow) * grid.cols + from + atCol, i * cols + from, to - from);
 }
 
 function addChannel(
@@ -178,13 +196,16 @@ function addChannel(
   atRow: number,
   atCol: number,
 ): void {
-  overGrid(grid, rows, cols, atRow, atCol, (g, p) => {
-    const z = departure[p];
-    if (Number.isNaN(z)) return;
-    sums.sum[g] += z > CLIP ? CLIP : z < -CLIP ? -CLIP : z;
-    sums.count[g]++;
-    if (z > SEEN) sums.above[g]++;
-    else if (z < -SEEN) sums.below[g]++;
+  const { sum, count, above, below } = sums;
+  overGrid(grid, rows, cols, atRow, atCol, (onGrid, inFrame, n) => {
+    for (let g = onGrid, p = inFrame; p < inFrame + n; g++, p++) {
+      const z = departure[p];
+      if (Number.isNaN(z)) continue;
+      sum[g] += z > CLIP ? CLIP : z < -CLIP ? -CLIP : z;
+      count[g]++;
+      if (z > SEEN) above[g]++;
+      else if (z < -SEEN) below[g]++;
+    }
   });
 }
 
@@ -201,16 +222,19 @@ function addPairs(
   atCol: number,
 ): void {
   const { pair } = grid;
-  overGrid(grid, rows, cols, atRow, atCol, (g, p) => {
-    const i = Math.floor(p / cols);
-    const b = (i >> 1) * ringOfLog.blockCols + ((p - i * cols) >> 1);
-    if (flat[b] === 0) return;
-    const a = log[p] - ringOfLog.reference[b];
-    const t = phase[p] - ringOfPhase.reference[b];
-    if (Number.isNaN(a) || Number.isNaN(t)) return;
-    pair.log[g] += Math.max(-MOST_LOG, Math.min(MOST_LOG, a));
-    pair.turn[g] += wrapAngle(t);
-    pair.count[g]++;
+  overGrid(grid, rows, cols, atRow, atCol, (onGrid, inFrame, n) => {
+    const i = Math.floor(inFrame / cols);
+    const block = (i >> 1) * ringOfLog.blockCols;
+    for (let g = onGrid, p = inFrame, j = inFrame - i * cols; p < inFrame + n; g++, p++, j++) {
+      const b = block + (j >> 1);
+      if (flat[b] === 0) continue;
+      const a = log[p] - ringOfLog.reference[b];
+      const t = phase[p] - ringOfPhase.reference[b];
+      if (Number.isNaN(a) || Number.isNaN(t)) continue;
+      pair.log[g] += a > MOST_LOG ? MOST_LOG : a < -MOST_LOG ? -MOST_LOG : a;
+      pair.turn[g] += t > -3 && t < 3 ? t : wrapAngle(t);
+      pair.count[g]++;
+    }
   });
 }
 
@@ -223,11 +247,13 @@ function addHeights(
   atRow: number,
   atCol: number,
 ): void {
-  overGrid(grid, rows, cols, atRow, atCol, (g, p) => {
-    const h = heightNm[p];
-    if (Number.isNaN(h)) return;
-    sums.sum[g] += h;
-    sums.squares[g] += h * h;
-    sums.count[g]++;
+  overGrid(grid, rows, cols, atRow, atCol, (onGrid, inFrame, n) => {
+    for (let g = onGrid, p = inFrame; p < inFrame + n; g++, p++) {
+      const h = heightNm[p];
+      if (Number.isNaN(h)) continue;
+      sums.sum[g] += h;
+      sums.squares[g] += h * h;
+      sums.count[g]++;
+    }
   });
 }

@@ -74,3 +74,31 @@ export interface Grid {
   /** From frames that show one state only, and from all others. */
   readonly effect: { readonly lone: EffectSums; readonly mixed: EffectSums };
 }
+
+/** Adds `part` to `grid`, of the same size. */
+export function addGrid(grid: Grid, part: Grid): void {
+  if (grid.rows !== part.rows || grid.cols !== part.cols)
+    throw new RangeError(`a grid of ${part.rows} × ${part.cols} pixels added to one of ${grid.rows} × ${grid.cols}`);
+  grid.frames += part.frames;
+  grid.twoStateFrames += part.twoStateFrames;
+  grid.pair.noise = Math.max(grid.pair.noise, part.pair.noise);
+  grid.pair.contrasts.push(...part.pair.contrasts);
+  addArrays(grid.height, part.height);
+  addArrays(grid.amplitude, part.amplitude);
+  addArrays(grid.looseAmplitude, part.looseAmplitude);
+  addArrays(grid.pair, part.pair);
+  addArrays(grid.phase, part.phase);
+  addArrays(grid.effect.lone, part.effect.lone);
+  addArrays(grid.effect.mixed, part.effect.mixed);
+}
+
+/** Adds every array of sums to the one of the same name. */
+function addArrays<T extends object>(to: T | null, from: T | null): void {
+  if (to === null || from === null) return;
+  const added = new Map<string, unknown>(Object.entries(from));
+  for (const [name, a] of Object.entries(to)) {
+    const b = added.get(name);
+    if (a instanceof Float32Array && b instanceof Float32Array) for (let p = 0; p < a.length; p++) a[p] += b[p];
+    if (a instanceof Uint16Array && b instanceof Uint16Array) for (let p = 0; p < a.length; p++) a[p] += b[p];
+  }
+}

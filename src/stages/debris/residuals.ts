@@ -89,19 +89,19 @@ function classify(
   cols: number,
   sd0: number,
 ): Classes {
-  const references: number[] = [];
-  for (let b = 0; b < flat.length; b += 3) if (flat[b] === 1) references.push(ring.reference[b]);
-  references.sort((a, b) => a - b);
-  const n = references.length;
+  const references = new Float32Array(Math.ceil(flat.length / 3));
+  let n = 0;
+  for (let b = 0; b < flat.length; b += 3) if (flat[b] === 1) references[n++] = ring.reference[b];
+  references.subarray(0, n).sort();
   const low = references[Math.floor(0.02 * n)];
   const high = references[Math.floor(0.98 * n)];
   let levels: number[] = [n > 0 ? references[n >> 1] : 0];
   if (n > 0 && high - low > LEAST_STATE_STEP + 2 * sd0) {
     const middle = 0.5 * (low + high);
-    const split = references.findIndex((r) => r > middle);
+    const split = references.subarray(0, n).findIndex((r) => r > middle);
     levels = [references[split >> 1], references[(split + n) >> 1]];
   }
-  const samples: Float64Array[] = levels.map(() => new Float64Array(rows * cols));
+  const samples = levels.map(() => new Float64Array(Math.ceil((rows * cols) / 3)));
   const counts = levels.map(() => 0);
   for (let p = 0; p < rows * cols; p += 3) {
     const i = Math.floor(p / cols);
