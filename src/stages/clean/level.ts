@@ -17,7 +17,8 @@ const termsOf = (degree: number): number => ((degree + 1) * (degree + 2)) / 2;
 
 function fillTerms(degree: number, x: number, y: number, out: Float64Array): void {
   let n = 0;
-  for (let k = 0; k <= degree; k++) for (let l = 0; k + l <= degree; l++) out[n++] = x ** k * y ** l;
+  for (let k = 0, xk = 1; k <= degree; k++, xk *= x)
+    for (let l = 0, yl = 1; k + l <= degree; l++, yl *= y) out[n++] = xk * yl;
 }
 
 /** Takes a polynomial surface Σ c_kl x^k y^l, k + l ≤ degree ≤ 2, off `values` (row-major [rows, cols], NaN = not measured),

@@ -6,6 +6,8 @@ const LONGEST_GAP = 16;
 /** Bisquare constant: wide, so that nearly all pixels of one state keep a weight near 1 (see `v` below). */
 const BISQUARE = 6;
 const ITERATIONS = 3;
+/** The start of a bisquare mean and its scale are told from this many pixels of a row. */
+const START_PIXELS = 192;
 
 /** Differences from one measured row to the next. Index k ≥ 1 is the link from `rows[k − 1]` to `rows[k]`; index 0 is empty. */
 export interface RowLinks {
@@ -39,7 +41,6 @@ export function linkRows(
   isAngle: boolean,
   leastPixels: number,
 ): RowLinks {
-  const usable = (p: number): boolean => !Number.isNaN(values[p]) && (flat === null || flat[p] === 1);
   const entering: number[] = [];
   for (let i = 0; i < rows; i++) {
     let n = 0;
@@ -59,16 +60,17 @@ export function linkRows(
   let rowVarianceSum = 0;
   let links = 0;
   const leastSd = 1e-9 + 0.05 * noise.sd;
+  const variance = (at: number): number => Math.max(level === null ? noise.sd : sdAt(noise, at), leastSd) ** 2;
   for (let k = 1; k < count; k++) {
     const up = entering[k - 1] * cols;
     const down = entering[k] * cols;
     let n = 0;
     if (entering[k] - entering[k - 1] <= LONGEST_GAP) {
       for (let j = 0; j < cols; j++) {
-        if (!usable(up + j) || !usable(down + j)) continue;
-        const sd = level === null ? noise.sd : sdAt(noise, 0.5 * (level[up + j] + level[down + j]));
-        inverseVariance[n] = 1 / Math.max(sd, leastSd) ** 2;
-        e[n] = isAngle ? shortWay(values[down + j] - values[up + j]) : values[down + j] - values[up + j];
+        const step = values[down + j] - values[up + j];
+        if (Number.isNaN(step) || (flat !== null && (flat[up + j] & flat[down + j]) === 0)) continue;
+        inverseVariance[n] = 1 / (level === null ? variance(0) : variance(0.5 * (level[up + j] + level[down + j])));
+        e[n] = isAngle ? shortWay(step) : step;
         column[n++] = j;
       }
     }
@@ -76,33 +78,36 @@ export function linkRows(
       hasBefore = false;
       continue;
     }
+    const every = Math.ceil(n / START_PIXELS);
     let turn = 0;
     if (isAngle) {
       let c = 0;
       let s = 0;
-      for (let m = 0; m < n; m++) {
+      for (let m = 0; m < n; m += every) {
         c += inverseVariance[m] * Math.cos(e[m]);
         s += inverseVariance[m] * Math.sin(e[m]);
       }
       turn = Math.atan2(s, c);
       for (let m = 0; m < n; m++) e[m] = shortWay(e[m] - turn);
     }
-    scratch.set(e.subarray(0, n));
-    let d = medianInPlace(scratch, n);
+    let some = 0;
+    for (let m = 0; m < n; m += every) scratch[some++] = e[m];
+    let d = medianInPlace(scratch, some);
     // relief and texture make differences wider than the noise; twice the noise is the most that is believed
-    for (let m = 0; m < n; m++) scratch[m] = Math.abs(e[m] - d) * Math.sqrt(inverseVariance[m] / 2);
-    const spread = medianInPlace(scratch, n);
+    some = 0;
+    for (let m = 0; m < n; m += every) scratch[some++] = Math.abs(e[m] - d) * Math.sqrt(inverseVariance[m] / 2);
+    const spread = medianInPlace(scratch, some);
     const scale = level === null ? Math.max(1, 1.4826 * spread) : Math.min(2, Math.max(1, 1.4826 * spread));
-    weight.fill(0);
+    const perVariance = 1 / (2 * BISQUARE * BISQUARE * scale * scale);
     let total = 0;
     for (let iteration = 0; iteration < ITERATIONS; iteration++) {
       let sum = 0;
       total = 0;
       for (let m = 0; m < n; m++) {
         const r = e[m] - d;
-        const u2 = (r * r * inverseVariance[m]) / (2 * BISQUARE * BISQUARE * scale * scale);
-        const w = u2 < 1 ? (1 - u2) * (1 - u2) * inverseVariance[m] : 0;
-        weight[column[m]] = w;
+        const one = 1 - r * r * inverseVariance[m] * perVariance;
+        const w = one > 0 ? one * one * inverseVariance[m] : 0;
+        scratch[m] = w;
         total += w;
         sum += w * r;
       }
@@ -114,6 +119,8 @@ export function linkRows(
       continue;
     }
     difference[k] = isAngle ? wrapAngle(d + turn) : d;
+    weight.fill(0);
+    for (let m = 0; m < n; m++) weight[column[m]] = scratch[m];
     let chain = 0;
     let own = 0;
     for (let j = 0; j < cols; j++) {
@@ -121,9 +128,9 @@ export function linkRows(
       weight[j] = w;
       const b = hasBefore ? before[j] : w;
       if (w === 0 && b === 0) continue;
-      const sd = Math.max(level === null ? noise.sd : sdAt(noise, level[up + j]), leastSd);
-      chain += sd * sd * (w - b) * (w - b);
-      own += sd * sd * w * w;
+      const v = level === null ? variance(0) : variance(level[up + j]);
+      chain += v * (w - b) * (w - b);
+      own += v * w * w;
     }
     chainVariance[k] = chain;
     rowVarianceSum += own;

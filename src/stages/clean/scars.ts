@@ -38,7 +38,7 @@ export function findScars(
   const quiet = 0.5 * sigmas * SD_OF_DEPARTURE * (level === null ? noise.sd : Math.min(...noise.sds));
   for (let thick = 1; thick <= MOST_ROWS; thick++) {
     for (let i = 1; i + thick < rows; i++) {
-      departures(scene, i, thick, depart);
+      departures(scene, i, thick, quiet, depart);
       const up = (i - 1) * cols;
       for (let j = 0; j < cols; j++) {
         // most pixels are settled by the smallest noise of all: only the others ask for their own
@@ -67,8 +67,14 @@ interface Scene {
   readonly isAngle: boolean;
 }
 
-/** How far `thick` rows from `row` on depart from the mean of the rows above and below them, by column. */
-function departures({ values, cols, isAngle }: Scene, row: number, thick: number, out: Float64Array): void {
+/** How far `thick` rows from `row` on depart from the mean of the rows above and below them, by column; 0 for what is no more than `quiet`. */
+function departures(
+  { values, cols, isAngle }: Scene,
+  row: number,
+  thick: number,
+  quiet: number,
+  out: Float64Array,
+): void {
   const up = (row - 1) * cols;
   const here = row * cols;
   const last = (row + thick - 1) * cols;
@@ -82,6 +88,10 @@ function departures({ values, cols, isAngle }: Scene, row: number, thick: number
       s = shortWay(s);
     }
     s -= 0.5 * across;
+    if (!(s > quiet || s < -quiet)) {
+      out[j] = 0;
+      continue;
+    }
     if (thick > 1) {
       // both rows must depart: a scar of one row is not to take its neighbour along
       let t = values[last + j] - base;

@@ -72,14 +72,11 @@ function radialSpectrum(
     n++;
   }
   const mean = n > 0 ? sum / n : 0;
+  const wx = Float64Array.from({ length: cols }, (_, j) => Math.sin((Math.PI * (j + 0.5)) / cols) ** 2);
   for (let i = 0; i < rows; i++) {
     const wy = Math.sin((Math.PI * (i + 0.5)) / rows) ** 2;
-    for (let j = 0; j < cols; j++) {
-      const p = i * cols + j;
-      if (usable[p] === 1) {
-        windowed[i * paddedCols + j] = (values[p] - mean) * wy * Math.sin((Math.PI * (j + 0.5)) / cols) ** 2;
-      }
-    }
+    for (let j = 0, p = i * cols, q = i * paddedCols; j < cols; j++, p++, q++)
+      if (usable[p] === 1) windowed[q] = (values[p] - mean) * wy * wx[j];
   }
   const transform = dft2(windowed, paddedRows, paddedCols);
   // up to the Nyquist frequency of the coarser axis: beyond it the rings are no longer whole
@@ -89,20 +86,19 @@ function radialSpectrum(
   const wavenumber = new Float64Array(BINS);
   for (let i = 0; i < paddedRows; i++) {
     const ky = (2 * Math.PI * (i <= paddedRows / 2 ? i : i - paddedRows)) / (paddedRows * pixel.yNm);
-    for (let j = 0; j < paddedCols; j++) {
-      // kx = 0 holds the line offsets
-      if (j === 0) continue;
-      const kx = (2 * Math.PI * (j <= paddedCols / 2 ? j : j - paddedCols)) / (paddedCols * pixel.xNm);
-      const bin = Math.floor((Math.hypot(kx, ky) / largest) * BINS);
-      if (bin >= BINS) continue;
+    // kx = 0 holds the line offsets; negative kx the same as positive ones, the image being real
+    for (let j = 1; j < paddedCols / 2; j++) {
+      const kx = (2 * Math.PI * j) / (paddedCols * pixel.xNm);
+      const bin = Math.floor((Math.sqrt(kx * kx + ky * ky) / largest) * BINS);
+      if (bin >= BINS) break;
       const q = 2 * (i * paddedCols + j);
       power[bin] += transform[q] * transform[q] + transform[q + 1] * transform[q + 1];
-      count[bin]++;
+      count[bin] += 2;
     }
   }
   for (let b = 0; b < BINS; b++) {
     wavenumber[b] = ((b + 0.5) / BINS) * largest;
-    if (count[b] > 0) power[b] /= count[b];
+    if (count[b] > 0) power[b] *= 2 / count[b];
   }
   const highest = Array.from(power.subarray(Math.floor(0.8 * BINS))).sort((a, b) => a - b);
   return { wavenumber, power, count, noise: highest[highest.length >> 1] };

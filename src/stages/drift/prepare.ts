@@ -1,5 +1,6 @@
 import type { CleanFrame } from "../../model/signal.js";
 import { colsOf, dataOf, rowsOf, type PixelSize, type Raster } from "../../model/raster.js";
+import { selectInPlace } from "../../numerics/quantile.js";
 import { bestBlurNm } from "./best_blur.js";
 import { stateMarks } from "./marks.js";
 import type { DriftSettings } from "./settings.js";
@@ -62,7 +63,7 @@ function levelRows(raster: Raster): Image {
       if (!Number.isNaN(v)) row[n++] = v;
     }
     if (n === 0) continue;
-    const middle = row.subarray(0, n).sort()[n >> 1];
+    const middle = selectInPlace(row, n >> 1, n);
     for (let j = 0; j < cols; j++) {
       const p = i * cols + j;
       if (Number.isNaN(data[p])) continue;

@@ -281,6 +281,24 @@ describe("debris over a cooldown", () => {
     for (let k = frames.length - 1; k >= 0; k--) backwards.accumulate(frames[k], drifts[k]);
     expect(backwards.finish().mask).toEqual(map.mask);
   });
+
+  test("frames collected in parts make the same map", () => {
+    const { map, frames, drifts } = mapOf({ seed: 9, dots, frames: crossing() });
+    const whole = new DebrisAccumulator(drifts, tip, settings);
+    for (const [from, to] of [
+      [0, 4],
+      [4, 4],
+      [4, 10],
+    ]) {
+      const part = new DebrisAccumulator(drifts, tip, settings);
+      for (let k = from; k < to; k++) part.accumulate(frames[k], drifts[k]);
+      whole.addPart(part.part);
+    }
+    const joined = whole.finish();
+    expect(joined.mask).toEqual(map.mask);
+    expect(joined.spots).toBe(map.spots);
+    joined.strength.forEach((v, p) => expect(v).toBeCloseTo(map.strength[p], 4));
+  });
 });
 
 describe("the chord between the states", () => {
