@@ -75,7 +75,11 @@ export async function benchIngest(size, frames) {
         .join(", ")}`,
     );
     console.log(
-      `  peak memory: ${ours.peakMiB.toFixed(0)} MiB, all threads${theirs === null ? "" : `; the reference's largest process ${theirs.peak_mib.toFixed(0)} MiB`}; database ${(ours.databaseBytes / ours.profiles).toFixed(0)} bytes a profile, pictures and maps included`,
+      `  peak memory: ${ours.peakMiB.toFixed(0)} MiB, all threads${theirs === null ? "" : `; the reference's largest process ${theirs.peak_mib.toFixed(0)} MiB`}`,
+    );
+    const bytes = (name) => ((ours.tableBytes[name] ?? 0) / ours.profiles).toFixed(0);
+    console.log(
+      `  database: ${(ours.databaseBytes / ours.profiles).toFixed(0)} bytes a profile, of which its row ${bytes("profile")}, its drawing ${bytes("profile_bins")}; the rest are previews (${bytes("preview")}), drawings of fringes (${bytes("fringe_bins")}), maps and domains`,
     );
     const mine = accuracyOf(ours.score);
     const other = theirs === null ? null : accuracyOf(theirs.score);

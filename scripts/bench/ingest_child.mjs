@@ -40,6 +40,12 @@ saveAnalysis(db, analysis, new Date(0));
 onStage("done");
 const whole = { wallS: last.wallS - begin.wallS, cpuS: last.cpuS - begin.cpuS };
 const peakMiB = process.resourceUsage().maxRSS / 1024;
+const tableBytes = Object.fromEntries(
+  db
+    .prepare("SELECT name, sum(pgsize) AS bytes FROM dbstat GROUP BY name")
+    .all()
+    .map((t) => [t.name, t.bytes]),
+);
 const score = scoreCooldown(db, readTruth(path.dirname(yaml)));
 db.close();
 
@@ -53,5 +59,5 @@ for (let k = 0; k < 30; k++) {
   for (let i = 0; i < copy.length; i++) copy[i] = source[i];
   passS = Math.min(passS, ((performance.now() - t) / 1000) * cooldown.frames.length);
 }
-const data = { stages, whole, peakMiB, passS, profiles, score, databaseBytes: statSync(dbFile).size };
+const data = { stages, whole, peakMiB, passS, profiles, score, tableBytes, databaseBytes: statSync(dbFile).size };
 process.stdout.write(JSON.stringify(data));
