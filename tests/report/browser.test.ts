@@ -422,6 +422,20 @@ describe.skipIf(chromium === null)("the report in a browser", () => {
     expect(await slide.isVisible()).toBe(true);
     await slide.fill("4");
     expect(await frameOf()).toBe(4);
+    const cdp = await page.context().newCDPSession(page);
+    await cdp.send("Emulation.setTouchEmulationEnabled", { enabled: true });
+    const box = await page.locator("canvas").boundingBox();
+    if (box === null) throw new Error("no map");
+    const touch = async (type: "touchStart" | "touchMove" | "touchEnd", x?: number): Promise<void> => {
+      const touchPoints = x === undefined ? [] : [{ x: box.x + x, y: box.y + 90 }];
+      await cdp.send("Input.dispatchTouchEvent", { type, touchPoints });
+    };
+    await touch("touchStart", 200);
+    for (let x = 195; x >= 150; x -= 5) await touch("touchMove", x);
+    await touch("touchEnd");
+    await expect.poll(frameOf).toBe(1); // 50 px back, a frame every 16 px
+    await cdp.send("Emulation.setTouchEmulationEnabled", { enabled: false });
+    await cdp.detach();
   });
 
   test("nothing was said on the console in all of this", () => {

@@ -112,7 +112,7 @@ function chart(context: Context, kind: ChartKind): HTMLElement {
       tool: "look",
       ...(kind === WIDTHS ? { walls: true } : {}),
     });
-    document.querySelector(".map-box")?.scrollIntoView({ block: "nearest", behavior: "smooth" });
+    document.querySelector(".map-box")?.scrollIntoView({ block: "nearest" });
   };
   const look = (p: Place | null): void => {
     cursor = p;

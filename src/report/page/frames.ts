@@ -28,7 +28,10 @@ export interface Frame {
   readonly walls: readonly Wall[];
 }
 
-/** The frames of a cooldown, unpacked one by one and kept: a few hundred kB each. */
+/** Frames kept unpacked; a frame of 512 × 512 takes about 1.2 MB. */
+const MOST_KEPT = 200;
+
+/** The frames of a cooldown, unpacked one by one and kept, those asked for last where they are too many. */
 export class Frames {
   private readonly loading = new Map<number, Promise<Frame>>();
   private readonly ready = new Map<number, Frame>();
@@ -42,12 +45,21 @@ export class Frames {
 
   load(frame: number): Promise<Frame> {
     const known = this.loading.get(frame);
-    if (known !== undefined) return known;
+    if (known !== undefined) {
+      this.loading.delete(frame); // to the end: asked for last
+      this.loading.set(frame, known);
+      return known;
+    }
     const made = this.unpack(frame).then((f) => {
-      this.ready.set(frame, f);
+      if (this.loading.has(frame)) this.ready.set(frame, f);
       return f;
     });
     this.loading.set(frame, made);
+    for (const old of this.loading.keys()) {
+      if (this.loading.size <= MOST_KEPT) break;
+      this.loading.delete(old);
+      this.ready.delete(old);
+    }
     return made;
   }
 
@@ -55,7 +67,8 @@ export class Frames {
   async loadAll(from: number, after: () => void): Promise<void> {
     const order = this.cooldown.index.frames
       .map((f) => f.frame)
-      .sort((a, b) => Math.abs(a - from) - Math.abs(b - from) || a - b);
+      .sort((a, b) => Math.abs(a - from) - Math.abs(b - from) || a - b)
+      .slice(0, MOST_KEPT);
     for (const f of order) {
       if (this.ready.has(f)) continue;
       await this.load(f);

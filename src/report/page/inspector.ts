@@ -17,6 +17,7 @@ export function inspector(context: Context): HTMLElement {
     { class: "card inspector", "aria-label": "closer look", id: "inspector", tabindex: -1 },
     body,
   );
+  const tools = { measure: measurePanel(context), mark: markPanel(context) };
   let turn = 0;
   const show = (): void => {
     const mine = ++turn;
@@ -33,7 +34,7 @@ export function inspector(context: Context): HTMLElement {
   store.on(["tool"], ({ tool }) => {
     if (tool === "look") return;
     node.dataset["kind"] = tool;
-    body.replaceChildren(tool === "measure" ? measurePanel(context) : markPanel(context));
+    body.replaceChildren(tools[tool]);
   });
   return node;
 }

@@ -152,7 +152,13 @@ function header(context: Context): HTMLElement {
   return h(
     "header",
     { class: "top" },
-    h("div", { class: "names" }, cooldowns.length > 1 ? h("div", { class: "pick" }, select) : null, title, about),
+    h(
+      "div",
+      { class: cooldowns.length > 1 ? "names several" : "names" },
+      cooldowns.length > 1 ? h("div", { class: "pick" }, select) : null,
+      title,
+      about,
+    ),
     button("print", () => window.print(), { class: "no-print" }),
   );
 }
