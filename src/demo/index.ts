@@ -18,4 +18,3 @@ export { fringeSeen, type SeenFringe } from "./fringe_seen.js";
 export { fractionAt } from "./half_temperature.js";
 export { generateStack } from "./write_stack.js";
 export { type DemoOptions, demoSpecs, writeDemo } from "./scenario.js";
-export { domainField, thresholdOf } from "./domain_field.js";

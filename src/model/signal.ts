@@ -10,6 +10,8 @@ export interface CleanFrame {
   readonly amplitude: Raster;
   /** Rows referenced to each other and turned so that the circular mean is 0, rad in (−π, π]; null where missing. */
   readonly phase: Raster | null;
+  /** What is left of each row's own gain, relative, 1 sd; absent: nothing is known of it. */
+  readonly rowGainErrorSd?: Float32Array | null;
 }
 
 /** The near-field signal of one frame as the later stages use it. Row-major [rows, cols]. Without an optical phase `im` is null and
@@ -78,6 +80,8 @@ export interface FrameStates {
   readonly map: DomainMap;
   /** Metallic fraction of the usable pixels with its 95 % interval for this field of view; null where undecided. */
   readonly fraction: { readonly value: number; readonly low: number; readonly high: number } | null;
+  /** What is not known of the gain of each row, relative, 1 sd; absent: nothing. */
+  readonly rowGainSd?: Float32Array | null;
 }
 
 /** Position of a frame in the cooldown's coordinates; a pixel lies at x = col·pixel.xNm + xNm. Null numbers: could not be placed. */

@@ -1,6 +1,7 @@
-import { domainField, simulateCooldown, thresholdOf, type CooldownSpec } from "../demo/index.js";
+import { mergeSpec, simulateCooldown, type CooldownSpec } from "../demo/index.js";
 import type { Analysis } from "../model/analysis.js";
 import type { FrameDomains } from "../model/domains.js";
+import { dataOf } from "../model/raster.js";
 import { INSULATING, METALLIC, NO_STATE } from "../model/signal.js";
 import type { Settings } from "../settings.js";
 import { labelDomains } from "../stages/domains/index.js";
@@ -20,7 +21,8 @@ const EDGE_PX = 3;
 /** … nor one of whose pixels more than this share has no state in either frame (debris, rows not measured). */
 const MOST_HIDDEN = 0.2;
 
-/** Events told by the histories, against those of the noise-free maps of the same field of view at the same temperatures.
+/** Events told by the histories, against those of noise-free maps of the sample at the same temperatures: what
+ *  the tip sees, divided half-way between the levels.
  *  Asked about are domains of at least 20 pixels and two areas of the tip. */
 export function scoreEvents(spec: CooldownSpec, analysis: Analysis, settings: Settings): EventScore {
   const { plan } = simulateCooldown(spec);
@@ -34,18 +36,34 @@ export function scoreEvents(spec: CooldownSpec, analysis: Analysis, settings: Se
   const shifts = steps.map((s) => ({ rows: s.rows + margin, cols: s.cols + margin }));
   const wide = { rows: rows + 2 * margin, cols: cols + 2 * margin };
 
-  // the sharp map of frame k on a grid that holds every field of view
+  // frame k without noise, debris or fringe, as the tip sees it, on a grid that holds every field of view
+  const quiet = simulateCooldown(
+    mergeSpec(spec, {
+      ...wide,
+      origin: { xNm: spec.origin.xNm - margin * pixel.xNm, yNm: spec.origin.yNm - margin * pixel.yNm },
+      drift: { listNm: plan.map(() => [0, 0] as const) },
+      fringe: { amplitudeRad: 0 },
+      gain: { frameSd: 0, rowSd: 0, rowWalkSd: 0 },
+      phaseOffset: { rowSdRad: 0, rowWalkSdRad: 0, anyPhase: false },
+      noise: { complex: 0, amplitude: 0, phaseRad: 0 },
+      debris: { perUm2: 0 },
+      scars: { perFrame: 0 },
+      unmeasured: { chance: 0 },
+    }),
+  );
   const truthAt = (k: number): FrameDomains => {
-    const p = plan[k];
-    const x0 = spec.origin.xNm - margin * pixel.xNm;
-    const sample = domainField(spec, p.branch, p.cycle).sampler(x0, pixel.xNm, wide.cols);
-    const threshold = thresholdOf(spec, p.branch, p.temperatureK);
-    const line = new Float64Array(wide.cols);
-    const states = new Uint8Array(wide.rows * wide.cols);
-    for (let i = 0; i < wide.rows; i++) {
-      sample(spec.origin.yNm + (i - margin) * pixel.yNm, line);
-      for (let j = 0; j < wide.cols; j++) states[i * wide.cols + j] = line[j] > threshold ? METALLIC : INSULATING;
-    }
+    const { amplitude, phase, truth } = quiet.frame(k);
+    const a = dataOf(amplitude);
+    const f = dataOf(phase);
+    const { amplitudeInsulating, amplitudeMetallic, phaseInsulatingRad, phaseMetallicRad } = truth.levels;
+    const re0 = amplitudeInsulating * Math.cos(phaseInsulatingRad);
+    const im0 = amplitudeInsulating * Math.sin(phaseInsulatingRad);
+    const dr = amplitudeMetallic * Math.cos(phaseMetallicRad) - re0;
+    const di = amplitudeMetallic * Math.sin(phaseMetallicRad) - im0;
+    const states = Uint8Array.from(a, (m, p) => {
+      const share = ((m * Math.cos(f[p]) - re0) * dr + (m * Math.sin(f[p]) - im0) * di) / (dr * dr + di * di);
+      return share > 0.5 ? METALLIC : INSULATING;
+    });
     return labelDomains({ ...wide, pixel, states }, k, tip, settings.domains);
   };
   const seen = analysis.frames.map((f, k) => labelDomains(unpackMap(f.map, pixel), k, tip, settings.domains));

@@ -96,6 +96,7 @@ interface FlatFrame {
   readonly topography: FlatRaster | null;
   readonly amplitude: FlatRaster;
   readonly phase: FlatRaster | null;
+  readonly rowGainErrorSd: Float32Array | null;
 }
 
 const flat = (r: Raster): FlatRaster => ({ data: dataOf(r), rows: rowsOf(r), cols: colsOf(r) });
@@ -108,6 +109,7 @@ export function keepClean(dir: string, clean: CleanFrame): void {
     topography: clean.topography && flat(clean.topography),
     amplitude: flat(clean.amplitude),
     phase: clean.phase && flat(clean.phase),
+    rowGainErrorSd: clean.rowGainErrorSd ?? null,
   };
   keep(dir, `clean-${clean.frame}`, flatFrame);
 }
@@ -120,5 +122,6 @@ export function fetchClean(dir: string, frame: number): CleanFrame {
     topography: f.topography && round(f.topography, f.pixel),
     amplitude: round(f.amplitude, f.pixel),
     phase: f.phase && round(f.phase, f.pixel),
+    rowGainErrorSd: f.rowGainErrorSd,
   };
 }

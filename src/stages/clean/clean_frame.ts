@@ -6,7 +6,7 @@ import { wrapAngle } from "../../numerics/quantile.js";
 import { flatPixels } from "./flat_pixels.js";
 import { levelSurface } from "./level.js";
 import { clippedShare, measureNoise, scaledBy, type NoiseByLevel } from "./noise.js";
-import { linkRows } from "./row_links.js";
+import { linkRows, type RowLinks } from "./row_links.js";
 import { type RowOffsets, splitRowOffsets } from "./row_model.js";
 import { type Scars, findScars } from "./scars.js";
 import type { CleanSettings } from "./settings.js";
@@ -82,6 +82,7 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
       topography: topography === null ? null : raster(topography.values),
       amplitude: raster(amplitude),
       phase: signal.phase === null ? null : raster(signal.phase),
+      rowGainErrorSd: signal.rowGainErrorSd,
     },
     report: {
       frame: raw.frame,
@@ -133,11 +134,30 @@ interface CleanedSignal {
   readonly phase: Float32Array | null;
   readonly scars: Scars;
   readonly rowGainSd: number;
+  readonly rowGainErrorSd: Float32Array | null;
   readonly rowPhaseSdRad: number | null;
   readonly rowPhaseStepSdRad: number | null;
   /** Relative. */
   readonly amplitudeNoise: NoiseByLevel;
   readonly phaseNoise: NoiseByLevel | null;
+}
+
+/** A row that could be compared with neither neighbour over pixels of one state had only the rough alignment over all pixels, which leaves
+ *  about this share of the rows' scatter. */
+const ROUGH_SHARE = 0.5;
+
+/** What is left of each row's gain after its alignment, 1 sd: what its pixels could not tell, never more than the rows scattered by. */
+function gainErrors(links: RowLinks, scatterSd: number, rows: number): Float32Array {
+  const out = new Float32Array(rows).fill(ROUGH_SHARE * scatterSd);
+  const line2 = scatterSd * scatterSd;
+  for (let k = 0; k < links.rows.length; k++) {
+    const beside = [links.ownVariance[k], k + 1 < links.rows.length ? links.ownVariance[k + 1] : Number.NaN];
+    const told = beside.filter((v) => !Number.isNaN(v));
+    if (told.length === 0) continue;
+    const own = Math.min(...told);
+    out[links.rows[k]] = Math.sqrt((line2 * own) / (line2 + own || 1));
+  }
+  return out;
 }
 
 /** Amplitude and phase, both in place. */
@@ -160,6 +180,7 @@ function cleanSignal(
   const scarsOf = (values: Float32Array, noise: NoiseByLevel, isAngle: boolean): Scars =>
     findScars(values, amplitude, noise, rows, cols, isAngle, s.scarSigmas, s.scarLeastPixels);
   let rowGainSd = 0;
+  let lastLinks: RowLinks | null = null;
   let flat: Uint8Array | null = null;
   let scarred: Scars | null = null;
   if (s.correctRows) {
@@ -174,6 +195,7 @@ function cleanSignal(
       const links = linkRows(log, amplitude, flat, logNoise, rows, cols, false, s.leastRowPixels);
       const offsets = splitRowOffsets(links, rows);
       rowGainSd = Math.hypot(rowGainSd, offsets.whiteSd);
+      lastLinks = links;
       // neither the walk nor lasting jumps: a front between the states that runs along the rows looks like them
       const correction = (i: number): number => -(offsets.white[i] + offsets.outlying[i]);
       addRows(log, rows, cols, correction);
@@ -225,6 +247,7 @@ function cleanSignal(
     phase,
     scars,
     rowGainSd,
+    rowGainErrorSd: lastLinks === null ? null : gainErrors(lastLinks, rowGainSd, rows),
     rowPhaseSdRad,
     rowPhaseStepSdRad,
     amplitudeNoise: logNoise,

@@ -17,7 +17,9 @@ export interface RowLinks {
   readonly difference: Float64Array;
   /** Variance that this link adds to the chain: what does not cancel against the link before. */
   readonly chainVariance: Float64Array;
-  /** Mean variance of a row's mean: the part of the links' noise that cancels along the chain. */
+  /** Variance of a row's mean over the pixels of each link; NaN where they could not be compared. */
+  readonly ownVariance: Float64Array;
+  /** Its mean: the part of the links' noise that cancels along the chain. */
   readonly rowVariance: number;
 }
 
@@ -50,6 +52,7 @@ export function linkRows(
   const count = entering.length;
   const difference = new Float64Array(count).fill(Number.NaN);
   const chainVariance = new Float64Array(count).fill(Number.NaN);
+  const ownVariance = new Float64Array(count).fill(Number.NaN);
   let weight = new Float64Array(cols);
   let before = new Float64Array(cols);
   let hasBefore = false;
@@ -133,6 +136,7 @@ export function linkRows(
       own += v * w * w;
     }
     chainVariance[k] = chain;
+    ownVariance[k] = own;
     rowVarianceSum += own;
     links++;
     [weight, before] = [before, weight];
@@ -142,6 +146,7 @@ export function linkRows(
     rows: Int32Array.from(entering),
     difference,
     chainVariance,
+    ownVariance,
     rowVariance: links > 0 ? rowVarianceSum / links : 0,
   };
 }

@@ -65,7 +65,14 @@ export function mapStates(
   const share = new Float32Array(rows * cols).fill(Number.NaN);
   const result = (final: FrameLevels, fraction: FrameStates["fraction"]): { signal: Signal; states: FrameStates } => ({
     signal,
-    states: { frame: clean.frame, levels: final, share: makeRaster(share, rows, cols, pixel), map, fraction },
+    states: {
+      frame: clean.frame,
+      levels: final,
+      share: makeRaster(share, rows, cols, pixel),
+      map,
+      fraction,
+      rowGainSd: rowGainSd(clean, fit),
+    },
   });
   if (levels.verdict === "undecided" || z.count === 0) return result({ ...levels, verdict: "undecided" }, null);
 
@@ -126,6 +133,13 @@ export function mapStates(
     perLogGain: curve.perLogGain,
   });
   return result({ ...levels, verdict: "mixed" }, fraction);
+}
+
+/** What is left of each row's own gain: what cleaning could not tell, less what the pixels of known state have told since. */
+function rowGainSd(clean: CleanFrame, fit: LevelFit): Float32Array | null {
+  const before = clean.rowGainErrorSd;
+  if (before === undefined || before === null) return null;
+  return before.map((sd, i) => (fit.rowWhiteSd > 0 ? 1 / Math.hypot(1 / sd, 1 / fit.rowLogGainSd[i]) : sd));
 }
 
 /** Loss of amplitude at a wall over the square of the turn seen there, and its standard deviation: ⅓ where the turn begins with a jump at

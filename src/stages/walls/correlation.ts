@@ -69,7 +69,7 @@ export function powersOf(rho: number): LagCorrelation {
 
 /** Effect of noise correlated between neighbouring pixels on a fit that treats them as independent: the sandwich
  *  (JᵀJ)⁻¹ JᵀCJ (JᵀJ)⁻¹ (White 1980, Econometrica 48, 817; Liang & Zeger 1986, Biometrika 73, 13) with the measured correlation,
- *  taken as the product of those along the two axes. */
+ *  taken as the product of those along the two axes; and of what the pixels of a row share, a gain of their own that is not known. */
 export class CorrelatedNoise {
   readonly white: boolean;
   private readonly slot: Int32Array;
@@ -77,12 +77,14 @@ export class CorrelatedNoise {
   private jacobian = new Float64Array(0);
   private readonly row = new Float64Array(PARAMETERS);
   private readonly meat = new Float64Array(PARAMETERS * PARAMETERS);
+  private readonly byRow = new Map<number, Float64Array>();
 
   constructor(
     alongX: LagCorrelation,
     alongY: LagCorrelation,
     rows: number,
     private readonly cols: number,
+    private readonly rowGainSd: Float32Array | null = null,
   ) {
     for (let di = 0; di < alongY.length; di++) {
       for (let dj = di === 0 ? 1 : 1 - alongX.length; dj < alongX.length; dj++) {
@@ -90,7 +92,7 @@ export class CorrelatedNoise {
         if (Math.abs(rho) >= NEGLIGIBLE) this.offsets.push({ di, dj, rho });
       }
     }
-    this.white = this.offsets.length === 0;
+    this.white = this.offsets.length === 0 && rowGainSd === null;
     this.slot = this.white ? new Int32Array(0) : new Int32Array(rows * cols).fill(-1);
   }
 
@@ -113,7 +115,7 @@ export class CorrelatedNoise {
     const { slot, cols } = this;
     const n = data.count;
     const sum = new Float64Array(bins);
-    if (!this.white) for (let k = 0; k < n; k++) slot[data.pixel[k]] = k;
+    if (slot.length > 0) for (let k = 0; k < n; k++) slot[data.pixel[k]] = k;
     for (let k = 0; k < n; k++) {
       sum[bin[k]] += factor[k] * factor[k];
       const p = data.pixel[k];
@@ -125,7 +127,7 @@ export class CorrelatedNoise {
         if (other >= 0 && bin[other] === bin[k]) sum[bin[k]] += 2 * o.rho * factor[k] * factor[other];
       }
     }
-    if (!this.white) for (let k = 0; k < n; k++) slot[data.pixel[k]] = -1;
+    if (slot.length > 0) for (let k = 0; k < n; k++) slot[data.pixel[k]] = -1;
     for (let b = 0; b < bins; b++) sum[b] = Math.max(0, sum[b]);
     return sum;
   }
@@ -167,8 +169,28 @@ export class CorrelatedNoise {
     for (let k = 0; k < n; k++) slot[data.pixel[k]] = -1;
     let taken = 0;
     for (let k = 0; k < PARAMETERS * PARAMETERS; k++) taken += covariance[k] * meat[k];
+    this.addRowGains(data, jac);
     sandwich(covariance, meat);
     return taken;
+  }
+
+  /** A row whose gain is off by ε has all its residuals off by ε·value/sd: Σ over rows of sd(ε)²·g·gᵀ, g the sum of its derivatives. */
+  private addRowGains(data: ProfileData, jac: Float64Array): void {
+    const { rowGainSd, cols, meat, byRow } = this;
+    if (rowGainSd === null) return;
+    byRow.clear();
+    for (let k = 0; k < data.count; k++) {
+      const i = Math.floor(data.pixel[k] / cols);
+      let g = byRow.get(i);
+      if (g === undefined) byRow.set(i, (g = new Float64Array(PARAMETERS)));
+      const off = data.value[k] * data.weight[k];
+      for (let a = 0; a < PARAMETERS; a++) g[a] += jac[k * PARAMETERS + a] * off;
+    }
+    for (const [i, g] of byRow) {
+      const variance = rowGainSd[i] ** 2;
+      for (let a = 0; a < PARAMETERS; a++)
+        for (let b = 0; b < PARAMETERS; b++) meat[a * PARAMETERS + b] += variance * g[a] * g[b];
+    }
   }
 }
 

@@ -114,6 +114,7 @@ class FrameFit {
       measureLags(deviation, rows, cols, "y") ?? powersOf(noiseCorrelationY),
       rows,
       cols,
+      states.rowGainSd ?? null,
     );
   }
 
