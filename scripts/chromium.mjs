@@ -26,8 +26,17 @@ export function findChromium(install = true) {
   if (process.platform === "linux" && process.getuid?.() === 0 && existsSync("/usr/bin/apt-get")) {
     console.error("coldseam: installing chromium, to look at the report page with (once) …");
     const env = { ...process.env, DEBIAN_FRONTEND: "noninteractive" };
-    const run = (...args) =>
-      spawnSync("apt-get", ["-qq", ...args], { env, stdio: ["ignore", "ignore", 2] }).status === 0;
+    // without a network this must end soon
+    const patience = [
+      "-o",
+      "Acquire::Retries=0",
+      "-o",
+      "Acquire::http::Timeout=10",
+      "-o",
+      "Acquire::https::Timeout=10",
+    ];
+    const options = { env, stdio: ["ignore", "ignore", 2], timeout: 300_000 };
+    const run = (...args) => spawnSync("apt-get", ["-qq", ...patience, ...args], options).status === 0;
     if ((run("update") && run("install", "-y", "--no-install-recommends", "chromium")) || found() !== null)
       return found();
   }

@@ -44,8 +44,10 @@ export async function report(o: ReportCommandOptions): Promise<number> {
         say(
           `note: ${plainText(c.info.cooldown)}: analysis ${c.info.analysis} was made by a version that kept no images; the page shows its maps and numbers`,
         );
-    if (size > HEAVY_BYTES && data.cooldowns.length > 1)
-      say("note: a large page; --cooldown ID writes one of a single cooldown");
+    if (size > HEAVY_BYTES)
+      say(
+        `note: a large page, slow to open${data.cooldowns.length > 1 ? "; --cooldown ID writes one of a single cooldown" : ""}`,
+      );
     return size;
   } finally {
     db.close();

@@ -61,13 +61,15 @@ async function gatherCooldown(db: Db, analysis: number, onFrame: () => void): Pr
     Row[]
   >;
   const frames: FrameData[] = [];
+  // Of many frames every third, fifth … pixel is enough for a scale of colours; an odd step leaves out no column whole.
+  const step = 2 * Math.floor(tables.temperature.length / 80) + 1;
   const values = new Map<ChannelName, Float32Array[]>(CHANNELS.map((c) => [c, []]));
   for (const row of tables.temperature) {
     const f = gatherFrame(db, stored, must(row, "frame"));
-    for (const p of f.previews)
-      values
-        .get(p.channel)
-        ?.push(valuesOf(await decodePreview({ ...p, frame: f.frame, step_x: p.stepX, step_y: p.stepY })));
+    for (const p of f.previews) {
+      const all = valuesOf(await decodePreview({ ...p, frame: f.frame, step_x: p.stepX, step_y: p.stepY }));
+      values.get(p.channel)?.push(all.filter((_, k) => k % step === 0));
+    }
     frames.push(f);
     onFrame();
   }
