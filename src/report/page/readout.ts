@@ -35,7 +35,9 @@ export function frameReadout(context: Context): HTMLElement {
     rows.push([
       "median wall width",
       median === null
-        ? "none"
+        ? (num(r, "unresolved_share") ?? 0) > 0.5
+          ? "none: over half are limits"
+          : "none"
         : `${withInterval(median, num(r, "wall_width_median_low_nm"), num(r, "wall_width_median_high_nm"), 1)} nm`,
     ]);
     const unresolved = num(r, "unresolved_share");
