@@ -8,7 +8,8 @@ import { studyTables } from "./table.js";
 const BEGIN = "<!-- study: begin -->";
 const END = "<!-- study: end -->";
 
-/** `npm run study [-- CONDITION …] [--runs N] [--seed N] [--write]`: the accuracy study; `-- survival` kills ingests instead. Returns the exit code. */
+/** `npm run study [-- CONDITION …] [--runs N] [--seed N] [--write]`: the accuracy study; `-- survival` kills ingests,
+ *  `-- fuzz` reads spoilt files instead. Returns the exit code. */
 export async function runStudy(args: readonly string[], guide: string): Promise<number> {
   const option = (name: string, usual: number): number => {
     const at = args.indexOf(name);
@@ -19,6 +20,10 @@ export async function runStudy(args: readonly string[], guide: string): Promise<
   if (args[0] === "survival") {
     const { runSurvival } = await import("./survival.js");
     return runSurvival(option("--kills", 50), seed);
+  }
+  if (args[0] === "fuzz") {
+    const { runFuzz } = await import("./fuzz.js");
+    return runFuzz(option("--from", 0), option("--count", 20_000), seed);
   }
   const names = args.filter((a, k) => !a.startsWith("--") && !(args[k - 1] ?? "").match(/^--(runs|seed)$/));
   const unknown = names.filter((n) => !CONDITIONS.some((c) => c.name === n));
