@@ -1,8 +1,9 @@
 import type { Notice } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
 import { countOf, plainText } from "../model/text.js";
-import { describeCooldown, inspectFrame, loadFrame, surveyCooldown } from "../input/index.js";
+import { describeCooldown, inspectFrame, loadFrame, sizeProblems, surveyCooldown } from "../input/index.js";
 import { print, say } from "./say.js";
+import { noticeWord } from "./summary.js";
 
 interface CheckOptions {
   readonly allowOutside?: boolean;
@@ -13,7 +14,7 @@ export async function check(yaml: readonly string[], o: CheckOptions): Promise<v
   const survey = await surveyCooldown(yaml, { allowOutside: o.allowOutside === true, hashSources: false });
   const { cooldown, frames } = survey;
   if (cooldown !== null) print(`${describeCooldown(cooldown).join("\n")}\n`);
-  const problems: Problem[] = [...survey.problems];
+  const problems: Problem[] = [...survey.problems, ...sizeProblems(survey.frames)];
   const notices: Notice[] = [...(cooldown ?? survey).notices];
   // The images that can be read are looked at also where the description has mistakes; a size of 1 nm stands in for a missing one.
   const pixel = survey.pixel ?? { xNm: 1, yNm: 1 };
@@ -25,7 +26,8 @@ export async function check(yaml: readonly string[], o: CheckOptions): Promise<v
       problems.push(...e.problems);
     }
   }
-  for (const n of notices) say(`note: ${n.frame === null ? "" : `frame ${n.frame}: `}${plainText(n.message)}`);
+  for (const n of notices)
+    say(`${noticeWord(n.code)}: ${n.frame === null ? "" : `frame ${n.frame}: `}${plainText(n.message)}`);
   if (problems.length > 0) throw new InputError(problems);
   print(
     `ready: ${frames.length} frames read, ${notices.length === 0 ? "nothing to remark" : countOf(notices.length, "remark")}\n`,

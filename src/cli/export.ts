@@ -7,7 +7,7 @@ import { TABLES, tableNamed } from "../tables/columns.js";
 import { formatTable, type Format } from "../tables/format.js";
 import { openSelected, type SelectOptions } from "./select.js";
 import { say } from "./say.js";
-import { closestWord } from "../model/text.js";
+import { closestWord, plainText } from "../model/text.js";
 import { writeFile } from "./write_file.js";
 
 interface ExportOptions extends SelectOptions {
@@ -30,7 +30,9 @@ export async function exportTable(name: string, o: ExportOptions): Promise<void>
   try {
     const text = formatTable(table, readCells(db, table, selection), o.format);
     if (o.out === undefined) {
-      await pipeline(Readable.from(text), process.stdout, { end: false });
+      // What is in names must not steer a terminal; a pipe and a file get every byte.
+      const shown = process.stdout.isTTY ? forTerminal(text) : text;
+      await pipeline(Readable.from(shown), process.stdout, { end: false });
       return;
     }
     refuseUnlikely(o.out, o.format);
@@ -39,6 +41,10 @@ export async function exportTable(name: string, o: ExportOptions): Promise<void>
   } finally {
     db.close();
   }
+}
+
+function* forTerminal(parts: Iterable<string>): Generator<string> {
+  for (const part of parts) yield part.replace(/[^\n\t]+/g, plainText);
 }
 
 /** A table may only replace a table: a slip in `--out` must not cost a database or an image. */

@@ -1,9 +1,9 @@
 import os from "node:os";
-import { UsageError } from "../model/errors.js";
+import { InputError, UsageError } from "../model/errors.js";
 import type { Analysis } from "../model/analysis.js";
 import type { Cooldown } from "../model/cooldown.js";
 import { countOf, plainText } from "../model/text.js";
-import { readCooldown } from "../input/index.js";
+import { readCooldown, sizeProblems } from "../input/index.js";
 import { settingRecord, settingsWith, type Settings } from "../settings.js";
 import { openForWriting } from "../store/open.js";
 import { contentHash, description, workHash } from "../store/identity.js";
@@ -58,6 +58,8 @@ export async function ingest(yaml: string | readonly string[], o: IngestOptions)
   const settings = settingsWith(o.set);
   // Before the database is made: a description that cannot be used leaves nothing behind.
   const cooldown = await readCooldown(yaml, { allowOutside: o.allowOutside === true });
+  const small = sizeProblems(cooldown.frames);
+  if (small.length > 0) throw new InputError(small);
   const db = openForWriting(o.db);
   const abort = new AbortController();
   const onInterrupt = (): void => abort.abort();

@@ -3,6 +3,7 @@ import { readFileSync } from "node:fs";
 import { databaseProblem } from "../store/problem.js";
 import type { IngestOptions } from "./ingest.js";
 import { sayError } from "./say.js";
+import { quiet, usageError } from "./usage.js";
 
 export function programVersion(): string {
   const text = readFileSync(new URL("../../package.json", import.meta.url), "utf8");
@@ -197,10 +198,13 @@ export async function main(argv: readonly string[]): Promise<void> {
     throw e;
   });
   const program = build();
+  quiet(program);
   try {
     await program.parseAsync([...argv]);
   } catch (e) {
-    if (e instanceof CommanderError) process.exitCode = e.exitCode === 0 ? 0 : 2;
-    else process.exitCode = sayError(databaseProblem(databaseOf(argv), e) ?? e, argv.includes("--verbose"));
+    if (e instanceof CommanderError) {
+      const wrong = usageError(e, argv, program);
+      process.exitCode = wrong === null ? (e.exitCode === 0 ? 0 : 2) : sayError(wrong, false);
+    } else process.exitCode = sayError(databaseProblem(databaseOf(argv), e) ?? e, argv.includes("--verbose"));
   }
 }

@@ -1,7 +1,10 @@
 import type { Analysis } from "../model/analysis.js";
-import type { Notice } from "../model/cooldown.js";
+import { WARNINGS, type Notice } from "../model/cooldown.js";
 import { plainText } from "../model/text.js";
 import { say } from "./say.js";
+
+/** How a notice is announced. */
+export const noticeWord = (code: string): string => (WARNINGS.has(code) ? "warning" : "note");
 
 export const fixed = (v: number | null, digits: number): string => (v === null ? "–" : v.toFixed(digits));
 
@@ -33,7 +36,7 @@ export function loopText(a: Analysis): string {
   const sound = profiles.filter((p) => p.flag === "");
   const fringes = a.frames.flatMap((f) => f.fringes);
   lines.push(
-    `  frames: ${[...verdicts].map(([k, n]) => `${n} ${k}`).join(", ")}; ${placed} of ${a.frames.length} placed`,
+    `  frames: ${[...verdicts].map(([k, n]) => `${n} ${k}`).join(", ")}; ${placedText(placed, a.frames.length)}`,
     `  walls: ${sound.length} sound profiles of ${profiles.length}, ${sound.filter((p) => p.widthNm !== null).length} resolved; ` +
       `fringes on ${fringes.filter((t) => t.detected).length} of ${fringes.length} stretches tested; ${a.domains.length} domains tracked`,
   );
@@ -41,6 +44,12 @@ export function loopText(a: Analysis): string {
   for (const p of profiles) if (p.flag !== "") flags.set(p.flag, (flags.get(p.flag) ?? 0) + 1);
   if (flags.size > 0) lines.push(`  left out of the widths: ${[...flags].map(([k, n]) => `${n} ${k}`).join(", ")}`);
   return `${lines.join("\n")}\n`;
+}
+
+/** The first frame is where the coordinates begin: it has its place even where no other could be placed against it. */
+function placedText(placed: number, frames: number): string {
+  if (placed === 1 && frames > 1) return `none of the ${frames - 1} after the first placed against it`;
+  return `${placed} of ${frames} placed`;
 }
 
 /** Everything skipped, excluded or doubtful: counted by kind, each said once with its frames. */
@@ -52,9 +61,9 @@ export function sayNotices(notices: readonly Notice[]): void {
       if (n.frame !== null) known.frames.push(n.frame);
     } else byText.set(n.message, { code: n.code, frames: n.frame === null ? [] : [n.frame] });
   }
-  for (const [message, { frames }] of byText) {
+  for (const [message, { code, frames }] of byText) {
     const at =
       frames.length === 0 ? "" : frames.length === 1 ? `frame ${frames[0]}: ` : `frames ${frames.join(", ")}: `;
-    say(`note: ${at}${plainText(message)}`);
+    say(`${noticeWord(code)}: ${at}${plainText(message)}`);
   }
 }

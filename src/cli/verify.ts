@@ -2,7 +2,7 @@ import { existsSync } from "node:fs";
 import path from "node:path";
 import { hashFile } from "../input/index.js";
 import { InputError, UsageError } from "../model/errors.js";
-import { plainText } from "../model/text.js";
+import { countOf, plainText } from "../model/text.js";
 import { openForReading } from "../store/open.js";
 import { verifyDatabase, type Check } from "../store/verify.js";
 import { storedSources, type StoredSource } from "../store/verify_digests.js";
@@ -17,7 +17,8 @@ export interface VerifyOptions {
 /** Lines shown of one check; a database spoilt by hand may break one rule ten thousand times. */
 const SHOWN = 5;
 
-/** `coldseam verify`: a database looked at from outside. Exit code 1 where something is wrong. */
+/** `coldseam verify`: a database looked at from outside. Exit code 1 where something is wrong; a source file that is only not here, as beside a
+ *  copy of the database alone, says nothing against it. */
 export async function verify(o: VerifyOptions): Promise<void> {
   if (o.folder !== undefined && o.sources !== true)
     throw new UsageError(
@@ -27,6 +28,7 @@ export async function verify(o: VerifyOptions): Promise<void> {
   const db = openForReading(o.db);
   let checks = 0;
   let wrong = 0;
+  let notHere = 0;
   const tell = (c: Check): void => {
     checks++;
     if (c.problems.length > 0) wrong++;
@@ -36,14 +38,20 @@ export async function verify(o: VerifyOptions): Promise<void> {
   };
   try {
     for (const c of verifyDatabase(db)) tell(c);
-    if (o.sources === true) tell(await sourceCheck(o.db, storedSources(db), o.folder));
+    if (o.sources === true) {
+      const found = await sourceCheck(o.db, storedSources(db), o.folder);
+      tell(found.check);
+      tellMissing(found.missing);
+      notHere = found.missing.length;
+    }
   } finally {
     db.close();
   }
+  const missing = notHere === 0 ? "" : `; ${countOf(notHere, "source file")} not here`;
   print(
     wrong === 0
-      ? `${o.db}: sound, ${checks} checks\n`
-      : `${o.db}: ${wrong} of ${checks} checks found something wrong\n`,
+      ? `${o.db}: sound, ${checks} checks${missing}\n`
+      : `${o.db}: ${wrong} of ${checks} checks found something wrong${missing}\n`,
   );
   if (wrong > 0) process.exitCode = 1;
 }
@@ -58,15 +66,25 @@ function placesOf(dbFile: string, s: StoredSource, folder: string | undefined): 
   return s.folder === null ? [] : [path.resolve(path.dirname(path.resolve(dbFile)), s.folder, s.path)];
 }
 
-async function sourceCheck(dbFile: string, sources: readonly StoredSource[], folder?: string): Promise<Check> {
+function tellMissing(missing: readonly string[]): void {
+  if (missing.length === 0) return;
+  print(`not here: ${countOf(missing.length, "source file")}; --folder says where they are now\n`);
+  for (const m of missing.slice(0, SHOWN)) print(`        ${plainText(m)}\n`);
+  if (missing.length > SHOWN) print(`        and ${missing.length - SHOWN} more\n`);
+}
+
+async function sourceCheck(
+  dbFile: string,
+  sources: readonly StoredSource[],
+  folder?: string,
+): Promise<{ readonly check: Check; readonly missing: readonly string[] }> {
   const problems: string[] = [];
+  const missing: string[] = [];
   for (const s of sources) {
     const places = placesOf(dbFile, s, folder);
     const file = places.find((p) => existsSync(p));
     if (file === undefined) {
-      const where =
-        places[0] === undefined ? "; name its folder with --folder" : ` (looked for ${places.join(" and ")})`;
-      problems.push(`${s.place}: ${s.path} is not there${where}`);
+      missing.push(`${s.place}: ${s.path}${places.length === 0 ? "" : ` (looked for ${places.join(" and ")})`}`);
       continue;
     }
     try {
@@ -78,5 +96,6 @@ async function sourceCheck(dbFile: string, sources: readonly StoredSource[], fol
       problems.push(`${s.place}: ${e.message}`);
     }
   }
-  return { name: "source files have their SHA-256", looked: sources.length, of: "files", problems };
+  const looked = sources.length - missing.length;
+  return { check: { name: "source files have their SHA-256", looked, of: "files", problems }, missing };
 }

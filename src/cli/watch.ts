@@ -1,6 +1,6 @@
 import { statSync } from "node:fs";
 import { setTimeout as wait } from "node:timers/promises";
-import { readCooldown, surveyCooldown } from "../input/index.js";
+import { readCooldown, sizeProblems, surveyCooldown } from "../input/index.js";
 import type { Analysis } from "../model/analysis.js";
 import { InputError, UsageError, type Problem } from "../model/errors.js";
 import { countOf, plainText } from "../model/text.js";
@@ -155,6 +155,8 @@ async function takeIn(w: Watch, frames: number): Promise<Taken | null> {
   const options = { allowOutside: w.allowOutside, growing: true };
   const cooldown = await readCooldown(w.yaml, options);
   if (cooldown.frames.length !== frames) return null;
+  const small = sizeProblems(cooldown.frames);
+  if (small.length > 0) throw new Refusal(small);
   const settings = settingRecord(w.settings);
   const name = plainText(cooldown.cooldown);
   const db = refusing(() => openForWriting(w.db));

@@ -1,4 +1,5 @@
 import { closeSync, openSync, renameSync, rmSync, writeSync } from "node:fs";
+import path from "node:path";
 import { InputError } from "../model/errors.js";
 
 /** Writes a file piece by piece, beside its place, and renames it: no half of a file is left behind. Returns its size in bytes. */
@@ -23,10 +24,23 @@ export function writeFile(file: string, parts: Iterable<string | Uint8Array>): n
     throw new InputError(
       {
         at: file,
-        problem: `cannot be written: ${e instanceof Error ? e.message : String(e)}`,
+        problem: `cannot be written: ${why(e, file)}`,
         fix: "name a file in a folder that exists and may be written",
       },
       e,
     );
   }
+}
+
+/** The system's error in words, without the name of the file that was written beside the one asked for. */
+function why(e: unknown, file: string): string {
+  const code = e instanceof Error && "code" in e ? String(e.code) : "";
+  const folder = path.dirname(path.resolve(file));
+  if (code === "ENOENT" || code === "ENOTDIR") return `the folder ${folder} does not exist`;
+  if (code === "EISDIR") return "it is a folder";
+  if (code === "EACCES" || code === "EPERM") return `the folder ${folder} may not be written by this user`;
+  if (code === "EROFS") return `the folder ${folder} is on a disk that may not be written`;
+  if (code === "ENOSPC") return "no space left on its disk";
+  if (code === "ENAMETOOLONG") return "its name is too long";
+  return e instanceof Error ? e.message : String(e);
 }

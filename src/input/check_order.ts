@@ -18,10 +18,18 @@ function temperatureNotices(frames: readonly FrameInfo[]): Notice[] {
     const branch = run[0].branch;
     const sign = branch === "cooling" ? -1 : 1;
     const steps = run.slice(1).map((f, i) => ({ f, stepK: f.temperatureK - run[i].temperatureK }));
+    const contrary = steps.filter((s) => Math.sign(s.stepK) === -sign).length;
+    if (contrary > steps.length / 2 && Math.sign(run[run.length - 1].temperatureK - run[0].temperatureK) === -sign) {
+      const [did, other] = branch === "cooling" ? ["rise", "warming"] : ["fall", "cooling"];
+      const message =
+        `the temperatures of this ${branch} series ${did}, from ${round(run[0].temperatureK)} to ${round(run[run.length - 1].temperatureK)} K: ` +
+        `write \`branch: ${other}\`, or put the temperatures in the order of the frames; as it stands the loop is taken to run the other way`;
+      notice(run[0].frame, "branch-contrary", message);
+    }
     for (const { f, stepK } of steps) {
       if (stepK === 0) {
         notice(f.frame, "temperature-repeated", `${f.temperatureK} K again, the temperature of the frame before`);
-      } else if (Math.sign(stepK) !== sign) {
+      } else if (Math.sign(stepK) !== sign && contrary <= steps.length / 2) {
         const before = f.temperatureK - stepK;
         notice(f.frame, "temperature-order", `${f.temperatureK} K after ${before} K in a ${branch} series`);
       }

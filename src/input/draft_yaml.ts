@@ -87,11 +87,11 @@ function channelLines(plan: Plan): string[] {
   }
   const lines: string[] = [];
   if (used.has("topography"))
-    lines.push("  topography:", "    unit:  # FILL: nm, um, m, or V with nm_per_unit below it");
+    lines.push("  topography: { unit: nm }  # or um, m, or V with nm_per_unit: the names do not say");
   const [harmonic, other] = plan.harmonics;
   if (harmonic !== undefined && other === undefined) lines.push(`  amplitude: { harmonic: ${harmonic} }`);
   if (other !== undefined) lines.push("  amplitude:", `    harmonic:  # FILL: ${plan.harmonics.join(" or ")}`);
-  if (used.has("phase")) lines.push("  phase:", "    unit:  # FILL: rad or deg");
+  if (used.has("phase")) lines.push("  phase: { unit: rad }  # or deg: the names do not say");
   return lines.length === 0 ? [] : ["channels:", ...lines];
 }
 

@@ -44,6 +44,15 @@ export function parseFramesTable(text: string, name: string, problems: Problem[]
   }
   const [head, ...body] = records;
   const columns = head.cells.map((c) => c.trim());
+  const other = separatorOf(columns);
+  if (other !== null) {
+    problems.push({
+      at: `${name}:${head.line}`,
+      problem: `the names of the columns are separated by ${other}; expected commas`,
+      fix: "save the table with commas between its fields, and with a point for the decimals",
+    });
+    return [];
+  }
   const before = problems.length;
   checkHead(columns, `${name}:${head.line}`, problems, fromLog);
   if (problems.length > before) return [];
@@ -58,6 +67,16 @@ export function parseFramesTable(text: string, name: string, problems: Problem[]
     const row = checkRow(record, columns, name, problems, fromLog);
     return row === null ? [] : [row];
   });
+}
+
+/** What separates the fields of a table that has no commas, in words; null where it has, or where it cannot be told. */
+function separatorOf(columns: readonly string[]): string | null {
+  const [only, ...more] = columns;
+  if (more.length > 0) return null;
+  for (const [mark, words] of [[";", "semicolons"] as const, ["\t", "tabs"] as const]) {
+    if (only.split(mark).filter((c) => COLUMNS.includes(c.trim().replace(/^"(.*)"$/, "$1"))).length > 1) return words;
+  }
+  return null;
 }
 
 interface CsvRecord {

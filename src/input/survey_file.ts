@@ -55,6 +55,7 @@ export async function surveyFile(yamlFile: string, options: ReadOptions): Promis
   const yamlPath = resolve(yamlFile);
   const folder = dirname(yamlPath);
   const yaml = readYaml(yamlPath, yamlFile);
+  refuseBinary(yaml, yamlFile);
   const doc = parseYaml(yaml.toString("utf8"), plainText(yamlFile));
   const whole = cooldownSchema.safeParse(doc.value);
   const problems: Problem[] = whole.success ? [] : schemaProblems(whole.error.issues, doc);
@@ -121,6 +122,18 @@ function readYaml(path: string, shown: string): Buffer {
     const fix = "give the path of a cooldown.yaml";
     throw new InputError({ at: plainText(shown), problem: systemWords(e), fix }, e);
   }
+}
+
+/** Bytes that no text has: an image, an archive or UTF-16, whatever its name says. */
+function refuseBinary(content: Buffer, shown: string): void {
+  const at = content.findIndex((b) => b === 0 || (b < 0x20 && b !== 9 && b !== 10 && b !== 13) || b === 0x7f);
+  if (at < 0) return;
+  const byte = content[at].toString(16).padStart(2, "0");
+  throw new InputError({
+    at: plainText(shown),
+    problem: `not text: byte ${at} is 0x${byte}; expected a cooldown.yaml in UTF-8`,
+    fix: "give the file that describes the cooldown, saved as plain text",
+  });
 }
 
 interface IndexedEntry {

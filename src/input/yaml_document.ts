@@ -1,5 +1,6 @@
 import { isMap, isNode, LineCounter, parseDocument, type Document, type Pair } from "yaml";
 import { InputError, type Problem } from "../model/errors.js";
+import { countOf } from "../model/text.js";
 
 /** A map of the document, its values not yet checked. */
 export const isRecord = (v: unknown): v is Record<string, unknown> => typeof v === "object" && v !== null;
@@ -21,6 +22,9 @@ export interface YamlDocument {
 
 /** A longer description of one cooldown is not the user's own; it costs memory before it can be checked. */
 const MAX_BYTES = 4 * 1024 * 1024;
+
+/** A file that is no YAML at all has a mistake a line. */
+const MOST_TOLD = 20;
 
 /**
  * Parses YAML 1.2 with every mistake reported at once: syntax, keys given twice, tags that are not understood, aliases that expand
@@ -46,6 +50,11 @@ export function parseYaml(text: string, name: string): YamlDocument {
     problem: firstLine(e.message),
     fix: e.code === "DUPLICATE_KEY" ? "keep one of the two" : "mend the YAML at this place",
   }));
+  if (problems.length > MOST_TOLD) {
+    const more = problems.length - MOST_TOLD;
+    problems.length = MOST_TOLD;
+    problems.push({ at: name, problem: `and ${countOf(more, "mistake")} more`, fix: "mend the first ones first" });
+  }
   if (problems.length > 0) throw new InputError(problems);
   let value: unknown;
   try {
@@ -97,4 +106,4 @@ function startOf(doc: Document.Parsed, path: readonly Step[]): number {
   return 0;
 }
 
-const firstLine = (s: string): string => s.split("\n", 1)[0] ?? s;
+const firstLine = (s: string): string => (s.split("\n", 1)[0] ?? s).slice(0, 400);

@@ -1,4 +1,4 @@
-import { copyFileSync, readFileSync, writeFileSync } from "node:fs";
+import { copyFileSync, readFileSync, readdirSync, writeFileSync } from "node:fs";
 import { join } from "node:path";
 import * as fc from "fast-check";
 import { afterEach, beforeEach, describe, expect, test } from "vitest";
@@ -89,7 +89,7 @@ test("from a folder of oddly named files to a cooldown that is read, by what the
   expect(made.out).toBe(
     `wrote ${yaml}\nwrote ${join(folder.path, "frames_cooling.csv")}\nwrote ${join(folder.path, "frames_warming.csv")}\n` +
       `5 frames in 2 series\nnot placed: 2 files, listed with the reason at the end of ${yaml}\n` +
-      `to fill in: 3 places marked FILL in ${yaml}\nnext: edit ${yaml}, then coldseam check ${yaml}\n`,
+      `to fill in: 2 places marked FILL in ${yaml}\nnext: edit ${yaml}, then coldseam check ${yaml}\n`,
   );
   expect(text("frames_cooling.csv")).toBe(
     "temperature_K,amplitude,phase\n" +
@@ -106,15 +106,15 @@ test("from a folder of oddly named files to a cooldown that is read, by what the
 
   const unfilled = coldseam("check", yaml);
   expect(unfilled.code).toBe(1);
-  expect(unfilled.err.match(/is left to fill in/g)).toHaveLength(3);
+  expect(unfilled.err.match(/is left to fill in/g)).toHaveLength(2);
   expect(unfilled.err).toMatch(/cooldown\.yaml:3:\d+: sample is left to fill in; expected the sample's name/);
   expect(unfilled.err).toMatch(/scan\.pixel_size_nm is left to fill in; expected two numbers above 0/);
-  expect(unfilled.err).toMatch(/channels\.phase\.unit is left to fill in; expected rad or deg/);
+  // what has a default is written out with it, and with what else it may be
+  expect(text("cooldown.yaml")).toContain("  phase: { unit: rad }  # or deg: the names do not say\n");
 
   const filled = text("cooldown.yaml")
     .replace("sample:", "sample: KV-14")
-    .replace("pixel_size_nm:", "pixel_size_nm: [10, 10]")
-    .replace("unit:  #", "unit: rad #");
+    .replace("pixel_size_nm:", "pixel_size_nm: [10, 10]");
   writeFileSync(yaml, filled);
   const c = await readCooldown(yaml);
   expect(c.frames.map((f) => [f.branch, f.cycle, f.temperatureK])).toEqual([
@@ -131,6 +131,20 @@ test("from a folder of oddly named files to a cooldown that is read, by what the
     ),
   );
   expect(text("cooldown.yaml")).toBe(filled);
+});
+
+test("no image that could be placed: the reasons, and nothing is written", async () => {
+  folder.stack("overview.tif", 1);
+  folder.stack("scan7_amplitude.tif", 1);
+  folder.text("notes.txt", "nice film\n");
+  expect(await problemsOf(draft(folder.path))).toEqual([
+    expect.stringMatching(/^overview\.tif: no word for a channel in its name .* \| name the files by channel/),
+    expect.stringMatching(/^scan7_amplitude\.tif: no temperature in its name/),
+    expect.stringMatching(
+      /: none of 2 images could be placed in a series \| rename them, or write cooldown\.yaml by hand/,
+    ),
+  ]);
+  expect(readdirSync(folder.path)).toEqual(["notes.txt", "overview.tif", "scan7_amplitude.tif"]);
 });
 
 test("stacks, sizes and axes in the files are taken; harmonics are a choice; unknown branches are left open", async () => {

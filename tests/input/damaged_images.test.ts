@@ -1,7 +1,7 @@
 import { mkdtempSync, readFileSync, rmSync, utimesSync, writeFileSync } from "node:fs";
 import { tmpdir } from "node:os";
 import { join } from "node:path";
-import { deflateSync } from "node:zlib";
+import zlib, { deflateSync } from "node:zlib";
 import { afterAll, describe, expect, test } from "vitest";
 import { ImageFileError } from "../../src/input/byte_file.js";
 import { closeImages, withImage } from "../../src/input/image_file.js";
@@ -127,6 +127,19 @@ describe("hostile headers are refused before memory is taken", () => {
     ["too few bytes", { 279: 60 }, /60 bytes for 64 bytes/],
   ])("%s", async (_, change, message) => {
     expect((await errorOf(tiff(page(change, 64), pixels))).message).toMatch(message);
+  });
+
+  test("ZSTD is unpacked where this Node.js can, and otherwise said with what to do", async () => {
+    const image = Float32Array.from({ length: 16 }, (_, k) => k / 4);
+    const pack: unknown = Reflect.get(zlib, "zstdCompressSync");
+    if (typeof pack === "function") {
+      const packed = pack(new Uint8Array(image.buffer)) as Uint8Array;
+      expect(await readAll(tiff(page({ 259: 50000, 279: packed.length }, 0), packed))).toEqual([image]);
+      return;
+    }
+    const error = await errorOf(tiff(page({ 259: 50000 }, 64), pixels));
+    expect(error.message).toMatch(/compressed with ZSTD, which this Node\.js \(v\d+.*\) cannot unpack/);
+    expect(error.fix).toBe("save it uncompressed, or run the program with Node.js 22.15 or later");
   });
 
   test("a count of four thousand million strips", async () => {

@@ -53,6 +53,20 @@ describe("what is odd about a run is told, and nothing else", () => {
   const told = (series: readonly (readonly [Branch, readonly number[]])[]): string[] =>
     checkOrder(frames(series), pixel, 30).map((n) => `${n.frame} ${n.code}: ${n.message}`);
 
+  test("a series that runs the other way is told once, with what to do; a step or two the other way one by one", () => {
+    const upside = told([["cooling", [120, 130, 140, 139, 150]]]);
+    expect(upside).toEqual([
+      "0 branch-contrary: the temperatures of this cooling series rise, from 120 to 150 K: write `branch: warming`, or put the temperatures in the " +
+        "order of the frames; as it stands the loop is taken to run the other way",
+    ]);
+    expect(told([["warming", [150, 140]]])).toEqual([
+      expect.stringMatching(/^0 branch-contrary: .* warming series fall, from 150 to 140 K/),
+    ]);
+    expect(told([["cooling", [150, 140, 145, 130]]])).toEqual([
+      expect.stringMatching(/^2 temperature-order: 145 K after 140 K/),
+    ]);
+  });
+
   test("a usual run: nothing", () => {
     const usual = [
       ["cooling", [200, 180, 160, 155, 150, 140, 100]],

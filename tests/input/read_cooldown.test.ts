@@ -354,7 +354,11 @@ c: &c [*b, *b, *b, *b, *b, *b, *b, *b, *b, *b]\nd: &d [*c, *c, *c, *c, *c, *c, *
 
   test.each([
     ["temperature,amplitude\n1,s.tif#0\n", /no column "temperature"; did you mean "temperature_K"\?/],
-    ["temperature_K;amplitude\n1;s.tif#0\n", /no column "temperature_K;amplitude".*separated by commas/],
+    [
+      "temperature_K;amplitude\n1;s.tif#0\n",
+      /f\.csv:1: the names of the columns are separated by semicolons; expected commas/,
+    ],
+    ["temperature_K\tamplitude\n1\ts.tif#0\n", /separated by tabs; expected commas \| save the table with commas/],
     ["temperature_K,amplitude,amplitude\n1,s.tif#0,s.tif#1\n", /column "amplitude" stands twice/],
     ["temperature_K,amplitude\n", /a header but no row/],
     ["", /the table is empty/],

@@ -189,7 +189,7 @@ function noticesOf(
       frame: null,
       code: "drift-failed",
       message:
-        `the first frame could not be linked to any other: no frame has a position` +
+        `the first frame could not be linked to any other: no other frame has a position` +
         (together > 1 ? ` (${together} others do hold together; leave the first frame out to have them placed)` : ""),
     });
   } else {
