@@ -120,8 +120,9 @@ async function main(from: number, to: number, seed: number): Promise<void> {
     try {
       return await withImage(
         file,
-        async ({ pages: [first, ...more], read }) => {
-          await read(0, 1, first?.planes === 1 ? undefined : 0);
+        async (image) => {
+          const [first, ...more] = image.pages;
+          await image.read(0, 1, first?.planes === 1 ? undefined : 0);
           return { pages: 1 + more.length, complex: first?.complex ?? false, planes: first?.planes ?? 1 };
         },
         dataset,
