@@ -9,6 +9,8 @@ const percent = (x, digits = 1) => (100 * x).toFixed(digits);
 export function accuracyOf(score) {
   const drift = errors(score.driftPx);
   const widths = errors(score.profileWidth);
+  const bias = median(widths);
+  const scatter = 1.4826 * median(widths.map((v) => Math.abs(v - bias)));
   const pulls = score.profileWidth.filter((e) => e.sd > 0).map((e) => e.error / e.sd);
   return [
     ["drift, rms (largest) / px", `${rms(drift).toFixed(3)} (${worst(drift).toFixed(3)})`],
@@ -19,10 +21,7 @@ export function accuracyOf(score) {
       "frame's median width, median (largest) / %",
       `${percent(median(errors(score.medianWidth)))} (${percent(worst(errors(score.medianWidth)))})`,
     ],
-    [
-      "width of a profile, bias ± scatter / %",
-      `${percent(median(widths))} ± ${percent(1.4826 * median(widths.map((v) => Math.abs(v - median(widths)))))}`,
-    ],
+    ["width of a profile, bias ± scatter / %", `${percent(bias)} ± ${percent(scatter)}`],
     ["its error over its sd, rms", rms(pulls).toFixed(2)],
     ["profiles (flagged)", `${score.profiles} (${score.flagged})`],
     ["one-state frames wrong, of", `${score.singleStateWrong} of ${score.singleStateFrames}`],
