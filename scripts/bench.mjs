@@ -7,8 +7,8 @@ ensureBuilt();
 
 const long = process.argv.includes("--long");
 const PARTS = {
-  256: async () => (await import("./bench/ingest.mjs")).benchIngest(256, 24),
-  512: async () => (await import("./bench/ingest.mjs")).benchIngest(512, 80),
+  256: async () => (await import("./bench/ingest.mjs")).benchIngest(256, 24, 6),
+  512: async () => (await import("./bench/ingest.mjs")).benchIngest(512, 80, 50),
   floors: async () => (await import("./bench/floors.mjs")).benchFloors(),
   workers: async () => (await import("./bench/workers.mjs")).benchWorkers(),
   scaling: async () => (await import("./bench/scaling.mjs")).benchScaling(),

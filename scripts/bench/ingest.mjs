@@ -9,7 +9,7 @@ import { top } from "../install_if_missing.mjs";
 import { accuracyOf } from "./accuracy.mjs";
 import { tablesIn } from "./csv_tables.mjs";
 import { generatedCooldown } from "./data.mjs";
-import { printTable } from "./goals.mjs";
+import { atMost, printTable } from "./goals.mjs";
 import { measuredIn, withFolder } from "./run_child.mjs";
 
 /** Stages of both put side by side: ours and theirs of one line do the same work. */
@@ -30,7 +30,8 @@ function runReference(python, yaml, folder) {
   return { ...JSON.parse(r.stdout), score: scoreTables(tablesIn(folder), readTruth(path.dirname(yaml))) };
 }
 
-export async function benchIngest(size, frames) {
+/** @param referenceS what the reference may take on two idle cores: a weaker one would flatter us */
+export async function benchIngest(size, frames, referenceS) {
   const yaml = await generatedCooldown(size, frames);
   const workers = availableParallelism();
   const python = findPython(["numpy", "scipy", "skimage", "tifffile", "yaml"]);
@@ -77,6 +78,10 @@ export async function benchIngest(size, frames) {
     console.log(
       `  peak memory: ${ours.peakMiB.toFixed(0)} MiB, all threads${theirs === null ? "" : `; the reference's largest process ${theirs.peak_mib.toFixed(0)} MiB`}`,
     );
+    if (theirs !== null)
+      console.log(
+        `  the reference itself, its CPU seconds over two idle cores: ${(theirs.cpu / 2).toFixed(1)} s ${atMost(theirs.cpu / 2, referenceS, " s")}`,
+      );
     const bytes = (name) => ((ours.tableBytes[name] ?? 0) / ours.profiles).toFixed(0);
     console.log(
       `  database: ${(ours.databaseBytes / ours.profiles).toFixed(0)} bytes a profile, of which its row ${bytes("profile")}, its drawing ${bytes("profile_bins")}; the rest are previews (${bytes("preview")}), drawings of fringes (${bytes("fringe_bins")}), maps and domains`,

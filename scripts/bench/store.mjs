@@ -53,5 +53,5 @@ export async function benchStore(long) {
     `  a profile takes ${(size.get("profile").bytes / rows).toFixed(0)} bytes; a frame ${(size.get("frame").bytes / (cooldowns * frames)).toFixed(0)}`,
   );
   db.close();
-  if (long) rmSync(file, { force: true });
+  if (long) for (const end of ["", "-wal", "-shm"]) rmSync(file + end, { force: true });
 }
