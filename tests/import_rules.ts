@@ -8,7 +8,7 @@ export const MAY_IMPORT: Readonly<Record<string, readonly string[]>> = {
   input: ["model", "raster"],
   stages: ["model", "numerics", "raster"],
   "settings.ts": ["model", "stages"],
-  workers: ["model", "raster", "input", "stages", "settings.ts"],
+  workers: ["model", "numerics", "raster", "input", "stages", "settings.ts"],
   "analyse.ts": ["model", "numerics", "stages", "settings.ts", "workers"],
   tables: ["model"],
   store: ["model", "tables"],

@@ -103,6 +103,25 @@ export interface NearestWall {
   readonly beyondEnd: Uint8Array;
 }
 
+const known = new WeakMap<readonly Wall[], { readonly segments: Segments; readonly near: NearestWall }>();
+
+/** Steps of the walls and the nearest of them to every pixel of their frame. Widths and fringes ask for the same: it is worked out once for
+ *  one array of walls, and must not be changed. */
+export function nearestOf(
+  walls: readonly Wall[],
+  rows: number,
+  cols: number,
+  pixel: PixelSize,
+): { readonly segments: Segments; readonly near: NearestWall } {
+  let found = known.get(walls);
+  if (found === undefined || found.near.segment.length !== rows * cols) {
+    const segments = segmentsOf(walls);
+    found = { segments, near: nearestWall(segments, rows, cols, pixel) };
+    known.set(walls, found);
+  }
+  return found;
+}
+
 /** Nearest wall of every pixel centre, exact point-to-step distances in nm (no rasterised lines, no assumption of square pixels).
  *  Candidates travel from pixel to pixel in raster sweeps (Danielsson 1980, Comput. Graph. Image Process. 14, 227) and are refined along
  *  the wall, so the nearest step is missed only where two parts of walls are equally near. */

@@ -3,6 +3,7 @@ import type { ChannelName } from "../model/cooldown.js";
 import type { Preview } from "../model/pictures.js";
 import { dataOf } from "../model/raster.js";
 import type { CleanFrame, FrameLevels } from "../model/signal.js";
+import { dropNaNInPlace, selectInPlace } from "../numerics/quantile.js";
 import { correctPixels, readPixels, type LevelFit } from "../stages/states/index.js";
 
 /** A preview's longer side has at most this many pixels. */
@@ -56,32 +57,41 @@ export function boxAverage(data: Float32Array, rows: number, cols: number, most 
   const stepY = Math.ceil(rows / most);
   const outRows = Math.ceil(rows / stepY);
   const outCols = Math.ceil(cols / stepX);
-  const sum = new Float64Array(outRows * outCols);
-  const seen = new Int32Array(outRows * outCols);
-  const all = new Int32Array(outRows * outCols);
-  for (let i = 0, p = 0; i < rows; i++) {
-    const row = Math.floor(i / stepY) * outCols;
-    for (let j = 0; j < cols; j++, p++) {
-      const q = row + Math.floor(j / stepX);
-      all[q]++;
-      if (Number.isNaN(data[p])) continue;
-      seen[q]++;
-      sum[q] += data[p];
+  if (stepX === 1 && stepY === 1) return { rows, cols, stepX, stepY, values: data.slice() };
+  const values = new Float32Array(outRows * outCols);
+  for (let a = 0, q = 0; a < outRows; a++) {
+    const bottom = Math.min(rows, (a + 1) * stepY);
+    for (let b = 0; b < outCols; b++, q++) {
+      const right = Math.min(cols, (b + 1) * stepX);
+      let sum = 0;
+      let seen = 0;
+      for (let i = a * stepY; i < bottom; i++) {
+        for (let j = b * stepX; j < right; j++) {
+          const v = data[i * cols + j];
+          if (Number.isNaN(v)) continue;
+          seen++;
+          sum += v;
+        }
+      }
+      const all = (bottom - a * stepY) * (right - b * stepX);
+      values[q] = 2 * seen >= all && seen > 0 ? sum / seen : Number.NaN;
     }
   }
-  const values = Float32Array.from(sum, (v, q) => (2 * seen[q] >= all[q] && seen[q] > 0 ? v / seen[q] : Number.NaN));
   return { rows: outRows, cols: outCols, stepX, stepY, values };
 }
 
 /** Where the codes 0 and 255 lie: the whole range, but for outliers (particles), which would leave no codes for the rest: no farther than
  *  the width of the middle 98 % beyond them. */
 export function codeRange(values: Float32Array): { low: number; high: number } {
-  const sorted = values.filter((v) => !Number.isNaN(v)).sort();
-  if (sorted.length === 0) return { low: 0, high: 1 };
-  const at = (share: number): number => sorted[Math.round(share * (sorted.length - 1))];
+  const kept = values.slice();
+  const n = dropNaNInPlace(kept);
+  if (n === 0) return { low: 0, high: 1 };
+  const at = (share: number): number => selectInPlace(kept, Math.round(share * (n - 1)), n);
+  const lowest = at(0);
+  const highest = at(1);
   const spread = at(0.99) - at(0.01);
-  const low = Math.max(sorted[0], at(0.01) - spread);
-  const high = Math.min(sorted[sorted.length - 1], at(0.99) + spread);
+  const low = Math.max(lowest, at(0.01) - spread);
+  const high = Math.min(highest, at(0.99) + spread);
   return high > low ? { low, high } : { low, high: low + 1 };
 }
 
@@ -93,7 +103,9 @@ async function encode(channel: ChannelName, a: Averaged): Promise<Preview> {
     const v = a.values[q];
     if (Number.isNaN(v)) continue;
     const code = Math.round(255 * Math.min(1, Math.max(0, (v - low) / (high - low))));
-    pixels.fill(code, 4 * q, 4 * q + 3);
+    pixels[4 * q] = code;
+    pixels[4 * q + 1] = code;
+    pixels[4 * q + 2] = code;
     pixels[4 * q + 3] = 255;
   }
   const image = await sharp(pixels, { raw: { width: a.cols, height: a.rows, channels: 4 } })

@@ -1,6 +1,6 @@
 import type { PixelSize } from "../../model/raster.js";
 import type { Wall } from "../../model/walls.js";
-import { nearestWall, segmentsOf } from "../../raster/nearest_wall.js";
+import { nearestOf } from "../../raster/nearest_wall.js";
 import type { FringeSettings } from "./settings.js";
 
 /** A piece of a wall and the pixels that are tested with it. */
@@ -35,8 +35,7 @@ export function cutStretches(
   pixel: PixelSize,
   s: FringeSettings,
 ): FrameStretches {
-  const segments = segmentsOf(walls);
-  const near = nearestWall(segments, rows, cols, pixel);
+  const { segments, near } = nearestOf(walls, rows, cols, pixel);
   const edgeRow = distanceToUnseenRow(usable, rows, cols, pixel.yNm);
   const trusted = new Uint8Array(rows * cols);
   const pieces = walls.map((w) =>

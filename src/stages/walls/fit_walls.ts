@@ -9,7 +9,7 @@ import { Projector, type Direction } from "./direction.js";
 import { estimateWithTip, estimateWithoutTip, type ProfileEstimate } from "./estimate.js";
 import { flagOf, type Surroundings } from "./flags.js";
 import { fringeAlarms, type PhaseTurn } from "./fringe_alarm.js";
-import { freeReach, nearestWall, segmentsOf, type NearestWall, type Segments } from "../../raster/nearest_wall.js";
+import { freeReach, nearestOf, type NearestWall, type Segments } from "../../raster/nearest_wall.js";
 import { drawnProfile } from "./picture.js";
 import { ProfileData } from "./profile_data.js";
 import { PARAMETERS, ProfileFitter, type SigmaPrior } from "./profile_fit.js";
@@ -85,8 +85,7 @@ class FrameFit {
     this.stepNm = Math.min(pixel.xNm, pixel.yNm);
     this.sigmaNm = tip === null ? 0 : tip.resolutionNm / FWHM_PER_SIGMA;
     this.edgeNm = distanceFromEdge(signal);
-    this.segments = segmentsOf(walls);
-    this.near = nearestWall(this.segments, rows, cols, pixel);
+    ({ segments: this.segments, near: this.near } = nearestOf(walls, rows, cols, pixel));
     this.projector = new Projector(signal, states.levels, this.sigmaNm);
     this.spacingNm = s.spacingNm > 0 ? s.spacingNm : tip === null ? 6 * this.stepNm : 2 * tip.resolutionNm;
     // 10–90 from the slope at the middle (1.02 for a blurred step, 1.10 for a tanh), without the blur of the tracing
