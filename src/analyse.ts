@@ -2,6 +2,7 @@ import type { Analysis, FrameResult } from "./model/analysis.js";
 import type { Cooldown, Notice } from "./model/cooldown.js";
 import type { DriftPair } from "./model/pictures.js";
 import type { Drift, FrameLevels } from "./model/signal.js";
+import { median } from "./numerics/quantile.js";
 import { childSeed } from "./numerics/random.js";
 import { settingRecord, type Settings } from "./settings.js";
 import { labelDomains, trackDomains } from "./stages/domains/index.js";
@@ -110,6 +111,7 @@ async function analyseWith(
     drifts,
     settings.domains,
     tip,
+    apparentWidthNm(measured),
   );
   const loops = findLoops(
     frames.map((f, k) => ({
@@ -227,6 +229,14 @@ async function placeFrames(
     return [{ reference, moving, xNm, yNm, sdXNm: Math.sqrt(p.xxNm2), sdYNm: Math.sqrt(p.yyNm2), used }];
   });
   return { drifts: solved.drifts, driftPairs };
+}
+
+/** Median width of the cooldown's walls as seen, nm; 0 where no profile is sound. */
+function apparentWidthNm(measured: readonly MeasureOutput[]): number {
+  const seen = measured.flatMap((m) =>
+    m.walls.profiles.flatMap((p) => (p.flag === "" && p.apparentWidthNm !== null ? [p.apparentWidthNm] : [])),
+  );
+  return seen.length === 0 ? 0 : median(seen);
 }
 
 /** Progress over the whole run. Shares of the time are rough; they only steer the bar. */

@@ -3,6 +3,7 @@ import { availableParallelism } from "node:os";
 import { CONDITIONS, specOf } from "./conditions.js";
 import { runOnce } from "./run.js";
 import type { Score } from "./score.js";
+import { promisedTable } from "./promises.js";
 import { studyTables } from "./table.js";
 
 const BEGIN = "<!-- study: begin -->";
@@ -47,6 +48,8 @@ export async function runStudy(args: readonly string[], guide: string): Promise<
     `${runs} simulated cooldowns a condition, seed ${seed}: \`npm run study -- --runs ${runs} --seed ${seed}\`.`,
     "",
     ...chosen.map((c) => `- ${c.name}: ${c.what}`),
+    "",
+    promisedTable(results),
     "",
     studyTables(results),
   ].join("\n");

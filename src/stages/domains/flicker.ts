@@ -18,7 +18,7 @@ export interface Flicker {
 /** A domain may be missing for one frame if it is smaller than this many least areas: it fell below the least one. */
 const SMALL_LEAST_AREAS = 1.5;
 
-/** Finds cuts and joins of a single frame at a place narrower than the tip, and small domains missing for a single frame, and
+/** Finds cuts and joins of a single frame at a narrow place, and small domains missing for a single frame, and
  *  mends the steps (changed in place) so that identity passes over them. */
 export function quietFlicker(
   source: FrameSource,
@@ -26,6 +26,7 @@ export function quietFlicker(
   steps: readonly Step[],
   tip: Tip | null,
   s: DomainSettings,
+  wallNm: number,
 ): Flicker {
   const returns = placed.map(() => new Map<number, number>());
   const dropped = placed.map(() => new Set<number>());
@@ -33,7 +34,7 @@ export function quietFlicker(
     const into = steps[q - 1];
     const out = steps[q];
     const skip = skippedPair(source, placed, q, s);
-    const neckNm = (): number => neckOf(skip.now(), tip, s);
+    const neckNm = (): number => neckOf(skip.now(), tip, s, wallNm);
 
     for (const { label: piece } of placed[q].regions) {
       const parent = into.splitFrom[piece];
@@ -92,9 +93,9 @@ export function quietFlicker(
   return { returns, dropped };
 }
 
-function neckOf(f: FrameDomains, tip: Tip | null, s: DomainSettings): number {
+function neckOf(f: FrameDomains, tip: Tip | null, s: DomainSettings, wallNm: number): number {
   if (s.neckNm > 0) return s.neckNm;
-  return tip?.resolutionNm ?? 3 * Math.max(f.map.pixel.xNm, f.map.pixel.yNm);
+  return Math.max(wallNm, tip?.resolutionNm ?? 3 * Math.max(f.map.pixel.xNm, f.map.pixel.yNm));
 }
 
 /** The frame `q`, the one before it, and the overlap of its two neighbours, each worked out only when asked for. */

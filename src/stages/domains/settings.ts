@@ -30,7 +30,8 @@ export const settings = {
   neckNm: {
     default: 0,
     unit: "nm",
-    means: "a join or a cut narrower than this that lasts one frame is noise; 0 = the tip's resolution, or 3 pixels",
+    means:
+      "a join or a cut narrower than this that lasts one frame is noise; 0 = the walls' apparent width, at least the tip's resolution or 3 pixels",
     min: 0,
   },
 } as const satisfies SettingTable;

@@ -18,12 +18,15 @@ import type { FrameSource, PlacedFrame } from "./source.js";
  *  a domain so joined has no appearance in that frame, a piece so cut off is no domain of its own.
  *  @param frames labelled frames in order (an array, or a source that loads them on demand)
  *  @param drifts one a frame, same order
- *  @param tip    its resolution sets what a narrow neck is; null: 3 pixels */
+ *  @param tip    a neck is narrow below its resolution; null: 3 pixels
+ *  @param wallNm width of the walls as seen, nm: where two of them meet nothing reaches the level of its state, and noise says on which side of
+ *         one half a neck lies. A neck is narrow below that as well */
 export function trackDomains(
   frames: readonly FrameDomains[] | FrameSource,
   drifts: readonly Drift[],
   s: DomainSettings,
   tip: Tip | null = null,
+  wallNm = 0,
 ): TrackedDomain[] {
   const source: FrameSource = "at" in frames && "count" in frames ? frames : fromArray(frames);
   const placed: PlacedFrame[] = [];
@@ -41,7 +44,7 @@ export function trackDomains(
     placed.push({ index, frame: now.frame, at, regions: now.regions });
     last = now;
   }
-  return histories(placed, steps, quietFlicker(source, placed, steps, tip, s));
+  return histories(placed, steps, quietFlicker(source, placed, steps, tip, s, wallNm));
 }
 
 function fromArray(frames: readonly FrameDomains[]): FrameSource {
