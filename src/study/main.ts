@@ -10,7 +10,7 @@ const BEGIN = "<!-- study: begin -->";
 const END = "<!-- study: end -->";
 
 /** `npm run study [-- CONDITION …] [--runs N] [--seed N] [--write]`: the accuracy study; `-- survival` kills ingests,
- *  `-- fuzz` reads spoilt files instead. Returns the exit code. */
+ *  `-- fuzz` reads spoilt files, `-- jumps500` places frames that jump instead. Returns the exit code. */
 export async function runStudy(args: readonly string[], guide: string): Promise<number> {
   const option = (name: string, usual: number): number => {
     const at = args.indexOf(name);
@@ -25,6 +25,10 @@ export async function runStudy(args: readonly string[], guide: string): Promise<
   if (args[0] === "fuzz") {
     const { runFuzz } = await import("./fuzz.js");
     return runFuzz(option("--from", 0), option("--count", 20_000), seed);
+  }
+  if (args[0] === "jumps500") {
+    const { runJumps } = await import("./jumps.js");
+    return runJumps(option("--runs", 10), seed);
   }
   const names = args.filter((a, k) => !a.startsWith("--") && !(args[k - 1] ?? "").match(/^--(runs|seed)$/));
   const unknown = names.filter((n) => !CONDITIONS.some((c) => c.name === n));
