@@ -6,6 +6,8 @@ export interface Claim extends Difference {
   /** Believed by itself; false: one of several peaks, or a peak made by one or two particles. Such a peak comes back in every pair that sees the same
    *  particles, so that agreement among doubtful claims proves nothing: they place no frame, and sharpen those that sure ones have placed. */
   readonly sure: boolean;
+  /** Where it is all that holds a frame to the others, it may place it. */
+  readonly alone: boolean;
   /** 0 … 1, larger is better. */
   readonly quality: number;
   /** Largest disagreement that its errors explain. */
@@ -46,6 +48,7 @@ export function agreeingPairs(nodes: number, claims: readonly Claim[], seed: num
   }
   const agrees = best?.agrees ?? [];
   cutDoubtfulBridges(nodes, claims, agrees);
+  cutWeakBridges(nodes, claims, agrees);
   const group = groupsOf(nodes, claims, agrees);
   // places of different groups have nothing to do with one another
   return { agrees: agrees.map((a, k) => a && group[claims[k].a] === group[claims[k].b]), group };
@@ -148,6 +151,14 @@ function cutDoubtfulBridges(nodes: number, claims: readonly Claim[], agrees: boo
       agrees[k] = false;
       again = true;
     }
+  }
+}
+
+/** Takes out, in place, pairs on which a group hangs and which are not to be believed alone. */
+function cutWeakBridges(nodes: number, claims: readonly Claim[], agrees: boolean[]): void {
+  for (let weak = [-1]; weak.length > 0;) {
+    weak = bridgesOf(nodes, claims, agrees).filter((k) => !claims[k].alone);
+    for (const k of weak) agrees[k] = false;
   }
 }
 

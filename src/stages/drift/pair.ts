@@ -15,6 +15,8 @@ const TOLERANCE_PX = 5e-4;
 const ROUGH_PX = 0.03;
 /** A shift less certain than this is none. */
 const WORST_SD_PX = 1;
+/** Without topography one less certain than this is none to go by alone; and none is on the amplitude itself, whose domains move. */
+const SURE_SD_PX = 0.5;
 /** Peaks down to this share of `leastPeak` are kept as ambiguous. */
 const DOUBTFUL = 0.8;
 /** White noise blurred by σ is correlated as exp(−x²/4σ²): nothing is left at five. Noise correlated before the blur has room as well. */
@@ -55,9 +57,11 @@ export function measurePair(
     const least = Math.max(LEAST_PIXELS, s.leastOverlap * smaller);
     const fine = refine(channel, peak, factor, least);
     if (fine === null || Math.max(fine.covariance.xx, fine.covariance.yy) > WORST_SD_PX ** 2) continue;
+    const sd = Math.sqrt(Math.max(fine.covariance.xx, fine.covariance.yy));
+    const sure = channel.name === "topography" || (channel.name === "marks" && sd <= SURE_SD_PX);
     return {
       ...names,
-      status: doubtful || fine.features < s.leastFeatures ? "ambiguous" : "ok",
+      status: doubtful || !sure || fine.features < s.leastFeatures ? "ambiguous" : "ok",
       ...inNm(fine, pixel),
       overlap: fine.pixels / smaller,
       peak: peaks[0].height,

@@ -49,6 +49,8 @@ export function solveDrift(frames: readonly FrameInfo[], pairs: readonly PairShi
       x: p.xNm,
       y: p.yNm,
       sure: p.status === "ok",
+      // marks are few: the same ones can match at a wrong place now and then
+      alone: p.channel === "topography",
       quality: 1 - p.ratio,
       tolerance: Math.max(s.grossPx * least, 6 * Math.sqrt(Math.max(p.xxNm2, p.yyNm2))),
     };
