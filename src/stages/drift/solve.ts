@@ -49,8 +49,8 @@ export function solveDrift(frames: readonly FrameInfo[], pairs: readonly PairShi
       x: p.xNm,
       y: p.yNm,
       sure: p.status === "ok",
-      // marks are few: the same ones can match at a wrong place now and then
-      alone: p.channel === "topography",
+      // a few marks match at a wrong place now and then
+      alone: p.channel === "topography" || p.features >= MANY_MARKS * s.leastFeatures,
       quality: 1 - p.ratio,
       tolerance: Math.max(s.grossPx * least, 6 * Math.sqrt(Math.max(p.xxNm2, p.yyNm2))),
     };
@@ -91,6 +91,8 @@ export function solveDrift(frames: readonly FrameInfo[], pairs: readonly PairShi
   };
 }
 
+/** Without topography this many times the least number of features must make a shift that is to place a frame alone. */
+const MANY_MARKS = 2;
 /** The order in which spanning trees are drawn; any number does. */
 const SEED = 71;
 
