@@ -27,14 +27,17 @@ export function findAnalysis(db: Db, work: string): number | null {
 /** What the database's newest analysis of the cooldown of this name was made from; null where it knows none.
  *  @param except analyses that do not count */
 export function knownCooldown(db: Db, name: string, except: readonly number[] = []): CooldownIdentity | null {
-  const known = db
-    .prepare<[string], { id: number; description_json: string }>(
-      `SELECT a.id, a.description_json FROM cooldown c JOIN analysis a ON a.cooldown_id = c.id
-       WHERE c.name = ? ORDER BY a.made_at DESC, a.id DESC`,
+  const id = db
+    .prepare<[string], number>(
+      `SELECT a.id FROM cooldown c JOIN analysis a ON a.cooldown_id = c.id WHERE c.name = ?
+       ORDER BY a.made_at DESC, a.id DESC`,
     )
+    .pluck()
     .all(name)
-    .find((a) => !except.includes(a.id));
-  return known === undefined ? null : storedIdentity(known.description_json);
+    .find((a) => !except.includes(a));
+  if (id === undefined) return null;
+  const described = db.prepare<[number], string>("SELECT description_json FROM analysis WHERE id = ?").pluck().get(id);
+  return described === undefined ? null : storedIdentity(described);
 }
 
 /** Code of the notice that marks an analysis made while its run went on. */

@@ -65,7 +65,7 @@ function amiss(e: InputError): string {
 }
 
 async function run(seeds: readonly Seed[], folder: string, k: number, seed: number): Promise<FuzzCase> {
-  const random = makeRandom(childSeed(seed, k));
+  const random = makeRandom(childSeed(seed, 1, k));
   const chosen = choose(seeds, k, random.below(1 << 30));
   const others = choose(seeds, k, random.below(1 << 30));
   const own = path.join(folder, String(k % 8));
