@@ -61,7 +61,7 @@ interface PairsInput extends Run {
 
 /** The registration images used last stay in memory with what was computed from them: neighbouring frames share their partners. */
 const images = new Map<string, DriftImage>();
-const IMAGES_KEPT = 16;
+const IMAGES_KEPT = 10;
 
 function image(scratch: string, frame: number): DriftImage {
   const key = `${scratch}/${frame}`;
