@@ -11,6 +11,8 @@ export interface Pin {
   readonly lower: StateEstimate;
   readonly logRatio: number;
   readonly logRatioSd: number;
+  /** False where the frame has no optical phase: its step says nothing then. */
+  readonly hasPhase: boolean;
   readonly stepRad: number;
   readonly stepSdRad: number;
   readonly tailSd: number;
@@ -35,10 +37,10 @@ function pinOf(index: number, fit: LevelFit, s: StatesSettings): Pin | null {
   if (main === null || second === null) return null;
   const amplitude = (e: StateEstimate): number => Math.hypot(e.level.re, e.level.im);
   const [upper, lower] = amplitude(main) >= amplitude(second) ? [main, second] : [second, main];
-  return makePin(index, upper, lower, s);
+  return makePin(index, upper, lower, fit.hasPhase, s);
 }
 
-function makePin(index: number, upper: StateEstimate, lower: StateEstimate, s: StatesSettings): Pin {
+function makePin(index: number, upper: StateEstimate, lower: StateEstimate, hasPhase: boolean, s: StatesSettings): Pin {
   const scatter2 = s.contrastScatter ** 2;
   return {
     index,
@@ -46,16 +48,19 @@ function makePin(index: number, upper: StateEstimate, lower: StateEstimate, s: S
     lower,
     logRatio: Math.log(Math.hypot(upper.level.re, upper.level.im) / Math.hypot(lower.level.re, lower.level.im)),
     logRatioSd: Math.sqrt(upper.logSd ** 2 + lower.logSd ** 2 + scatter2),
+    hasPhase,
     stepRad: wrapAngle(Math.atan2(upper.level.im, upper.level.re) - Math.atan2(lower.level.im, lower.level.re)),
     stepSdRad: Math.sqrt(upper.phaseSdRad ** 2 + lower.phaseSdRad ** 2 + scatter2),
     tailSd: Math.hypot(upper.tailSd, lower.tailSd),
   };
 }
 
+/** What a pin's step of the phase departs by from another; 0 where it has none. */
+const stepOff = (p: Pin, fromRad: number, sign = 1): number => (p.hasPhase ? wrapAngle(sign * p.stepRad - fromRad) : 0);
+
 /** Distance of two contrasts in the plane of (log ratio, phase step), and the same with the roles of the states exchanged. */
 function flippedIsNearer(pin: Pin, to: { logRatio: number; stepRad: number }): boolean {
-  const far = (sign: number): number =>
-    (sign * pin.logRatio - to.logRatio) ** 2 + wrapAngle(sign * pin.stepRad - to.stepRad) ** 2;
+  const far = (sign: number): number => (sign * pin.logRatio - to.logRatio) ** 2 + stepOff(pin, to.stepRad, sign) ** 2;
   return far(-1) < far(1);
 }
 
@@ -87,9 +92,12 @@ export function trackContrast(
   });
   if (pins.length === 0) return { pins: [], rejected: [], contrast: null };
   // one orientation for all: where the amplitudes nearly agree, the phase step tells which is which
-  const heaviest = pins.reduce((a, b) => (weightOf(b) > weightOf(a) ? b : a));
-  pins = pins.map((p) => (flippedIsNearer(p, heaviest) ? makePin(p.index, p.lower, p.upper, s) : p));
+  const heaviest = pins.reduce((a, b) =>
+    (a.hasPhase === b.hasPhase ? weightOf(b) > weightOf(a) : b.hasPhase) ? b : a,
+  );
+  pins = pins.map((p) => (flippedIsNearer(p, heaviest) ? makePin(p.index, p.lower, p.upper, p.hasPhase, s) : p));
   const weights = pins.map(weightOf);
+  const phased = pins.some((p) => p.hasPhase) ? pins.filter((p) => p.hasPhase) : pins;
   const centre = {
     logRatio: weightedMedian(
       pins.map((p) => p.logRatio),
@@ -98,16 +106,16 @@ export function trackContrast(
     stepRad:
       heaviest.stepRad +
       weightedMedian(
-        pins.map((p) => wrapAngle(p.stepRad - heaviest.stepRad)),
-        weights,
+        phased.map((p) => wrapAngle(p.stepRad - heaviest.stepRad)),
+        phased.map(weightOf),
       ),
   };
   const size = Math.max(Math.hypot(centre.logRatio, centre.stepRad), 0.05);
-  const hasPhase = pins.some((p) => fits[p.index]?.hasPhase === true);
+  const hasPhase = pins.some((p) => p.hasPhase);
   let kept = pins.filter(
     (p) =>
-      Math.hypot(p.logRatio - centre.logRatio, wrapAngle(p.stepRad - centre.stepRad)) <
-      Math.max(2 * OFF_CONTRAST * size, OFF_SIGMAS * Math.hypot(p.logRatioSd, p.stepSdRad)),
+      Math.hypot(p.logRatio - centre.logRatio, stepOff(p, centre.stepRad)) <
+      Math.max(2 * OFF_CONTRAST * size, OFF_SIGMAS * Math.hypot(p.logRatioSd, p.hasPhase ? p.stepSdRad : 0)),
   );
   let contrast: Contrast | null = null;
   for (let round = 0; round < 3; round++) {
@@ -118,7 +126,7 @@ export function trackContrast(
     const next = pins.filter((p) => {
       const t = frames[p.index].temperatureK;
       const r = p.logRatio - logRatio.at(t).mean;
-      const f = stepRad === null ? 0 : wrapAngle(p.stepRad - stepRad.at(t).mean);
+      const f = stepRad === null ? 0 : stepOff(p, stepRad.at(t).mean);
       const sigmas = Math.max(Math.abs(r) / p.logRatioSd, Math.abs(f) / p.stepSdRad);
       return sigmas < OFF_SIGMAS || Math.hypot(r, f) < OFF_CONTRAST * size;
     });
@@ -151,14 +159,15 @@ function courses(
     tails,
   );
   if (logRatio === null) return null;
+  const phased = pins.filter((p) => p.hasPhase);
   const stepRad = hasPhase
     ? fitCourse(
-        at,
-        pins.map((p) => centreStep + wrapAngle(p.stepRad - centreStep)),
-        pins.map((p) => p.stepSdRad),
+        phased.map((p) => frames[p.index].temperatureK),
+        phased.map((p) => centreStep + wrapAngle(p.stepRad - centreStep)),
+        phased.map((p) => p.stepSdRad),
         rangeK,
         s.levelSlope,
-        tails,
+        phased.map((p) => p.tailSd),
       )
     : null;
   return { logRatio, stepRad };

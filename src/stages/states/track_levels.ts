@@ -41,17 +41,21 @@ export function trackLevels(
   const polar = told.map((what, k): PolarLevels | null => {
     const fit = fits[k];
     if (contrast === null || what === "unknown" || fit == null || fit.main === null) return null;
-    return combineLevels(what, pinOf.get(k) ?? null, fit.main, contrast, frames[k].temperatureK, s.contrastScatter);
+    // a frame without optical phase takes the ratio alone: its signal is the amplitude, on the real axis
+    const own = fit.hasPhase ? contrast : { ...contrast, stepRad: null };
+    return combineLevels(what, pinOf.get(k) ?? null, fit.main, own, frames[k].temperatureK, s.contrastScatter);
   });
   const gains = fitGains(polar, frames, rangeK, s);
-  const noises = stateNoises(told, pins, fits);
+  const noises = { phase: stateNoises(told, pins, fits, true), amplitude: stateNoises(told, pins, fits, false) };
   const levels = frames.map((info, k): FrameLevels => {
     const fit = fits[k] ?? null;
     const p = polar[k];
     if (fit === null || p === null || fit.main === null) return undecided(info.frame, fit);
     const { main } = fit;
     const noiseAt = (state: "upper" | "lower", level: ComplexValue, own: StateEstimate | null): NoiseCovariance =>
-      own !== null ? own.noise : fromPolarNoise(noises[state] ?? toPolarNoise(main), level);
+      own !== null
+        ? own.noise
+        : fromPolarNoise(noises[fit.hasPhase ? "phase" : "amplitude"][state] ?? toPolarNoise(main), level);
     const pin = pinOf.get(k) ?? null;
     const what = told[k];
     const upperLevel = p.upper;
@@ -82,17 +86,19 @@ function shareOf(what: Shown, pins: readonly Pin[], index: number): number {
   return what === "both" ? (pins.find((p) => p.index === index)?.upper.share ?? Number.NaN) : Number.NaN;
 }
 
-/** Noise of each state along and across its level, relative to it: the median over the frames that show it. */
+/** Noise of each state along and across its level, relative to it: the median over the frames that show it, of those with an optical phase
+ *  or those without. */
 function stateNoises(
   shown: readonly Shown[],
   pins: readonly Pin[],
   fits: readonly (LevelFit | null)[],
+  hasPhase: boolean,
 ): { readonly upper: PolarNoise | null; readonly lower: PolarNoise | null } {
   const collect = (which: "upper" | "lower"): PolarNoise[] => {
-    const all = pins.map((p) => toPolarNoise(p[which]));
+    const all = pins.filter((p) => p.hasPhase === hasPhase).map((p) => toPolarNoise(p[which]));
     shown.forEach((what, k) => {
       const main = fits[k]?.main;
-      if (what === which && main != null) all.push(toPolarNoise(main));
+      if (what === which && main != null && fits[k]?.hasPhase === hasPhase) all.push(toPolarNoise(main));
     });
     return all;
   };

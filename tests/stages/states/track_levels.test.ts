@@ -14,6 +14,8 @@ interface Made {
   readonly branch?: Branch;
   /** Another ratio than the sample's, as particles would make. */
   readonly ratio?: number;
+  /** Measured without an optical phase. */
+  readonly noPhase?: boolean;
 }
 
 const RATIO = 2.2;
@@ -34,16 +36,17 @@ function estimate(amplitude: number, phase: number, share: number): StateEstimat
 function fitOf(k: number, made: Made): LevelFit {
   const g = made.gain ?? 1;
   const ratio = made.ratio ?? RATIO;
-  const phase = 0.7 * k;
+  const hasPhase = made.noPhase !== true;
+  const phase = hasPhase ? 0.7 * k : 0;
   const low = estimate(g, phase, 1 - made.metallic);
-  const high = estimate(ratio * g, phase + STEP, made.metallic);
+  const high = estimate(ratio * g, hasPhase ? phase + STEP : 0, made.metallic);
   const both = made.metallic > 0 && made.metallic < 1;
   const [main, second] = made.metallic > 0.5 ? [high, low] : [low, high];
   return {
     frame: k,
     rows: ROWS,
     cols: ROWS,
-    hasPhase: true,
+    hasPhase,
     usablePixels: ROWS * ROWS,
     main,
     second: both ? second : null,
@@ -103,6 +106,16 @@ const COOLDOWN: Made[] = [
 describe("levels along a cooldown", () => {
   test("single-state frames are told by their amplitude, under changes of gain", () => {
     expect(verdicts(COOLDOWN)).toEqual(["metallic", "metallic", "mixed", "mixed", "mixed", "insulating", "insulating"]);
+  });
+  test("frames without an optical phase among those with one keep their states, on the real axis", () => {
+    const mixed = COOLDOWN.map((m, k) => ({ ...m, noPhase: k % 2 === 1 }));
+    const { levels } = track(mixed);
+    expect(levels.map((l) => l.verdict)).toEqual(verdicts(COOLDOWN));
+    levels.forEach((l, k) => {
+      const step = Math.atan2(l.metallic.im, l.metallic.re) - Math.atan2(l.insulating.im, l.insulating.re);
+      expect(Math.cos(step)).toBeCloseTo(k % 2 === 1 ? 1 : Math.cos(STEP), 3);
+      expect(size(l.metallic) / size(l.insulating)).toBeCloseTo(RATIO, 2);
+    });
   });
   test("the absent state's level is predicted from the contrast; gains are relative to the first frame", () => {
     const { levels } = track(COOLDOWN);
