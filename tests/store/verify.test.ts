@@ -6,6 +6,7 @@ import type { Db } from "../../src/store/open.js";
 import { saveAnalysis } from "../../src/store/save.js";
 import { verifyDatabase } from "../../src/store/verify.js";
 import { RULES } from "../../src/store/verify_rules.js";
+import { smoothLine } from "../../src/stages/walls/smooth_line.js";
 import { sampleAnalysis } from "./sample_analysis.js";
 
 const NOW = new Date("2026-01-02T03:04:05Z");
@@ -176,6 +177,41 @@ test.each(FAULTS)("finds: %s", (change, check, words) => {
   const wrong = wrongIn(db);
   expect(wrong.names.filter((n) => check.test(n))).toHaveLength(1);
   expect(wrong.text).toMatch(words);
+});
+
+/** A closed wall as small as they come (ten points round 30 nm) and a long winding one, far from the frame's corner. */
+function withLines(): Db {
+  const db = stored();
+  const ring = Float64Array.from({ length: 20 }, (_, k) => {
+    const turn = (Math.PI / 5) * (k >> 1);
+    return 9000 + 15 * (k % 2 === 0 ? Math.cos(turn) : Math.sin(turn));
+  });
+  const winding = Float64Array.from({ length: 400 }, (_, k) =>
+    k % 2 === 0 ? 5 * k : 7000 + 40 * Math.sin((5 * k) / 60),
+  );
+  db.exec("DELETE FROM profile; DELETE FROM fringe");
+  const put = db.prepare(
+    "INSERT INTO wall (analysis_id, frame, wall, closed, length_nm, points) VALUES (1, 0, ?, ?, ?, ?)",
+  );
+  [ring, winding].forEach((points, k) => {
+    const line = smoothLine(points, k === 0, 9.4, 2);
+    if (line === null) throw new Error("no line");
+    put.run(k + 1, k === 0 ? 1 : 0, line.lengthNm, new Uint8Array(Float32Array.from(line.points).buffer));
+  });
+  return db;
+}
+
+test("bent and small walls have their length; one wrong by a hundredth has not", () => {
+  const lines = (db: Db): readonly string[] =>
+    [...verifyDatabase(db)].find((c) => c.name.startsWith("lines of the walls"))?.problems ?? ["no such check"];
+  expect(lines(withLines())).toEqual([]);
+  for (const wall of [1, 2])
+    for (const factor of [0.99, 1.01]) {
+      const db = withLines();
+      db.exec(`UPDATE wall SET length_nm = ${factor} * length_nm WHERE wall = ${wall}`);
+      expect(lines(db)).toHaveLength(1);
+      expect(lines(db)[0]).toMatch(new RegExp(`frame 0, wall ${wall}: says`));
+    }
 });
 
 test("every rule has a fault here that it finds", () => {

@@ -1,3 +1,5 @@
+import { lineLength, lineTangents } from "../../model/line_length.js";
+
 /** A polyline at even arc spacing, smoothed, with unit normals to its left as the image is looked at (x right, y down). */
 export interface SmoothLine {
   readonly points: Float64Array;
@@ -18,39 +20,14 @@ export function smoothLine(points: Float64Array, closed: boolean, stepNm: number
   const { line, stepNm: step } = even;
   const smooth = sigmaNm > 0 ? filter(line, closed, sigmaNm / step) : line;
   const count = smooth.length / 2;
-  const tangents = new Float64Array(2 * count);
-  for (let k = 0; k < count; k++) {
-    const a = k > 0 ? k - 1 : closed ? count - 1 : 0;
-    const b = k + 1 < count ? k + 1 : closed ? 0 : count - 1;
-    const tx = smooth[2 * b] - smooth[2 * a];
-    const ty = smooth[2 * b + 1] - smooth[2 * a + 1];
-    const norm = Math.hypot(tx, ty) || 1;
-    tangents[2 * k] = tx / norm;
-    tangents[2 * k + 1] = ty / norm;
-  }
-  const arcNm = new Float64Array(count);
-  let length = 0;
-  for (let k = 1; k < count; k++) {
-    length += arcStep(smooth, tangents, k - 1, k);
-    arcNm[k] = length;
-  }
-  if (closed) length += arcStep(smooth, tangents, count - 1, 0);
+  const tangents = lineTangents(smooth, closed);
+  const { arc: arcNm, length: lengthNm } = lineLength(smooth, closed);
   const normals = new Float64Array(2 * count);
   for (let k = 0; k < count; k++) {
     normals[2 * k] = tangents[2 * k + 1];
     normals[2 * k + 1] = -tangents[2 * k];
   }
-  return { points: smooth, normals, arcNm, lengthNm: length };
-}
-
-function arcStep(p: Float64Array, t: Float64Array, a: number, b: number): number {
-  const chord = Math.hypot(p[2 * b] - p[2 * a], p[2 * b + 1] - p[2 * a + 1]);
-  const turn = Math.atan2(
-    t[2 * a] * t[2 * b + 1] - t[2 * a + 1] * t[2 * b],
-    t[2 * a] * t[2 * b] + t[2 * a + 1] * t[2 * b + 1],
-  );
-  // ends of the line have one-sided tangents, and a kink is no arc
-  return chord * (Math.abs(turn) < 1 ? 1 + (turn * turn) / 24 : 1);
+  return { points: smooth, normals, arcNm, lengthNm };
 }
 
 function resample(
