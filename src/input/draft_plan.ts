@@ -1,6 +1,7 @@
 import type { Branch } from "../model/cooldown.js";
 import { countOf } from "../model/text.js";
 import type { FoundImage } from "./draft_collect.js";
+import { KNOWN_WORDS, tellingWords } from "./file_names.js";
 import { IMAGE_KEYS, type ImageKey } from "./schema.js";
 import { signalProblem } from "./signal_form.js";
 
@@ -13,6 +14,8 @@ export interface PlannedRow {
 /** One series as far as the names tell it: rows for a table (one table a harmonic), or stacks. */
 export interface PlannedSeries {
   readonly branch: Branch | null;
+  /** The word that the branch was taken from where it may mean something else (`down`), or by which files without one were kept apart. */
+  readonly word: string | null;
   readonly cycle: number | null;
   readonly tables: readonly { readonly harmonic: number | null; readonly rows: readonly PlannedRow[] }[];
   /** Each image's file; several where a harmonic must be chosen. */
@@ -22,8 +25,27 @@ export interface PlannedSeries {
 export interface Plan {
   readonly series: readonly PlannedSeries[];
   readonly harmonics: readonly number[];
-  readonly unplaced: readonly { readonly written: string; readonly why: string }[];
+  readonly unplaced: readonly Unplaced[];
 }
+
+export interface Unplaced {
+  readonly written: string;
+  readonly why: string;
+  readonly fix: string;
+}
+
+const BY_HAND = "write cooldown.yaml by hand";
+/** Said once, not beside every file. */
+export const NO_CHANNEL = {
+  why: "no word for a channel in its name",
+  fix:
+    `put a word for the channel into the names (${KNOWN_WORDS.channels.join(", ")}), and one for the branch ` +
+    `(${KNOWN_WORDS.branches.join(", ")}); or ${BY_HAND}`,
+};
+const NO_TEMPERATURE = {
+  why: "no temperature in its name (as in 165K, T165, 165p5K)",
+  fix: `write the temperature into the names as 165K, T165 or 165p5K; or ${BY_HAND}`,
+};
 
 interface Placed {
   readonly found: FoundImage;
@@ -32,8 +54,9 @@ interface Placed {
 
 /** Sorts images into series by what their names say. What a name leaves open is not placed, and why is said. */
 export function planSeries(images: readonly FoundImage[]): Plan {
-  const unplaced: { written: string; why: string }[] = [];
-  const leave = (found: FoundImage, why: string): void => void unplaced.push({ written: found.written, why });
+  const unplaced: Unplaced[] = [];
+  const leave = (found: FoundImage, why: string, fix = BY_HAND): void =>
+    void unplaced.push({ written: found.written, why, fix });
   const single: Placed[] = [];
   const stacked: Placed[] = [];
   for (const found of images) {
@@ -42,7 +65,7 @@ export function planSeries(images: readonly FoundImage[]): Plan {
     const image = parts.image ?? (found.complex ? "signal" : null);
     if (parts.doubts.length > 0) leave(found, `its name says two things: ${parts.doubts.join("; ")}`);
     else if (image === null && found.planes > 1) leave(found, `${found.planes} samples a pixel: name one as FILE#0:0`);
-    else if (image === null) leave(found, "no word for a channel in its name (topography, amplitude, phase, …)");
+    else if (image === null) leave(found, NO_CHANNEL.why, NO_CHANNEL.fix);
     else if (found.complex !== (image === "signal"))
       leave(
         found,
@@ -50,27 +73,65 @@ export function planSeries(images: readonly FoundImage[]): Plan {
       );
     else if (found.planes > 1 && !found.complex) leave(found, `${found.planes} samples a pixel: name one as FILE#0:0`);
     else if (found.pages > 1 && parts.temperatureK !== null)
-      leave(found, `a stack of ${found.pages} pages at one temperature`);
+      leave(found, `a stack of ${found.pages} pages at one temperature`, `${BY_HAND}, with temperatures_K`);
     else if (found.pages > 1) stacked.push({ found, image });
-    else if (parts.temperatureK === null) leave(found, "no temperature in its name (as in 165K, T165, 165p5K)");
+    else if (parts.temperatureK === null) leave(found, NO_TEMPERATURE.why, NO_TEMPERATURE.fix);
     else single.push({ found, image });
   }
   const series: PlannedSeries[] = [];
   const inSeries = (p: Placed): string => `${p.found.parts.cycle} ${p.found.parts.branch}`;
   for (const list of groupBy(single, inSeries).values()) {
     const { branch, cycle } = list[0].found.parts;
-    const tables = tablesOf(list, branch, leave);
-    if (tables.length > 0) series.push({ branch, cycle, tables, stacks: null });
+    for (const { word, members } of branch === null ? keptApart(list, 2) : [told(list)]) {
+      const tables = tablesOf(members, branch, leave);
+      if (tables.length > 0) series.push({ branch, word, cycle, tables, stacks: null });
+    }
   }
   for (const list of groupBy(stacked, inSeries).values()) {
     const { branch, cycle } = list[0].found.parts;
-    for (const stacks of stacksOf(list, leave)) series.push({ branch, cycle, tables: [], stacks });
+    for (const { word, members } of branch === null ? keptApart(list, 1) : [told(list)])
+      for (const stacks of stacksOf(members, leave)) series.push({ branch, word, cycle, tables: [], stacks });
   }
   const rank = (s: PlannedSeries): number =>
     (s.cycle ?? 0) * 10 + (s.branch === "cooling" ? 0 : s.branch === "warming" ? 1 : 2);
   series.sort((a, b) => rank(a) - rank(b));
   const harmonics = new Set(series.flatMap(harmonicsOf));
   return { series, harmonics: [...harmonics].sort((a, b) => a - b), unplaced };
+}
+
+interface Group {
+  readonly word: string | null;
+  readonly members: readonly Placed[];
+}
+
+/** The files of one branch, with the word of a direction where all is known from that. */
+function told(list: readonly Placed[]): Group {
+  const words = new Set(list.map((p) => p.found.parts.direction));
+  return { word: words.has(null) ? null : [...words].join(", "), members: list };
+}
+
+/**
+ * Files that say no branch, kept apart by the words in which the files of one channel differ: these may be the names of the branches.
+ * Words that all files of a channel have, and those of fewer than `least` temperatures (or stacks), say nothing.
+ */
+function keptApart(list: readonly Placed[], least: number): Group[] {
+  const telling = new Map<Placed, readonly string[]>();
+  const reach = new Map<string, Set<number | string>>();
+  for (const channel of groupBy(list, (p) => p.image).values()) {
+    const words = channel.map((p) => tellingWords(p.found.parts.rest));
+    const common = new Set(words[0]?.filter((w) => words.every((other) => other.includes(w))));
+    channel.forEach((p, k) => {
+      const own = (words[k] ?? []).filter((w) => !common.has(w));
+      telling.set(p, own);
+      for (const w of own) reach.set(w, (reach.get(w) ?? new Set()).add(p.found.parts.temperatureK ?? p.found.written));
+    });
+  }
+  const keyOf = (p: Placed): string =>
+    (telling.get(p) ?? []).filter((w) => (reach.get(w)?.size ?? 0) >= least).join(" ");
+  const groups = groupBy(list, keyOf);
+  if (groups.size === 1) return [{ word: null, members: list }];
+  // What lacks the words of the others (one topography for all) is a group of its own: nothing says to which it belongs.
+  return [...groups].map(([word, members]) => ({ word, members }));
 }
 
 function harmonicsOf(s: PlannedSeries): number[] {

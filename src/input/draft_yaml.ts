@@ -1,7 +1,7 @@
 import type { PixelSize } from "../model/raster.js";
 import { countOf, plainText } from "../model/text.js";
 import type { Collected, FoundImage } from "./draft_collect.js";
-import type { Plan, PlannedRow, PlannedSeries } from "./draft_plan.js";
+import { NO_CHANNEL, type Plan, type PlannedRow, type PlannedSeries } from "./draft_plan.js";
 import { samePixel } from "./image_headers.js";
 import { IMAGE_KEYS, type ImageKey } from "./schema.js";
 
@@ -47,6 +47,7 @@ export function draftText(name: string, plan: Plan, { images, logs, unread }: Co
     "series:",
     ...series,
     ...(unplaced.length === 0 ? [] : ["", `# Not placed: ${countOf(unplaced.length, "file")}`]),
+    ...(plan.unplaced.some((u) => u.why === NO_CHANNEL.why) ? [`# (${NO_CHANNEL.fix})`] : []),
     ...unplaced.map((u) => `#   ${said(u.written)}: ${said(u.why)}`),
   ];
   const text = `${lines.join("\n")}\n`;
@@ -95,9 +96,16 @@ function channelLines(plan: Plan): string[] {
   return lines.length === 0 ? [] : ["channels:", ...lines];
 }
 
+function branchLine({ branch, word, stacks }: PlannedSeries): string {
+  if (branch !== null)
+    return `  - branch: ${branch}${word === null ? "" : `  # from "${said(word)}" in the names of its files`}`;
+  const which = word === null ? "" : word === "" ? " those without such a word:" : ` those with "${said(word)}":`;
+  const order = stacks === null ? "; the table goes from high to low: turn it round for warming" : "";
+  return `  - branch:  # FILL:${which} cooling or warming; the names do not say${order}`;
+}
+
 function seriesLines(s: PlannedSeries, plan: Plan, tables: DraftFile[]): string[] {
-  const branch =
-    s.branch === null ? "  - branch:  # FILL: cooling or warming; the names do not say" : `  - branch: ${s.branch}`;
+  const branch = branchLine(s);
   const cycle = s.cycle === null ? [] : [`  # cycle ${s.cycle}, as the names say`];
   if (s.stacks === null) {
     const names = s.tables.map(({ harmonic, rows }) => {
@@ -105,7 +113,7 @@ function seriesLines(s: PlannedSeries, plan: Plan, tables: DraftFile[]): string[
       const parts = [
         "frames",
         s.cycle === null ? "" : `cycle${s.cycle}`,
-        s.branch ?? "branch",
+        s.branch ?? `branch${/^[a-z\d ]+$/.test(s.word ?? "") ? `_${s.word?.replaceAll(" ", "_")}` : ""}`,
         several ? `h${harmonic}` : "",
       ];
       const table = { name: `${unused(parts.filter((p) => p !== "").join("_"), tables)}.csv`, text: tableText(rows) };

@@ -5,6 +5,8 @@ import type { ImageKey } from "./schema.js";
 export interface NameParts {
   readonly image: ImageKey | null;
   readonly branch: Branch | null;
+  /** The word of a direction (`down`) that the branch was taken from; null where a clearer word says it. */
+  readonly direction: string | null;
   readonly temperatureK: number | null;
   /** As written: `T165p5`, `-93C`. */
   readonly temperatureText: string | null;
@@ -26,14 +28,24 @@ const IMAGES: Readonly<Record<string, ImageKey>> = {
 }; // prettier-ignore
 const BRANCHES: Readonly<Record<string, Branch>> = {
   cooling: "cooling", cool: "cooling", cooled: "cooling",
-  warming: "warming", warm: "warming", warmed: "warming", heating: "warming", heat: "warming", heated: "warming",
+  warming: "warming", warm: "warming", warmed: "warming", warmup: "warming",
+  heating: "warming", heat: "warming", heated: "warming", heatup: "warming",
 }; // prettier-ignore
+/** Which way something goes: the temperature where no clearer word stands beside them, else perhaps the slow axis of the scan. */
+const DIRECTIONS: Readonly<Record<string, Branch>> = {
+  down: "cooling", dn: "cooling", dwn: "cooling", downward: "cooling", downwards: "cooling",
+  falling: "cooling", fall: "cooling", decreasing: "cooling", decrease: "cooling",
+  up: "warming", upward: "warming", upwards: "warming",
+  rising: "warming", rise: "warming", increasing: "warming", increase: "warming",
+}; // prettier-ignore
+/** Words that are nothing without the number after them. */
+const NUMBERED = new Set(["run", "sweep", "ramp", "pass", "leg", "part", "series", "branch"]);
 const RETRACE = new Set(["retrace", "backward", "backwards", "bwd"]);
 const TRACE = new Set(["trace", "forward", "forwards", "fwd"]);
 
 /**
  * Reads a file's name by its parts, whatever their order: words of a channel (`amp`, `phase`, …, with `retrace`), of a branch (`cooling`,
- * `heat`, …), a temperature with its unit or a T before it (`165.5K`, `165p5 K`, `T165`, `-93C`), a harmonic (`h3`, `harmonic3`), a cycle
+ * `heat`, …; `down`, `up`, … where there is no such word), a temperature with its unit or a T before it (`165.5K`, `165p5 K`, `T165`, `-93C`), a harmonic (`h3`, `harmonic3`), a cycle
  * (`cycle2`). Single letters and bare numbers say nothing. `words` are taken without regard to case.
  * @param path relative path without folders above the one that is described; folders' names count too
  */
@@ -41,6 +53,7 @@ export function nameParts(path: string): NameParts {
   const doubts: string[] = [];
   const found = { image: new Set<ImageKey>(), branch: new Set<Branch>(), kelvin: new Map<number, string>() };
   const numbers = { harmonic: new Set<number>(), cycle: new Set<number>() };
+  const directions = new Map<Branch, string>();
   let retrace = false;
   let text = path.replace(/(\.(ome|tiff?|npy|h5|hdf5?|nxs|csv|tsv|txt|dat|asc|gz))+$/i, "");
   text = takeTemperatures(text, found.kelvin, doubts);
@@ -53,6 +66,7 @@ export function nameParts(path: string): NameParts {
     const branch = BRANCHES[word];
     if (image !== undefined) found.image.add(image);
     else if (branch !== undefined) found.branch.add(branch);
+    else if (DIRECTIONS[word] !== undefined) directions.set(DIRECTIONS[word], word);
     else if (RETRACE.has(word)) retrace = true;
     else if (!TRACE.has(word)) rest.push(word);
   }
@@ -61,10 +75,13 @@ export function nameParts(path: string): NameParts {
     return set.size === 1 ? ([...set][0] ?? null) : null;
   };
   const plain = one(found.image, "channel");
+  const clear = found.branch.size > 0;
+  const branch = one(clear ? found.branch : new Set(directions.keys()), "branch");
   const temperatureK = one(new Set(found.kelvin.keys()), "temperature in K");
   return {
     image: plain !== null && retrace ? retraceOf(plain) : plain,
-    branch: one(found.branch, "branch"),
+    branch,
+    direction: clear || branch === null ? null : (directions.get(branch) ?? null),
     temperatureK,
     temperatureText: temperatureK === null ? null : (found.kelvin.get(temperatureK) ?? null),
     harmonic: one(numbers.harmonic, "harmonic"),
@@ -128,3 +145,18 @@ export function wordsOf(text: string): string[] {
     .split(/[^\p{L}\d]+/u)
     .filter((w) => w !== "");
 }
+
+/** The words of a name that may stand for a branch: those of letters, and numbers behind a word as `run`. */
+export function tellingWords(rest: readonly string[]): string[] {
+  return rest.flatMap((word, k) => {
+    if (/^\d/.test(word)) return [];
+    const next = rest[k + 1] ?? "";
+    return [NUMBERED.has(word) && /^\d+$/.test(next) ? `${word} ${Number(next)}` : word];
+  });
+}
+
+/** The words by which names are read, for a message. */
+export const KNOWN_WORDS = {
+  channels: Object.keys(IMAGES).filter((w) => w.length > 2),
+  branches: [...Object.keys(BRANCHES), ...Object.keys(DIRECTIONS)],
+};

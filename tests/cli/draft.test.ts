@@ -16,7 +16,12 @@ describe("what a name says", () => {
     ["phase 165p5 K warming.tif", "phase warming 165.5 "],
     ["cool/T165.5_topo_0012.tif", "topography cooling 165.5 0012"],
     ["Heating-T=170-Amplitude-Retrace.npy", "amplitude_retrace warming 170 "],
-    ["warmUp_180_K_heightFwd.tif", "topography warming 180 up"],
+    ["warmUp_180_K_heightFwd.tif", "topography warming 180 "],
+    ["KV14 #7 (film) down AMP 148,5 K.tiff", "amplitude cooling 148.5 kv,14,7,film"],
+    ["dn/165K_amp.tif", "amplitude cooling 165 "],
+    ["rising_165K_amp.tif", "amplitude warming 165 "],
+    ["cooling_165K_amp_up.tif", "amplitude cooling 165 "], // the slow axis upwards
+    ["heatup_165K_amp.tif", "amplitude warming 165 "],
     ["film_-93C_amp.tif", "amplitude null 180.15 film"],
     ["re_20degC.csv.gz", "real null 293.15 "],
     ["run.h5:/cooling/amplitude", "amplitude cooling null run"],
@@ -34,6 +39,7 @@ describe("what a name says", () => {
   test.each([
     ["amp_phase_165K.tif", "channel: amplitude and phase"],
     ["cooling_after_warming_165K_amp.tif", "branch: cooling and warming"],
+    ["up_and_down_165K_amp.tif", "branch: warming and cooling"],
     ["165K_170K_amp.tif", "temperature in K: 165 and 170"],
     ["film-93C_amp.tif", "temperature: 93C above or below zero"],
   ])("%s says two things", (name, doubt) => {
@@ -134,17 +140,68 @@ test("from a folder of oddly named files to a cooldown that is read, by what the
 });
 
 test("no image that could be placed: the reasons, and nothing is written", async () => {
-  folder.stack("overview.tif", 1);
+  for (let k = 0; k < 4; k++) folder.stack(`o${k}.tif`, 1);
   folder.stack("scan7_amplitude.tif", 1);
   folder.text("notes.txt", "nice film\n");
   expect(await problemsOf(draft(folder.path))).toEqual([
-    expect.stringMatching(/^overview\.tif: no word for a channel in its name .* \| name the files by channel/),
-    expect.stringMatching(/^scan7_amplitude\.tif: no temperature in its name/),
     expect.stringMatching(
-      /: none of 2 images could be placed in a series \| rename them, or write cooldown\.yaml by hand/,
+      /: 4 images could not be placed in a series: no word for a channel in its name: o0\.tif, o1\.tif, o2\.tif, and 1 more \| .*\(topography, topo, height, .*\(cooling, .*down, .*up, /,
     ),
+    expect.stringMatching(/: 1 image could not be .*: no temperature in its name .*: scan7_amplitude\.tif \| .*165K/),
   ]);
-  expect(readdirSync(folder.path)).toEqual(["notes.txt", "overview.tif", "scan7_amplitude.tif"]);
+  expect(readdirSync(folder.path)).toEqual([
+    "notes.txt",
+    "o0.tif",
+    "o1.tif",
+    "o2.tif",
+    "o3.tif",
+    "scan7_amplitude.tif",
+  ]);
+});
+
+test("files whose names differ in a word that is not known are never joined into one series", async () => {
+  for (const [word, temperatures] of [
+    ["links", [168, 152]],
+    ["rechts", [169, 155]],
+  ] as const) {
+    for (const t of temperatures) {
+      folder.stack(`film ${word} AMP ${t} K ${t - 100}.tif`, 1);
+      folder.stack(`film ${word} height Z ${t} K.tif`, 1);
+    }
+  }
+  const d = await draftCooldown(folder.path);
+  expect(d.files.slice(1)).toEqual(
+    [
+      ["links", 168, 152],
+      ["rechts", 169, 155],
+    ].map(([word, ...temperatures]) => ({
+      name: `frames_branch_${word}.csv`,
+      text: `temperature_K,topography,amplitude\n${temperatures.map((t) => `${t},film ${word} height Z ${t} K.tif,film ${word} AMP ${t} K ${Number(t) - 100}.tif\n`).join("")}`,
+    })),
+  );
+  const yaml = d.files[0]?.text ?? "";
+  expect(yaml).toMatch(/branch: {2}# FILL: those with "links": .*\n.*_links\.csv\n.*# FILL: those with "rechts": /);
+  expect(d).toMatchObject({ series: 2, frames: 4, toFill: 4, unplaced: 0 });
+});
+
+test("runs are kept apart by their number, scans are not; stacks by their words; down and up are the branches", async () => {
+  for (const [run, t] of [
+    [1, 165],
+    [1, 160],
+    [2, 161],
+    [2, 166],
+  ])
+    folder.stack(`run${run} scan0${t} ${t}K amp.tif`, 1);
+  for (const word of ["down", "up", "c", "w"]) folder.stack(`${word}_amp.tif`, 3);
+  const d = await draftCooldown(folder.path);
+  const yaml = d.files[0]?.text ?? "";
+  expect(d.files.slice(1).map((f) => f.name)).toEqual(["frames_branch_run_1.csv", "frames_branch_run_2.csv"]);
+  expect(yaml).toMatch(
+    /branch: cooling {2}# from "down" in the names of its files\n {4}stacks:\n {6}amplitude: "down_amp/,
+  );
+  expect(yaml).toMatch(/branch: warming {2}# from "up" in/);
+  expect(yaml).toMatch(/# FILL: those with "c": .*\n {4}stacks:\n {6}amplitude: "c_amp\.tif"/);
+  expect(yaml).toMatch(/# FILL: those with "w": .*\n {4}stacks:\n {6}amplitude: "w_amp\.tif"/);
 });
 
 test("stacks, sizes and axes in the files are taken; harmonics are a choice; unknown branches are left open", async () => {
