@@ -8,7 +8,7 @@ import { settingRecord, type Settings } from "./settings.js";
 import { labelDomains, trackDomains } from "./stages/domains/index.js";
 import { choosePairs, solveDrift, type PairShift } from "./stages/drift/index.js";
 import { controlFalseDiscovery, fringeShare } from "./stages/fringes/index.js";
-import { findLoops } from "./stages/loops/index.js";
+import { checkCourse, findLoops } from "./stages/loops/index.js";
 import { trackLevels } from "./stages/states/index.js";
 import { checkTip } from "./stages/walls/index.js";
 import { makeRunner, type Runner } from "./workers/pool.js";
@@ -113,16 +113,14 @@ async function analyseWith(
     tip,
     apparentWidthNm(measured),
   );
-  const loops = findLoops(
-    frames.map((f, k) => ({
-      cycle: f.cycle,
-      branch: f.branch,
-      temperatureK: f.temperatureK,
-      fraction: (measured[k] as MeasureOutput).fraction,
-    })),
-    settings.loops,
-    settings.run.seed,
-  );
+  const course = frames.map((f, k) => ({
+    cycle: f.cycle,
+    branch: f.branch,
+    temperatureK: f.temperatureK,
+    fraction: (measured[k] as MeasureOutput).fraction,
+  }));
+  const loops = findLoops(course, settings.loops, settings.run.seed);
+  notices.push(...checkCourse(course, settings.loops));
   notices.push(
     ...checkTip(
       measured.flatMap((m) => m.walls.profiles),

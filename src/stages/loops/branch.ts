@@ -19,6 +19,11 @@ export interface BranchData {
 /** Two-sided 95 % of a normal. */
 const Z95 = 1.959963984540054;
 
+/** One standard deviation of a fraction, from its 95 % interval; that of a one-sided one is its whole length. */
+export function branchSdOf(f: NonNullable<LoopRow["fraction"]>, leastSd: number): number {
+  return Math.max(leastSd, Math.max(f.value - f.low, f.high - f.value) / Z95);
+}
+
 /** Fractions of one branch by temperature; frames at one temperature are averaged by their variances. A one-sided interval (a frame of
  *  one state) gives its whole length as 95 %.
  *  @returns null where no frame has a fraction */
@@ -31,9 +36,8 @@ export function branchOf(rows: readonly LoopRow[], cycle: number, branch: Branch
   const weight: number[] = [];
   for (const r of own) {
     if (r.fraction === null) continue;
-    const { value, low, high } = r.fraction;
-    const half = Math.max(value - low, high - value);
-    const w = 1 / Math.max(leastSd, half / Z95) ** 2;
+    const { value } = r.fraction;
+    const w = 1 / branchSdOf(r.fraction, leastSd) ** 2;
     const last = t.length - 1;
     if (last >= 0 && t[last] === r.temperatureK) {
       sum[last] += w * value;

@@ -21,6 +21,13 @@ export const settings = {
     max: 0.5,
   },
   completeHigh: { default: 0.98, unit: "1", means: "… and rises to this", min: 0.5, max: 1 },
+  fallSd: {
+    default: 6,
+    unit: "1",
+    means: "a fraction that falls with rising temperature by so many standard deviations is warned of",
+    min: 3,
+  },
+  leastFall: { default: 0.05, unit: "1", means: "… if it falls by this much too", min: 0, max: 1 },
   gapSmoothness: {
     default: 0.7,
     unit: "1",
