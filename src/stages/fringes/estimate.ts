@@ -26,6 +26,9 @@ export interface FittedCurve {
 }
 
 const PARAMETERS = NUISANCES + FRINGE_PARAMETERS;
+/** What bends of the wall, its neighbours and slow errors of the rows do to period and decay beyond the noise, relative, 1 sd: without it, 90 and
+ *  89 % of the intervals held the truth in 155 simulated fringes (other cooldowns than those the study reports on). */
+export const MODEL_SD = { period: 0.0025, decay: 0.045 } as const;
 /** Step of the search for the largest departure, nm. */
 const SEARCH_NM = 2;
 
@@ -119,9 +122,9 @@ export function estimateFringe(
   return {
     ...nothing,
     periodNm,
-    periodSdNm: periodNm * sdLogPeriod,
+    periodSdNm: periodNm * Math.hypot(sdLogPeriod, MODEL_SD.period),
     decayNm: holdsDecay ? decayNm : null,
-    decaySdNm: holdsDecay ? decayNm * sdLogDecay : null,
+    decaySdNm: holdsDecay ? decayNm * Math.hypot(sdLogDecay, MODEL_SD.decay) : null,
   };
 }
 
