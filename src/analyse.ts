@@ -10,7 +10,7 @@ import { choosePairs, solveDrift, type PairShift } from "./stages/drift/index.js
 import { controlFalseDiscovery, fringeShare } from "./stages/fringes/index.js";
 import { checkCourse, findLoops } from "./stages/loops/index.js";
 import { trackLevels } from "./stages/states/index.js";
-import { checkTip } from "./stages/walls/index.js";
+import { checkTip, missingForWidths } from "./stages/walls/index.js";
 import { makeRunner, type Runner } from "./workers/pool.js";
 import { makeScratch, removeScratch } from "./workers/scratch.js";
 import { debrisParts, unpackMap, type MeasureOutput } from "./workers/tasks.js";
@@ -122,6 +122,10 @@ async function analyseWith(
   const loops = findLoops(course, settings.loops, settings.run.seed);
   notices.push(...checkCourse(course, settings.loops));
   notices.push(
+    ...missingForWidths(
+      tip,
+      frames.some((f) => f.sources.phase !== undefined),
+    ),
     ...checkTip(
       measured.flatMap((m) => m.walls.profiles),
       tip,

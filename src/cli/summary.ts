@@ -37,7 +37,7 @@ export function loopText(a: Analysis): string {
   const fringes = a.frames.flatMap((f) => f.fringes);
   lines.push(
     `  frames: ${[...verdicts].map(([k, n]) => `${n} ${k}`).join(", ")}; ${placedText(placed, a.frames.length)}`,
-    `  walls: ${sound.length} sound profiles of ${profiles.length}, ${sound.filter((p) => p.widthNm !== null).length} resolved; ` +
+    `  walls: ${sound.length} sound profiles of ${profiles.length}, ${a.cooldown.tip === null ? "apparent widths only" : `${sound.filter((p) => p.widthNm !== null).length} resolved`}; ` +
       `fringes on ${fringes.filter((t) => t.detected).length} of ${fringes.length} stretches tested; ${a.domains.length} domains tracked`,
   );
   const flags = new Map<string, number>();

@@ -85,6 +85,10 @@ function pixelNotices(pixel: PixelSize, resolutionNm: number | null): Notice[] {
     const message = `pixels of ${size} are far from what a near-field scan has: is the number in nm?`;
     return [{ frame: null, code: "pixel-size", message }];
   }
+  if (resolutionNm !== null && resolutionNm < smallest / 5) {
+    const message = `tip.resolution_nm of ${resolutionNm} nm is below a fifth of a pixel of ${size}: is the number in nm?`;
+    return [{ frame: null, code: "tip-below-pixel", message }];
+  }
   if (resolutionNm !== null && largest > resolutionNm) {
     const message = `pixels of ${size} are coarser than the tip's resolution of ${resolutionNm} nm: widths will have wide limits`;
     return [{ frame: null, code: "pixel-size", message }];

@@ -17,6 +17,7 @@ import { readTextFile, writtenSeries, type WrittenSeries } from "./series_frames
 import { hashFile, imageFiles, sourceOf } from "./source_files.js";
 import { shownPath } from "./source_path.js";
 import { hashLog, readThermometry, temperaturesFromLog, type Thermometry } from "./thermometry.js";
+import { tipProblems } from "./tip_size.js";
 import { channelScales, photonEnergyMeV } from "./units.js";
 import { isRecord, parseYaml, type YamlDocument } from "./yaml_document.js";
 
@@ -64,7 +65,7 @@ export async function surveyFile(yamlFile: string, options: ReadOptions): Promis
 
   // Each part that is sound in itself is followed to its files even where something else is wrong: all is told in one go.
   const top = isRecord(doc.value) ? doc.value : {};
-  const { channels, scan } = cooldownSchema.shape;
+  const { channels, scan, tip } = cooldownSchema.shape;
   const thermometryEntry = thermometrySchema.safeParse(top["thermometry"]).data;
   const context = {
     doc,
@@ -93,6 +94,7 @@ export async function surveyFile(yamlFile: string, options: ReadOptions): Promis
   const excluded = problems.length > 0 ? [] : (excludeSchema.safeParse(top["exclude"]).data ?? []);
   const exclusions = waiting === null ? excluded : renumberExclusions(excluded, found);
   const frames = withExclusions(numbered, exclusions, pixel, doc, problems);
+  problems.push(...tipProblems(tip.safeParse(top["tip"]).data, frames, pixel, doc));
   problems.sort(byPlace(plainText(yamlFile)));
   const named = [yamlPath, ...(thermometry === null ? [] : [thermometry.path]), ...namedFiles(written)];
   const survey = { problems, frames, pixel, notices, doc, waiting: waiting ?? [], named };

@@ -92,7 +92,7 @@ export interface Notice {
 }
 
 /** Codes of the notices that ask the user to look at the input again: what comes of it as it stands is most likely not what was meant. */
-export const WARNINGS: ReadonlySet<string> = new Set(["branch-contrary", "fraction-not-rising"]);
+export const WARNINGS: ReadonlySet<string> = new Set(["branch-contrary", "fraction-not-rising", "tip-below-pixel"]);
 
 /** One thermal run as described by its `cooldown.yaml`, checked, in nm, K and rad. Plain data. */
 export interface Cooldown {

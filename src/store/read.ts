@@ -119,6 +119,12 @@ export function cooldownNames(db: Db): string[] {
     .map((r) => r.name);
 }
 
+/** Those of the analyses that were made without a tip's resolution. */
+export function analysesWithoutTip(db: Db, analyses: Iterable<number>): Set<number> {
+  const without = db.prepare<[number]>("SELECT 1 FROM analysis WHERE id = ? AND tip_resolution_nm IS NULL");
+  return new Set([...analyses].filter((id) => without.get(id) !== undefined));
+}
+
 /** A stored two-state map, still deflated. */
 export function readMap(
   db: Db,

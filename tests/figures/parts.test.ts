@@ -1,7 +1,9 @@
 import * as fc from "fast-check";
 import { describe, expect, test } from "vitest";
+import { apparentWidths } from "../../src/figures/apparent.js";
 import { fromLch, hexOf, lightnessOf, rgbOf } from "../../src/figures/colour.js";
 import { AMPLITUDE_MAP, CYCLIC_PHASE_MAP, HEIGHT_MAP, PHASE_MAP } from "../../src/figures/colour_maps.js";
+import type { Row } from "../../src/figures/rows.js";
 import { commonScale, paint, valuesOf } from "../../src/figures/paint.js";
 import {
   linear,
@@ -146,4 +148,11 @@ describe("colours", () => {
     const pixels = paint(Float32Array.of(Math.PI - 0.1, -Math.PI - 0.1), s);
     expect(pixels.slice(0, 3)).toEqual(pixels.slice(4, 7));
   });
+});
+
+test("apparent widths: median and quartiles of the sound profiles alone", () => {
+  const row = (apparent_width_nm: number | null, flag = ""): Row => ({ apparent_width_nm, flag });
+  const rows = [...[100, 90, 120, 110, 80].map((w) => row(w)), row(500, "poor-fit"), row(null)];
+  expect(apparentWidths(rows)).toEqual({ profiles: 5, medianNm: 100, lowQuartileNm: 90, highQuartileNm: 110 });
+  expect(apparentWidths([row(500, "curved"), row(null)])).toBeNull();
 });

@@ -105,6 +105,8 @@ describe("what is odd about a run is told, and nothing else", () => {
     [0.01, 30, /is the number in nm/],
     [10_000, null, /is the number in nm/],
     [40, 30, /coarser than the tip's resolution of 30 nm/],
+    [10, 1.9, /tip\.resolution_nm of 1\.9 nm is below a fifth of a pixel of 10 × 10 nm: is the number in nm/],
+    [10, 2, /coarser than the tip's resolution of 2 nm/],
     [40, null, null],
     [30, 30, null],
   ])("pixels of %d nm with a tip of %s nm", (nm, tip, message) => {

@@ -257,6 +257,27 @@ c: &c [*b, *b, *b, *b, *b, *b, *b, *b, *b, *b]\nd: &d [*c, *c, *c, *c, *c, *c, *
     expect(found[0]).toMatch(message);
   });
 
+  test("a tip wider than a quarter of the field's shorter side is most likely a slip of units, in every size of frame that can be used", async () => {
+    for (const [name, pages] of [
+      ["ct.tif", 3],
+      ["ca.tif", 3],
+      ["cp.tif", 3],
+      ["wa.tif", 2],
+    ] as const)
+      folder.stack(name, pages, 20, 30);
+    // 30 columns of 10 nm, 20 rows of 12 nm: the shorter side is 240 nm
+    const tip = (nm: number): string => `tip: { resolution_nm: ${nm}, resolution_sd_nm: 1 }\n${STACKS}`;
+    await expect(readCooldown(yaml(tip(60)))).resolves.toMatchObject({ tip: { resolutionNm: 60 } });
+    for (const nm of [60.5, 100_000])
+      expect(await problemsOf(readCooldown(yaml(tip(nm))))).toEqual([
+        expect.stringMatching(
+          new RegExp(
+            `cooldown\\.yaml:\\d+:23: tip\\.resolution_nm is ${nm} nm in a field of 300 × 240 nm; expected at most a quarter of its shorter side, 60 nm \\| most likely a slip of units`,
+          ),
+        ),
+      ]);
+  });
+
   test.each([
     [
       "absolute zero",

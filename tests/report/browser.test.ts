@@ -346,6 +346,34 @@ describe.skipIf(chromium === null)("the report in a browser", () => {
     expect(await page.locator("#now").textContent()).toContain("frame 1, cooling, 151 K");
   });
 
+  test("without a tip's resolution a frame has its apparent widths", async () => {
+    await page.locator("#cooldown").selectOption({ label: "b plain" });
+    const frame = row("SELECT frame FROM temperature WHERE cooldown = 'b plain' AND profiles > 2 LIMIT 1")["frame"];
+    await goTo(Number(frame));
+    const seen = db
+      .prepare<[number], number>(
+        "SELECT apparent_width_nm FROM walls WHERE cooldown = 'b plain' AND frame = ? AND flag = '' ORDER BY 1",
+      )
+      .pluck()
+      .all(Number(frame));
+    const median = (seen[(seen.length - 1) >> 1] + seen[seen.length >> 1]) / 2;
+    const shown = await facts("[aria-label='this frame']");
+    expect(shown["median wall width"]).toBeUndefined();
+    expect(shown["median apparent width"]).toContain(`${median.toFixed(1)} nm (middle half of the profiles`);
+    expect(shown["sound profiles"]).toContain("no tip resolution was given");
+  });
+
+  test("profiles left out are counted one by one, not by the lines that group them", async () => {
+    const count = (where: string): number =>
+      Number(row(`SELECT count(*) AS n FROM walls WHERE cooldown = ? AND ${where}`, `a ${HOSTILE}`)["n"]);
+    const heads = await page.locator("[aria-label='left out, failed, uncertain'] summary").allTextContents();
+    const flagged = count("flag <> ''");
+    expect(flagged).toBeGreaterThan(0);
+    expect(heads).toContain(`Profiles left out of the statistics: ${flagged}`);
+    const limits = count("flag = '' AND width_nm IS NULL");
+    if (limits > 0) expect(heads).toContain(`Widths that are upper limits only: ${limits}`);
+  });
+
   test("marked frames and regions come out as lines that ingest honours and the next page shows", async () => {
     await page.locator("#cooldown").selectOption({ label: "b plain" });
     const reason = `tip "changed": # {here}, \\ ${HOSTILE}`;

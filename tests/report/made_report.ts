@@ -1,4 +1,4 @@
-import { mkdtempSync } from "node:fs";
+import { mkdtempSync, readFileSync, writeFileSync } from "node:fs";
 import { tmpdir } from "node:os";
 import path from "node:path";
 import { analyse } from "../../src/analyse.js";
@@ -20,7 +20,8 @@ export interface MadeReport {
   readonly yaml: readonly [string, string];
 }
 
-/** Two small cooldowns of a hostile name each, their database and their page. The first has walls with fringes. */
+/** Two small cooldowns of a hostile name each, their database and their page. The first has walls with fringes, the second no
+ *  tip's resolution. */
 export async function makeReport(): Promise<MadeReport> {
   const folder = mkdtempSync(path.join(tmpdir(), "coldseam-report-"));
   const common = {
@@ -58,6 +59,8 @@ export async function makeReport(): Promise<MadeReport> {
     ],
   });
   const yaml = [generateStack(walls, path.join(folder, "a")), generateStack(small, path.join(folder, "b"))] as const;
+  const described = readFileSync(yaml[1], "utf8");
+  writeFileSync(yaml[1], described.replace(/^tip:\n(  .*\n)+/m, ""));
   const db = path.join(folder, "lab.sqlite");
   for (const [k, file] of yaml.entries()) await ingestFile(file, db, k);
   const html = path.join(folder, "report.html");

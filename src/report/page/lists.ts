@@ -12,6 +12,8 @@ interface Entry {
   readonly frame: number | null;
   readonly reason: string;
   readonly change?: Partial<State>;
+  /** How many of what is listed the line stands for; one where not given. */
+  readonly count?: number;
 }
 
 /** Everything left out, failed or uncertain, with its reason; each line leads to its frame. */
@@ -35,7 +37,13 @@ export function doubtsSection(context: Context): HTMLElement {
       ],
       [
         "Widths that are upper limits only",
-        profileGroups(c, (r) => (standing(r) === "limit" ? "not told from zero" : null)),
+        profileGroups(c, (r) =>
+          standing(r) === "limit"
+            ? c.info.tipResolutionNm === null
+              ? "no tip resolution given"
+              : "not told from zero"
+            : null,
+        ),
       ],
       [
         "Frames whose domains cannot be told apart",
@@ -51,7 +59,7 @@ export function doubtsSection(context: Context): HTMLElement {
           : h(
               "details",
               { class: "group" },
-              h("summary", {}, `${name}: ${entries.length}`),
+              h("summary", {}, `${name}: ${entries.reduce((n, e) => n + (e.count ?? 1), 0)}`),
               h("ul", { class: "entries" }, ...entries.map((e) => line(context, c, e))),
             ),
       ),
@@ -95,6 +103,7 @@ function profileGroups(c: Cooldown, why: (r: Row) => string | null): Entry[] {
       out.push({
         frame,
         reason: `${reason}: ${countOf(list.length, "profile")}`,
+        count: list.length,
         change: {
           walls: true,
           pinned: { kind: "profile", frame, wall: must(list[0], "wall"), profile: must(list[0], "profile") },

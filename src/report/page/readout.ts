@@ -1,3 +1,4 @@
+import { apparentWidths } from "../../figures/apparent.js";
 import { num, word, type Row } from "../../figures/rows.js";
 import { numberText } from "../../figures/scale.js";
 import {
@@ -10,6 +11,7 @@ import {
   withSd,
   type Context,
 } from "./context.js";
+import type { Cooldown } from "./cooldown.js";
 import { h } from "./dom.js";
 import { pixelAt, valueAt } from "./frames.js";
 
@@ -31,20 +33,7 @@ export function frameReadout(context: Context): HTMLElement {
         ? "not placed"
         : `x ${numberText(drift.xNm, 2)}, y ${withSd(drift.yNm, num(r, "drift_sd_nm"), 2, "nm")}`,
     ]);
-    const median = num(r, "wall_width_median_nm");
-    rows.push([
-      "median wall width",
-      median === null
-        ? (num(r, "unresolved_share") ?? 0) > 0.5
-          ? "none: over half are limits"
-          : "none"
-        : `${withInterval(median, num(r, "wall_width_median_low_nm"), num(r, "wall_width_median_high_nm"), 1)} nm`,
-    ]);
-    const unresolved = num(r, "unresolved_share");
-    rows.push([
-      "sound profiles",
-      `${num(r, "profiles") ?? 0}${unresolved === null ? "" : `, ${numberText(100 * unresolved, 0)} % limits`}`,
-    ]);
+    rows.push(...(c.info.tipResolutionNm === null ? apparentFacts(c, frame) : widthFacts(r)));
     const fringes = num(r, "fringe_share");
     rows.push([
       "fringes on",
@@ -64,6 +53,39 @@ export function frameReadout(context: Context): HTMLElement {
     list.replaceChildren(...rows.flatMap(([k, v]) => [h("dt", {}, k), h("dd", {}, v)]));
   });
   return h("section", { class: "card", "aria-label": "this frame" }, line, list);
+}
+
+function widthFacts(r: Row): [string, string][] {
+  const median = num(r, "wall_width_median_nm");
+  const unresolved = num(r, "unresolved_share");
+  return [
+    [
+      "median wall width",
+      median === null
+        ? (unresolved ?? 0) > 0.5
+          ? "none: over half are limits"
+          : "none"
+        : `${withInterval(median, num(r, "wall_width_median_low_nm"), num(r, "wall_width_median_high_nm"), 1)} nm`,
+    ],
+    [
+      "sound profiles",
+      `${num(r, "profiles") ?? 0}${unresolved === null ? "" : `, ${numberText(100 * unresolved, 0)} % limits`}`,
+    ],
+  ];
+}
+
+/** Without a tip's resolution a width is as seen, the blur in it. */
+function apparentFacts(c: Cooldown, frame: number): [string, string][] {
+  const seen = apparentWidths(c.profilesOf.get(frame) ?? []);
+  return [
+    [
+      "median apparent width",
+      seen === null
+        ? "none"
+        : `${numberText(seen.medianNm, 1)} nm (middle half of the profiles ${numberText(seen.lowQuartileNm, 1)} to ${numberText(seen.highQuartileNm, 1)}), the tip's blur in it`,
+    ],
+    ["sound profiles", `${num(c.frameRow(frame), "profiles") ?? 0}; no tip resolution was given`],
+  ];
 }
 
 function rampText(r: Row): string {

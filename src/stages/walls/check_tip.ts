@@ -6,6 +6,22 @@ import { normalQuantile } from "../../numerics/erf.js";
 /** One-sided normal point that a finding must pass, before the correction for looking at many groups. */
 const LEVEL = 0.001;
 
+/** What the widths of a cooldown are not, for want of a tip's resolution or of a phase. */
+export function missingForWidths(tip: Tip | null, hasPhase: boolean): Notice[] {
+  const notices: Notice[] = [];
+  if (tip === null)
+    notices.push({
+      frame: null,
+      code: "no-tip",
+      message: "no tip.resolution_nm: apparent widths only, the tip's blur is in them",
+    });
+  if (!hasPhase) {
+    const message = "no phase: widths and fractions from the amplitude alone, widths come out a few per cent small";
+    notices.push({ frame: null, code: "no-phase", message });
+  }
+  return notices;
+}
+
 /** Whether walls come out sharper than the stated tip allows. The sharpest wall bounds the tip from above: blur only widens. Groups of
  *  neighbouring profiles are averaged (weights 1/sd²) and compared with the 10–90 width of a blurred step; the stated uncertainty
  *  of the tip counts, and so does the number of groups (Bonferroni). The widths themselves are left as they are. */

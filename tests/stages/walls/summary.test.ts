@@ -2,7 +2,7 @@ import { describe, expect, test } from "vitest";
 import { defaultsOf } from "../../../src/model/settings.js";
 import type { WallProfile } from "../../../src/model/walls.js";
 import { makeRandom } from "../../../src/numerics/random.js";
-import { checkTip, fitWalls, settings, summariseWidths } from "../../../src/stages/walls/index.js";
+import { checkTip, fitWalls, missingForWidths, settings, summariseWidths } from "../../../src/stages/walls/index.js";
 import { makeFrame, mean, straight } from "./made_frame.js";
 
 const s = defaultsOf(settings);
@@ -138,4 +138,17 @@ describe("walls sharper than the stated tip", () => {
     expect(checkTip(walls(30, 80), stated)).toEqual([]);
     expect(checkTip(walls(22, 0), null)).toEqual([]);
   });
+});
+
+test("what widths lack for want of a tip or of a phase is told once each, and nothing where there are both", () => {
+  const told = (tip: boolean, phase: boolean): string[] =>
+    missingForWidths(tip ? { resolutionNm: 30, resolutionSdNm: 1 } : null, phase).map(
+      (n) => `${n.frame} ${n.code}: ${n.message}`,
+    );
+  expect(told(true, true)).toEqual([]);
+  expect(told(false, true)).toEqual([
+    expect.stringMatching(/^null no-tip: no tip\.resolution_nm: apparent widths only/),
+  ]);
+  expect(told(true, false)).toEqual([expect.stringMatching(/^null no-phase: .*amplitude alone.*few per cent small/)]);
+  expect(told(false, false)).toHaveLength(2);
 });
