@@ -87,13 +87,16 @@ async function takeInUntil(w: Watch, until: number, everyMs: number, onTaken: (t
   /** Files that stand as they did a look ago are whole. */
   let standing = "";
   let named: readonly string[] = [];
-  let told = "";
-  const tell = (waiting: readonly Problem[]): void => {
-    const lines = waiting.slice(0, 3).map((p) => `waiting: ${plainText(p.at)}: ${plainText(p.problem)}`);
-    if (waiting.length > 3) lines.push(`waiting: and ${waiting.length - 3} more`);
-    const text = lines.join("\n");
-    if (text !== "" && text !== told) say(text);
-    told = text;
+  let told: ReadonlySet<string> = new Set();
+  /** What is still to come is said once in a run. */
+  const saidToCome = new Set<string>();
+  const tell = (wrong: readonly Problem[], toCome: readonly Problem[] = []): void => {
+    const line = (p: Problem): string => `waiting: ${plainText(p.at)}: ${plainText(p.problem)}`;
+    const lines = [...wrong, ...toCome].map(line).filter((text) => !saidToCome.has(text));
+    if (lines.length > 3) lines.splice(3, Infinity, `waiting: and ${lines.length - 3} more`);
+    for (const text of lines) if (!told.has(text)) say(text);
+    for (const p of toCome) saidToCome.add(line(p));
+    told = new Set(lines);
   };
   for (let first = true; ; first = false) {
     if (!first) await wait(everyMs, undefined, { signal: w.signal });
@@ -106,12 +109,12 @@ async function takeInUntil(w: Watch, until: number, everyMs: number, onTaken: (t
       standing = files;
       const described = survey.cooldown === null ? "" : canonical(description(survey.cooldown));
       if (survey.cooldown !== null && described === done.described) {
-        tell(survey.waiting);
+        tell([], survey.waiting);
         if (stands) done = { described, files };
         continue;
       }
       if (survey.cooldown === null || !stands) {
-        if (survey.cooldown === null && stands) tell([...survey.problems, ...survey.waiting]);
+        if (survey.cooldown === null && stands) tell(survey.problems, survey.waiting);
         continue;
       }
       const taken = await takeIn(w, survey.cooldown.frames.length);

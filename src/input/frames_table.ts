@@ -34,12 +34,19 @@ const MAX_ROWS = 10_000;
  * and column name; rows with a mistake are left out of what is returned.
  * @param name      how the file is called in messages
  * @param fromLog   temperatures come from a log: the column may be missing or empty
+ * @param empty     where a table without rows is told
  */
-export function parseFramesTable(text: string, name: string, problems: Problem[], fromLog = false): TableRow[] {
+export function parseFramesTable(
+  text: string,
+  name: string,
+  problems: Problem[],
+  fromLog = false,
+  empty = problems,
+): TableRow[] {
   const records = parseCsv(text, name, problems);
   if (records === null) return [];
   if (records.length === 0) {
-    problems.push({ at: name, problem: "the table is empty", fix: "begin with the line temperature_K,amplitude" });
+    empty.push({ at: name, problem: "the table is empty", fix: "begin with the line temperature_K,amplitude" });
     return [];
   }
   const [head, ...body] = records;
@@ -57,7 +64,7 @@ export function parseFramesTable(text: string, name: string, problems: Problem[]
   checkHead(columns, `${name}:${head.line}`, problems, fromLog);
   if (problems.length > before) return [];
   if (body.length === 0) {
-    problems.push({ at: name, problem: "a header but no row; expected one row a frame", fix: "add the frames" });
+    empty.push({ at: name, problem: "a header but no row; expected one row a frame", fix: "add the frames" });
   }
   if (body.length > MAX_ROWS) {
     problems.push({ at: name, problem: `${body.length} rows; at most ${MAX_ROWS} frames`, fix: "split the cooldown" });

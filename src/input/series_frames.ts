@@ -1,4 +1,4 @@
-import { readFileSync, statSync } from "node:fs";
+import { existsSync, readFileSync, statSync } from "node:fs";
 import type { Problem } from "../model/errors.js";
 import { countOf, plainText } from "../model/text.js";
 import { parseFramesTable } from "./frames_table.js";
@@ -60,6 +60,8 @@ export interface WrittenSeries {
   readonly stacks: WrittenStacks | null;
   /** Absolute path and content of the frames table. */
   readonly table: { readonly path: string; readonly bytes: Buffer } | null;
+  /** Absolute path of a frames table that is not there yet. */
+  readonly awaited?: string;
 }
 
 export interface SeriesContext {
@@ -70,6 +72,8 @@ export interface SeriesContext {
   readonly problems: Problem[];
   /** Temperatures come from a log. */
   readonly fromLog: boolean;
+  /** Of a run that goes on: tables that are not there yet, or hold no row, are told here and are no problem. */
+  readonly waiting: Problem[] | null;
 }
 
 const MAX_TABLE_BYTES = 16 * 1024 * 1024;
@@ -200,11 +204,13 @@ function tableSeries(written: string, path: readonly Step[], context: SeriesCont
   try {
     bytes = readTextFile(place.path, MAX_TABLE_BYTES);
   } catch (e) {
-    problems.push({ at: name, problem: systemWords(e), fix: `check the name of the table, written at ${at}` });
-    return none;
+    const problem = { at: name, problem: systemWords(e), fix: `check the name of the table, written at ${at}` };
+    const awaited = context.waiting !== null && !existsSync(place.path);
+    (awaited && context.waiting !== null ? context.waiting : problems).push(problem);
+    return awaited ? { ...none, awaited: place.path } : none;
   }
   const before = problems.length;
-  const rows = parseFramesTable(bytes.toString("utf8"), name, problems, context.fromLog);
+  const rows = parseFramesTable(bytes.toString("utf8"), name, problems, context.fromLog, context.waiting ?? problems);
   const frames = rows.map((row): WrittenFrame => {
     const sources: Partial<Record<ImageKey, WrittenSource>> = {};
     const line = `${name}:${row.line}`;

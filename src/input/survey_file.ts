@@ -67,17 +67,18 @@ export async function surveyFile(yamlFile: string, options: ReadOptions): Promis
   const top = isRecord(doc.value) ? doc.value : {};
   const { channels, scan, tip } = cooldownSchema.shape;
   const thermometryEntry = thermometrySchema.safeParse(top["thermometry"]).data;
+  const waiting: Problem[] | null = options.growing === true ? [] : null;
   const context = {
     doc,
     folder,
     allowOutside: options.allowOutside ?? false,
     problems,
     fromLog: top["thermometry"] !== undefined,
+    waiting,
   };
   const thermometry = thermometryEntry === undefined ? null : readThermometry(thermometryEntry, context);
   const entries = seriesEntries(doc);
   const written = entries.map((s) => writtenSeries(s.entry, ["series", s.index], context));
-  const waiting: Problem[] | null = options.growing === true ? [] : null;
   const headers = new HeaderBook(waiting ?? problems, notices);
   const scales = channelScales(channels.safeParse(top["channels"]).data);
   const { fromLog } = context;
@@ -156,6 +157,7 @@ function seriesEntries(doc: YamlDocument): IndexedEntry[] {
 function namedFiles(written: readonly WrittenSeries[]): string[] {
   return written.flatMap((s) => [
     ...(s.table === null ? [] : [s.table.path]),
+    ...(s.awaited === undefined ? [] : [s.awaited]),
     ...(s.stacks?.stacks ?? []).map((stack) => stack.path),
     ...s.frames.flatMap((f) => Object.values(f.sources).map((source) => source.path)),
   ]);

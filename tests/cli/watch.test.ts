@@ -158,6 +158,34 @@ test("rows of a table are taken in as they come; half of a file is waited for; e
   expect(coldseam("ingest", yaml, "--db", db).out).toMatch(/already in .* as analysis 3/);
 });
 
+test("while the sample cools the table of the warming is not there yet, or empty: the cooling is taken in all the same", async () => {
+  const folder = at("warming");
+  mkdirSync(folder);
+  const row = (k: number): string =>
+    `${frames[k]?.info.temperatureK},${CHANNELS.map((c) => `${c}${k}.tif`).join(",")}\n`;
+  const images = (k: number): void => CHANNELS.forEach((c) => write(path.join(folder, `${c}${k}.tif`), c, [k]));
+  const yaml = path.join(folder, "cooldown.yaml");
+  const table = `temperature_K,${CHANNELS.join(",")}\n`;
+  const [c, w] = ["c.csv", "w.csv"].map((name) => path.join(folder, name)) as [string, string];
+  writeFileSync(yaml, `${head}series:\n- { branch: cooling, frames: c.csv }\n- { branch: warming, frames: w.csv }\n`);
+  images(0);
+  writeFileSync(c, table + row(0));
+  const run = new Watching(yaml, "--db", at("warming.sqlite"), "--until", "3");
+  await run.until(/1 frame stored in [^]*waiting: w\.csv: no such file\n/);
+  // Another frame, then the table's head, then its first row.
+  images(1);
+  appendFileSync(c, row(1));
+  await run.until(/2 frames stored in [^]*waiting for more/);
+  writeFileSync(w, table);
+  await run.until(/waiting: w\.csv: a header but no row/);
+  images(3);
+  appendFileSync(w, row(3));
+  expect(await run.ended).toBe(0);
+  expect(run.text).toMatch(/3 frames stored in .*\n {2}frame 2, warming, 150 K/);
+  expect(run.text.match(/waiting: w\.csv: no such file/g)).toHaveLength(1);
+  expect(run.text.match(/a header but no row/g)).toHaveLength(1);
+});
+
 test("pages of a stack whose temperatures are planned; Ctrl-C ends it with a word, and another day it goes on", async () => {
   const folder = at("stack");
   mkdirSync(folder);
