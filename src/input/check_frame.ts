@@ -17,7 +17,7 @@ export interface FrameChecks {
   readonly scales: Readonly<Record<ChannelName, number>>;
   readonly sizes: SizeCheck;
   readonly problems: Problem[];
-  /** Files with a wrong number of pages, which is told once for the whole stack. */
+  /** Files with a wrong number of pages or samples, which is told once for the whole stack. */
   readonly wrongStacks: ReadonlySet<string>;
 }
 
@@ -40,8 +40,10 @@ export async function checkFrame(frame: WrittenFrame, checks: FrameChecks): Prom
       continue;
     }
     const { rows, cols } = h.pages[place.page];
-    if (SIGNALS.includes(image)) shape = { rows, cols };
     checks.sizes.add(s, rows, cols);
+    if (SIGNALS.includes(image)) shape = { rows, cols };
+    // Told with the sizes; such a frame cannot be read.
+    else if (shape !== null && (rows !== shape.rows || cols !== shape.cols)) sound = false;
     places[image] = place;
   }
   const sources = sourcesOf(places, checks.scales);
@@ -74,6 +76,7 @@ function checkPlace(image: ImageKey, s: WrittenSource, h: Headers, checks: Frame
     );
   }
   if (!shape.complex && shape.planes > 1 && s.sample === null) {
+    if (checks.wrongStacks.has(placeKey(s))) return null;
     const where = s.page === null ? "" : page;
     return refuse(
       `which has ${shape.planes} samples a pixel`,

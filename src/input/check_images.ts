@@ -3,8 +3,16 @@ import type { Problem } from "../model/errors.js";
 import { countOf, plainText } from "../model/text.js";
 import { checkFrame, SizeCheck, type CheckedFrame } from "./check_frame.js";
 import { placeKey, type HeaderBook } from "./image_headers.js";
-import { kelvin } from "./schema.js";
-import { framesOfStacks, type WrittenFrame, type WrittenSeries, type WrittenStacks } from "./series_frames.js";
+import { mayBeSamplesOfStack, type PageShape } from "./image_types.js";
+import { kelvin, type ImageKey } from "./schema.js";
+import {
+  framesOfStacks,
+  type WrittenFrame,
+  type WrittenSeries,
+  type WrittenStack,
+  type WrittenStacks,
+} from "./series_frames.js";
+import { withPage } from "./source_path.js";
 
 export interface ImageChecks {
   readonly scales: Readonly<Record<ChannelName, number>>;
@@ -58,12 +66,11 @@ async function checkStacks(
 ): Promise<{ readonly frames: WrittenFrame[]; readonly described: number }> {
   const none = { frames: [], described: 0 };
   const claims: { readonly label: string; readonly temperaturesK: readonly number[] }[] = [];
-  const pages = new Map<string, { readonly label: string; readonly key: string; readonly pages: number }>();
+  const pages = new Map<ImageKey, { readonly stack: WrittenStack; readonly shapes: readonly PageShape[] }>();
   for (const stack of s.stacks) {
     const h = await headers.of(stack);
     if (h === null) continue;
-    const key = placeKey(stack);
-    pages.set(stack.image, { label: stack.written, key, pages: h.pages.length });
+    pages.set(stack.image, { stack, shapes: h.pages });
     const { temperaturesK } = h.claims;
     if (temperaturesK !== null) claims.push({ label: stack.written, temperaturesK });
   }
@@ -103,10 +110,31 @@ async function checkStacks(
   }
   const one = temperatures === timed ? "scan time" : "temperature";
   let usable = temperatures.length;
-  for (const { label, key, pages: found } of pages.values()) {
-    if (found === temperatures.length || wrongStacks.has(key)) continue;
+  const bySample = new Set<ImageKey>();
+  for (const [image, { stack, shapes }] of pages) {
+    const [label, key, found] = [stack.written, placeKey(stack), shapes.length];
+    const { planes, complex } = shapes[0];
+    const several = planes > 1 && !complex && stack.sample === null;
+    if (several && mayBeSamplesOfStack(shapes) && planes === temperatures.length) {
+      bySample.add(image);
+      const message = `${plainText(label)} is one page of ${planes} samples a pixel: read as a stack of ${planes} pages`;
+      notices.push({ frame: null, code: "samples-as-pages", message });
+      continue;
+    }
+    if (wrongStacks.has(key)) continue;
+    if (found === temperatures.length) {
+      if (!several) continue;
+      wrongStacks.add(key);
+      problems.push({
+        at: stack.at,
+        problem: `${image} is "${plainText(label)}", which has ${planes} samples a pixel`,
+        fix: `say which: "${plainText(withPage(label, null))}#:0" is the first of every page`,
+      });
+      continue;
+    }
     const where = temperatures === timed ? "started_at and ended_at" : "temperatures_K";
-    const problem = `${countOf(found, "page")} for ${countOf(temperatures.length, one)}`;
+    const samples = several ? ` of ${planes} samples a pixel` : "";
+    const problem = `${countOf(found, "page")}${samples} for ${countOf(temperatures.length, one)}`;
     if (waiting !== null) {
       usable = Math.min(usable, found);
       const fix = found < temperatures.length ? "wait for its pages" : `add to ${where} (near ${s.at}) what is missing`;
@@ -120,5 +148,5 @@ async function checkStacks(
       fix: `make ${where} (near ${s.at}) one ${temperatures === timed ? "time" : "temperature"} a page, or use a frames table to leave pages out`,
     });
   }
-  return { frames: framesOfStacks(s, temperatures.slice(0, usable)), described: temperatures.length };
+  return { frames: framesOfStacks(s, temperatures.slice(0, usable), bySample), described: temperatures.length };
 }

@@ -6,6 +6,7 @@ import { plainText } from "../model/text.js";
 import { ByteFile, ImageFileError } from "./byte_file.js";
 import { nameParts, type NameParts } from "./file_names.js";
 import { listHdf5 } from "./hdf5.js";
+import { mayBeSamplesOfStack } from "./image_types.js";
 import { closeImages, formatOf, systemWords, withImage } from "./image_file.js";
 
 /** An image file, or one dataset of an HDF5 file, with what its headers and its name say. */
@@ -58,8 +59,9 @@ async function look(path: string, written: string, dataset: string | null): Prom
     path,
     ({ pages, claims }) => ({
       written,
-      pages: pages.length,
-      planes: pages[0]?.planes ?? 1,
+      ...(mayBeSamplesOfStack(pages)
+        ? { pages: pages[0].planes, planes: 1 }
+        : { pages: pages.length, planes: pages[0]?.planes ?? 1 }),
       complex: pages[0]?.complex ?? false,
       ...claims,
       parts: nameParts(written),

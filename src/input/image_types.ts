@@ -14,6 +14,13 @@ export interface PageShape {
   readonly complex: boolean;
 }
 
+/** Whether a file of one page with several numbers a pixel may be a stack: some programs write the images of a stack as the samples of one
+ *  page. Not where they are bytes, as those of a colour picture are. */
+export function mayBeSamplesOfStack(pages: readonly PageShape[]): boolean {
+  const [page] = pages;
+  return pages.length === 1 && page.planes > 1 && !page.complex && !/^u?int8$/.test(page.type);
+}
+
 /** What a file says of itself beyond its pixels; null where it says nothing that can be used. */
 export interface FileClaims {
   readonly pixel: PixelSize | null;

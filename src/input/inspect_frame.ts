@@ -120,8 +120,8 @@ class EndFinder {
 
 function unusable(channel: ChannelName, r: Range): Omit<Problem, "at"> | null {
   if (r.infinite > 0) {
-    const problem = `${channel} with ${countOf(r.infinite, "infinite value")} of ${r.pixels}`;
-    return { problem, fix: "write pixels that were not measured as not-a-number" };
+    const problem = `${channel} with ${countOf(r.infinite, "value")} of ${r.pixels} that ${r.infinite === 1 ? "is" : "are"} infinite in single precision, which ends at 3.4e38`;
+    return { problem, fix: "write pixels that were not measured as not-a-number, and large values in a larger unit" };
   }
   if (channel !== "amplitude") return null;
   if (r.measured === 0) {

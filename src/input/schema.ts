@@ -100,6 +100,8 @@ export type ChannelsEntry = NonNullable<CooldownEntry["channels"]>;
 interface KeyWords {
   readonly expected: string;
   readonly fix: string;
+  /** What to do where the value is no number, if that is something else. */
+  readonly number?: string;
   /** What to do where the key is missing, if that is something else. */
   readonly add?: string;
 }
@@ -198,6 +200,7 @@ export const keyWords: Readonly<Record<string, KeyWords>> = {
   "series[].temperatures_K[]": {
     expected: "a temperature in K above 0 and at most 1000",
     fix: "give it in kelvin (0 °C is 273.15 K)",
+    number: "write a number, such as 165.5; a page whose temperature is not known is left out by a frames table",
   },
   ...Object.fromEntries(
     ["started_at", "ended_at"].flatMap((key) => [

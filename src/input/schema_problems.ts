@@ -46,7 +46,7 @@ export function wrongValue(path: readonly Step[], value: unknown, doc: YamlDocum
   return {
     at: doc.at(path),
     problem: `${name} is ${foundText(value)}; expected ${words?.expected ?? "a map with sample, cooldown, scan and series"}`,
-    fix: value === undefined ? (words?.add ?? fix) : fix,
+    fix: (value === undefined ? words?.add : Number.isFinite(value) ? undefined : words?.number) ?? fix,
   };
 }
 

@@ -180,11 +180,22 @@ function scanTimes(
   return started.map((startedAt, k) => ({ startedAt, endedAt: ended[k] }));
 }
 
-/** One frame a temperature (null: the log of the thermometer has it), from the pages of the stacks in their order. */
-export function framesOfStacks(s: WrittenStacks, temperaturesK: readonly (number | null)[]): WrittenFrame[] {
+/**
+ * One frame a temperature (null: the log of the thermometer has it), from the pages of the stacks in their order.
+ * @param bySample stacks whose images are the samples of one page
+ */
+export function framesOfStacks(
+  s: WrittenStacks,
+  temperaturesK: readonly (number | null)[],
+  bySample: ReadonlySet<ImageKey>,
+): WrittenFrame[] {
   return temperaturesK.map((temperatureK, page): WrittenFrame => {
     const sources: Partial<Record<ImageKey, WrittenSource>> = {};
-    for (const stack of s.stacks) sources[stack.image] = { ...stack, written: withPage(stack.written, page), page };
+    for (const stack of s.stacks) {
+      sources[stack.image] = bySample.has(stack.image)
+        ? { ...stack, written: `${withPage(stack.written, 0)}:${page}`, page: 0, sample: page }
+        : { ...stack, written: withPage(stack.written, page), page };
+    }
     const times = s.times?.[page] ?? { startedAt: null, endedAt: null };
     return { temperatureK, sources, at: s.at, ...times, stageXNm: null, stageYNm: null };
   });

@@ -45,6 +45,16 @@ export function parseYaml(text: string, name: string): YamlDocument {
     const { line, col } = lines.linePos(offset);
     return `${name}:${Math.max(1, line)}:${Math.max(1, col)}`;
   };
+  const tabs = doc.errors.filter((e) => e.code === "TAB_AS_INDENT");
+  if (tabs.length > 0) {
+    // What comes after a tab is read askew: nothing else that is found is a mistake of its own.
+    const more = tabs.length > 1 ? ` (and on ${countOf(tabs.length - 1, "more line", "more lines")})` : "";
+    throw new InputError({
+      at: place(Math.min(...tabs.map((e) => e.pos[0]))),
+      problem: `a tab where the line is indented${more}; YAML takes blanks alone`,
+      fix: "put blanks in place of the tab",
+    });
+  }
   const problems: Problem[] = [...doc.errors, ...doc.warnings].map((e) => ({
     at: place(e.pos[0]),
     problem: firstLine(e.message),

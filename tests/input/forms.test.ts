@@ -1,7 +1,14 @@
 import { copyFileSync, writeFileSync } from "node:fs";
 import { join } from "node:path";
 import { afterEach, beforeEach, describe, expect, test } from "vitest";
-import { describeCooldown, inspectFrame, loadFrame, readCooldown, surveyCooldown } from "../../src/input/index.js";
+import {
+  describeCooldown,
+  draftCooldown,
+  inspectFrame,
+  loadFrame,
+  readCooldown,
+  surveyCooldown,
+} from "../../src/input/index.js";
 import { joinRetrace } from "../../src/input/retrace.js";
 import type { Cooldown, RawFrame } from "../../src/model/cooldown.js";
 import { makeRandom } from "../../src/numerics/random.js";
@@ -104,7 +111,8 @@ describe("channels inside one file", () => {
     expect(c.frames[1]?.sources.amplitude).toMatchObject({ label: "samples-f4.tif#1:2", page: 1, sample: 2 });
     const [a, t] = [(await frame(c, 1)).amplitude, (await frame(c, 1)).topography];
     expect(a.values.data).not.toEqual(t?.values.data);
-    expect(await problemsOf(read(stacks("{ amplitude: samples-f4.tif }")))).toEqual(
+    folder.text("f.csv", "temperature_K,amplitude\n180,samples-f4.tif#0\n170,samples-f4.tif#1\n");
+    expect(await problemsOf(read("series:\n- { branch: cooling, frames: f.csv }\n"))).toEqual(
       [0, 1].map((k) =>
         expect.stringMatching(
           `"samples-f4.tif#${k}", which has 3 samples a pixel \\| say which: "samples-f4.tif#${k}:0"`,
@@ -321,5 +329,95 @@ describe("what is told though nothing stops", () => {
     expect(await told("{ amplitude: a.tif, topography: w.tif }")).toEqual([
       expect.stringMatching(/jumps by whole turns/),
     ]);
+  });
+});
+
+/** A TIFF of one page of 6 × 5 pixels with several samples each, sample k of pixel n being 10 k + n / 4 (whole numbers where of 8 bits). */
+function samplesTiff(name: string, samples: number, planes: "side by side" | "in planes", bits: 8 | 32 = 32): void {
+  const bytes = bits / 8;
+  const data = Buffer.alloc(samples * 30 * bytes);
+  for (let k = 0; k < samples; k++)
+    for (let n = 0; n < 30; n++) {
+      const at = bytes * (planes === "in planes" ? k * 30 + n : n * samples + k);
+      if (bits === 8) data.writeUInt8(10 * k + n, at);
+      else data.writeFloatLE(10 * k + 0.25 * n, at);
+    }
+  const extra: number[] = [];
+  const dataAt = 4096;
+  const strips = planes === "in planes" ? samples : 1;
+  const list = (values: readonly number[]): [number, number] => {
+    if (values.length === 1) return [1, values[0] ?? 0];
+    const at = 1024 + 4 * extra.length;
+    extra.push(...values);
+    return [values.length, at];
+  };
+  const each = data.length / strips;
+  const tags: [number, [number, number]][] = [
+    [256, [1, 5]],
+    [257, [1, 6]],
+    [258, list(Array.from({ length: samples }, () => bits))],
+    [259, [1, 1]],
+    [262, [1, 1]],
+    [273, list(Array.from({ length: strips }, (_, k) => dataAt + k * each))],
+    [277, [1, samples]],
+    [278, [1, 6]],
+    [279, list(Array.from({ length: strips }, () => each))],
+    [284, [1, planes === "in planes" ? 2 : 1]],
+    [339, list(Array.from({ length: samples }, () => (bits === 8 ? 1 : 3)))],
+  ];
+  const file = Buffer.alloc(dataAt + data.length);
+  file.write("II*\0", 0, "latin1");
+  file.writeUInt32LE(8, 4);
+  file.writeUInt16LE(tags.length, 8);
+  tags.forEach(([tag, [count, value]], k) => {
+    const at = 10 + 12 * k;
+    file.writeUInt16LE(tag, at);
+    file.writeUInt16LE(4, at + 2); // all as 32-bit whole numbers
+    file.writeUInt32LE(count, at + 4);
+    file.writeUInt32LE(value, at + 8);
+  });
+  extra.forEach((v, k) => file.writeUInt32LE(v, 1024 + 4 * k));
+  data.copy(file, dataAt);
+  writeFileSync(join(folder.path, name), file);
+}
+
+describe("a stack written as the samples of one page", () => {
+  test("is read as pages, value for value, and said", async () => {
+    samplesTiff("side.tif", 3, "side by side");
+    samplesTiff("planes.tif", 3, "in planes");
+    const c = await read(stacks("{ amplitude: side.tif, topography: planes.tif }", "[180, 170, 160]"));
+    expect(c.notices.map((n) => `${n.code} ${n.message}`)).toEqual([
+      "samples-as-pages planes.tif is one page of 3 samples a pixel: read as a stack of 3 pages",
+      "samples-as-pages side.tif is one page of 3 samples a pixel: read as a stack of 3 pages",
+    ]);
+    for (const k of [0, 1, 2]) {
+      const f = await frame(c, k);
+      const want = Float32Array.from({ length: 30 }, (_, pixel) => 10 * k + 0.25 * pixel);
+      expect(f.amplitude.values.data).toEqual(want);
+      expect(f.topography?.values.data).toEqual(want);
+    }
+    expect(c.frames.map((f) => f.sources.amplitude.label)).toEqual(["side.tif#0:0", "side.tif#0:1", "side.tif#0:2"]);
+    copyFileSync(join(folder.path, "side.tif"), join(folder.path, "amp.tif"));
+    expect((await draftCooldown(folder.path)).files[0]?.text).toMatch(/amplitude: "amp\.tif"\n.*3 temperatures in K/);
+  });
+
+  test("where samples and temperatures differ in number, or it may be a picture, it is said once", async () => {
+    samplesTiff("side.tif", 3, "side by side");
+    samplesTiff("picture.tif", 3, "side by side", 8);
+    fixture("samples-f4.tif");
+    expect(await problemsOf(read(stacks("{ amplitude: side.tif }", "[180, 170]")))).toEqual([
+      expect.stringMatching(/^side\.tif: 1 page of 3 samples a pixel for 2 temperatures \| /),
+    ]);
+    expect(await problemsOf(read(stacks("{ amplitude: picture.tif }", "[180, 170, 160]")))).toEqual([
+      expect.stringMatching(/^picture\.tif: 1 page of 3 samples a pixel for 3 temperatures \| /),
+    ]);
+    expect(await problemsOf(read(stacks("{ amplitude: samples-f4.tif }")))).toEqual([
+      expect.stringMatching(
+        /cooldown\.yaml:\d+:\d+: amplitude is "samples-f4\.tif", which has 3 samples a pixel \| say which: "samples-f4\.tif#:0"/,
+      ),
+    ]);
+    // What the advice says works.
+    const c = await read(stacks("{ amplitude: 'samples-f4.tif#:2' }"));
+    expect(c.frames[1]?.sources.amplitude).toMatchObject({ page: 1, sample: 2 });
   });
 });

@@ -71,7 +71,11 @@ describe("an amplitude that cannot be used stops the frame", () => {
   test.each([
     ["nothing measured", raster(() => NaN), "amplitude without a single measured pixel"],
     ["one value", raster((k) => (k % 5 === 0 ? NaN : 2)), "amplitude with one value, 2, in all 3276 measured pixels"],
-    ["infinite values", raster((k) => (k < 2 ? -Infinity : k)), "amplitude with 2 infinite values of 4096"],
+    [
+      "infinite values",
+      raster((k) => (k < 2 ? -Infinity : k)),
+      "amplitude with 2 values of 4096 that are infinite in single precision, which ends at 3.4e38",
+    ],
   ])("%s", (_, amplitude, message) => {
     const found = problem({ amplitude });
     expect(found).toHaveLength(1);

@@ -2,7 +2,7 @@ import { createHash } from "node:crypto";
 import { readFileSync, symlinkSync } from "node:fs";
 import { join } from "node:path";
 import { afterEach, beforeEach, describe, expect, test } from "vitest";
-import { describeCooldown, loadFrame, readCooldown } from "../../src/input/index.js";
+import { describeCooldown, loadFrame, readCooldown, surveyCooldown } from "../../src/input/index.js";
 import { CooldownFolder, problemsOf } from "./folder.js";
 
 let folder: CooldownFolder;
@@ -344,6 +344,29 @@ c: &c [*b, *b, *b, *b, *b, *b, *b, *b, *b, *b]\nd: &d [*c, *c, *c, *c, *c, *c, *
         "all images of a cooldown need one size (columns × rows): crop them alike, or leave this channel or frame out",
     ]);
     expect(whole.length).toBeGreaterThan(0);
+  });
+
+  test("a frame with one image of another size is told once, and not read", async () => {
+    folder.stack("a.tif", 2);
+    folder.stack("t.tif", 1);
+    folder.stack("small.tif", 1, 4, 5);
+    folder.text("f.csv", "temperature_K,topography,amplitude\n170,t.tif,a.tif#0\n165,small.tif,a.tif#1\n");
+    const survey = await surveyCooldown(yaml("series:\n  - { branch: cooling, frames: f.csv }\n"));
+    expect(survey.problems.map((p) => `${p.at}: ${p.problem}`)).toEqual(["small.tif: 5 × 4 pixels; a.tif#0 has 5 × 6"]);
+    expect(survey.frames.map((f) => f.temperatureK)).toEqual([170]);
+  });
+
+  test("what is no number is not said to be in the wrong unit; of tabs the first is told", async () => {
+    stacks();
+    const found = await problemsOf(readCooldown(yaml(STACKS.replace("[180, 170", "[.nan.0, 1700"))));
+    expect(found).toEqual([
+      expect.stringMatching(/temperatures_K\[0\] is "\.nan\.0"; .* \| write a number, such as 165\.5/),
+      expect.stringMatching(/temperatures_K\[1\] is 1700; .* \| give it in kelvin/),
+    ]);
+    const tabbed = "series:\n\t- branch: cooling\n\t  stacks:\n\t\tamplitude: ca.tif\n\t  temperatures_K: [1, 2]\n";
+    expect(await problemsOf(readCooldown(yaml(tabbed)))).toEqual([
+      expect.stringMatching(/cooldown\.yaml:6:1: a tab where the line is indented.* \| put blanks/),
+    ]);
   });
 
   test("a table: each row's mistakes with line and column name", async () => {
