@@ -1,3 +1,4 @@
+import { existsSync } from "node:fs";
 import os from "node:os";
 import { InputError, UsageError } from "../model/errors.js";
 import type { Analysis } from "../model/analysis.js";
@@ -6,6 +7,7 @@ import { countOf, plainText } from "../model/text.js";
 import { readCooldown, sizeProblems } from "../input/index.js";
 import { settingRecord, settingsWith, type Settings } from "../settings.js";
 import { openForWriting } from "../store/open.js";
+import { removeUnfilled } from "../store/unfilled.js";
 import { contentHash, description, workHash } from "../store/identity.js";
 import { findAnalysis, saveAnalysis } from "../store/save.js";
 import { refuseChangedSources, refuseOtherContent } from "./sources.js";
@@ -60,6 +62,7 @@ export async function ingest(yaml: string | readonly string[], o: IngestOptions)
   const cooldown = await readCooldown(yaml, { allowOutside: o.allowOutside === true });
   const small = sizeProblems(cooldown.frames);
   if (small.length > 0) throw new InputError(small);
+  const isNew = !existsSync(o.db);
   const db = openForWriting(o.db);
   const abort = new AbortController();
   const onInterrupt = (): void => abort.abort();
@@ -94,5 +97,7 @@ export async function ingest(yaml: string | readonly string[], o: IngestOptions)
     process.off("SIGINT", onInterrupt);
     process.off("SIGTERM", onInterrupt);
     db.close();
+    // Failed or stopped: no empty file is left to wonder about.
+    if (isNew) removeUnfilled(o.db);
   }
 }

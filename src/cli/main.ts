@@ -1,5 +1,6 @@
 import { Command, CommanderError, Option } from "commander";
 import { readFileSync } from "node:fs";
+import { InputError } from "../model/errors.js";
 import { databaseProblem } from "../store/problem.js";
 import type { IngestOptions } from "./ingest.js";
 import { sayError } from "./say.js";
@@ -195,7 +196,10 @@ export async function main(argv: readonly string[]): Promise<void> {
   // A closed pipe (`coldseam export … | head`) is the reader's choice, not an error.
   process.stdout.on("error", (e: NodeJS.ErrnoException) => {
     if (e.code === "EPIPE") process.exit(0);
-    throw e;
+    const full = e.code === "ENOSPC" || e.code === "EDQUOT";
+    const problem = `cannot be written: ${full ? "no space left on its disk" : e.message}`;
+    const fix = full ? "free some space, or send it to another disk" : "send it elsewhere, or name a file with --out";
+    process.exit(sayError(new InputError({ at: "the output", problem, fix }, e), false));
   });
   const program = build();
   quiet(program);

@@ -1,10 +1,10 @@
-import { existsSync, rmSync, statSync } from "node:fs";
+import { existsSync, statSync } from "node:fs";
 import path from "node:path";
 import { UsageError } from "../model/errors.js";
 import { countOf, plainText } from "../model/text.js";
 import { mergeInto, openSource, type MergedAnalysis, type MergeSource } from "../store/merge.js";
 import { openForWriting } from "../store/open.js";
-import { cooldownNames } from "../store/read.js";
+import { removeUnfilled } from "../store/unfilled.js";
 import { print, say } from "./say.js";
 
 export interface MergeOptions {
@@ -44,10 +44,9 @@ export async function merge(files: readonly string[], o: MergeOptions): Promise<
     try {
       merged = mergeInto(db, sources);
     } catch (e) {
-      const empty = isNew && cooldownNames(db).length === 0;
       db.close();
       // Nothing was merged: no empty file is left to wonder about.
-      if (empty) rmSync(o.into, { force: true });
+      if (isNew) removeUnfilled(o.into);
       throw e;
     }
     db.close();

@@ -197,8 +197,9 @@ function legendItems(
     const widths = loops.filter((r) => word(r, "cooldown") === name).map(widthText);
     const found = widths.filter((w) => w !== "").join("; ");
     if (several) {
-      items.push({ text: "", sign: sign(c, "cooling"), wide: 16, breaks: true });
-      items.push({ text: found === "" ? name : `${name}: width ${found}`, sign: sign(c, "warming"), wide: 16 });
+      // Both signs are one: where a long name takes the whole line neither is left behind.
+      const both = (x: number, y: number): string => sign(c, "cooling")(x - 12.5, y) + sign(c, "warming")(x + 12.5, y);
+      items.push({ text: found === "" ? name : `${name}: width ${found}`, sign: both, wide: 41, breaks: true });
       if (c === names.length - 1)
         items.push({ text: "filled: cooling, open: warming", sign: () => "", wide: 0, breaks: true });
     } else {

@@ -4,6 +4,7 @@ import path from "node:path";
 import { InputError } from "../model/errors.js";
 import { APPLICATION_ID, migrate, newestVersion, schemaVersion } from "./migrate.js";
 import { databaseProblem, inWords, notSound } from "./problem.js";
+import { removeUnfilled } from "./unfilled.js";
 
 export type Db = Database.Database;
 
@@ -71,7 +72,8 @@ function open(file: string, readonly: boolean): Db {
 }
 
 /** Opens a database for an ingest, making it where there is none; an older schema is migrated after a copy is put beside it. Throws
- *  InputError, before anything is written, where the file is foreign, damaged, newer than this program, or may not be written. */
+ *  InputError, before anything is written, where the file is foreign, damaged, newer than this program, or may not be written; a file
+ *  that it could not make whole is taken away. */
 export function openForWriting(file: string): Db {
   const folder = path.dirname(path.resolve(file));
   if (!existsSync(folder) || !statSync(folder).isDirectory())
@@ -80,21 +82,37 @@ export function openForWriting(file: string): Db {
       problem: `the folder ${folder} does not exist`,
       fix: "make the folder first, or name another file with --db",
     });
+  const isNew = !existsSync(file);
   if (bytesOf(file) > 0) checkSound(file);
-  return inWords(file, () => {
-    const db = new Database(file, { timeout: PATIENCE_MS });
-    try {
-      db.pragma("foreign_keys = ON");
-      if (db.pragma("journal_mode", { simple: true }) !== "wal") db.pragma("journal_mode = WAL");
-      db.pragma("synchronous = FULL");
-      mustBeWritable(db);
-      migrate(db, file);
-      return db;
-    } catch (e) {
-      db.close();
-      throw e;
-    }
-  });
+  try {
+    const db = inWords(file, () => openToWrite(file));
+    // Whoever made this very file may have failed and taken it away (`removeUnfilled`) before it was locked here.
+    if (existsSync(file)) return db;
+    db.close();
+    return inWords(file, () => openToWrite(file));
+  } catch (e) {
+    if (isNew) removeUnfilled(file);
+    throw e;
+  }
+}
+
+function openToWrite(file: string): Db {
+  const db = new Database(file, { timeout: PATIENCE_MS });
+  try {
+    db.pragma("foreign_keys = ON");
+    db.pragma("synchronous = FULL");
+    // A new file gets its tables before it gets a log: where they find no room, all of them can be taken back.
+    if (schemaVersion(db) === 0) migrate(db, file);
+    if (db.pragma("journal_mode", { simple: true }) !== "wal") db.pragma("journal_mode = WAL");
+    mustBeWritable(db);
+    migrate(db, file);
+    // What is in the log goes into the file while there is room: a log without content is taken away at the end, however full the disk.
+    db.pragma("wal_checkpoint(PASSIVE)");
+    return db;
+  } catch (e) {
+    db.close();
+    throw e;
+  }
 }
 
 /** A file that may not be written is found out now, not after an hour of analysis: SQLite opens it without a word, and begins to complain

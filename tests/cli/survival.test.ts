@@ -226,13 +226,48 @@ describe.runIf(MAY_MOUNT)("on a small or write-protected file system of its own"
     expect(full).toBeGreaterThan(1);
   });
 
+  test("a full disk: an ingest that failed leaves no new file and no log, and an old database byte by byte as it was", () => {
+    const kilobytes = Math.ceil(readFileSync(one).length / 1024);
+    const ingest = command("ingest", quoted(yamlB), "--db", "$S/lab.sqlite", "--workers", "1");
+    // No room for the tables, for the tables only, and for a part of the analysis.
+    for (const room of [24, 100, 200]) {
+      const r = inNamespace(`${small(room)} ${ingest} && echo done || ls $S`);
+      expect(r.out, `${room} kB: ${r.err}`).toBe("");
+      expect(r.err).toMatch(/no space left on its disk; the database is as it was\n {2}fix: free some space/);
+    }
+    const old = quoted(one);
+    for (const room of [44, 100]) {
+      const r = inNamespace(
+        `${small(kilobytes + room)} cp ${old} $S/lab.sqlite; ${ingest} && echo done || true; cmp ${old} $S/lab.sqlite && ls $S`,
+      );
+      expect(r.out, `${room} kB: ${r.err}`).toBe("lab.sqlite\n");
+    }
+  });
+
+  test("a full disk under what a command writes: said with what helps, and no part of it stays", () => {
+    const r = inNamespace(
+      `${small(64)} dd if=/dev/zero of=$S/fill bs=1k 2>/dev/null || true
+       ${command("report", "--db", quoted(one), "--out", "$S/r.html")} || ls $S
+       ${command("figure", "loop", "--db", quoted(one), "--out", "$S/f.svg")} || ls $S
+       ${command("export", "walls", "--db", quoted(one), "--out", "$S/w.csv")} || ls $S
+       ${command("export", "walls", "--db", quoted(one))} > $S/w.csv || true`,
+    );
+    expect(r.out).toBe("fill\nfill\nfill\n");
+    for (const name of ["r.html", "f.svg", "w.csv"])
+      expect(r.err).toMatch(
+        new RegExp(`${name}: cannot be written: no space left on its disk\\n {2}fix: free some space`),
+      );
+    expect(r.err).toMatch(/the output: cannot be written: no space left on its disk\n {2}fix: free some space/);
+    expect(r.err).not.toMatch(/ {4}at |folder that exists/);
+  });
+
   test("no room for the scratch files: said in words, nothing stored, nothing left", () => {
     const r = inNamespace(
       `${small(16)} TMPDIR=$S ${command("ingest", quoted(yamlA), "--db", quoted(at("noroom.sqlite")), "--workers", "1")} || echo $? $(ls $S)`,
     );
     expect(r.out).toBe("1\n");
     expect(r.err).toMatch(/small: no space left for the scratch files\n {2}fix: set TMPDIR/);
-    expect(stateOf(at("noroom.sqlite")).analyses).toEqual([]);
+    expect(readdirSync(dir).filter((f) => f.startsWith("noroom"))).toEqual([]);
   });
 
   test("a read-only folder: whatever would write says so at once, whatever reads goes on", () => {

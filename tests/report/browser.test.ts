@@ -284,7 +284,7 @@ describe.skipIf(chromium === null)("the report in a browser", () => {
   test("channels lie over one another, and each changes the picture", async () => {
     await goTo(2);
     const seen = new Set<string>();
-    for (const name of ["Amplitude", "Phase", "Height", "States"]) {
+    for (const name of ["Amplitude", "Phase", "Topography", "States"]) {
       await page.getByRole("button", { name, exact: true }).click();
       await settle();
       seen.add(await pixels());
@@ -372,6 +372,48 @@ describe.skipIf(chromium === null)("the report in a browser", () => {
     expect(heads).toContain(`Profiles left out of the statistics: ${flagged}`);
     const limits = count("flag = '' AND width_nm IS NULL");
     if (limits > 0) expect(heads).toContain(`Widths that are upper limits only: ${limits}`);
+  });
+
+  test("by keyboard a region takes two Enters, one a corner; the panel says so, and nothing is excluded before", async () => {
+    expect(await page.locator("#corrections .hint").textContent()).toMatch(/^Nothing is excluded by hand\./);
+    await goTo(1);
+    await page.getByRole("button", { name: "mark bad" }).click();
+    const panel = page.locator("#inspector");
+    expect(await panel.textContent()).toMatch(/Enter sets one corner, a second the other/);
+    const leaveOut = page.getByRole("button", { name: "leave out this region" });
+    const corners = async (): Promise<string[]> =>
+      panel.locator(".corners input").evaluateAll((list) => list.map((n) => (n as HTMLInputElement).value));
+    await page.locator("canvas").focus();
+    for (let k = 0; k < 3; k++) await page.keyboard.press("Shift+ArrowLeft");
+    await page.keyboard.press("Enter");
+    const first = await corners();
+    expect(first.slice(0, 2).every((v) => v !== "")).toBe(true);
+    expect(first.slice(2)).toEqual(["", ""]);
+    expect(await leaveOut.isDisabled()).toBe(true);
+    expect(await panel.textContent()).toContain("one corner is set; Enter sets the other");
+    for (let k = 0; k < 3; k++) await page.keyboard.press("Shift+ArrowRight");
+    for (let k = 0; k < 2; k++) await page.keyboard.press("Shift+ArrowDown");
+    await page.keyboard.press("Enter");
+    const second = await corners();
+    expect(second.slice(0, 2)).toEqual(first.slice(0, 2));
+    expect(Number(second[2])).toBeGreaterThan(Number(first[0]));
+    expect(Number(second[3])).toBeGreaterThan(Number(first[1]));
+    expect(await leaveOut.isDisabled()).toBe(false);
+  });
+
+  test("on a narrow screen each number of the loops stands on one line", async () => {
+    await page.setViewportSize({ width: 390, height: 844 });
+    await settle();
+    const lines = await page.locator("[aria-label='loops'] td").evaluateAll((cells) =>
+      cells.map((c) => {
+        const range = document.createRange();
+        range.selectNodeContents(c);
+        return new Set([...range.getClientRects()].map((r) => Math.round(r.top))).size;
+      }),
+    );
+    expect(lines.length).toBeGreaterThan(4);
+    expect(Math.max(...lines)).toBe(1);
+    expect(await page.evaluate(() => document.documentElement.scrollWidth)).toBeLessThanOrEqual(390);
   });
 
   test("marked frames and regions come out as lines that ingest honours and the next page shows", async () => {

@@ -4,6 +4,7 @@ import { excludeLines, LONGEST_REASON, reasonLine, regionWithin } from "../exclu
 import { current, frameText, type Context } from "./context.js";
 import { button, h, on } from "./dom.js";
 import { cornerInputs } from "./measure.js";
+import { isPoint } from "./state.js";
 
 /** New corrections of the cooldown that is shown. */
 const added = (context: Context): readonly ExclusionData[] =>
@@ -29,7 +30,7 @@ export function markPanel(context: Context): HTMLElement {
   const what = h("p", { class: "where" });
   const region = (): ExclusionData["regionNm"] => {
     const { region: r, frame } = store.now;
-    if (r === null) return null;
+    if (r === null || isPoint(r)) return null;
     const c = current(context);
     const d = c.drift(frame) ?? { xNm: 0, yNm: 0 };
     const { rows, cols } = c.head(frame);
@@ -63,7 +64,9 @@ export function markPanel(context: Context): HTMLElement {
         r === null
           ? s.region === null
             ? ": drag a rectangle on the map for a region."
-            : ": the region lies outside this frame."
+            : isPoint(s.region)
+              ? ": one corner is set; Enter sets the other."
+              : ": the region lies outside this frame."
           : `: region_nm [${r.join(", ")}] of the frame.`
       }`,
     );
@@ -73,6 +76,11 @@ export function markPanel(context: Context): HTMLElement {
     {},
     h("h2", {}, "Mark as bad"),
     what,
+    h(
+      "p",
+      { class: "hint" },
+      "On the map's keyboard: Shift and the arrow keys move the cross, a first Enter sets one corner, a second the other. Or type both corners (nm).",
+    ),
     inputs.node,
     h("label", { for: "reason", class: "block" }, "Reason"),
     reason,
@@ -114,7 +122,7 @@ export function correctionsSection(context: Context): HTMLElement {
     hint.replaceChildren(
       fresh.length === 0
         ? stored.length === 0
-          ? "Nothing is left out. With “mark bad” a frame or a region can be, with a reason; a domain’s state as wrong from the domain’s panel."
+          ? "Nothing is excluded by hand. With “mark bad” a frame or a region can be, with a reason; a domain’s state as wrong from the domain’s panel."
           : `${countOf(stored.length, "entry", "entries")} of cooldown.yaml, honoured by this analysis.`
         : `${countOf(fresh.length, "new entry", "new entries")}, kept only in this open page: put these lines into cooldown.yaml in the place of its exclude: entry, then ingest again.`,
     );

@@ -3,7 +3,7 @@ import { current, picked, type Context } from "./context.js";
 import type { FrameMap } from "./map.js";
 import { pickAt } from "./pick.js";
 import type { Spine } from "./spine.js";
-import type { Point } from "./state.js";
+import { isPoint, type Point } from "./state.js";
 import { zoomed } from "./view.js";
 
 export const KEYS: readonly (readonly [string, string])[] = [
@@ -76,8 +76,7 @@ function place(map: FrameMap, at: Point): void {
   }
   const key = tool === "measure" ? "line" : "region";
   const set = store.now[key];
-  const open = set !== null && set[0].xNm === set[1].xNm && set[0].yNm === set[1].yNm;
-  store.set({ [key]: open ? [set[0], at] : [at, at] });
+  store.set({ [key]: set !== null && isPoint(set) ? [set[0], at] : [at, at] });
 }
 
 function nextProfile(context: Context, by: number): void {

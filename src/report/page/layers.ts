@@ -35,7 +35,7 @@ function choice<T extends string>(
 /** What the map shows: channels over one another, walls, both branches, and how large. */
 export function layerControls(context: Context): HTMLElement {
   const { store } = context;
-  const names = ALL.map((s) => [s, s === "topography" ? "Height" : SHOWN[s]] as const);
+  const names = ALL.map((s) => [s, SHOWN[s]] as const);
   const base = choice("Show", names, (v: Shown) => store.set({ base: v }));
   const over = on(
     h(

@@ -115,7 +115,7 @@ function profileGroups(c: Cooldown, why: (r: Row) => string | null): Entry[] {
 
 /** The loop of each cycle in numbers. */
 export function loopsSection(context: Context): HTMLElement {
-  const body = h("div", { class: "scroll" });
+  const body = h("div", { class: "scroll loops" });
   const cell = (r: Row, name: string, unit: string, digits: number): string => {
     const v = num(r, `${name}_K`);
     return v === null

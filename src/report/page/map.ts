@@ -7,7 +7,7 @@ import type { Frame } from "./frames.js";
 import { takeMapInput } from "./map_input.js";
 import { outlineOf } from "./outline.js";
 import { drawRaster, drawVeil } from "./raster_layer.js";
-import type { MapView, Point } from "./state.js";
+import { isPoint, type MapView, type Point } from "./state.js";
 import { fittedView, frameRect, Projection, wholeField, type Rect } from "./view.js";
 import { drawWalls, widthRange } from "./wall_layer.js";
 
@@ -302,7 +302,8 @@ export class FrameMap {
       }
     }
     if (region !== null && tool === "mark") {
-      const [[x0, y0], [x1, y1]] = [spot(region[0]), spot(region[1])];
+      // until its second corner is set the rectangle follows the cross
+      const [[x0, y0], [x1, y1]] = [spot(region[0]), spot(isPoint(region) ? (at ?? region[1]) : region[1])];
       this.twice(() => pen.strokeRect(Math.min(x0, x1), Math.min(y0, y1), Math.abs(x1 - x0), Math.abs(y1 - y0)), 2);
     }
     if (at !== null && document.activeElement === this.canvas) {

@@ -7,7 +7,7 @@ import { current, currentFrames, SHOWN, type Context } from "./context.js";
 import { figureNode, figureTable, h, numbersOf, on } from "./dom.js";
 import { pixelAt, valueAt, type Frame } from "./frames.js";
 import { PX_PER_PT } from "./spine.js";
-import type { Point, Store } from "./state.js";
+import { isPoint, type Point, type Store } from "./state.js";
 
 /** Distance between two places and the stored image along the line between them. */
 export function measurePanel(context: Context): HTMLElement {
@@ -33,6 +33,11 @@ export function measurePanel(context: Context): HTMLElement {
     inputs.set(s.line);
     if (s.line === null) {
       says.replaceChildren("");
+      cut.replaceChildren();
+      return;
+    }
+    if (isPoint(s.line)) {
+      says.replaceChildren("A is set; Enter sets B.");
       cut.replaceChildren();
       return;
     }
@@ -94,7 +99,8 @@ export function cornerInputs(
       ...names.flatMap((n, k) => [h("span", {}, n), fields[2 * k], fields[2 * k + 1], h("span", {}, "nm")]),
     ),
     set: (v) => {
-      const values = v === null ? ["", "", "", ""] : v.flatMap((q) => [q.xNm.toFixed(1), q.yNm.toFixed(1)]);
+      const texts = (q: Point): string[] => [q.xNm.toFixed(1), q.yNm.toFixed(1)];
+      const values = v === null ? ["", "", "", ""] : [...texts(v[0]), ...(isPoint(v) ? ["", ""] : texts(v[1]))];
       fields.forEach((f, k) => {
         if (document.activeElement !== f) f.value = values[k];
       });

@@ -84,3 +84,6 @@ export class Store {
 }
 
 export const samePick = (a: Picked | null, b: Picked | null): boolean => JSON.stringify(a) === JSON.stringify(b);
+
+/** Of two places the first alone is set: the second stands on it still. */
+export const isPoint = ([a, b]: readonly [Point, Point]): boolean => a.xNm === b.xNm && a.yNm === b.yNm;
