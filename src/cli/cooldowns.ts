@@ -4,6 +4,7 @@ import { openForReading } from "../store/open.js";
 import { readCooldowns } from "../store/read.js";
 import type { SettingRecord } from "../model/analysis.js";
 import { print } from "./say.js";
+import { emptyText } from "./select.js";
 
 /** `coldseam cooldowns`: what is in a database. */
 export function cooldowns(o: { db: string; format: string }): void {
@@ -20,8 +21,8 @@ export function cooldowns(o: { db: string; format: string }): void {
       );
       return;
     }
-    if (rows.length === 0)
-      print("no cooldown in this database yet; `coldseam ingest COOLDOWN.yaml --db FILE` adds one\n");
+    const empty = emptyText(db);
+    if (empty !== null) print(`${empty}\n`);
     for (const r of rows) {
       print(`${plainText(r.cooldown)}\n`);
       print(

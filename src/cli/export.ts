@@ -5,7 +5,7 @@ import { UsageError } from "../model/errors.js";
 import { readCells } from "../store/read.js";
 import { TABLES, tableNamed } from "../tables/columns.js";
 import { formatTable, type Format } from "../tables/format.js";
-import { openSelected, type SelectOptions } from "./select.js";
+import { emptyText, openSelected, type SelectOptions } from "./select.js";
 import { say } from "./say.js";
 import { closestWord, plainText } from "../model/text.js";
 import { writeFile } from "./write_file.js";
@@ -28,6 +28,8 @@ export async function exportTable(name: string, o: ExportOptions): Promise<void>
   }
   const { db, selection } = openSelected(o);
   try {
+    const empty = emptyText(db);
+    if (empty !== null) say(`note: ${empty}`);
     const text = formatTable(table, readCells(db, table, selection), o.format);
     if (o.out === undefined) {
       // What is in names must not steer a terminal; a pipe and a file get every byte.
@@ -43,7 +45,8 @@ export async function exportTable(name: string, o: ExportOptions): Promise<void>
   }
 }
 
-function* forTerminal(parts: Iterable<string>): Generator<string> {
+/** Every control character but line ends and tabs made visible. */
+export function* forTerminal(parts: Iterable<string>): Generator<string> {
   for (const part of parts) yield part.replace(/[^\n\t]+/g, plainText);
 }
 

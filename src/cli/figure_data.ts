@@ -21,6 +21,7 @@ import { hasPictures, readDriftPairs, readFringeBins, readProfileBins } from "..
 import { readTable, type Selection } from "../store/read.js";
 import { TABLES, type ExportedTable } from "../tables/columns.js";
 import { gatherFrames } from "./figure_frames.js";
+import { noCooldown } from "./select.js";
 
 /** Which part of a cooldown a figure shows; what is null or empty is chosen. */
 export interface FigureChoice {
@@ -89,12 +90,7 @@ const TABLE: Readonly<Record<string, ExportedTable>> = Object.fromEntries(TABLES
 
 const rowsOf = (db: Db, table: string, sel: Selection): Row[] => [...readTable(db, TABLE[table], sel)];
 
-const nothing = (db: Db): InputError =>
-  new InputError({
-    at: db.name,
-    problem: "no cooldown for this choice",
-    fix: "`coldseam cooldowns --db FILE` says what is in the file",
-  });
+const nothing = (db: Db): InputError => noCooldown(db, db.name);
 
 type One = Selection & { readonly analysis: number };
 

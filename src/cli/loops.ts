@@ -4,7 +4,7 @@ import { readTable, type Row, type Selection } from "../store/read.js";
 import { tableNamed, type ExportedTable } from "../tables/columns.js";
 import { loopPlot, type LoopPoint } from "./loop_plot.js";
 import { intervalText, fixed } from "./summary.js";
-import { openSelected, type SelectOptions } from "./select.js";
+import { emptyText, openSelected, type SelectOptions } from "./select.js";
 import { print } from "./say.js";
 
 const num = (r: Row, k: string): number | null => (typeof r[k] === "number" ? r[k] : null);
@@ -32,7 +32,8 @@ export function loops(o: SelectOptions & { format: string }): void {
       print(`${JSON.stringify(rows, null, 2)}\n`);
       return;
     }
-    if (rows.length === 0) print("no loop for this choice; `coldseam cooldowns --db FILE` says what is in the file\n");
+    if (rows.length === 0)
+      print(`${emptyText(db) ?? "no loop for this choice; `coldseam cooldowns --db FILE` says what is in the file"}\n`);
     const framesOf = rows.length === 0 ? new Map<string, Row[]>() : framesByCycle(db, selection);
     for (const r of rows) {
       const cycle = framesOf.get(keyOf(r)) ?? [];

@@ -1,6 +1,6 @@
 import { readFileSync } from "node:fs";
 import path from "node:path";
-import { InputError, UsageError } from "../model/errors.js";
+import { UsageError } from "../model/errors.js";
 import { countOf, plainText } from "../model/text.js";
 import { reportDocument, type PageParts } from "../report/document.js";
 import { packReport } from "../report/pack.js";
@@ -8,7 +8,7 @@ import { programVersion } from "./main.js";
 import { makeProgress } from "./progress.js";
 import { gatherReport } from "./report_data.js";
 import { say } from "./say.js";
-import { openSelected, type SelectOptions } from "./select.js";
+import { noCooldown, openSelected, type SelectOptions } from "./select.js";
 import { writeFile } from "./write_file.js";
 
 export interface ReportCommandOptions extends SelectOptions {
@@ -28,12 +28,7 @@ export async function report(o: ReportCommandOptions): Promise<number> {
     const data = await gatherReport(db, selection, programVersion(), (done, of) =>
       progress.update("reading the store", done, of),
     ).finally(() => progress.stop());
-    if (data.cooldowns.length === 0)
-      throw new InputError({
-        at: o.db,
-        problem: "no cooldown for this choice",
-        fix: "`coldseam cooldowns --db FILE` says what is in the file",
-      });
+    if (data.cooldowns.length === 0) throw noCooldown(db, o.db);
     const size = writeFile(o.out, reportDocument(packReport(data), pageParts()));
     const frames = data.cooldowns.reduce((n, c) => n + c.frames.length, 0);
     say(

@@ -45,3 +45,20 @@ export function openSelected(o: SelectOptions): { db: Db; selection: Selection }
     throw e;
   }
 }
+
+const ADD_ONE = "`coldseam ingest COOLDOWN.yaml --db FILE` adds one";
+
+/** What a list says that has nothing to show because the database holds nothing; null where it holds a cooldown. */
+export const emptyText = (db: Db): string | null =>
+  cooldownNames(db).length === 0 ? `no cooldown in this database yet; ${ADD_ONE}` : null;
+
+/** The error of what cannot be made for want of any cooldown: none chosen, or none there. */
+export function noCooldown(db: Db, file: string): InputError {
+  return emptyText(db) === null
+    ? new InputError({
+        at: file,
+        problem: "no cooldown for this choice",
+        fix: "`coldseam cooldowns --db FILE` says what is in the file",
+      })
+    : new InputError({ at: file, problem: "this database holds no cooldown yet", fix: ADD_ONE });
+}

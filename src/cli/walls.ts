@@ -3,7 +3,7 @@ import { plainText } from "../model/text.js";
 import type { Db } from "../store/open.js";
 import { analysesWithoutTip, readTable, type Row } from "../store/read.js";
 import { tableNamed, type ExportedTable } from "../tables/columns.js";
-import { openSelected, type SelectOptions } from "./select.js";
+import { emptyText, openSelected, type SelectOptions } from "./select.js";
 import { print } from "./say.js";
 
 const show = (v: unknown, digits: number, width: number): string =>
@@ -77,7 +77,8 @@ export function walls(o: SelectOptions & { format: string }): void {
       );
       return;
     }
-    if (rows.length === 0) print("no walls for this choice: every frame is of one state, or undecided\n");
+    if (rows.length === 0)
+      print(`${emptyText(db) ?? "no walls for this choice: every frame is of one state, or undecided"}\n`);
     let last = "";
     for (const r of rows) {
       const head = `${plainText(String(r["cooldown"]))}, cycle ${String(r["cycle"])}, ${String(r["branch"])}`;

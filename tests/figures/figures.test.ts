@@ -240,6 +240,26 @@ describe("numbers read back from the drawing equal the rows", () => {
     expect(svg).toContain("kv14-run2: width 9.5 K");
   });
 
+  test("loop: however long the names, the signs stand on the line of their words", () => {
+    const names = ["kv14-run1", `kv14-${"very-".repeat(12)}long`, `kv15-${"quite-".repeat(8)}long`];
+    const frames = names.flatMap((cooldown) => LOOP_FRAMES.map((r) => ({ ...r, cooldown })));
+    const svg = svgDocument(loopFigure({ frames, loops: names.map((cooldown) => loopRow({ cooldown })) }, o));
+    const key = /<g class="legend">.*?<\/g>/s.exec(svg)?.[0] ?? "";
+    const words = Array.from(
+      key.matchAll(/<text[^>]* y="([\d.]+)"[^>]*>([^<]*)</g),
+      (m) => [Number(m[1]), m[2]] as const,
+    );
+    // a sign's dash, drawn level
+    const signs = elementsWith(key, "d").flatMap((e) => {
+      const level = /^M[\d.]+ ([\d.]+)L[\d.]+ \1$/.exec(e["d"]);
+      return level === null ? [] : [Number(level[1])];
+    });
+    const named = words.filter(([, text]) => /^kv1[45]/.test(text));
+    expect(named).toHaveLength(3);
+    expect(signs).toHaveLength(6);
+    for (const [y] of named) expect(signs.filter((sign) => y - sign > 0 && y - sign < 5)).toHaveLength(2);
+  });
+
   test("widths: medians with intervals, a dot a resolved profile, an arrow a limit, none for flagged ones, the tip", () => {
     const svg = svgDocument(widthsFigure({ frames: LOOP_FRAMES, walls: WALLS }, o));
     const medians = elementsWith(svg, "data-median-nm");
