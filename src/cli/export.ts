@@ -6,8 +6,8 @@ import { readCells } from "../store/read.js";
 import { TABLES, tableNamed } from "../tables/columns.js";
 import { formatTable, type Format } from "../tables/format.js";
 import { emptyText, openSelected, type SelectOptions } from "./select.js";
-import { say } from "./say.js";
-import { closestWord, plainText } from "../model/text.js";
+import { say, shownText } from "./say.js";
+import { closestWord } from "../model/text.js";
 import { writeFile } from "./write_file.js";
 
 interface ExportOptions extends SelectOptions {
@@ -45,9 +45,8 @@ export async function exportTable(name: string, o: ExportOptions): Promise<void>
   }
 }
 
-/** Every control character but line ends and tabs made visible. */
 export function* forTerminal(parts: Iterable<string>): Generator<string> {
-  for (const part of parts) yield part.replace(/[^\n\t]+/g, plainText);
+  for (const part of parts) yield shownText(part);
 }
 
 /** A table may only replace a table: a slip in `--out` must not cost a database or an image. */

@@ -7,9 +7,13 @@ export function say(line: string): void {
   process.stderr.write(`${line}\n`);
 }
 
+/** On a terminal no character of a name may steer it; a pipe and a file get every byte. */
 export function print(text: string): void {
-  process.stdout.write(text);
+  process.stdout.write(process.stdout.isTTY ? shownText(text) : text);
 }
+
+/** Every control character but line ends and tabs made visible. */
+export const shownText = (text: string): string => text.replace(/[^\n\t]+/g, plainText);
 
 /** Prints an error in the one shape that all have, and returns the exit code that goes with it. */
 export function sayError(e: unknown, verbose: boolean): number {

@@ -1,3 +1,4 @@
+import { spawnSync } from "node:child_process";
 import { existsSync, mkdtempSync, rmSync } from "node:fs";
 import { tmpdir } from "node:os";
 import path from "node:path";
@@ -5,7 +6,7 @@ import { afterAll, beforeAll, expect, test } from "vitest";
 import { forTerminal } from "../../src/cli/export.js";
 import { sampleAnalysis } from "../store/sample_analysis.js";
 import { madeDatabase } from "./made.js";
-import { coldseam } from "./program.js";
+import { coldseam, TOP } from "./program.js";
 
 let dir: string;
 let empty: string;
@@ -55,4 +56,18 @@ test("what is in names reaches a pipe and a file as it is, and steers no termina
     expect(shown).toContain("\\x1b[31m");
     expect(shown.split("\n")).toHaveLength(out.split("\n").length);
   }
+});
+
+const MAY_SCRIPT = spawnSync("script", ["-qec", "true", "/dev/null"]).status === 0;
+
+test.runIf(MAY_SCRIPT)("on a terminal of its own no command lets a name steer it", () => {
+  const entry = path.join(TOP, "scripts/coldseam.mjs");
+  for (const command of ["loops", "walls", "cooldowns", "export temperature"])
+    for (const form of command === "export temperature" ? ["csv", "json"] : ["text", "json"]) {
+      const line = `'${process.execPath}' '${entry}' ${command} --format ${form} --db '${full}'`;
+      const { stdout, status } = spawnSync("script", ["-qec", line, "/dev/null"], { encoding: "utf8" });
+      expect(status, line).toBe(0);
+      expect(stdout, line).toContain("red");
+      expect(stdout, line).not.toMatch(/[^\P{Cc}\r\n\t]/u);
+    }
 });
