@@ -132,6 +132,8 @@ async function analyseWith(
     ),
   );
 
+  // Of a frame that the user leaves out nothing else is said.
+  const leftOut = (frame: number): boolean => frames[frame].excluded !== undefined;
   const results = measured.map((m, k): FrameResult => {
     const levels = track.levels[k] as FrameLevels;
     const own = fringes.filter((t) => t.frame === k);
@@ -176,7 +178,7 @@ async function analyseWith(
     frames: results,
     domains,
     loops,
-    notices,
+    notices: notices.filter((n) => n.frame === null || n.code === "excluded-frame" || !leftOut(n.frame)),
     driftPairs,
   };
 }

@@ -2,6 +2,7 @@ import type { Notice } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
 import { countOf, plainText } from "../model/text.js";
 import { describeCooldown, inspectFrame, loadFrame, sizeProblems, surveyCooldown } from "../input/index.js";
+import { command } from "./called.js";
 import { print, say } from "./say.js";
 import { noticeWord } from "./summary.js";
 
@@ -30,7 +31,7 @@ export async function check(yaml: readonly string[], o: CheckOptions): Promise<v
     say(`${noticeWord(n.code)}: ${n.frame === null ? "" : `frame ${n.frame}: `}${plainText(n.message)}`);
   if (problems.length > 0) throw new InputError(problems);
   print(
-    `ready: ${frames.length} frames read, ${notices.length === 0 ? "nothing to remark" : countOf(notices.length, "remark")}\n`,
+    `ready: ${countOf(frames.length, "frame")} read, ${notices.length === 0 ? "nothing to remark" : countOf(notices.length, "remark")}\n`,
   );
-  print(`next: coldseam ingest ${yaml.map(plainText).join(" ")} --db FILE.sqlite\n`);
+  print(`next: ${command("ingest", ...yaml, "--db", "FILE.sqlite")}\n`);
 }

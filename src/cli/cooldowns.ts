@@ -1,4 +1,4 @@
-import { plainText } from "../model/text.js";
+import { countOf, plainText, rangeOf } from "../model/text.js";
 import { defaultDifferences } from "../settings.js";
 import { openForReading } from "../store/open.js";
 import { readCooldowns } from "../store/read.js";
@@ -26,11 +26,11 @@ export function cooldowns(o: { db: string; format: string }): void {
     for (const r of rows) {
       print(`${plainText(r.cooldown)}\n`);
       print(
-        `  sample ${plainText(r.sample)}, region ${plainText(r.region ?? "not named")}; ${r.frames} frames, ${r.cycles} cycle${r.cycles === 1 ? "" : "s"}, ` +
-          `${r.lowest_temperature_K} to ${r.highest_temperature_K} K\n`,
+        `  sample ${plainText(r.sample)}, region ${plainText(r.region ?? "not named")}; ${countOf(r.frames, "frame")}, ${countOf(r.cycles, "cycle")}, ` +
+          `${rangeOf(r.lowest_temperature_K, r.highest_temperature_K, "K")}\n`,
       );
       print(
-        `  analysis ${r.analysis}${r.analyses > 1 ? ` (newest of ${r.analyses})` : ""}, ${r.made_at.slice(0, 16).replace("T", " ")} UTC, coldseam ${r.program_version}, ${r.notices} notes\n`,
+        `  analysis ${r.analysis}${r.analyses > 1 ? ` (newest of ${r.analyses})` : ""}, ${r.made_at.slice(0, 16).replace("T", " ")} UTC, coldseam ${r.program_version}, ${countOf(r.notices, "note")}\n`,
       );
       const changed = defaultDifferences(JSON.parse(r.settings_json) as SettingRecord);
       if (changed.length > 0) print(`  settings changed: ${changed.join(", ")}\n`);

@@ -3,6 +3,7 @@ import { join } from "node:path";
 import { InputError } from "../model/errors.js";
 import { countOf, plainText } from "../model/text.js";
 import { draftCooldown } from "../input/index.js";
+import { command } from "./called.js";
 import { print } from "./say.js";
 
 /** `coldseam draft`: writes cooldown.yaml and its tables into the folder; never over a file that is there. */
@@ -15,7 +16,7 @@ export async function draft(folder: string): Promise<void> {
       there.map((p) => ({
         at: plainText(p),
         problem: "is there already, and is not written over",
-        fix: "move it away, or go on with it: coldseam check",
+        fix: `move it away, or go on with it: ${command("check", paths[0] ?? p)}`,
       })),
     );
   }
@@ -34,5 +35,5 @@ export async function draft(folder: string): Promise<void> {
   if (d.unplaced > 0)
     print(`not placed: ${countOf(d.unplaced, "file")}, listed with the reason at the end of ${yaml}\n`);
   if (d.toFill > 0) print(`to fill in: ${countOf(d.toFill, "place")} marked FILL in ${yaml}\n`);
-  print(`next: ${d.toFill > 0 ? `edit ${yaml}, then ` : ""}coldseam check ${yaml}\n`);
+  print(`next: ${d.toFill > 0 ? `edit ${yaml}, then ` : ""}${command("check", paths[0] ?? "")}\n`);
 }

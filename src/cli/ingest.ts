@@ -10,6 +10,7 @@ import { openForWriting } from "../store/open.js";
 import { removeUnfilled } from "../store/unfilled.js";
 import { contentHash, description, workHash } from "../store/identity.js";
 import { findAnalysis, saveAnalysis } from "../store/save.js";
+import { command } from "./called.js";
 import { refuseChangedSources, refuseOtherContent } from "./sources.js";
 import { loopText, sayNotices } from "./summary.js";
 import { programVersion } from "./main.js";
@@ -87,11 +88,12 @@ export async function ingest(yaml: string | readonly string[], o: IngestOptions)
     await refuseChangedSources(cooldown);
     const saved = saveAnalysis(db, analysis, new Date());
     print(
-      `${plainText(cooldown.cooldown)}: ${analysis.frames.length} frames stored in ${o.db} as analysis ${saved.id}\n`,
+      `${plainText(cooldown.cooldown)}: ${countOf(analysis.frames.length, "frame")} stored in ${o.db} as analysis ${saved.id}\n`,
     );
     print(loopText(analysis));
     sayNotices(analysis.notices);
-    say(`next: coldseam loops --db ${o.db}    coldseam walls --db ${o.db}    coldseam export temperature --db ${o.db}`);
+    const next = [["loops"], ["walls"], ["export", "temperature"]].map((words) => command(...words, "--db", o.db));
+    say(`next: ${next.join("    ")}`);
     return saved.id;
   } finally {
     process.off("SIGINT", onInterrupt);

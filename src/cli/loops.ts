@@ -3,7 +3,7 @@ import type { Db } from "../store/open.js";
 import { readTable, type Row, type Selection } from "../store/read.js";
 import { tableNamed, type ExportedTable } from "../tables/columns.js";
 import { loopPlot, type LoopPoint } from "./loop_plot.js";
-import { intervalText, fixed } from "./summary.js";
+import { fixed, intervalText, noHalf } from "./summary.js";
 import { emptyText, openSelected, type SelectOptions } from "./select.js";
 import { print } from "./say.js";
 
@@ -37,15 +37,16 @@ export function loops(o: SelectOptions & { format: string }): void {
     const framesOf = rows.length === 0 ? new Map<string, Row[]>() : framesByCycle(db, selection);
     for (const r of rows) {
       const cycle = framesOf.get(keyOf(r)) ?? [];
+      const none = noHalf(cycle.map((f) => ({ branch: String(f["branch"]), fraction: num(f, "metallic_fraction") })));
       print(`${plainText(String(r["cooldown"]))}  cycle ${String(r["cycle"])}  (analysis ${String(r["analysis"])})\n`);
       print(
-        `  half temperature, cooling  ${intervalText(num(r, "cooling_half_K"), num(r, "cooling_half_low_K"), num(r, "cooling_half_high_K"), "K", 2)}\n`,
+        `  half temperature, cooling  ${intervalText(num(r, "cooling_half_K"), num(r, "cooling_half_low_K"), num(r, "cooling_half_high_K"), none.cooling, 2)}\n`,
       );
       print(
-        `  half temperature, warming  ${intervalText(num(r, "warming_half_K"), num(r, "warming_half_low_K"), num(r, "warming_half_high_K"), "K", 2)}\n`,
+        `  half temperature, warming  ${intervalText(num(r, "warming_half_K"), num(r, "warming_half_low_K"), num(r, "warming_half_high_K"), none.warming, 2)}\n`,
       );
       print(
-        `  loop width                 ${intervalText(num(r, "width_K"), num(r, "width_low_K"), num(r, "width_high_K"), "K", 2)}\n`,
+        `  loop width                 ${intervalText(num(r, "width_K"), num(r, "width_low_K"), num(r, "width_high_K"), none.width, 2)}\n`,
       );
       const area = num(r, "area_K");
       print(`  loop area                  ${area === null ? "none" : `${area.toFixed(2)} K`}\n`);

@@ -5,6 +5,7 @@ import { countOf, plainText } from "../model/text.js";
 import { mergeInto, openSource, type MergedAnalysis, type MergeSource } from "../store/merge.js";
 import { openForWriting } from "../store/open.js";
 import { removeUnfilled } from "../store/unfilled.js";
+import { command } from "./called.js";
 import { print, say } from "./say.js";
 
 export interface MergeOptions {
@@ -55,7 +56,7 @@ export async function merge(files: readonly string[], o: MergeOptions): Promise<
       `${o.into}: ${countOf(added.length, "analysis", "analyses")} added, ${merged.length - added.length} there already\n`,
     );
     for (const m of merged) print(line(m));
-    say(`next: coldseam cooldowns --db ${o.into}    coldseam verify --db ${o.into}`);
+    say(`next: ${command("cooldowns", "--db", o.into)}    ${command("verify", "--db", o.into)}`);
   } finally {
     for (const s of sources) s.close();
   }

@@ -1,4 +1,5 @@
 import cliProgress from "cli-progress";
+import { countOf } from "../model/text.js";
 
 export interface Progress {
   update(stage: string, done: number, total: number): void;
@@ -9,7 +10,7 @@ export interface Progress {
 export function makeProgress(title: string, frames: number): Progress {
   if (process.stderr.isTTY === true) {
     const bar = new cliProgress.SingleBar({
-      format: `${title} [{bar}] {framesDone}/${frames} frames  {eta_formatted} left  {stage}`,
+      format: `${title} [{bar}] {framesDone}/${countOf(frames, "frame")}  {eta_formatted} left  {stage}`,
       stream: process.stderr,
       hideCursor: true,
       clearOnComplete: true,

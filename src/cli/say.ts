@@ -1,6 +1,7 @@
 import pc from "picocolors";
 import { InputError, UsageError } from "../model/errors.js";
 import { plainText } from "../model/text.js";
+import { programCall } from "./called.js";
 
 /** Words for people go to standard error, results to standard output. */
 export function say(line: string): void {
@@ -15,13 +16,16 @@ export function print(text: string): void {
 /** Every control character but line ends and tabs made visible. */
 export const shownText = (text: string): string => text.replace(/[^\n\t]+/g, plainText);
 
+/** Advice with its commands written as this program was called. */
+const asCalled = (fix: string): string => plainText(fix).replaceAll("`coldseam ", () => `\`${programCall()} `);
+
 /** Prints an error in the one shape that all have, and returns the exit code that goes with it. */
 export function sayError(e: unknown, verbose: boolean): number {
   const red = pc.createColors(process.stderr.isTTY === true).red;
   if (e instanceof InputError) {
     for (const p of e.problems) {
       say(`${red("coldseam")}: ${plainText(p.at)}: ${plainText(p.problem)}`);
-      say(`  fix: ${plainText(p.fix)}`);
+      say(`  fix: ${asCalled(p.fix)}`);
     }
     if (e.problems.length > 1) say(`${e.problems.length} problems; nothing was written`);
     if (verbose && e.stack !== undefined) say(e.stack);
@@ -29,7 +33,7 @@ export function sayError(e: unknown, verbose: boolean): number {
   }
   if (e instanceof UsageError) {
     say(`${red("coldseam")}: ${plainText(e.message)}`);
-    say(`  fix: ${plainText(e.fix)}`);
+    say(`  fix: ${asCalled(e.fix)}`);
     return 2;
   }
   if (e instanceof Error && e.name === "AbortError") {

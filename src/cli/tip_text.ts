@@ -1,5 +1,6 @@
 import type { Cooldown, FrameInfo } from "../model/cooldown.js";
 import { plainText } from "../model/text.js";
+import { command } from "./called.js";
 import type { CutLine, Place, TipChannel, TipMeasured, TipModel, TipSearch, Width } from "../stages/tip/index.js";
 
 /** What was measured. */
@@ -165,7 +166,7 @@ export function searchText(s: TipSubject, search: TipSearch): string {
     `  #     from/nm       to/nm  what      FWHM / nm  95%below  c/n  remarks\n${lines.join("\n")}\n` +
     "`<`: upper limit, a particle's own size is in it; `!`: the width is in doubt\n" +
     together +
-    `measure one: coldseam tip ${plainText(s.yaml)} --frame ${s.info.frame} --channel ${s.channel} ` +
+    `measure one: ${command("tip", s.yaml)} --frame ${s.info.frame} --channel ${s.channel} ` +
     `--from ${place(best.line.from)} --to ${place(best.line.to)}\n` +
     (t === null ? "" : `\ntip:\n  resolution_nm: ${t.nm.toFixed(1)}\n  resolution_sd_nm: ${t.sdNm.toFixed(1)}\n`)
   );

@@ -202,7 +202,9 @@ function soFar(a: Analysis): string {
   const { fraction } = result;
   const found =
     fraction === null
-      ? "undecided"
+      ? info.excluded === undefined
+        ? "undecided"
+        : "left out"
       : `metallic fraction ${fixed(fraction.value, 3)} (${fixed(fraction.low, 3)} to ${fixed(fraction.high, 3)})`;
   const cycles = [...new Set(a.cooldown.frames.map((f) => f.cycle))];
   const plots = cycles.map((cycle) => {

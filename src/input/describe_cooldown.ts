@@ -1,5 +1,5 @@
 import { CHANNELS, type Cooldown, type FrameInfo } from "../model/cooldown.js";
-import { countOf, plainText } from "../model/text.js";
+import { countOf, plainText, rangeOf } from "../model/text.js";
 
 /** What was found in a cooldown, in plain lines for a person; names from outside cannot steer the terminal. */
 export function describeCooldown(c: Cooldown): string[] {
@@ -11,7 +11,7 @@ export function describeCooldown(c: Cooldown): string[] {
     const [first, last] = [run[0], run[run.length - 1]];
     const kelvin = (f: FrameInfo): number => Number(f.temperatureK.toFixed(3));
     lines.push(
-      `  cycle ${first.cycle}, ${first.branch}: ${countOf(run.length, "frame")}, ${kelvin(first)} to ${kelvin(last)} K`,
+      `  cycle ${first.cycle}, ${first.branch}: ${countOf(run.length, "frame")}, ${rangeOf(kelvin(first), kelvin(last), "K")}`,
     );
   }
   lines.push(`  channels: ${channelText(c)}`);

@@ -56,3 +56,7 @@ function editDistance(a: string, b: string): number {
 
 /** `1 frame`, `3 frames`. */
 export const countOf = (n: number, word: string, plural = `${word}s`): string => `${n} ${n === 1 ? word : plural}`;
+
+/** `180 to 140 K`; `152 K` where both ends are one. */
+export const rangeOf = (first: number, last: number, unit: string): string =>
+  first === last ? `${first} ${unit}` : `${first} to ${last} ${unit}`;

@@ -31,7 +31,8 @@ export function inserter(db: Db, table: string): (row: Record<string, Value>) =>
 const bit = (b: boolean): number => (b ? 1 : 0);
 
 /** Why a number of this frame is missing or doubtful, as short words separated by blanks. */
-function frameFlag(r: FrameResult): string {
+function frameFlag(info: FrameInfo, r: FrameResult): string {
+  if (info.excluded !== undefined) return "left-out";
   const words: string[] = [];
   if (r.verdict === "undecided") words.push("undecided");
   if (r.drift.xNm === null) words.push("not-placed");
@@ -67,7 +68,7 @@ function frameRow(id: number, info: FrameInfo, r: FrameResult): Record<string, V
     wall_width_median_high_nm: r.widths.medianHighNm,
     unresolved_share: r.widths.unresolvedShare,
     fringe_share: r.fringeShare,
-    flag: frameFlag(r),
+    flag: frameFlag(info, r),
     usable_pixels: r.usablePixels,
     debris_pixels: r.debrisPixels,
     scar_pixels: r.scarPixels,

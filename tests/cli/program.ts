@@ -11,10 +11,11 @@ export interface Ended {
   readonly err: string;
 }
 
-/** Runs the program as a user does, in a process of its own. */
+/** Runs the program as a user does, in a process of its own. Commands that it prints are written as if it were installed. */
 export function coldseam(...args: string[]): Ended {
   const r = spawnSync(process.execPath, [ENTRY, ...args], { encoding: "utf8", cwd: TOP, maxBuffer: 1 << 28 });
-  return { code: r.status, out: r.stdout, err: r.stderr };
+  const installed = (text: string): string => text.replaceAll("node scripts/coldseam.mjs ", "coldseam ");
+  return { code: r.status, out: installed(r.stdout), err: installed(r.stderr) };
 }
 
 /** Starts the program and sends it a signal once `when` has been seen on its standard error. */

@@ -122,3 +122,32 @@ test("a cooldown that never leaves one state does not say which", async () => {
   expect(rows("walls")).toEqual([]);
   expect(rows("domains")).toEqual([]);
 });
+
+test("a frame that is left out is said once, and flagged as that", async () => {
+  const { rows, notices } = await run("left-out", {}, (y) => `${y}exclude:\n- { frame: 2, reason: tip changed }\n`);
+  expect(rows("temperature").map((r) => r["flag"])).toEqual(["", "", "left-out", "", "", "", "", ""]);
+  expect(notices.filter((n) => /left out|no pixel was measured|could not be placed|one level/.test(n))).toEqual([
+    expect.stringMatching(/left out: tip changed$/),
+  ]);
+});
+
+test("both branches in one series are warned of; kept apart they are not", async () => {
+  const T = [144, 148, 152, 156, 160, 164];
+  const spec = defaultSpec({
+    ...SMALL,
+    seed: 7,
+    cooldown: "joined",
+    series: [
+      { branch: "cooling", temperaturesK: [...T].reverse() },
+      { branch: "warming", temperaturesK: T.map((t) => t + 1) },
+    ],
+  });
+  const cooldown = await readCooldown(generateStack(spec, path.join(dir, "joined")));
+  const frames = cooldown.frames.map((f) => ({ ...f, series: 0, branch: "cooling" as const }));
+  const warned: string[] = [];
+  for (const c of [cooldown, { ...cooldown, frames }]) {
+    const a = await analyse(c, { settings: settingsWith(), programVersion: "test", workers: 0 });
+    warned.push(a.notices.flatMap((n) => (n.code === "fraction-not-rising" ? [n.message] : [])).join());
+  }
+  expect(warned).toEqual(["", expect.stringMatching(/along cooling: .* K, .* are both branches in one series\?$/)]);
+});
