@@ -142,7 +142,7 @@ function noticesOf(
       frame: levels[k].frame,
       code: "contrast-inconsistent",
       message:
-        "shows two levels whose contrast does not belong to the states of the other frames; they were not taken for states",
+        "shows two levels whose contrast does not belong to the states of the other frames: those that the other frames predict were taken instead, where they fit",
     });
   }
   if (contrastKnown) {
