@@ -1,11 +1,8 @@
 import { mkdtempSync, rmSync } from "node:fs";
 import { tmpdir } from "node:os";
 import path from "node:path";
-import { inflateSync } from "node:zlib";
 import { analyse } from "../analyse.js";
-import { generateStack, readTruth, simulateCooldown, type CooldownSpec, type CooldownTruth } from "../demo/index.js";
-import type { Analysis } from "../model/analysis.js";
-import { NO_STATE } from "../model/signal.js";
+import { generateStack, readTruth, type CooldownSpec, type CooldownTruth } from "../demo/index.js";
 import { readCooldown } from "../input/index.js";
 import { settingsWith } from "../settings.js";
 import { openForWriting, type Db } from "../store/open.js";
@@ -33,7 +30,7 @@ export async function runOnce(
       const truth = readTruth(path.dirname(yaml));
       inspect?.(db, truth);
       return scoreCooldown(db, truth, {
-        fractions: mappedFractions(spec, analysis),
+        fractions: truth.frames.map((f) => f.metallicFraction),
         events: scoreEvents(spec, analysis, settings),
       });
     } finally {
@@ -42,22 +39,4 @@ export async function runOnce(
   } finally {
     rmSync(dir, { recursive: true, force: true });
   }
-}
-
-/** True metallic fraction of each frame over the pixels that the program gave a state: its own choice of what is debris then has no part in
- *  the error. Null where it gave none. */
-function mappedFractions(spec: CooldownSpec, analysis: Analysis): (number | null)[] {
-  const cooldown = simulateCooldown(spec);
-  return analysis.frames.map((f, k) => {
-    const map = inflateSync(f.map.deflated);
-    const { states } = cooldown.frame(k).truth;
-    let mapped = 0;
-    let metallic = 0;
-    for (let i = 0; i < map.length; i++) {
-      if (map[i] === NO_STATE) continue;
-      mapped++;
-      if (states[i] === 1) metallic++;
-    }
-    return mapped === 0 ? null : metallic / mapped;
-  });
 }

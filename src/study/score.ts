@@ -16,7 +16,7 @@ export interface Score {
   /** Error of each axis in pixels of that axis, with the claimed sd in pixels; the reference frame left out. */
   readonly driftPx: readonly Estimate[];
   readonly framesNotPlaced: number;
-  /** Against the truth over the pixels that the program gave a state. */
+  /** Against the truth of the measured field, what lies under debris included. */
   readonly fraction: readonly Estimate[];
   /** The same of frames of both states only: theirs is an interval, that of one state a limit. */
   readonly mixedFraction: readonly Estimate[];
@@ -71,7 +71,7 @@ const withSd = (found: number | null, truth: number, sd: number | null, scale: n
 
 /** What only the simulator knows, or only the analysis in memory. */
 export interface Beside {
-  /** True metallic fractions over the pixels that were given a state, one a frame. */
+  /** True metallic fractions of the whole measured field, what lies under debris included, one a frame. */
   readonly fractions: readonly (number | null)[];
   readonly events: EventScore;
 }

@@ -38,6 +38,8 @@ export interface FractionInput {
   readonly rowWalkSd: number;
   readonly rowWhiteSd: number;
   readonly perLogGain: number;
+  /** Areas of the spots that hide the sample (debris, scars), pixels. */
+  readonly hiddenPx: readonly number[];
 }
 
 /** Metallic fraction of the usable pixels of a frame with both states, with its 95 % interval for this field of view.
@@ -47,7 +49,8 @@ export interface FractionInput {
  *  that the area changes by −(σ²/2)∮κ ds = −πσ² (components − holes) whatever the sizes: that is put back, with ∮κ ds/2π counted on the
  *  2 × 2 neighbourhoods inside the frame (corners of +¼ and −¼ turn; Gray 1971), so that open contours count with what they turn.
  *  Variance: threshold × dA/du; pixel noise along the contours; what is left of the row gains; the curvature's correction; sub-pixel
- *  errors. dA/du = ∫ ds/|∇u| is summed over a band about ½ (co-area formula). The interval says nothing of other fields. */
+ *  errors; what debris and scars hide. dA/du = ∫ ds/|∇u| is summed over a band about ½ (co-area formula). The interval holds the fraction of the whole
+ *  measured field, hidden spots included, and says nothing of other fields. */
 export function mixedFraction(f: FractionInput): { value: number; low: number; high: number } {
   const { rows, cols, pixel, states, u } = f;
   const pixelArea = pixel.xNm * pixel.yNm;
@@ -98,9 +101,17 @@ export function mixedFraction(f: FractionInput): { value: number; low: number; h
   const subpixel2 = crossed * (WHOLE_PIXEL_SD * pixelArea) ** 2;
   const lengthNm = slope2 > 0 ? (slope1 * slope1) / slope2 : 0;
   const place = lengthNm * PLACE_ERROR * f.blurSigmaNm;
-  const sd = Math.sqrt(threshold ** 2 + noise2 + rows2 + curvatureSd ** 2 + subpixel2 + place ** 2) / area;
   const value = clamp(covered / usable + curvature / area);
+  const seen2 = (threshold ** 2 + noise2 + rows2 + curvatureSd ** 2 + subpixel2 + place ** 2) / area ** 2;
+  const sd = Math.sqrt(seen2 + hiddenVariance(f.hiddenPx, usable, value));
   return { value, low: clamp(value - Z95 * sd), high: clamp(value + Z95 * sd) };
+}
+
+/** What lies under a spot is all of one state or all of the other, with the chances of the rest of the field: spots are no larger than
+ *  domains. Every spot adds (its share of the field)²·f(1 − f). */
+function hiddenVariance(hiddenPx: readonly number[], usable: number, fraction: number): number {
+  const field = hiddenPx.reduce((a, b) => a + b, usable);
+  return hiddenPx.reduce((a, b) => a + (b / field) ** 2, 0) * fraction * (1 - fraction);
 }
 
 const clamp = (v: number): number => Math.min(1, Math.max(0, v));

@@ -131,8 +131,39 @@ export function mapStates(
     rowWalkSd: fit.rowWalkSd,
     rowWhiteSd: fit.rowWhiteSd,
     perLogGain: curve.perLogGain,
+    hiddenPx: spotSizes(z.usable, rows, cols),
   });
   return result({ ...levels, verdict: "mixed" }, fraction);
+}
+
+/** Sizes in pixels of the connected spots that hide the sample in rows that were scanned: debris and scars. */
+function spotSizes(usable: Uint8Array, rows: number, cols: number): number[] {
+  const left = new Uint8Array(rows * cols);
+  for (let i = 0; i < rows; i++) {
+    const row = usable.subarray(i * cols, (i + 1) * cols);
+    if (row.includes(1)) for (let j = 0; j < cols; j++) left[i * cols + j] = 1 - row[j];
+  }
+  const sizes: number[] = [];
+  const stack: number[] = [];
+  const take = (q: number): void => {
+    if (left[q] === 0) return;
+    left[q] = 0;
+    stack.push(q);
+  };
+  for (let start = 0; start < left.length; start++) {
+    take(start);
+    let size = 0;
+    for (let p = stack.pop(); p !== undefined; p = stack.pop()) {
+      size++;
+      const j = p % cols;
+      if (j > 0) take(p - 1);
+      if (j + 1 < cols) take(p + 1);
+      if (p >= cols) take(p - cols);
+      if (p + cols < rows * cols) take(p + cols);
+    }
+    if (size > 0) sizes.push(size);
+  }
+  return sizes;
 }
 
 /** What is left of each row's own gain: what cleaning could not tell, less what the pixels of known state have told since. */
