@@ -1,21 +1,11 @@
 import type { Row } from "../figures/rows.js";
 import type { ChannelName } from "../model/cooldown.js";
+import type { Preview } from "../model/pictures.js";
 
 /* What the page holds of each cooldown, as plain data: rows of the exported tables and what figures need, all of it read from the store. */
 
-/** One channel of a frame made small, as it is stored: lossless WebP, the code in every colour, alpha 0 where nothing was measured. */
-export interface PreviewData {
-  readonly channel: ChannelName;
-  readonly rows: number;
-  readonly cols: number;
-  /** Pixels of the frame that a pixel of the preview stands for. */
-  readonly stepX: number;
-  readonly stepY: number;
-  /** What the codes 0 and 255 stand for. */
-  readonly low: number;
-  readonly high: number;
-  readonly image: Uint8Array;
-}
+/** One channel of a frame made small, as it is stored. */
+export type PreviewData = Preview;
 
 /** A traced wall; points interleaved x, y in nm of the frame, no drift added. */
 export interface WallData {
