@@ -64,63 +64,68 @@ export function nearestSource(source: Uint8Array, rows: number, cols: number, pi
   return out;
 }
 
-/** Distance in nm from each pixel of `from` (0 or 1) to the contour u = level between labels 0 and 1; Infinity where there is none, and
- *  for all other pixels. It goes to the nearest pixel of the own label that touches the other, and on from there by that
- *  pixel's own sub-pixel distance (value over slope): to the pixel alone it would be short by up to half a pixel, more so for walls
- *  across the grid than along it.
- *  @param u a smooth map, the labels being u > level (255: no label) */
-export function distanceToContour(
+/** Distance in nm from each pixel of either state to the contour that bounds it: u = `levels[0]` for state 0, which lies below it, and
+ *  u = `levels[1]` for state 1, above; Infinity where there is none, and for pixels of no state. It goes to the point of the contour
+ *  that lies beside the nearest pixel that a contour passes (value over slope, along the slope): to the pixel itself it would be wrong by
+ *  up to half a pixel.
+ *  @param u a smooth map
+ *  @param states 0 where u ≤ levels[0], 1 where u > levels[1], 2 between them, 255 where nothing was measured */
+export function distanceToContours(
   u: Float32Array,
-  level: number,
-  labels: Uint8Array,
-  from: 0 | 1,
+  states: Uint8Array,
+  levels: readonly [number, number],
   rows: number,
   cols: number,
   pixel: PixelSize,
 ): Float32Array {
-  const edge = new Uint8Array(rows * cols);
+  const n = rows * cols;
+  const edge = new Uint8Array(n);
+  // from the middle of an edge pixel to its contour
+  const toX = new Float32Array(n);
+  const toY = new Float32Array(n);
+  const most = 0.5 * (pixel.xNm + pixel.yNm);
   let any = false;
-  const other = 1 - from;
-  for (let i = 0; i < rows; i++) {
-    for (let j = 0; j < cols; j++) {
-      const p = i * cols + j;
-      if (labels[p] !== from) continue;
-      if (
-        (j + 1 < cols && labels[p + 1] === other) ||
-        (j > 0 && labels[p - 1] === other) ||
-        (i + 1 < rows && labels[p + cols] === other) ||
-        (i > 0 && labels[p - cols] === other)
-      ) {
-        edge[p] = 1;
-        any = true;
-      }
+  for (let i = 0, p = 0; i < rows; i++) {
+    for (let j = 0; j < cols; j++, p++) {
+      const k = states[p];
+      if (k > 1) continue;
+      const left = j > 0 ? states[p - 1] : 255;
+      const right = j + 1 < cols ? states[p + 1] : 255;
+      const above = i > 0 ? states[p - cols] : 255;
+      const below = i + 1 < rows ? states[p + cols] : 255;
+      if (same(left, k) && same(right, k) && same(above, k) && same(below, k)) continue;
+      edge[p] = 1;
+      any = true;
+      const gx = slope(u, p, left === 255 ? 0 : -1, right === 255 ? 0 : 1) / pixel.xNm;
+      const gy = slope(u, p, above === 255 ? 0 : -cols, below === 255 ? 0 : cols) / pixel.yNm;
+      const g2 = gx * gx + gy * gy;
+      if (!(g2 > 0)) continue;
+      const g = Math.sqrt(g2);
+      const step = Math.max(-most, Math.min(most, (levels[k] - u[p]) / g)) / g;
+      toX[p] = step * gx;
+      toY[p] = step * gy;
     }
   }
-  const out = new Float32Array(rows * cols).fill(Infinity);
+  const out = new Float32Array(n).fill(Infinity);
   if (!any) return out;
-  const half = 0.25 * (pixel.xNm + pixel.yNm);
   const nearest = nearestSource(edge, rows, cols, pixel);
-  const depth = new Float32Array(rows * cols);
-  for (let p = 0; p < depth.length; p++) {
-    if (edge[p] === 0) continue;
-    const gx = slope(u, labels, p, p % cols > 0 ? -1 : 0, p % cols < cols - 1 ? 1 : 0) / pixel.xNm;
-    const gy = slope(u, labels, p, p >= cols ? -cols : 0, p + cols < depth.length ? cols : 0) / pixel.yNm;
-    const g = Math.sqrt(gx * gx + gy * gy);
-    depth[p] = g > 0 ? Math.min(2 * half, Math.abs(u[p] - level) / g) : half;
-  }
-  for (let p = 0; p < out.length; p++) {
-    if (labels[p] !== from) continue;
-    const q = nearest[p];
-    const dx = ((p % cols) - (q % cols)) * pixel.xNm;
-    const dy = (Math.floor(p / cols) - Math.floor(q / cols)) * pixel.yNm;
-    out[p] = Math.sqrt(dx * dx + dy * dy) + depth[q];
+  for (let i = 0, p = 0; i < rows; i++) {
+    for (let j = 0; j < cols; j++, p++) {
+      if (states[p] > 1) continue;
+      const q = nearest[p];
+      const row = Math.floor(q / cols);
+      const dx = (q - row * cols - j) * pixel.xNm + toX[q];
+      const dy = (row - i) * pixel.yNm + toY[q];
+      out[p] = Math.sqrt(dx * dx + dy * dy);
+    }
   }
   return out;
 }
 
-/** Difference a pixel, central where both neighbours have a label. */
-function slope(u: Float32Array, labels: Uint8Array, p: number, back: number, forth: number): number {
-  const a = back !== 0 && labels[p + back] <= 1 ? 1 : 0;
-  const b = forth !== 0 && labels[p + forth] <= 1 ? 1 : 0;
-  return a + b === 0 ? 0 : (u[p + b * forth] - u[p + a * back]) / (a + b);
+const same = (state: number, own: number): boolean => state === own || state === 255;
+
+/** Difference a pixel between the neighbours at these steps; 0 is no neighbour. */
+function slope(u: Float32Array, p: number, back: number, forth: number): number {
+  const n = (back === 0 ? 0 : 1) + (forth === 0 ? 0 : 1);
+  return n === 0 ? 0 : (u[p + forth] - u[p + back]) / n;
 }

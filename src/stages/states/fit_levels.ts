@@ -1,10 +1,12 @@
 import type { Tip } from "../../model/cooldown.js";
 import type { CleanFrame } from "../../model/signal.js";
+import { seeSignal } from "./cells.js";
 import { fitOneState } from "./fit_one_state.js";
 import { fitTwoStates } from "./fit_two_states.js";
 import type { LevelFit } from "./level_fit.js";
 import { noCorrection, readPixels } from "./pixels.js";
 import type { StatesSettings } from "./settings.js";
+import { smoothingOf } from "./smooth_signal.js";
 import { emptyFit } from "./summarise_fit.js";
 
 /** Frames with fewer usable pixels tell nothing. */
@@ -22,6 +24,7 @@ const LEAST_PIXELS = 200;
 export function fitLevels(clean: CleanFrame, debris: Uint8Array | null, tip: Tip | null, s: StatesSettings): LevelFit {
   const raw = readPixels(clean, debris);
   if (raw.count < LEAST_PIXELS) return emptyFit(clean.frame, raw);
+  const seen = seeSignal(raw, smoothingOf(raw, tip));
   const before = noCorrection(raw.rows);
-  return fitTwoStates(clean.frame, raw, raw, before, tip, s) ?? fitOneState(clean.frame, raw, tip, s);
+  return fitTwoStates(clean.frame, raw, seen, before, tip, s) ?? fitOneState(clean.frame, seen, tip, s);
 }

@@ -1,49 +1,58 @@
 import type { Tip } from "../../model/cooldown.js";
-import type { ComplexValue, NoiseCovariance } from "../../model/signal.js";
-import { smoothed, smoothingOf } from "./smooth_signal.js";
+import type { ComplexValue } from "../../model/signal.js";
+import { levelsOfCells, type Levels } from "./cell_levels.js";
+import { seeSignal, type SeenSignal } from "./cells.js";
 import { fitTwoStates } from "./fit_two_states.js";
 import type { LevelFit, StateEstimate } from "./level_fit.js";
-import { noiseCorrelation, noiseCovariance, pixelsPerIndependent, sdAlong } from "./noise.js";
-import { mainPixels } from "./one_state.js";
-import { correctPixels, noCorrection, type Pixels } from "./pixels.js";
-import { levelsOf } from "./pure.js";
+import { pixelsPerIndependent, sdAlong } from "./noise.js";
+import { mainCells } from "./one_state.js";
+import { correctPixels, noCorrection } from "./pixels.js";
+import type { PureCells } from "./pure.js";
 import { refineRows, type RowRefinement } from "./refine_rows.js";
+import { firstLimits, limitsOf, residualsOf, type Residuals } from "./residuals.js";
 import type { StatesSettings } from "./settings.js";
+import { smoothingOf } from "./smooth_signal.js";
 import { differenceNoise } from "./split.js";
 import { commonPart } from "./summarise_fit.js";
 
-const ROUNDS = 2;
-
-/** One state and its rows; what is unlike it is left out. Two states after all, where they show once the rows are corrected. */
-export function fitOneState(frame: number, raw: Pixels, tip: Tip | null, s: StatesSettings): LevelFit {
-  const by = smoothingOf(raw, tip);
-  const noise0 = differenceNoise(raw);
+/** One state and its rows; what is unlike it is left out. Two states after all, where they show once the rows are corrected.
+ *  @param raw the frame as it was cleaned */
+export function fitOneState(frame: number, raw: SeenSignal, tip: Tip | null, s: StatesSettings): LevelFit {
+  const by = smoothingOf(raw.z, tip);
+  const noise0 = differenceNoise(raw.z);
   const leastSd = Math.max(noise0.re, noise0.im, 1e-30) / Math.sqrt(4 * Math.PI * by.xPx * by.yPx);
-  let z = raw;
-  let correction = noCorrection(raw.rows);
-  let rows: RowRefinement | null = null;
-  let pure = mainPixels(raw.re, raw.im, raw, leastSd);
-  let noise: NoiseCovariance = { rr: 0, ri: 0, ii: 0 };
-  let level: ComplexValue = { re: 0, im: 0 };
-  let correlation = { x: 0, y: 0 };
-  for (let round = 0; round < ROUNDS; round++) {
-    const smooth = smoothed(z, by);
-    pure = mainPixels(smooth.re, smooth.im, z, leastSd);
-    [level] = levelsOf(z, pure, null, Infinity);
-    noise = noiseCovariance(z, pure, 0, [level, level]);
-    const clip2 = 16 * (noise.rr + noise.ii);
-    [level] = levelsOf(z, pure, [level, level], clip2);
-    if (!s.refineRows || round === ROUNDS - 1) break;
-    correlation = noiseCorrelation(z, pure, [level, level], clip2);
-    rows = refineRows(z, pure, [level, level], [noise, noise], correction, pixelsPerIndependent(correlation.x, 0));
-    correction = rows.correction;
-    z = correctPixels(raw, correction);
-    if (round === 0) {
-      // a small minority may have hidden behind the rows
-      const again = fitTwoStates(frame, raw, z, correction, tip, s);
-      if (again !== null) return again;
-    }
-  }
+  const white2 = noise0.re ** 2 + noise0.im ** 2;
+  const before = noCorrection(raw.z.rows);
+  let pure = mainCells(raw, leastSd);
+  let found = mainLevel(raw, pure, white2);
+  if (!s.refineRows) return oneStateFit(frame, raw, pure, found);
+  const { noise, correlation } = found;
+  const rows = refineRows(raw.z, pure, found.levels, noise, before, pixelsPerIndependent(correlation.x, 0));
+  const seen = seeSignal(correctPixels(raw.z, rows.correction), by);
+  // a small minority may have hidden behind the rows
+  const again = fitTwoStates(frame, raw.z, seen, rows.correction, tip, s);
+  if (again !== null) return again;
+  pure = mainCells(seen, leastSd);
+  found = mainLevel(seen, pure, white2, limitsOf(noise));
+  return oneStateFit(frame, raw, pure, { ...found, correlation }, rows);
+}
+
+/** Level and noise of the one state: both entries of each pair are the same. */
+function mainLevel(seen: SeenSignal, pure: PureCells, white2: number, limits?: readonly [number, number]): Residuals {
+  const { levels, variance } = levelsOfCells(seen.cells, pure);
+  const twice: Levels = [levels[0], levels[0]];
+  const r = residualsOf(seen.z, pure, twice, limits ?? firstLimits(white2, variance));
+  return { levels: [r.levels[0], r.levels[0]], noise: [r.noise[0], r.noise[0]], correlation: r.correlation };
+}
+
+function oneStateFit(
+  frame: number,
+  raw: SeenSignal,
+  pure: PureCells,
+  { levels, noise: [noise], correlation }: Residuals,
+  rows: RowRefinement | null = null,
+): LevelFit {
+  const level: ComplexValue = levels[0];
   const m = Math.max(Math.hypot(level.re, level.im), 1e-30);
   const n = Math.max(1, pure.count[0] / pixelsPerIndependent(correlation.x, correlation.y));
   const main: StateEstimate = {
@@ -56,7 +65,7 @@ export function fitOneState(frame: number, raw: Pixels, tip: Tip | null, s: Stat
     share: 1,
   };
   return {
-    ...commonPart(frame, raw, correction, rows, correlation),
+    ...commonPart(frame, raw.z, rows?.correction ?? noCorrection(raw.z.rows), rows, correlation),
     main,
     second: null,
     evidence: { deltaBic: 0, separation: 0, clustering: 0, twoStates: false },

@@ -1,15 +1,18 @@
 import type { Tip } from "../../model/cooldown.js";
-import type { ComplexValue, NoiseCovariance } from "../../model/signal.js";
+import type { NoiseCovariance } from "../../model/signal.js";
 import { FWHM_PER_SIGMA } from "../../model/units.js";
-import { maskedBlur } from "../../raster/masked_blur.js";
-import { smoothed, smoothingOf, type Smoothing } from "./smooth_signal.js";
+import { amplitudesOf } from "./amplitudes.js";
+import { levelsOfCells, type Levels } from "./cell_levels.js";
+import { seeSignal, type SeenSignal } from "./cells.js";
 import { judge } from "./judge.js";
 import type { LevelFit } from "./level_fit.js";
-import { noiseCorrelation, noiseCovariance, pixelsPerIndependent, sdAlong } from "./noise.js";
+import { pixelsPerIndependent, sdAlong } from "./noise.js";
 import { correctPixels, type Pixels, type RowCorrection } from "./pixels.js";
-import { amplitudesOf, levelsOf, purePixels, type PurePixels } from "./pure.js";
+import { pureCells, type PureCells } from "./pure.js";
 import { refineRows, type RowRefinement } from "./refine_rows.js";
+import { firstLimits, limitsOf, residualsOf } from "./residuals.js";
 import type { StatesSettings } from "./settings.js";
+import { smoothingOf } from "./smooth_signal.js";
 import { differenceNoise, splitStates } from "./split.js";
 import { twoStateFit } from "./summarise_fit.js";
 
@@ -19,90 +22,78 @@ const ROUNDS = 3;
 const MOST_ROUNDS = 10;
 const SETTLED = 0.001;
 
-type Levels = readonly [ComplexValue, ComplexValue];
-
-/** Two states and their rows, or null where the frame does not show two. */
+/** Two states and their rows, or null where the frame does not show two. The turns are taken on cells, each row's own gain and phase and
+ *  the last answer on the pixels of the cells found pure.
+ *  @param start the raw pixels with `before` taken off */
 export function fitTwoStates(
   frame: number,
   raw: Pixels,
-  start: Pixels,
+  start: SeenSignal,
   before: RowCorrection,
   tip: Tip | null,
   s: StatesSettings,
 ): LevelFit | null {
   const by = smoothingOf(raw, tip);
-  const noise0 = differenceNoise(start);
+  const noise0 = differenceNoise(start.z);
   const blurArea = 4 * Math.PI * by.xPx * by.yPx;
-  const smooth = smoothed(start, by);
   const pixelSd = Math.hypot(noise0.re, noise0.im) / (raw.hasPhase ? Math.SQRT2 : 1);
-  const split = splitStates(smooth.re, smooth.im, start.usable, raw.count / blurArea, pixelSd / Math.sqrt(blurArea));
+  const split = splitStates(start, raw.count / blurArea, pixelSd / Math.sqrt(blurArea));
   if (split === null || split.deltaBic > s.deltaBic) return null;
   const { mixture } = split;
   const along = Math.hypot(noise0.re * split.axisRe, noise0.im * split.axisIm);
   if (mixture.high - mixture.low < s.leastSeparation * along) return null;
 
-  let z = start;
+  const smoothingNm = Math.sqrt(by.xPx * raw.pixel.xNm * by.yPx * raw.pixel.yNm);
+  const tipNm = tip === null ? 0 : tip.resolutionNm / FWHM_PER_SIGMA;
+  let seen = start;
   let correction = before;
   let rows: RowRefinement | null = null;
   let eRe = split.axisRe;
   let eIm = split.axisIm;
   let low = mixture.low;
   let high = mixture.high;
-  let pure: PurePixels | null = null;
-  let levels: Levels = [
-    { re: 0, im: 0 },
-    { re: 0, im: 0 },
-  ];
-  let last = levels;
-  let noise: [NoiseCovariance, NoiseCovariance] | null = null;
-  let inflation = { x: 0, y: 0 };
+  let pure: PureCells | null = null;
+  let levels: Levels | null = null;
+  let limits: readonly [number, number] = [Infinity, Infinity];
   for (let round = 0; round < MOST_ROUNDS; round++) {
-    const u = smoothedShare(z, round === 0 ? smooth : null, eRe, eIm, low, high, by);
-    pure = purePixels(u, z, {
-      smoothingNm: Math.sqrt(by.xPx * z.pixel.xNm * by.yPx * z.pixel.yNm),
-      tipNm: tip === null ? 0 : tip.resolutionNm / FWHM_PER_SIGMA,
-      noiseSd: Math.hypot(noise0.re * eRe, noise0.im * eIm) / (high - low),
-    });
+    const mapNoise = Math.hypot(noise0.re * eRe, noise0.im * eIm) / (high - low) / Math.sqrt(blurArea);
+    pure = pureCells(shareOf(seen, eRe, eIm, low, high), seen.cells, raw.count, { smoothingNm, tipNm, mapNoise });
     if (pure.count[0] === 0 || pure.count[1] === 0) return null;
-    levels = levelsOf(z, pure, null, Infinity);
-    noise = [noiseCovariance(z, pure, 0, levels), noiseCovariance(z, pure, 1, levels)];
-    const clip2 = clip2Of(noise);
-    levels = levelsOf(z, pure, levels, clip2);
+    const last: Levels | null = levels;
+    const found = levelsOfCells(seen.cells, pure);
+    levels = found.levels;
+    if (round <= 1) limits = firstLimits(noise0.re ** 2 + noise0.im ** 2, found.variance);
     if (!Number.isFinite(levels[0].re) || !Number.isFinite(levels[1].re)) return null;
     if (s.refineRows && round > 0 && round < ROUNDS) {
-      inflation = noiseCorrelation(z, pure, levels, clip2);
-      rows = refineRows(z, pure, levels, noise, correction, pixelsPerIndependent(inflation.x, 0));
+      const { noise, correlation } = residualsOf(seen.z, pure, levels, limits);
+      limits = limitsOf(noise);
+      rows = refineRows(seen.z, pure, levels, noise, correction, pixelsPerIndependent(correlation.x, 0));
       correction = rows.correction;
-      z = correctPixels(raw, correction);
-      levels = levelsOf(z, pure, levels, clip2);
+      seen = seeSignal(correctPixels(raw, correction), by);
+      levels = levelsOfCells(seen.cells, pure).levels;
     }
     const dr = levels[1].re - levels[0].re;
     const di = levels[1].im - levels[0].im;
     const d = Math.hypot(dr, di);
     if (!(d > 0)) return null;
-    const moved = Math.hypot(
-      levels[0].re - last[0].re,
-      levels[0].im - last[0].im,
-      levels[1].re - last[1].re,
-      levels[1].im - last[1].im,
-    );
-    last = levels;
-    if (round >= ROUNDS - 1 && moved < SETTLED * d) break;
+    if (round >= ROUNDS - 1 && last !== null && moved(levels, last) < SETTLED * d) break;
     eRe = dr / d;
     eIm = di / d;
     low = levels[0].re * eRe + levels[0].im * eIm;
     high = levels[1].re * eRe + levels[1].im * eIm;
   }
-  if (pure === null || noise === null) return null;
-  const evidence = judge(z, pure, levels, noise, split.deltaBic, eRe, eIm, s);
+  if (pure === null || levels === null) return null;
+  const last = residualsOf(seen.z, pure, levels, limits);
+  const { evidence, share1 } = judge(seen.z, pure, last.levels, last.noise, split.deltaBic, s);
   if (!evidence.twoStates) return null;
-  if (raw.hasPhase) levels = amplitudesOf(z, pure, levels, acrossOf(levels, noise), clip2Of(noise));
-  return twoStateFit(frame, raw, z, pure, levels, noise, evidence, correction, rows, inflation);
+  const final = raw.hasPhase
+    ? amplitudesOf(seen.z, pure, last.levels, acrossOf(last.levels, last.noise), limitsOf(last.noise))
+    : last.levels;
+  return twoStateFit(frame, raw, share1, pure, final, last.noise, evidence, correction, rows, last.correlation);
 }
 
-/** Residuals beyond 4 sd of the noisier state are left out. */
-const clip2Of = (noise: readonly [NoiseCovariance, NoiseCovariance]): number =>
-  16 * Math.max(noise[0].rr + noise[0].ii, noise[1].rr + noise[1].ii);
+const moved = (a: Levels, b: Levels): number =>
+  Math.hypot(a[0].re - b[0].re, a[0].im - b[0].im, a[1].re - b[1].re, a[1].im - b[1].im);
 
 /** Variance of the noise across each level. */
 function acrossOf(levels: Levels, noise: readonly [NoiseCovariance, NoiseCovariance]): [number, number] {
@@ -114,19 +105,12 @@ function acrossOf(levels: Levels, noise: readonly [NoiseCovariance, NoiseCovaria
 }
 
 /** Share of state 1 in the smoothed signal, along the chord between the levels. */
-function smoothedShare(
-  z: Pixels,
-  smooth: { re: Float32Array; im: Float32Array } | null,
-  eRe: number,
-  eIm: number,
-  low: number,
-  high: number,
-  by: Smoothing,
-): Float32Array {
-  const n = z.re.length;
-  const u = new Float32Array(n);
-  const scale = 1 / (high - low);
-  const source = smooth ?? z;
-  for (let p = 0; p < n; p++) u[p] = (source.re[p] * eRe + source.im[p] * eIm - low) * scale;
-  return smooth === null ? maskedBlur(u, z.usable, z.rows, z.cols, by.xPx, by.yPx).values : u;
+function shareOf(seen: SeenSignal, eRe: number, eIm: number, low: number, high: number): Float32Array {
+  const { smoothRe, smoothIm } = seen;
+  const u = new Float32Array(smoothRe.length);
+  const re = eRe / (high - low);
+  const im = eIm / (high - low);
+  const offset = low / (high - low);
+  for (let c = 0; c < u.length; c++) u[c] = smoothRe[c] * re + smoothIm[c] * im - offset;
+  return u;
 }

@@ -53,8 +53,4 @@ export interface LevelFit {
   /** Correlation of the noise of neighbouring pixels, measured far from walls. */
   readonly noiseCorrelationX: number;
   readonly noiseCorrelationY: number;
-  /** 1, 5, 25, 50, 75, 95 and 99 % quantiles of the amplitude. */
-  readonly amplitudeQuantiles: readonly number[];
 }
-
-export const QUANTILES = [0.01, 0.05, 0.25, 0.5, 0.75, 0.95, 0.99] as const;

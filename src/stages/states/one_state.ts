@@ -1,44 +1,48 @@
 import { medianInPlace, SD_PER_MAD } from "../../numerics/quantile.js";
-import type { ComplexValue } from "../../model/signal.js";
-import type { Pixels } from "./pixels.js";
-import type { PurePixels } from "./pure.js";
+import type { SeenSignal } from "./cells.js";
+import type { PureCells } from "./pure.js";
+import { wholeCells } from "./split.js";
 
-/** Smoothed pixels further than this many robust standard deviations from the main level may be another state, or debris. */
+/** Smoothed signal further than this many robust standard deviations from the main level may be another state, or debris. */
 const OFF_SIGMAS = 4.5;
 
-/** Pixels of the one main state of a frame: all whose smoothed signal is near the most common one. The rest (small domains of the
- *  other state with their walls, debris that was missed) has no state here.
- *  @param re, im smoothed signal */
-export function mainPixels(re: Float32Array, im: Float32Array, z: Pixels, leastSd: number): PurePixels {
-  const n = re.length;
-  const a = new Float32Array(z.count);
-  const b = new Float32Array(z.count);
-  const fill = (from: (p: number) => number, to: Float32Array): number => {
-    let k = 0;
-    for (let p = 0; p < n; p++) if (z.usable[p] === 1) to[k++] = from(p);
-    return k;
-  };
-  const count = fill((p) => re[p], a);
-  fill((p) => im[p], b);
-  const centre: ComplexValue = { re: medianInPlace(a, count), im: medianInPlace(b, count) };
-  // along and across the direction of the level: gain and phase scatter differently
-  const m = Math.hypot(centre.re, centre.im) || 1;
-  const er = centre.re / m;
-  const ei = centre.im / m;
-  fill((p) => Math.abs((re[p] - centre.re) * er + (im[p] - centre.im) * ei), a);
-  fill((p) => Math.abs((im[p] - centre.im) * er - (re[p] - centre.re) * ei), b);
-  const along = Math.max(leastSd, SD_PER_MAD * medianInPlace(a, count));
-  const across = Math.max(leastSd, SD_PER_MAD * medianInPlace(b, count));
-  const state = new Uint8Array(n).fill(255);
-  const share = new Float32Array(n);
-  let kept = 0;
-  for (let p = 0; p < n; p++) {
-    if (z.usable[p] === 0) continue;
-    const x = ((re[p] - centre.re) * er + (im[p] - centre.im) * ei) / along;
-    const y = ((im[p] - centre.im) * er - (re[p] - centre.re) * ei) / across;
-    if (x * x + y * y > OFF_SIGMAS * OFF_SIGMAS) continue;
-    state[p] = 0;
-    kept++;
+/** Cells of the one main state of a frame: all whose smoothed signal is near the most common one. The rest (small domains of the
+ *  other state with their walls, debris that was missed) has no state here. */
+export function mainCells({ cells, smoothRe: re, smoothIm: im }: SeenSignal, leastSd: number): PureCells {
+  const whole = wholeCells(cells.count);
+  const n = whole.length;
+  const a = new Float32Array(n);
+  const b = new Float32Array(n);
+  for (let k = 0; k < n; k++) {
+    a[k] = re[whole[k]];
+    b[k] = im[whole[k]];
   }
-  return { state, share, count: [kept, 0], tail: [0, 0], apparentWidthNm: Number.NaN };
+  const centreRe = medianInPlace(a);
+  const centreIm = medianInPlace(b);
+  // along and across the direction of the level: gain and phase scatter differently
+  const m = Math.hypot(centreRe, centreIm) || 1;
+  const er = centreRe / m;
+  const ei = centreIm / m;
+  for (let k = 0; k < n; k++) {
+    const dr = re[whole[k]] - centreRe;
+    const di = im[whole[k]] - centreIm;
+    a[k] = Math.abs(dr * er + di * ei);
+    b[k] = Math.abs(di * er - dr * ei);
+  }
+  const along = Math.max(leastSd, SD_PER_MAD * medianInPlace(a));
+  const across = Math.max(leastSd, SD_PER_MAD * medianInPlace(b));
+  const state = new Uint8Array(re.length).fill(255);
+  let kept = 0;
+  for (let c = 0; c < state.length; c++) {
+    if (cells.count[c] === 0) continue;
+    const dr = re[c] - centreRe;
+    const di = im[c] - centreIm;
+    const x = (dr * er + di * ei) / along;
+    const y = (di * er - dr * ei) / across;
+    if (x * x + y * y > OFF_SIGMAS * OFF_SIGMAS) continue;
+    state[c] = 0;
+    kept += cells.count[c];
+  }
+  const share = new Float32Array(state.length);
+  return { cols: cells.cols, state, share, count: [kept, 0], tail: [0, 0], apparentWidthNm: Number.NaN };
 }

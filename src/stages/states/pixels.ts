@@ -1,5 +1,6 @@
 import type { CleanFrame } from "../../model/signal.js";
 import { colsOf, dataOf, rowsOf, type PixelSize } from "../../model/raster.js";
+import { sinCos } from "../../numerics/sin_cos.js";
 
 /** The complex near-field signal z = amplitude · exp(i·phase) of one frame, row-major. Without an optical phase `im` is all 0. */
 export interface Pixels {
@@ -32,9 +33,13 @@ export function noCorrection(rows: number): RowCorrection {
   };
 }
 
-/** z of every usable pixel of a clean frame. Unusable pixels hold 0 and must not be read.
- *  @param debris 1 = debris, the frame's shape; null = none known */
-export function readPixels(clean: CleanFrame, debris: Uint8Array | null): Pixels {
+/** What `debris` calls a pixel whose state cannot be trusted. */
+const DEBRIS_CORE = 1;
+
+/** z of every usable pixel of a clean frame. Unusable pixels hold 0.
+ *  @param debris 0 free, 1 core, 2 disturbed around it, the frame's shape; null = none known
+ *  @param marginToo whether what is only disturbed is left out as well */
+export function readPixels(clean: CleanFrame, debris: Uint8Array | null, marginToo = true): Pixels {
   const rows = rowsOf(clean.amplitude);
   const cols = colsOf(clean.amplitude);
   const n = rows * cols;
@@ -46,17 +51,20 @@ export function readPixels(clean: CleanFrame, debris: Uint8Array | null): Pixels
   const re = new Float32Array(n);
   const im = new Float32Array(n);
   const usable = new Uint8Array(n);
+  const turn = new Float64Array(2);
   let count = 0;
   for (let p = 0; p < n; p++) {
     const a = amplitude[p];
-    if (!Number.isFinite(a) || (debris !== null && debris[p] !== 0)) continue;
+    if (!Number.isFinite(a)) continue;
+    if (debris !== null && (marginToo ? debris[p] !== 0 : debris[p] === DEBRIS_CORE)) continue;
     if (phase === null) {
       re[p] = a;
     } else {
       const angle = phase[p];
       if (!Number.isFinite(angle)) continue;
-      re[p] = a * Math.cos(angle);
-      im[p] = a * Math.sin(angle);
+      sinCos(angle, turn);
+      re[p] = a * turn[1];
+      im[p] = a * turn[0];
     }
     usable[p] = 1;
     count++;

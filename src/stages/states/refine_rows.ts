@@ -1,6 +1,8 @@
 import type { ComplexValue, NoiseCovariance } from "../../model/signal.js";
+import type { Levels } from "./cell_levels.js";
+import { SIDE } from "./cells.js";
 import type { Pixels, RowCorrection } from "./pixels.js";
-import type { PurePixels } from "./pure.js";
+import type { PureCells } from "./pure.js";
 import { fitRows, type JointRows, type RowMeasurements } from "./row_smoother.js";
 
 /** A row with fewer pure pixels has no measurement of its own. */
@@ -32,15 +34,14 @@ function radialAndAcross(level: ComplexValue, c: NoiseCovariance): [number, numb
  *  @returns the whole correction, `before` included */
 export function refineRows(
   z: Pixels,
-  pure: PurePixels,
-  levels: readonly [ComplexValue, ComplexValue],
+  pure: PureCells,
+  levels: Levels,
   noise: readonly [NoiseCovariance, NoiseCovariance],
   before: RowCorrection,
   inflation: number,
 ): RowRefinement {
-  const { rows, cols } = z;
-  const [a0, a1] = levels;
-  const parts = [radialAndAcross(a0, noise[0]), radialAndAcross(a1, noise[1])] as const;
+  const { rows } = z;
+  const parts = [radialAndAcross(levels[0], noise[0]), radialAndAcross(levels[1], noise[1])] as const;
   const measurements = (): RowMeasurements => ({
     value: [new Float64Array(rows), new Float64Array(rows)],
     weight: [new Float64Array(rows), new Float64Array(rows)],
@@ -49,51 +50,30 @@ export function refineRows(
   const phase = measurements();
   // moments along the columns, for a gradient: Σ w x², Σ w x y with the row's mean taken out
   let [gxx, gxy, pxx, pxy] = [0, 0, 0, 0];
+  const sums = [new Float64Array(SUMS), new Float64Array(SUMS)] as const;
   for (let i = 0; i < rows; i++) {
-    const n = [0, 0];
-    let [wg, wp, sg, sp, xg, xp, xxg, xxp, xyg, xyp] = [0, 0, 0, 0, 0, 0, 0, 0, 0, 0];
-    const own = [0, 0, 0, 0, 0, 0, 0, 0];
-    for (let j = 0; j < cols; j++) {
-      const p = i * cols + j;
-      const k = pure.state[p];
-      if (k > 1) continue;
-      const u = pure.share[p];
-      const er = u === 0 ? a0.re : u === 1 ? a1.re : (1 - u) * a0.re + u * a1.re;
-      const ei = u === 0 ? a0.im : u === 1 ? a1.im : (1 - u) * a0.im + u * a1.im;
-      const m2 = er * er + ei * ei;
-      if (!(m2 > 0)) continue;
-      const dr = z.re[p] - er;
-      const di = z.im[p] - ei;
-      const [radial, across] = k === 0 ? parts[0] : parts[1];
-      if (dr * dr + di * di > CLIP2 * (radial + across)) continue;
-      const x = (j + 0.5) / cols - 0.5;
-      const g = (dr * er + di * ei) / m2;
-      const f = (di * er - dr * ei) / m2;
-      const wGain = m2 / radial;
-      const wPhase = m2 / across;
-      n[k]++;
-      own[k] += wGain;
-      own[2 + k] += wGain * g;
-      own[4 + k] += wPhase;
-      own[6 + k] += wPhase * f;
-      wg += wGain;
-      wp += wPhase;
-      sg += wGain * g;
-      sp += wPhase * f;
-      xg += wGain * x;
-      xp += wPhase * x;
-      xxg += wGain * x * x;
-      xxp += wPhase * x * x;
-      xyg += wGain * x * g;
-      xyp += wPhase * x * f;
-    }
-    if (n[0] + n[1] < LEAST_IN_ROW) continue;
+    sumRow(sums, i, z, pure, levels, parts);
+    if (sums[0][N] + sums[1][N] < LEAST_IN_ROW) continue;
+    // the weights of a pixel are |z_expected|² over the variance along or across it
+    let [wg, sg, xg, xxg, xyg, wp, sp, xp, xxp, xyp] = [0, 0, 0, 0, 0, 0, 0, 0, 0, 0];
     for (const k of [0, 1] as const) {
-      if (n[k] === 0) continue;
-      gain.value[k][i] = before.logGain[i] + Math.log1p(Math.max(-0.9, own[2 + k] / own[k]));
-      gain.weight[k][i] = own[k] / inflation;
-      phase.value[k][i] = before.phaseRad[i] + own[6 + k] / own[4 + k];
-      phase.weight[k][i] = own[4 + k] / inflation;
+      const s = sums[k];
+      if (s[N] === 0) continue;
+      const [radial, across] = parts[k];
+      gain.value[k][i] = before.logGain[i] + Math.log1p(Math.max(-0.9, s[G] / s[W]));
+      gain.weight[k][i] = s[W] / radial / inflation;
+      phase.value[k][i] = before.phaseRad[i] + s[F] / s[W];
+      phase.weight[k][i] = s[W] / across / inflation;
+      wg += s[W] / radial;
+      sg += s[G] / radial;
+      xg += s[X] / radial;
+      xxg += s[XX] / radial;
+      xyg += s[XG] / radial;
+      wp += s[W] / across;
+      sp += s[F] / across;
+      xp += s[X] / across;
+      xxp += s[XX] / across;
+      xyp += s[XF] / across;
     }
     gxx += xxg - (xg * xg) / wg;
     gxy += xyg - (xg * sg) / wg;
@@ -113,6 +93,61 @@ export function refineRows(
     columnPhaseRad: before.columnPhaseRad + (z.hasPhase ? steep(pxy, pxx) : 0),
   };
   return { correction, gain: smoothGain, phase: smoothPhase };
+}
+
+/** Places in the sums of one row and state: pixels; |e|² with e the signal expected; its products with the departures of gain and phase
+ *  (Re and Im of z/e − 1), with the place x along the row, and with both. */
+const [N, W, G, F, X, XX, XG, XF, SUMS] = [0, 1, 2, 3, 4, 5, 6, 7, 8] as const;
+
+function sumRow(
+  sums: readonly [Float64Array, Float64Array],
+  i: number,
+  z: Pixels,
+  pure: PureCells,
+  levels: Levels,
+  parts: readonly [readonly [number, number], readonly [number, number]],
+): void {
+  const { cols } = z;
+  const [a0, a1] = levels;
+  sums[0].fill(0);
+  sums[1].fill(0);
+  const row = Math.floor(i / SIDE) * pure.cols;
+  for (let first = 0, c = row; first < cols; first += SIDE, c++) {
+    const k = pure.state[c];
+    if (k > 1) continue;
+    const u = pure.share[c];
+    const er = a0.re + u * (a1.re - a0.re);
+    const ei = a0.im + u * (a1.im - a0.im);
+    const m2 = er * er + ei * ei;
+    if (!(m2 > 0)) continue;
+    const limit = CLIP2 * (parts[k][0] + parts[k][1]);
+    let [n, g, f, nx, nxx, gx, fx] = [0, 0, 0, 0, 0, 0, 0];
+    const last = Math.min(cols, first + SIDE);
+    for (let j = first, p = i * cols + first; j < last; j++, p++) {
+      const dr = z.re[p] - er;
+      const di = z.im[p] - ei;
+      if (z.usable[p] === 0 || dr * dr + di * di > limit) continue;
+      const x = (j + 0.5) / cols - 0.5;
+      const along = dr * er + di * ei;
+      const turned = di * er - dr * ei;
+      n++;
+      g += along;
+      f += turned;
+      nx += x;
+      nxx += x * x;
+      gx += along * x;
+      fx += turned * x;
+    }
+    const s = sums[k];
+    s[N] += n;
+    s[W] += n * m2;
+    s[G] += g;
+    s[F] += f;
+    s[X] += m2 * nx;
+    s[XX] += m2 * nxx;
+    s[XG] += gx;
+    s[XF] += fx;
+  }
 }
 
 function withoutMean(offset: Float64Array): Float32Array {

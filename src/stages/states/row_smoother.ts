@@ -13,8 +13,6 @@ export interface SmoothedRows {
 
 /** Steps in units of the typical measurement sd tried for either standard deviation. */
 const LADDER = [0, 0.1, 0.2, 0.35, 0.6, 1, 1.8, 3, 6, 12];
-/** A variance that stands for "nothing known". */
-const DIFFUSE = 1e8;
 const LEAST_ROWS = 8;
 
 /** Row means of the pixels of two states, each about its own level as known so far, with weights 1/variance (0 = no pixels). */
@@ -70,33 +68,28 @@ export function fitRows(m: RowMeasurements): JointRows {
   }
   known.sort((p, q) => p - q);
   const unit = known[known.length >> 1];
-  const shifted = new Float64Array(n);
-  const at = (delta: number, walk: number, white: number): number => {
-    for (let i = 0; i < n; i++) shifted[i] = y[i] - delta * slope[i];
-    return minusTwoLogL(shifted, sd, walk, white) + a + b * delta + c * delta * delta;
-  };
+  const filter = new RowFilter(y, slope, sd, unit);
   let best = { value: Infinity, walk: 0, white: 0, delta: 0, bend: 0 };
   for (const whiteStep of LADDER) {
     for (const walkStep of LADDER) {
-      const white = whiteStep * unit;
       // a walk reaches far with small steps: its ladder starts lower
-      const walk = walkStep * unit * 0.3;
-      let value = at(0, walk, white);
+      const walk = walkStep * 0.3;
+      filter.run(walk * walk, whiteStep * whiteStep);
+      let value = filter.value + a;
       let delta = 0;
       let bend = 0;
       if (second) {
-        const h = unit;
-        const plus = at(h, walk, white);
-        const minus = at(-h, walk, white);
-        bend = (plus - 2 * value + minus) / (h * h);
+        bend = 2 * (filter.bend + c);
+        const fall = filter.fall - b;
         if (bend > 0) {
-          delta = (-0.5 * (plus - minus)) / h / bend;
-          value -= 0.5 * bend * delta * delta;
+          delta = fall / bend;
+          value -= (0.5 * fall * fall) / bend;
         }
       }
-      if (value < best.value - 1e-9) best = { value, walk, white, delta, bend };
+      if (value < best.value - 1e-9) best = { value, walk: walk * unit, white: whiteStep * unit, delta, bend };
     }
   }
+  const shifted = new Float64Array(n);
   for (let i = 0; i < n; i++) shifted[i] = y[i] - best.delta * slope[i];
   const x = smoothWalk(shifted, sd, best.walk, best.white);
   const offset = new Float64Array(n);
@@ -115,25 +108,59 @@ export function fitRows(m: RowMeasurements): JointRows {
   };
 }
 
-function minusTwoLogL(y: Float64Array, sd: Float64Array, walkSd: number, whiteSd: number): number {
-  let a = 0;
-  let p = DIFFUSE;
-  let value = 0;
-  let first = true;
-  const q = walkSd * walkSd;
-  const w2 = whiteSd * whiteSd;
-  for (let i = 0; i < y.length; i++) {
-    if (i > 0) p += q;
-    if (!Number.isFinite(sd[i])) continue;
-    const f = p + w2 + sd[i] * sd[i];
-    const innovation = y[i] - a;
-    if (!first) value += Math.log(f) + (innovation * innovation) / f;
-    first = false;
-    const gain = p / f;
-    a += gain * innovation;
-    p -= gain * p;
+/** Kalman filter over the measured rows, for −2 log L as a parabola in the contrast δ: value − fall·δ + bend·δ². Both the measurements
+ *  and what a contrast adds to them pass the same filter, as it is linear. */
+class RowFilter {
+  value = 0;
+  fall = 0;
+  bend = 0;
+  private readonly y: Float64Array;
+  private readonly slope: Float64Array;
+  /** Variance of each measurement, and the rows since the one before. */
+  private readonly variance: Float64Array;
+  private readonly steps: Float64Array;
+
+  /** @param unit all variances are in units of its square, so that products of a few stay far from overflow */
+  constructor(y: Float64Array, slope: Float64Array, sd: Float64Array, unit: number) {
+    const rows = [...sd.keys()].filter((i) => Number.isFinite(sd[i]));
+    this.y = Float64Array.from(rows, (i) => y[i] / unit);
+    this.slope = Float64Array.from(rows, (i) => slope[i] / unit);
+    this.variance = Float64Array.from(rows, (i) => (sd[i] / unit) ** 2);
+    this.steps = Float64Array.from(rows, (i, k) => (k === 0 ? 0 : i - rows[k - 1]));
   }
-  return value;
+
+  /** @param walk2, white2 variances of one step of the walk and of the independent part */
+  run(walk2: number, white2: number): void {
+    const { y, slope, variance, steps } = this;
+    // the first measurement says all that is known of the walk
+    let ay = y[0];
+    let as = slope[0];
+    let p = white2 + variance[0];
+    let [logs, product, yy, ys, ss] = [0, 1, 0, 0, 0];
+    for (let k = 1; k < y.length; k++) {
+      p += walk2 * steps[k];
+      const r = white2 + variance[k];
+      const f = 1 / (p + r);
+      const dy = y[k] - ay;
+      const ds = slope[k] - as;
+      yy += dy * dy * f;
+      ys += dy * ds * f;
+      ss += ds * ds * f;
+      // one logarithm for some rows together
+      product *= f;
+      if ((k & 7) === 0) {
+        logs -= Math.log(product);
+        product = 1;
+      }
+      const gain = p * f;
+      ay += gain * dy;
+      as += gain * ds;
+      p *= r * f;
+    }
+    this.value = yy + logs - Math.log(product);
+    this.fall = 2 * ys;
+    this.bend = ss;
+  }
 }
 
 /** Diagonal of the posterior precision of the walk; off-diagonals are −1/q. */

@@ -1,6 +1,5 @@
 import type { Tip } from "../../model/cooldown.js";
 import { FWHM_PER_SIGMA } from "../../model/units.js";
-import { maskedBlur } from "../../raster/masked_blur.js";
 import type { Pixels } from "./pixels.js";
 
 const SMOOTHING_PX = 1.3;
@@ -16,11 +15,4 @@ export function smoothingOf(z: Pixels, tip: Tip | null): Smoothing {
     tip === null ? SMOOTHING_PX * Math.sqrt(z.pixel.xNm * z.pixel.yNm) : tip.resolutionNm / FWHM_PER_SIGMA;
   const within = (px: number): number => Math.min(2, Math.max(1, px));
   return { xPx: within(sigmaNm / z.pixel.xNm), yPx: within(sigmaNm / z.pixel.yNm) };
-}
-
-/** The complex signal smoothed round gaps. */
-export function smoothed(z: Pixels, by: Smoothing): { re: Float32Array; im: Float32Array } {
-  const re = maskedBlur(z.re, z.usable, z.rows, z.cols, by.xPx, by.yPx).values;
-  const im = z.hasPhase ? maskedBlur(z.im, z.usable, z.rows, z.cols, by.xPx, by.yPx).values : z.im;
-  return { re, im };
 }

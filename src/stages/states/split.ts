@@ -1,4 +1,5 @@
-import { medianInPlace, quantileInPlace } from "../../numerics/quantile.js";
+import { medianInPlace } from "../../numerics/quantile.js";
+import { SIDE, type SeenSignal } from "./cells.js";
 import { fitMixture, fitOneState, histogramOf, type MixtureFit } from "./mixture.js";
 import type { Pixels } from "./pixels.js";
 
@@ -14,12 +15,16 @@ const STARTS: readonly (readonly [number, number])[] = [
 /** Median absolute difference of two normal numbers over the standard deviation of one. */
 const SD_PER_MEDIAN_DIFFERENCE = 1 / (0.6744897501960817 * Math.SQRT2);
 
+/** Differences that tell the noise to a third of a percent: rows are left out, evenly, where there are more. */
+const DIFFERENCES = 50_000;
+
 /** Pixel noise along each component, from differences of neighbours along the rows: blind to anything smooth. */
 export function differenceNoise(z: Pixels): { readonly re: number; readonly im: number } {
+  const every = Math.max(1, Math.floor(z.count / DIFFERENCES));
+  const d = new Float32Array(Math.ceil(z.rows / every) * z.cols);
   const one = (data: Float32Array): number => {
-    const d = new Float32Array(z.count);
     let n = 0;
-    for (let i = 0; i < z.rows; i++) {
+    for (let i = 0; i < z.rows; i += every) {
       for (let j = 1, p = i * z.cols + 1; j < z.cols; j++, p++) {
         if (z.usable[p] === 1 && z.usable[p - 1] === 1) d[n++] = Math.abs(data[p] - data[p - 1]);
       }
@@ -39,32 +44,25 @@ export interface Split {
 }
 
 /** Looks for two states in the smoothed signal: principal axis, then a mixture with a partial-volume part along it.
- *  @param re, im smoothed signal; NaN where nothing is near
  *  @param effectivePixels number of independent pixels of the smoothed image: likelihoods of dependent pixels are too sharp
  *  @param smoothedSd noise left after the smoothing
  *  Source of the criterion: Schwarz 1978, Ann. Stat. 6, 461. */
-export function splitStates(
-  re: Float32Array,
-  im: Float32Array,
-  usable: Uint8Array,
-  effectivePixels: number,
-  smoothedSd: number,
-): Split | null {
-  let [n, mr, mi] = [0, 0, 0];
-  for (let p = 0; p < re.length; p++) {
-    if (usable[p] === 0) continue;
-    n++;
-    mr += re[p];
-    mi += im[p];
+export function splitStates(seen: SeenSignal, effectivePixels: number, smoothedSd: number): Split | null {
+  const { smoothRe: re, smoothIm: im } = seen;
+  const whole = wholeCells(seen.cells.count);
+  const n = whole.length;
+  if (n < LEAST_CELLS) return null;
+  let [mr, mi] = [0, 0];
+  for (const c of whole) {
+    mr += re[c];
+    mi += im[c];
   }
-  if (n < 100) return null;
   mr /= n;
   mi /= n;
   let [rr, ri, ii] = [0, 0, 0];
-  for (let p = 0; p < re.length; p++) {
-    if (usable[p] === 0) continue;
-    const a = re[p] - mr;
-    const b = im[p] - mi;
+  for (const c of whole) {
+    const a = re[c] - mr;
+    const b = im[c] - mi;
     rr += a * a;
     ri += a * b;
     ii += b * b;
@@ -73,10 +71,8 @@ export function splitStates(
   const axisRe = Math.cos(angle);
   const axisIm = Math.sin(angle);
   const v = new Float32Array(n);
-  let k = 0;
-  for (let p = 0; p < re.length; p++) if (usable[p] === 1) v[k++] = axisRe * re[p] + axisIm * im[p];
-  const sorted = v.slice();
-  const at = (q: number): number => quantileInPlace(sorted, q);
+  for (let k = 0; k < n; k++) v[k] = axisRe * re[whole[k]] + axisIm * im[whole[k]];
+  const at = quantilesOf(v);
   const low = at(0.0005) - 4 * smoothedSd;
   const high = at(0.9995) + 4 * smoothedSd;
   if (!(high > low)) return null;
@@ -91,4 +87,26 @@ export function splitStates(
   if (best === null) return null;
   const deltaBic = -2 * effectivePixels * (best.logLikelihood - one.logLikelihood) + 5 * Math.log(effectivePixels);
   return { axisRe, axisIm, mixture: best, deltaBic };
+}
+
+const LEAST_CELLS = 50;
+
+/** Cells of which at least half is usable. */
+export function wholeCells(count: Uint8Array): Int32Array {
+  const out = new Int32Array(count.length);
+  let n = 0;
+  for (let c = 0; c < count.length; c++) if (2 * count[c] >= SIDE * SIDE) out[n++] = c;
+  return out.subarray(0, n);
+}
+
+/** Values sorted for quantiles: evenly spread ones stand for all where there are more. */
+const SORTED = 1 << 14;
+
+/** Quantiles of the values, to the nearest one of those sorted. */
+function quantilesOf(values: Float32Array): (q: number) => number {
+  const step = Math.ceil(values.length / SORTED);
+  const some = new Float32Array(Math.floor((values.length + step - 1) / step));
+  for (let k = 0; k < some.length; k++) some[k] = values[k * step];
+  some.sort();
+  return (q) => some[Math.round(q * (some.length - 1))];
 }

@@ -1,21 +1,22 @@
-import type { ComplexValue, NoiseCovariance } from "../../model/signal.js";
-import { quantileInPlace } from "../../numerics/quantile.js";
-import { QUANTILES, type LevelFit, type StateEstimate, type StateEvidence } from "./level_fit.js";
+import type { NoiseCovariance } from "../../model/signal.js";
+import type { Levels } from "./cell_levels.js";
+import type { LevelFit, StateEstimate, StateEvidence } from "./level_fit.js";
 import { pixelsPerIndependent, sdAlong } from "./noise.js";
 import { noCorrection, type Pixels, type RowCorrection } from "./pixels.js";
-import type { PurePixels } from "./pure.js";
+import type { PureCells } from "./pure.js";
 import type { RowRefinement } from "./refine_rows.js";
 
 /** How wrong the tail of a wall may be as a tanh, as a share of itself: it enters the uncertainty of the levels. */
 const TAIL_ERROR = 0.25;
 
-/** The fit of a frame with two states. */
+/** The fit of a frame with two states.
+ *  @param share1 share of the usable pixels on the second level's side */
 export function twoStateFit(
   frame: number,
   raw: Pixels,
-  z: Pixels,
-  pure: PurePixels,
-  levels: readonly [ComplexValue, ComplexValue],
+  share1: number,
+  pure: PureCells,
+  levels: Levels,
   noise: readonly [NoiseCovariance, NoiseCovariance],
   evidence: StateEvidence,
   correction: RowCorrection,
@@ -23,12 +24,6 @@ export function twoStateFit(
   correlation: { readonly x: number; readonly y: number },
 ): LevelFit {
   const [a, b] = levels;
-  const middle = 0.5 * ((a.re + b.re) * (b.re - a.re) + (a.im + b.im) * (b.im - a.im));
-  let ones = 0;
-  for (let p = 0; p < z.re.length; p++) {
-    if (z.usable[p] === 1 && z.re[p] * (b.re - a.re) + z.im[p] * (b.im - a.im) > middle) ones++;
-  }
-  const share1 = ones / z.count;
   const contrast = Math.hypot(b.re - a.re, b.im - a.im);
   const perIndependent = pixelsPerIndependent(correlation.x, correlation.y);
   const own = ([0, 1] as const).map((k) => {
@@ -73,9 +68,6 @@ export function commonPart(
   rows: RowRefinement | null,
   correlation: { readonly x: number; readonly y: number },
 ): Omit<LevelFit, "main" | "second" | "evidence" | "apparentWidthNm"> {
-  const amplitude = new Float32Array(raw.count);
-  let k = 0;
-  for (let p = 0; p < raw.re.length; p++) if (raw.usable[p] === 1) amplitude[k++] = Math.hypot(raw.re[p], raw.im[p]);
   return {
     frame,
     rows: raw.rows,
@@ -88,7 +80,6 @@ export function commonPart(
     rowWhiteSd: rows?.gain.whiteSd ?? 0,
     noiseCorrelationX: correlation.x,
     noiseCorrelationY: correlation.y,
-    amplitudeQuantiles: QUANTILES.map((q) => quantileInPlace(amplitude, q)),
   };
 }
 

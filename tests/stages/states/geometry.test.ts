@@ -1,6 +1,6 @@
 import { describe, expect, test } from "vitest";
 import { makeRandom } from "../../../src/numerics/random.js";
-import { distanceToContour, nearestSource } from "../../../src/stages/states/distance.js";
+import { distanceToContours, nearestSource } from "../../../src/stages/states/distance.js";
 import { coverage, turning } from "../../../src/stages/states/fraction.js";
 import { smoothShare } from "../../../src/stages/states/smooth_share.js";
 
@@ -22,30 +22,47 @@ test("the nearest source agrees with a search of all, for unequal pixels", () =>
   expect([...nearestSource(new Uint8Array(6), 2, 3, pixel)]).toEqual([-1, -1, -1, -1, -1, -1]);
 });
 
-test("distances to the contour of a disc are true to a tenth of a pixel on average, in every direction", () => {
+test("distances to the contours of a disc are true to a tenth of a pixel on average, on either side and in every direction", () => {
   const size = 81;
   const [cx, cy, radius] = [403, 561, 200];
+  const levels: [number, number] = [0.5, 0.5];
   const u = new Float32Array(size * size);
-  const labels = new Uint8Array(size * size);
-  const truth = new Float32Array(size * size);
+  const states = new Uint8Array(size * size);
+  const fromMiddle = new Float32Array(size * size);
   for (let p = 0; p < u.length; p++) {
-    truth[p] = Math.hypot((p % size) * 10 - cx, Math.floor(p / size) * 14 - cy) - radius;
-    u[p] = 0.5 * (1 - Math.tanh(truth[p] / 45));
-    labels[p] = u[p] > 0.5 ? 1 : 0;
+    fromMiddle[p] = Math.hypot((p % size) * 10 - cx, Math.floor(p / size) * 14 - cy) - radius;
+    u[p] = 0.5 * (1 - Math.tanh(fromMiddle[p] / 45));
+    states[p] = u[p] <= levels[0] ? 0 : u[p] > levels[1] ? 1 : 2;
   }
-  const outside = distanceToContour(u, 0.5, labels, 0, size, size, pixel);
-  let [sum, n, worst] = [0, 0, 0];
+  const found = distanceToContours(u, states, levels, size, size, pixel);
+  const sums = [0, 0];
+  const n = [0, 0];
+  let worst = 0;
   for (let p = 0; p < u.length; p++) {
-    if (labels[p] === 1) {
-      expect(outside[p]).toBe(Infinity);
-    } else {
-      sum += outside[p] - truth[p];
-      worst = Math.max(worst, Math.abs(outside[p] - truth[p]));
-      n++;
+    const k = states[p];
+    if (k === 2) {
+      expect(found[p]).toBe(Infinity);
+      continue;
     }
+    const contour = -45 * Math.atanh(2 * levels[k] - 1);
+    const error = found[p] - Math.abs(fromMiddle[p] - contour);
+    sums[k] += error;
+    n[k]++;
+    worst = Math.max(worst, Math.abs(error));
   }
-  expect(Math.abs(sum / n)).toBeLessThan(1);
+  expect(Math.abs(sums[0] / n[0])).toBeLessThan(1.2);
+  expect(Math.abs(sums[1] / n[1])).toBeLessThan(1.2); // a tenth of √(10 · 14)
   expect(worst).toBeLessThan(8);
+});
+
+test("beyond a gap the distance goes to the contour and not past it", () => {
+  // one row: state 0, a gap, between, state 1 with its edge
+  const u = Float32Array.from([0.1, 0, 0.5, 0.9]);
+  const states = Uint8Array.from([0, 255, 2, 1]);
+  const found = distanceToContours(u, states, [0.2, 0.8], 1, 4, { xNm: 10, yNm: 10 });
+  expect(found[0]).toBeLessThan(30);
+  expect(found[0]).toBeGreaterThan(20);
+  expect(found[3]).toBeLessThan(10);
 });
 
 describe("areas", () => {

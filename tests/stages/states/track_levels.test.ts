@@ -63,7 +63,6 @@ function fitOf(k: number, made: Made): LevelFit {
     rowWhiteSd: 0,
     noiseCorrelationX: 0,
     noiseCorrelationY: 0,
-    amplitudeQuantiles: [],
   };
 }
 
