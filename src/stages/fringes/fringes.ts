@@ -6,14 +6,17 @@ import { apparentWidth, kinkWidthFromApparent } from "../../numerics/kink.js";
 import { median } from "../../numerics/quantile.js";
 import { childSeed } from "../../numerics/random.js";
 import { fringeTable, type FringeTable, type Blur, type Member } from "./basis.js";
-import { acrossChord, chordOf } from "./chord.js";
-import { estimateFringe, type FringeEstimate } from "./estimate.js";
+import { acrossChord, chordOf, type Chord } from "./chord.js";
+import { FringeFit } from "./estimate.js";
+import { FringeForward } from "./forward.js";
 import { levelScatter } from "./level_scatter.js";
-import { measureNoise } from "./noise.js";
+import { measureNoise, type NoiseModel } from "./noise.js";
+import type { Grid } from "./grid.js";
+import { referenceRows } from "./reference_rows.js";
 import { drawnFringe } from "./picture.js";
 import { Profiler, type Profile } from "./profile.js";
 import type { FringeSettings } from "./settings.js";
-import { cutStretches } from "./stretches.js";
+import { cutStretches, type Stretch } from "./stretches.js";
 import { supTest, type Candidate } from "./sup_test.js";
 
 /** Ratio of neighbouring periods of the grid, and the decays tried with each, in periods. */
@@ -25,6 +28,10 @@ const LEAST_SHARE = 0.5;
 const NEAR_WIDTHS = 1.25;
 /** Period and decay are fitted only where the test says there may be something. */
 const FIT_BELOW_P = 0.05;
+/** With a test below this there is a fringe in the frame. */
+const CLEAR_P = 1e-3;
+/** Rows off by more than this (1 sd, rad) were not referenced but led astray: no period or decay is told from them. */
+const LARGEST_ROW_SD = 0.04;
 /** Share of a fringe's contrast by which a level of the frame may be off. */
 const LEVEL_SHARE = 0.3;
 /** A stretch with fewer bins is not tested. */
@@ -52,46 +59,92 @@ export function testFringes(
   const binNm = s.binNm > 0 ? s.binNm : Math.max(Math.min(pixel.xNm, pixel.yNm), tipSigma / 2);
   const blur = blurOf(walls, tipSigma, binNm);
   const across = acrossChord(signal.re, signal.im, signal.usable, chord);
-  const cut = cutStretches(walls.walls, signal.usable, rows, cols, pixel, s);
+  const cut = cutStretches(walls.walls, signal.usable, rows, cols, pixel, s, tipSigma);
   const nearNm = NEAR_WIDTHS * apparentWidth(blur.wNm, Math.max(blur.sigmaNm, 1e-3));
-  const grid = { across, distanceNm: cut.distanceNm, trusted: cut.trusted, rows, cols };
-  const noise = measureNoise(grid, chord, blur, nearNm, binNm, s.reachNm);
-  const profiler = new Profiler(grid, binNm, s.reachNm, nearNm, noise);
   const shortest = Math.max(s.leastPeriodTips * (tip?.resolutionNm ?? 0), 4 * binNm);
   const table = fringeTable(membersFrom(shortest, s.reachNm / LEAST_SHARE), blur, s.reachNm);
+  const grid = { across, distanceNm: cut.distanceNm, trusted: cut.trusted, rows, cols };
+  const frame = { grid, chord, blur, nearNm, binNm, stretches: cut.stretches };
+  const seen = profilesOf(frame, s);
 
-  const profiles = cut.stretches.map((stretch) => profiler.profile(stretch));
-  const levelSdRad = levelScatter(profiles, chord, nearNm, s.leastLevelSdRad, s.mostLevelSdRad);
-
-  const tests: FringeTest[] = [];
-  cut.stretches.forEach((stretch, k) => {
-    const profile = profiles[k];
+  const found = cut.stretches.map((stretch, k) => {
+    const profile = seen.profiles[k];
     const candidates = candidatesFor(profile, table, s);
-    if (profile.count < LEAST_BINS || candidates.length === 0) return;
+    if (profile.count < LEAST_BINS || candidates.length === 0) return null;
     const drawn = childSeed(seed, stretch.wall, stretch.stretch);
-    const found = supTest(profile, table, chord, candidates, s.reachNm, levelSdRad, s.draws, drawn);
-    if (found === null) return;
-    const free = found.pValue < FIT_BELOW_P;
-    const estimate = (sd: number, withPeriod: boolean): FringeEstimate =>
-      estimateFringe(profile, table, chord, found.best, s.reachNm, sd, withPeriod, s);
-    // Where there is a fringe the frame's own levels, averaged over pixels that carry it, are off by a share of it.
-    const rough = estimate(levelSdRad, false).contrastRad ?? 0;
-    const { fitted, ...numbers } = estimate(Math.hypot(levelSdRad, LEVEL_SHARE * rough), free);
-    tests.push({
-      frame: signal.frame,
-      wall: stretch.wall,
-      stretch: stretch.stretch,
-      arcFromNm: stretch.arcFromNm,
-      arcToNm: stretch.arcToNm,
-      pValue: found.pValue,
-      side: found.best.side,
-      ...numbers,
-      ...(fitted === undefined
-        ? {}
-        : { drawn: drawnFringe(signal, states.levels, stretch, cut.distanceNm, binNm, profile, chord, blur, fitted) }),
-    });
+    return supTest(profile, table, chord, candidates, s.reachNm, seen.levelSdRad, s.draws, drawn);
   });
-  return tests;
+  // A fringe is in the rows' own offsets: where there is one they are found anew, beside it.
+  const clear = found.some((f) => f !== null && f.pValue < CLEAR_P);
+  const rowsAgain = clear ? referenceRows(grid, seen.noise.local, binNm, s.reachNm) : null;
+  const better =
+    rowsAgain === null
+      ? seen
+      : profilesOf(
+          {
+            ...frame,
+            grid: { ...grid, across: rowsAgain.across },
+            stretches: cut.stretches.map((t) => ({ ...t, pixels: t.pixels.filter((p) => cut.between[p] === 0) })),
+          },
+          s,
+        );
+  const rowsKnown = rowsAgain === null || rowsAgain.sdRad <= LARGEST_ROW_SD;
+  const forward = {
+    metallic: new FringeForward("metallic", chord, table.blur, s.reachNm),
+    insulating: new FringeForward("insulating", chord, table.blur, s.reachNm),
+  };
+  return cut.stretches.flatMap((stretch, k): FringeTest[] => {
+    const test = found[k];
+    if (test === null) return [];
+    const { pValue, best } = test;
+    const own = better.profiles[k];
+    const enough = Math.min(own.reachMetallicNm, own.reachInsulatingNm) >= s.leastReachNm && own.count >= LEAST_BINS;
+    const profile = enough ? own : seen.profiles[k];
+    const fit = new FringeFit(profile, table, forward[best.side], chord, best, s.reachNm);
+    // Where there is a fringe the frame's own levels, averaged over pixels that carry it, are off by a share of it.
+    const levelSdRad = Math.hypot(better.levelSdRad, LEVEL_SHARE * fit.roughContrastRad(better.levelSdRad));
+    const { fitted, ...numbers } = fit.estimate(levelSdRad, pValue < FIT_BELOW_P && rowsKnown && enough, s);
+    return [
+      {
+        frame: signal.frame,
+        wall: stretch.wall,
+        stretch: stretch.stretch,
+        arcFromNm: stretch.arcFromNm,
+        arcToNm: stretch.arcToNm,
+        pValue,
+        side: best.side,
+        ...numbers,
+        ...(fitted === undefined
+          ? {}
+          : {
+              drawn: drawnFringe(signal, states.levels, stretch, cut.distanceNm, binNm, profile, chord, blur, fitted),
+            }),
+      },
+    ];
+  });
+}
+
+interface Frame {
+  readonly grid: Grid;
+  readonly chord: Chord;
+  readonly blur: Blur;
+  readonly nearNm: number;
+  readonly binNm: number;
+  readonly stretches: readonly Stretch[];
+}
+
+interface Profiles {
+  readonly noise: NoiseModel;
+  readonly profiles: readonly Profile[];
+  readonly levelSdRad: number;
+}
+
+function profilesOf({ grid, chord, blur, nearNm, binNm, stretches }: Frame, s: FringeSettings): Profiles {
+  const noise = measureNoise(grid, chord, blur, nearNm, binNm, s.reachNm);
+  const profiler = new Profiler(grid, binNm, s.reachNm, nearNm, noise);
+  const profiles = stretches.map((stretch) => profiler.profile(stretch));
+  const levelSdRad = levelScatter(profiles, chord, nearNm, s.leastLevelSdRad, s.mostLevelSdRad);
+  return { noise, profiles, levelSdRad };
 }
 
 /** Blur and wall width of the frame, the width from the fitted profiles. */

@@ -58,6 +58,19 @@ export function whiten(l: Float64Array, n: number, x: Float64Array): void {
   }
 }
 
+/** The same for all columns of a row-major matrix [n, columns] at once. */
+export function whitenColumns(l: Float64Array, n: number, x: Float64Array, columns: number): void {
+  for (let i = 0; i < n; i++) {
+    const row = i * columns;
+    for (let j = 0; j < i; j++) {
+      const f = l[i * n + j];
+      for (let c = 0; c < columns; c++) x[row + c] -= f * x[j * columns + c];
+    }
+    const inverse = 1 / l[i * n + i];
+    for (let c = 0; c < columns; c++) x[row + c] *= inverse;
+  }
+}
+
 /** Lower Cholesky factor of the profile's covariance, with that of the nuisances where they are given; a measured covariance that is not positive definite gets the least
  *  lift of its diagonal that makes it so. */
 export function noiseFactor(profile: Profile, nuisances: Float64Array | null): Float64Array {

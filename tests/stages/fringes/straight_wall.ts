@@ -19,6 +19,8 @@ export interface Scene {
   noise: number;
   carry: number;
   rowRad: number;
+  /** Each row takes the mean turn of its pixels farther than this from the wall for its own offset; null: rows are left as they are. */
+  referencedBeyondNm: number | null;
   seed: number;
 }
 
@@ -35,6 +37,7 @@ export const SCENE: Scene = {
   noise: 0.06,
   carry: 0,
   rowRad: 0,
+  referencedBeyondNm: null,
   seed: 1,
 };
 
@@ -118,7 +121,8 @@ export function straightWall(change: Partial<Scene>): { signal: Signal; states: 
   const cx = width / 2 + 3.3;
   const cy = height / 2 - 2.1;
   const table = tableOf(s);
-  const at = (d: number): [number, number] => {
+  const bare = tableOf({ ...s, fringe: { ...s.fringe, rad: 0 } });
+  const at = (d: number, table: [number, number][]): [number, number] => {
     const t = Math.max(0, Math.min(1599.999, d + 800));
     const k = Math.floor(t);
     return [
@@ -133,14 +137,27 @@ export function straightWall(change: Partial<Scene>): { signal: Signal; states: 
   for (let i = 0; i < rows; i++) {
     const turn = s.rowRad * random.normal();
     let [er, ei] = [random.normal(), random.normal()];
+    let [cross, level] = [0, 0];
     for (let j = 0; j < cols; j++) {
       const d = (j * pixel.xNm - cx) * nx + (i * pixel.yNm - cy) * ny;
-      const [zr, zi] = at(d);
+      const [zr, zi] = at(d, table);
       er = s.carry * er + own * random.normal();
       ei = s.carry * ei + own * random.normal();
       re[i * cols + j] = zr * Math.cos(turn) - zi * Math.sin(turn) + s.noise * er;
       im[i * cols + j] = zr * Math.sin(turn) + zi * Math.cos(turn) + s.noise * ei;
       share[i * cols + j] = d > 0 ? 1 : 0;
+      if (s.referencedBeyondNm !== null && Math.abs(d) > s.referencedBeyondNm) {
+        const [br, bi] = at(d, bare);
+        cross += im[i * cols + j] * br - re[i * cols + j] * bi;
+        level += re[i * cols + j] * br + im[i * cols + j] * bi;
+      }
+    }
+    const back = Math.atan2(cross, level);
+    for (let p = i * cols; p < (i + 1) * cols; p++) {
+      [re[p], im[p]] = [
+        re[p] * Math.cos(back) + im[p] * Math.sin(back),
+        im[p] * Math.cos(back) - re[p] * Math.sin(back),
+      ];
     }
   }
   const points: number[] = [];
