@@ -1,4 +1,5 @@
 import { createHash } from "node:crypto";
+import { endianness } from "node:os";
 import type { Cooldown, FrameInfo, RawFrame } from "../model/cooldown.js";
 import { colsOf, dataOf, rowsOf, type Raster } from "../model/raster.js";
 import { loadFrame } from "./load_frame.js";
@@ -27,14 +28,12 @@ export async function imagesDigest(
 }
 
 const NAN_BITS = 0x7fc00000;
+const INFINITY_BITS = 0x7f800000;
 
 /** Little-endian float32, every NaN alike. */
 function plainBytes(image: Raster): Uint8Array {
-  const data = dataOf(image);
-  const out = new DataView(new ArrayBuffer(4 * data.length));
-  for (let p = 0; p < data.length; p++) {
-    if (Number.isNaN(data[p])) out.setUint32(4 * p, NAN_BITS, true);
-    else out.setFloat32(4 * p, data[p], true);
-  }
-  return new Uint8Array(out.buffer);
+  const bits = new Uint32Array(dataOf(image).slice().buffer);
+  for (let p = 0; p < bits.length; p++) if ((bits[p] & 0x7fffffff) > INFINITY_BITS) bits[p] = NAN_BITS;
+  const bytes = Buffer.from(bits.buffer);
+  return endianness() === "LE" ? bytes : bytes.swap32();
 }

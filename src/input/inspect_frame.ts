@@ -1,6 +1,7 @@
 import { CHANNELS, type ChannelName, type FrameInfo, type Notice, type RawFrame } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
-import type { Raster } from "../model/raster.js";
+import { dataOf, type Raster } from "../model/raster.js";
+import { endsOf, type Ends } from "../raster/ends.js";
 import { type Oddity, swappedChannels } from "./swapped_channels.js";
 import { countOf, plainText } from "../model/text.js";
 
@@ -46,76 +47,17 @@ export function inspectFrame(raw: RawFrame, info?: FrameInfo): Notice[] {
   return notices;
 }
 
-interface Range {
+interface Range extends Ends {
   readonly pixels: number;
-  readonly measured: number;
-  readonly infinite: number;
   readonly negative: number;
-  readonly low: End;
-  readonly high: End;
-}
-
-/** The extreme value, how many pixels have it, and how many the next value inwards. */
-interface End {
-  readonly value: number;
-  readonly count: number;
-  readonly nextCount: number;
 }
 
 function rangeOf(raster: Raster): Range {
-  const data = raster.values.data;
-  let infinite = 0;
+  const data = dataOf(raster);
+  const ends = endsOf(data);
   let negative = 0;
-  let missing = 0;
-  const low = new EndFinder();
-  const high = new EndFinder();
-  for (let k = 0; k < data.length; k++) {
-    const v = data[k];
-    if (Number.isNaN(v)) missing++;
-    else if (v === Infinity || v === -Infinity) infinite++;
-    else {
-      if (v < 0) negative++;
-      low.add(-v);
-      high.add(v);
-    }
-  }
-  const measured = data.length - missing;
-  const lowEnd = low.end();
-  return {
-    pixels: data.length,
-    measured,
-    infinite,
-    negative,
-    low: { ...lowEnd, value: -lowEnd.value },
-    high: high.end(),
-  };
-}
-
-/** The largest of many numbers and the second largest, with how often each came. */
-class EndFinder {
-  #value = -Infinity;
-  #count = 0;
-  #next = -Infinity;
-  #nextCount = 0;
-
-  add(v: number): void {
-    if (v < this.#next) return;
-    if (v === this.#value) this.#count++;
-    else if (v > this.#value) {
-      this.#next = this.#value;
-      this.#nextCount = this.#count;
-      this.#value = v;
-      this.#count = 1;
-    } else if (v === this.#next) this.#nextCount++;
-    else {
-      this.#next = v;
-      this.#nextCount = 1;
-    }
-  }
-
-  end(): End {
-    return { value: this.#value, count: this.#count, nextCount: this.#nextCount };
-  }
+  if (ends.low.value < 0) for (let k = 0; k < data.length; k++) if (data[k] < 0 && data[k] > -Infinity) negative++;
+  return { ...ends, pixels: data.length, negative };
 }
 
 function unusable(channel: ChannelName, r: Range): Omit<Problem, "at"> | null {

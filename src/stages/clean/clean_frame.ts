@@ -2,14 +2,15 @@ import type { FrameNoise } from "../../model/analysis.js";
 import { CHANNELS, type Notice, type RawFrame } from "../../model/cooldown.js";
 import { type Raster, colsOf, dataOf, makeRaster, rowsOf } from "../../model/raster.js";
 import type { CleanFrame } from "../../model/signal.js";
-import { wrapAngle } from "../../numerics/quantile.js";
-import { flatPixels } from "./flat_pixels.js";
+import { endsOf } from "../../raster/ends.js";
+import { alignGains, alignHeights, alignPhases } from "./align_rows.js";
 import { levelSurface } from "./level.js";
 import { clippedShare, measureNoise, scaledBy, type NoiseByLevel } from "./noise.js";
-import { linkRows, type RowLinks } from "./row_links.js";
-import { type RowOffsets, splitRowOffsets } from "./row_model.js";
+import type { RowLinks } from "./row_links.js";
+import type { RowOffsets } from "./row_model.js";
 import { type Scars, findScars } from "./scars.js";
 import type { CleanSettings } from "./settings.js";
+import { turnToMean, wrapAll } from "./turn.js";
 
 /** What cleaning found in one frame. Plain data; null where the channel is missing. */
 export interface CleanReport {
@@ -47,7 +48,7 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
 
   const amplitude = finiteCopy(raw.amplitude);
   const unmeasured = countUnmeasured(amplitude, rows, cols);
-  const clipped = clippedShare(amplitude);
+  const clipped = clippedShare(endsOf(amplitude));
   if (clipped > 0.001) {
     notice(
       "clipped-channel",
@@ -57,11 +58,11 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
   if (unmeasured.pixels === rows * cols) notice("empty-frame", "amplitude: no pixel was measured");
 
   const topography = raw.topography === null ? null : cleanTopography(raw.topography, raw.retraceNoise?.topography, s);
-  const phase = raw.phase === null ? null : wrapped(finiteCopy(raw.phase));
+  const phase = raw.phase === null ? null : wrapAll(finiteCopy(raw.phase));
   const signal = cleanSignal(amplitude, phase, rows, cols, raw.retraceNoise ?? {}, s);
 
-  const scarPixels = (topography?.scars.pixels ?? 0) + signal.scars.pixels;
-  const scarRuns = (topography?.scars.runs ?? 0) + signal.scars.runs;
+  const scarPixels = (topography?.scarPixels ?? 0) + signal.scarPixels;
+  const scarRuns = (topography?.scarRuns ?? 0) + signal.scarRuns;
   if (scarPixels > s.badFrameScarShare * rows * cols) {
     notice("many-scars", `${scarPixels} pixels in ${scarRuns} scars were left out`);
   }
@@ -110,29 +111,22 @@ function cleanTopography(
   raster: Raster,
   retraceNoise: number | undefined,
   s: CleanSettings,
-): { values: Float32Array; scars: Scars; rowSdNm: number; noise: NoiseByLevel } {
+): { values: Float32Array; scarPixels: number; scarRuns: number; rowSdNm: number; noise: NoiseByLevel } {
   const rows = rowsOf(raster);
   const cols = colsOf(raster);
   const values = finiteCopy(raster);
   levelSurface(values, rows, cols, s.levelDegree);
-  const differences = measureNoise(values, null, rows, cols, false);
+  const differences = measureNoise(values, null, rows, cols);
   const noise = scaledBy(differences, retraceNoise, differences.sd);
-  let rowSdNm = 0;
-  if (s.correctRows) {
-    const links = linkRows(values, null, null, noise, rows, cols, false, s.leastRowPixels);
-    const offsets = splitRowOffsets(links, rows);
-    rowSdNm = offsets.whiteSd;
-    // a lasting jump of all pixels from one row to the next is the tip's or the scanner's, never the sample's
-    addRows(values, rows, cols, (i) => -(offsets.white[i] + offsets.outlying[i] + offsets.jumps[i]));
-  }
-  const scars = findScars(values, null, noise, rows, cols, false, s.scarSigmas, s.scarLeastPixels);
-  leaveOut(values, scars);
-  return { values, scars, rowSdNm, noise };
+  const rowSdNm = s.correctRows ? alignHeights(values, rows, cols, noise, s) : 0;
+  const scars = findScars({ values, level: null, noise, rows, cols, isAngle: false }, s);
+  return { values, scarPixels: leaveOut(values, scars), scarRuns: scars.count, rowSdNm, noise };
 }
 
 interface CleanedSignal {
   readonly phase: Float32Array | null;
-  readonly scars: Scars;
+  readonly scarPixels: number;
+  readonly scarRuns: number;
   readonly rowGainSd: number;
   readonly rowGainErrorSd: Float32Array | null;
   readonly rowPhaseSdRad: number | null;
@@ -169,120 +163,66 @@ function cleanSignal(
   retraceNoise: NonNullable<RawFrame["retraceNoise"]>,
   s: CleanSettings,
 ): CleanedSignal {
-  const log = new Float32Array(amplitude.length);
-  // noise can carry a weak amplitude to zero or below: such pixels keep their value, only ratios leave them out
-  for (let p = 0; p < log.length; p++) log[p] = amplitude[p] > 0 ? Math.log(amplitude[p]) : Number.NaN;
-  const logNoise = scaledBy(
-    measureNoise(log, amplitude, rows, cols, false),
+  const relativeNoise = scaledBy(
+    measureNoise(amplitude, amplitude, rows, cols, "relative"),
     retraceNoise.amplitude,
-    measureNoise(amplitude, null, rows, cols, false).sd,
+    measureNoise(amplitude, null, rows, cols).sd,
   );
   const scarsOf = (values: Float32Array, noise: NoiseByLevel, isAngle: boolean): Scars =>
-    findScars(values, amplitude, noise, rows, cols, isAngle, s.scarSigmas, s.scarLeastPixels);
-  let rowGainSd = 0;
-  let lastLinks: RowLinks | null = null;
-  let flat: Uint8Array | null = null;
-  let scarred: Scars | null = null;
-  if (s.correctRows) {
-    // Twice: rows of another gain would look like boundaries to the search for flat pixels. Scars are taken out in between: among all
-    // pixels of a row they are few, among the flat ones of a row full of walls they may be the most.
-    for (const pass of [0, 1]) {
-      if (pass === 1) {
-        scarred = scarsOf(amplitude, absolute(logNoise), false);
-        leaveOut(log, scarred);
-        flat = flatPixels(log, amplitude, logNoise, rows, cols, rowGainSd);
-      }
-      const links = linkRows(log, amplitude, flat, logNoise, rows, cols, false, s.leastRowPixels);
-      const offsets = splitRowOffsets(links, rows);
-      rowGainSd = Math.hypot(rowGainSd, offsets.whiteSd);
-      lastLinks = links;
-      // neither the walk nor lasting jumps: a front between the states that runs along the rows looks like them
-      const correction = (i: number): number => -(offsets.white[i] + offsets.outlying[i]);
-      addRows(log, rows, cols, correction);
-      scaleRows(amplitude, rows, cols, (i) => Math.exp(correction(i)));
-    }
-  }
-  let phaseNoise = null;
-  let rowPhaseSdRad: number | null = null;
-  let rowPhaseStepSdRad: number | null = null;
+    findScars({ values, level: amplitude, noise, rows, cols, isAngle }, s);
+  const amplitudeScars = (): Scars => scarsOf(amplitude, absolute(relativeNoise), false);
+  const gains = s.correctRows ? alignGains(amplitude, rows, cols, relativeNoise, amplitudeScars, s) : null;
+  const found = [gains?.scars ?? amplitudeScars()];
+  let phaseNoise: NoiseByLevel | null = null;
+  let rowPhase: RowOffsets | null = null;
   if (phase !== null) {
-    const differences = measureNoise(phase, amplitude, rows, cols, true);
-    phaseNoise = scaledBy(differences, retraceNoise.phase, differences.sd);
-    if (s.correctRows) {
-      const linked = phase.slice();
-      if (scarred !== null) leaveOut(linked, scarred);
-      const noise = phaseNoise;
-      const align = (values: Float32Array, by: Float32Array, among: Uint8Array | null): RowOffsets => {
-        const offsets = splitRowOffsets(
-          linkRows(by, amplitude, among, noise, rows, cols, true, s.leastRowPixels),
-          rows,
-        );
-        addRows(
-          values,
-          rows,
-          cols,
-          (i) => -(offsets.white[i] + offsets.walk[i] + offsets.outlying[i] + offsets.jumps[i]),
-        );
-        return offsets;
-      };
-      // the rows' gains are now better known than when their boundaries were first looked for
-      flat = flatPixels(log, amplitude, logNoise, rows, cols, rowGainSd);
-      const rough = phase.slice();
-      align(rough, linked, null);
-      leaveOut(linked, scarsOf(rough, phaseNoise, true));
-      const offsets = align(phase, linked, flat);
-      rowPhaseSdRad = offsets.whiteSd;
-      rowPhaseStepSdRad = offsets.walkSd;
-    }
+    const differences = measureNoise(phase, amplitude, rows, cols, "angle");
+    const noise = scaledBy(differences, retraceNoise.phase, differences.sd);
+    const phaseScars = (): Scars => scarsOf(phase, noise, true);
+    const aligned = gains === null ? null : alignPhases(phase, rows, cols, gains, noise, phaseScars, s);
+    rowPhase = aligned?.offsets ?? null;
     turnToMean(phase);
+    found.push(aligned?.scars ?? phaseScars());
+    phaseNoise = noise;
   }
-  let scars = scarsOf(amplitude, absolute(logNoise), false);
-  if (phase !== null && phaseNoise !== null) scars = join(scars, scarsOf(phase, phaseNoise, true));
-  for (let p = 0; p < amplitude.length; p++) {
-    if (scars.mask[p] === 0) continue;
-    amplitude[p] = Number.NaN;
-    if (phase !== null) phase[p] = Number.NaN;
+  let scarPixels = 0;
+  for (const scars of found) {
+    scarPixels += leaveOut(amplitude, scars);
+    if (phase !== null) leaveOut(phase, scars);
   }
   return {
     phase,
-    scars,
-    rowGainSd,
-    rowGainErrorSd: lastLinks === null ? null : gainErrors(lastLinks, rowGainSd, rows),
-    rowPhaseSdRad,
-    rowPhaseStepSdRad,
-    amplitudeNoise: logNoise,
+    scarPixels,
+    scarRuns: found.reduce((n, scars) => n + scars.count, 0),
+    rowGainSd: gains?.sd ?? 0,
+    rowGainErrorSd: gains === null ? null : gainErrors(gains.links, gains.sd, rows),
+    rowPhaseSdRad: rowPhase?.whiteSd ?? null,
+    rowPhaseStepSdRad: rowPhase?.walkSd ?? null,
+    amplitudeNoise: relativeNoise,
     phaseNoise,
   };
-
-  /** The relative noise as a noise in the amplitude's unit. */
-  function absolute(relative: typeof logNoise): typeof logNoise {
-    const centre = (b: number): number =>
-      relative.perLevel > 0 ? relative.low + (b + 0.5) / relative.perLevel : typical;
-    const typical = relative.low;
-    return { ...relative, sds: relative.sds.map((sd, b) => sd * centre(b)) };
-  }
 }
 
-function leaveOut(values: Float32Array, scars: Scars): void {
-  for (let p = 0; p < values.length; p++) if (scars.mask[p] === 1) values[p] = Number.NaN;
+/** The relative noise as a noise in the amplitude's unit. */
+function absolute(relative: NoiseByLevel): NoiseByLevel {
+  const centre = (b: number): number => relative.low + (relative.perLevel > 0 ? (b + 0.5) / relative.perLevel : 0);
+  return { ...relative, sds: relative.sds.map((sd, b) => sd * centre(b)) };
 }
 
-function join(a: Scars, b: Scars): Scars {
-  const mask = a.mask.slice();
+/** @returns how many pixels were measured there */
+function leaveOut(values: Float32Array, scars: Scars): number {
   let pixels = 0;
-  for (let p = 0; p < mask.length; p++) pixels += mask[p] |= b.mask[p];
-  return { mask, pixels, runs: a.runs + b.runs };
+  for (const [from, to] of scars.runs) {
+    for (let p = from; p < to; p++) if (!Number.isNaN(values[p])) pixels++;
+    values.fill(Number.NaN, from, to);
+  }
+  return pixels;
 }
 
 function finiteCopy(raster: Raster): Float32Array {
   const values = dataOf(raster).slice();
   for (let p = 0; p < values.length; p++) if (!Number.isFinite(values[p])) values[p] = Number.NaN;
   return values;
-}
-
-function wrapped(phase: Float32Array): Float32Array {
-  for (let p = 0; p < phase.length; p++) phase[p] = wrapAngle(phase[p]);
-  return phase;
 }
 
 function countUnmeasured(values: Float32Array, rows: number, cols: number): { pixels: number; rows: number } {
@@ -295,34 +235,4 @@ function countUnmeasured(values: Float32Array, rows: number, cols: number): { pi
     if (n === cols) empty++;
   }
   return { pixels, rows: empty };
-}
-
-function addRows(values: Float32Array, rows: number, cols: number, offset: (row: number) => number): void {
-  for (let i = 0; i < rows; i++) {
-    const o = offset(i);
-    if (o !== 0) for (let j = 0; j < cols; j++) values[i * cols + j] += o;
-  }
-}
-
-function scaleRows(values: Float32Array, rows: number, cols: number, factor: (row: number) => number): void {
-  for (let i = 0; i < rows; i++) {
-    const f = factor(i);
-    if (f !== 1) for (let j = 0; j < cols; j++) values[i * cols + j] *= f;
-  }
-}
-
-/** Turns an image of angles so that its circular mean is 0, in (−π, π]. */
-function turnToMean(phase: Float32Array): void {
-  let c = 0;
-  let s = 0;
-  for (const a of phase) {
-    if (Number.isNaN(a)) continue;
-    c += Math.cos(a);
-    s += Math.sin(a);
-  }
-  const mean = Math.atan2(s, c);
-  for (let p = 0; p < phase.length; p++) {
-    // rounded to single precision first: π itself must not come back as a little more than π
-    phase[p] = Math.min(wrapAngle(phase[p] - mean), 3.1415925);
-  }
 }

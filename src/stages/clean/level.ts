@@ -2,8 +2,10 @@ import { SD_PER_MAD, median, medianInPlace } from "../../numerics/quantile.js";
 import { choleskyInPlace, choleskySolve } from "../../numerics/cholesky.js";
 
 /** Pixels looked at: a surface of six numbers is no better known from more than it is spoiled by relief. */
-const MOST_PIXELS = 4_000;
+const MOST_PIXELS = 2_500;
 const ITERATIONS = 8;
+/** A surface that moves by less than this share of the scatter anywhere is settled. */
+const SETTLED = 1e-3;
 /** Tukey's constant for 95 % efficiency at the normal distribution. */
 const BISQUARE = 4.685;
 /** Huber's, likewise. */
@@ -71,7 +73,10 @@ export function levelSurface(values: Float32Array, rows: number, cols: number, d
       break;
     }
     choleskySolve(a, terms, b);
+    let moved = 0;
+    for (let m = 0; m < terms; m++) moved += Math.abs(b[m] - coefficients[m]);
     coefficients = b;
+    if (iteration > 2 && moved < SETTLED * scale) break;
     for (let k = 0; k < count; k++) {
       let r = z[k];
       for (let m = 0; m < terms; m++) r -= b[m] * design[k * terms + m];

@@ -1,4 +1,6 @@
+import type { End, Ends } from "../../raster/ends.js";
 import { SD_PER_MAD, medianInPlace, quantileInPlace } from "../../numerics/quantile.js";
+import type { ColumnGroups } from "./column_groups.js";
 
 const BINS = 10;
 /** Residuals looked at: more would not make a median better by anything that matters. */
@@ -17,9 +19,25 @@ export interface NoiseByLevel {
   readonly byRetrace: boolean;
 }
 
-export function sdAt(noise: NoiseByLevel, level: number): number {
-  const b = (level - noise.low) * noise.perLevel;
-  return noise.sds[b > 0 ? (b < BINS - 1 ? b | 0 : BINS - 1) : 0];
+export const sdAt = (noise: NoiseByLevel, level: number): number => noise.sds[binOf(noise, level)];
+
+function binOf({ low, perLevel }: NoiseByLevel, level: number): number {
+  const b = (level - low) * perLevel;
+  return b > 0 ? (b < BINS - 1 ? b | 0 : BINS - 1) : 0;
+}
+
+/** Variance of the noise of each group's mean, noise white from column to column.
+ *  @param level the amplitude that the noise depends on, grouped alike; null where the noise is one number */
+export function groupVariance(noise: NoiseByLevel, groups: ColumnGroups, level: ColumnGroups | null): Float32Array {
+  const least = 1e-9 + 0.05 * noise.sd;
+  const ofPixel = noise.sds.map((sd) => Math.max(sd, least) ** 2);
+  const one = Math.max(noise.sd, least) ** 2;
+  const out = new Float32Array(groups.values.length);
+  for (let p = 0; p < out.length; p++) {
+    const v = level === null ? one : ofPixel[binOf(noise, level.values[p])];
+    out[p] = groups.counts[p] > 1 ? v / groups.counts[p] : v;
+  }
+  return out;
 }
 
 /** A difference of two angles in (−π, π], taken the short way round. */
@@ -29,14 +47,14 @@ export const shortWay = (rad: number): number =>
 /** Noise from second differences along the rows, (v₋₁ − 2 v₀ + v₊₁)/√6, by 1.4826 · median |·|: blind to slopes, little
  *  moved by walls and relief, and to no row offset at all.
  *  @param level what the noise may depend on (the amplitude), same shape, or null: one value for all pixels
- *  @param isAngle differences are taken round the circle
+ *  @param kind  `angle`: differences are taken round the circle; `relative`: over the level, which is the noise of the logarithm as long as it is small
  *  Assumes noise that is white from column to column; noise that is correlated along the row comes out too small. */
 export function measureNoise(
   values: Float32Array,
   level: Float32Array | null,
   rows: number,
   cols: number,
-  isAngle: boolean,
+  kind: "plain" | "angle" | "relative" = "plain",
 ): NoiseByLevel {
   const stride = Math.max(1, Math.ceil((rows * cols) / MOST_RESIDUALS));
   const residuals = new Float64Array(Math.ceil((rows * cols) / stride));
@@ -47,12 +65,13 @@ export function measureNoise(
     if (col === 0 || col === cols - 1) continue;
     let left = values[p - 1] - values[p];
     let right = values[p + 1] - values[p];
-    if (isAngle) {
+    if (kind === "angle") {
       left = shortWay(left);
       right = shortWay(right);
     }
-    const r = left + right;
     const l = level === null ? 0 : (level[p - 1] + level[p] + level[p + 1]) / 3;
+    let r = left + right;
+    if (kind === "relative") r = l > 0 ? r / l : Number.NaN;
     if (Number.isNaN(r) || Number.isNaN(l)) continue;
     residuals[n] = Math.abs(r);
     levels[n++] = l;
@@ -68,11 +87,10 @@ export function measureNoise(
   const perLevel = BINS / (high - low);
   const inBin = new Float64Array(n);
   for (let bin = 0; bin < BINS; bin++) {
+    const from = low + bin / perLevel;
+    const to = low + (bin + 1) / perLevel;
     let m = 0;
-    for (let k = 0; k < n; k++) {
-      const b = (levels[k] - low) * perLevel;
-      if (b >= bin && b < bin + 1) inBin[m++] = residuals[k];
-    }
+    for (let k = 0; k < n; k++) if (levels[k] >= from && levels[k] < to) inBin[m++] = residuals[k];
     sds[bin] = m >= LEAST_IN_BIN ? scale * medianInPlace(inBin, m) : Number.NaN;
   }
   fillFromNeighbours(sds, sd);
@@ -107,33 +125,8 @@ function fillFromNeighbours(sds: Float64Array, fallback: number): void {
 
 /** Share of the measured pixels that sit at the very top or bottom value, where those are piled up as a clipped detector
  *  piles them: many at the extreme, few at the next value inward. 0 where nothing is piled up. */
-export function clippedShare(values: Float32Array): number {
-  let low = Infinity;
-  let high = -Infinity;
-  let measured = 0;
-  for (let p = 0; p < values.length; p++) {
-    const v = values[p];
-    if (Number.isNaN(v)) continue;
-    measured++;
-    if (v < low) low = v;
-    if (v > high) high = v;
-  }
-  if (!(high > low)) return 0;
-  let nextHigh = -Infinity;
-  let nextLow = Infinity;
-  for (let p = 0; p < values.length; p++) {
-    const v = values[p];
-    if (v < high && v > nextHigh) nextHigh = v;
-    if (v > low && v < nextLow) nextLow = v;
-  }
-  const count = (x: number): number => {
-    let c = 0;
-    for (let p = 0; p < values.length; p++) if (values[p] === x) c++;
-    return c;
-  };
-  const piled = (extreme: number, next: number): number => {
-    const at = count(extreme);
-    return at >= 10 && at > 5 * count(next) ? at : 0;
-  };
-  return (piled(high, nextHigh) + piled(low, nextLow)) / measured;
+export function clippedShare({ low, high, measured }: Ends): number {
+  if (!(high.value > low.value)) return 0;
+  const piled = (end: End): number => (end.count >= 10 && end.count > 5 * end.nextCount ? end.count : 0);
+  return (piled(high) + piled(low)) / measured;
 }

@@ -1,13 +1,16 @@
 import { medianInPlace, wrapAngle } from "../../numerics/quantile.js";
-import { type NoiseByLevel, sdAt, shortWay } from "./noise.js";
+import type { ColumnGroups } from "./column_groups.js";
+import { shortWay } from "./noise.js";
 
 /** Rows further apart than this (unmeasured ones between) are not compared. */
 const LONGEST_GAP = 16;
-/** Bisquare constant: wide, so that nearly all pixels of one state keep a weight near 1 (see `v` below). */
+/** Bisquare constant: wide, so that nearly all groups of one state keep a weight near 1 (see `v` below). */
 const BISQUARE = 6;
-const ITERATIONS = 3;
-/** The start of a bisquare mean and its scale are told from this many pixels of a row. */
-const START_PIXELS = 192;
+/** Newton's steps from the median; the second moves by less than a hundredth of what the first left. */
+const STEPS = 2;
+/** The start and its scatter are told from this many groups of a row, the turn round which angles are compared from fewer. */
+const START_GROUPS = 64;
+const TURN_GROUPS = 32;
 
 /** Differences from one measured row to the next. Index k ≥ 1 is the link from `rows[k − 1]` to `rows[k]`; index 0 is empty. */
 export interface RowLinks {
@@ -17,38 +20,35 @@ export interface RowLinks {
   readonly difference: Float64Array;
   /** Variance that this link adds to the chain: what does not cancel against the link before. */
   readonly chainVariance: Float64Array;
-  /** Variance of a row's mean over the pixels of each link; NaN where they could not be compared. */
+  /** Variance of a row's mean over what enters each link; NaN where they could not be compared. */
   readonly ownVariance: Float64Array;
   /** Its mean: the part of the links' noise that cancels along the chain. */
   readonly rowVariance: number;
 }
 
-/** Robust differences of adjacent rows, over pixels of unchanged state.
+/** Robust differences of adjacent rows, over groups of unchanged state.
  *
- *  Each is a bisquare mean of pixel differences, weighted by 1/noise², started from the median. The median alone (or any robust
- *  estimate with few pixels in full weight) makes errors that are independent from link to link, so that their sum walks away;
- *  differences of plain means telescope to the two end rows. With a wide bisquare on pixels known to be of one state nearly all
- *  weights are equal and the errors telescope but for the pixels whose weight changes: that remainder is `chainVariance`.
- *  @param values row-major [rows, cols]; NaN = not measured. Angles in rad where `isAngle`
- *  @param level the amplitude, for the noise at each pixel; null where the noise is one number
- *  @param flat 1 = no state boundary near in the direction of the columns; null = all pixels
+ *  Each is a bisquare mean of the groups' differences, weighted by 1/noise², from the median by Newton's steps. The median alone (or any robust
+ *  estimate with few groups in full weight) makes errors that are independent from link to link, so that their sum walks away;
+ *  differences of plain means telescope to the two end rows. With a wide bisquare on groups known to be of one state nearly all
+ *  weights are equal and the errors telescope but for the groups whose weight changes: that remainder is `chainVariance`.
+ *  @param groups of values; angles in rad where `isAngle`
+ *  @param variance of the noise of each group
+ *  @param flat 1 = no state boundary near in the direction of the columns; null = all groups
+ *  @param leastPixels rows are compared over at least so many pixels
+ *  @param mostSpread differences scatter by more than the noise where there is relief or texture: at most so many times is believed
  *  Source: median of differences and angle of Σ z_i z*_{i−1} are standard practice; the weights and variances are ours. */
 export function linkRows(
-  values: Float32Array,
-  level: Float32Array | null,
+  groups: ColumnGroups,
+  variance: Float32Array,
   flat: Uint8Array | null,
-  noise: NoiseByLevel,
-  rows: number,
-  cols: number,
   isAngle: boolean,
   leastPixels: number,
+  mostSpread: number,
 ): RowLinks {
-  const entering: number[] = [];
-  for (let i = 0; i < rows; i++) {
-    let n = 0;
-    for (let j = 0; j < cols; j++) if (!Number.isNaN(values[i * cols + j])) n++;
-    if (n >= leastPixels) entering.push(i);
-  }
+  const { values, cols } = groups;
+  const least = Math.ceil(leastPixels / groups.each);
+  const entering = enteringRows(groups, least);
   const count = entering.length;
   const difference = new Float64Array(count).fill(Number.NaN);
   const chainVariance = new Float64Array(count).fill(Number.NaN);
@@ -56,14 +56,12 @@ export function linkRows(
   let weight = new Float64Array(cols);
   let before = new Float64Array(cols);
   let hasBefore = false;
-  const e = new Float64Array(cols);
+  const row = { e: new Float64Array(cols), inverseVariance: new Float64Array(cols), weight: new Float64Array(cols) };
+  const { e, inverseVariance } = row;
   const scratch = new Float64Array(cols);
-  const inverseVariance = new Float64Array(cols);
   const column = new Int32Array(cols);
   let rowVarianceSum = 0;
   let links = 0;
-  const leastSd = 1e-9 + 0.05 * noise.sd;
-  const variance = (at: number): number => Math.max(level === null ? noise.sd : sdAt(noise, at), leastSd) ** 2;
   for (let k = 1; k < count; k++) {
     const up = entering[k - 1] * cols;
     const down = entering[k] * cols;
@@ -72,66 +70,34 @@ export function linkRows(
       for (let j = 0; j < cols; j++) {
         const step = values[down + j] - values[up + j];
         if (Number.isNaN(step) || (flat !== null && (flat[up + j] & flat[down + j]) === 0)) continue;
-        inverseVariance[n] = 1 / (level === null ? variance(0) : variance(0.5 * (level[up + j] + level[down + j])));
+        inverseVariance[n] = 2 / (variance[up + j] + variance[down + j]);
         e[n] = isAngle ? shortWay(step) : step;
         column[n++] = j;
       }
     }
-    if (n < leastPixels) {
-      hasBefore = false;
-      continue;
-    }
-    const every = Math.ceil(n / START_PIXELS);
-    let turn = 0;
-    if (isAngle) {
-      let c = 0;
-      let s = 0;
-      for (let m = 0; m < n; m += every) {
-        c += inverseVariance[m] * Math.cos(e[m]);
-        s += inverseVariance[m] * Math.sin(e[m]);
-      }
-      turn = Math.atan2(s, c);
-      for (let m = 0; m < n; m++) e[m] = shortWay(e[m] - turn);
-    }
+    hasBefore &&= n >= least;
+    if (n < least) continue;
+    const turn = isAngle ? commonTurn(e, inverseVariance, n) : 0;
+    if (turn !== 0) for (let m = 0; m < n; m++) e[m] = shortWay(e[m] - turn);
+    const every = Math.ceil(n / START_GROUPS);
     let some = 0;
     for (let m = 0; m < n; m += every) scratch[some++] = e[m];
-    let d = medianInPlace(scratch, some);
-    // relief and texture make differences wider than the noise; twice the noise is the most that is believed
+    const start = medianInPlace(scratch, some);
     some = 0;
-    for (let m = 0; m < n; m += every) scratch[some++] = Math.abs(e[m] - d) * Math.sqrt(inverseVariance[m] / 2);
-    const spread = medianInPlace(scratch, some);
-    const scale = level === null ? Math.max(1, 1.4826 * spread) : Math.min(2, Math.max(1, 1.4826 * spread));
-    const perVariance = 1 / (2 * BISQUARE * BISQUARE * scale * scale);
-    let total = 0;
-    for (let iteration = 0; iteration < ITERATIONS; iteration++) {
-      let sum = 0;
-      total = 0;
-      for (let m = 0; m < n; m++) {
-        const r = e[m] - d;
-        const one = 1 - r * r * inverseVariance[m] * perVariance;
-        const w = one > 0 ? one * one * inverseVariance[m] : 0;
-        scratch[m] = w;
-        total += w;
-        sum += w * r;
-      }
-      if (!(total > 0)) break;
-      d += sum / total;
-    }
-    if (!(total > 0)) {
-      hasBefore = false;
-      continue;
-    }
-    difference[k] = isAngle ? wrapAngle(d + turn) : d;
+    for (let m = 0; m < n; m += every) scratch[some++] = (e[m] - start) * (e[m] - start) * inverseVariance[m];
+    const spread = 1.4826 * Math.sqrt(medianInPlace(scratch, some) / 2);
+    const { mean, total } = bisquareMean(row, n, start, Math.min(mostSpread, Math.max(1, spread)));
+    hasBefore &&= total > 0;
+    if (!(total > 0)) continue;
+    difference[k] = isAngle ? wrapAngle(mean + turn) : mean;
     weight.fill(0);
-    for (let m = 0; m < n; m++) weight[column[m]] = scratch[m];
+    for (let m = 0; m < n; m++) weight[column[m]] = row.weight[m] / total;
     let chain = 0;
     let own = 0;
     for (let j = 0; j < cols; j++) {
-      const w = weight[j] / total;
-      weight[j] = w;
+      const w = weight[j];
       const b = hasBefore ? before[j] : w;
-      if (w === 0 && b === 0) continue;
-      const v = level === null ? variance(0) : variance(level[up + j]);
+      const v = variance[up + j];
       chain += v * (w - b) * (w - b);
       own += v * w * w;
     }
@@ -149,4 +115,59 @@ export function linkRows(
     ownVariance,
     rowVariance: links > 0 ? rowVarianceSum / links : 0,
   };
+}
+
+/** Rows in which enough was measured. */
+function enteringRows({ values, rows, cols }: ColumnGroups, least: number): number[] {
+  const out: number[] = [];
+  for (let i = 0; i < rows; i++) {
+    let n = 0;
+    for (let p = i * cols; p < (i + 1) * cols; p++) if (!Number.isNaN(values[p])) n++;
+    if (n >= least) out.push(i);
+  }
+  return out;
+}
+
+/** Mean direction of some of the first n angles. */
+function commonTurn(e: Float64Array, weight: Float64Array, n: number): number {
+  const every = Math.ceil(n / TURN_GROUPS);
+  let c = 0;
+  let s = 0;
+  for (let m = 0; m < n; m += every) {
+    c += weight[m] * Math.cos(e[m]);
+    s += weight[m] * Math.sin(e[m]);
+  }
+  return Math.atan2(s, c);
+}
+
+/** Bisquare mean of the first n differences, each of twice the variance given; their weights go into `row.weight`. */
+function bisquareMean(
+  row: { readonly e: Float64Array; readonly inverseVariance: Float64Array; readonly weight: Float64Array },
+  n: number,
+  start: number,
+  spread: number,
+): { mean: number; total: number } {
+  const { e, inverseVariance, weight } = row;
+  const perVariance = 1 / (2 * BISQUARE * BISQUARE * spread * spread);
+  let mean = start;
+  let total = 0;
+  for (let step = 0; step < STEPS; step++) {
+    let sum = 0;
+    let slope = 0;
+    total = 0;
+    for (let m = 0; m < n; m++) {
+      const r = e[m] - mean;
+      const u = r * r * inverseVariance[m] * perVariance;
+      const one = u < 1 ? (1 - u) * inverseVariance[m] : 0;
+      const w = one * (1 - u);
+      weight[m] = w;
+      total += w;
+      sum += w * r;
+      slope += one * (1 - 5 * u);
+    }
+    if (!(total > 0)) break;
+    // among many outliers the weighted mean's own, shorter step
+    mean += sum / (slope > 0.5 * total ? slope : total);
+  }
+  return { mean, total };
 }

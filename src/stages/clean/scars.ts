@@ -9,116 +9,114 @@ const SHARPNESS = 0.4;
 const SD_OF_DEPARTURE = Math.sqrt(1.5);
 
 export interface Scars {
-  /** 1 = scarred. */
-  readonly mask: Uint8Array;
-  readonly pixels: number;
-  readonly runs: number;
+  /** Scarred pixels: from and up to (not with) which index of the image, each within one row. */
+  readonly runs: readonly (readonly [number, number])[];
+  /** A scar of two rows has two runs. */
+  readonly count: number;
 }
 
-/** Runs along a row that depart from the rows above and below: the same sign over at least `leastPixels`, each pixel by more than
- *  half of `sigmas` standard deviations of the noise and their mean by more than `sigmas`, while the rows above and below
- *  agree with each other and with the rows beyond them. Nothing is filled in.
- *  @param values row-major [rows, cols], rows already referenced to each other; NaN = not measured
- *  @param level the amplitude that the noise depends on, or null */
-export function findScars(
-  values: Float32Array,
-  level: Float32Array | null,
-  noise: NoiseByLevel,
-  rows: number,
-  cols: number,
-  isAngle: boolean,
-  sigmas: number,
-  leastPixels: number,
-): Scars {
-  const scene: Scene = { values, rows, cols, isAngle };
-  const mask = new Uint8Array(rows * cols);
-  let runs = 0;
-  const depart = new Float64Array(cols);
-  const sd = new Float64Array(cols).fill(noise.sd * SD_OF_DEPARTURE);
-  const quiet = 0.5 * sigmas * SD_OF_DEPARTURE * (level === null ? noise.sd : Math.min(...noise.sds));
-  for (let thick = 1; thick <= MOST_ROWS; thick++) {
-    for (let i = 1; i + thick < rows; i++) {
-      departures(scene, i, thick, quiet, depart);
-      const up = (i - 1) * cols;
-      for (let j = 0; j < cols; j++) {
-        // most pixels are settled by the smallest noise of all: only the others ask for their own
-        if (!(Math.abs(depart[j]) > quiet) || mask[i * cols + j] === 1) continue;
-        const from = j;
-        const sign = Math.sign(depart[j]);
-        for (; j < cols && mask[i * cols + j] === 0; j++) {
-          if (level !== null) sd[j] = SD_OF_DEPARTURE * sdAt(noise, level[up + j]);
-          if (!(depart[j] * sign > 0.5 * sigmas * sd[j])) break;
-        }
-        if (j - from < leastPixels || !isScar(scene, i, thick, from, j, depart, sd, sigmas)) continue;
-        for (let t = 0; t < thick; t++) mask.fill(1, (i + t) * cols + from, (i + t) * cols + j);
-        runs++;
-      }
-    }
-  }
-  let pixels = 0;
-  for (const m of mask) pixels += m;
-  return { mask, pixels, runs };
+export interface ScarSettings {
+  readonly scarSigmas: number;
+  readonly scarLeastPixels: number;
 }
 
 interface Scene {
   readonly values: Float32Array;
+  /** The amplitude that the noise depends on, or null. */
+  readonly level: Float32Array | null;
+  readonly noise: NoiseByLevel;
   readonly rows: number;
   readonly cols: number;
   readonly isAngle: boolean;
 }
 
-/** How far `thick` rows from `row` on depart from the mean of the rows above and below them, by column; 0 for what is no more than `quiet`. */
-function departures(
-  { values, cols, isAngle }: Scene,
-  row: number,
-  thick: number,
-  quiet: number,
-  out: Float64Array,
-): void {
-  const up = (row - 1) * cols;
-  const here = row * cols;
-  const last = (row + thick - 1) * cols;
-  const down = (row + thick) * cols;
-  for (let j = 0; j < cols; j++) {
-    const base = values[up + j];
-    let across = values[down + j] - base;
-    let s = values[here + j] - base;
-    if (isAngle) {
-      across = shortWay(across);
-      s = shortWay(s);
+/** Runs along a row that depart from the rows above and below: the same sign over at least `scarLeastPixels`, each pixel by more than
+ *  half of `scarSigmas` standard deviations of the noise and their mean by more than `scarSigmas`, while the rows above and below
+ *  agree with each other and with the rows beyond them. Nothing is filled in.
+ *  @param scene values row-major [rows, cols], rows already referenced to each other; NaN = not measured */
+export function findScars(scene: Scene, s: ScarSettings): Scars {
+  const { values, level, noise, rows, cols } = scene;
+  const runs: (readonly [number, number])[] = [];
+  let count = 0;
+  const mask = new Uint8Array(rows * cols);
+  const perSd = 0.5 * s.scarSigmas * SD_OF_DEPARTURE;
+  const quiet = perSd * (level === null ? noise.sd : Math.min(...noise.sds));
+  const every = s.scarLeastPixels;
+  for (let thick = 1; thick <= MOST_ROWS; thick++) {
+    for (let i = 1; i + thick < rows; i++) {
+      const here = i * cols;
+      const up = here - cols;
+      const down = here + thick * cols;
+      // every run that is long enough holds one of these columns
+      for (let j = every - 1; j < cols; j += every) {
+        // most pixels are settled by the smallest noise of all, and angles a turn apart have no rows above and below that agree
+        const d = values[here + j] - 0.5 * (values[up + j] + values[down + j]);
+        if (!(d > quiet || d < -quiet) || mask[here + j] === 1) continue;
+        if (level !== null && Math.abs(d) < perSd * sdAt(noise, level[up + j])) continue;
+        const run = runAt(scene, i, thick, j, 0.5 * s.scarSigmas, mask);
+        if (run === null) continue;
+        j += every * Math.floor((run.to - 1 - j) / every);
+        if (run.to - run.from < s.scarLeastPixels || !isScar(scene, i, thick, run, s.scarSigmas)) continue;
+        for (let p = here; p < down; p += cols) {
+          mask.fill(1, p + run.from, p + run.to);
+          runs.push([p + run.from, p + run.to]);
+        }
+        count++;
+      }
     }
-    s -= 0.5 * across;
-    if (!(s > quiet || s < -quiet)) {
-      out[j] = 0;
-      continue;
-    }
-    if (thick > 1) {
-      // both rows must depart: a scar of one row is not to take its neighbour along
-      let t = values[last + j] - base;
-      if (isAngle) t = shortWay(t);
-      t -= 0.5 * across;
-      s = s > 0 && t > 0 ? Math.min(s, t) : s < 0 && t < 0 ? Math.max(s, t) : 0;
-    }
-    out[j] = s;
   }
+  return { runs, count };
 }
 
-function isScar(
-  scene: Scene,
-  row: number,
-  thick: number,
-  from: number,
-  to: number,
-  depart: Float64Array,
-  sd: Float64Array,
-  sigmas: number,
-): boolean {
+/** Columns from and up to (not with) which the row departs, with the sums of the departures and of their standard deviations. */
+interface Run {
+  readonly from: number;
+  readonly to: number;
+  readonly sum: number;
+  readonly sdSum: number;
+}
+
+/** The run of departures of one sign round a column, each by more than `sigmas`; null where there is none. */
+function runAt(scene: Scene, row: number, thick: number, col: number, sigmas: number, mask: Uint8Array): Run | null {
+  const { level, noise, cols } = scene;
+  const sign = departure(scene, row, thick, col) > 0 ? 1 : -1;
   let sum = 0;
   let sdSum = 0;
-  for (let j = from; j < to; j++) {
-    sum += depart[j];
-    sdSum += sd[j];
-  }
+  const departs = (j: number): boolean => {
+    if (mask[row * cols + j] === 1) return false;
+    const d = departure(scene, row, thick, j);
+    const sd = SD_OF_DEPARTURE * (level === null ? noise.sd : sdAt(noise, level[(row - 1) * cols + j]));
+    if (!(d * sign > sigmas * sd)) return false;
+    sum += d;
+    sdSum += sd;
+    return true;
+  };
+  if (!departs(col)) return null;
+  let from = col;
+  while (from > 0 && departs(from - 1)) from--;
+  let to = col + 1;
+  while (to < cols && departs(to)) to++;
+  return { from, to, sum, sdSum };
+}
+
+/** How far `thick` rows from `row` on depart from the mean of the rows above and below them, the one that departs least; 0 where their signs differ. */
+function departure({ values, cols, isAngle }: Scene, row: number, thick: number, col: number): number {
+  const here = row * cols + col;
+  const base = values[here - cols];
+  let across = values[here + thick * cols] - base;
+  if (isAngle) across = shortWay(across);
+  let first = values[here] - base;
+  if (isAngle) first = shortWay(first);
+  first -= 0.5 * across;
+  if (thick === 1) return first;
+  // both rows must depart: a scar of one row is not to take its neighbour along
+  let last = values[here + (thick - 1) * cols] - base;
+  if (isAngle) last = shortWay(last);
+  last -= 0.5 * across;
+  return first > 0 && last > 0 ? Math.min(first, last) : first < 0 && last < 0 ? Math.max(first, last) : 0;
+}
+
+function isScar(scene: Scene, row: number, thick: number, { from, to, sum, sdSum }: Run, sigmas: number): boolean {
   if (Math.abs(sum) < sigmas * sdSum) return false;
   const least = SHARPNESS * Math.abs(sum / (to - from));
   const above = row - 1;

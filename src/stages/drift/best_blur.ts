@@ -53,6 +53,10 @@ interface RadialSpectrum {
 }
 
 const BINS = 64;
+/** The spectrum is the mean over square windows of this side, which has as many frequencies as there are bins: so many along an axis, evenly
+ *  over the image (P. D. Welch 1967, IEEE Trans. Audio Electroacoust. 15, 70). */
+const WINDOW_PX = 2 * BINS;
+const WINDOWS = 3;
 
 function radialSpectrum(
   values: Float32Array,
@@ -61,39 +65,33 @@ function radialSpectrum(
   cols: number,
   pixel: PixelSize,
 ): RadialSpectrum {
-  const paddedRows = fastLength(rows);
-  const paddedCols = fastLength(cols);
-  const windowed = new Float64Array(paddedRows * paddedCols);
-  let sum = 0;
-  let n = 0;
-  for (let p = 0; p < values.length; p++) {
-    if (usable[p] === 0) continue;
-    sum += values[p];
-    n++;
-  }
-  const mean = n > 0 ? sum / n : 0;
-  const wx = Float64Array.from({ length: cols }, (_, j) => Math.sin((Math.PI * (j + 0.5)) / cols) ** 2);
-  for (let i = 0; i < rows; i++) {
-    const wy = Math.sin((Math.PI * (i + 0.5)) / rows) ** 2;
-    for (let j = 0, p = i * cols, q = i * paddedCols; j < cols; j++, p++, q++)
-      if (usable[p] === 1) windowed[q] = (values[p] - mean) * wy * wx[j];
-  }
-  const transform = dft2(windowed, paddedRows, paddedCols);
+  const high = Math.min(rows, WINDOW_PX);
+  const wide = Math.min(cols, WINDOW_PX);
+  const paddedRows = fastLength(high);
+  const paddedCols = fastLength(wide);
   // up to the Nyquist frequency of the coarser axis: beyond it the rings are no longer whole
   const largest = Math.PI / Math.max(pixel.xNm, pixel.yNm);
+  const bins = ringOfEach(paddedRows, paddedCols, pixel, largest);
   const power = new Float64Array(BINS);
   const count = new Float64Array(BINS);
   const wavenumber = new Float64Array(BINS);
-  for (let i = 0; i < paddedRows; i++) {
-    const ky = (2 * Math.PI * (i <= paddedRows / 2 ? i : i - paddedRows)) / (paddedRows * pixel.yNm);
-    // kx = 0 holds the line offsets; negative kx the same as positive ones, the image being real
-    for (let j = 1; j < paddedCols / 2; j++) {
-      const kx = (2 * Math.PI * j) / (paddedCols * pixel.xNm);
-      const bin = Math.floor((Math.sqrt(kx * kx + ky * ky) / largest) * BINS);
-      if (bin >= BINS) break;
-      const q = 2 * (i * paddedCols + j);
-      power[bin] += transform[q] * transform[q] + transform[q + 1] * transform[q + 1];
-      count[bin] += 2;
+  const hannX = hann(wide);
+  const hannY = hann(high);
+  for (const top of startsOf(rows, high)) {
+    for (const left of startsOf(cols, wide)) {
+      const windowed = new Float64Array(paddedRows * paddedCols);
+      const mean = meanIn(values, usable, cols, top, left, high, wide);
+      for (let i = 0; i < high; i++) {
+        for (let j = 0, p = (top + i) * cols + left, q = i * paddedCols; j < wide; j++, p++, q++)
+          if (usable[p] === 1) windowed[q] = (values[p] - mean) * hannY[i] * hannX[j];
+      }
+      const transform = dft2(windowed, paddedRows, paddedCols);
+      for (let k = 0; k < bins.length; k++) {
+        const bin = bins[k];
+        if (bin >= BINS) continue;
+        power[bin] += transform[2 * k] * transform[2 * k] + transform[2 * k + 1] * transform[2 * k + 1];
+        count[bin] += 2;
+      }
     }
   }
   for (let b = 0; b < BINS; b++) {
@@ -102,4 +100,50 @@ function radialSpectrum(
   }
   const highest = Array.from(power.subarray(Math.floor(0.8 * BINS))).sort((a, b) => a - b);
   return { wavenumber, power, count, noise: highest[highest.length >> 1] };
+}
+
+const hann = (n: number): Float64Array =>
+  Float64Array.from({ length: n }, (_, k) => Math.sin((Math.PI * (k + 0.5)) / n) ** 2);
+
+/** First pixels of windows of length `side` along an axis of `n` pixels. */
+function startsOf(n: number, side: number): number[] {
+  const windows = Math.min(WINDOWS, Math.ceil(n / side));
+  return Array.from({ length: windows }, (_, k) => (windows === 1 ? 0 : Math.round((k * (n - side)) / (windows - 1))));
+}
+
+/** Ring that each frequency of a transform lies in; BINS where it does not count. kx = 0 holds the line offsets; negative kx the same as
+ *  positive ones, the image being real. */
+function ringOfEach(rows: number, cols: number, pixel: PixelSize, largest: number): Uint8Array {
+  const out = new Uint8Array(rows * cols).fill(BINS);
+  for (let i = 0; i < rows; i++) {
+    const ky = (2 * Math.PI * (i <= rows / 2 ? i : i - rows)) / (rows * pixel.yNm);
+    for (let j = 1; j < cols / 2; j++) {
+      const kx = (2 * Math.PI * j) / (cols * pixel.xNm);
+      const bin = Math.floor((Math.sqrt(kx * kx + ky * ky) / largest) * BINS);
+      if (bin >= BINS) break;
+      out[i * cols + j] = bin;
+    }
+  }
+  return out;
+}
+
+function meanIn(
+  values: Float32Array,
+  usable: Uint8Array,
+  cols: number,
+  top: number,
+  left: number,
+  high: number,
+  wide: number,
+): number {
+  let sum = 0;
+  let n = 0;
+  for (let i = top; i < top + high; i++) {
+    for (let p = i * cols + left; p < i * cols + left + wide; p++) {
+      if (usable[p] === 0) continue;
+      sum += values[p];
+      n++;
+    }
+  }
+  return n > 0 ? sum / n : 0;
 }

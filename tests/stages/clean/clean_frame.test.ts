@@ -76,6 +76,23 @@ describe("line noise", () => {
     },
   );
 
+  // wider rows are compared by groups of two and three columns
+  test.each([
+    [300, "mixed"],
+    [401, "mixed"],
+    [401, "along-rows"],
+  ] as const)("%i columns, %s: rows are aligned to what their pixels can tell", (cols, scene) => {
+    const r = residuals({ seed: 12, scene, cols, ...LINES });
+    // a row's mean over half the pixels has a noise of 0.05/√(cols/2) at most; rows full of walls have fewer of one state
+    const most = (1.25 * 0.05) / Math.sqrt(cols / 2);
+    expect(lineSd(r.gainBefore)).toBeGreaterThan(0.0085);
+    expect(lineSd(r.gain)).toBeLessThan(most);
+    expect(lineSd(r.phase)).toBeLessThan(most);
+    expect(lineSd(r.topography)).toBeLessThan(0.02);
+    expect(Math.abs((r.report.topographyRowSdNm ?? 0) / 0.15 - 1)).toBeLessThan(0.25);
+    expect(r.report.scarPixels).toBe(0);
+  });
+
   test("the line noise of a single-state frame comes out as put in", () => {
     for (const seed of [1, 2, 3]) {
       const { report } = residuals({ seed, scene: "metallic", rows: 200, ...LINES });
