@@ -11,9 +11,13 @@ import { controlFalseDiscovery, fringeShare } from "./stages/fringes/index.js";
 import { checkCourse, findLoops } from "./stages/loops/index.js";
 import { trackLevels } from "./stages/states/index.js";
 import { checkTip, missingForWidths } from "./stages/walls/index.js";
+import { openCache, trimCache, type CacheUse } from "./workers/cache_folder.js";
+import { cached, forgetTroubles, keepScratchInCache, keyOf, scratchFromCache, takeTrouble } from "./workers/cached.js";
+import type { FrameSource, Run } from "./workers/clean_task.js";
+import { DEBRIS_MAP, debrisParts } from "./workers/debris_tasks.js";
+import { unpackMap, type MeasureOutput } from "./workers/measure_task.js";
 import { makeRunner, type Runner } from "./workers/pool.js";
 import { makeScratch, removeScratch } from "./workers/scratch.js";
-import { debrisParts, unpackMap, type MeasureOutput } from "./workers/tasks.js";
 
 export interface AnalyseOptions {
   readonly settings: Settings;
@@ -21,66 +25,115 @@ export interface AnalyseOptions {
   /** Worker threads; 0 = none. The results are the same to the bit for any number. */
   readonly workers: number;
   readonly signal?: AbortSignal;
+  /** Where the results of single stages are kept for the next analysis, and how much all of them may be; absent: nowhere. */
+  readonly cache?: { readonly folder: string; readonly limitBytes: number } | undefined;
+  /** Told once why the cache cannot be used as it should. The analysis goes on without, and comes out the same. */
+  readonly onCacheTrouble?: (trouble: string) => void;
   /** Called as the work goes on: what is being done, and how far the whole has come. */
   readonly onProgress?: (stage: string, done: number, total: number) => void;
   /** Called as each stage begins, for measuring. */
   readonly onStage?: (stage: string) => void;
 }
 
-/** The whole way of one cooldown, from described files to an analysis. Nothing is written but a scratch folder, removed at the end.
- *  Throws InputError where a file stops it. */
+/** The whole way of one cooldown, from described files to an analysis. Nothing is written but a scratch folder, removed at the end, and
+ *  the cache, where one is given. Throws InputError where a file stops it. */
 export async function analyse(cooldown: Cooldown, options: AnalyseOptions): Promise<Analysis> {
   const scratch = makeScratch();
-  const runner = makeRunner(options.workers, options.signal);
+  let troubled = false;
+  const onTrouble = (trouble: string): void => {
+    if (!troubled) options.onCacheTrouble?.(trouble);
+    troubled = true;
+  };
+  const runner = makeRunner(options.workers, { signal: options.signal, onTrouble });
   try {
-    return await analyseWith(runner, scratch, cooldown, options);
+    const run = { scratch, cache: cacheFor(cooldown, options, onTrouble) };
+    const analysis = await analyseWith(runner, run, cooldown, options);
+    const trouble = takeTrouble(run);
+    if (trouble !== null) onTrouble(trouble);
+    return analysis;
   } finally {
     await runner.close();
     removeScratch(scratch);
+    if (options.cache !== undefined) trimCache(options.cache.folder, options.cache.limitBytes);
   }
 }
 
-async function analyseWith(
-  runner: Runner,
-  scratch: string,
-  cooldown: Cooldown,
-  options: AnalyseOptions,
-): Promise<Analysis> {
+/** Bytes a frame of results without full-size rasters: previews, profiles, maps. */
+const SMALL_BYTES = 400_000;
+/** Bytes a pixel of the two kinds of rasters kept: three channels as cleaned; signal, share and states. */
+const RASTER_BYTES = 12 + 14;
+
+function cacheFor(
+  { frames }: Cooldown,
+  { cache }: AnalyseOptions,
+  onTrouble: (trouble: string) => void,
+): CacheUse | null {
+  if (cache === undefined) return null;
+  forgetTroubles();
+  const rasters = frames.reduce((sum, f) => sum + RASTER_BYTES * f.rows * f.cols, 0);
+  const opened = openCache(cache.folder, cache.limitBytes, { rasters, small: SMALL_BYTES * frames.length });
+  if (opened.trouble !== null) onTrouble(opened.trouble);
+  return opened.use;
+}
+
+/** Some of the settings: a task is given those that it uses. */
+function only<K extends keyof Settings>(settings: Settings, ...names: readonly K[]): Pick<Settings, K> {
+  return Object.fromEntries(names.map((n) => [n, settings[n]])) as Pick<Settings, K>;
+}
+
+async function analyseWith(runner: Runner, run: Run, cooldown: Cooldown, options: AnalyseOptions): Promise<Analysis> {
   const { settings } = options;
-  const { frames, tip } = cooldown;
-  const run = { scratch, settings };
+  const { frames, tip, pixel } = cooldown;
   const notices: Notice[] = [...cooldown.notices];
   const step = progressOf(frames.length, options);
-  const begin = (stage: string): void => options.onStage?.(stage);
+  const begin = (stage: string): void => {
+    options.onStage?.(stage);
+    // What a stage has added must not wait for the end of the run to make room.
+    if (options.cache !== undefined) trimCache(options.cache.folder, options.cache.limitBytes);
+  };
 
   // 1. Clean every frame; full-size rasters stay in the scratch folder.
   begin("cleaning");
   const cleaned = await runner.map(
     "clean",
-    frames.map((info) => ({ ...run, cooldown: { pixel: cooldown.pixel }, info })),
+    frames.map((info) => ({ ...run, pixel, info, settings: only(settings, "clean", "drift") })),
     step("cleaning"),
   );
   for (const c of cleaned) notices.push(...c.notices);
+  const sources = cleaned.map(({ key }, k): FrameSource => ({
+    pixel,
+    info: frames[k],
+    settings: only(settings, "clean"),
+    key,
+  }));
 
   // 2. Place every frame: pairs near in order first, then every useful pair that the first solution shows to overlap.
   begin("placing");
-  const { drifts, driftPairs } = await placeFrames(runner, run, cooldown, notices, step("placing"));
+  const { drifts, driftPairs } = await placeFrames(runner, run, sources, settings, notices, step("placing"));
 
   // 3. Debris: what stays on the sample while the domains come and go.
   begin("debris");
   const size = { rows: Math.max(...frames.map((f) => f.rows)), cols: Math.max(...frames.map((f) => f.cols)) };
-  const parts = debrisParts(frames.length);
-  const debris = { ...run, drifts, size, tip };
-  await runner.map(
-    "debris",
-    parts.map((members, part) => ({ ...debris, part, frames: members })),
-  );
-  await runner.map("debrisMap", [{ ...debris, part: parts.length - 1 }]);
+  const ofDebris = { drifts, size, tip, settings: only(settings, "debris") };
+  const debris = keyOf(run.cache, "debris", { frames: sources.map((f) => f.key), ...ofDebris });
+  if (!scratchFromCache(run.cache, "debris", debris, run.scratch, DEBRIS_MAP)) {
+    const parts = debrisParts(frames.length);
+    await runner.map(
+      "debris",
+      parts.map((members, part) => ({ ...run, ...ofDebris, part, frames: members.map((k) => sources[k]) })),
+    );
+    await runner.map("debrisMap", [{ ...run, ...ofDebris, part: parts.length - 1 }]);
+    keepScratchInCache(run.cache, "debris", debris, run.scratch, DEBRIS_MAP);
+  }
 
   // 4. Levels of the two states, frame by frame, then carried along the temperature.
   begin("levels");
-  const perFrame = frames.map((f) => ({ ...run, frame: f.frame, drift: drifts[f.frame] as Drift, tip }));
-  const fits = await runner.map("levels", perFrame, step("levels"));
+  const perFrame = sources.map((source, frame) => ({ ...run, frame, source, drift: drifts[frame], tip, debris }));
+  const fits = await runner.map(
+    "levels",
+    perFrame.map((p) => ({ ...p, settings: only(settings, "debris", "states") })),
+    step("levels"),
+  );
   const track = trackLevels(fits, frames, settings.states);
   notices.push(...track.notices);
 
@@ -93,6 +146,7 @@ async function analyseWith(
       fit: fits[k] as (typeof fits)[number],
       levels: track.levels[k] as FrameLevels,
       seed: childSeed(settings.run.seed, p.frame),
+      settings: only(settings, "debris", "states", "walls", "fringes", "domains"),
     })),
     step("measuring"),
   );
@@ -103,15 +157,19 @@ async function analyseWith(
     measured.flatMap((m) => m.fringes),
     settings.fringes,
   );
-  const domains = trackDomains(
-    {
-      count: frames.length,
-      at: (k) => labelDomains(unpackMap((measured[k] as MeasureOutput).map, cooldown.pixel), k, tip, settings.domains),
-    },
-    drifts,
-    settings.domains,
-    tip,
-    apparentWidthNm(measured),
+  const apparentNm = apparentWidthNm(measured);
+  const ofHistories = { maps: measured.map((m) => m.map), pixel, drifts, settings: settings.domains, tip, apparentNm };
+  const domains = await cached(run.cache, "histories", ofHistories, () =>
+    trackDomains(
+      {
+        count: frames.length,
+        at: (k) => labelDomains(unpackMap(measured[k].map, pixel), k, tip, settings.domains),
+      },
+      drifts,
+      settings.domains,
+      tip,
+      apparentNm,
+    ),
   );
   const course = frames.map((f, k) => ({
     cycle: f.cycle,
@@ -185,13 +243,14 @@ async function analyseWith(
 
 async function placeFrames(
   runner: Runner,
-  run: { scratch: string; settings: Settings },
-  cooldown: Cooldown,
+  run: Run,
+  sources: readonly FrameSource[],
+  settings: Settings,
   notices: Notice[],
   onDone: () => void,
 ): Promise<{ readonly drifts: readonly Drift[]; readonly driftPairs: readonly DriftPair[] }> {
-  const { frames } = cooldown;
-  const s = run.settings.drift;
+  const frames = sources.map((f) => f.info);
+  const s = settings.drift;
   const measure = async (
     pairs: readonly (readonly [number, number])[],
     at: readonly Drift[] | null,
@@ -203,6 +262,8 @@ async function placeFrames(
       moving.map((frame) => ({
         ...run,
         frame,
+        source: sources[frame],
+        settings: only(settings, "drift"),
         against: pairs.flatMap(([reference, m]) => {
           if (m !== frame) return [];
           const a = at?.[reference];
@@ -211,7 +272,7 @@ async function placeFrames(
           const predicted = known
             ? { xNm: (b.xNm as number) - (a.xNm as number), yNm: (b.yNm as number) - (a.yNm as number) }
             : null;
-          return [{ reference, predicted }];
+          return [{ source: sources[reference], predicted }];
         }),
       })),
       onDone,

@@ -87,7 +87,7 @@ export async function runDemo(args: readonly string[]): Promise<number> {
     mkdirSync(dir, { recursive: true });
     const files = demo(path.join(dir, "cooldowns"), { size: small ? "small" : "full" });
     const db = path.join(dir, "demo.sqlite");
-    for (const yaml of files) await ingest(yaml, { db });
+    for (const yaml of files) await ingest(yaml, { db, cache: false });
     print("\n");
     loops({ db, format: "text" });
 

@@ -7,6 +7,7 @@ import { countOf, plainText } from "../model/text.js";
 import { readCooldown, sizeProblems } from "../input/index.js";
 import { settingRecord, settingsWith, type Settings } from "../settings.js";
 import { openForWriting } from "../store/open.js";
+import { cacheFolderOf } from "../workers/cache_folder.js";
 import { removeUnfilled } from "../store/unfilled.js";
 import { contentHash, description, workHash } from "../store/identity.js";
 import { findAnalysis, saveAnalysis } from "../store/save.js";
@@ -25,6 +26,9 @@ export interface IngestOptions {
   readonly watch?: boolean;
   readonly until?: string;
   readonly every?: string;
+  /** False with `--no-cache`. */
+  readonly cache?: boolean;
+  readonly cacheMb?: string;
 }
 
 export function workerCount(text: string | undefined): number {
@@ -35,10 +39,30 @@ export function workerCount(text: string | undefined): number {
   return n;
 }
 
+/** How much the cache of a database may hold where nobody says, MB. */
+const CACHE_MB = 2000;
+
+/** The cache that the command line asks for; undefined: none. */
+export function cacheOption(o: IngestOptions): { folder: string; limitBytes: number } | undefined {
+  if (o.cache === false) return undefined;
+  const mb = o.cacheMb === undefined ? CACHE_MB : Number(o.cacheMb);
+  if (!(mb >= 0 && mb <= 1e9))
+    throw new UsageError(
+      `--cache-mb ${String(o.cacheMb)}: expected a number of megabytes`,
+      `leave it out for ${CACHE_MB}, or use --no-cache`,
+    );
+  return { folder: cacheFolderOf(o.db), limitBytes: mb * 1e6 };
+}
+
 /** Analyses a cooldown with a progress bar on standard error. Throws what `analyse` throws, an AbortError where it was stopped. */
 export async function runAnalysis(
   cooldown: Cooldown,
-  o: { readonly settings: Settings; readonly workers: number; readonly signal: AbortSignal },
+  o: {
+    readonly settings: Settings;
+    readonly workers: number;
+    readonly signal: AbortSignal;
+    readonly cache: ReturnType<typeof cacheOption>;
+  },
 ): Promise<Analysis> {
   // Loaded only now: a repeated ingest needs none of the numerics.
   const { analyse } = await import("../analyse.js");
@@ -48,6 +72,7 @@ export async function runAnalysis(
       ...o,
       programVersion: programVersion(),
       onProgress: (stage, done, total) => progress.update(stage, done, total),
+      onCacheTrouble: (trouble) => say(`note: cache: ${plainText(trouble)}`),
     });
   } finally {
     progress.stop();
@@ -59,6 +84,7 @@ export async function runAnalysis(
 export async function ingest(yaml: string | readonly string[], o: IngestOptions): Promise<number> {
   const workers = workerCount(o.workers);
   const settings = settingsWith(o.set);
+  const cache = cacheOption(o);
   // Before the database is made: a description that cannot be used leaves nothing behind.
   const cooldown = await readCooldown(yaml, { allowOutside: o.allowOutside === true });
   const small = sizeProblems(cooldown.frames);
@@ -83,7 +109,7 @@ export async function ingest(yaml: string | readonly string[], o: IngestOptions)
       say(
         `${plainText(cooldown.cooldown)}: ${countOf(known, "frame")} known, ${cooldown.frames.length - known} new; the whole is analysed`,
       );
-    const analysis = await runAnalysis(cooldown, { settings, workers, signal: abort.signal });
+    const analysis = await runAnalysis(cooldown, { settings, workers, signal: abort.signal, cache });
     abort.signal.throwIfAborted();
     await refuseChangedSources(cooldown);
     const saved = saveAnalysis(db, analysis, new Date());

@@ -57,6 +57,8 @@ function build(): Command {
     .option("--workers <n>", "worker threads (default: the cores; 0: none)")
     .option("--set <name=value>", "change a setting; may be repeated", collect, [])
     .option("--allow-outside", "allow image files outside the folder of the YAML file")
+    .option("--no-cache", "keep nothing of the stages for the next ingest, and use nothing that was kept")
+    .option("--cache-mb <n>", "most that the cache beside the database may hold, MB (default: 2000)")
     .option("--watch", "while the run goes on: take in each new frame as it comes, and show the loop so far")
     .option("--until <n>", "with --watch: end when so many frames are taken in (default: Ctrl-C ends it)")
     .option("--every <s>", "with --watch: seconds from one look at the files to the next (default: 2)")
@@ -65,6 +67,13 @@ function build(): Command {
         ? (await import("./watch.js")).watch(yaml, o)
         : void (await (await import("./ingest.js")).ingest(yaml, o)),
     );
+
+  program
+    .command("cache")
+    .description("how large the cache beside a database is; it may be deleted at any time")
+    .addOption(db())
+    .option("--clear", "delete it")
+    .action(async (o: object) => (await import("./cache.js")).cache(o as never));
 
   program
     .command("cooldowns")

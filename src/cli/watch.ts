@@ -8,7 +8,7 @@ import { settingRecord, settingsWith, type Settings } from "../settings.js";
 import { canonical, contentHash, description, workHash } from "../store/identity.js";
 import { openForWriting } from "../store/open.js";
 import { checkName, findAnalysis, saveAnalysis, watchedAnalyses, WATCHED } from "../store/save.js";
-import { runAnalysis, workerCount, type IngestOptions } from "./ingest.js";
+import { cacheOption, runAnalysis, workerCount, type IngestOptions } from "./ingest.js";
 import { loopPlot } from "./loop_plot.js";
 import { programVersion } from "./main.js";
 import { print, say } from "./say.js";
@@ -22,6 +22,7 @@ interface Watch {
   readonly settings: Settings;
   readonly workers: number;
   readonly signal: AbortSignal;
+  readonly cache: ReturnType<typeof cacheOption>;
 }
 
 /** What the database holds of the run. */
@@ -56,6 +57,7 @@ export async function watch(yaml: readonly string[], o: IngestOptions): Promise<
     settings: settingsWith(o.set),
     workers: workerCount(o.workers),
     signal: abort.signal,
+    cache: cacheOption(o),
   };
   // Before hours of waiting: is there a description, may the database be written?
   for (const file of yaml) {

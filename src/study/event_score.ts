@@ -5,7 +5,7 @@ import { dataOf } from "../model/raster.js";
 import { INSULATING, METALLIC, NO_STATE } from "../model/signal.js";
 import type { Settings } from "../settings.js";
 import { labelDomains } from "../stages/domains/index.js";
-import { unpackMap } from "../workers/tasks.js";
+import { unpackMap } from "../workers/measure_task.js";
 import { answered, eventsBetween, eventsOf, type DomainEvent } from "./domain_events.js";
 
 /** Births, deaths, splits and merges of large domains: how many there were and were found, how many were told and were right. */

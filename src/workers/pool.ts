@@ -3,6 +3,7 @@ import { fileURLToPath } from "node:url";
 import path from "node:path";
 import { Piscina } from "piscina";
 import { fromErrorRecord, InputError } from "../model/errors.js";
+import { takeTrouble } from "./cached.js";
 import { tasks, type Reply, type TaskInput, type TaskName, type TaskOutput } from "./tasks.js";
 
 /** Runs named tasks, in threads or in line; results come back in the order of the inputs whatever the number of workers. */
@@ -28,13 +29,14 @@ const DOING: Readonly<Record<TaskName, string>> = {
   measure: "measuring",
 };
 
+const numberOf = (source: unknown): string => String((source as { info: { frame: number } }).info.frame);
+
 /** `frame 3`, or the whole cooldown: what a task is about. */
 function aboutOf(input: object): string {
   if ("frame" in input) return `frame ${String(input.frame)}`;
-  if ("info" in input && typeof input.info === "object" && input.info !== null && "frame" in input.info)
-    return `frame ${String(input.info.frame)}`;
+  if ("info" in input) return `frame ${numberOf(input)}`;
   if ("frames" in input && Array.isArray(input.frames))
-    return `frames ${String(input.frames[0])} to ${String(input.frames.at(-1))}`;
+    return `frames ${numberOf(input.frames[0])} to ${numberOf(input.frames.at(-1))}`;
   return "all frames";
 }
 
@@ -59,11 +61,19 @@ function lost(e: unknown, name: TaskName, input: object): InputError {
   );
 }
 
+export interface RunnerOptions {
+  /** Aborts the run: pending tasks reject with the signal's reason. */
+  readonly signal?: AbortSignal | undefined;
+  /** Module that the threads run; it answers as `worker.ts` does. */
+  readonly file?: string;
+  /** Told why something could not be kept in the cache, by each thread once at most. */
+  readonly onTrouble?: (trouble: string) => void;
+}
+
 /** @param workers number of threads; 0 runs everything in the calling thread, with the same results to the bit
- *  @param signal aborts the run: pending tasks reject with the signal's reason
- *  @param file   module that the threads run; it answers as `worker.ts` does
  *  The tasks reject with InputError where a file or the end of a thread stopped them; any other error names its frame. */
-export function makeRunner(workers: number, signal?: AbortSignal, file = workerFile()): Runner {
+export function makeRunner(workers: number, options: RunnerOptions = {}): Runner {
+  const { signal, file = workerFile(), onTrouble } = options;
   if (workers === 0) {
     return {
       async map<N extends TaskName>(name: N, inputs: readonly TaskInput<N>[], onDone?: () => void) {
@@ -72,6 +82,8 @@ export function makeRunner(workers: number, signal?: AbortSignal, file = workerF
           signal?.throwIfAborted();
           try {
             out.push(await tasks[name](input));
+            const trouble = takeTrouble(input);
+            if (trouble !== null) onTrouble?.(trouble);
           } catch (e) {
             throw named(e, name, input);
           }
@@ -104,6 +116,7 @@ export function makeRunner(workers: number, signal?: AbortSignal, file = workerF
             throw signal?.aborted === true ? e : lost(e, name, input);
           }
           if (!reply.ok) throw named(fromErrorRecord(reply.error), name, input);
+          if (reply.trouble != null) onTrouble?.(reply.trouble);
           onDone?.();
           return reply.value;
         }),

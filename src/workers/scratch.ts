@@ -1,7 +1,17 @@
-import { mkdtempSync, readFileSync, readdirSync, rmSync, statSync, writeFileSync } from "node:fs";
+import {
+  existsSync,
+  mkdtempSync,
+  readFileSync,
+  readdirSync,
+  renameSync,
+  rmSync,
+  statSync,
+  writeFileSync,
+} from "node:fs";
 import { tmpdir } from "node:os";
 import path from "node:path";
 import { deserialize, serialize } from "node:v8";
+import { threadId } from "node:worker_threads";
 import { InputError } from "../model/errors.js";
 import { colsOf, dataOf, makeRaster, rowsOf, type PixelSize, type Raster } from "../model/raster.js";
 import type { CleanFrame } from "../model/signal.js";
@@ -71,8 +81,22 @@ export function removeScratch(dir: string): void {
 
 /** Keeps any structured-cloneable value under a name. */
 export function keep(dir: string, name: string, value: unknown): void {
-  spaceFor(path.dirname(dir), () => writeFileSync(path.join(dir, name), serialize(value)));
+  keepBytes(dir, name, serialize(value));
 }
+
+/** Keeps bytes as they are, put in place whole: another thread may look for them at any moment. */
+export function keepBytes(dir: string, name: string, bytes: Uint8Array): void {
+  const part = path.join(dir, `${name}.part-${threadId}`);
+  spaceFor(path.dirname(dir), () => {
+    writeFileSync(part, bytes);
+    renameSync(part, path.join(dir, name));
+  });
+}
+
+/** The bytes of a kept value. */
+export const fetchBytes = (dir: string, name: string): Uint8Array => readFileSync(path.join(dir, name));
+
+export const isKept = (dir: string, name: string): boolean => existsSync(path.join(dir, name));
 
 /** Reads a kept value back; the caller names its type, as it was the one to keep it. */
 export function fetchKept<T>(dir: string, name: string): T {

@@ -35,7 +35,7 @@ async function failure(run: Promise<unknown>): Promise<Error> {
 }
 
 test("a thread that ends under its task: the frame is named, the run rejects, and closing it is clean", async () => {
-  runner = makeRunner(2, undefined, path.join(here, "exiting_worker.mjs"));
+  runner = makeRunner(2, { file: path.join(here, "exiting_worker.mjs") });
   const inputs = [0, 1, 2, 3].map((frame) => ({ ...input(frame), how: "exit" }));
   const e = await failure(runner.map("levels", inputs));
   expect(e).toBeInstanceOf(InputError);

@@ -4,7 +4,7 @@ import { fileURLToPath } from "node:url";
 import { makeRunner } from "../../dist/workers/pool.js";
 
 const here = path.dirname(fileURLToPath(import.meta.url));
-const runner = makeRunner(2, undefined, path.join(here, "exiting_worker.mjs"));
+const runner = makeRunner(2, { file: path.join(here, "exiting_worker.mjs") });
 try {
   await runner.map(
     "levels",

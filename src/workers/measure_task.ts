@@ -1,0 +1,157 @@
+import { deflateSync, inflateSync } from "node:zlib";
+import type { PackedMap } from "../model/analysis.js";
+import type { DomainRegion } from "../model/domains.js";
+import type { Preview } from "../model/pictures.js";
+import { colsOf, dataOf, makeRaster, rowsOf } from "../model/raster.js";
+import type { CleanFrame, DomainMap, FrameLevels, FrameStates, FrameVerdict, Signal } from "../model/signal.js";
+import type { FringeTest, FrameWalls, WidthSummary } from "../model/walls.js";
+import type { Settings } from "../settings.js";
+import { CORE } from "../stages/debris/index.js";
+import { labelDomains } from "../stages/domains/index.js";
+import { testFringes } from "../stages/fringes/index.js";
+import { fitLevels, mapStates, type LevelFit } from "../stages/states/index.js";
+import { fitWalls, summariseWidths } from "../stages/walls/index.js";
+import { cached, keepInCache, kept, keyOf } from "./cached.js";
+import { cleanOf } from "./clean_task.js";
+import { debrisOf, knowsDebris, type FrameInput } from "./debris_tasks.js";
+import { makePreviews } from "./previews.js";
+
+export interface LevelsInput extends FrameInput {
+  readonly settings: Pick<Settings, "debris" | "states">;
+}
+
+const placed = ({ source, debris, drift, tip }: FrameInput): object => ({ frame: source.key, debris, drift, tip });
+
+export async function levels(input: LevelsInput): Promise<LevelFit> {
+  const { settings } = input;
+  return cached(input.cache, "levels", { ...placed(input), settings }, async () => {
+    const frame = await cleanOf(input, input.source);
+    return fitLevels(frame, debrisOf(input, frame), input.tip, settings.states);
+  });
+}
+
+export interface MeasureInput extends FrameInput {
+  readonly fit: LevelFit;
+  readonly levels: FrameLevels;
+  readonly seed: number;
+  readonly settings: Pick<Settings, "debris" | "states" | "walls" | "fringes" | "domains">;
+}
+
+interface MapOutput {
+  /** Final: the levels propose, the map decides. */
+  readonly verdict: FrameVerdict;
+  readonly fraction: FrameStates["fraction"];
+  readonly map: PackedMap;
+  readonly usablePixels: number;
+  readonly debrisPixels: number;
+}
+
+export interface MeasureOutput extends MapOutput {
+  readonly regions: readonly DomainRegion[];
+  readonly walls: FrameWalls;
+  readonly widths: WidthSummary;
+  readonly fringes: readonly FringeTest[];
+  readonly previews: readonly Preview[];
+}
+
+export function packMap(map: DomainMap): PackedMap {
+  return { rows: map.rows, cols: map.cols, deflated: deflateSync(map.states) };
+}
+
+export function unpackMap(packed: PackedMap, pixel: DomainMap["pixel"]): DomainMap {
+  const bytes = inflateSync(packed.deflated);
+  return {
+    rows: packed.rows,
+    cols: packed.cols,
+    pixel,
+    states: new Uint8Array(bytes.buffer, bytes.byteOffset, bytes.length),
+  };
+}
+
+interface States {
+  readonly signal: Signal;
+  readonly states: FrameStates;
+}
+
+/** The states with the share as a plain array, which can be kept. */
+interface FlatStates {
+  readonly signal: Signal;
+  readonly states: Omit<FrameStates, "share">;
+  readonly share: Float32Array;
+}
+
+function flatStates({ signal, states: { share, ...states } }: States): FlatStates {
+  return { signal, states, share: dataOf(share) };
+}
+
+function fullStates({ signal, states, share }: FlatStates): States {
+  return { signal, states: { ...states, share: makeRaster(share, signal.rows, signal.cols, signal.pixel) } };
+}
+
+function once<T>(make: () => Promise<T>): () => Promise<T> {
+  let made: Promise<T> | null = null;
+  return () => (made ??= make());
+}
+
+/** States, walls, fringes and domains of one frame, with the levels that the whole cooldown has settled. Each is kept by itself: what
+ *  a changed setting leaves alone is not done again, nor is a raster read that nobody asks for. */
+export async function measure(input: MeasureInput): Promise<MeasureOutput> {
+  const { settings: s, tip, cache, seed, fit } = input;
+  const ofStates = { ...placed(input), fit, levels: input.levels, settings: { debris: s.debris, states: s.states } };
+  const statesKey = keyOf(cache, "states", ofStates);
+  const frame = once(() => cleanOf(input, input.source));
+  const mapped = once(async (): Promise<States> => {
+    const before = kept<FlatStates>(cache, "signal", statesKey);
+    if (before !== null) return fullStates(before);
+    const clean = await frame();
+    const made = mapStates(clean, debrisOf(input, clean), fit, input.levels, tip, s.states);
+    if (cache?.rasters === true) keepInCache(cache, "signal", statesKey, flatStates(made));
+    return made;
+  });
+  const map = await cached(cache, "map", statesKey, async (): Promise<MapOutput> => {
+    const { states } = await mapped();
+    const clean = await frame();
+    return {
+      verdict: states.levels.verdict,
+      fraction: states.fraction,
+      map: packMap(states.map),
+      ...countPixels(clean, debrisOf(input, clean)),
+    };
+  });
+  const ofWalls = { states: statesKey, tip, seed, settings: s.walls };
+  const { walls, widths } = await cached(cache, "walls", ofWalls, async () => {
+    const { signal, states } = await mapped();
+    const found = fitWalls(signal, states, tip, s.walls);
+    return { walls: found, widths: summariseWidths(found.profiles, tip, s.walls, seed) };
+  });
+  const ofFringes = { walls: ofWalls, settings: s.fringes };
+  const fringes = await cached(cache, "fringes", ofFringes, async () => {
+    // A particle beside a wall turns the optical phase like a fringe: no test in a frame where nothing tells where the particles are.
+    if (!knowsDebris(input.drift, await frame())) return [];
+    const { signal, states } = await mapped();
+    return testFringes(signal, states, walls, tip, s.fringes, seed);
+  });
+  const ofDomains = { states: statesKey, tip, settings: s.domains };
+  const regions = await cached(
+    cache,
+    "domains",
+    ofDomains,
+    () => labelDomains(unpackMap(map.map, input.source.pixel), input.frame, tip, s.domains).regions,
+  );
+  const { insulating, gain } = input.levels;
+  const ofPreviews = { frame: input.source.key, correction: fit.correction, insulating, gain };
+  const previews = await cached(cache, "previews", ofPreviews, async () =>
+    makePreviews(await frame(), fit, input.levels),
+  );
+  return { ...map, regions, walls, widths, fringes, previews };
+}
+
+function countPixels(clean: CleanFrame, debris: Uint8Array): { usablePixels: number; debrisPixels: number } {
+  let usablePixels = 0;
+  const amplitude = dataOf(clean.amplitude);
+  for (let p = 0; p < rowsOf(clean.amplitude) * colsOf(clean.amplitude); p++)
+    if (debris[p] !== CORE && Number.isFinite(amplitude[p])) usablePixels++;
+  let debrisPixels = 0;
+  for (const d of debris) if (d === CORE) debrisPixels++;
+  return { usablePixels, debrisPixels };
+}
