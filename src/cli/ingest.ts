@@ -7,7 +7,7 @@ import { countOf, plainText } from "../model/text.js";
 import { readCooldown, sizeProblems } from "../input/index.js";
 import { settingRecord, settingsWith, type Settings } from "../settings.js";
 import { openForWriting } from "../store/open.js";
-import { cacheFolderOf } from "../workers/cache_folder.js";
+import { cacheFolderOf, clearCache } from "../workers/cache_folder.js";
 import { removeUnfilled } from "../store/unfilled.js";
 import { contentHash, description, workHash } from "../store/identity.js";
 import { findAnalysis, saveAnalysis } from "../store/save.js";
@@ -127,5 +127,6 @@ export async function ingest(yaml: string | readonly string[], o: IngestOptions)
     db.close();
     // Failed or stopped: no empty file is left to wonder about.
     if (isNew) removeUnfilled(o.db);
+    if (isNew && !existsSync(o.db)) clearCache(cacheFolderOf(o.db));
   }
 }

@@ -36,7 +36,7 @@ export interface OpenedCache {
 
 const why = (e: unknown): string => (e instanceof Error ? e.message : String(e));
 
-/** Makes the folder where there is none, and decides what may be kept. Never throws: a cache that cannot be used is done without.
+/** Makes the folder where there is none and something may be kept, and decides what may be kept. Never throws: a cache that cannot be used is done without.
  *  @param limitBytes what the whole folder may hold
  *  @param expected   what this run would keep: of full-size rasters and of all else, bytes */
 export function openCache(
@@ -48,18 +48,22 @@ export function openCache(
     const there = lstatSync(folder, { throwIfNoEntry: false });
     if (there !== undefined && !there.isDirectory())
       return { use: null, trouble: `${folder} is no folder; it is left alone, and nothing is kept` };
+    const rasters = expected.rasters + expected.small <= limitBytes;
+    const wanted = expected.small + (rasters ? expected.rasters : 0);
+    const disk = statfsSync(there === undefined ? path.dirname(folder) : folder);
+    const short =
+      wanted > limitBytes
+        ? "the limit"
+        : disk.bavail * disk.bsize < wanted + SPARE_BYTES
+          ? "the space left on its disk"
+          : null;
+    const trouble = short === null ? null : `nothing is added: ${short} is too small`;
     if (there === undefined) {
+      if (short !== null) return { use: null, trouble };
       mkdirSync(folder);
       writeFileSync(path.join(folder, TAG_NAME), TAG, { flag: "wx" });
     }
-    const rasters = expected.rasters + expected.small <= limitBytes;
-    const wanted = expected.small + (rasters ? expected.rasters : 0);
-    const disk = statfsSync(folder);
-    const write = wanted <= limitBytes && disk.bavail * disk.bsize >= wanted + SPARE_BYTES;
-    const trouble = write
-      ? null
-      : `nothing is added: ${wanted > limitBytes ? "the limit" : "the space left on its disk"} is too small`;
-    return { use: { folder, code: codeDigest(), write, rasters }, trouble };
+    return { use: { folder, code: codeDigest(), write: short === null, rasters }, trouble };
   } catch (e) {
     return { use: null, trouble: `${folder} cannot be used (${why(e)}); nothing is kept` };
   }

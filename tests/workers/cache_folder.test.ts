@@ -191,6 +191,10 @@ describe("the folder", () => {
     });
     expect(openCache(folder, Infinity, { rasters: 1e18, small: 0 }).trouble).toMatch(/space left on its disk/);
     expect(openCache(path.join(top, "no such folder", "c"), 1e9, SMALL)).toMatchObject({ use: null });
+    // Where nothing may be added, what is there is used, and nothing is made.
+    const other = path.join(top, "other");
+    expect(openCache(other, 0, SMALL).use).toBeNull();
+    expect(existsSync(other)).toBe(false);
   });
 });
 
