@@ -13,11 +13,11 @@ import { trackLevels } from "./stages/states/index.js";
 import { checkTip, missingForWidths } from "./stages/walls/index.js";
 import { openCache, trimCache, type CacheUse } from "./workers/cache_folder.js";
 import { cached, forgetTroubles, keepScratchInCache, keyOf, scratchFromCache, takeTrouble } from "./workers/cached.js";
-import type { FrameSource, Run } from "./workers/clean_task.js";
+import { dropDriftImages, type FrameSource, type Run } from "./workers/clean_task.js";
 import { DEBRIS_MAP, debrisParts } from "./workers/debris_tasks.js";
-import { unpackMap, type MeasureOutput } from "./workers/measure_task.js";
+import { dropLabels, isPictures, labelledFrame, picturesOf, type MeasureOutput } from "./workers/measure_task.js";
 import { makeRunner, type Runner } from "./workers/pool.js";
-import { makeScratch, removeScratch } from "./workers/scratch.js";
+import { holdScratch, makeScratch, removeScratch } from "./workers/scratch.js";
 
 export interface AnalyseOptions {
   readonly settings: Settings;
@@ -35,8 +35,8 @@ export interface AnalyseOptions {
   readonly onStage?: (stage: string) => void;
 }
 
-/** The whole way of one cooldown, from described files to an analysis. Nothing is written but a scratch folder, removed at the end, and
- *  the cache, where one is given. Throws InputError where a file stops it. */
+/** The whole way of one cooldown, from described files to an analysis. Nothing is written but a scratch folder, of which the pictures wait to
+ *  be stored (see `Analysis.release`), and the cache, where one is given. Throws InputError where a file stops it. */
 export async function analyse(cooldown: Cooldown, options: AnalyseOptions): Promise<Analysis> {
   const scratch = makeScratch();
   let troubled = false;
@@ -45,15 +45,18 @@ export async function analyse(cooldown: Cooldown, options: AnalyseOptions): Prom
     troubled = true;
   };
   const runner = makeRunner(options.workers, { signal: options.signal, onTrouble });
+  let done = false;
   try {
     const run = { scratch, cache: cacheFor(cooldown, options, onTrouble) };
     const analysis = await analyseWith(runner, run, cooldown, options);
     const trouble = takeTrouble(run);
     if (trouble !== null) onTrouble(trouble);
-    return analysis;
+    const release = holdScratch(scratch, isPictures);
+    done = true;
+    return { ...analysis, release };
   } finally {
     await runner.close();
-    removeScratch(scratch);
+    if (!done) removeScratch(scratch);
     if (options.cache !== undefined) trimCache(options.cache.folder, options.cache.limitBytes);
   }
 }
@@ -111,6 +114,8 @@ async function analyseWith(runner: Runner, run: Run, cooldown: Cooldown, options
   begin("placing");
   const { drifts, driftPairs } = await placeFrames(runner, run, sources, settings, notices, step("placing"));
 
+  dropDriftImages(run, frames.length);
+
   // 3. Debris: what stays on the sample while the domains come and go.
   begin("debris");
   const size = { rows: Math.max(...frames.map((f) => f.rows)), cols: Math.max(...frames.map((f) => f.cols)) };
@@ -163,7 +168,7 @@ async function analyseWith(runner: Runner, run: Run, cooldown: Cooldown, options
     trackDomains(
       {
         count: frames.length,
-        at: (k) => labelDomains(unpackMap(measured[k].map, pixel), k, tip, settings.domains),
+        at: (k) => labelledFrame(run, k, measured[k], pixel, (map) => labelDomains(map, k, tip, settings.domains)),
       },
       drifts,
       settings.domains,
@@ -171,6 +176,7 @@ async function analyseWith(runner: Runner, run: Run, cooldown: Cooldown, options
       apparentNm,
     ),
   );
+  dropLabels(run, frames.length);
   const course = frames.map((f, k) => ({
     cycle: f.cycle,
     branch: f.branch,
@@ -225,8 +231,12 @@ async function analyseWith(runner: Runner, run: Run, cooldown: Cooldown, options
       debrisPixels: m.debrisPixels,
       scarPixels: report.scarPixels,
       noise: report.noise,
-      previews: m.previews,
-      profileBins: m.walls.bins ?? [],
+      get previews() {
+        return picturesOf(run.scratch, k).previews;
+      },
+      get profileBins() {
+        return picturesOf(run.scratch, k).profileBins;
+      },
     };
   });
   return {

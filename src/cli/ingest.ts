@@ -113,6 +113,7 @@ export async function ingest(yaml: string | readonly string[], o: IngestOptions)
     abort.signal.throwIfAborted();
     await refuseChangedSources(cooldown);
     const saved = saveAnalysis(db, analysis, new Date());
+    analysis.release?.();
     print(
       `${plainText(cooldown.cooldown)}: ${countOf(analysis.frames.length, "frame")} stored in ${o.db} as analysis ${saved.id}\n`,
     );

@@ -180,6 +180,7 @@ async function takeIn(w: Watch, frames: number): Promise<Taken | null> {
   w.signal.throwIfAborted();
   const settled = await settle(analysis, () => readCooldown(w.yaml, options));
   if (settled === null) {
+    analysis.release?.();
     say(`${name}: the files of the frames changed meanwhile; once more`);
     return null;
   }
@@ -194,6 +195,7 @@ async function takeIn(w: Watch, frames: number): Promise<Taken | null> {
     return { analysis: saved.id, frames };
   } finally {
     again.close();
+    analysis.release?.();
   }
 }
 

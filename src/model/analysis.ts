@@ -48,7 +48,7 @@ export interface FrameResult {
   readonly debrisPixels: number;
   readonly scarPixels: number;
   readonly noise?: FrameNoise;
-  /** For drawing. */
+  /** For drawing; read from disk each time they are asked for. */
   readonly previews?: readonly Preview[];
   readonly profileBins?: readonly ProfileBins[];
 }
@@ -67,4 +67,7 @@ export interface Analysis {
   readonly notices: readonly Notice[];
   /** Every pair of frames that was compared with success, for drawing. */
   readonly driftPairs?: readonly DriftPair[];
+  /** Removes what waits on disk to be stored: previews and bins cannot be read after that. Absent: nothing waits. The end of the process
+   *  removes it too. */
+  readonly release?: () => void;
 }

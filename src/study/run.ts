@@ -35,6 +35,7 @@ export async function runOnce(
       });
     } finally {
       db.close();
+      analysis.release?.();
     }
   } finally {
     rmSync(dir, { recursive: true, force: true });

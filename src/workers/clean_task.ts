@@ -6,7 +6,7 @@ import { cleanFrame, type CleanReport } from "../stages/clean/index.js";
 import { prepareForDrift, type DriftImage } from "../stages/drift/index.js";
 import type { CacheUse } from "./cache_folder.js";
 import { keepInCache, keepScratchInCache, kept, keyOf, scratchFromCache } from "./cached.js";
-import { fetchClean, fetchKept, isKept, keep, keepClean } from "./scratch.js";
+import { drop, fetchClean, fetchKept, isKept, keep, keepClean } from "./scratch.js";
 
 /** What every task needs to know of the run. */
 export interface Run {
@@ -100,3 +100,11 @@ export async function driftImageOf(
   if (!isKept(run.scratch, name)) keep(run.scratch, name, prepareForDrift(await cleanOf(run, source), settings.drift));
   return fetchKept<DriftImage>(run.scratch, name);
 }
+
+/** What registration took from the frames is not needed any more. */
+export function dropDriftImages(run: Run, frames: number): void {
+  for (let frame = 0; frame < frames; frame++) drop(run.scratch, driftName(frame));
+}
+
+/** A frame that is done takes up no more of the disk. */
+export const dropClean = (run: Run, frame: number): void => drop(run.scratch, cleanName(frame));

@@ -3,6 +3,7 @@ import type { CleanFrame, Drift } from "../model/signal.js";
 import type { Settings } from "../settings.js";
 import { DebrisAccumulator, debrisInFrame, findDebrisInFrame, type DebrisMap } from "../stages/debris/index.js";
 import { cleanOf, type FrameSource, type Run } from "./clean_task.js";
+import { forgetImages } from "./pairs_task.js";
 import { drop, fetchKept, keep } from "./scratch.js";
 
 export interface DebrisInput extends Run {
@@ -20,7 +21,8 @@ export const DEBRIS_MAP = "debris";
 /** Frames whose debris is collected together, in order. Fixed by the number of frames alone: sums are rounded, and the answer must not hang on the
  *  number of workers. */
 export function debrisParts(frames: number): number[][] {
-  const each = Math.max(8, Math.ceil(frames / 4));
+  // An even number, for two cores; each part costs a grid.
+  const each = Math.ceil(frames / (frames > 16 ? 4 : frames > 8 ? 2 : 1));
   return Array.from({ length: Math.ceil(frames / each) }, (_, k) =>
     Array.from({ length: Math.min(each, frames - k * each) }, (_, i) => k * each + i),
   );
@@ -28,6 +30,7 @@ export function debrisParts(frames: number): number[][] {
 
 /** What stays on the sample while domains come and go, as some of the frames show it. */
 export async function debris(input: DebrisInput & { readonly frames: readonly FrameSource[] }): Promise<void> {
+  forgetImages();
   const accumulator = new DebrisAccumulator(input.drifts, input.tip, input.settings.debris, input.size);
   for (const source of input.frames) {
     const drift = input.drifts[source.info.frame];

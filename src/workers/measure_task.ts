@@ -1,7 +1,8 @@
 import { deflateSync, inflateSync } from "node:zlib";
 import type { PackedMap } from "../model/analysis.js";
-import type { DomainRegion } from "../model/domains.js";
-import type { Preview } from "../model/pictures.js";
+import type { DomainRegion, FrameDomains } from "../model/domains.js";
+import type { Preview, ProfileBins } from "../model/pictures.js";
+import type { PixelSize } from "../model/raster.js";
 import { colsOf, dataOf, makeRaster, rowsOf } from "../model/raster.js";
 import type { CleanFrame, DomainMap, FrameLevels, FrameStates, FrameVerdict, Signal } from "../model/signal.js";
 import type { FringeTest, FrameWalls, WidthSummary } from "../model/walls.js";
@@ -12,9 +13,10 @@ import { testFringes } from "../stages/fringes/index.js";
 import { fitLevels, mapStates, type LevelFit } from "../stages/states/index.js";
 import { fitWalls, summariseWidths } from "../stages/walls/index.js";
 import { cached, keepInCache, kept, keyOf } from "./cached.js";
-import { cleanOf } from "./clean_task.js";
+import { cleanOf, dropClean, type Run } from "./clean_task.js";
 import { debrisOf, knowsDebris, type FrameInput } from "./debris_tasks.js";
 import { makePreviews } from "./previews.js";
+import { drop, fetchKept, isKept, keep } from "./scratch.js";
 
 export interface LevelsInput extends FrameInput {
   readonly settings: Pick<Settings, "debris" | "states">;
@@ -51,7 +53,39 @@ export interface MeasureOutput extends MapOutput {
   readonly walls: FrameWalls;
   readonly widths: WidthSummary;
   readonly fringes: readonly FringeTest[];
+}
+
+/** What is only for drawing, and most of the bytes: it waits on disk until it is stored. */
+export interface FramePictures {
   readonly previews: readonly Preview[];
+  readonly profileBins: readonly ProfileBins[];
+}
+
+const picturesName = (frame: number): string => `pictures-${frame}`;
+export const isPictures = (name: string): boolean => /^pictures-\d+$/.test(name);
+
+export function picturesOf(scratch: string, frame: number): FramePictures {
+  return fetchKept<FramePictures>(scratch, picturesName(frame));
+}
+
+const labelsName = (frame: number): string => `labels-${frame}`;
+
+/** The labelled domains of a frame that was measured. */
+export function labelledFrame(
+  run: Run,
+  frame: number,
+  measured: MeasureOutput,
+  pixel: PixelSize,
+  label: (map: DomainMap) => FrameDomains,
+): FrameDomains {
+  const map = unpackMap(measured.map, pixel);
+  if (!isKept(run.scratch, labelsName(frame))) return label(map);
+  return { frame, map, labels: fetchKept<Int32Array>(run.scratch, labelsName(frame)), regions: measured.regions };
+}
+
+/** They are not needed once the histories are told. */
+export function dropLabels(run: Run, frames: number): void {
+  for (let frame = 0; frame < frames; frame++) drop(run.scratch, labelsName(frame));
 }
 
 export function packMap(map: DomainMap): PackedMap {
@@ -132,18 +166,20 @@ export async function measure(input: MeasureInput): Promise<MeasureOutput> {
     return testFringes(signal, states, walls, tip, s.fringes, seed);
   });
   const ofDomains = { states: statesKey, tip, settings: s.domains };
-  const regions = await cached(
-    cache,
-    "domains",
-    ofDomains,
-    () => labelDomains(unpackMap(map.map, input.source.pixel), input.frame, tip, s.domains).regions,
-  );
+  const regions = await cached(cache, "domains", ofDomains, () => {
+    const found = labelDomains(unpackMap(map.map, input.source.pixel), input.frame, tip, s.domains);
+    keep(input.scratch, labelsName(input.frame), found.labels);
+    return found.regions;
+  });
   const { insulating, gain } = input.levels;
   const ofPreviews = { frame: input.source.key, correction: fit.correction, insulating, gain };
   const previews = await cached(cache, "previews", ofPreviews, async () =>
     makePreviews(await frame(), fit, input.levels),
   );
-  return { ...map, regions, walls, widths, fringes, previews };
+  const { bins = [], ...plainWalls } = walls;
+  keep(input.scratch, picturesName(input.frame), { previews, profileBins: bins } satisfies FramePictures);
+  dropClean(input, input.frame);
+  return { ...map, regions, walls: plainWalls, widths, fringes };
 }
 
 function countPixels(clean: CleanFrame, debris: Uint8Array): { usablePixels: number; debrisPixels: number } {

@@ -28,6 +28,9 @@ async function image(run: Run, source: FrameSource, settings: Pick<Settings, "dr
   return found;
 }
 
+/** Frees them, for the stages that follow. */
+export const forgetImages = (): void => images.clear();
+
 /** Shifts of one frame against several. */
 export async function pairs(input: PairsInput): Promise<PairShift[]> {
   const { source, against, settings } = input;

@@ -79,6 +79,24 @@ export function removeScratch(dir: string): void {
   rmSync(dir, { recursive: true, force: true });
 }
 
+/** Folders of finished runs of which something is still to be read; gone at the latest when the process ends. */
+const held = new Set<string>();
+let watchingExit = false;
+
+/** Removes all of a scratch folder but what `stays`, and that as well when the answer is called or the process ends. */
+export function holdScratch(dir: string, stays: (name: string) => boolean): () => void {
+  for (const name of readdirSync(dir)) if (!stays(name)) drop(dir, name);
+  held.add(dir);
+  if (!watchingExit) {
+    watchingExit = true;
+    process.once("exit", () => held.forEach(removeScratch));
+  }
+  return () => {
+    held.delete(dir);
+    removeScratch(dir);
+  };
+}
+
 /** Keeps any structured-cloneable value under a name. */
 export function keep(dir: string, name: string, value: unknown): void {
   keepBytes(dir, name, serialize(value));
