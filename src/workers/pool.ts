@@ -1,6 +1,8 @@
 import { setMaxListeners } from "node:events";
+import { availableParallelism } from "node:os";
 import { fileURLToPath } from "node:url";
 import path from "node:path";
+import { setFlagsFromString } from "node:v8";
 import { Piscina } from "piscina";
 import { fromErrorRecord, InputError } from "../model/errors.js";
 import { takeTrouble } from "./cached.js";
@@ -94,6 +96,8 @@ export function makeRunner(workers: number, options: RunnerOptions = {}): Runner
       close: () => Promise.resolve(),
     };
   }
+  // Where every core has a thread, the compiler's own threads only take time from them, and code waits longer to be optimised.
+  if (workers >= availableParallelism()) setFlagsFromString("--no-concurrent-recompilation");
   // One listener a waiting task; that many are no leak.
   if (signal !== undefined) setMaxListeners(0, signal);
   const pool = new Piscina({

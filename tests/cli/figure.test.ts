@@ -41,6 +41,7 @@ beforeAll(async () => {
   });
   const handle = openForWriting(db);
   saveAnalysis(handle, analysis, new Date(0));
+  analysis.release?.();
   saveAnalysis(handle, sampleAnalysis({ name: "kept-no-pictures" }), new Date(0));
   handle.close();
 }, 120_000);

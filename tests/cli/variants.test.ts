@@ -45,6 +45,7 @@ async function run(name: string, spec: SpecOverrides, edit: (yaml: string) => st
   const analysis = await analyse(cooldown, { settings: settingsWith(), programVersion: "test", workers: 0 });
   const db = openForWriting(path.join(dir, `${name}.sqlite`));
   saveAnalysis(db, analysis, new Date(0));
+  analysis.release?.();
   const score = scoreCooldown(db, readTruth(path.dirname(yaml)));
   const tables = new Map(
     ["temperature", "walls", "fringes", "loops", "domains"].map((t) => [

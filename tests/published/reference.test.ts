@@ -47,6 +47,7 @@ describe.skipIf(python === null)(
       });
       const db = openForWriting(path.join(dir, "ours.sqlite"));
       saveAnalysis(db, analysis, new Date(0));
+      analysis.release?.();
       for (const name of ["temperature", "loops"]) ours[name] = [...readTable(db, tableNamed(name) as ExportedTable)];
       db.close();
       const r = spawnSync(python?.command ?? "", ["scripts/reference.py", yaml, path.join(dir, "theirs"), "1"], {

@@ -78,5 +78,6 @@ export async function ingestFile(yaml: string, db: string, day: number): Promise
     saveAnalysis(handle, analysis, new Date(Date.UTC(2026, 0, 1 + day)));
   } finally {
     handle.close();
+    analysis.release?.();
   }
 }

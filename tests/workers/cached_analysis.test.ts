@@ -31,6 +31,7 @@ async function run(cache: boolean, o: Options = {}): Promise<{ found: string; tr
   const {
     settings: _,
     cooldown: _c,
+    release,
     ...analysis
   } = await analyse(o.of ?? cooldown, {
     settings: settingsWith(o.set),
@@ -40,7 +41,9 @@ async function run(cache: boolean, o: Options = {}): Promise<{ found: string; tr
     cache: cache ? { folder, limitBytes: o.limitBytes ?? 1e9 } : undefined,
     onCacheTrouble: (t) => troubles.push(t),
   });
-  return { found: contentKey(analysis), troubles };
+  const found = contentKey(analysis);
+  release?.();
+  return { found, troubles };
 }
 
 const entries = (): string[] =>
