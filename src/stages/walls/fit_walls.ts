@@ -41,6 +41,9 @@ export function fitWalls(signal: Signal, states: FrameStates, tip: Tip | null, s
 /** So many profiles on either side of one tell how wide its wall is. */
 const NEIGHBOURS = 3;
 
+/** A profile may be so many times as wide as the frame's walls together. */
+const WIDEST = 4;
+
 /** A stretch with what its pixels say. */
 interface Fitted {
   readonly stretch: Stretch;
@@ -130,6 +133,7 @@ class FrameFit {
     if (this.projector.hasPhase) {
       this.turns = fringeAlarms(this.projector, this.stretches, near, this.noise, {
         reachNm: this.reachFor(this.apparentNm),
+        farthestNm: this.reachFor(WIDEST * this.apparentNm),
         marginNm: this.marginNm(),
         binNm: Math.max(this.stepNm, this.sigmaNm),
         w: this.pooledW,
@@ -231,7 +235,7 @@ class FrameFit {
     }
     if (beside.length < NEIGHBOURS) return this.apparentNm;
     // a fit whose plateaux are out of reach comes out too narrow; the frame's width stands in for it
-    return Math.min(4, Math.max(0.7, median(beside) / this.apparentNm)) * this.apparentNm;
+    return Math.min(WIDEST, Math.max(0.7, median(beside) / this.apparentNm)) * this.apparentNm;
   }
 
   private fitted(t: Stretch): Fitted {
@@ -249,7 +253,7 @@ class FrameFit {
       if (estimate === null) break;
       if (round === 0 && this.dropOutliers()) estimate = this.estimate(levels) ?? estimate;
       // wide walls need their plateaux, and narrow ones no far-away pixels
-      const wanted = this.reachFor(Math.min(4 * this.apparentNm, Math.max(this.apparentNm / 4, estimate.apparentNm)));
+      const wanted = this.reachFor(Math.min(WIDEST * this.apparentNm, Math.max(this.apparentNm / WIDEST, estimate.apparentNm)));
       if (s.reachNm > 0 || Math.abs(wanted / reach - 1) < 0.2) break;
       reach = wanted;
     }

@@ -6,7 +6,10 @@ import type { NearestWall } from "../../raster/nearest_wall.js";
 import type { Stretches } from "./stretches.js";
 
 export interface AlarmOptions {
+  /** Within this distance a fringe is looked for … */
   readonly reachNm: number;
+  /** … and as far as this its turn is measured, where one is found: any pixel that a fit may take must know its own. */
+  readonly farthestNm: number;
   readonly marginNm: number;
   readonly binNm: number;
   readonly w: number;
@@ -53,9 +56,10 @@ export function fringeAlarms(
 ): (PhaseTurn | null)[] {
   const none: (PhaseTurn | null)[] = Array.from({ length: o.walls }, () => null);
   if (projector.radialInformation < LEAST_INFORMATION) return none;
-  const bins = 2 * Math.ceil(o.reachNm / o.binNm);
-  const sums = Array.from({ length: o.walls }, () => new Bins(bins));
-  const all = new Bins(bins);
+  const bins = 2 * Math.ceil(Math.max(o.reachNm, o.farthestNm) / o.binNm);
+  const tested = 2 * Math.ceil(o.reachNm / o.binNm);
+  const sums = Array.from({ length: o.walls }, () => new Bins(bins, tested));
+  const all = new Bins(bins, tested);
   const u = new Float64Array(4);
   const off = new Float64Array(4);
   const shareAt = new Float64Array(bins);
@@ -67,7 +71,7 @@ export function fringeAlarms(
     for (let m = t.from; m < t.to; m++) {
       const pixel = stretches.pixels[m];
       const d = near.distanceNm[pixel];
-      if (Math.abs(d) >= o.reachNm || Math.abs(d) > stretches.freeNm[m] - o.marginNm) continue;
+      if (Math.abs(d) >= (bins / 2) * o.binNm || Math.abs(d) > stretches.freeNm[m] - o.marginNm) continue;
       const b = Math.min(bins - 1, Math.max(0, Math.floor(d / o.binNm + bins / 2)));
       projector.offChord(pixel, shareAt[b], off);
       sums[t.wall].add(b, off);
@@ -92,7 +96,11 @@ class Bins {
   private readonly re: Float64Array;
   private readonly im: Float64Array;
 
-  constructor(readonly count: number) {
+  /** @param tested so many bins in the middle enter the test */
+  constructor(
+    readonly count: number,
+    private readonly tested: number,
+  ) {
     this.weight = new Float64Array(count);
     this.sum = new Float64Array(count);
     this.pixels = new Float64Array(count);
@@ -129,7 +137,9 @@ class Bins {
     let ay = 0;
     let by = 0;
     let used = 0;
-    for (let k = 0; k < this.count; k++) {
+    const from = (this.count - this.tested) / 2;
+    const to = from + this.tested;
+    for (let k = from; k < to; k++) {
       const w = this.weight[k];
       if (w === 0) continue;
       used++;
@@ -146,7 +156,7 @@ class Bins {
     const a = (ay * bb - by * ab) / det;
     const b = (by * aa - ay * ab) / det;
     let chi2 = 0;
-    for (let k = 0; k < this.count; k++) {
+    for (let k = from; k < to; k++) {
       const w = this.weight[k];
       if (w === 0) continue;
       const r = this.sum[k] / w - a * (1 - share[k]) - b * share[k];
