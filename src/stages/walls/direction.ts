@@ -100,9 +100,12 @@ export class Projector {
         ey = zi / size;
         alpha = (a.re * ex + a.im * ey) / this.sizeI;
         beta = (b.re * ex + b.im * ey) / this.sizeM;
-        // what the tip's blur makes of a turn that changes across the wall, to first order
+        // what the tip's blur makes of a turn that changes across the wall: to first order a shift, to second a loss of length
         const twist = b.im * a.re - b.re * a.im;
         bend = (turnSlope * this.tipSigma * this.tipSigma * this.u[1] * twist) / size;
+        const kept = Math.exp(-0.5 * (turnSlope * this.tipSigma) ** 2);
+        alpha *= kept;
+        beta *= kept;
         const c = Math.cos(turnRad);
         const s = Math.sin(turnRad);
         const turned = ex * c - ey * s;
