@@ -1,5 +1,5 @@
 import type { FrameInfo } from "../../model/cooldown.js";
-import { predictLogLevel, type LogLevel } from "./gain_course.js";
+import { gainScatter, predictLogLevel, type LogLevel } from "./gain_course.js";
 import type { LevelFit } from "./level_fit.js";
 import type { StatesSettings } from "./settings.js";
 import type { Course } from "./smooth_course.js";
@@ -44,6 +44,7 @@ export function assignStates(
     const { temperatureK } = frames[p.index];
     return lowerLevel(p, contrast.logRatio.at(temperatureK), frames[p.index]);
   });
+  const gainSd = gainScatter(known, s.gainSd, s.levelSlope, rangeK);
   const skip = new Set(rejected.filter((k) => (fits[k]?.second?.share ?? 0) > NEAR));
   const allows = fits.map(() => ({ upper: false, lower: false }));
   const open = new Set(fits.flatMap((f, k) => (f?.main && shown[k] === "unknown" && !skip.has(k) ? [k] : [])));
@@ -59,7 +60,7 @@ export function assignStates(
     const { temperatureK, frame } = frames[at];
     const fit = fits[at];
     const ratio = contrast.logRatio.at(temperatureK);
-    const predicted = predictLogLevel(known, frame, temperatureK, s.gainSd, s.levelSlope, rangeK);
+    const predicted = predictLogLevel(known, frame, temperatureK, gainSd, s.levelSlope, rangeK);
     const decided = nearerState(logAmplitude(fit), fit?.main?.logSd ?? 0, predicted, ratio, s.contrastScatter);
     shown[at] = decided.state;
     allows[at] = { upper: decided.upper, lower: decided.lower };

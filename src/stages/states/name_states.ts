@@ -46,29 +46,43 @@ export function nameStates(frames: readonly FrameInfo[], upperShare: readonly nu
   return { metallicIsUpper: total > 0, byTemperature: true };
 }
 
-/** Single-state frames that amplitude could not tell, by their place among the others of their series: the metallic share rises with
- *  temperature, so a single-state frame above one that holds metal is metallic, and one below a frame that holds insulator insulating.
- *  Frames with evidence both ways stay unknown, and those whose amplitude speaks against the state.
- *  @param allows whether the amplitude of an unknown frame allows either state */
+/** What the place of a frame in its series says: holds metal below it (so it is metallic, if it shows one state), insulator above it. */
+interface Place {
+  above: boolean;
+  below: boolean;
+}
+
+/** Single-state frames by their place among the others of their series: the metallic share rises with temperature, so a single-state
+ *  frame above one that holds metal is metallic, and one below a frame that holds insulator insulating. This tells frames that
+ *  amplitude could not tell, and overrules amplitude where frames of both states contradict it: no film is of one state beyond the
+ *  temperatures where it is still mixed, but a gain can jump. Frames with evidence both ways keep what they have, and those whose
+ *  amplitude speaks against the state stay unknown.
+ *  @param naming only where temperature has named the states does it overrule amplitude
+ *  @param allows whether the amplitude of a frame allows either state */
 export function tellByOrder(
   frames: readonly FrameInfo[],
   shown: readonly Shown[],
-  metallicIsUpper: boolean,
+  { metallicIsUpper, byTemperature }: Naming,
   allows: readonly { readonly upper: boolean; readonly lower: boolean }[],
 ): Shown[] {
   const metallic: Shown = metallicIsUpper ? "upper" : "lower";
   const insulating: Shown = metallicIsUpper ? "lower" : "upper";
-  return shown.map((own, k) => {
-    if (own !== "unknown") return own;
-    let [above, below] = [false, false];
+  const placeOf = (k: number, counts: (other: Shown) => boolean): Place => {
+    const place = { above: false, below: false };
     frames.forEach((f, n) => {
       const other = shown[n];
-      if (f.series !== frames[k].series || other === "unknown" || n === k) return;
-      if (f.temperatureK < frames[k].temperatureK && (other === metallic || other === "both")) above = true;
-      if (f.temperatureK > frames[k].temperatureK && (other === insulating || other === "both")) below = true;
+      if (f.series !== frames[k].series || n === k || !counts(other)) return;
+      if (f.temperatureK < frames[k].temperatureK && other !== insulating) place.above = true;
+      if (f.temperatureK > frames[k].temperatureK && other !== metallic) place.below = true;
     });
-    if (above === below) return "unknown";
-    const state = above ? metallic : insulating;
+    return place;
+  };
+  return shown.map((own, k) => {
+    if (own === "both" || (own !== "unknown" && !byTemperature)) return own;
+    const place = own === "unknown" ? placeOf(k, (o) => o !== "unknown") : placeOf(k, (o) => o === "both");
+    if (place.above === place.below) return own;
+    const state = place.above ? metallic : insulating;
+    if (own === state) return own;
     return allows[k][state === "upper" ? "upper" : "lower"] ? state : "unknown";
   });
 }

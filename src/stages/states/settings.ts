@@ -75,7 +75,7 @@ export const settings = {
     default: 0.06,
     unit: "1",
     means:
-      "how much the gain may change from frame to frame (1 sd of its logarithm) in telling single-state frames apart",
+      "how much the gain may be expected to change from frame to frame (1 sd of its logarithm) in telling single-state frames apart; where the frames of both states show more, that is taken",
     min: 0.005,
     max: 1,
   },

@@ -35,7 +35,7 @@ export function trackLevels(
   const { shown, contrast, allows } = assignStates(fits, frames, pins, rejected, pinned, rangeK, s);
   const upperShare = shown.map((what, k) => shareOf(what, pins, k));
   const naming = nameStates(frames, upperShare, s);
-  const told = tellByOrder(frames, shown, naming.metallicIsUpper, allows);
+  const told = tellByOrder(frames, shown, naming, allows);
 
   const pinOf = new Map(pins.map((p) => [p.index, p]));
   const polar = told.map((what, k): PolarLevels | null => {

@@ -1,6 +1,8 @@
 import { describe, expect, test } from "vitest";
 import type { Branch, FrameInfo } from "../../../src/model/cooldown.js";
 import { defaultsOf } from "../../../src/model/settings.js";
+import { makeRandom } from "../../../src/numerics/random.js";
+import { gainScatter } from "../../../src/stages/states/gain_course.js";
 import { settings, trackLevels, type LevelFit, type StateEstimate } from "../../../src/stages/states/index.js";
 
 const s = defaultsOf(settings);
@@ -150,6 +152,43 @@ describe("levels along a cooldown", () => {
     expect(levels[6].metallic.re).toBeNaN();
     expect(levels[5].verdict).toBe("insulating");
     expect(notices.map((n) => n.code)).toContain("state-undecided");
+  });
+});
+
+describe("gains that change much", () => {
+  test("no state is mistaken, and what amplitude cannot tell is told by its place in the series", () => {
+    let wrong = 0;
+    let undecided = 0;
+    const random = makeRandom(3);
+    for (let run = 0; run < 200; run++) {
+      const made = COOLDOWN.map((m) => ({ ...m, gain: Math.exp(0.2 * random.normal()) }));
+      verdicts(made).forEach((v, k) => {
+        const share = made[k].metallic;
+        const truth = share === 1 ? "metallic" : share === 0 ? "insulating" : "mixed";
+        if (v === "undecided") undecided++;
+        else if (v !== truth) wrong++;
+      });
+    }
+    expect(wrong / 1400).toBeLessThan(0.005);
+    expect(undecided / 1400).toBeLessThan(0.03);
+  });
+  test("their scatter is taken from the frames that show it, and stays as expected where they show less", () => {
+    const scatterOf = (sd: number): number[] =>
+      Array.from({ length: 60 }, (_, run) => {
+        const random = makeRandom(100 + run);
+        const known = Array.from({ length: 10 }, (_, k) => ({
+          frame: k,
+          temperatureK: 170 - 3 * k,
+          value: sd * random.normal(),
+          sd: 0.002,
+        }));
+        return gainScatter(known, 0.06, 0.15, [120, 190]);
+      }).sort((a, b) => a - b);
+    expect(scatterOf(0.02)[30]).toBe(0.06);
+    // the process has independent and lasting parts of 0.25 and 1.5 times the scatter
+    expect(scatterOf(0.2)[30]).toBeGreaterThan(0.12);
+    expect(scatterOf(0.2)[30]).toBeLessThan(0.3);
+    expect(gainScatter([], 0.06, 0.15, [120, 190])).toBe(0.06);
   });
 });
 
