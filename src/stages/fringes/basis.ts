@@ -24,7 +24,7 @@ export function shareAt(xNm: number, blur: Blur, scratch: Float64Array): number 
 /** The response across the chord to a fringe of 1 rad on one side of a wall, in the limit of a small one: Im[i z f · conj(e)] =
  *  (z · e) f with z = (1 − u) z_I + u z_M the signal before the blur and f = H(x) cos(2πx/Λ) e^{−x/ℓ} (or the sine), blurred by the tip. On the
  *  fringe's side (x > 0) z · e is that of the side's own level plus (1 − u) times the step to the other one:
- *  own + step (1 − u). Tabulated on a fine grid, read by linear interpolation. */
+ *  own + step (1 − u). Tabulated on a fine grid, to be read by linear interpolation. */
 export class FringeTable {
   readonly fromNm: number;
   readonly stepNm: number;
@@ -82,24 +82,18 @@ export class FringeTable {
     }
   }
 
-  /** The response at distance `distanceNm` (signed, metallic positive) to a fringe on a side, cosine and sine, into `out`. */
-  response(member: number, metallicSide: boolean, chord: Chord, distanceNm: number, out: Float64Array): void {
-    const x = metallicSide ? distanceNm : -distanceNm;
-    const t = (x - this.fromNm) / this.stepNm;
-    out[0] = 0;
-    out[1] = 0;
-    if (t < 0) return;
+  /** Points of the grid, `stepNm` apart from `fromNm` on. */
+  get gridPoints(): number {
+    return this.rows[0].length;
+  }
+
+  /** The response to a fringe on a side, its cosine (part 0) or sine (1), at the points of the grid, distances counted into that side. */
+  responseOnGrid(member: number, part: number, metallicSide: boolean, chord: Chord): Float64Array {
     const own = metallicSide ? chord.alongMetallic : chord.alongInsulating;
     const step = metallicSide ? -chord.length : chord.length;
-    const q = Math.min(Math.floor(t), this.rows[0].length - 2);
-    const f = Math.min(1, t - q);
-    for (let k = 0; k < 2; k++) {
-      const plain = this.rows[4 * member + k];
-      const mixed = this.rows[4 * member + 2 + k];
-      const a = own * plain[q] + step * mixed[q];
-      const b = own * plain[q + 1] + step * mixed[q + 1];
-      out[k] = a + f * (b - a);
-    }
+    const plain = this.rows[4 * member + part];
+    const mixed = this.rows[4 * member + 2 + part];
+    return plain.map((v, q) => own * v + step * mixed[q]);
   }
 }
 

@@ -15,8 +15,9 @@ import type { Grid } from "./grid.js";
 import { referenceRows } from "./reference_rows.js";
 import { drawnFringe } from "./picture.js";
 import { Profiler, type Profile } from "./profile.js";
+import { SearchBasis } from "./search_basis.js";
 import type { FringeSettings } from "./settings.js";
-import { cutStretches, type Stretch } from "./stretches.js";
+import { betweenWalls, cutStretches, type Stretch } from "./stretches.js";
 import { supTest, type Candidate } from "./sup_test.js";
 
 /** Ratio of neighbouring periods of the grid, and the decays tried with each, in periods. */
@@ -59,7 +60,7 @@ export function testFringes(
   const binNm = s.binNm > 0 ? s.binNm : Math.max(Math.min(pixel.xNm, pixel.yNm), tipSigma / 2);
   const blur = blurOf(walls, tipSigma, binNm);
   const across = acrossChord(signal.re, signal.im, signal.usable, chord);
-  const cut = cutStretches(walls.walls, signal.usable, rows, cols, pixel, s, tipSigma);
+  const cut = cutStretches(walls.walls, signal.usable, rows, cols, pixel, s);
   const nearNm = NEAR_WIDTHS * apparentWidth(blur.wNm, Math.max(blur.sigmaNm, 1e-3));
   const shortest = Math.max(s.leastPeriodTips * (tip?.resolutionNm ?? 0), 4 * binNm);
   const table = fringeTable(membersFrom(shortest, s.reachNm / LEAST_SHARE), blur, s.reachNm);
@@ -67,27 +68,26 @@ export function testFringes(
   const frame = { grid, chord, blur, nearNm, binNm, stretches: cut.stretches };
   const seen = profilesOf(frame, s);
 
+  const bases = {
+    metallic: new SearchBasis(table, true, chord),
+    insulating: new SearchBasis(table, false, chord),
+  };
   const found = cut.stretches.map((stretch, k) => {
     const profile = seen.profiles[k];
     const candidates = candidatesFor(profile, table, s);
     if (profile.count < LEAST_BINS || candidates.length === 0) return null;
     const drawn = childSeed(seed, stretch.wall, stretch.stretch);
-    return supTest(profile, table, chord, candidates, s.reachNm, seen.levelSdRad, s.draws, drawn);
+    return supTest(profile, table, bases, chord, candidates, s.reachNm, seen.levelSdRad, s.draws, drawn);
   });
   // A fringe is in the rows' own offsets: where there is one they are found anew, beside it.
   const clear = found.some((f) => f !== null && f.pValue < CLEAR_P);
   const rowsAgain = clear ? referenceRows(grid, seen.noise.local, binNm, s.reachNm) : null;
-  const better =
-    rowsAgain === null
-      ? seen
-      : profilesOf(
-          {
-            ...frame,
-            grid: { ...grid, across: rowsAgain.across },
-            stretches: cut.stretches.map((t) => ({ ...t, pixels: t.pixels.filter((p) => cut.between[p] === 0) })),
-          },
-          s,
-        );
+  let better = seen;
+  if (rowsAgain !== null) {
+    const between = betweenWalls(cut.distanceNm, rows, cols, pixel, tipSigma);
+    const stretches = cut.stretches.map((t) => ({ ...t, pixels: t.pixels.filter((p) => between[p] === 0) }));
+    better = profilesOf({ ...frame, grid: { ...grid, across: rowsAgain.across }, stretches }, s);
+  }
   const rowsKnown = rowsAgain === null || rowsAgain.sdRad <= LARGEST_ROW_SD;
   const forward = {
     metallic: new FringeForward("metallic", chord, table.blur, s.reachNm),

@@ -1,7 +1,7 @@
 import type { Blur } from "./basis.js";
 import type { Chord } from "./chord.js";
 import { Local } from "./local.js";
-import { measureRows, NEAR_LAG, type RowNoise } from "./row_noise.js";
+import { armsOf, measureRows, NEAR_LAG, type RowNoise } from "./row_noise.js";
 import { CLIP, type Grid } from "./grid.js";
 
 /** Noise across the chord as measured in one frame. */
@@ -27,7 +27,7 @@ export function measureNoise(
   binNm: number,
   reachNm: number,
 ): NoiseModel {
-  const { across, distanceNm, trusted, rows, cols } = grid;
+  const { distanceNm, trusted, rows, cols } = grid;
   const n = rows * cols;
   const first = new Local(chord, blur, reachNm);
   const e = residuals(grid, first, binNm, reachNm);
@@ -48,7 +48,8 @@ export function measureNoise(
   const lag = lagProducts(e, grid);
   const variance = lag.products[0][NEAR_LAG] / Math.max(1, lag.pairs[0][NEAR_LAG]);
   const x = [1, 2, 3].reduce((a, dx) => a + lag.products[0][NEAR_LAG + dx] / lag.products[0][NEAR_LAG], 0);
-  const found = measureRows(grid, e, across, local, nearWallNm, 1 + 2 * Math.max(0, x));
+  const pixels = armsOf(grid, e, local, nearWallNm);
+  const found = measureRows(grid, pixels, chord.height, 1 + 2 * Math.max(0, x));
   const correlation = (dy: number, dx: number): number => {
     const m = lag.pairs[dy][dx + NEAR_LAG];
     if (m === 0) return 0;
@@ -67,7 +68,7 @@ export function measureNoise(
 }
 
 /** The component across the chord less its mean at that distance, in units of the pixel noise; 0 where it is not trusted. */
-function residuals(grid: Grid, local: Local, binNm: number, reachNm: number): Float64Array {
+function residuals(grid: Grid, local: Local, binNm: number, reachNm: number): Float32Array {
   const { across, distanceNm, trusted } = grid;
   const half = Math.ceil(reachNm / binNm);
   const sum = new Float64Array(2 * half);
@@ -79,7 +80,7 @@ function residuals(grid: Grid, local: Local, binNm: number, reachNm: number): Fl
     sum[b] += across[p];
     count[b]++;
   }
-  const e = new Float64Array(across.length);
+  const e = new Float32Array(across.length);
   for (let p = 0; p < e.length; p++) {
     if (trusted[p] === 0) continue;
     const b = binOf(distanceNm[p]);
@@ -90,24 +91,30 @@ function residuals(grid: Grid, local: Local, binNm: number, reachNm: number): Fl
   return e;
 }
 
-function lagProducts(e: Float64Array, { trusted, rows, cols }: Grid) {
+/** Sums of products of pixels' residuals and numbers of pairs, along the axes: [dy][0 columns apart] and [0][dx]. */
+function lagProducts(e: Float32Array, { trusted, rows, cols }: Grid) {
   const products = Array.from({ length: NEAR_LAG + 1 }, () => new Float64Array(2 * NEAR_LAG + 1));
   const pairs = Array.from({ length: NEAR_LAG + 1 }, () => new Float64Array(2 * NEAR_LAG + 1));
-  // Only the axes are needed.
-  const lags = [];
-  for (let k = 0; k <= NEAR_LAG; k++) lags.push([0, k], ...(k > 0 ? [[k, 0]] : []));
-  for (const [dy, dx] of lags) {
-    let s = 0;
-    let m = 0;
-    for (let i = 0; i + dy < rows; i++) {
-      const q = (i + dy) * cols + dx;
-      for (let j = 0; j + dx < cols; j++) {
-        m += trusted[i * cols + j] & trusted[q + j];
-        s += e[i * cols + j] * e[q + j];
+  for (let k = 0; k <= NEAR_LAG; k++) {
+    for (const [dy, dx] of k === 0
+      ? [[0, 0]]
+      : [
+          [0, k],
+          [k, 0],
+        ]) {
+      let s = 0;
+      let m = 0;
+      const shift = dy * cols + dx;
+      for (let i = 0; i + dy < rows; i++) {
+        const end = (i + 1) * cols - dx;
+        for (let p = i * cols; p < end; p++) {
+          m += trusted[p] & trusted[p + shift];
+          s += e[p] * e[p + shift];
+        }
       }
+      products[dy][dx + NEAR_LAG] = s;
+      pairs[dy][dx + NEAR_LAG] = m;
     }
-    products[dy][dx + NEAR_LAG] = s;
-    pairs[dy][dx + NEAR_LAG] = m;
   }
   return { products, pairs };
 }

@@ -23,6 +23,8 @@ const LEAST_PIXELS = 3;
  *  pixels of a row share, as measured in the frame, at the places where this stretch's pixels lie. */
 export class Profiler {
   private readonly slot: Int16Array;
+  /** Pixels of the stretch at hand by row and bin. */
+  private pixelsOf = new Float64Array(0);
 
   constructor(
     private readonly grid: Grid,
@@ -60,13 +62,15 @@ export class Profiler {
       distance[index[b]] = sumD[b] / many[b];
       pixels[index[b]] = many[b];
     }
-    const kept: number[] = [];
+    let inside = 0;
+    const pixelsKept = new Int32Array(stretch.pixels.length);
     for (const p of stretch.pixels) {
       const b = Math.floor(distanceNm[p] / binNm) + half;
       if (b < 0 || b >= 2 * half || index[b] < 0) continue;
       slot[p] = index[b];
-      kept.push(p);
+      pixelsKept[inside++] = p;
     }
+    const kept = pixelsKept.subarray(0, inside);
     const covariance = this.covariance(kept, distance, pixels);
     for (const p of kept) slot[p] = -1;
     return {
@@ -79,7 +83,7 @@ export class Profiler {
     };
   }
 
-  private covariance(kept: readonly number[], distance: Float64Array, pixels: Float64Array): Float64Array {
+  private covariance(kept: Int32Array, distance: Float64Array, pixels: Float64Array): Float64Array {
     const { slot, noise } = this;
     const { rows, cols, distanceNm } = this.grid;
     const count = pixels.length;
@@ -103,54 +107,84 @@ export class Profiler {
         if (j + dx < 0 || j + dx >= cols || q >= rows * cols || slot[q] < 0) continue;
         const v = rho * s * sd(q);
         const b = slot[q];
-        c[a * count + b] += v;
-        c[b * count + a] += v;
+        // The lower triangle; a pair within one bin counts twice on the diagonal.
+        if (a > b) c[a * count + b] += v;
+        else c[b * count + a] += a === b ? 2 * v : v;
       }
     }
     this.addRows(kept, distance, c);
-    for (let a = 0; a < count; a++) for (let b = 0; b < count; b++) c[a * count + b] /= pixels[a] * pixels[b];
+    for (let a = 0; a < count; a++) {
+      for (let b = 0; b <= a; b++) {
+        c[a * count + b] /= pixels[a] * pixels[b];
+        c[b * count + a] = c[a * count + b];
+      }
+    }
     return c;
   }
 
-  /** Σ over pairs of pixels of one row (and of rows near each other) of what they share; a bin lies wholly in few rows or in many. */
-  private addRows(kept: readonly number[], distance: Float64Array, c: Float64Array): void {
+  /** Σ over pairs of pixels of one row (and of rows near each other) of what they share, into the lower triangle; a bin lies wholly in few rows or in many. */
+  private addRows(kept: Int32Array, distance: Float64Array, c: Float64Array): void {
     const { slot, noise, nearWallNm } = this;
-    const { cols, distanceNm } = this.grid;
+    const { cols } = this.grid;
     const count = distance.length;
     if (kept.length === 0) return;
-    // Per row and bin how far a turn, and a stretch, of all its pixels moves their sum; `kept` goes from row to row.
+    const { same, apart } = noise.rows;
+    const apartToo = apart.some((v) => v !== 0);
+    if (!apartToo && same.every((v) => v === 0)) return;
+    // `kept` goes from row to row.
     const top = Math.floor(kept[0] / cols);
     const lines = Math.floor(kept[kept.length - 1] / cols) - top + 1;
-    const turn = new Float64Array(lines * count);
-    const stretch = new Float64Array(lines * count);
-    const met: number[][] = Array.from({ length: lines }, () => []);
-    for (const p of kept) {
-      const i = Math.floor(p / cols) - top;
-      const at = i * count + slot[p];
-      if (stretch[at] === 0 && turn[at] === 0) met[i].push(slot[p]);
-      turn[at] += noise.local.along(distanceNm[p]);
-      stretch[at] += noise.local.chord.height;
-    }
-    const group = Array.from(distance, (d) => (Math.abs(d) > nearWallNm ? 1 : 0));
-    for (let i = 0; i < lines; i++) {
-      const at = i * count;
-      for (const a of met[i]) {
-        for (const b of met[i]) {
-          const moved = turn[at + a] * turn[at + b] + stretch[at + a] * stretch[at + b];
-          c[a * count + b] += moved * noise.rows.same[2 * group[a] + group[b]];
-        }
+    if (this.pixelsOf.length < lines * count) this.pixelsOf = new Float64Array(lines * count);
+    const { pixelsOf } = this;
+    pixelsOf.fill(0, 0, lines * count);
+    for (let k = 0, line = top, end = (top + 1) * cols; k < kept.length; k++) {
+      const p = kept[k];
+      while (p >= end) {
+        line++;
+        end += cols;
       }
+      pixelsOf[(line - top) * count + slot[p]]++;
+    }
+    // Numbers of pairs of pixels of two bins in one row, and in rows near each other with what such rows share.
+    const pairs = new Float64Array(count * count);
+    const below = new Float64Array(count);
+    const pairsApart = apartToo ? new Float64Array(count * count) : pairs;
+    for (let i = 0; i < lines; i++) {
+      const own = pixelsOf.subarray(i * count, (i + 1) * count);
+      let from = 0;
+      while (from < count && own[from] === 0) from++;
+      let to = count - 1;
+      while (to >= from && own[to] === 0) to--;
+      for (let a = from; a <= to; a++) {
+        const n = own[a];
+        if (n === 0) continue;
+        const line = a * count;
+        for (let b = from; b <= a; b++) pairs[line + b] += n * own[b];
+      }
+      if (!apartToo || to < from) continue;
+      below.fill(0);
       for (let lag = 1; lag <= ROW_LAG && i + lag < lines; lag++) {
-        const shared = noise.rows.apart[lag];
-        if (shared === 0) continue;
-        const below = (i + lag) * count;
-        for (const a of met[i]) {
-          for (const b of met[i + lag]) {
-            const v = shared * (turn[at + a] * turn[below + b] + stretch[at + a] * stretch[below + b]);
-            c[a * count + b] += v;
-            c[b * count + a] += v;
-          }
-        }
+        if (apart[lag] === 0) continue;
+        const other = (i + lag) * count;
+        for (let b = 0; b < count; b++) below[b] += apart[lag] * pixelsOf[other + b];
+      }
+      for (let a = 0; a < count; a++) {
+        const n = own[a];
+        const m = below[a];
+        if (n === 0 && m === 0) continue;
+        const line = a * count;
+        for (let b = 0; b <= a; b++) pairsApart[line + b] += n * below[b] + m * own[b];
+      }
+    }
+    // How far a turn moves a pixel of each bin; a stretch moves all alike.
+    const along = distance.map((d) => noise.local.along(d));
+    const height2 = noise.local.chord.height ** 2;
+    const far = Uint8Array.from(distance, (d) => (Math.abs(d) > nearWallNm ? 1 : 0));
+    for (let a = 0; a < count; a++) {
+      for (let b = 0; b <= a; b++) {
+        const at = a * count + b;
+        const moved = along[a] * along[b] + height2;
+        c[at] += moved * (pairs[at] * same[2 * far[a] + far[b]] + (apartToo ? pairsApart[at] : 0));
       }
     }
   }

@@ -19,8 +19,6 @@ export interface FrameStretches {
   readonly distanceNm: Float32Array;
   /** 1 where the distance is trusted: usable, not beyond the open end of a wall, and not nearer to where nothing is seen. */
   readonly trusted: Uint8Array;
-  /** 1 midway between two walls, where the tip sees both: a mixture of the states as elsewhere, but no fringe of one wall. */
-  readonly between: Uint8Array;
 }
 
 /** A row with a smaller share of usable pixels was not measured: walls may hide in it. */
@@ -28,8 +26,7 @@ const ROW_SEEN = 0.5;
 
 /** Cuts the walls of a frame into stretches of equal length and gives every usable pixel to the stretch of its nearest wall.
  *  Left out are pixels whose foot point is the open end of a wall, and pixels nearer to the image's edge or to unmeasured rows than to their
- *  wall: a wall that is not seen may be nearer.
- *  @param sigmaNm standard deviation of the tip's response */
+ *  wall: a wall that is not seen may be nearer. */
 export function cutStretches(
   walls: readonly Wall[],
   usable: Uint8Array,
@@ -37,10 +34,8 @@ export function cutStretches(
   cols: number,
   pixel: PixelSize,
   s: FringeSettings,
-  sigmaNm: number,
 ): FrameStretches {
   const { segments, near } = nearestOf(walls, rows, cols, pixel);
-  const between = betweenWalls(near.distanceNm, rows, cols, pixel, sigmaNm);
   const edgeRow = distanceToUnseenRow(usable, rows, cols, pixel.yNm);
   const trusted = new Uint8Array(rows * cols);
   const pieces = walls.map((w) =>
@@ -80,16 +75,18 @@ export function cutStretches(
       });
     }
   });
-  return { stretches, distanceNm: near.distanceNm, trusted, between };
+  return { stretches, distanceNm: near.distanceNm, trusted };
 }
 
 /** How far the tip sees, in its standard deviations, and by how much the distance must rise over that length, relative to it, where one wall is the nearest. */
 const SEES = 2;
 const LEAST_RISE = 0.9;
 
-/** 1 where two walls, or two parts of one, are the nearest within the tip's sight: the distance then rises and falls again, and its mean slope over
- *  that length is less than 1. Within one such length of a wall nothing is marked: there a wall's own wiggles would be. */
-function betweenWalls(
+/** 1 midway between two walls, or two parts of one, where the tip sees both: a mixture of the states as elsewhere, but no fringe of one wall. The
+ *  distance rises there and falls again, and its mean slope over the tip's sight is less than 1. Nearer than that to a wall nothing is marked:
+ *  there a wall's own wiggles would be.
+ *  @param sigmaNm standard deviation of the tip's response */
+export function betweenWalls(
   distanceNm: Float32Array,
   rows: number,
   cols: number,

@@ -3,6 +3,7 @@ import { makeRandom, type Random } from "../../numerics/random.js";
 import type { Chord } from "./chord.js";
 import { shareAt, type FringeTable } from "./basis.js";
 import type { Profile } from "./profile.js";
+import type { SearchBasis } from "./search_basis.js";
 
 export type Side = "metallic" | "insulating";
 
@@ -92,18 +93,13 @@ export function noiseFactor(profile: Profile, nuisances: Float64Array | null): F
   }
 }
 
-const dot = (a: Float64Array, b: Float64Array): number => {
-  let s = 0;
-  for (let k = 0; k < a.length; k++) s += a[k] * b[k];
-  return s;
-};
-
-const scaled = (x: Float64Array, f: number): Float64Array => x.map((v) => v * f);
-
 /** A candidate whose cosine and sine are this much alike has only one amplitude that can be told. */
 const LEAST_LEFT = 0.02;
-/** Directions of the candidates' common space that matter less than this are left out of the simulation. */
+/** Directions of the candidates' common space that matter less than this are left out. */
 const NEGLIGIBLE = 0.03;
+
+/** Bases of a frame, by side. */
+export type SearchBases = Readonly<Record<Side, SearchBasis>>;
 
 /** sup-F test for a fringe whose period, decay and phase do not exist under the null (Davies 1977, Biometrika 64, 247; 1987, 74, 33):
  *  the largest, over a fixed grid of periods and decays on either side, of the drop of χ² that the two linear amplitudes of
@@ -114,6 +110,7 @@ const NEGLIGIBLE = 0.03;
 export function supTest(
   profile: Profile,
   table: FringeTable,
+  bases: SearchBases,
   chord: Chord,
   candidates: readonly Candidate[],
   reachNm: number,
@@ -125,150 +122,226 @@ export function supTest(
   const l = noiseFactor(profile, nuisanceMatrix(profile, table, chord, reachNm, levelSdRad));
   const y = Float64Array.from(profile.value);
   whiten(l, n, y);
-  const total = dot(y, y);
+  let total = 0;
+  for (let k = 0; k < n; k++) total += y[k] * y[k];
 
-  // An orthonormal pair a candidate, in the whitened space.
-  const pairs: Float64Array[] = [];
-  const kept: Candidate[] = [];
-  const out = new Float64Array(2);
-  for (const c of candidates) {
-    const a = new Float64Array(n);
-    const b = new Float64Array(n);
-    for (let k = 0; k < n; k++) {
-      table.response(c.member, c.side === "metallic", chord, profile.distanceNm[k], out);
-      a[k] = out[0];
-      b[k] = out[1];
-    }
-    whiten(l, n, a);
-    whiten(l, n, b);
-    const left = Math.sqrt(dot(a, a));
-    const size = Math.sqrt(dot(b, b));
-    if (!(left > 0 && size > 0)) continue;
-    const qa = scaled(a, 1 / left);
-    const common = dot(qa, b);
-    for (let k = 0; k < n; k++) b[k] -= common * qa[k];
-    const rest = Math.sqrt(dot(b, b));
-    if (!(rest > LEAST_LEFT * size)) continue;
-    pairs.push(qa, scaled(b, 1 / rest));
-    kept.push(c);
-  }
-  if (kept.length === 0) return null;
-
-  let statistic = 0;
-  let best = kept[0];
-  for (let g = 0; g < kept.length; g++) {
-    const drop = dot(pairs[2 * g], y) ** 2 + dot(pairs[2 * g + 1], y) ** 2;
-    if (drop > statistic) {
-      statistic = drop;
-      best = kept[g];
-    }
-  }
+  const space = new CandidateSpace(profile, l, y, bases, candidates);
+  if (space.count === 0) return null;
+  const found = space.largestDrop(space.y);
   const dof = n - 2;
-  statistic = studentised(statistic, total, dof);
-  return { pValue: pValueOf(statistic, pairs, dof, draws, makeRandom(seed)), statistic, best };
+  const statistic = studentised(found.drop, total, dof);
+  const best = space.kept[found.pair];
+  return { pValue: pValueOf(statistic, space, dof, draws, makeRandom(seed)), statistic, best };
 }
 
 function studentised(drop: number, total: number, dof: number): number {
   return dof > 0 ? drop / Math.max(1, (total - drop) / dof) : drop;
 }
 
+/** The space that the candidates span in the whitened profile, with orthonormal axes: those of the metallic side first, so that its candidates
+ *  have no component along the rest. */
+class CandidateSpace {
+  readonly dimensions: number;
+  readonly kept: Candidate[] = [];
+  /** The profile's coordinates. */
+  readonly y: Float64Array;
+  private readonly metallic: number;
+  /** An orthonormal pair a candidate, row-major [2 · candidates, dimensions]. */
+  private readonly pairs: Float64Array;
+
+  constructor(
+    profile: Profile,
+    l: Float64Array,
+    y: Float64Array,
+    bases: SearchBases,
+    candidates: readonly Candidate[],
+  ) {
+    const n = profile.count;
+    const km = candidates.some((c) => c.side === "metallic") ? bases.metallic.size : 0;
+    const ki = candidates.some((c) => c.side === "insulating") ? bases.insulating.size : 0;
+    const r = km + ki;
+    const white = new Float64Array(n * r);
+    if (km > 0) bases.metallic.at(profile.distanceNm, white, r, 0);
+    if (ki > 0) bases.insulating.at(profile.distanceNm, white, r, km);
+    whitenColumns(l, n, white, r);
+    const gram = new Float64Array(r * r);
+    const withY = new Float64Array(r);
+    for (let k = 0; k < n; k++) {
+      const row = k * r;
+      for (let a = 0; a < r; a++) {
+        const v = white[row + a];
+        // Functions of the metallic side are 0 far on the other one.
+        if (v === 0) continue;
+        withY[a] += v * y[k];
+        const line = a * r;
+        for (let b = 0; b <= a; b++) gram[line + b] += v * white[row + b];
+      }
+    }
+    const { coordinates, axes, reach } = axesOf(gram, r);
+    const d = axes.length;
+    this.dimensions = d;
+    this.metallic = axes.filter((a) => a < km).length;
+    this.y = new Float64Array(d);
+    axes.forEach((a, j) => {
+      let s = withY[a];
+      for (let i = 0; i < j; i++) s -= coordinates[a * r + i] * this.y[i];
+      this.y[j] = s / coordinates[a * r + j];
+    });
+    const pairs = new Float64Array(2 * candidates.length * d);
+    this.pairs = pairs;
+    for (const c of candidates) {
+      const at = 2 * this.kept.length * d;
+      const from = c.side === "metallic" ? 0 : km;
+      const { size, coefficients } = bases[c.side];
+      pairs.fill(0, at, at + 2 * d);
+      for (let part = 0; part < 2; part++) {
+        const own = (2 * c.member + part) * size;
+        const to = at + part * d;
+        for (let b = 0; b < size; b++) {
+          const f = coefficients[own + b];
+          const line = (from + b) * r;
+          const many = reach[from + b];
+          for (let a = 0; a < many; a++) pairs[to + a] += f * coordinates[line + a];
+        }
+      }
+      if (orthonormalise(pairs, at, d)) this.kept.push(c);
+    }
+  }
+
+  get count(): number {
+    return this.kept.length;
+  }
+
+  /** The largest drop of χ² that a candidate brings where the coordinates are x, and which. */
+  largestDrop(x: Float64Array): { drop: number; pair: number } {
+    let drop = 0;
+    let pair = 0;
+    for (let g = 0; g < this.kept.length; g++) {
+      const d = this.dropOf(g, x);
+      if (d > drop) {
+        drop = d;
+        pair = g;
+      }
+    }
+    return { drop, pair };
+  }
+
+  /** The same, the drop alone. */
+  mostOf(x: Float64Array): number {
+    let most = 0;
+    for (let g = 0; g < this.kept.length; g++) {
+      const d = this.dropOf(g, x);
+      if (d > most) most = d;
+    }
+    return most;
+  }
+
+  private dropOf(g: number, x: Float64Array): number {
+    const { pairs, dimensions, kept, metallic } = this;
+    const used = kept[g].side === "metallic" ? metallic : dimensions;
+    const ga = 2 * g * dimensions;
+    const gb = ga + dimensions;
+    let a = 0;
+    let b = 0;
+    for (let k = 0; k < used; k++) {
+      a += pairs[ga + k] * x[k];
+      b += pairs[gb + k] * x[k];
+    }
+    return a * a + b * b;
+  }
+}
+
+/** Orthonormal axes of r functions with these products (lower triangle), by Cholesky's scheme: a function that the axes so far hold to within
+ *  `NEGLIGIBLE` brings none. Coordinates row-major [r, r], of which the first `reach` of each function count; `axes` names the function that brought each. */
+function axesOf(gram: Float64Array, r: number): { coordinates: Float64Array; axes: number[]; reach: Int32Array } {
+  const coordinates = new Float64Array(r * r);
+  const reach = new Int32Array(r);
+  const axes: number[] = [];
+  for (let a = 0; a < r; a++) {
+    const line = a * r;
+    let left = gram[line + a];
+    for (let j = 0; j < axes.length; j++) {
+      const other = axes[j] * r;
+      let s = gram[line + axes[j]];
+      for (let i = 0; i < j; i++) s -= coordinates[line + i] * coordinates[other + i];
+      const x = s / coordinates[other + j];
+      coordinates[line + j] = x;
+      left -= x * x;
+    }
+    if (left > NEGLIGIBLE * NEGLIGIBLE * gram[line + a]) {
+      coordinates[line + axes.length] = Math.sqrt(left);
+      axes.push(a);
+    }
+    reach[a] = axes.length;
+  }
+  return { coordinates, axes, reach };
+}
+
+/** Makes two rows of length r from `at` on orthonormal; false where there is nothing, or they are alike. */
+function orthonormalise(x: Float64Array, at: number, r: number): boolean {
+  const b = at + r;
+  let aa = 0;
+  let ab = 0;
+  let bb = 0;
+  for (let k = 0; k < r; k++) {
+    aa += x[at + k] * x[at + k];
+    ab += x[at + k] * x[b + k];
+    bb += x[b + k] * x[b + k];
+  }
+  if (!(aa > 0 && bb > 0)) return false;
+  const common = ab / aa;
+  let rest = 0;
+  for (let k = 0; k < r; k++) {
+    x[b + k] -= common * x[at + k];
+    rest += x[b + k] * x[b + k];
+  }
+  if (!(rest > LEAST_LEFT * LEAST_LEFT * bb)) return false;
+  const fa = 1 / Math.sqrt(aa);
+  const fb = 1 / Math.sqrt(rest);
+  for (let k = 0; k < r; k++) {
+    x[at + k] *= fa;
+    x[b + k] *= fb;
+  }
+  return true;
+}
+
 /** Smaller ones say nothing about the world: the noise is not known so well. */
 export const LEAST_P = 1e-6;
-/** With fewer draws above the statistic than this at the end the tail takes over; with twice as many before it the simulation stops. */
+/** When so many draws have exceeded the statistic the simulation stops; with fewer at its end the tail takes over. */
 const FEW = 10;
 /** Draws after which a statistic far beyond all of them is left to the tail. */
 const FIRST = 199;
 
-/** Draws the statistic in noise alone until it has exceeded the one found 20 times, then p = 20/draws (Besag & Clifford 1991,
+/** Draws the statistic in noise alone until it has exceeded the one found `FEW` times, then p = FEW/draws (Besag & Clifford 1991,
  *  Biometrika 78, 301), or `draws` times, then p = (1 + exceeding)/(1 + draws). */
-function pValueOf(
-  statistic: number,
-  pairs: readonly Float64Array[],
-  dof: number,
-  draws: number,
-  random: Random,
-): number {
-  const nothing = new NullStatistic(pairs, dof, random);
+function pValueOf(statistic: number, space: CandidateSpace, dof: number, draws: number, random: Random): number {
   const drawn = new Float64Array(draws);
+  const x = new Float64Array(space.dimensions);
+  // The noise outside the candidates' space enters through its χ² only.
+  const rest = dof + 2 - x.length;
   let exceeding = 0;
   for (let d = 0; d < draws; d++) {
-    drawn[d] = nothing.draw();
-    if (drawn[d] >= statistic && ++exceeding === 2 * FEW) return exceeding / (d + 1);
+    let total = chiSquared(rest, random);
+    for (let k = 0; k < x.length; k++) {
+      x[k] = random.normal();
+      total += x[k] * x[k];
+    }
+    drawn[d] = studentised(space.mostOf(x), total, dof);
+    if (drawn[d] >= statistic && ++exceeding === FEW) return exceeding / (d + 1);
     if (d + 1 === FIRST && exceeding === 0) {
       const tail = tailBeyond(drawn.slice(0, FIRST), statistic);
       if (tail < LEAST_P / 10) return LEAST_P;
     }
   }
   const counted = (1 + exceeding) / (1 + draws);
-  if (exceeding >= FEW) return counted;
   return Math.max(LEAST_P, Math.min(counted, tailBeyond(drawn, statistic)));
 }
 
 /** P(sup > c) ∝ c e^{−c/2} from the level that a twentieth of the draws exceed. */
 function tailBeyond(drawn: Float64Array, statistic: number): number {
   const anchor = Math.max(FEW, Math.round(drawn.length / 20));
-  const level = drawn.sort((a, b) => b - a)[anchor - 1];
+  const level = drawn.sort()[drawn.length - anchor];
   return (anchor / drawn.length) * (statistic / level) * Math.exp(-(statistic - level) / 2);
-}
-
-/** The statistic in noise alone. Works in the space that the candidates span, a few tens of dimensions; the rest of the noise
- *  enters through its χ² only. */
-class NullStatistic {
-  private readonly flat: Float64Array;
-  private readonly r: number;
-  private readonly rest: number;
-  private readonly xi: Float64Array;
-
-  constructor(
-    private readonly pairs: readonly Float64Array[],
-    private readonly dof: number,
-    private readonly random: Random,
-  ) {
-    const span: Float64Array[] = [];
-    const coordinates = pairs.map((q) => {
-      const x = Float64Array.from(q);
-      const c: number[] = [];
-      for (const v of span) {
-        const s = dot(x, v);
-        c.push(s);
-        for (let k = 0; k < x.length; k++) x[k] -= s * v[k];
-      }
-      const left = Math.sqrt(dot(x, x));
-      if (left > NEGLIGIBLE) {
-        c.push(left);
-        span.push(scaled(x, 1 / left));
-      }
-      return c;
-    });
-    this.r = span.length;
-    this.flat = new Float64Array(pairs.length * this.r);
-    coordinates.forEach((c, k) => this.flat.set(c, k * this.r));
-    this.rest = dof + 2 - this.r;
-    this.xi = new Float64Array(this.r);
-  }
-
-  draw(): number {
-    const { flat, r, xi, random, dof } = this;
-    let total = chiSquared(this.rest, random);
-    for (let k = 0; k < r; k++) {
-      xi[k] = random.normal();
-      total += xi[k] * xi[k];
-    }
-    let most = 0;
-    for (let g = 0; g < this.pairs.length; g += 2) {
-      let a = 0;
-      let b = 0;
-      const ga = g * r;
-      const gb = ga + r;
-      for (let k = 0; k < r; k++) {
-        a += flat[ga + k] * xi[k];
-        b += flat[gb + k] * xi[k];
-      }
-      const drop = a * a + b * b;
-      if (drop > most) most = drop;
-    }
-    return studentised(most, total, dof);
-  }
 }
 
 /** χ² of `dof` degrees by Wilson & Hilferty's cube (1931, PNAS 17, 684); 0 for none. */
