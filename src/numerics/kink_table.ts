@@ -45,87 +45,112 @@ function buildTable(): Float64Array<ArrayBuffer> {
   return built;
 }
 
-// The weights in ρ of the last (w, σ): a fit calls with the same pair for all pixels of one evaluation.
+// What belongs to the last (w, σ): a fit calls with the same pair for all pixels of one evaluation. Its line through the table, at this
+// ρ, is worked out node by node as the nodes are asked for; four numbers a node: F, h ∂F/∂ξ, and the slopes of both along ρ.
 let lastW = Number.NaN;
 let lastSigma = Number.NaN;
-let scale = 1;
+let perScale = 1;
 let rhoOfLast = 0;
 let nodeOfLast = 0;
-let r00 = 0;
-let r10 = 0;
-let r01 = 0;
-let r11 = 0;
-let s00 = 0;
-let s10 = 0;
-let s01 = 0;
-let s11 = 0;
+/** Weights in ρ of F and ∂F/∂ρ at the nodes on either side, then those of the slope along ρ. */
+const inRho = new Float64Array(8);
+const line = new Float64Array((XI_CELLS + 1) * 4);
+/** For which pair a node of the line was worked out. */
+const workedOut = new Float64Array(XI_CELLS + 1);
+let pair = 0;
 
 function prepare(w: number, sigma: number): void {
   const variance = KINK_VARIANCE * w * w;
   const total = variance + sigma * sigma;
   if (!(w >= 0 && sigma >= 0 && total > 0)) throw new RangeError(`no kink of width ${w} with blur ${sigma}`);
   if (table.length === 0) table = buildTable();
-  scale = Math.sqrt(total);
+  perScale = 1 / Math.sqrt(total);
   rhoOfLast = variance / total;
   const position = rhoOfLast * RHO_CELLS;
   const j = Math.min(RHO_CELLS - 1, Math.floor(position));
   const t = position - j;
   nodeOfLast = j * (XI_CELLS + 1) * 4;
-  r00 = (1 + 2 * t) * (1 - t) * (1 - t);
-  r10 = t * (1 - t) * (1 - t);
-  r01 = t * t * (3 - 2 * t);
-  r11 = t * t * (t - 1);
-  s00 = -6 * t * (1 - t) * RHO_CELLS;
-  s10 = (1 - t) * (1 - 3 * t) * RHO_CELLS;
-  s01 = -s00;
-  s11 = t * (3 * t - 2) * RHO_CELLS;
+  const outward = 6 * t * (1 - t) * RHO_CELLS;
+  inRho[0] = (1 + 2 * t) * (1 - t) * (1 - t);
+  inRho[1] = t * (1 - t) * (1 - t);
+  inRho[2] = t * t * (3 - 2 * t);
+  inRho[3] = t * t * (t - 1);
+  inRho[4] = -outward;
+  inRho[5] = (1 - t) * (1 - 3 * t) * RHO_CELLS;
+  inRho[6] = outward;
+  inRho[7] = t * (3 * t - 2) * RHO_CELLS;
   lastW = w;
   lastSigma = sigma;
+  pair++;
+}
+
+function workOut(i: number): void {
+  const f = table;
+  const r = inRho;
+  const a = nodeOfLast + i * 4;
+  const b = a + (XI_CELLS + 1) * 4;
+  const k = i * 4;
+  for (let m = 0; m < 2; m++) {
+    const near = f[a + m];
+    const nearRho = f[a + m + 2];
+    const far = f[b + m];
+    const farRho = f[b + m + 2];
+    line[k + m] = r[0] * near + r[1] * nearRho + r[2] * far + r[3] * farRho;
+    line[k + m + 2] = r[4] * near + r[5] * nearRho + r[6] * far + r[7] * farRho;
+  }
+  workedOut[i] = pair;
 }
 
 /** As `kink`, from a table built at the first call (some 50 ms): u within 1e-7, derivatives within 3e-6 (units as there), all
- *  continuous but for a step of 1e-8 far out; some 45 ns a call when successive calls share `w` and `sigma`. No allocation. */
+ *  continuous but for a step of 1e-8 far out. Quick when successive calls share `w` and `sigma`; no allocation then. */
 export function fastKink(x: number, w: number, sigma: number, out: Float64Array): void {
+  single[0] = x;
+  fastKinks(single, 1, w, sigma, out);
+}
+
+const single = new Float64Array(1);
+
+/** `fastKink` at the first `count` positions `x`, some 15 ns each: four numbers a position into `out`. */
+export function fastKinks(x: Float64Array, count: number, w: number, sigma: number, out: Float64Array): void {
   if (w !== lastW || sigma !== lastSigma) prepare(w, sigma);
-  const a = Math.abs(x) / scale;
-  if (!(a < XI_MAX)) {
-    out[0] = x > 0 ? 1 : x < 0 ? 0 : Number.NaN;
-    out[1] = out[2] = out[3] = 0;
-    return;
-  }
-  const position = a / XI_STEP;
-  const i = Math.floor(position);
-  const t = position - i;
-  const q = 1 - t;
-  const f = table;
-  const A = nodeOfLast + i * 4;
-  const B = A + (XI_CELLS + 1) * 4;
-  // Along ρ first: F, h F_ξ at both ξ nodes, and their slopes along ρ.
-  const v0 = r00 * f[A] + r10 * f[A + 2] + r01 * f[B] + r11 * f[B + 2];
-  const d0 = r00 * f[A + 1] + r10 * f[A + 3] + r01 * f[B + 1] + r11 * f[B + 3];
-  const v1 = r00 * f[A + 4] + r10 * f[A + 6] + r01 * f[B + 4] + r11 * f[B + 6];
-  const d1 = r00 * f[A + 5] + r10 * f[A + 7] + r01 * f[B + 5] + r11 * f[B + 7];
-  const sv0 = s00 * f[A] + s10 * f[A + 2] + s01 * f[B] + s11 * f[B + 2];
-  const sd0 = s00 * f[A + 1] + s10 * f[A + 3] + s01 * f[B + 1] + s11 * f[B + 3];
-  const sv1 = s00 * f[A + 4] + s10 * f[A + 6] + s01 * f[B + 4] + s11 * f[B + 6];
-  const sd1 = s00 * f[A + 5] + s10 * f[A + 7] + s01 * f[B + 5] + s11 * f[B + 7];
-  const h01 = t * t * (3 - 2 * t);
-  const h10 = t * q * q;
-  const h11 = -t * t * q;
-  const u = v0 + (v1 - v0) * h01 + d0 * h10 + d1 * h11;
-  const byXi = ((v1 - v0) * 6 * t * q + d0 * q * (1 - 3 * t) + d1 * t * (3 * t - 2)) / XI_STEP;
-  const byRho = sv0 + (sv1 - sv0) * h01 + sd0 * h10 + sd1 * h11;
-  const perArea = 1 / (scale * scale);
-  const uv = KINK_VARIANCE * perArea * ((1 - rhoOfLast) * byRho - 0.5 * a * byXi);
-  const us = -sigma * perArea * (2 * rhoOfLast * byRho + a * byXi);
-  out[1] = byXi / scale;
-  if (x >= 0) {
-    out[0] = u;
-    out[2] = uv;
-    out[3] = us;
-  } else {
-    out[0] = 1 - u;
-    out[2] = -uv;
-    out[3] = -us;
+  const own = pair;
+  const inverse = perScale;
+  const perArea = inverse * inverse;
+  const varianceByRho = KINK_VARIANCE * perArea * (1 - rhoOfLast);
+  const varianceByXi = -0.5 * KINK_VARIANCE * perArea;
+  const sigmaByRho = -2 * sigma * perArea * rhoOfLast;
+  const sigmaByXi = -sigma * perArea;
+  for (let n = 0, at = 0; n < count; n++, at += 4) {
+    const signed = x[n];
+    const a = Math.abs(signed) * inverse;
+    if (!(a < XI_MAX)) {
+      out[at] = signed > 0 ? 1 : signed < 0 ? 0 : Number.NaN;
+      out[at + 1] = out[at + 2] = out[at + 3] = 0;
+      continue;
+    }
+    const position = a * (1 / XI_STEP);
+    // not negative, below 2^31
+    const i = position | 0;
+    if (workedOut[i] !== own) workOut(i);
+    if (workedOut[i + 1] !== own) workOut(i + 1);
+    const t = position - i;
+    const q = 1 - t;
+    const k = i * 4;
+    const v0 = line[k];
+    const d0 = line[k + 1];
+    const d1 = line[k + 5];
+    const rise = line[k + 4] - v0;
+    const sv0 = line[k + 2];
+    const h01 = t * t * (3 - 2 * t);
+    const h10 = t * q * q;
+    const h11 = -t * t * q;
+    const u = v0 + rise * h01 + d0 * h10 + d1 * h11;
+    const byXi = (rise * 6 * t * q + d0 * q * (1 - 3 * t) + d1 * t * (3 * t - 2)) * (1 / XI_STEP);
+    const byRho = sv0 + (line[k + 6] - sv0) * h01 + line[k + 3] * h10 + line[k + 7] * h11;
+    const side = signed >= 0 ? 1 : -1;
+    out[at] = signed >= 0 ? u : 1 - u;
+    out[at + 1] = byXi * inverse;
+    out[at + 2] = side * (varianceByRho * byRho + varianceByXi * a * byXi);
+    out[at + 3] = side * (sigmaByRho * byRho + sigmaByXi * a * byXi);
   }
 }

@@ -1,5 +1,5 @@
 import { choleskyInPlace, choleskyInvert, choleskySolve } from "../../numerics/cholesky.js";
-import { fastKink } from "../../numerics/kink.js";
+import { fastKink, fastKinks } from "../../numerics/kink.js";
 import type { ProfileData } from "./profile_data.js";
 
 /** Parameters of a profile: y = I·alpha·(1−u) + M·beta·u, u = kink(distance − centre − tilt·arc; w, σ), with w² as the parameter:
@@ -44,6 +44,9 @@ export class ProfileFitter {
   private readonly b = new Float64Array(PARAMETERS);
   private readonly free = new Int32Array(PARAMETERS);
   private readonly u = new Float64Array(4);
+  /** Distance of each pixel from the wall as it is tried, and the kink there with its derivatives, four numbers a pixel. */
+  private x = new Float64Array(0);
+  private kinks = new Float64Array(0);
 
   /** Fit the parameters named in `free` (true = free) from the values in `this.p`. `settled`: predicted fall of χ² at which it ends. */
   fit(data: ProfileData, free: readonly boolean[], prior: SigmaPrior | null, most = 40, settled = 1e-5): FitStatus {
@@ -131,11 +134,18 @@ export class ProfileFitter {
     gradient: Float64Array,
     prior: SigmaPrior | null,
   ): number {
-    const { u } = this;
     const { distance, arc, value, alpha, beta, weight, count } = data;
-    const [low, high, centre, tilt] = p;
-    const w = Math.sqrt(p[WIDTH_SQUARED]);
-    const sigma = p[TIP_SIGMA];
+    if (this.x.length < count) {
+      this.x = new Float64Array(2 * count);
+      this.kinks = new Float64Array(8 * count);
+    }
+    const { x, kinks } = this;
+    const low = p[INSULATING_LEVEL];
+    const high = p[METALLIC_LEVEL];
+    const centre = p[CENTRE];
+    const tilt = p[TILT];
+    for (let k = 0; k < count; k++) x[k] = distance[k] - centre - tilt * arc[k];
+    fastKinks(x, count, Math.sqrt(p[WIDTH_SQUARED]), p[TIP_SIGMA], kinks);
     let cost = 0;
     let gi = 0,
       gm = 0,
@@ -164,18 +174,18 @@ export class ProfileFitter {
       st = 0,
       sq = 0,
       ss = 0;
-    for (let k = 0; k < count; k++) {
+    for (let k = 0, at = 0; k < count; k++, at += 4) {
       const along = arc[k];
-      fastKink(distance[k] - centre - tilt * along, w, sigma, u);
+      const u = kinks[at];
       const wi = alpha[k] * weight[k];
       const wm = beta[k] * weight[k];
       const rise = high * wm - low * wi;
-      const di = wi * (1 - u[0]);
-      const dm = wm * u[0];
-      const dc = -rise * u[1];
+      const di = wi * (1 - u);
+      const dm = wm * u;
+      const dc = -rise * kinks[at + 1];
       const dt = dc * along;
-      const dq = rise * u[2];
-      const ds = rise * u[3];
+      const dq = rise * kinks[at + 2];
+      const ds = rise * kinks[at + 3];
       const r = low * di + high * dm - value[k] * weight[k];
       cost += r * r;
       gi += di * r;
