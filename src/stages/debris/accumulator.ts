@@ -1,22 +1,16 @@
 import type { Tip } from "../../model/cooldown.js";
 import { colsOf, dataOf, type PixelSize, rowsOf } from "../../model/raster.js";
 import type { CleanFrame, Drift } from "../../model/signal.js";
-import { wrapAngle } from "../../numerics/quantile.js";
+import { logsOf } from "../../numerics/log.js";
+import { addHeights, addSignal } from "./add_frame.js";
 import { contrastOf } from "./chord.js";
 import { decide } from "./decide.js";
 import { addEffect, emptyEffect, ratiosOf } from "./effect.js";
-import { addGrid, type ChannelSums, type DebrisMap, type Grid, type HeightSums } from "./grid.js";
-import { departures, heights } from "./residuals.js";
-import { type Ring, ringOf } from "./ring.js";
+import { addGrid, type ChannelSums, type DebrisMap, type Grid } from "./grid.js";
 import { reaches } from "./reaches.js";
+import { heights, judge } from "./residuals.js";
+import { ringOf } from "./ring.js";
 import type { DebrisSettings } from "./settings.js";
-
-/** Departures beyond this many standard deviations count no more: one frame's domain must not outweigh the others. */
-const CLIP = 3;
-/** Departure of the logarithm of the amplitude beyond which noise rules. */
-const MOST_LOG = 2;
-/** A departure that counts as seen. */
-const SEEN = 1;
 
 export interface FrameSize {
   readonly rows: number;
@@ -54,56 +48,39 @@ export class DebrisAccumulator {
     this.#grid ??= this.#makeGrid(pixel, this.#size ?? { rows, cols });
     const grid = this.#grid;
     const { ringXPx, ringYPx } = reaches(pixel, this.#tip, this.#settings);
-    const atCol = Math.round((drift.xNm - grid.originXNm) / grid.pixel.xNm);
-    const atRow = Math.round((drift.yNm - grid.originYNm) / grid.pixel.yNm);
-
-    const amplitude = dataOf(clean.amplitude);
-    const log = new Float32Array(amplitude.length);
-    for (let p = 0; p < log.length; p++) log[p] = amplitude[p] > 0 ? Math.log(amplitude[p]) : Number.NaN;
-    const ringOfLog = ringOf(log, rows, cols, ringXPx, ringYPx);
-    const byAmplitude = departures(log, ringOfLog, null, rows, cols);
-    addChannel(grid.amplitude, byAmplitude.strict, grid, rows, cols, atRow, atCol);
-    addChannel(grid.looseAmplitude, byAmplitude.loose, grid, rows, cols, atRow, atCol);
-    grid.frames++;
-    if (byAmplitude.levels.length === 2) grid.twoStateFrames++;
-    const sums = byAmplitude.levels.length === 2 ? grid.effect.mixed : grid.effect.lone;
     const exactRow = (drift.yNm - grid.originYNm) / grid.pixel.yNm;
     const exactCol = (drift.xNm - grid.originXNm) / grid.pixel.xNm;
-    const addRatios = (phase: Float32Array | null, ring: Ring | null, calm: Uint8Array): void => {
-      const reference = ring?.reference ?? null;
-      const ratio = ratiosOf(log, ringOfLog.reference, phase, reference, calm, rows, cols, ringOfLog.blockCols);
-      addEffect(sums, ratio.re, ratio.im, rows, cols, grid.rows, grid.cols, exactRow, exactCol);
-    };
-    grid.pair.noise = Math.max(grid.pair.noise, byAmplitude.noise);
-    const [first, second] = byAmplitude.levels;
-    if (clean.phase === null) {
-      addRatios(null, null, byAmplitude.calm);
-      if (second !== undefined) grid.pair.contrasts.push({ logRatio: second - first, turnRad: 0 });
-    } else if (grid.phase !== null) {
-      const phase = dataOf(clean.phase);
-      const ring = ringOf(phase, rows, cols, ringXPx, ringYPx);
-      const byPhase = departures(phase, ring, byAmplitude.flat, rows, cols);
-      addChannel(grid.phase, byPhase.strict, grid, rows, cols, atRow, atCol);
-      addPairs(grid, log, ringOfLog, phase, ring, byPhase.flat, rows, cols, atRow, atCol);
-      addRatios(
-        phase,
-        ring,
-        byPhase.calm.map((c, b) => c & byAmplitude.calm[b]),
-      );
-      grid.pair.noise = Math.max(grid.pair.noise, byPhase.noise);
-      const contrast = second === undefined ? null : contrastOf([first, second], ringOfLog, ring, byPhase.flat);
+    const at = { rows, cols, atRow: Math.round(exactRow), atCol: Math.round(exactCol) };
+
+    const amplitude = dataOf(clean.amplitude);
+    const values = logsOf(amplitude);
+    const logRing = ringOf(values, rows, cols, ringXPx, ringYPx);
+    const log = { values, judged: judge(values, logRing, null, rows, cols) };
+    const phase = clean.phase === null ? null : dataOf(clean.phase);
+    const phaseRing = phase === null ? null : ringOf(phase, rows, cols, ringXPx, ringYPx);
+    const turned =
+      phase === null || phaseRing === null
+        ? null
+        : { values: phase, judged: judge(phase, phaseRing, log.judged.flat, rows, cols) };
+    addSignal(grid, log, turned, at);
+
+    const [first, second] = log.judged.levels;
+    grid.frames++;
+    if (second !== undefined) grid.twoStateFrames++;
+    grid.pair.noise = Math.max(grid.pair.noise, log.judged.noise, turned?.judged.noise ?? 0);
+    if (second !== undefined) {
+      const contrast =
+        turned === null
+          ? { logRatio: second - first, turnRad: 0 }
+          : contrastOf([first, second], logRing, turned.judged.ring, turned.judged.flat);
       if (contrast !== null) grid.pair.contrasts.push(contrast);
     }
+    const calm = log.judged.calm.map((c, b) => c & (turned?.judged.calm[b] ?? 1));
+    const ratios = ratiosOf(amplitude, logRing, phase, phaseRing, calm, rows, cols);
+    const effect = second === undefined ? grid.effect.lone : grid.effect.mixed;
+    addEffect(effect, ratios, rows, cols, grid.rows, grid.cols, exactRow, exactCol);
     if (clean.topography !== null && grid.height !== null) {
-      addHeights(
-        grid.height,
-        heights(dataOf(clean.topography), rows, cols, ringXPx, ringYPx),
-        grid,
-        rows,
-        cols,
-        atRow,
-        atCol,
-      );
+      addHeights(grid, grid.height, heights(dataOf(clean.topography), rows, cols, ringXPx, ringYPx), at);
     }
   }
 
@@ -169,91 +146,4 @@ export class DebrisAccumulator {
       effect: { lone: emptyEffect(n), mixed: emptyEffect(n) },
     };
   }
-}
-
-/** Calls `add` for every row of a frame that lies on the grid, with the first pixel's index on the grid and in the frame and their number. Frames
- *  of one cooldown may differ in size. */
-function overGrid(
-  grid: Grid,
-  rows: number,
-  cols: number,
-  atRow: number,
-  atCol: number,
-  add: (onGrid: number, inFrame: number, count: number) => void,
-): void {
-  const from = Math.max(0, -atCol);
-  const to = Math.min(cols, grid.cols - atCol);
-  for (let i = Math.max(0, -atRow); i < Math.min(rows, grid.rows - atRow); i++)
-    add((i + atRow) * grid.cols + from + atCol, i * cols + from, to - from);
-}
-
-function addChannel(
-  sums: ChannelSums,
-  departure: Float32Array,
-  grid: Grid,
-  rows: number,
-  cols: number,
-  atRow: number,
-  atCol: number,
-): void {
-  const { sum, count, above, below } = sums;
-  overGrid(grid, rows, cols, atRow, atCol, (onGrid, inFrame, n) => {
-    for (let g = onGrid, p = inFrame; p < inFrame + n; g++, p++) {
-      const z = departure[p];
-      if (Number.isNaN(z)) continue;
-      sum[g] += z > CLIP ? CLIP : z < -CLIP ? -CLIP : z;
-      count[g]++;
-      if (z > SEEN) above[g]++;
-      else if (z < -SEEN) below[g]++;
-    }
-  });
-}
-
-function addPairs(
-  grid: Grid,
-  log: Float32Array,
-  ringOfLog: Ring,
-  phase: Float32Array,
-  ringOfPhase: Ring,
-  flat: Uint8Array,
-  rows: number,
-  cols: number,
-  atRow: number,
-  atCol: number,
-): void {
-  const { pair } = grid;
-  overGrid(grid, rows, cols, atRow, atCol, (onGrid, inFrame, n) => {
-    const i = Math.floor(inFrame / cols);
-    const block = (i >> 1) * ringOfLog.blockCols;
-    for (let g = onGrid, p = inFrame, j = inFrame - i * cols; p < inFrame + n; g++, p++, j++) {
-      const b = block + (j >> 1);
-      if (flat[b] === 0) continue;
-      const a = log[p] - ringOfLog.reference[b];
-      const t = phase[p] - ringOfPhase.reference[b];
-      if (Number.isNaN(a) || Number.isNaN(t)) continue;
-      pair.log[g] += a > MOST_LOG ? MOST_LOG : a < -MOST_LOG ? -MOST_LOG : a;
-      pair.turn[g] += t > -3 && t < 3 ? t : wrapAngle(t);
-      pair.count[g]++;
-    }
-  });
-}
-
-function addHeights(
-  sums: HeightSums,
-  heightNm: Float32Array,
-  grid: Grid,
-  rows: number,
-  cols: number,
-  atRow: number,
-  atCol: number,
-): void {
-  overGrid(grid, rows, cols, atRow, atCol, (onGrid, inFrame, n) => {
-    for (let g = onGrid, p = inFrame; p < inFrame + n; g++, p++) {
-      const h = heightNm[p];
-      if (Number.isNaN(h)) continue;
-      sums.sum[g] += h;
-      sums.squares[g] += h * h;
-      sums.count[g]++;
-    }
-  });
 }

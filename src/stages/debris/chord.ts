@@ -16,7 +16,7 @@ export function contrastOf(
   flat: Uint8Array,
 ): Contrast | null {
   const phases: [number[], number[]] = [[], []];
-  for (let b = 0; b < flat.length; b += 3) {
+  for (let b = 0; b < flat.length; b++) {
     if (flat[b] === 0 || Number.isNaN(phase.reference[b])) continue;
     const r = amplitude.reference[b];
     phases[Math.abs(r - levels[1]) < Math.abs(r - levels[0]) ? 1 : 0].push(phase.reference[b]);

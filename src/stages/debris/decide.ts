@@ -1,5 +1,5 @@
 import type { Tip } from "../../model/cooldown.js";
-import { median } from "../../numerics/quantile.js";
+import { madInPlace, median, medianInPlace, SD_PER_MAD } from "../../numerics/quantile.js";
 import { connectedComponents } from "../../raster/opencv.js";
 import { distanceFromChord } from "./chord.js";
 import { coreStrength } from "./effect.js";
@@ -15,6 +15,8 @@ const SUPPORT = 2.5;
 /** Distance from the chord of the two states that no gain or texture makes, and least departure in the amplitude with it. */
 const OFF_CHORD = 0.12;
 const LEAST_LOG = 0.2;
+/** Pixels that the film's roughness is told from. */
+const MOST_VALUES = 30_000;
 /** Spots reach out to where the departure falls below this share of what it takes to be one. */
 const REACH_SHARE = 0.5;
 
@@ -120,25 +122,29 @@ function markChannel(
 export function heightScores(sums: HeightSums, rows: number, cols: number): Float32Array {
   const { mean, effective } = smoothedMean(sums.sum, sums.count, rows, cols);
   const n = rows * cols;
-  const within: number[] = [];
-  const means: number[] = [];
-  const inverse: number[] = [];
-  for (let p = 0; p < n; p += 3) {
+  // a part of the pixels tells the medians
+  const stride = Math.ceil(n / MOST_VALUES) | 1;
+  const within = new Float64Array(Math.ceil(n / stride));
+  const means = new Float64Array(within.length);
+  const inverse = new Float64Array(within.length);
+  let seen = 0;
+  let repeated = 0;
+  for (let p = 0; p < n; p += stride) {
     const c = sums.count[p];
     if (c === 0) continue;
-    means.push(mean[p]);
-    inverse.push(1 / effective[p]);
+    means[seen] = mean[p];
+    inverse[seen++] = 1 / effective[p];
     if (c > 1) {
       const m = sums.sum[p] / c;
-      within.push(Math.max(0, (sums.squares[p] / c - m * m) * (c / (c - 1))));
+      within[repeated++] = Math.max(0, (sums.squares[p] / c - m * m) * (c / (c - 1)));
     }
   }
   const score = new Float32Array(n);
-  if (means.length === 0) return score;
-  const centre = median(means);
-  const total = 1.4826 * median(means.map((m) => Math.abs(m - centre)));
-  const noise2 = within.length > 0 ? median(within) : 0;
-  const rough2 = Math.max(0.25 * total * total, total * total - noise2 * median(inverse));
+  if (seen === 0) return score;
+  const centre = medianInPlace(means, seen);
+  const total = SD_PER_MAD * madInPlace(means, seen, centre);
+  const noise2 = repeated > 0 ? medianInPlace(within, repeated) : 0;
+  const rough2 = Math.max(0.25 * total * total, total * total - noise2 * medianInPlace(inverse, seen));
   for (let p = 0; p < n; p++) {
     if (sums.count[p] === 0) continue;
     const sd = Math.sqrt(rough2 + noise2 / effective[p]);

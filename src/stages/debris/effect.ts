@@ -1,6 +1,8 @@
 import { median } from "../../numerics/quantile.js";
+import { sinCos } from "../../numerics/sin_cos.js";
 import type { Contrast } from "./chord.js";
 import type { EffectSums, Grid } from "./grid.js";
+import type { Ring } from "./ring.js";
 
 /** Amplitude over that of the surroundings beyond which a pixel counts as this much only. */
 const MOST_RATIO = 5;
@@ -22,14 +24,19 @@ export function emptyEffect(n: number): EffectSums {
   };
 }
 
-/** Adds one frame's ratios z/z_surroundings − 1 (complex; real where there is no phase), each shared out among the four grid
+/** One frame's ratios z/z_surroundings − 1, row-major [rows, cols]; 0 where `known` is 0. */
+export interface Ratios {
+  readonly re: Float32Array;
+  readonly im: Float32Array;
+  readonly known: Uint8Array;
+}
+
+/** Adds one frame's ratios (complex; real where there is no phase), each shared out among the four grid
  *  pixels about its exact place, so that the mean over frames lies where the particle does, to far better than a pixel.
- *  @param ratioRe, ratioIm row-major [rows, cols], NaN = nothing to say; `ratioIm` null where there is no phase
  *  @param atCol, atRow where the frame's first pixel lies on the grid, in grid pixels, not whole */
 export function addEffect(
   sums: EffectSums,
-  ratioRe: Float32Array,
-  ratioIm: Float32Array | null,
+  { re, im, known }: Ratios,
   rows: number,
   cols: number,
   gridRows: number,
@@ -41,22 +48,33 @@ export function addEffect(
   const col0 = Math.floor(atCol);
   const fy = atRow - row0;
   const fx = atCol - col0;
-  for (let corner = 0; corner < 4; corner++) {
-    const dr = corner >> 1;
-    const dc = corner & 1;
-    const w = (dr === 0 ? 1 - fy : fy) * (dc === 0 ? 1 - fx : fx);
-    if (w < 1e-6) continue;
-    const top = row0 + dr;
-    const left = col0 + dc;
-    const from = Math.max(0, -left);
-    const to = Math.min(cols, gridCols - left);
-    for (let i = Math.max(0, -top); i < Math.min(rows, gridRows - top); i++) {
-      for (let j = from; j < to; j++) {
-        const re = ratioRe[i * cols + j];
-        if (Number.isNaN(re)) continue;
-        const g = (i + top) * gridCols + j + left;
-        sums.re[g] += w * re;
-        if (ratioIm !== null) sums.im[g] += w * ratioIm[i * cols + j];
+  // a grid pixel gets its shares of the frame's pixels at (i, j), (i, j − 1), (i − 1, j) and (i − 1, j − 1)
+  const shares = [(1 - fy) * (1 - fx), (1 - fy) * fx, fy * (1 - fx), fy * fx].map((w) => (w < 1e-6 ? 0 : w));
+  const [here, left, up, both] = shares;
+  const whole = shares.reduce((t, w) => t + w, 0);
+  const wholeSquares = shares.reduce((t, w) => t + w * w, 0);
+  for (let i = Math.max(0, -row0); i <= Math.min(rows, gridRows - 1 - row0); i++) {
+    for (let j = Math.max(0, -col0); j <= Math.min(cols, gridCols - 1 - col0); j++) {
+      const p = i * cols + j;
+      const a = i < rows && j < cols ? known[p] : 0;
+      const b = i < rows && j > 0 ? known[p - 1] : 0;
+      const c = i > 0 && j < cols ? known[p - cols] : 0;
+      const d = i > 0 && j > 0 ? known[p - cols - 1] : 0;
+      if ((a | b | c | d) === 0) continue;
+      const g = (i + row0) * gridCols + j + col0;
+      if ((a & b & c & d) === 1) {
+        sums.re[g] += here * re[p] + left * re[p - 1] + up * re[p - cols] + both * re[p - cols - 1];
+        sums.im[g] += here * im[p] + left * im[p - 1] + up * im[p - cols] + both * im[p - cols - 1];
+        sums.weight[g] += whole;
+        sums.squares[g] += wholeSquares;
+        continue;
+      }
+      for (let k = 0; k < 4; k++) {
+        if ((k === 0 ? a : k === 1 ? b : k === 2 ? c : d) === 0) continue;
+        const q = p - (k & 1) - (k >> 1) * cols;
+        const w = shares[k];
+        sums.re[g] += w * re[q];
+        sums.im[g] += w * im[q];
         sums.weight[g] += w;
         sums.squares[g] += w * w;
       }
@@ -65,37 +83,44 @@ export function addEffect(
 }
 
 /** Ratios less 1 of the pixels whose surroundings are of one state all round.
- *  @param log logarithm of the amplitude, `phase` null where there is none
- *  @param logReference, phaseReference of the surroundings; `calm` 1 = of one state; all three in blocks of 2 × 2 pixels */
+ *  @param phase null where there is none
+ *  @param logRing, phaseRing surroundings of the logarithm of the amplitude and of the phase
+ *  @param calm 1 = of one state; in blocks of the rings */
 export function ratiosOf(
-  log: Float32Array,
-  logReference: Float32Array,
+  amplitude: Float32Array,
+  logRing: Ring,
   phase: Float32Array | null,
-  phaseReference: Float32Array | null,
+  phaseRing: Ring | null,
   calm: Uint8Array,
   rows: number,
   cols: number,
-  blockCols: number,
-): { readonly re: Float32Array; readonly im: Float32Array | null } {
-  const n = rows * cols;
-  const re = new Float32Array(n).fill(Number.NaN);
-  const im = phase === null ? null : new Float32Array(n);
-  for (let i = 0; i < rows; i++) {
-    for (let j = 0; j < cols; j++) {
-      const b = (i >> 1) * blockCols + (j >> 1);
+): Ratios {
+  const { shift, blockCols } = logRing;
+  const re = new Float32Array(rows * cols);
+  const im = new Float32Array(rows * cols);
+  const known = new Uint8Array(rows * cols);
+  const perLevel = logRing.reference.map((r) => Math.exp(-r));
+  const turned = new Float64Array(2);
+  for (let i = 0, p = 0; i < rows; i++) {
+    const row = (i >> shift) * blockCols;
+    for (let j = 0; j < cols; j++, p++) {
+      const b = row + (j >> shift);
       if (calm[b] === 0) continue;
-      const p = i * cols + j;
-      const size = Math.min(MOST_RATIO, Math.exp(log[p] - logReference[b]));
-      if (phase === null || phaseReference === null || im === null) {
-        re[p] = size - 1;
-        continue;
+      const ratio = amplitude[p] * perLevel[b];
+      if (!(ratio > 0)) continue;
+      const size = ratio < MOST_RATIO ? ratio : MOST_RATIO;
+      if (phase === null || phaseRing === null) re[p] = size - 1;
+      else {
+        const turn = phase[p] - phaseRing.reference[b];
+        if (Number.isNaN(turn)) continue;
+        sinCos(turn, turned);
+        re[p] = size * turned[1] - 1;
+        im[p] = size * turned[0];
       }
-      const turn = phase[p] - phaseReference[b];
-      re[p] = size * Math.cos(turn) - 1;
-      im[p] = size * Math.sin(turn);
+      known[p] = 1;
     }
   }
-  return { re, im };
+  return { re, im, known };
 }
 
 /** Step between the two states over the larger of their amplitudes; 1 where no frame showed both. */

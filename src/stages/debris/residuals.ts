@@ -5,10 +5,6 @@ const SD_PER_MEDIAN_ABS = 1.4826;
 /** Two clusters of surroundings closer than this (difference of logarithms) are one state. */
 const LEAST_STATE_STEP = 0.15;
 
-/** One channel's departure of each pixel from its surroundings, in standard deviations of the pixel noise; NaN where nothing can be
- *  said: not measured, surroundings of both states, or a value that the frame's other state has as well. */
-export type Departure = Float32Array;
-
 interface Classes {
   /** Levels of the surroundings: one, or two where the frame shows both states. */
   readonly levels: readonly number[];
@@ -16,32 +12,40 @@ interface Classes {
   readonly sds: readonly number[];
 }
 
-export interface Departures {
-  readonly strict: Departure;
-  readonly loose: Departure;
-  /** Blocks with surroundings of one state. */
+/** What departures of one channel are measured by; per block of `ring`.
+ *
+ *  A pixel's departure z is its value less the block's `reference`, times `perSd`: in standard deviations of the pixel noise. It says something
+ *  where the block is flat. A small domain in the midst of the other state, or the foot of a wall, departs like debris. In frames that show both
+ *  states a departure between the two levels, FOOT < z·towards < `beyond`, or in surroundings that are not of one state all round, is
+ *  therefore `loose` evidence only: it counts together with a bump in the topography. All others are strict. */
+export interface Judged {
+  readonly ring: Ring;
+  /** 1 = surroundings of one state. */
   readonly flat: Uint8Array;
   /** The same, but in a frame that shows both states the surroundings are so all round. */
   readonly calm: Uint8Array;
+  readonly perSd: Float32Array;
+  /** 1 or −1: which way the other state lies; 0 where there is none. */
+  readonly towards: Int8Array;
+  readonly beyond: Float32Array;
   /** One level, or two where the frame shows both states. */
   readonly levels: readonly number[];
   /** Pixel noise, the larger where there are two states. */
   readonly noise: number;
 }
 
-/** Departures of the logarithm of the amplitude, or of the phase, from surroundings of one state.
- *
- *  A small domain in the midst of the other state, or the foot of a wall, departs like debris. In frames that show both states a pixel
- *  between the two levels is therefore left out of `strict`: what departs that way counts only where the frame shows one state, or
- *  (`loose`) together with a bump in the topography.
+/** Departures towards the other state by less than so many standard deviations are noise. */
+export const FOOT = 2;
+
+/** Judges the surroundings of the logarithm of the amplitude, or of the phase.
  *  @param allowed 1 = surroundings known to be of one state from another channel; null = judge by this channel alone. Blocks. */
-export function departures(
+export function judge(
   values: Float32Array,
   ring: Ring,
   allowed: Uint8Array | null,
   rows: number,
   cols: number,
-): Departures {
+): Judged {
   const sd0 = pixelNoise(values, rows, cols);
   const tolerance = 0.8 * sd0 + 0.03;
   const blocks = ring.reference.length;
@@ -49,37 +53,29 @@ export function departures(
   for (let b = 0; b < blocks; b++) {
     if (ring.spread[b] <= tolerance && (allowed === null || allowed[b] === 1)) flat[b] = 1;
   }
-  const classes = classify(values, ring, flat, rows, cols, sd0);
-  const strict = new Float32Array(rows * cols).fill(Number.NaN);
-  const loose = new Float32Array(rows * cols).fill(Number.NaN);
-  const [first, second] = classes.levels;
+  const { levels, sds } = classify(values, ring, flat, rows, cols, sd0);
+  const [first, second] = levels;
   const calm = flat.slice();
-  // walls reach to where their sectors already agree again, so in such frames all sectors must agree
-  if (second !== undefined) for (let b = 0; b < blocks; b++) if (ring.widest[b] > tolerance) calm[b] = 0;
-  for (let i = 0; i < rows; i++) {
-    for (let j = 0; j < cols; j++) {
-      const b = (i >> 1) * ring.blockCols + (j >> 1);
-      if (flat[b] === 0) continue;
-      const p = i * cols + j;
+  const perSd = new Float32Array(blocks).fill(1 / sds[0]);
+  const towards = new Int8Array(blocks);
+  const beyond = new Float32Array(blocks);
+  if (second !== undefined) {
+    for (let b = 0; b < blocks; b++) {
+      // walls reach to where their sectors already agree again, so in such frames all sectors must agree
+      if (ring.widest[b] > tolerance) calm[b] = 0;
       const reference = ring.reference[b];
-      const v = values[p];
-      let own = 0;
-      if (second !== undefined && Math.abs(reference - second) < Math.abs(reference - first)) own = 1;
-      const z = (v - reference) / classes.sds[own];
-      loose[p] = z;
-      if (second !== undefined) {
-        if (calm[b] === 0) continue;
-        const other = own === 0 ? second : first;
-        const towards = (v - reference) / (other - reference);
-        const beyond = 1 + Math.max(0.25, (3 * classes.sds[1 - own]) / Math.abs(other - reference));
-        if (towards > (2 * classes.sds[own]) / Math.abs(other - reference) && towards < beyond) continue;
-      }
-      strict[p] = z;
+      const own = Math.abs(reference - second) < Math.abs(reference - first) ? 1 : 0;
+      const step = (own === 0 ? second : first) - reference;
+      perSd[b] = 1 / sds[own];
+      towards[b] = Math.sign(step);
+      beyond[b] = (Math.abs(step) + Math.max(0.25 * Math.abs(step), 3 * sds[1 - own])) / sds[own];
     }
   }
-  const noise = Math.max(...classes.sds.filter(Number.isFinite), sd0);
-  return { strict, loose, flat, calm, levels: classes.levels, noise };
+  return { ring, flat, calm, perSd, towards, beyond, levels, noise: Math.max(...sds.filter(Number.isFinite), sd0) };
 }
+
+/** Values looked at for a median: more would not make it better by anything that matters. */
+const MOST_VALUES = 12_000;
 
 function classify(
   values: Float32Array,
@@ -89,9 +85,9 @@ function classify(
   cols: number,
   sd0: number,
 ): Classes {
-  const references = new Float32Array(Math.ceil(flat.length / 3));
+  const references = new Float32Array(flat.length);
   let n = 0;
-  for (let b = 0; b < flat.length; b += 3) if (flat[b] === 1) references[n++] = ring.reference[b];
+  for (let b = 0; b < flat.length; b++) if (flat[b] === 1) references[n++] = ring.reference[b];
   references.subarray(0, n).sort();
   const low = references[Math.floor(0.02 * n)];
   const high = references[Math.floor(0.98 * n)];
@@ -101,11 +97,12 @@ function classify(
     const split = references.subarray(0, n).findIndex((r) => r > middle);
     levels = [references[split >> 1], references[(split + n) >> 1]];
   }
-  const samples = levels.map(() => new Float64Array(Math.ceil((rows * cols) / 3)));
+  const stride = strideOf(rows * cols);
+  const samples = levels.map(() => new Float64Array(Math.ceil((rows * cols) / stride)));
   const counts = levels.map(() => 0);
-  for (let p = 0; p < rows * cols; p += 3) {
+  for (let p = 0; p < rows * cols; p += stride) {
     const i = Math.floor(p / cols);
-    const b = (i >> 1) * ring.blockCols + ((p - i * cols) >> 1);
+    const b = (i >> ring.shift) * ring.blockCols + ((p - i * cols) >> ring.shift);
     if (flat[b] === 0 || Number.isNaN(values[p])) continue;
     const r = ring.reference[b];
     const own = levels.length === 2 && Math.abs(r - levels[1]) < Math.abs(r - levels[0]) ? 1 : 0;
@@ -120,14 +117,18 @@ function classify(
 
 /** Robust noise by second differences along the rows. */
 function pixelNoise(values: Float32Array, rows: number, cols: number): number {
-  const r = new Float64Array(Math.ceil((rows * cols) / 5));
+  const stride = strideOf(rows * cols);
+  const r = new Float64Array(Math.ceil((rows * cols) / stride));
   let n = 0;
-  for (let p = 1; p < rows * cols - 1; p += 5) {
+  for (let p = 1; p < rows * cols - 1; p += stride) {
     const d = values[p - 1] - 2 * values[p] + values[p + 1];
     if (Number.isFinite(d)) r[n++] = Math.abs(d);
   }
   return n === 0 ? 0 : (SD_PER_MEDIAN_ABS / Math.sqrt(6)) * medianInPlace(r, n);
 }
+
+/** Odd, so that the columns of a frame, mostly an even number, take turns. */
+const strideOf = (pixels: number): number => Math.ceil(pixels / MOST_VALUES) | 1;
 
 /** The film's height is the same all round, so a corner of the image, with three sectors, does for it. */
 const LEAST_SECTORS_OF_HEIGHT = 3;
@@ -142,10 +143,9 @@ export function heights(
 ): Float32Array {
   const ring = ringOf(topography, rows, cols, radiusXPx, radiusYPx, LEAST_SECTORS_OF_HEIGHT);
   const out = new Float32Array(rows * cols);
-  for (let i = 0; i < rows; i++) {
-    for (let j = 0; j < cols; j++) {
-      out[i * cols + j] = topography[i * cols + j] - ring.reference[(i >> 1) * ring.blockCols + (j >> 1)];
-    }
+  for (let i = 0, p = 0; i < rows; i++) {
+    const row = (i >> ring.shift) * ring.blockCols;
+    for (let j = 0; j < cols; j++, p++) out[p] = topography[p] - ring.reference[row + (j >> ring.shift)];
   }
   return out;
 }

@@ -3,8 +3,13 @@ const SECTORS = 8;
 /** So many of them must have been measured: an edge of the image leaves five, a corner three. */
 const LEAST_SECTORS = 5;
 
-/** The surroundings of each block of 2 × 2 pixels: [blockRows, blockCols], blocks in reading order. */
+/** A block's side is the largest power of 2 that is at most the ring's radius over this, or 1: all its pixels have nearly the same surroundings. */
+const RADIUS_OVER_SIDE = 3;
+
+/** The surroundings of each block of pixels (mostly 2 × 2 or 4 × 4): [blockRows, blockCols], blocks in reading order. */
 export interface Ring {
+  /** Pixel (i, j) lies in block (i >> shift, j >> shift). */
+  readonly shift: number;
   readonly blockCols: number;
   /** Median of the sectors' means; NaN where too little was measured. */
   readonly reference: Float32Array;
@@ -14,8 +19,9 @@ export interface Ring {
   readonly widest: Float32Array;
 }
 
-/** Surroundings of every pixel: the mean over small boxes at eight places on a ring of radius `radius`, and their median. The pixel
- *  itself and what lies inside the ring do not enter. The means of all boxes are taken once, by running sums, so the cost does not depend on the sizes.
+/** Surroundings of every block: the mean over small boxes at eight places on a ring of radius `radius`, and their median. The block
+ *  itself and what lies inside the ring do not enter. The means of all boxes are taken once, by running sums, so the cost does not depend on the sizes;
+ *  boxes lie whole blocks apart, so that those of all blocks are the same.
  *  @param values row-major [rows, cols], NaN = not measured
  *  @param radiusXPx, radiusYPx of the ring, in columns and rows
  *  @param leastSectors of the eight that must have been measured; with fewer than three there is no spread */
@@ -27,42 +33,41 @@ export function ringOf(
   radiusYPx: number,
   leastSectors = LEAST_SECTORS,
 ): Ring {
-  const halfX = Math.max(1, Math.round(0.2 * radiusXPx));
-  const halfY = Math.max(1, Math.round(0.2 * radiusYPx));
-  const atX = Array.from({ length: SECTORS }, (_, k) => Math.round(radiusXPx * Math.cos((2 * Math.PI * k) / SECTORS)));
-  const atY = Array.from({ length: SECTORS }, (_, k) => Math.round(radiusYPx * Math.sin((2 * Math.PI * k) / SECTORS)));
-  // so far round the image that every sector's place is on the map
-  const marginX = Math.max(...atX.map(Math.abs)) + 1;
-  const marginY = Math.max(...atY.map(Math.abs)) + 1;
-  // blocks lie at even pixels: where all sectors' places do too, the means at odd ones are not asked for
-  const even = (at: readonly number[]): boolean => at.every((k) => k % 2 === 0);
-  const means = boxMeans(values, rows, cols, halfX, halfY, marginX, marginY, even(atX) ? 2 : 1, even(atY) ? 2 : 1);
-  const across = cols + 2 * marginX;
+  const shift = Math.max(0, Math.floor(Math.log2(Math.min(radiusXPx, radiusYPx) / RADIUS_OVER_SIDE)));
+  const side = 1 << shift;
+  const places = (radius: number, of: (angle: number) => number): number[] =>
+    Array.from({ length: SECTORS }, (_, k) => Math.round((radius / side) * of((2 * Math.PI * k) / SECTORS)));
+  // in blocks
+  const atX = places(radiusXPx, Math.cos);
+  const atY = places(radiusYPx, Math.sin);
+  const blocks = { rows: Math.ceil(rows / side), cols: Math.ceil(cols / side), side };
+  const margin = { x: Math.max(...atX.map(Math.abs)), y: Math.max(...atY.map(Math.abs)) };
+  const half = { x: Math.max(1, Math.round(0.2 * radiusXPx)), y: Math.max(1, Math.round(0.2 * radiusYPx)) };
+  const means = boxMeans(values, rows, cols, blocks, half, margin);
+  const across = blocks.cols + 2 * margin.x;
   const step = Int32Array.from(atX, (x, k) => atY[k] * across + x);
-  const blockRows = (rows + 1) >> 1;
-  const blockCols = (cols + 1) >> 1;
-  const reference = new Float32Array(blockRows * blockCols).fill(Number.NaN);
-  const spread = new Float32Array(blockRows * blockCols).fill(Number.NaN);
-  const widest = new Float32Array(blockRows * blockCols).fill(Number.NaN);
+  const n = blocks.rows * blocks.cols;
+  const reference = new Float32Array(n).fill(Number.NaN);
+  const spread = new Float32Array(n).fill(Number.NaN);
+  const widest = new Float32Array(n).fill(Number.NaN);
   const found = new Float64Array(SECTORS);
-  for (let bi = 0; bi < blockRows; bi++) {
-    for (let bj = 0; bj < blockCols; bj++) {
-      const here = (2 * bi + marginY) * across + 2 * bj + marginX;
-      let n = 0;
+  for (let b = 0, bi = 0; bi < blocks.rows; bi++) {
+    for (let bj = 0; bj < blocks.cols; bj++, b++) {
+      const here = (bi + margin.y) * across + bj + margin.x;
+      let count = 0;
       if (!sortEight(means, here, step, found)) {
         for (let k = 0; k < SECTORS; k++) {
           const v = means[here + step[k]];
-          if (!Number.isNaN(v)) insert(found, n++, v);
+          if (!Number.isNaN(v)) insert(found, count++, v);
         }
-      } else n = SECTORS;
-      if (n < leastSectors) continue;
-      const middle = n % 2 === 1 ? found[n >> 1] : 0.5 * (found[(n >> 1) - 1] + found[n >> 1]);
-      const b = bi * blockCols + bj;
+      } else count = SECTORS;
+      if (count < leastSectors) continue;
+      const middle = count % 2 === 1 ? found[count >> 1] : 0.5 * (found[(count >> 1) - 1] + found[count >> 1]);
       reference[b] = middle;
-      if (n < 3) continue;
+      if (count < 3) continue;
       // the furthest lie at the ends
       let low = 0;
-      let high = n - 1;
+      let high = count - 1;
       let away = 0;
       for (let k = 0; k < 3; k++) {
         const below = middle - found[low];
@@ -79,55 +84,57 @@ export function ringOf(
       spread[b] = away;
     }
   }
-  return { blockCols, reference, spread, widest };
+  return { shift, blockCols: blocks.cols, reference, spread, widest };
 }
 
-/** Means over boxes of ±halfX, ±halfY round each pixel and each place up to a margin outside the image, [rows + 2 marginY, cols + 2 marginX]; NaN where
- *  less than a quarter of the box was measured, and at all but every `everyX`th and `everyY`th pixel of the image. */
+/** Means over boxes of ±half.x, ±half.y pixels round the middle of each block and each place up to a margin of blocks outside the image,
+ *  [blocks.rows + 2 margin.y, blocks.cols + 2 margin.x]; NaN where less than a quarter of the box was measured. The middle of a block of even
+ *  side is the pixel above and left of it. */
 function boxMeans(
   values: Float32Array,
   rows: number,
   cols: number,
-  halfX: number,
-  halfY: number,
-  marginX: number,
-  marginY: number,
-  everyX: number,
-  everyY: number,
+  blocks: { readonly rows: number; readonly cols: number; readonly side: number },
+  half: { readonly x: number; readonly y: number },
+  margin: { readonly x: number; readonly y: number },
 ): Float64Array {
-  const across = cols + 2 * marginX;
-  const out = new Float64Array(across * (rows + 2 * marginY)).fill(Number.NaN);
-  const least = Math.max(1, ((2 * halfX + 1) * (2 * halfY + 1)) >> 2);
+  const { side } = blocks;
+  const across = blocks.cols + 2 * margin.x;
+  const out = new Float64Array(across * (blocks.rows + 2 * margin.y)).fill(Number.NaN);
+  const least = Math.max(1, ((2 * half.x + 1) * (2 * half.y + 1)) >> 2);
+  const middle = (side - 1) >> 1;
   // sums down the box's rows, column by column, and running along the columns
   const sum = new Float64Array(cols);
   const count = new Int32Array(cols);
   const sumTo = new Float64Array(cols + 1);
   const countTo = new Int32Array(cols + 1);
-  const enter = (row: number, sign: number): void => {
-    if (row < 0 || row >= rows) return;
-    for (let j = 0, p = row * cols; j < cols; j++, p++) {
-      const v = values[p];
-      if (Number.isNaN(v)) continue;
-      count[j] += sign;
-      // what is left of a column without pixels is rounding
-      sum[j] = count[j] === 0 ? 0 : sum[j] + sign * v;
+  for (let bi = -margin.y; bi < blocks.rows + margin.y; bi++) {
+    const i = bi * side + middle;
+    const top = Math.max(0, i - half.y);
+    const bottom = Math.min(rows - 1, i + half.y);
+    if (bottom < top) continue;
+    sum.fill(0);
+    count.fill(0);
+    for (let row = top; row <= bottom; row++) {
+      for (let j = 0, p = row * cols; j < cols; j++, p++) {
+        const v = values[p];
+        if (Number.isNaN(v)) continue;
+        count[j]++;
+        sum[j] += v;
+      }
     }
-  };
-  for (let i = -marginY - halfY; i < rows + marginY; i++) {
-    enter(i + halfY, 1);
-    enter(i - halfY - 1, -1);
-    if (i < -marginY || i % everyY !== 0) continue;
     for (let j = 0; j < cols; j++) {
       sumTo[j + 1] = sumTo[j] + sum[j];
       countTo[j + 1] = countTo[j] + count[j];
     }
-    const row = (i + marginY) * across + marginX;
-    const first = Math.max(-marginX, -halfX);
-    for (let j = first + (first % everyX === 0 ? 0 : 1); j < Math.min(cols + marginX, cols + halfX); j += everyX) {
-      const left = Math.max(0, j - halfX);
-      const right = Math.min(cols, j + halfX + 1);
+    const line = (bi + margin.y) * across + margin.x;
+    for (let bj = -margin.x; bj < blocks.cols + margin.x; bj++) {
+      const j = bj * side + middle;
+      const left = Math.max(0, j - half.x);
+      const right = Math.min(cols, j + half.x + 1);
+      if (right <= left) continue;
       const c = countTo[right] - countTo[left];
-      if (c >= least) out[row + j] = (sumTo[right] - sumTo[left]) / c;
+      if (c >= least) out[line + bj] = (sumTo[right] - sumTo[left]) / c;
     }
   }
   return out;

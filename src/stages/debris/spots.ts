@@ -57,27 +57,25 @@ export function smoothedMean(
 ): { readonly mean: Float32Array; readonly effective: Float32Array } {
   const mean = new Float32Array(rows * cols).fill(Number.NaN);
   const effective = new Float32Array(rows * cols);
+  // down the columns first; a column on either side stays 0
+  const s = new Float64Array(cols + 2);
+  const n = new Float64Array(cols + 2);
+  const squares = new Float64Array(cols + 2);
   for (let i = 0; i < rows; i++) {
+    const row = i * cols;
+    const up = i > 0 ? row - cols : -1;
+    const down = i + 1 < rows ? row + cols : -1;
     for (let j = 0; j < cols; j++) {
-      if (count[i * cols + j] === 0) continue;
-      let s = 0;
-      let n = 0;
-      let squares = 0;
-      for (let di = -1; di <= 1; di++) {
-        const r = i + di;
-        if (r < 0 || r >= rows) continue;
-        for (let dj = -1; dj <= 1; dj++) {
-          const c = j + dj;
-          if (c < 0 || c >= cols) continue;
-          const w = (2 - Math.abs(di)) * (2 - Math.abs(dj));
-          const q = r * cols + c;
-          s += w * sum[q];
-          n += w * count[q];
-          squares += w * w * count[q];
-        }
-      }
-      mean[i * cols + j] = s / n;
-      effective[i * cols + j] = (n * n) / squares;
+      const counts = (up < 0 ? 0 : count[up + j]) + (down < 0 ? 0 : count[down + j]);
+      s[j + 1] = 2 * sum[row + j] + (up < 0 ? 0 : sum[up + j]) + (down < 0 ? 0 : sum[down + j]);
+      n[j + 1] = 2 * count[row + j] + counts;
+      squares[j + 1] = 4 * count[row + j] + counts;
+    }
+    for (let j = 0, p = row; j < cols; j++, p++) {
+      if (count[p] === 0) continue;
+      const total = 2 * n[j + 1] + n[j] + n[j + 2];
+      mean[p] = (2 * s[j + 1] + s[j] + s[j + 2]) / total;
+      effective[p] = (total * total) / (4 * squares[j + 1] + squares[j] + squares[j + 2]);
     }
   }
   return { mean, effective };
