@@ -66,17 +66,18 @@ export function mixedFraction(f: FractionInput): { value: number; low: number; h
       const metallic = state === METALLIC;
       const v = u[p] - 0.5;
       let cover = metallic ? 1 : 0;
-      if (Math.abs(v) < 0.5) {
+      // where an island was cleared the map, not the contour, has the word
+      const crossing = Math.abs(v) < 0.5 && v > 0 === metallic && touchesOther(states, p, i, j, rows, cols);
+      if (crossing || Math.abs(v) < BAND) {
         const gx = difference(u, states, p, j > 0 ? -1 : 0, j < cols - 1 ? 1 : 0);
         const gy = difference(u, states, p, i > 0 ? -cols : 0, i < rows - 1 ? cols : 0);
         const perPx = Math.sqrt(gx * gx + gy * gy);
-        // where an island was cleared the map, not the contour, has the word
-        if (perPx > 0 && v > 0 === metallic && touchesOther(states, p, i, j, rows, cols)) {
+        if (perPx > 0 && crossing) {
           cover = coverage(v, gx, gy);
           if (cover > 0 && cover < 1) crossed++;
         }
         if (Math.abs(v) < BAND && perPx > 0) {
-          const g = Math.hypot(gx / pixel.xNm, gy / pixel.yNm);
+          const g = Math.sqrt((gx / pixel.xNm) ** 2 + (gy / pixel.yNm) ** 2);
           // flat spots near ½ would count without bound: the walls are no wider than the frame
           const inverse = 1 / Math.max(g, 1e-3 / Math.max(pixel.xNm, pixel.yNm));
           slope1 += pixelArea / (2 * BAND);
@@ -125,11 +126,12 @@ function difference(u: Float32Array, states: Uint8Array, p: number, back: number
 }
 
 function touchesOther(states: Uint8Array, p: number, i: number, j: number, rows: number, cols: number): boolean {
-  for (let di = -1; di <= 1; di++) {
-    for (let dj = -1; dj <= 1; dj++) {
-      if (i + di < 0 || i + di >= rows || j + dj < 0 || j + dj >= cols) continue;
-      const other = states[p + di * cols + dj];
-      if (other !== NO_STATE && other !== states[p]) return true;
+  const own = states[p];
+  const right = Math.min(cols - 1, j + 1) - j;
+  for (let di = Math.max(-1, -i); di <= 1 && i + di < rows; di++) {
+    const row = p + di * cols;
+    for (let q = row + Math.max(-1, -j); q <= row + right; q++) {
+      if (states[q] !== own && states[q] !== NO_STATE) return true;
     }
   }
   return false;
@@ -158,9 +160,13 @@ export function turning(states: Uint8Array, rows: number, cols: number): number 
   for (let i = 0; i + 1 < rows; i++) {
     for (let j = 0; j + 1 < cols; j++) {
       const p = i * cols + j;
-      const [a, b, c, d] = [states[p], states[p + 1], states[p + cols], states[p + cols + 1]];
-      if (a === NO_STATE || b === NO_STATE || c === NO_STATE || d === NO_STATE) continue;
+      const a = states[p];
+      const b = states[p + 1];
+      const c = states[p + cols];
+      const d = states[p + cols + 1];
       const sum = a + b + c + d;
+      // all alike, or one without a state
+      if (sum === 0 || sum >= 4) continue;
       if (sum === 1) quarters++;
       else if (sum === 3) quarters--;
       else if (sum === 2 && a === d) quarters -= 2;

@@ -1,5 +1,5 @@
 import { INSULATING, METALLIC, NO_STATE } from "../../model/signal.js";
-import { connectedComponents } from "../../raster/opencv.js";
+import { regionsOf, type Regions } from "./regions.js";
 
 /** What is left of a state in a map after its small islands have been given to the other one. */
 export interface Cleared {
@@ -21,38 +21,38 @@ export function clearIslands(
   const largest: [number, number] = [0, 0];
   const total: [number, number] = [0, 0];
   for (const state of [METALLIC, INSULATING] as const) {
-    const mask = new Uint8Array(states.length);
-    let any = false;
-    for (let p = 0; p < mask.length; p++) {
-      if (states[p] === state) {
-        mask[p] = 1;
-        any = true;
-      }
-    }
-    if (!any) continue;
-    const { count, labels } = connectedComponents(mask, rows, cols, state === METALLIC ? 8 : 4);
-    const sizes = new Int32Array(count + 1);
-    for (const l of labels) sizes[l]++;
-    const remove = new Uint8Array(count + 1);
     const other = state === METALLIC ? INSULATING : METALLIC;
-    for (let l = 1; l <= count; l++) {
-      if (sizes[l] < leastPx) remove[l] = 1;
+    const islands = regionsOf(states, state, rows, cols, state === METALLIC ? 8 : 4);
+    islands.sizes.forEach((size, k) => {
       // the test of single islands is for small ones: a large one is a domain
-      else if (sizes[l] < 20 * leastPx && !mayStay(pixelsOf(labels, l, sizes[l]), state)) remove[l] = 1;
-      if (remove[l] === 1) continue;
-      largest[state] = Math.max(largest[state], sizes[l]);
-      total[state] += sizes[l];
-    }
-    for (let p = 0; p < labels.length; p++) if (labels[p] > 0 && remove[labels[p]] === 1) states[p] = other;
+      if (size < leastPx || (size < 20 * leastPx && !mayStay(pixelsOf(islands, k), state))) {
+        islands.forRuns(k, (from, to) => states.fill(other, from, to));
+        return;
+      }
+      largest[state] = Math.max(largest[state], size);
+      total[state] += size;
+    });
   }
   return { largestPx: largest, totalPx: total };
 }
 
-function pixelsOf(labels: Int32Array, label: number, size: number): Int32Array {
-  const out = new Int32Array(size);
-  let k = 0;
-  for (let p = 0; p < labels.length; p++) if (labels[p] === label) out[k++] = p;
+function pixelsOf(islands: Regions, k: number): Int32Array {
+  const out = new Int32Array(islands.sizes[k]);
+  let n = 0;
+  islands.forRuns(k, (from, to) => {
+    for (let p = from; p < to; p++) out[n++] = p;
+  });
   return out;
+}
+
+/** Sizes in pixels of the connected spots that hide the sample in rows that were scanned: debris and scars. */
+export function hiddenSpots(usable: Uint8Array, rows: number, cols: number): readonly number[] {
+  const hidden = new Uint8Array(rows * cols);
+  for (let i = 0; i < rows; i++) {
+    const row = usable.subarray(i * cols, (i + 1) * cols);
+    if (row.includes(1)) for (let j = 0; j < cols; j++) hidden[i * cols + j] = 1 - row[j];
+  }
+  return regionsOf(hidden, 1, rows, cols, 4).sizes;
 }
 
 /** Sets all pixels with a state to one. */

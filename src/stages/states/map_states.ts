@@ -1,5 +1,5 @@
 import type { Tip } from "../../model/cooldown.js";
-import { makeRaster } from "../../model/raster.js";
+import { colsOf, makeRaster, rowsOf } from "../../model/raster.js";
 import {
   INSULATING,
   METALLIC,
@@ -11,17 +11,14 @@ import {
 } from "../../model/signal.js";
 import { FWHM_PER_SIGMA } from "../../model/units.js";
 import { mixedFraction } from "./fraction.js";
-import { clearIslands, fillState } from "./islands.js";
+import { clearIslands, fillState, hiddenSpots } from "./islands.js";
 import { isScar, onChord } from "./island_tests.js";
 import type { LevelFit } from "./level_fit.js";
 import { pixelsPerIndependent } from "./noise.js";
-import { correctPixels, readPixels, type Pixels } from "./pixels.js";
+import { readPixels, type Pixels } from "./pixels.js";
 import { readShare, shareCurve, turnAtWalls, type ShareCurve } from "./share_curve.js";
 import type { StatesSettings } from "./settings.js";
 import { smoothShare } from "./smooth_share.js";
-
-/** What `debris` calls a pixel whose state cannot be trusted. */
-const DEBRIS_CORE = 1;
 
 /** A round domain loses πσ² to the blur (see `mixedFraction`), and the smallest ones more: twice that is allowed for. */
 const LOST_BY_BLUR = 2;
@@ -46,12 +43,12 @@ export function mapStates(
   tip: Tip | null,
   s: StatesSettings,
 ): { readonly signal: Signal; readonly states: FrameStates } {
-  const raw = readPixels(clean, debris === null ? null : debris.map((v) => (v === DEBRIS_CORE ? 1 : 0)));
-  if (fit.rows !== raw.rows || fit.cols !== raw.cols) {
-    throw new RangeError(`levels of ${fit.rows} × ${fit.cols} pixels for a frame of ${raw.rows} × ${raw.cols}`);
+  const [rows, cols] = [rowsOf(clean.amplitude), colsOf(clean.amplitude)];
+  if (fit.rows !== rows || fit.cols !== cols) {
+    throw new RangeError(`levels of ${fit.rows} × ${fit.cols} pixels for a frame of ${rows} × ${cols}`);
   }
-  const z = correctPixels(raw, fit.correction);
-  const { rows, cols, pixel } = z;
+  const z = readPixels(clean, debris, false, fit.correction);
+  const { pixel } = z;
   const signal: Signal = {
     frame: clean.frame,
     rows,
@@ -59,16 +56,16 @@ export function mapStates(
     pixel,
     re: z.re,
     im: z.hasPhase ? z.im : null,
-    usable: debris === null ? z.usable : z.usable.map((v, p) => (debris[p] === 0 ? v : 0)),
+    usable: debris === null ? z.usable : freeOf(z.usable, debris),
   };
   const map = { rows, cols, pixel, states: new Uint8Array(rows * cols).fill(NO_STATE) };
-  const share = new Float32Array(rows * cols).fill(Number.NaN);
+  let share: Float32Array | null = null;
   const result = (final: FrameLevels, fraction: FrameStates["fraction"]): { signal: Signal; states: FrameStates } => ({
     signal,
     states: {
       frame: clean.frame,
       levels: final,
-      share: makeRaster(share, rows, cols, pixel),
+      share: makeRaster(share ?? new Float32Array(rows * cols).fill(Number.NaN), rows, cols, pixel),
       map,
       fraction,
       rowGainSd: rowGainSd(clean, fit),
@@ -86,13 +83,14 @@ export function mapStates(
   const noiseSd = curve.sdHalf;
   const perIndependent = pixelsPerIndependent(levels.noiseCorrelationX, levels.noiseCorrelationY);
   const smoothingNm = smoothingFor(noiseSd * Math.sqrt(perIndependent), z, tip, s);
-  share.set(readShare(z, curve, smoothingNm / pixel.xNm, smoothingNm / pixel.yNm));
-  const u = smoothShare(share, z.usable, rows, cols, smoothingNm / pixel.xNm, smoothingNm / pixel.yNm);
-  const dip = dipAtWalls({ ...z, usable: signal.usable }, u, levels, curve);
+  const seen = readShare(z, curve, smoothingNm / pixel.xNm, smoothingNm / pixel.yNm);
+  share = seen;
+  const u = smoothShare(seen, z.usable, rows, cols, smoothingNm / pixel.xNm, smoothingNm / pixel.yNm);
+  const dip = dipAtWalls(z, signal.usable, u, levels, curve);
   if (dip.value > 0) {
     for (let p = 0; p < u.length; p++) if (u[p] > 0 && u[p] < 1) u[p] += 4 * dip.value * u[p] * (1 - u[p]);
   }
-  for (let p = 0; p < share.length; p++) {
+  for (let p = 0; p < u.length; p++) {
     if (z.usable[p] === 1) map.states[p] = u[p] > 0.5 ? METALLIC : INSULATING;
   }
   const leastPx = leastDomainPx(z, tip, s);
@@ -101,7 +99,7 @@ export function mapStates(
     rows,
     cols,
     leastPx,
-    (pixels, state) => onChord(pixels, state, z, share, levels, curve) && !isScar(pixels, state, z, share, tip),
+    (pixels, state) => onChord(pixels, state, z, seen, levels, curve) && !isScar(pixels, state, z, seen, tip),
   );
   const [insulatingPx, metallicPx] = cleared.totalPx;
   const rarer = metallicPx < insulatingPx ? METALLIC : INSULATING;
@@ -131,39 +129,16 @@ export function mapStates(
     rowWalkSd: fit.rowWalkSd,
     rowWhiteSd: fit.rowWhiteSd,
     perLogGain: curve.perLogGain,
-    hiddenPx: spotSizes(z.usable, rows, cols),
+    hiddenPx: hiddenSpots(z.usable, rows, cols),
   });
   return result({ ...levels, verdict: "mixed" }, fraction);
 }
 
-/** Sizes in pixels of the connected spots that hide the sample in rows that were scanned: debris and scars. */
-function spotSizes(usable: Uint8Array, rows: number, cols: number): number[] {
-  const left = new Uint8Array(rows * cols);
-  for (let i = 0; i < rows; i++) {
-    const row = usable.subarray(i * cols, (i + 1) * cols);
-    if (row.includes(1)) for (let j = 0; j < cols; j++) left[i * cols + j] = 1 - row[j];
-  }
-  const sizes: number[] = [];
-  const stack: number[] = [];
-  const take = (q: number): void => {
-    if (left[q] === 0) return;
-    left[q] = 0;
-    stack.push(q);
-  };
-  for (let start = 0; start < left.length; start++) {
-    take(start);
-    let size = 0;
-    for (let p = stack.pop(); p !== undefined; p = stack.pop()) {
-      size++;
-      const j = p % cols;
-      if (j > 0) take(p - 1);
-      if (j + 1 < cols) take(p + 1);
-      if (p >= cols) take(p - cols);
-      if (p + cols < rows * cols) take(p + cols);
-    }
-    if (size > 0) sizes.push(size);
-  }
-  return sizes;
+/** The usable pixels that no debris disturbs. */
+function freeOf(usable: Uint8Array, debris: Uint8Array): Uint8Array {
+  const out = new Uint8Array(usable.length);
+  for (let p = 0; p < out.length; p++) out[p] = debris[p] === 0 ? usable[p] : 0;
+  return out;
 }
 
 /** What is left of each row's own gain: what cleaning could not tell, less what the pixels of known state have told since. */
@@ -184,11 +159,12 @@ const TURN_SIGMAS = 3;
  *  counts as uncertainty only. */
 function dipAtWalls(
   z: Pixels,
+  free: Uint8Array,
   u: Float32Array,
   levels: FrameLevels,
   curve: ShareCurve,
 ): { readonly value: number; readonly sd: number } {
-  const turn = turnAtWalls(z, u, levels.insulating, levels.metallic);
+  const turn = turnAtWalls(z, free, u, levels.insulating, levels.metallic);
   if (turn === null || Math.abs(turn.meanRad) < TURN_SIGMAS * turn.sdRad) return { value: 0, sd: 0 };
   if (curve.reads === "chord") {
     const { insulating: a, metallic: b } = levels;

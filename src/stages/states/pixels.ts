@@ -36,16 +36,38 @@ export function noCorrection(rows: number): RowCorrection {
 /** What `debris` calls a pixel whose state cannot be trusted. */
 const DEBRIS_CORE = 1;
 
+/** Gain and phase that a correction takes off each row and each column: factors, and angles in rad. */
+function partsOf(correction: RowCorrection, cols: number): {
+  readonly rowGain: Float64Array;
+  readonly columnGain: Float64Array;
+  readonly columnRad: Float64Array;
+} {
+  const place = (j: number): number => (j + 0.5) / cols - 0.5;
+  return {
+    rowGain: Float64Array.from(correction.logGain, (g) => Math.exp(-g)),
+    columnGain: Float64Array.from({ length: cols }, (_, j) => Math.exp(-correction.columnLogGain * place(j))),
+    columnRad: Float64Array.from({ length: cols }, (_, j) => correction.columnPhaseRad * place(j)),
+  };
+}
+
 /** z of every usable pixel of a clean frame. Unusable pixels hold 0.
  *  @param debris 0 free, 1 core, 2 disturbed around it, the frame's shape; null = none known
- *  @param marginToo whether what is only disturbed is left out as well */
-export function readPixels(clean: CleanFrame, debris: Uint8Array | null, marginToo = true): Pixels {
+ *  @param marginToo whether what is only disturbed is left out as well
+ *  @param correction taken off; null = none */
+export function readPixels(
+  clean: CleanFrame,
+  debris: Uint8Array | null,
+  marginToo = true,
+  correction: RowCorrection | null = null,
+): Pixels {
   const rows = rowsOf(clean.amplitude);
   const cols = colsOf(clean.amplitude);
   const n = rows * cols;
   if (debris !== null && debris.length !== n) {
     throw new RangeError(`debris of ${debris.length} values for ${rows} × ${cols} pixels`);
   }
+  const off = correction ?? noCorrection(rows);
+  const { rowGain, columnGain, columnRad } = partsOf(off, cols);
   const amplitude = dataOf(clean.amplitude);
   const phase = clean.phase === null ? null : dataOf(clean.phase);
   const re = new Float32Array(n);
@@ -53,21 +75,25 @@ export function readPixels(clean: CleanFrame, debris: Uint8Array | null, marginT
   const usable = new Uint8Array(n);
   const turn = new Float64Array(2);
   let count = 0;
-  for (let p = 0; p < n; p++) {
-    const a = amplitude[p];
-    if (!Number.isFinite(a)) continue;
-    if (debris !== null && (marginToo ? debris[p] !== 0 : debris[p] === DEBRIS_CORE)) continue;
-    if (phase === null) {
-      re[p] = a;
-    } else {
-      const angle = phase[p];
-      if (!Number.isFinite(angle)) continue;
-      sinCos(angle, turn);
-      re[p] = a * turn[1];
-      im[p] = a * turn[0];
+  for (let i = 0, p = 0; i < rows; i++) {
+    const gain = rowGain[i];
+    const rad = off.phaseRad[i];
+    for (let j = 0; j < cols; j++, p++) {
+      const a = amplitude[p] * gain * columnGain[j];
+      if (!Number.isFinite(a)) continue;
+      if (debris !== null && (marginToo ? debris[p] !== 0 : debris[p] === DEBRIS_CORE)) continue;
+      if (phase === null) {
+        re[p] = a;
+      } else {
+        const angle = phase[p] - rad - columnRad[j];
+        if (!Number.isFinite(angle)) continue;
+        sinCos(angle, turn);
+        re[p] = a * turn[1];
+        im[p] = a * turn[0];
+      }
+      usable[p] = 1;
+      count++;
     }
-    usable[p] = 1;
-    count++;
   }
   return { rows, cols, pixel: clean.pixel, re, im, hasPhase: phase !== null, usable, count };
 }
@@ -77,18 +103,12 @@ export function correctPixels(pixels: Pixels, correction: RowCorrection): Pixels
   const { rows, cols } = pixels;
   const re = new Float32Array(pixels.re.length);
   const im = new Float32Array(pixels.im.length);
-  const columnRe = new Float64Array(cols);
-  const columnIm = new Float64Array(cols);
-  for (let j = 0; j < cols; j++) {
-    const x = (j + 0.5) / cols - 0.5;
-    const g = Math.exp(-correction.columnLogGain * x);
-    columnRe[j] = g * Math.cos(correction.columnPhaseRad * x);
-    columnIm[j] = -g * Math.sin(correction.columnPhaseRad * x);
-  }
+  const { rowGain, columnGain, columnRad } = partsOf(correction, cols);
+  const columnRe = columnGain.map((g, j) => g * Math.cos(columnRad[j]));
+  const columnIm = columnGain.map((g, j) => -g * Math.sin(columnRad[j]));
   for (let i = 0; i < rows; i++) {
-    const g = Math.exp(-correction.logGain[i]);
-    const c = g * Math.cos(correction.phaseRad[i]);
-    const s = -g * Math.sin(correction.phaseRad[i]);
+    const c = rowGain[i] * Math.cos(correction.phaseRad[i]);
+    const s = -rowGain[i] * Math.sin(correction.phaseRad[i]);
     for (let j = 0, p = i * cols; j < cols; j++, p++) {
       const fr = c * columnRe[j] - s * columnIm[j];
       const fi = c * columnIm[j] + s * columnRe[j];

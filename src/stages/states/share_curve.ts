@@ -1,5 +1,5 @@
 import type { ComplexValue, NoiseCovariance } from "../../model/signal.js";
-import { maskedBlur } from "../../raster/masked_blur.js";
+import { gaussianBlur } from "../../raster/opencv.js";
 import { sdAlong } from "./noise.js";
 import type { Pixels } from "./pixels.js";
 
@@ -130,8 +130,9 @@ export function readShare(z: Pixels, curve: ShareCurve, sigmaXPx: number, sigmaY
     }
     return share;
   }
-  const re = maskedBlur(z.re, z.usable, z.rows, z.cols, sigmaXPx, sigmaYPx).values;
-  const im = maskedBlur(z.im, z.usable, z.rows, z.cols, sigmaXPx, sigmaYPx).values;
+  // unusable pixels hold 0 and shorten the sum, but do not turn it
+  const re = gaussianBlur(z.re, z.rows, z.cols, sigmaXPx, sigmaYPx, "zero");
+  const im = gaussianBlur(z.im, z.rows, z.cols, sigmaXPx, sigmaYPx, "zero");
   for (let p = 0; p < share.length; p++) {
     if (z.usable[p] === 0) continue;
     const m = Math.sqrt(re[p] * re[p] + im[p] * im[p]);
@@ -142,9 +143,11 @@ export function readShare(z: Pixels, curve: ShareCurve, sigmaXPx: number, sigmaY
 
 /** Turn of the phase at the walls over and above that of the two-state mixture: mean over pixels with a smoothed share near ½, rad.
  *  null where too few pixels lie there, or without phase.
+ *  @param free 1 = usable, and not disturbed by debris
  *  @param u smoothed share */
 export function turnAtWalls(
   z: Pixels,
+  free: Uint8Array,
   u: Float32Array,
   insulating: ComplexValue,
   metallic: ComplexValue,
@@ -152,7 +155,7 @@ export function turnAtWalls(
   if (!z.hasPhase) return null;
   let [n, re, im, along2, across2] = [0, 0, 0, 0, 0];
   for (let p = 0; p < u.length; p++) {
-    if (z.usable[p] === 0 || !(u[p] > 0.4 && u[p] < 0.6)) continue;
+    if (!(u[p] > 0.4 && u[p] < 0.6) || free[p] === 0) continue;
     const er = (1 - u[p]) * insulating.re + u[p] * metallic.re;
     const ei = (1 - u[p]) * insulating.im + u[p] * metallic.im;
     const m2 = er * er + ei * ei;
