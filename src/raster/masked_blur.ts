@@ -1,4 +1,4 @@
-import { gaussianBlur } from "./opencv.js";
+import { blurOf } from "./opencv.js";
 
 export interface MaskedBlur {
   /** blur(value·mask)/blur(mask); NaN where no measured pixel lies within the kernel. */
@@ -24,22 +24,22 @@ export function maskedBlur(
 ): MaskedBlur {
   const n = rows * cols;
   if (data.length !== n) throw new RangeError(`${data.length} values for ${rows} × ${cols} pixels`);
-  const filled = new Float32Array(n);
-  const mask = new Float32Array(n);
+  const enters = new Uint8Array(n);
   // the mean is taken off first: single precision then holds small structure on a large level
   let sum = 0;
   let count = 0;
   for (let p = 0; p < n; p++) {
     const v = data[p];
     if ((usable !== null && usable[p] === 0) || Number.isNaN(v)) continue;
-    mask[p] = 1;
+    enters[p] = 1;
     sum += v;
     count++;
   }
   const mean = count > 0 ? sum / count : 0;
-  for (let p = 0; p < n; p++) if (mask[p] === 1) filled[p] = data[p] - mean;
-  const values = gaussianBlur(filled, rows, cols, sigmaXPx, sigmaYPx, "zero");
-  const weight = gaussianBlur(mask, rows, cols, sigmaXPx, sigmaYPx, "zero");
+  const values = blurOf(rows, cols, sigmaXPx, sigmaYPx, "zero", (image) => {
+    for (let p = 0; p < n; p++) image[p] = enters[p] === 1 ? data[p] - mean : 0;
+  });
+  const weight = blurOf(rows, cols, sigmaXPx, sigmaYPx, "zero", (image) => image.set(enters));
   for (let p = 0; p < n; p++) {
     const w = weight[p];
     values[p] = w > LEAST_WEIGHT ? values[p] / w + mean : Number.NaN;

@@ -66,11 +66,23 @@ export function gaussianBlur(
   outside: "zero" | "mirror" = "mirror",
 ): Float32Array {
   checkSize(data.length, rows, cols);
+  return blurOf(rows, cols, sigmaXPx, sigmaYPx, outside, (src) => src.set(data));
+}
+
+/** The same of an image that `fill` writes, row-major, into memory that holds anything. */
+export function blurOf(
+  rows: number,
+  cols: number,
+  sigmaXPx: number,
+  sigmaYPx: number,
+  outside: "zero" | "mirror",
+  fill: (image: Float32Array) => void,
+): Float32Array {
   if (!(sigmaXPx >= 0) || !(sigmaYPx >= 0)) throw new RangeError(`blur of ${sigmaXPx}, ${sigmaYPx} px`);
   return withMats((cv, make) => {
     const src = make(rows, cols, cv.CV_32FC1);
     const dst = make(0, 0, 0);
-    src.data32F.set(data);
+    fill(src.data32F);
     const size = new cv.Size(2 * halfKernel(sigmaXPx) + 1, 2 * halfKernel(sigmaYPx) + 1);
     const border = outside === "zero" ? cv.BORDER_CONSTANT : cv.BORDER_REFLECT_101;
     // a second sigma of 0 would be read as "like the first": a kernel of one tap is 1 whatever its sigma

@@ -42,34 +42,24 @@ export function levelsOfCells(
   cells: Cells,
   pure: PureCells,
 ): { readonly levels: Levels; readonly variance: readonly [number, number] } {
-  const sums = noSums();
-  addCells(sums, cells, pure, 0, null, 0);
-  addCells(sums, cells, pure, 1, null, 0);
-  const first = solveLevels(sums);
-  const variance: [number, number] = [variance2(cells, pure, 0, first), variance2(cells, pure, 1, first)];
-  const clipped = noSums();
-  addCells(clipped, cells, pure, 0, first, CLIP2 * variance[0]);
-  addCells(clipped, cells, pure, 1, first, CLIP2 * variance[1]);
-  return { levels: solveLevels(clipped), variance };
+  const first = solveLevels(sumsOf(cells, pure, null, [0, 0]));
+  const variance = varianceOf(cells, pure, first);
+  const limits = [CLIP2 * variance[0], CLIP2 * variance[1]] as const;
+  return { levels: solveLevels(sumsOf(cells, pure, first, limits)), variance };
 }
 
-/** Adds the pure cells of one state, those within the root of `clip2` of `before` where that is given. */
-function addCells(
-  sums: LevelSums,
-  cells: Cells,
-  pure: PureCells,
-  which: 0 | 1,
-  before: Levels | null,
-  clip2: number,
-): void {
+/** Sums over the pure cells, those within their state's limit (squared) of `before` where that is given. */
+function sumsOf(cells: Cells, pure: PureCells, before: Levels | null, limits: readonly [number, number]): LevelSums {
   const { re, im, count } = cells;
+  const { state, share } = pure;
   let [aa, ab, bb, ar, ai, br, bi] = [0, 0, 0, 0, 0, 0, 0];
-  for (let c = 0; c < re.length; c++) {
-    if (pure.state[c] !== which) continue;
-    const u = pure.share[c];
+  for (let c = 0; c < state.length; c++) {
+    const k = state[c];
+    if (k > 1) continue;
+    const u = share[c];
     const v = 1 - u;
     const n = count[c];
-    if (before !== null && distance2(re[c] / n, im[c] / n, u, before) > clip2) continue;
+    if (before !== null && distance2(re[c] / n, im[c] / n, u, before) > limits[k]) continue;
     aa += n * v * v;
     ab += n * u * v;
     bb += n * u * u;
@@ -78,29 +68,25 @@ function addCells(
     br += u * re[c];
     bi += u * im[c];
   }
-  sums.aa += aa;
-  sums.ab += ab;
-  sums.bb += bb;
-  sums.ar += ar;
-  sums.ai += ai;
-  sums.br += br;
-  sums.bi += bi;
+  return { aa, ab, bb, ar, ai, br, bi };
 }
 
-function variance2(cells: Cells, pure: PureCells, which: 0 | 1, levels: Levels): number {
+function varianceOf(cells: Cells, pure: PureCells, levels: Levels): [number, number] {
   const { re, im, count } = cells;
-  let sum = 0;
-  let total = 0;
+  let [sum0, sum1] = [0, 0];
   for (let c = 0; c < re.length; c++) {
-    if (pure.state[c] !== which) continue;
+    const k = pure.state[c];
+    if (k > 1) continue;
     const n = count[c];
-    total += n;
-    sum += n * distance2(re[c] / n, im[c] / n, pure.share[c], levels);
+    const d2 = n * distance2(re[c] / n, im[c] / n, pure.share[c], levels);
+    if (k === 0) sum0 += d2;
+    else sum1 += d2;
   }
-  return total > 0 ? sum / total : 0;
+  return [sum0 / Math.max(1, pure.count[0]), sum1 / Math.max(1, pure.count[1])];
 }
 
-function distance2(re: number, im: number, u: number, [a, b]: Levels): number {
+function distance2(re: number, im: number, u: number, levels: Levels): number {
+  const [a, b] = levels;
   const dr = re - a.re - u * (b.re - a.re);
   const di = im - a.im - u * (b.im - a.im);
   return dr * dr + di * di;

@@ -27,22 +27,28 @@ export interface SeenSignal {
   readonly cells: Cells;
   readonly smoothRe: Float32Array;
   readonly smoothIm: Float32Array;
+  /** One over the usable pixels under the blur; 0 where none is near. */
+  readonly perWeight: Float32Array;
 }
 
-export function seeSignal(z: Pixels, by: Smoothing): SeenSignal {
+/** @param before the same pixels with another correction: what hangs on the mask alone is taken from it */
+export function seeSignal(z: Pixels, by: Smoothing, before: SeenSignal | null = null): SeenSignal {
   const cells = cellsOf(z);
-  const weight = Float32Array.from(cells.count);
   const kx = kernelFor(by.xPx);
   const ky = kernelFor(by.yPx);
   const blur = (values: Float32Array): Float32Array => blurCells(values, cells.rows, cells.cols, kx, ky);
-  const w = blur(weight);
+  const perWeight =
+    before?.perWeight ?? blur(Float32Array.from(cells.count)).map((w) => (w > LEAST_WEIGHT ? 1 / w : 0));
   const mean = (sums: Float32Array): Float32Array => {
     const out = blur(sums);
-    for (let c = 0; c < out.length; c++) out[c] = w[c] > 1e-3 ? out[c] / w[c] : 0;
+    for (let c = 0; c < out.length; c++) out[c] *= perWeight[c];
     return out;
   };
-  return { z, cells, smoothRe: mean(cells.re), smoothIm: cells.hasPhase ? mean(cells.im) : cells.im };
+  return { z, cells, smoothRe: mean(cells.re), smoothIm: cells.hasPhase ? mean(cells.im) : cells.im, perWeight };
 }
+
+/** Where the blur holds fewer pixels nothing is said: rounding would be divided by rounding. */
+const LEAST_WEIGHT = 1e-3;
 
 /** Sums of the pixels of each cell. */
 export function cellsOf(z: Pixels): Cells {

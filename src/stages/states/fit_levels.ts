@@ -7,6 +7,7 @@ import type { LevelFit } from "./level_fit.js";
 import { noCorrection, readPixels } from "./pixels.js";
 import type { StatesSettings } from "./settings.js";
 import { smoothingOf } from "./smooth_signal.js";
+import { differenceNoise } from "./split.js";
 import { emptyFit } from "./summarise_fit.js";
 
 /** Frames with fewer usable pixels tell nothing. */
@@ -25,6 +26,7 @@ export function fitLevels(clean: CleanFrame, debris: Uint8Array | null, tip: Tip
   const raw = readPixels(clean, debris);
   if (raw.count < LEAST_PIXELS) return emptyFit(clean.frame, raw);
   const seen = seeSignal(raw, smoothingOf(raw, tip));
+  const noise0 = differenceNoise(raw);
   const before = noCorrection(raw.rows);
-  return fitTwoStates(clean.frame, raw, seen, before, tip, s) ?? fitOneState(clean.frame, seen, tip, s);
+  return fitTwoStates(clean.frame, raw, seen, noise0, before, tip, s) ?? fitOneState(clean.frame, seen, noise0, tip, s);
 }

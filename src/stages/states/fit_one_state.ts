@@ -1,6 +1,6 @@
 import type { Tip } from "../../model/cooldown.js";
 import type { ComplexValue } from "../../model/signal.js";
-import { levelsOfCells, type Levels } from "./cell_levels.js";
+import { levelsOfCells } from "./cell_levels.js";
 import { seeSignal, type SeenSignal } from "./cells.js";
 import { fitTwoStates } from "./fit_two_states.js";
 import type { LevelFit, StateEstimate } from "./level_fit.js";
@@ -16,32 +16,47 @@ import { differenceNoise } from "./split.js";
 import { commonPart } from "./summarise_fit.js";
 
 /** One state and its rows; what is unlike it is left out. Two states after all, where they show once the rows are corrected.
- *  @param raw the frame as it was cleaned */
-export function fitOneState(frame: number, raw: SeenSignal, tip: Tip | null, s: StatesSettings): LevelFit {
+ *  @param raw the frame as it was cleaned
+ *  @param noise0 pixel noise of either component */
+export function fitOneState(
+  frame: number,
+  raw: SeenSignal,
+  noise0: ComplexValue,
+  tip: Tip | null,
+  s: StatesSettings,
+): LevelFit {
   const by = smoothingOf(raw.z, tip);
-  const noise0 = differenceNoise(raw.z);
   const leastSd = Math.max(noise0.re, noise0.im, 1e-30) / Math.sqrt(4 * Math.PI * by.xPx * by.yPx);
   const white2 = noise0.re ** 2 + noise0.im ** 2;
   const before = noCorrection(raw.z.rows);
   let pure = mainCells(raw, leastSd);
-  let found = mainLevel(raw, pure, white2);
+  let found = mainLevel(
+    raw,
+    pure,
+    firstLimits(white2, levelsOfCells(raw.cells, pure).variance),
+    s.refineRows ? "some" : "all",
+  );
   if (!s.refineRows) return oneStateFit(frame, raw, pure, found);
   const { noise, correlation } = found;
   const rows = refineRows(raw.z, pure, found.levels, noise, before, pixelsPerIndependent(correlation.x, 0));
-  const seen = seeSignal(correctPixels(raw.z, rows.correction), by);
+  const seen = seeSignal(correctPixels(raw.z, rows.correction), by, raw);
   // a small minority may have hidden behind the rows
-  const again = fitTwoStates(frame, raw.z, seen, rows.correction, tip, s);
+  const again = fitTwoStates(frame, raw.z, seen, differenceNoise(seen.z), rows.correction, tip, s);
   if (again !== null) return again;
   pure = mainCells(seen, leastSd);
-  found = mainLevel(seen, pure, white2, limitsOf(noise));
+  found = mainLevel(seen, pure, limitsOf(noise), "all");
   return oneStateFit(frame, raw, pure, { ...found, correlation }, rows);
 }
 
 /** Level and noise of the one state: both entries of each pair are the same. */
-function mainLevel(seen: SeenSignal, pure: PureCells, white2: number, limits?: readonly [number, number]): Residuals {
-  const { levels, variance } = levelsOfCells(seen.cells, pure);
-  const twice: Levels = [levels[0], levels[0]];
-  const r = residualsOf(seen.z, pure, twice, limits ?? firstLimits(white2, variance));
+function mainLevel(
+  seen: SeenSignal,
+  pure: PureCells,
+  limits: readonly [number, number],
+  which: "all" | "some",
+): Residuals {
+  const [level] = levelsOfCells(seen.cells, pure).levels;
+  const r = residualsOf(seen.z, pure, [level, level], limits, which);
   return { levels: [r.levels[0], r.levels[0]], noise: [r.noise[0], r.noise[0]], correlation: r.correlation };
 }
 

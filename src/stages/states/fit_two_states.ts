@@ -1,5 +1,5 @@
 import type { Tip } from "../../model/cooldown.js";
-import type { NoiseCovariance } from "../../model/signal.js";
+import type { ComplexValue, NoiseCovariance } from "../../model/signal.js";
 import { FWHM_PER_SIGMA } from "../../model/units.js";
 import { amplitudesOf } from "./amplitudes.js";
 import { levelsOfCells, type Levels } from "./cell_levels.js";
@@ -13,7 +13,7 @@ import { refineRows, type RowRefinement } from "./refine_rows.js";
 import { firstLimits, limitsOf, residualsOf } from "./residuals.js";
 import type { StatesSettings } from "./settings.js";
 import { smoothingOf } from "./smooth_signal.js";
-import { differenceNoise, splitStates } from "./split.js";
+import { splitStates } from "./split.js";
 import { twoStateFit } from "./summarise_fit.js";
 
 const ROUNDS = 3;
@@ -24,17 +24,18 @@ const SETTLED = 0.001;
 
 /** Two states and their rows, or null where the frame does not show two. The turns are taken on cells, each row's own gain and phase and
  *  the last answer on the pixels of the cells found pure.
- *  @param start the raw pixels with `before` taken off */
+ *  @param start the raw pixels with `before` taken off
+ *  @param noise0 pixel noise of either component */
 export function fitTwoStates(
   frame: number,
   raw: Pixels,
   start: SeenSignal,
+  noise0: ComplexValue,
   before: RowCorrection,
   tip: Tip | null,
   s: StatesSettings,
 ): LevelFit | null {
   const by = smoothingOf(raw, tip);
-  const noise0 = differenceNoise(start.z);
   const blurArea = 4 * Math.PI * by.xPx * by.yPx;
   const pixelSd = Math.hypot(noise0.re, noise0.im) / (raw.hasPhase ? Math.SQRT2 : 1);
   const split = splitStates(start, raw.count / blurArea, pixelSd / Math.sqrt(blurArea));
@@ -65,11 +66,11 @@ export function fitTwoStates(
     if (round <= 1) limits = firstLimits(noise0.re ** 2 + noise0.im ** 2, found.variance);
     if (!Number.isFinite(levels[0].re) || !Number.isFinite(levels[1].re)) return null;
     if (s.refineRows && round > 0 && round < ROUNDS) {
-      const { noise, correlation } = residualsOf(seen.z, pure, levels, limits);
+      const { noise, correlation } = residualsOf(seen.z, pure, levels, limits, "some");
       limits = limitsOf(noise);
       rows = refineRows(seen.z, pure, levels, noise, correction, pixelsPerIndependent(correlation.x, 0));
       correction = rows.correction;
-      seen = seeSignal(correctPixels(raw, correction), by);
+      seen = seeSignal(correctPixels(raw, correction), by, start);
       levels = levelsOfCells(seen.cells, pure).levels;
     }
     const dr = levels[1].re - levels[0].re;
@@ -83,7 +84,7 @@ export function fitTwoStates(
     high = levels[1].re * eRe + levels[1].im * eIm;
   }
   if (pure === null || levels === null) return null;
-  const last = residualsOf(seen.z, pure, levels, limits);
+  const last = residualsOf(seen.z, pure, levels, limits, "all");
   const { evidence, share1 } = judge(seen.z, pure, last.levels, last.noise, split.deltaBic, s);
   if (!evidence.twoStates) return null;
   const final = raw.hasPhase

@@ -62,16 +62,19 @@ export function fitOneState(h: Histogram): { mean: number; sd: number; logLikeli
   return { mean, sd, logLikelihood: -0.5 - Math.log(sd * Math.sqrt(2 * Math.PI)) };
 }
 
-/** Expectation–maximisation for the three-part mixture, from given starting levels. The levels move with their pure parts only:
+/** Where to start from two levels. */
+export function startAt(low: number, high: number, leastSd: number): MixtureFit {
+  const sd = Math.max(leastSd, (high - low) / 8);
+  return { low, high, sdLow: sd, sdHigh: sd, shareLow: 0.4, shareHigh: 0.4, logLikelihood: -Infinity };
+}
+
+/** Expectation–maximisation for the three-part mixture. The levels move with their pure parts only:
  *  the wall part then merely keeps blurred walls from pulling them together (a two-Gaussian fit would put them inside the gap).
  *  @param leastSd standard deviations are kept above this */
-export function fitMixture(h: Histogram, low: number, high: number, leastSd: number, iterations = 60): MixtureFit {
+export function fitMixture(h: Histogram, start: MixtureFit, leastSd: number, iterations: number): MixtureFit {
   const bins = h.counts.length;
-  let a = low;
-  let b = high;
-  let sa = Math.max(leastSd, (high - low) / 8);
-  let sb = sa;
-  let [wa, wb, ww] = [0.4, 0.4, 0.2];
+  let { low: a, high: b, sdLow: sa, sdHigh: sb, shareLow: wa, shareHigh: wb } = start;
+  let ww = 1 - wa - wb;
   let logLikelihood = -Infinity;
   for (let it = 0; it < iterations; it++) {
     let [na, nb, nw, va, vb, qa, qb, ll] = [0, 0, 0, 0, 0, 0, 0, 0];

@@ -1,7 +1,7 @@
 import { medianInPlace, SD_PER_MAD } from "../../numerics/quantile.js";
 import type { SeenSignal } from "./cells.js";
 import type { PureCells } from "./pure.js";
-import { wholeCells } from "./split.js";
+import { someCells } from "./split.js";
 
 /** Smoothed signal further than this many robust standard deviations from the main level may be another state, or debris. */
 const OFF_SIGMAS = 4.5;
@@ -9,13 +9,13 @@ const OFF_SIGMAS = 4.5;
 /** Cells of the one main state of a frame: all whose smoothed signal is near the most common one. The rest (small domains of the
  *  other state with their walls, debris that was missed) has no state here. */
 export function mainCells({ cells, smoothRe: re, smoothIm: im }: SeenSignal, leastSd: number): PureCells {
-  const whole = wholeCells(cells.count);
-  const n = whole.length;
+  const some = someCells(cells.count);
+  const n = some.length;
   const a = new Float32Array(n);
   const b = new Float32Array(n);
   for (let k = 0; k < n; k++) {
-    a[k] = re[whole[k]];
-    b[k] = im[whole[k]];
+    a[k] = re[some[k]];
+    b[k] = im[some[k]];
   }
   const centreRe = medianInPlace(a);
   const centreIm = medianInPlace(b);
@@ -24,8 +24,8 @@ export function mainCells({ cells, smoothRe: re, smoothIm: im }: SeenSignal, lea
   const er = centreRe / m;
   const ei = centreIm / m;
   for (let k = 0; k < n; k++) {
-    const dr = re[whole[k]] - centreRe;
-    const di = im[whole[k]] - centreIm;
+    const dr = re[some[k]] - centreRe;
+    const di = im[some[k]] - centreIm;
     a[k] = Math.abs(dr * er + di * ei);
     b[k] = Math.abs(di * er - dr * ei);
   }

@@ -37,7 +37,10 @@ export function noCorrection(rows: number): RowCorrection {
 const DEBRIS_CORE = 1;
 
 /** Gain and phase that a correction takes off each row and each column: factors, and angles in rad. */
-function partsOf(correction: RowCorrection, cols: number): {
+function partsOf(
+  correction: RowCorrection,
+  cols: number,
+): {
   readonly rowGain: Float64Array;
   readonly columnGain: Float64Array;
   readonly columnRad: Float64Array;

@@ -9,13 +9,7 @@ export interface Regions {
 /** Regions of the pixels of a map that have `value`, joined over sides (4) or sides and corners (8), in the order of their first pixel.
  *  Runs of one row are joined with those of the row before that they touch (union–find).
  *  Source: Rosenfeld & Pfaltz 1966, J. ACM 13, 471. */
-export function regionsOf(
-  map: Uint8Array,
-  value: number,
-  rows: number,
-  cols: number,
-  connectivity: 4 | 8,
-): Regions {
+export function regionsOf(map: Uint8Array, value: number, rows: number, cols: number, connectivity: 4 | 8): Regions {
   const from: number[] = [];
   const to: number[] = [];
   const parent: number[] = [];
@@ -52,7 +46,11 @@ export function regionsOf(
     }
     above = first;
   }
-  return collect(from, to, parent.map((_, r) => root(r)));
+  return collect(
+    from,
+    to,
+    parent.map((_, r) => root(r)),
+  );
 }
 
 function collect(from: readonly number[], to: readonly number[], roots: readonly number[]): Regions {

@@ -30,15 +30,21 @@ export const firstLimits = (white2: number, cellVariance: readonly [number, numb
   CLIP * CLIP * (white2 + cellVariance[1]),
 ];
 
+/** Pixels that tell the noise to half a percent. */
+const SOME_PIXELS = 40_000;
+
 /** Levels, noise and its correlation in one pass over the pixels, about `expected`; those of a state whose squared residual exceeds its
- *  limit are left out. */
+ *  limit are left out.
+ *  @param which every pixel, or rows of cells evenly left out where there are more than tell the noise */
 export function residualsOf(
   z: Pixels,
   pure: PureCells,
   expected: Levels,
   limits: readonly [number, number],
+  which: "all" | "some",
 ): Residuals {
   const { rows, cols } = z;
+  const every = which === "all" ? 1 : Math.max(1, Math.floor((pure.count[0] + pure.count[1]) / SOME_PIXELS));
   const moments = [new Float64Array(6), new Float64Array(6)];
   const sums = noSums();
   // residuals of this row and the one before, and whose they are: 0 nobody's
@@ -53,8 +59,12 @@ export function residualsOf(
   const dIm = a1.im - a0.im;
   let [crossX, ownX, crossY, ownY] = [0, 0, 0, 0];
   for (let i = 0; i < rows; i++) {
+    const cellRow = Math.floor(i / SIDE);
+    if (cellRow % every !== 0) continue;
     [re, reAbove, im, imAbove, whose, whoseAbove] = [reAbove, re, imAbove, im, whoseAbove, whose];
-    const row = Math.floor(i / SIDE) * pure.cols;
+    // the row before may have been left out
+    if (every > 1 && i % SIDE === 0) whoseAbove.fill(0);
+    const row = cellRow * pure.cols;
     for (let first = 0, c = row; first < cols; first += SIDE, c++) {
       const k = pure.state[c];
       const last = Math.min(cols, first + SIDE);

@@ -1,6 +1,6 @@
 import { medianInPlace } from "../../numerics/quantile.js";
 import { SIDE, type SeenSignal } from "./cells.js";
-import { fitMixture, fitOneState, histogramOf, type MixtureFit } from "./mixture.js";
+import { fitMixture, fitOneState, histogramOf, startAt, type MixtureFit } from "./mixture.js";
 import type { Pixels } from "./pixels.js";
 
 const BINS = 160;
@@ -12,11 +12,14 @@ const STARTS: readonly (readonly [number, number])[] = [
   [0.002, 0.6],
   [0.4, 0.998],
 ];
+/** Steps from each start, and from the best two of them on. */
+const TRIAL_ITERATIONS = 12;
+const ITERATIONS = 50;
 /** Median absolute difference of two normal numbers over the standard deviation of one. */
 const SD_PER_MEDIAN_DIFFERENCE = 1 / (0.6744897501960817 * Math.SQRT2);
 
-/** Differences that tell the noise to a third of a percent: rows are left out, evenly, where there are more. */
-const DIFFERENCES = 50_000;
+/** Differences that tell the noise to half a percent: rows are left out, evenly, where there are more. */
+const DIFFERENCES = 25_000;
 
 /** Pixel noise along each component, from differences of neighbours along the rows: blind to anything smooth. */
 export function differenceNoise(z: Pixels): { readonly re: number; readonly im: number } {
@@ -49,7 +52,7 @@ export interface Split {
  *  Source of the criterion: Schwarz 1978, Ann. Stat. 6, 461. */
 export function splitStates(seen: SeenSignal, effectivePixels: number, smoothedSd: number): Split | null {
   const { smoothRe: re, smoothIm: im } = seen;
-  const whole = wholeCells(seen.cells.count);
+  const whole = someCells(seen.cells.count);
   const n = whole.length;
   if (n < LEAST_CELLS) return null;
   let [mr, mi] = [0, 0];
@@ -78,9 +81,14 @@ export function splitStates(seen: SeenSignal, effectivePixels: number, smoothedS
   if (!(high > low)) return null;
   const h = histogramOf(v, low, high, BINS);
   const one = fitOneState(h);
+  const leastSd = Math.max(0.5 * smoothedSd, 0.5 * h.step);
+  const tried = STARTS.map(([qa, qb]) => fitMixture(h, startAt(at(qa), at(qb), leastSd), leastSd, TRIAL_ITERATIONS))
+    .filter((f) => f.high > f.low && Number.isFinite(f.logLikelihood))
+    .sort((a, b) => b.logLikelihood - a.logLikelihood)
+    .slice(0, 2);
   let best: MixtureFit | null = null;
-  for (const [qa, qb] of STARTS) {
-    const fit = fitMixture(h, at(qa), at(qb), Math.max(0.5 * smoothedSd, 0.5 * h.step));
+  for (const start of tried) {
+    const fit = fitMixture(h, start, leastSd, ITERATIONS);
     if (!(fit.high > fit.low) || !Number.isFinite(fit.logLikelihood)) continue;
     if (best === null || fit.logLikelihood > best.logLikelihood) best = fit;
   }
@@ -91,22 +99,20 @@ export function splitStates(seen: SeenSignal, effectivePixels: number, smoothedS
 
 const LEAST_CELLS = 50;
 
-/** Cells of which at least half is usable. */
-export function wholeCells(count: Uint8Array): Int32Array {
-  const out = new Int32Array(count.length);
+/** A blur spreads over more cells than lie between those taken of a large frame: the rest would say the same again. */
+const SOME_CELLS = 1 << 14;
+
+/** Cells of which at least half is usable, evenly spread ones where there are many. */
+export function someCells(count: Uint8Array): Int32Array {
+  const every = Math.max(1, Math.floor(count.length / SOME_CELLS));
+  const out = new Int32Array(Math.ceil(count.length / every));
   let n = 0;
-  for (let c = 0; c < count.length; c++) if (2 * count[c] >= SIDE * SIDE) out[n++] = c;
+  for (let c = 0; c < count.length; c += every) if (2 * count[c] >= SIDE * SIDE) out[n++] = c;
   return out.subarray(0, n);
 }
 
-/** Values sorted for quantiles: evenly spread ones stand for all where there are more. */
-const SORTED = 1 << 14;
-
-/** Quantiles of the values, to the nearest one of those sorted. */
+/** Quantiles, to the nearest value. */
 function quantilesOf(values: Float32Array): (q: number) => number {
-  const step = Math.ceil(values.length / SORTED);
-  const some = new Float32Array(Math.floor((values.length + step - 1) / step));
-  for (let k = 0; k < some.length; k++) some[k] = values[k * step];
-  some.sort();
-  return (q) => some[Math.round(q * (some.length - 1))];
+  const sorted = values.slice().sort();
+  return (q) => sorted[Math.round(q * (sorted.length - 1))];
 }
