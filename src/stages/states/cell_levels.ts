@@ -9,25 +9,23 @@ export type Levels = readonly [ComplexValue, ComplexValue];
 const CLIP2 = 16;
 
 /** Sums of the normal equations of z = (1 − u) z_0 + u z_1. */
-export interface LevelSums {
-  aa: number;
-  ab: number;
-  bb: number;
-  ar: number;
-  ai: number;
-  br: number;
-  bi: number;
+interface LevelSums {
+  readonly aa: number;
+  readonly ab: number;
+  readonly bb: number;
+  readonly ar: number;
+  readonly ai: number;
+  readonly br: number;
+  readonly bi: number;
 }
 
-export const noSums = (): LevelSums => ({ aa: 0, ab: 0, bb: 0, ar: 0, ai: 0, br: 0, bi: 0 });
-
-/** Both levels; NaN where a state has no pixels. */
-export function solveLevels({ aa, ab, bb, ar, ai, br, bi }: LevelSums): Levels {
+/** Both levels; that of the other one for a state without pixels. */
+function solveLevels({ aa, ab, bb, ar, ai, br, bi }: LevelSums): Levels {
   const det = aa * bb - ab * ab;
   if (!(det > 1e-9 * aa * bb) || aa === 0 || bb === 0) {
-    const one: ComplexValue = { re: aa > 0 ? ar / aa : Number.NaN, im: aa > 0 ? ai / aa : Number.NaN };
-    const other: ComplexValue = { re: bb > 0 ? br / bb : Number.NaN, im: bb > 0 ? bi / bb : Number.NaN };
-    return [one, other];
+    const one = aa > 0 ? { re: ar / aa, im: ai / aa } : null;
+    const other = bb > 0 ? { re: br / bb, im: bi / bb } : null;
+    return [one ?? other ?? NOTHING, other ?? one ?? NOTHING];
   }
   return [
     { re: (bb * ar - ab * br) / det, im: (bb * ai - ab * bi) / det },
@@ -52,6 +50,9 @@ export function levelsOfCells(
 function sumsOf(cells: Cells, pure: PureCells, before: Levels | null, limits: readonly [number, number]): LevelSums {
   const { re, im, count } = cells;
   const { state, share } = pure;
+  const [a0, a1] = before ?? [NOTHING, NOTHING];
+  const [a0Re, a0Im, dRe, dIm] = [a0.re, a0.im, a1.re - a0.re, a1.im - a0.im];
+  const [limit0, limit1] = before === null ? [Infinity, Infinity] : limits;
   let [aa, ab, bb, ar, ai, br, bi] = [0, 0, 0, 0, 0, 0, 0];
   for (let c = 0; c < state.length; c++) {
     const k = state[c];
@@ -59,7 +60,10 @@ function sumsOf(cells: Cells, pure: PureCells, before: Levels | null, limits: re
     const u = share[c];
     const v = 1 - u;
     const n = count[c];
-    if (before !== null && distance2(re[c] / n, im[c] / n, u, before) > limits[k]) continue;
+    // n times the departure of the mean
+    const dr = re[c] - n * (a0Re + u * dRe);
+    const di = im[c] - n * (a0Im + u * dIm);
+    if (dr * dr + di * di > n * n * (k === 0 ? limit0 : limit1)) continue;
     aa += n * v * v;
     ab += n * u * v;
     bb += n * u * u;
@@ -71,23 +75,23 @@ function sumsOf(cells: Cells, pure: PureCells, before: Levels | null, limits: re
   return { aa, ab, bb, ar, ai, br, bi };
 }
 
-function varianceOf(cells: Cells, pure: PureCells, levels: Levels): [number, number] {
+const NOTHING: ComplexValue = { re: 0, im: 0 };
+
+function varianceOf(cells: Cells, pure: PureCells, [a0, a1]: Levels): [number, number] {
   const { re, im, count } = cells;
+  const { state, share } = pure;
+  const [a0Re, a0Im, dRe, dIm] = [a0.re, a0.im, a1.re - a0.re, a1.im - a0.im];
   let [sum0, sum1] = [0, 0];
-  for (let c = 0; c < re.length; c++) {
-    const k = pure.state[c];
+  for (let c = 0; c < state.length; c++) {
+    const k = state[c];
     if (k > 1) continue;
+    const u = share[c];
     const n = count[c];
-    const d2 = n * distance2(re[c] / n, im[c] / n, pure.share[c], levels);
+    const dr = re[c] - n * (a0Re + u * dRe);
+    const di = im[c] - n * (a0Im + u * dIm);
+    const d2 = (dr * dr + di * di) / n;
     if (k === 0) sum0 += d2;
     else sum1 += d2;
   }
   return [sum0 / Math.max(1, pure.count[0]), sum1 / Math.max(1, pure.count[1])];
-}
-
-function distance2(re: number, im: number, u: number, levels: Levels): number {
-  const [a, b] = levels;
-  const dr = re - a.re - u * (b.re - a.re);
-  const di = im - a.im - u * (b.im - a.im);
-  return dr * dr + di * di;
 }

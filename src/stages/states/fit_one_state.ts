@@ -29,35 +29,27 @@ export function fitOneState(
   const leastSd = Math.max(noise0.re, noise0.im, 1e-30) / Math.sqrt(4 * Math.PI * by.xPx * by.yPx);
   const white2 = noise0.re ** 2 + noise0.im ** 2;
   const before = noCorrection(raw.z.rows);
-  let pure = mainCells(raw, leastSd);
-  let found = mainLevel(
-    raw,
+  const pure = mainCells(raw, leastSd);
+  const main = levelsOfCells(raw.cells, pure);
+  const { levels, noise, correlation } = residualsOf(
+    raw.z,
     pure,
-    firstLimits(white2, levelsOfCells(raw.cells, pure).variance),
+    main.levels,
+    firstLimits(white2, main.variance),
     s.refineRows ? "some" : "all",
   );
-  if (!s.refineRows) return oneStateFit(frame, raw, pure, found);
-  const { noise, correlation } = found;
-  const rows = refineRows(raw.z, pure, found.levels, noise, before, pixelsPerIndependent(correlation.x, 0));
+  if (!s.refineRows) return oneStateFit(frame, raw, pure, { levels, noise, correlation });
+  const inflation = pixelsPerIndependent(correlation.x, 0);
+  // a single state: the second of each pair is never asked for
+  const rows = refineRows(raw.z, pure, levels, [noise[0], noise[0]], before, inflation);
   const seen = seeSignal(correctPixels(raw.z, rows.correction), by, raw);
   // a small minority may have hidden behind the rows
   const again = fitTwoStates(frame, raw.z, seen, differenceNoise(seen.z), rows.correction, tip, s);
   if (again !== null) return again;
-  pure = mainCells(seen, leastSd);
-  found = mainLevel(seen, pure, limitsOf(noise), "all");
-  return oneStateFit(frame, raw, pure, { ...found, correlation }, rows);
-}
-
-/** Level and noise of the one state: both entries of each pair are the same. */
-function mainLevel(
-  seen: SeenSignal,
-  pure: PureCells,
-  limits: readonly [number, number],
-  which: "all" | "some",
-): Residuals {
-  const [level] = levelsOfCells(seen.cells, pure).levels;
-  const r = residualsOf(seen.z, pure, [level, level], limits, which);
-  return { levels: [r.levels[0], r.levels[0]], noise: [r.noise[0], r.noise[0]], correlation: r.correlation };
+  const left = mainCells(seen, leastSd);
+  const about = levelsOfCells(seen.cells, left).levels;
+  const last = residualsOf(seen.z, left, about, limitsOf(noise), "all");
+  return oneStateFit(frame, raw, left, { ...last, correlation }, rows);
 }
 
 function oneStateFit(

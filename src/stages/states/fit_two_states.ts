@@ -4,6 +4,7 @@ import { FWHM_PER_SIGMA } from "../../model/units.js";
 import { amplitudesOf } from "./amplitudes.js";
 import { levelsOfCells, type Levels } from "./cell_levels.js";
 import { seeSignal, type SeenSignal } from "./cells.js";
+import { ContourDistances } from "./distance.js";
 import { judge } from "./judge.js";
 import type { LevelFit } from "./level_fit.js";
 import { pixelsPerIndependent, sdAlong } from "./noise.js";
@@ -46,6 +47,7 @@ export function fitTwoStates(
 
   const smoothingNm = Math.sqrt(by.xPx * raw.pixel.xNm * by.yPx * raw.pixel.yNm);
   const tipNm = tip === null ? 0 : tip.resolutionNm / FWHM_PER_SIGMA;
+  const distances = new ContourDistances(start.cells.rows, start.cells.cols, start.cells.pixel);
   let seen = start;
   let correction = before;
   let rows: RowRefinement | null = null;
@@ -58,7 +60,8 @@ export function fitTwoStates(
   let limits: readonly [number, number] = [Infinity, Infinity];
   for (let round = 0; round < MOST_ROUNDS; round++) {
     const mapNoise = Math.hypot(noise0.re * eRe, noise0.im * eIm) / (high - low) / Math.sqrt(blurArea);
-    pure = pureCells(shareOf(seen, eRe, eIm, low, high), seen.cells, raw.count, { smoothingNm, tipNm, mapNoise });
+    const blur = { smoothingNm, tipNm, mapNoise };
+    pure = pureCells(shareOf(seen, eRe, eIm, low, high), seen.cells, raw.count, blur, distances);
     if (pure.count[0] === 0 || pure.count[1] === 0) return null;
     const last: Levels | null = levels;
     const found = levelsOfCells(seen.cells, pure);

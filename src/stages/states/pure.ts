@@ -1,6 +1,6 @@
 import { RISE_PER_W } from "../../model/units.js";
 import type { Cells } from "./cells.js";
-import { distanceToContours } from "./distance.js";
+import type { ContourDistances } from "./distance.js";
 import { meanWidth, tailTable, TABLE_STEPS, TABLE_WIDTHS, type WallBlur } from "./wall_tail.js";
 
 /** Cells whose state is known, with the small share of the other one that the tail of the nearest wall leaves there. */
@@ -31,10 +31,17 @@ const LEAST_FOOT = 0.12;
 const FOOT_SIGMAS = 5;
 
 /** Cells far from any wall of a smoothed map of the mixing u, on either side of the walls.
- *  Each state takes the farthest reach that leaves it enough pixels, and never less than half a width. */
-export function pureCells(u: Float32Array, cells: Cells, usablePixels: number, blur: WallBlur): PureCells {
+ *  Each state takes the farthest reach that leaves it enough pixels, and never less than half a width.
+ *  @param distances for maps of the size of `cells` */
+export function pureCells(
+  u: Float32Array,
+  cells: Cells,
+  usablePixels: number,
+  blur: WallBlur,
+  distances: ContourDistances,
+): PureCells {
   const n = u.length;
-  const { rows, cols, pixel, count: inCell } = cells;
+  const { cols, count: inCell } = cells;
   const mapWidth = meanWidth(u, cells, blur);
   const widthNm = RISE_PER_W * mapWidth;
   const walls = !Number.isNaN(widthNm);
@@ -43,8 +50,8 @@ export function pureCells(u: Float32Array, cells: Cells, usablePixels: number, b
   const fromMiddle = walls ? mapWidth * Math.atanh(1 - 2 * foot) : 0;
   const labels = new Uint8Array(n);
   for (let c = 0; c < n; c++) labels[c] = inCell[c] === 0 ? 255 : u[c] <= foot ? 0 : u[c] > 1 - foot ? 1 : 2;
-  const distance = distanceToContours(u, labels, [foot, 1 - foot], rows, cols, pixel);
-  const reach = [0, 1].map((k) => reachOf(k, distance, labels, inCell, fromMiddle, widthNm, usablePixels));
+  const distance = distances.of(u, labels, [foot, 1 - foot]);
+  const reach = reachesOf(distance, labels, inCell, fromMiddle, widthNm, Math.max(ENOUGH, ENOUGH_SHARE * usablePixels));
   const state = new Uint8Array(n).fill(255);
   const share = new Float32Array(n);
   const table = walls ? tailTable(mapWidth, widthNm, blur) : new Float64Array(1);
@@ -68,31 +75,34 @@ export function pureCells(u: Float32Array, cells: Cells, usablePixels: number, b
   return { cols, state, share, count, tail, apparentWidthNm: widthNm };
 }
 
-/** Distance from the walls that leaves a state enough pixels, nm; 0 without walls. */
-function reachOf(
-  k: number,
+/** Distances from the walls that leave either state enough pixels, nm; 0 without walls. */
+function reachesOf(
   distance: Float32Array,
   labels: Uint8Array,
   inCell: Uint8Array,
   fromMiddle: number,
   widthNm: number,
-  usablePixels: number,
-): number {
-  if (Number.isNaN(widthNm)) return 0;
-  const enough = Math.max(ENOUGH, ENOUGH_SHARE * usablePixels);
-  // pixels by the farthest reach that takes them
-  const counts = new Float64Array(REACHES.length + 1);
+  enough: number,
+): [number, number] {
+  if (Number.isNaN(widthNm)) return [0, 0];
+  // pixels of either state by the farthest reach that takes them; those that none takes come last
+  const counts = [new Float64Array(REACHES.length + 1), new Float64Array(REACHES.length + 1)];
+  const ends = Float64Array.from(REACHES, (r) => r * widthNm - fromMiddle);
   for (let c = 0; c < labels.length; c++) {
-    if (labels[c] !== k) continue;
-    const d = (distance[c] + fromMiddle) / widthNm;
+    const k = labels[c];
+    if (k > 1) continue;
+    const d = distance[c];
     let r = 0;
-    while (r < REACHES.length && d < REACHES[r]) r++;
-    counts[r] += inCell[c];
+    while (r < ends.length && d < ends[r]) r++;
+    counts[k][r] += inCell[c];
   }
-  let sum = 0;
-  for (let r = 0; r < REACHES.length; r++) {
-    sum += counts[r];
-    if (sum >= enough) return REACHES[r] * widthNm;
-  }
-  return REACHES[REACHES.length - 1] * widthNm;
+  const reach = (of: Float64Array): number => {
+    let sum = 0;
+    for (let r = 0; r < REACHES.length; r++) {
+      sum += of[r];
+      if (sum >= enough) return REACHES[r] * widthNm;
+    }
+    return REACHES[REACHES.length - 1] * widthNm;
+  };
+  return [reach(counts[0]), reach(counts[1])];
 }

@@ -58,7 +58,7 @@ export function refineRows(
     let [wg, sg, xg, xxg, xyg, wp, sp, xp, xxp, xyp] = [0, 0, 0, 0, 0, 0, 0, 0, 0, 0];
     for (const k of [0, 1] as const) {
       const s = sums[k];
-      if (s[N] === 0) continue;
+      if (!(s[W] > 0)) continue;
       const [radial, across] = parts[k];
       gain.value[k][i] = before.logGain[i] + Math.log1p(Math.max(-0.9, s[G] / s[W]));
       gain.weight[k][i] = s[W] / radial / inflation;
@@ -99,6 +99,7 @@ export function refineRows(
  *  (Re and Im of z/e − 1), with the place x along the row, and with both. */
 const [N, W, G, F, X, XX, XG, XF, SUMS] = [0, 1, 2, 3, 4, 5, 6, 7, 8] as const;
 
+/** Sums of row i over the pure cells; a pixel's place is that of its cell. */
 function sumRow(
   sums: readonly [Float64Array, Float64Array],
   i: number,
@@ -107,47 +108,69 @@ function sumRow(
   levels: Levels,
   parts: readonly [readonly [number, number], readonly [number, number]],
 ): void {
-  const { cols } = z;
-  const [a0, a1] = levels;
   sums[0].fill(0);
   sums[1].fill(0);
   const row = Math.floor(i / SIDE) * pure.cols;
-  for (let first = 0, c = row; first < cols; first += SIDE, c++) {
+  const end = row + pure.cols;
+  for (let c = row; c < end;) {
     const k = pure.state[c];
-    if (k > 1) continue;
-    const u = pure.share[c];
-    const er = a0.re + u * (a1.re - a0.re);
-    const ei = a0.im + u * (a1.im - a0.im);
-    const m2 = er * er + ei * ei;
-    if (!(m2 > 0)) continue;
-    const limit = CLIP2 * (parts[k][0] + parts[k][1]);
-    let [n, g, f, nx, nxx, gx, fx] = [0, 0, 0, 0, 0, 0, 0];
-    const last = Math.min(cols, first + SIDE);
-    for (let j = first, p = i * cols + first; j < last; j++, p++) {
-      const dr = z.re[p] - er;
-      const di = z.im[p] - ei;
-      if (z.usable[p] === 0 || dr * dr + di * di > limit) continue;
-      const x = (j + 0.5) / cols - 0.5;
-      const along = dr * er + di * ei;
-      const turned = di * er - dr * ei;
-      n++;
-      g += along;
-      f += turned;
-      nx += x;
-      nxx += x * x;
-      gx += along * x;
-      fx += turned * x;
-    }
-    const s = sums[k];
-    s[N] += n;
-    s[W] += n * m2;
-    s[G] += g;
-    s[F] += f;
-    s[X] += m2 * nx;
-    s[XX] += m2 * nxx;
-    s[XG] += gx;
-    s[XF] += fx;
+    const start = c;
+    do c++;
+    while (c < end && pure.state[c] === k);
+    if (k <= 1) sumRun(sums[k], i, start - row, c - row, z, pure, levels, CLIP2 * (parts[k][0] + parts[k][1]));
   }
+}
+
+/** Adds the pixels of row i in the cells of one state from column `first` to the one before `end`. */
+function sumRun(
+  sums: Float64Array,
+  i: number,
+  first: number,
+  end: number,
+  z: Pixels,
+  pure: PureCells,
+  [a0, a1]: Levels,
+  limit: number,
+): void {
+  const { cols } = z;
+  const { re, im, usable } = z;
+  const { share } = pure;
+  const [a0Re, a0Im, dRe, dIm] = [a0.re, a0.im, a1.re - a0.re, a1.im - a0.im];
+  const row = Math.floor(i / SIDE) * pure.cols;
+  let [n, w, g, f, x1, x2, xg, xf] = [0, 0, 0, 0, 0, 0, 0, 0];
+  for (let c = first; c < end; c++) {
+    const u = share[row + c];
+    const er = a0Re + u * dRe;
+    const ei = a0Im + u * dIm;
+    const last = Math.min(cols, SIDE * (c + 1));
+    let [inCell, along, turned] = [0, 0, 0];
+    for (let j = SIDE * c, p = i * cols + j; j < last; j++, p++) {
+      const dr = re[p] - er;
+      const di = im[p] - ei;
+      if (usable[p] === 0 || dr * dr + di * di > limit) continue;
+      inCell++;
+      along += dr * er + di * ei;
+      turned += di * er - dr * ei;
+    }
+    const x = (SIDE * (c + 0.5)) / cols - 0.5;
+    const m2 = inCell * (er * er + ei * ei);
+    n += inCell;
+    w += m2;
+    g += along;
+    f += turned;
+    x1 += m2 * x;
+    x2 += m2 * x * x;
+    xg += along * x;
+    xf += turned * x;
+  }
+  sums[N] += n;
+  sums[W] += w;
+  sums[G] += g;
+  sums[F] += f;
+  sums[X] += x1;
+  sums[XX] += x2;
+  sums[XG] += xg;
+  sums[XF] += xf;
 }
 
 function withoutMean(offset: Float64Array): Float32Array {

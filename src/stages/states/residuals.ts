@@ -1,12 +1,12 @@
 import type { NoiseCovariance } from "../../model/signal.js";
 import { SIDE } from "./cells.js";
-import { noSums, solveLevels, type Levels } from "./cell_levels.js";
+import type { Levels } from "./cell_levels.js";
 import type { Pixels } from "./pixels.js";
 import type { PureCells } from "./pure.js";
 
 /** What the pixels of the pure cells tell about two levels. */
 export interface Residuals {
-  /** By least squares, from those within the limits. */
+  /** From those within the limits. */
   readonly levels: Levels;
   /** Covariance of the pixel noise of either state. */
   readonly noise: readonly [NoiseCovariance, NoiseCovariance];
@@ -43,107 +43,168 @@ export function residualsOf(
   limits: readonly [number, number],
   which: "all" | "some",
 ): Residuals {
-  const { rows, cols } = z;
   const every = which === "all" ? 1 : Math.max(1, Math.floor((pure.count[0] + pure.count[1]) / SOME_PIXELS));
-  const moments = [new Float64Array(6), new Float64Array(6)];
-  const sums = noSums();
-  // residuals of this row and the one before, and whose they are: 0 nobody's
-  let re = new Float64Array(cols);
-  let im = new Float64Array(cols);
-  let whose = new Uint8Array(cols);
-  let reAbove = new Float64Array(cols);
-  let imAbove = new Float64Array(cols);
-  let whoseAbove = new Uint8Array(cols);
-  const [a0, a1] = expected;
-  const dRe = a1.re - a0.re;
-  const dIm = a1.im - a0.im;
-  let [crossX, ownX, crossY, ownY] = [0, 0, 0, 0];
-  for (let i = 0; i < rows; i++) {
+  const sums = [
+    new StateSums(z, pure, expected, 0, limits[0]),
+    new StateSums(z, pure, expected, 1, limits[1]),
+  ] as const;
+  const rows = { here: new RowResiduals(z.cols), above: new RowResiduals(z.cols) };
+  for (let i = 0; i < z.rows; i++) {
     const cellRow = Math.floor(i / SIDE);
     if (cellRow % every !== 0) continue;
-    [re, reAbove, im, imAbove, whose, whoseAbove] = [reAbove, re, imAbove, im, whoseAbove, whose];
+    [rows.here, rows.above] = [rows.above, rows.here];
+    rows.here.whose.fill(0);
     // the row before may have been left out
-    if (every > 1 && i % SIDE === 0) whoseAbove.fill(0);
-    const row = cellRow * pure.cols;
-    for (let first = 0, c = row; first < cols; first += SIDE, c++) {
+    if (every > 1 && i % SIDE === 0) rows.above.whose.fill(0);
+    const end = (cellRow + 1) * pure.cols;
+    for (let c = cellRow * pure.cols; c < end;) {
       const k = pure.state[c];
-      const last = Math.min(cols, first + SIDE);
-      if (k > 1) {
-        for (let j = first; j < last; j++) whose[j] = 0;
-        continue;
-      }
-      const u = pure.share[c];
-      const er = a0.re + u * dRe;
-      const ei = a0.im + u * dIm;
-      const limit = limits[k];
-      const own = k + 1;
-      let [n, sr, si, rr, ri, ii] = [0, 0, 0, 0, 0, 0];
-      for (let j = first, p = i * cols + first; j < last; j++, p++) {
-        const a = z.re[p] - er;
-        const b = z.im[p] - ei;
-        const r2 = a * a + b * b;
-        if (z.usable[p] === 0 || r2 > limit) {
-          whose[j] = 0;
-          continue;
-        }
-        n++;
-        sr += a;
-        si += b;
-        rr += a * a;
-        ri += a * b;
-        ii += b * b;
-        re[j] = a;
-        im[j] = b;
-        whose[j] = own;
-        if (j > 0 && whose[j - 1] === own) {
-          const x = re[j - 1];
-          const y = im[j - 1];
-          crossX += a * x + b * y;
-          ownX += r2 + x * x + y * y;
-        }
-        if (whoseAbove[j] === own) {
-          const x = reAbove[j];
-          const y = imAbove[j];
-          crossY += a * x + b * y;
-          ownY += r2 + x * x + y * y;
-        }
-      }
-      const m = moments[k];
-      m[0] += n;
-      m[1] += sr;
-      m[2] += si;
-      m[3] += rr;
-      m[4] += ri;
-      m[5] += ii;
-      const v = 1 - u;
-      sums.aa += n * v * v;
-      sums.ab += n * u * v;
-      sums.bb += n * u * u;
-      sums.ar += v * sr;
-      sums.ai += v * si;
-      sums.br += u * sr;
-      sums.bi += u * si;
+      const start = c;
+      do c++;
+      while (c < end && pure.state[c] === k);
+      if (k <= 1) sums[k].addRun(i, start, c, rows.here, rows.above);
     }
   }
-  const [d0, d1] = solveLevels(sums);
-  const correlation = (cross: number, own: number): number =>
-    own > 0 ? Math.max(-0.95, Math.min(0.95, (2 * cross) / own)) : 0;
   return {
-    levels: [
-      { re: a0.re + d0.re, im: a0.im + d0.im },
-      { re: a1.re + d1.re, im: a1.im + d1.im },
-    ],
-    noise: [covarianceOf(moments[0]), covarianceOf(moments[1])],
-    correlation: { x: correlation(crossX, ownX), y: correlation(crossY, ownY) },
+    levels: levelsFrom(expected, pure, sums),
+    noise: [sums[0].noise, sums[1].noise],
+    correlation: correlationOf(sums),
   };
 }
 
-/** Covariance from number, sums and sums of products; nothing of fewer than two. */
-function covarianceOf([n, sr, si, rr, ri, ii]: Float64Array): NoiseCovariance {
-  if (n < 2) return { rr: 0, ri: 0, ii: 0 };
+/** Residuals of one row, and whose they are: 0 nobody's, else the state + 1. */
+class RowResiduals {
+  readonly re: Float64Array;
+  readonly im: Float64Array;
+  readonly whose: Uint8Array;
+  constructor(cols: number) {
+    this.re = new Float64Array(cols);
+    this.im = new Float64Array(cols);
+    this.whose = new Uint8Array(cols);
+  }
+}
+
+/** Sums over the pixels of one state. */
+class StateSums {
+  n = 0;
+  re = 0;
+  im = 0;
+  private rr = 0;
+  private ri = 0;
+  private ii = 0;
+  /** Pairs of neighbours along and across the rows, and the sums of their products Re·Re + Im·Im. */
+  pairsX = 0;
+  crossX = 0;
+  pairsY = 0;
+  crossY = 0;
+
+  constructor(
+    private readonly z: Pixels,
+    private readonly pure: PureCells,
+    private readonly expected: Levels,
+    private readonly state: 0 | 1,
+    private readonly limit: number,
+  ) {}
+
+  /** Takes the pixels of row i in the cells from `first` to the one before `end`, all pure and of this state. */
+  addRun(i: number, first: number, end: number, here: RowResiduals, above: RowResiduals): void {
+    const { z, limit } = this;
+    const { share, cols: cellCols } = this.pure;
+    const [a0, a1] = this.expected;
+    const { re: a0Re, im: a0Im } = a0;
+    const dRe = a1.re - a0Re;
+    const dIm = a1.im - a0Im;
+    const own = this.state + 1;
+    const row = Math.floor(i / SIDE) * cellCols;
+    const from = SIDE * (first - row);
+    const to = Math.min(z.cols, SIDE * (end - row));
+    let [n, sr, si, rr, ri, ii] = [0, 0, 0, 0, 0, 0];
+    let [pairsX, crossX, pairsY, crossY] = [0, 0, 0, 0];
+    // the residual one column back
+    let lastRe = 0;
+    let lastIm = 0;
+    let last = false;
+    for (let j = from, p = i * z.cols + from; j < to; j++, p++) {
+      const u = share[row + (j >> 1)];
+      const a = z.re[p] - a0Re - u * dRe;
+      const b = z.im[p] - a0Im - u * dIm;
+      if (z.usable[p] === 0 || a * a + b * b > limit) {
+        last = false;
+        continue;
+      }
+      n++;
+      sr += a;
+      si += b;
+      rr += a * a;
+      ri += a * b;
+      ii += b * b;
+      if (last) {
+        pairsX++;
+        crossX += a * lastRe + b * lastIm;
+      }
+      if (above.whose[j] === own) {
+        pairsY++;
+        crossY += a * above.re[j] + b * above.im[j];
+      }
+      here.re[j] = a;
+      here.im[j] = b;
+      here.whose[j] = own;
+      last = true;
+      lastRe = a;
+      lastIm = b;
+    }
+    this.n += n;
+    this.re += sr;
+    this.im += si;
+    this.rr += rr;
+    this.ri += ri;
+    this.ii += ii;
+    this.pairsX += pairsX;
+    this.crossX += crossX;
+    this.pairsY += pairsY;
+    this.crossY += crossY;
+  }
+
+  get noise(): NoiseCovariance {
+    const { n, re, im } = this;
+    if (n < 2) return { rr: 0, ri: 0, ii: 0 };
+    return {
+      rr: (this.rr - (re * re) / n) / (n - 1),
+      ri: (this.ri - (re * im) / n) / (n - 1),
+      ii: (this.ii - (im * im) / n) / (n - 1),
+    };
+  }
+
+  /** Mean square of the residuals. */
+  get square(): number {
+    return this.n > 0 ? (this.rr + this.ii) / this.n : 0;
+  }
+}
+
+/** The levels for which the mean residual of either state vanishes: it holds (1 − t) of the error of its own level and t of the other's,
+ *  with t the mean share of the wrong state in its cells. */
+function levelsFrom(expected: Levels, pure: PureCells, [s0, s1]: readonly [StateSums, StateSums]): Levels {
+  const mean = (s: StateSums, part: "re" | "im"): number => (s.n > 0 ? s[part] / s.n : 0);
+  const [t0, t1] = pure.tail;
+  const det = 1 - t0 - t1;
+  const solve = (part: "re" | "im"): [number, number] => {
+    const m0 = mean(s0, part);
+    const m1 = mean(s1, part);
+    return [((1 - t1) * m0 - t0 * m1) / det, ((1 - t0) * m1 - t1 * m0) / det];
+  };
+  const re = solve("re");
+  const im = solve("im");
+  const [a0, a1] = expected;
+  return [
+    { re: a0.re + re[0], im: a0.im + im[0] },
+    { re: a1.re + re[1], im: a1.im + im[1] },
+  ];
+}
+
+function correlationOf([s0, s1]: readonly [StateSums, StateSums]): { readonly x: number; readonly y: number } {
+  const of = (cross: number, own: number): number => (own > 0 ? Math.max(-0.95, Math.min(0.95, cross / own)) : 0);
   return {
-    rr: (rr - (sr * sr) / n) / (n - 1),
-    ri: (ri - (sr * si) / n) / (n - 1),
-    ii: (ii - (si * si) / n) / (n - 1),
+    x: of(s0.crossX + s1.crossX, s0.pairsX * s0.square + s1.pairsX * s1.square),
+    y: of(s0.crossY + s1.crossY, s0.pairsY * s0.square + s1.pairsY * s1.square),
   };
 }

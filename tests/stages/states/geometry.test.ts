@@ -1,6 +1,6 @@
 import { describe, expect, test } from "vitest";
 import { makeRandom } from "../../../src/numerics/random.js";
-import { distanceToContours, nearestSource } from "../../../src/stages/states/distance.js";
+import { ContourDistances, nearestSource } from "../../../src/stages/states/distance.js";
 import { coverage, turning } from "../../../src/stages/states/fraction.js";
 import { smoothShare } from "../../../src/stages/states/smooth_share.js";
 
@@ -34,7 +34,7 @@ test("distances to the contours of a disc are true to a tenth of a pixel on aver
     u[p] = 0.5 * (1 - Math.tanh(fromMiddle[p] / 45));
     states[p] = u[p] <= levels[0] ? 0 : u[p] > levels[1] ? 1 : 2;
   }
-  const found = distanceToContours(u, states, levels, size, size, pixel);
+  const found = new ContourDistances(size, size, pixel).of(u, states, levels);
   const sums = [0, 0];
   const n = [0, 0];
   let worst = 0;
@@ -59,7 +59,7 @@ test("beyond a gap the distance goes to the contour and not past it", () => {
   // one row: state 0, a gap, between, state 1 with its edge
   const u = Float32Array.from([0.1, 0, 0.5, 0.9]);
   const states = Uint8Array.from([0, 255, 2, 1]);
-  const found = distanceToContours(u, states, [0.2, 0.8], 1, 4, { xNm: 10, yNm: 10 });
+  const found = new ContourDistances(1, 4, { xNm: 10, yNm: 10 }).of(u, states, [0.2, 0.8]);
   expect(found[0]).toBeLessThan(30);
   expect(found[0]).toBeGreaterThan(20);
   expect(found[3]).toBeLessThan(10);
