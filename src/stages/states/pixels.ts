@@ -1,6 +1,5 @@
 import type { CleanFrame } from "../../model/signal.js";
 import { colsOf, dataOf, rowsOf, type PixelSize } from "../../model/raster.js";
-import { sinCos } from "../../numerics/sin_cos.js";
 
 /** The complex near-field signal z = amplitude · exp(i·phase) of one frame, row-major. Without an optical phase `im` is all 0. */
 export interface Pixels {
@@ -76,24 +75,18 @@ export function readPixels(
   const re = new Float32Array(n);
   const im = new Float32Array(n);
   const usable = new Uint8Array(n);
-  const turn = new Float64Array(2);
   let count = 0;
   for (let i = 0, p = 0; i < rows; i++) {
     const gain = rowGain[i];
     const rad = off.phaseRad[i];
     for (let j = 0; j < cols; j++, p++) {
+      // not finite where either channel is not
+      const angle = phase === null ? 0 : phase[p] - rad - columnRad[j];
       const a = amplitude[p] * gain * columnGain[j];
-      if (!Number.isFinite(a)) continue;
-      if (debris !== null && (marginToo ? debris[p] !== 0 : debris[p] === DEBRIS_CORE)) continue;
-      if (phase === null) {
-        re[p] = a;
-      } else {
-        const angle = phase[p] - rad - columnRad[j];
-        if (!Number.isFinite(angle)) continue;
-        sinCos(angle, turn);
-        re[p] = a * turn[1];
-        im[p] = a * turn[0];
-      }
+      if (!Number.isFinite(a + angle)) continue;
+      if (debris !== null && (debris[p] === DEBRIS_CORE || (marginToo && debris[p] !== 0))) continue;
+      re[p] = phase === null ? a : a * Math.cos(angle);
+      im[p] = phase === null ? 0 : a * Math.sin(angle);
       usable[p] = 1;
       count++;
     }
