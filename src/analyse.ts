@@ -206,7 +206,7 @@ async function analyseWith(runner: Runner, run: Run, cooldown: Cooldown, options
       (m.verdict === "mixed" || m.verdict === state) && Number.isFinite(levels[state].re)
         ? Math.hypot(levels[state].re, levels[state].im) / levels.gain
         : null;
-    return {
+    return withPictures(run.scratch, {
       frame: k,
       imagesSha256,
       verdict: m.verdict,
@@ -219,11 +219,7 @@ async function analyseWith(runner: Runner, run: Run, cooldown: Cooldown, options
       regions: m.regions,
       wallLengthNm: m.walls.wallLengthNm,
       walls: m.walls.walls,
-      profiles: m.walls.profiles.map((p) => ({
-        ...p,
-        amplitudeInsulating: p.amplitudeInsulating === null ? null : p.amplitudeInsulating / levels.gain,
-        amplitudeMetallic: p.amplitudeMetallic === null ? null : p.amplitudeMetallic / levels.gain,
-      })),
+      profiles: m.walls.profiles,
       widths: m.widths,
       fringes: own,
       fringeShare: fringeShare(own),
@@ -231,13 +227,7 @@ async function analyseWith(runner: Runner, run: Run, cooldown: Cooldown, options
       debrisPixels: m.debrisPixels,
       scarPixels: report.scarPixels,
       noise: report.noise,
-      get previews() {
-        return picturesOf(run.scratch, k).previews;
-      },
-      get profileBins() {
-        return picturesOf(run.scratch, k).profileBins;
-      },
-    };
+    });
   });
   return {
     cooldown,
@@ -249,6 +239,15 @@ async function analyseWith(runner: Runner, run: Run, cooldown: Cooldown, options
     notices: notices.filter((n) => n.frame === null || n.code === "excluded-frame" || !leftOut(n.frame)),
     driftPairs,
   };
+}
+
+/** A frame with what waits on disk to be drawn. Not a closure of the run, whose inner results would live as long as its answer. */
+function withPictures(scratch: string, result: FrameResult): FrameResult {
+  const { frame } = result;
+  return Object.defineProperties(result, {
+    previews: { enumerable: true, get: () => picturesOf(scratch, frame).previews },
+    profileBins: { enumerable: true, get: () => picturesOf(scratch, frame).profileBins },
+  });
 }
 
 async function placeFrames(

@@ -6,8 +6,9 @@ import type { Cooldown } from "../model/cooldown.js";
 import { countOf, plainText } from "../model/text.js";
 import { readCooldown, sizeProblems } from "../input/index.js";
 import { settingRecord, settingsWith, type Settings } from "../settings.js";
-import { openForWriting } from "../store/open.js";
-import { cacheFolderOf, clearCache } from "../workers/cache_folder.js";
+import { openForWriting, type Db } from "../store/open.js";
+import { isDiskFull } from "../store/problem.js";
+import { cacheFolderOf, cacheSize, clearCache } from "../workers/cache_folder.js";
 import { removeUnfilled } from "../store/unfilled.js";
 import { contentHash, description, workHash } from "../store/identity.js";
 import { findAnalysis, saveAnalysis } from "../store/save.js";
@@ -79,6 +80,18 @@ export async function runAnalysis(
   }
 }
 
+/** Saves an analysis; where the disk is full, once more without the cache. */
+function saveWithRoom(db: Db, analysis: Analysis, cacheFolder: string | undefined): ReturnType<typeof saveAnalysis> {
+  const madeAt = new Date();
+  try {
+    return saveAnalysis(db, analysis, madeAt);
+  } catch (e) {
+    if (cacheFolder === undefined || !isDiskFull(e) || clearCache(cacheFolder).bytes === 0) throw e;
+    say("note: cache: deleted, as its disk was full");
+    return saveAnalysis(db, analysis, madeAt);
+  }
+}
+
 /** `coldseam ingest`, of the files that describe one cooldown: read, analyse, store in one transaction, and say what was found. Returns the
  *  number of the analysis. */
 export async function ingest(yaml: string | readonly string[], o: IngestOptions): Promise<number> {
@@ -112,13 +125,18 @@ export async function ingest(yaml: string | readonly string[], o: IngestOptions)
     const analysis = await runAnalysis(cooldown, { settings, workers, signal: abort.signal, cache });
     abort.signal.throwIfAborted();
     await refuseChangedSources(cooldown);
-    const saved = saveAnalysis(db, analysis, new Date());
+    const saved = saveWithRoom(db, analysis, cache?.folder);
     analysis.release?.();
     print(
       `${plainText(cooldown.cooldown)}: ${countOf(analysis.frames.length, "frame")} stored in ${o.db} as analysis ${saved.id}\n`,
     );
     print(loopText(analysis));
     sayNotices(analysis.notices);
+    const held = cache === undefined ? 0 : cacheSize(cache.folder).bytes;
+    if (held > 0)
+      say(
+        `cache: ${(held / 1e6).toFixed(0)} MB beside the database speed up the next ingest; they may be deleted at any time`,
+      );
     const next = [["loops"], ["walls"], ["export", "temperature"]].map((words) => command(...words, "--db", o.db));
     say(`next: ${next.join("    ")}`);
     return saved.id;

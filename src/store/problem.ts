@@ -7,6 +7,14 @@ function sqliteCode(e: unknown): string | null {
   return typeof e.code === "string" ? e.code : null;
 }
 
+/** Whether an error, or what it came from, says that the database's disk is full. */
+export function isDiskFull(e: unknown): boolean {
+  const code = sqliteCode(e) ?? (e instanceof Error ? sqliteCode(e.cause) : null);
+  return code !== null && FULL.test(code);
+}
+
+const FULL = /^SQLITE_(FULL|IOERR_SHMSIZE)$/;
+
 /** An error of the database `file` in words for its user; null where it is none, or can only be a fault of the program
  *  (a broken constraint, a wrong statement). */
 export function databaseProblem(file: string, e: unknown): InputError | null {
@@ -15,7 +23,7 @@ export function databaseProblem(file: string, e: unknown): InputError | null {
   const said = e instanceof Error ? e.message : "";
   const make = (problem: string, fix: string): InputError => new InputError({ at: file, problem, fix }, e);
   if (/^SQLITE_(NOTADB|CORRUPT)/.test(code)) return notSound(file, said, e);
-  if (code === "SQLITE_FULL" || code === "SQLITE_IOERR_SHMSIZE")
+  if (FULL.test(code))
     return make(
       "no space left on its disk; the database is as it was",
       "free some space, or use a file on another disk; then run again",

@@ -5,7 +5,7 @@ import type { Preview, ProfileBins } from "../model/pictures.js";
 import type { PixelSize } from "../model/raster.js";
 import { colsOf, dataOf, makeRaster, rowsOf } from "../model/raster.js";
 import type { CleanFrame, DomainMap, FrameLevels, FrameStates, FrameVerdict, Signal } from "../model/signal.js";
-import type { FringeTest, FrameWalls, WidthSummary } from "../model/walls.js";
+import type { FringeTest, FrameWalls, WallProfile, WidthSummary } from "../model/walls.js";
 import type { Settings } from "../settings.js";
 import { CORE } from "../stages/debris/index.js";
 import { labelDomains } from "../stages/domains/index.js";
@@ -50,6 +50,7 @@ interface MapOutput {
 
 export interface MeasureOutput extends MapOutput {
   readonly regions: readonly DomainRegion[];
+  /** Without bins; amplitudes gain-corrected. */
   readonly walls: FrameWalls;
   readonly widths: WidthSummary;
   readonly fringes: readonly FringeTest[];
@@ -179,7 +180,17 @@ export async function measure(input: MeasureInput): Promise<MeasureOutput> {
   const { bins = [], ...plainWalls } = walls;
   keep(input.scratch, picturesName(input.frame), { previews, profileBins: bins } satisfies FramePictures);
   dropClean(input, input.frame);
-  return { ...map, regions, walls: plainWalls, widths, fringes };
+  return { ...map, regions, walls: { ...plainWalls, profiles: gainCorrected(walls.profiles, gain) }, widths, fringes };
+}
+
+/** Profiles with their amplitudes as scaled in the first frame. */
+function gainCorrected(profiles: readonly WallProfile[], gain: number): WallProfile[] {
+  const corrected = (v: number | null): number | null => (v === null ? null : v / gain);
+  return profiles.map((p) => ({
+    ...p,
+    amplitudeInsulating: corrected(p.amplitudeInsulating),
+    amplitudeMetallic: corrected(p.amplitudeMetallic),
+  }));
 }
 
 function countPixels(clean: CleanFrame, debris: Uint8Array): { usablePixels: number; debrisPixels: number } {

@@ -24,6 +24,7 @@ const COMMANDS = [
   "verify",
   "forget",
   "merge",
+  "cache",
   "settings",
   "demo",
 ];

@@ -17,6 +17,7 @@ import { afterAll, beforeAll, describe, expect, test } from "vitest";
 import { generateStack } from "../../src/demo/index.js";
 import { killIngests, runAndKill, spreadMoments, stateOf, tinyCooldown } from "../../src/study/survival.js";
 import { openForReading, type Db } from "../../src/store/open.js";
+import { writeEntry } from "../../src/workers/cache_entry.js";
 import { inNamespace, MAY_MOUNT } from "./namespace.js";
 import { coldseam, TOP, type Ended } from "./program.js";
 
@@ -246,6 +247,23 @@ describe.runIf(MAY_MOUNT)("on a small or write-protected file system of its own"
       );
       expect(r.out, `${room} kB: ${r.err}`).toBe("lab.sqlite\n");
     }
+  });
+
+  test("a disk filled by the cache: it goes, and the analysis is stored", () => {
+    const cache = at("filling.cache");
+    mkdirSync(cache);
+    writeEntry(cache, `map-${"0".repeat(64)}`, new Uint8Array(2 ** 21));
+    const kilobytes = Math.ceil(readFileSync(one).length / 1024) + 2158;
+    const r = inNamespace(
+      `${small(kilobytes)} cp ${quoted(one)} $S/lab.sqlite; cp -r ${quoted(cache)} $S/lab.sqlite.cache
+       ${command("ingest", quoted(yamlB), "--db", "$S/lab.sqlite", "--workers", "1")} >/dev/null && ls $S; cp $S/lab.sqlite ${quoted(at("filled.sqlite"))}`,
+    );
+    expect(r.err).toMatch(/note: cache: deleted, as its disk was full/);
+    expect(r.out).toBe("lab.sqlite\n");
+    expect(stateOf(at("filled.sqlite"))).toMatchObject({
+      analyses: [expect.any(Number), expect.any(Number)],
+      wrong: [],
+    });
   });
 
   test("a full disk under what a command writes: said with what helps, and no part of it stays", () => {

@@ -14,11 +14,13 @@ import {
 } from "node:fs";
 import { tmpdir } from "node:os";
 import path from "node:path";
+import { fileURLToPath } from "node:url";
 import { afterEach, beforeEach, describe, expect, test } from "vitest";
 import { readEntry, writeEntry } from "../../src/workers/cache_entry.js";
 import { cacheSize, clearCache, openCache, trimCache } from "../../src/workers/cache_folder.js";
 import { cached, forgetTroubles, keyOf, takeTrouble } from "../../src/workers/cached.js";
 import { contentKey } from "../../src/workers/content_key.js";
+import { inNamespace, MAY_MOUNT } from "../cli/namespace.js";
 
 let top: string;
 let folder: string;
@@ -225,6 +227,17 @@ describe("a stage's result", () => {
     expect(takeTrouble({ cache: use })).toMatch(/ENOENT/);
     expect(takeTrouble({ cache: use })).toBeNull();
     expect(existsSync(folder)).toBe(false);
+  });
+
+  test.runIf(MAY_MOUNT)("that finds the disk full is used all the same; no half of it stays", () => {
+    const script = fileURLToPath(new URL("full_disk_run.mjs", import.meta.url));
+    const r = inNamespace(`mount -t tmpfs -o size=64k tmpfs '${top}'; '${process.execPath}' '${script}' '${top}'`);
+    expect(JSON.parse(r.out), r.err).toEqual({
+      right: true,
+      trouble: expect.stringMatching(/ENOSPC/) as string,
+      names: ["map", "map"],
+      second: ["first", "first", "second", "second"],
+    });
   });
 
   test("of which the content is sound, but no value, is made anew", async () => {
