@@ -18,6 +18,7 @@ import { generateStack } from "../../src/demo/index.js";
 import { killIngests, runAndKill, spreadMoments, stateOf, tinyCooldown } from "../../src/study/survival.js";
 import { openForReading, type Db } from "../../src/store/open.js";
 import { writeEntry } from "../../src/workers/cache_entry.js";
+import { openCache } from "../../src/workers/cache_folder.js";
 import { inNamespace, MAY_MOUNT } from "./namespace.js";
 import { coldseam, TOP, type Ended } from "./program.js";
 
@@ -251,7 +252,7 @@ describe.runIf(MAY_MOUNT)("on a small or write-protected file system of its own"
 
   test("a disk filled by the cache: it goes, and the analysis is stored", () => {
     const cache = at("filling.cache");
-    mkdirSync(cache);
+    openCache(cache, 1e9, { rasters: 0, small: 0 });
     writeEntry(cache, `map-${"0".repeat(64)}`, new Uint8Array(2 ** 21));
     const kilobytes = Math.ceil(readFileSync(one).length / 1024) + 2158;
     const r = inNamespace(
