@@ -2,6 +2,7 @@
  *  read; on return the lower triangle holds L with A = LLᵀ (the upper one is left as it was). False where the matrix is not
  *  positive definite to working precision; `a` is then spoilt. */
 export function choleskyInPlace(a: Float64Array, n: number): boolean {
+  if (n >= LARGE) return choleskyOfSparse(a, n);
   for (let j = 0; j < n; j++) {
     const jn = j * n;
     let d = a[jn + j];
@@ -15,6 +16,36 @@ export function choleskyInPlace(a: Float64Array, n: number): boolean {
       const row = i * n;
       let s = a[row + j];
       for (let k = 0; k < j; k++) s -= a[row + k] * a[jn + k];
+      a[row + j] = s * inverse;
+    }
+  }
+  return true;
+}
+
+/** From this size on it pays to look for zeros. */
+const LARGE = 64;
+
+/** The same, to the bit, of a matrix many of whose rows begin with zeros: L has them in the same places, and they are passed over. */
+function choleskyOfSparse(a: Float64Array, n: number): boolean {
+  const first = new Int32Array(n);
+  for (let i = 0; i < n; i++) {
+    let k = 0;
+    while (k < i && a[i * n + k] === 0) k++;
+    first[i] = k;
+  }
+  for (let j = 0; j < n; j++) {
+    const jn = j * n;
+    let d = a[jn + j];
+    for (let k = first[j]; k < j; k++) d -= a[jn + k] * a[jn + k];
+    if (!(d > a[jn + j] * 4e-16) || d === Infinity) return false;
+    const root = Math.sqrt(d);
+    a[jn + j] = root;
+    const inverse = 1 / root;
+    for (let i = j + 1; i < n; i++) {
+      if (first[i] > j) continue;
+      const row = i * n;
+      let s = a[row + j];
+      for (let k = Math.max(first[i], first[j]); k < j; k++) s -= a[row + k] * a[jn + k];
       a[row + j] = s * inverse;
     }
   }
@@ -38,21 +69,25 @@ export function choleskySolve(l: Float64Array, n: number, b: Float64Array): void
 
 /** (L Lᵀ)⁻¹ as a full symmetric row-major n × n matrix into `out`, which must not be `l`. */
 export function choleskyInvert(l: Float64Array, n: number, out: Float64Array): void {
-  // L⁻¹ into the lower triangle of out …
+  // The columns of L⁻¹ into the rows of out, so that all sums run along rows …
   for (let j = 0; j < n; j++) {
-    out[j * n + j] = 1 / l[j * n + j];
+    const column = j * n;
+    out[column + j] = 1 / l[column + j];
     for (let i = j + 1; i < n; i++) {
+      const row = i * n;
       let s = 0;
-      for (let k = j; k < i; k++) s -= l[i * n + k] * out[k * n + j];
-      out[i * n + j] = s / l[i * n + i];
+      for (let k = j; k < i; k++) s -= l[row + k] * out[column + k];
+      out[column + i] = s / l[row + i];
     }
   }
-  // … then L⁻ᵀL⁻¹, row by row from the top: row i needs only rows k ≥ i, still untouched.
+  // … then L⁻ᵀL⁻¹ into the lower triangle. The diagonal goes last in its row: the row needs it, no later one does.
   for (let i = 0; i < n; i++) {
+    const row = i * n;
     for (let j = 0; j <= i; j++) {
+      const other = j * n;
       let s = 0;
-      for (let k = i; k < n; k++) s += out[k * n + i] * out[k * n + j];
-      out[i * n + j] = s;
+      for (let k = i; k < n; k++) s += out[row + k] * out[other + k];
+      out[row + j] = s;
     }
   }
   for (let i = 0; i < n; i++) for (let j = 0; j < i; j++) out[j * n + i] = out[i * n + j];

@@ -35,6 +35,45 @@ describe("Cholesky", () => {
     }
   });
 
+  it.each([64, 130])("passes over the zeros of a graph of %i nodes, and finds a node without links", (n) => {
+    // Neighbours in order, and each of the second half linked to its mirror image in the first: as scans down and up in temperature.
+    const random = makeRandom(n);
+    const a = new Float64Array(n * n);
+    const link = (i: number, j: number, w: number): void => {
+      a[i * n + i] += w;
+      a[j * n + j] += w;
+      a[Math.max(i, j) * n + Math.min(i, j)] -= w;
+      // What is above the diagonal is not to be read.
+      a[Math.min(i, j) * n + Math.max(i, j)] = Number.NaN;
+    };
+    for (let i = 1; i < n; i++) {
+      link(i - 1, i, 1 + random.uniform());
+      if (2 * i > n + 1) link(n - i, i, 1 + random.uniform());
+    }
+    a[0] += 1;
+    const loose = a.slice();
+    loose.fill(0, (n - 1) * n);
+    expect(choleskyInPlace(loose, n)).toBe(false);
+    const l = a.slice();
+    expect(choleskyInPlace(l, n)).toBe(true);
+    const inverse = new Float64Array(n * n);
+    choleskyInvert(l, n, inverse);
+    const at = (i: number, j: number): number => a[Math.max(i, j) * n + Math.min(i, j)];
+    let worst = 0;
+    for (let i = 0; i < n; i++) {
+      for (let j = 0; j < n; j++) {
+        let product = 0;
+        let back = 0;
+        for (let k = 0; k < n; k++) {
+          product += at(i, k) * inverse[k * n + j];
+          if (k <= Math.min(i, j)) back += l[i * n + k] * l[j * n + k];
+        }
+        worst = Math.max(worst, Math.abs(product - (i === j ? 1 : 0)), Math.abs(back - at(i, j)));
+      }
+    }
+    expect(worst).toBeLessThan(1e-11);
+  });
+
   it("reads the lower triangle only", () => {
     const a = Float64Array.from([4, Number.NaN, 2, 3]);
     expect(choleskyInPlace(a, 2)).toBe(true);
