@@ -7,35 +7,55 @@ export interface DomainEvent {
   readonly frame: number;
   /** Keys row · 100000 + column on the reference grid. */
   readonly pixels: ReadonlySet<number>;
-  /** The piece that kept its identity, where the two are so alike in size that either might have. */
+  /** Of a split or merge: the piece that kept its identity. Which of two pieces did hangs on the sizes that the field of view cuts out. */
   readonly twin: ReadonlySet<number>;
   /** Domains no smaller than what is asked about. */
   readonly large: boolean;
 }
 
 /** Pixels of one label on the reference grid, to the nearest pixel. */
-export function pixelsOf(f: FrameDomains, label: number, shiftRows: number, shiftCols: number): Set<number> {
+function pixelsOf(f: FrameDomains, label: number, at: Shift): Set<number> {
   const out = new Set<number>();
   const { cols } = f.map;
   for (let p = 0; p < f.labels.length; p++) {
     if (f.labels[p] !== label) continue;
-    out.add((Math.floor(p / cols) + shiftRows + 1000) * 100000 + (p % cols) + shiftCols + 1000);
+    out.add((Math.floor(p / cols) + at.rows + 1000) * 100000 + (p % cols) + at.cols + 1000);
   }
   return out;
 }
 
-/** Events between two frames on one grid, told from the overlaps alone: every pair sharing half of the smaller region is joined;
+/** Where a frame's pixel (0, 0) lies on the reference grid, in whole pixels. */
+export interface Shift {
+  readonly rows: number;
+  readonly cols: number;
+}
+
+const STILL: Shift = { rows: 0, cols: 0 };
+
+/** Events between two frames, told from the overlaps alone: every pair sharing half of the smaller region is joined;
  *  a region without partner is born or dies, n partners of one region are n − 1 splits or merges. Written without the tracker. */
-export function eventsBetween(a: FrameDomains, b: FrameDomains, frame: number, leastPx: number): DomainEvent[] {
+export function eventsBetween(
+  a: FrameDomains,
+  b: FrameDomains,
+  frame: number,
+  leastPx: number,
+  atA: Shift = STILL,
+  atB: Shift = STILL,
+): DomainEvent[] {
   const shared = new Map<string, number>();
   const size = new Map<string, number>();
   const bump = (m: Map<string, number>, key: string): void => void m.set(key, (m.get(key) ?? 0) + 1);
-  for (let p = 0; p < a.labels.length; p++) {
-    const la = a.labels[p];
+  for (const la of a.labels) if (la > 0) bump(size, `a${la}`);
+  const { rows, cols } = b.map;
+  for (let p = 0; p < b.labels.length; p++) {
     const lb = b.labels[p];
-    if (la > 0) bump(size, `a${la}`);
-    if (lb > 0) bump(size, `b${lb}`);
-    if (la > 0 && lb > 0 && a.regions[la - 1].kind === b.regions[lb - 1].kind) bump(shared, `a${la} b${lb}`);
+    if (lb === 0) continue;
+    bump(size, `b${lb}`);
+    const i = Math.floor(p / cols) + atB.rows - atA.rows;
+    const j = (p % cols) + atB.cols - atA.cols;
+    if (i < 0 || j < 0 || i >= rows || j >= cols) continue;
+    const la = a.labels[i * cols + j];
+    if (la > 0 && a.regions[la - 1].kind === b.regions[lb - 1].kind) bump(shared, `a${la} b${lb}`);
   }
   const partners = new Map<string, string[]>();
   for (const [key, n] of shared) {
@@ -45,31 +65,29 @@ export function eventsBetween(a: FrameDomains, b: FrameDomains, frame: number, l
     partners.set(kb, [...(partners.get(kb) ?? []), ka]);
   }
   const events: DomainEvent[] = [];
-  const side = (own: FrameDomains, other: FrameDomains, letter: "a" | "b"): void => {
+  const side = (letter: "a" | "b"): void => {
+    const [own, atOwn, other, atOther] = letter === "a" ? [a, atA, b, atB] : [b, atB, a, atA];
     for (const r of own.regions) {
-      const name = `${letter}${r.label}`;
-      const found = partners.get(name) ?? [];
+      const found = partners.get(`${letter}${r.label}`) ?? [];
       if (found.length === 0 && !r.touchesBorder) {
         const what = letter === "b" ? "birth" : "death";
-        const pixels = pixelsOf(own, r.label, 0, 0);
+        const pixels = pixelsOf(own, r.label, atOwn);
         events.push({ what, kind: r.kind, frame, pixels, twin: new Set(), large: pixels.size >= leastPx });
       }
       if (found.length < 2) continue;
       const sizes = found.map((k) => size.get(k) ?? 0);
       const keeper = sizes.indexOf(Math.max(...sizes));
+      const twin = pixelsOf(other, Number(found[keeper].slice(1)), atOther);
+      const what = letter === "a" ? "split" : "merge";
       found.forEach((k, n) => {
         if (n === keeper) return;
-        const label = Number(k.slice(1));
-        const pixels = pixelsOf(other, label, 0, 0);
-        const what = letter === "a" ? "split" : "merge";
-        const alike = pixels.size > 0.5 * sizes[keeper];
-        const twin = alike ? pixelsOf(other, Number(found[keeper].slice(1)), 0, 0) : new Set<number>();
+        const pixels = pixelsOf(other, Number(k.slice(1)), atOther);
         events.push({ what, kind: r.kind, frame, pixels, twin, large: pixels.size >= leastPx });
       });
     }
   };
-  side(a, b, "a");
-  side(b, a, "b");
+  side("a");
+  side("b");
   return events;
 }
 
@@ -77,7 +95,7 @@ export function eventsBetween(a: FrameDomains, b: FrameDomains, frame: number, l
 export function eventsOf(
   domains: readonly TrackedDomain[],
   frames: readonly FrameDomains[],
-  shifts: readonly { rows: number; cols: number }[],
+  shifts: readonly Shift[],
   leastPx: number,
 ): DomainEvent[] {
   const events: DomainEvent[] = [];
@@ -85,7 +103,7 @@ export function eventsOf(
     const first = d.appearances[0];
     const last = d.appearances[d.appearances.length - 1];
     const at = (q: { frame: number; label: number }): Set<number> =>
-      pixelsOf(frames[q.frame], q.label, shifts[q.frame].rows, shifts[q.frame].cols);
+      pixelsOf(frames[q.frame], q.label, shifts[q.frame]);
     if (d.origin === "nucleated" || d.origin === "split") {
       const pixels = at(first);
       const what = d.origin === "nucleated" ? "birth" : "split";
@@ -107,8 +125,19 @@ export function eventsOf(
   return events;
 }
 
-/** Share of the large events of `asked` that some event of `known` (of any size) answers: same kind of event, frame and place.
- *  An event of a domain that is small there may be one frame off: it is near the least area, where noise decides. */
+/** Whether two events are one: the same kind of event, frame and place. Of a split or merge either piece may be the one that the other account
+ *  has kept, where it is the same region. An event of a domain that is small in the other account may be one frame off: it is near the
+ *  least area, where noise decides. */
+export function isAnsweredBy(e: DomainEvent, k: DomainEvent): boolean {
+  return (
+    k.what === e.what &&
+    k.kind === e.kind &&
+    Math.abs(k.frame - e.frame) <= (k.large ? 0 : 1) &&
+    (overlaps(k.pixels, e.pixels) || isSame(k.twin, e.pixels) || isSame(e.twin, k.pixels))
+  );
+}
+
+/** Share of the large events of `asked` that some event of `known` (of any size) answers. */
 export function answered(asked: readonly DomainEvent[], known: readonly DomainEvent[]) {
   const counts: Record<string, { all: number; found: number }> = {};
   const missed: DomainEvent[] = [];
@@ -116,14 +145,7 @@ export function answered(asked: readonly DomainEvent[], known: readonly DomainEv
     if (!e.large) continue;
     const c = (counts[e.what] ??= { all: 0, found: 0 });
     c.all++;
-    const hit = known.some(
-      (k) =>
-        k.what === e.what &&
-        k.kind === e.kind &&
-        Math.abs(k.frame - e.frame) <= (k.large ? 0 : 1) &&
-        (overlaps(k.pixels, e.pixels) || overlaps(k.twin, e.pixels) || overlaps(e.twin, k.pixels)),
-    );
-    if (hit) c.found++;
+    if (known.some((k) => isAnsweredBy(e, k))) c.found++;
     else missed.push(e);
   }
   return { counts, missed };
@@ -132,4 +154,11 @@ export function answered(asked: readonly DomainEvent[], known: readonly DomainEv
 function overlaps(a: ReadonlySet<number>, b: ReadonlySet<number>): boolean {
   for (const p of a) if (b.has(p)) return true;
   return false;
+}
+
+/** Two regions that share most of what either covers. */
+function isSame(a: ReadonlySet<number>, b: ReadonlySet<number>): boolean {
+  let shared = 0;
+  for (const p of a) if (b.has(p)) shared++;
+  return shared > 0.5 * (a.size + b.size - shared);
 }

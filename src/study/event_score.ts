@@ -1,106 +1,126 @@
-import { mergeSpec, simulateCooldown, type CooldownSpec } from "../demo/index.js";
+import { simulateCooldown, type CooldownSpec } from "../demo/index.js";
 import type { Analysis } from "../model/analysis.js";
-import type { FrameDomains } from "../model/domains.js";
-import { dataOf } from "../model/raster.js";
-import { INSULATING, METALLIC, NO_STATE } from "../model/signal.js";
+import type { FrameDomains, TrackedDomain } from "../model/domains.js";
+import type { DomainMap } from "../model/signal.js";
 import type { Settings } from "../settings.js";
 import { labelDomains } from "../stages/domains/index.js";
 import { unpackMap } from "../workers/measure_task.js";
-import { answered, eventsBetween, eventsOf, type DomainEvent } from "./domain_events.js";
+import { eventsBetween, eventsOf, isAnsweredBy, type DomainEvent, type Shift } from "./domain_events.js";
+import { eventTruth, trueMap, type EventTruth } from "./event_truth.js";
 
-/** Births, deaths, splits and merges of large domains: how many there were and were found, how many were told and were right. */
+/** Births, deaths, splits and merges of large domains: how many there were and were found, how many were told and were right; and how many of
+ *  those that were and were told nobody can decide from the images, which are left out of the others. */
 export interface EventScore {
   readonly known: number;
   readonly found: number;
+  readonly knownUndecidable: number;
   readonly told: number;
   readonly right: number;
+  readonly toldUndecidable: number;
 }
 
 /** An event this near to the edge of what both frames show is not asked about, px. */
 const EDGE_PX = 3;
-/** … nor one of whose pixels more than this share has no state in either frame (debris, rows not measured). */
-const MOST_HIDDEN = 0.2;
+/** Asked about are domains of at least this many pixels … */
+const LEAST_PX = 20;
+/** … and areas of the tip's spot. */
+const LEAST_SPOTS = 2;
 
-/** Events told by the histories, against those of noise-free maps of the sample at the same temperatures: what
- *  the tip sees, divided half-way between the levels.
- *  Asked about are domains of at least 20 pixels and two areas of the tip. */
+type Filled = "metallic" | "insulating" | null;
+const FILLS = ["metallic", "insulating"] as const;
+
+/** Events told by the histories, against those of the noise-free maps of the same fields of view: what the tip sees, divided half-way between
+ *  the levels. Debris, scars and rows not measured hide nothing of these maps.
+ *
+ *  An event is decidable where it happens whatever the pixels in doubt are, in the frame before it and in the frame after it each: the pixels
+ *  that are hidden, and those whose share is nearer to one half than the noise can tell (`EventTruth.doubt`). One that happens for some
+ *  of these four and not for the others is undecidable; a told event that happens for none is wrong. */
 export function scoreEvents(spec: CooldownSpec, analysis: Analysis, settings: Settings): EventScore {
-  const { plan } = simulateCooldown(spec);
-  const { rows, cols, pixel } = spec;
   const { tip } = analysis.cooldown;
-  const steps = plan.map((p) => ({
-    rows: Math.round(p.driftYNm / pixel.yNm),
-    cols: Math.round(p.driftXNm / pixel.xNm),
-  }));
-  const margin = EDGE_PX + Math.max(...steps.flatMap((s) => [Math.abs(s.rows), Math.abs(s.cols)]));
-  const shifts = steps.map((s) => ({ rows: s.rows + margin, cols: s.cols + margin }));
-  const wide = { rows: rows + 2 * margin, cols: cols + 2 * margin };
-
-  // frame k without noise, debris or fringe, as the tip sees it, on a grid that holds every field of view
-  const quiet = simulateCooldown(
-    mergeSpec(spec, {
-      ...wide,
-      origin: { xNm: spec.origin.xNm - margin * pixel.xNm, yNm: spec.origin.yNm - margin * pixel.yNm },
-      drift: { listNm: plan.map(() => [0, 0] as const) },
-      fringe: { amplitudeRad: 0 },
-      gain: { frameSd: 0, rowSd: 0, rowWalkSd: 0 },
-      phaseOffset: { rowSdRad: 0, rowWalkSdRad: 0, anyPhase: false },
-      noise: { complex: 0, amplitude: 0, phaseRad: 0 },
-      debris: { perUm2: 0 },
-      scars: { perFrame: 0 },
-      unmeasured: { chance: 0 },
-    }),
+  const seen = analysis.frames.map((f, k) => labelDomains(unpackMap(f.map, spec.pixel), k, tip, settings.domains));
+  const { known, told } = judgeEvents(spec, eventTruth(spec), seen, analysis.domains, (map, k) =>
+    labelDomains(map, k, tip, settings.domains),
   );
-  const truthAt = (k: number): FrameDomains => {
-    const { amplitude, phase, truth } = quiet.frame(k);
-    const a = dataOf(amplitude);
-    const f = dataOf(phase);
-    const { amplitudeInsulating, amplitudeMetallic, phaseInsulatingRad, phaseMetallicRad } = truth.levels;
-    const re0 = amplitudeInsulating * Math.cos(phaseInsulatingRad);
-    const im0 = amplitudeInsulating * Math.sin(phaseInsulatingRad);
-    const dr = amplitudeMetallic * Math.cos(phaseMetallicRad) - re0;
-    const di = amplitudeMetallic * Math.sin(phaseMetallicRad) - im0;
-    const states = Uint8Array.from(a, (m, p) => {
-      const share = ((m * Math.cos(f[p]) - re0) * dr + (m * Math.sin(f[p]) - im0) * di) / (dr * dr + di * di);
-      return share > 0.5 ? METALLIC : INSULATING;
-    });
-    return labelDomains({ ...wide, pixel, states }, k, tip, settings.domains);
+  const count = (list: readonly JudgedEvent[], verdict: JudgedEvent["verdict"]): number =>
+    list.filter((e) => e.verdict === verdict).length;
+  return {
+    known: count(known, "answered") + count(known, "unanswered"),
+    found: count(known, "answered"),
+    knownUndecidable: count(known, "undecidable"),
+    told: count(told, "answered") + count(told, "unanswered"),
+    right: count(told, "answered"),
+    toldUndecidable: count(told, "undecidable"),
   };
-  const seen = analysis.frames.map((f, k) => labelDomains(unpackMap(f.map, pixel), k, tip, settings.domains));
-  const tipAreaNm2 = Math.PI * (spec.tip.resolutionNm / 2) ** 2;
-  const leastPx = Math.max(20, (2 * tipAreaNm2) / (pixel.xNm * pixel.yNm));
+}
 
-  const known: DomainEvent[] = [];
-  let before = truthAt(0);
+export interface JudgedEvent {
+  readonly event: DomainEvent;
+  readonly verdict: "answered" | "unanswered" | "undecidable";
+}
+
+/** Every event asked about, known and told, with what came of it. */
+export function judgeEvents(
+  spec: CooldownSpec,
+  truth: EventTruth,
+  seen: readonly FrameDomains[],
+  domains: readonly TrackedDomain[],
+  label: (map: DomainMap, frame: number) => FrameDomains,
+): { readonly known: readonly JudgedEvent[]; readonly told: readonly JudgedEvent[] } {
+  const { rows, cols, pixel, tip } = spec;
+  const { plan } = simulateCooldown(spec);
+  const shifts = plan.map(
+    (p): Shift => ({ rows: Math.round(p.driftYNm / pixel.yNm), cols: Math.round(p.driftXNm / pixel.xNm) }),
+  );
+  const spotPx = (Math.PI * (tip.resolutionNm / 2) ** 2) / (pixel.xNm * pixel.yNm);
+  const leastPx = Math.max(LEAST_PX, LEAST_SPOTS * spotPx);
+
+  const labelled = new Map<string, FrameDomains>();
+  const map = (k: number, filled: Filled): FrameDomains => {
+    const key = `${k} ${filled}`;
+    const old = labelled.get(key);
+    if (old !== undefined) return old;
+    const made = label(trueMap(truth, k, { rows, cols, pixel }, filled), k);
+    labelled.set(key, made);
+    return made;
+  };
+  const between = (k: number, before: Filled, now: Filled): DomainEvent[] =>
+    eventsBetween(map(k - 1, before), map(k, now), k, leastPx, shifts[k - 1], shifts[k]);
+  const actual: DomainEvent[] = [];
+  /** By frame, the events for each of the four ways to take what is in doubt. */
+  const possible: DomainEvent[][][] = [[]];
   for (let k = 1; k < plan.length; k++) {
-    const now = truthAt(k);
-    known.push(...eventsBetween(before, now, k, leastPx));
-    before = now;
+    actual.push(...between(k, null, null));
+    possible.push(FILLS.flatMap((before) => FILLS.map((now) => between(k, before, now))));
+    labelled.delete(`${k - 1} null`);
+    for (const fill of FILLS) labelled.delete(`${k - 1} ${fill}`);
   }
-  const found = eventsOf(analysis.domains, seen, shifts, leastPx);
+  const told = eventsOf(domains, seen, shifts, leastPx);
 
-  const stateIn = (k: number, row: number, col: number): number => {
+  const insideOf = (k: number, row: number, col: number): boolean => {
     const i = row - shifts[k].rows;
     const j = col - shifts[k].cols;
-    if (i < EDGE_PX || j < EDGE_PX || i >= rows - EDGE_PX || j >= cols - EDGE_PX) return -1;
-    return seen[k].map.states[i * cols + j];
+    return i >= EDGE_PX && j >= EDGE_PX && i < rows - EDGE_PX && j < cols - EDGE_PX;
   };
-  const visible = (e: DomainEvent): boolean => {
-    const hidden = [0, 0];
+  const asked = (e: DomainEvent): boolean => {
+    if (!e.large) return false;
     for (const key of e.pixels) {
       const row = Math.floor(key / 100000) - 1000;
       const col = (key % 100000) - 1000;
-      for (const n of [0, 1]) {
-        const state = stateIn(e.frame - n, row, col);
-        if (state < 0) return false;
-        if (state === NO_STATE) hidden[n]++;
-      }
+      if (!insideOf(e.frame, row, col) || !insideOf(e.frame - 1, row, col)) return false;
     }
-    return Math.max(...hidden) <= MOST_HIDDEN * e.pixels.size;
+    return true;
   };
-  const sum = (counts: Record<string, { all: number; found: number }>): { all: number; found: number } =>
-    Object.values(counts).reduce((t, c) => ({ all: t.all + c.all, found: t.found + c.found }), { all: 0, found: 0 });
-  const recall = sum(answered(known.filter(visible), found).counts);
-  const precision = sum(answered(found.filter(visible), known).counts);
-  return { known: recall.all, found: recall.found, told: precision.all, right: precision.found };
+  /** In how many of the four ways it happens. */
+  const happens = (e: DomainEvent): number =>
+    possible[e.frame].filter((events) => events.some((k) => isAnsweredBy(e, k))).length;
+  const judge = (e: DomainEvent, answers: readonly DomainEvent[], isKnown: boolean): JudgedEvent => {
+    const ways = happens(e);
+    const answered = answers.some((k) => isAnsweredBy(e, k));
+    const decidable = ways === 4 || (ways === 0 && !isKnown && !answered);
+    return { event: e, verdict: !decidable ? "undecidable" : answered ? "answered" : "unanswered" };
+  };
+  return {
+    known: actual.filter(asked).map((e) => judge(e, told, true)),
+    told: told.filter(asked).map((e) => judge(e, actual, false)),
+  };
 }

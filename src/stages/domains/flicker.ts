@@ -6,6 +6,7 @@ import { gapIsNarrow, neckIsNarrow } from "./neck.js";
 import { overlapOf, type PairOverlap } from "./overlap.js";
 import type { DomainSettings } from "./settings.js";
 import type { FrameSource, PlacedFrame } from "./source.js";
+import type { Unseen } from "./unseen.js";
 
 /** What lasts one frame and is noise. */
 export interface Flicker {
@@ -24,6 +25,7 @@ export function quietFlicker(
   source: FrameSource,
   placed: readonly PlacedFrame[],
   steps: readonly Step[],
+  unseen: readonly Unseen[],
   tip: Tip | null,
   s: DomainSettings,
   wallNm: number,
@@ -46,7 +48,8 @@ export function quietFlicker(
           : out.successor[piece] !== 0 && out.successor[piece] === out.mergedInto[sister]
             ? out.successor[piece]
             : 0;
-      if (rejoined === 0 || !gapIsNarrow(skip.now(), piece, sister, neckNm())) continue;
+      if (rejoined === 0) continue;
+      if (unseen[q - 1].cut[piece] === 0 && !gapIsNarrow(skip.now(), piece, sister, neckNm())) continue;
       out.successor[piece] = 0;
       out.mergedInto[piece] = rejoined;
       out.successor[sister] = rejoined;

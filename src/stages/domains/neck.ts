@@ -1,5 +1,5 @@
 import type { FrameDomains } from "../../model/domains.js";
-import type { Placed } from "./overlap.js";
+import { pixelShift, type Placed } from "./overlap.js";
 
 /** True where regions `p` and `q` of one frame come nearer to each other than `neckNm` (edge to edge). */
 export function gapIsNarrow(f: FrameDomains, p: number, q: number, neckNm: number): boolean {
@@ -37,8 +37,7 @@ export function neckIsNarrow(
 ): boolean {
   const { rows, cols, pixel } = now.map;
   const kept = erode(now, q, neckNm / 2);
-  const shiftCols = Math.round((atNow.xNm - atBefore.xNm) / pixel.xNm);
-  const shiftRows = Math.round((atNow.yNm - atBefore.yNm) / pixel.yNm);
+  const { rows: shiftRows, cols: shiftCols } = pixelShift(atBefore, atNow, pixel);
   const stack: number[] = [];
   for (let start = 0; start < kept.length; start++) {
     if (kept[start] !== 1) continue;

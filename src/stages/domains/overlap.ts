@@ -1,4 +1,5 @@
 import type { FrameDomains } from "../../model/domains.js";
+import type { PixelSize } from "../../model/raster.js";
 import { NO_STATE, type Drift } from "../../model/signal.js";
 import type { DomainSettings } from "./settings.js";
 
@@ -29,6 +30,14 @@ export function placedAt(drift: Drift): Placed | null {
   return { xNm: drift.xNm, yNm: drift.yNm, sdNm: drift.sdNm ?? 0 };
 }
 
+/** What to add to a pixel's row and column in frame `b` for the nearest pixel of frame `a`. */
+export function pixelShift(atA: Placed, atB: Placed, pixel: PixelSize): { readonly rows: number; readonly cols: number } {
+  return {
+    rows: Math.round((atB.yNm - atA.yNm) / pixel.yNm),
+    cols: Math.round((atB.xNm - atA.xNm) / pixel.xNm),
+  };
+}
+
 /** Share of a region that may lie under the other frame's unmeasured pixels before its coming or going counts as unseen. */
 const HIDDEN_SHARE = 0.25;
 /** A region this near (in pixels) to the edge of the other frame's field may have come from beyond it. */
@@ -46,8 +55,7 @@ export function overlapOf(a: FrameDomains, b: FrameDomains, atA: Placed, atB: Pl
     Math.ceil(0.5 + (s.bandSds * sdNm) / px.xNm - 1e-9),
     Math.ceil(0.5 + (s.bandSds * sdNm) / px.yNm - 1e-9),
   );
-  const shiftCols = Math.round((atB.xNm - atA.xNm) / px.xNm);
-  const shiftRows = Math.round((atB.yNm - atA.yNm) / px.yNm);
+  const { rows: shiftRows, cols: shiftCols } = pixelShift(atA, atB, px);
 
   const nb = b.regions.length + 1;
   const shared = new Map<number, { pixels: number; core: number }>();
