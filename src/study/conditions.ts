@@ -25,6 +25,17 @@ const BASE: SpecOverrides = {
   drift: { stepSdNm: 30, jumpNm: 250, limitNm: 250 },
 };
 
+/** A larger field: in a small one most domains meet the edge, and few events are left to count. */
+const FINE_STEPS: SpecOverrides = {
+  rows: 224,
+  cols: 224,
+  series: [
+    { branch: "cooling", temperaturesK: fine(160.5, 144) },
+    { branch: "warming", temperaturesK: fine(151.5, 168) },
+  ],
+  drift: { stepSdNm: 60, jumpChance: 0 },
+};
+
 export const CONDITIONS: readonly Condition[] = [
   { name: "usual", what: "walls of 100 nm, tip 30 nm, 10 nm pixels, noise 5 % of the insulating level", spec: {} },
   { name: "noisy", what: "noise 12 %", spec: { noise: { complex: 0.12, phaseRad: 0.02 } } },
@@ -82,14 +93,13 @@ export const CONDITIONS: readonly Condition[] = [
   },
   {
     name: "fine-steps",
-    what: "temperatures 1.5 K apart, drift of 60 nm between frames: domain events",
-    spec: {
-      series: [
-        { branch: "cooling", temperaturesK: fine(160.5, 144) },
-        { branch: "warming", temperaturesK: fine(151.5, 168) },
-      ],
-      drift: { stepSdNm: 60, jumpChance: 0 },
-    },
+    what: "temperatures 1.5 K apart, drift of 60 nm between frames, 224 × 224 pixels: domain events",
+    spec: FINE_STEPS,
+  },
+  {
+    name: "fine-small",
+    what: "the same with domains little larger than the walls are wide",
+    spec: { ...FINE_STEPS, domains: { scaleNm: 90 } },
   },
 ];
 

@@ -1,16 +1,19 @@
 import { mergeSpec, simulateCooldown, type CooldownSpec, type FrameTruth } from "../demo/index.js";
 import { dataOf } from "../model/raster.js";
-import { INSULATING, METALLIC, type DomainMap } from "../model/signal.js";
+import { INSULATING, METALLIC, NO_STATE, type DomainMap } from "../model/signal.js";
 
 /** What the frames of a simulated cooldown would show without noise, debris or fringe, and where they show nothing. */
 export interface EventTruth {
   /** Share of the metallic signal as the tip sees it, a frame, row-major. */
   readonly share: readonly Float32Array[];
-  /** By pixel what hides the sample: 0 nothing, 1 a particle in sight, 2 the row was not measured. */
+  /** By pixel what hides the sample: 0 nothing, or one of the two below. */
   readonly hidden: readonly Uint8Array[];
   /** How far the share must be from one half for its side to be told: `DOUBT_SDS` standard deviations of its mean over a spot of the tip. */
   readonly doubt: number;
 }
+
+export const PARTICLE = 1;
+export const NOT_MEASURED = 2;
 
 /** Two-sided 95 %. */
 const DOUBT_SDS = 2;
@@ -42,7 +45,7 @@ export function eventTruth(spec: CooldownSpec): EventTruth {
       }),
     );
     const { measured, debris } = real.frame(k).truth;
-    hidden.push(measured.map((v, p) => (v === 0 ? 2 : debris[p])));
+    hidden.push(measured.map((v, p) => (v === 0 ? NOT_MEASURED : debris[p] === 1 ? PARTICLE : 0)));
   }
   return { share, hidden, doubt: DOUBT_SDS * shareSd(spec, chordOf(quiet.frame(0).truth.levels)) };
 }
@@ -70,18 +73,22 @@ function shareSd(spec: CooldownSpec, chord: ReturnType<typeof chordOf>): number 
 }
 
 /** The map of frame k, divided half-way between the levels.
- *  @param doubtful what pixels in doubt (hidden, or too near to one half) are taken for; null: for what they are */
+ *  @param seen     the program's map of the frame, for the scars: what it gives no state although it was measured and no particle is in sight
+ *  @param doubtful what pixels in doubt (rows not measured, scars, share too near to one half) are taken for; null: for what they are */
 export function trueMap(
   t: EventTruth,
   k: number,
-  shape: Omit<DomainMap, "states">,
+  seen: DomainMap,
   doubtful: "metallic" | "insulating" | null,
 ): DomainMap {
-  const { hidden, share } = t;
+  const { rows, cols, pixel } = seen;
   const level = doubtful === null ? 0.5 : doubtful === "metallic" ? 0.5 - t.doubt : 0.5 + t.doubt;
-  const states = Uint8Array.from(share[k], (v, p) => {
-    if (doubtful !== null && hidden[k][p] === 1) return doubtful === "metallic" ? METALLIC : INSULATING;
+  const filling = doubtful === "metallic" ? METALLIC : INSULATING;
+  const states = Uint8Array.from(t.share[k], (v, p) => {
+    const hidden = t.hidden[k][p];
+    const isGap = hidden === NOT_MEASURED || (hidden === 0 && seen.states[p] === NO_STATE);
+    if (doubtful !== null && isGap) return filling;
     return v > level ? METALLIC : INSULATING;
   });
-  return { ...shape, states };
+  return { rows, cols, pixel, states };
 }

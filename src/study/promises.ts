@@ -122,20 +122,20 @@ export function promised(results: readonly Result[]): Promised[] {
   }
 
   const events = all.flatMap((s) => (s.events === null ? [] : [s.events]));
-  const fine = of("fine-steps").flatMap((s) => (s.events === null ? [] : [s.events]));
+  const fine = of("fine-steps", "fine-small").flatMap((s) => (s.events === null ? [] : [s.events]));
   const share = (a: number, b: number): string => (b > 0 ? `${pct(a / b, 0)} of ${b}` : "none");
   for (const [name, list] of [
     ["all steps of temperature", events],
     ["steps of 1.5 K", fine],
   ] as const) {
-    const [known, hit, told, right] = (["known", "found", "told", "right"] as const).map((k) =>
-      list.reduce((t, e) => t + e[k], 0),
-    );
+    const [known, hit, told, right, knownInDoubt, toldInDoubt] = (
+      ["known", "found", "told", "right", "knownUndecidable", "toldUndecidable"] as const
+    ).map((k) => list.reduce((t, e) => t + e[k], 0));
     say(
       list.length,
       `births, deaths, splits, merges, ${name}: found; right`,
       "≥ 95 %",
-      `${share(hit, known)}; ${share(right, told)}`,
+      `${share(hit, known)}, ${knownInDoubt} more undecidable; ${share(right, told)}, ${toldInDoubt} more undecidable`,
       hit >= 0.95 * known && right >= 0.95 * told,
     );
   }

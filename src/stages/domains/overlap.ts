@@ -31,7 +31,11 @@ export function placedAt(drift: Drift): Placed | null {
 }
 
 /** What to add to a pixel's row and column in frame `b` for the nearest pixel of frame `a`. */
-export function pixelShift(atA: Placed, atB: Placed, pixel: PixelSize): { readonly rows: number; readonly cols: number } {
+export function pixelShift(
+  atA: Placed,
+  atB: Placed,
+  pixel: PixelSize,
+): { readonly rows: number; readonly cols: number } {
   return {
     rows: Math.round((atB.yNm - atA.yNm) / pixel.yNm),
     cols: Math.round((atB.xNm - atA.xNm) / pixel.xNm),

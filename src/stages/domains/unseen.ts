@@ -51,12 +51,33 @@ function hangingTogether(
   keeperOf: Int32Array,
 ): Uint8Array {
   const out = new Uint8Array(of.regions.length + 1);
-  for (const whole of new Set(wholeOf)) {
-    if (whole === 0 || keeperOf[whole] === 0) continue;
+  const wholes = new Set(wholeOf);
+  wholes.delete(0);
+  if (wholes.size === 0) return out;
+  const beside = besideHidden(of);
+  for (const whole of wholes) {
+    // most cuts are far from anything hidden: no need to follow them
+    if (keeperOf[whole] === 0 || beside[keeperOf[whole]] === 0) continue;
+    if (!wholeOf.some((w, label) => w === whole && beside[label] === 1)) continue;
     const reached = reachedFrom(keeperOf[whole], of, other, shiftRows, shiftCols, whole, (label) => {
       return label !== 0 && (wholeOf[label] === whole || keptBy[label] === whole);
     });
     for (const label of reached) if (wholeOf[label] === whole) out[label] = 1;
+  }
+  return out;
+}
+
+/** By label: 1 where the region meets pixels without a state, or the edge. */
+function besideHidden(f: FrameDomains): Uint8Array {
+  const { rows, cols, states } = f.map;
+  const out = new Uint8Array(f.regions.length + 1);
+  for (let i = 0, p = 0; i < rows; i++) {
+    for (let j = 0; j < cols; j++, p++) {
+      if (i === 0 || j === 0 || i === rows - 1 || j === cols - 1) out[f.labels[p]] = 1;
+      if (states[p] !== NO_STATE) continue;
+      for (let a = Math.max(0, i - 1); a <= Math.min(rows - 1, i + 1); a++)
+        for (let b = Math.max(0, j - 1); b <= Math.min(cols - 1, j + 1); b++) out[f.labels[a * cols + b]] = 1;
+    }
   }
   return out;
 }

@@ -100,6 +100,62 @@ describe("histories", () => {
     ]);
   });
 
+  const WHOLE = ["..........", "..####....", "..####....", "..####....", "..####....", "..####....", ".........."];
+  const SPLIT = ["..........", "..####....", "..####....", "..........", "..........", "..####....", ".........."];
+  const hiding = (map: string[]): string[] => map.map((l, i) => (i === 3 || i === 4 ? "?".repeat(l.length) : l));
+
+  test("what rows not measured cut in one frame has not split, however many they are", () => {
+    expect(stories(track([WHOLE, hiding(WHOLE), WHOLE]))).toEqual(["first-frame 0,1,2 last-frame"]);
+    expect(stories(track([WHOLE, hiding(WHOLE), hiding(WHOLE), WHOLE]))).toEqual([
+      "first-frame 0,1,2,3 last-frame",
+      "border 1,2 border",
+    ]);
+    expect(stories(track([hiding(WHOLE), WHOLE]))).toEqual(["first-frame 0,1 last-frame", "first-frame 0 border"]);
+  });
+
+  test("pieces seen apart after rows not measured have split, domains seen apart before them have merged", () => {
+    expect(stories(track([WHOLE, hiding(SPLIT), SPLIT]))).toEqual([
+      "first-frame 0,1,2 last-frame",
+      "split 1,2 last-frame",
+    ]);
+    expect(stories(track([SPLIT, hiding(WHOLE), WHOLE]))).toEqual([
+      "first-frame 0,1,2 last-frame",
+      "first-frame 0,1 merged",
+    ]);
+    // with nothing seen after it, nobody knows
+    expect(stories(track([WHOLE, hiding(SPLIT)]))).toEqual(["first-frame 0,1 last-frame", "border 1 last-frame"]);
+  });
+
+  test("a cut seen beside rows not measured is a split", () => {
+    const gap = [...WHOLE, "??????????", ".........."];
+    const cut = [...SPLIT, "??????????", ".........."];
+    expect(stories(track([gap, cut, cut]))).toEqual(["first-frame 0,1,2 last-frame", "split 1,2 last-frame"]);
+    expect(stories(track([cut, gap, gap]))).toEqual(["first-frame 0,1,2 last-frame", "first-frame 0 merged"]);
+  });
+
+  test("a scar or a particle across a domain has not split it", () => {
+    const scar = ["..........", "..####....", "..####....", "..????....", "..####....", "..####....", ".........."];
+    expect(stories(track([WHOLE, scar, scar, WHOLE]))).toEqual(["first-frame 0,1,2,3 last-frame", "border 1,2 border"]);
+    // a scar inside one of two domains that merge hides nothing of that
+    const apart = ["..........", "..####....", "..?###....", "..........", "..........", "..####....", ".........."];
+    expect(stories(track([apart, WHOLE, WHOLE]))).toEqual(["first-frame 0,1,2 last-frame", "first-frame 0 merged"]);
+  });
+
+  test("domains that the field's edge cuts have not merged when the window moves on to where they join, nor split when it moves away", () => {
+    // One domain in the shape of a U, open to the left. The first window ends before its bend, the second one 30 nm further right holds it.
+    const left = ["..........", "...#######", "...#######", "..........", "..........", ".....#####", ".........."];
+    const right = ["..........", "#########.", "#########.", ".......##.", ".......##.", "..#######.", ".........."];
+    const moved = [still(0), { frame: 1, xNm: 30, yNm: 0, sdNm: 0 }];
+    expect(stories(track([left, right], moved))).toEqual(["first-frame 0,1 last-frame", "first-frame 0 border"]);
+    const back = [still(0), { frame: 1, xNm: -30, yNm: 0, sdNm: 0 }];
+    expect(stories(track([right, left], back))).toEqual(["first-frame 0,1 last-frame", "border 1 last-frame"]);
+    // the same maps with the bend inside both fields: it has grown, or gone
+    const whole = ["..........", "...######.", "...######.", "........#.", "........#.", ".....####.", ".........."];
+    const open = ["..........", "...######.", "...######.", "..........", "..........", ".....####.", ".........."];
+    expect(stories(track([open, whole]))).toEqual(["first-frame 0,1 last-frame", "first-frame 0 merged"]);
+    expect(stories(track([whole, open]))).toEqual(["first-frame 0,1 last-frame", "split 1 last-frame"]);
+  });
+
   test("the same from a source that gives frames on demand", () => {
     const maps = [TWO, JOINED, TWO, EMPTY];
     const frames = maps.map((m, k) => labelDomains(mapOf(m), k, null, s));
