@@ -58,18 +58,20 @@ export function trace(states: FrameStates, tip: Tip | null, s: WallsSettings): T
 
   // The blur and the slope under it depend on each other: begin with the tip's own blur.
   let blurNm = s.geometryBlurNm;
-  let field: Float32Array;
-  if (blurNm < 0) {
+  const fixed = blurNm >= 0;
+  if (!fixed) blurNm = tip === null ? 1.5 * step : tip.resolutionNm / FWHM_PER_SIGMA;
+  let field = blurred(blurNm);
+  for (let round = 0; round < 3 && !fixed; round++) {
+    const slope = typicalSlope(field, rows, cols, pixel);
+    if (!(slope > 0)) break;
     const most = 3 * (tip === null ? 3 * step : tip.resolutionNm);
-    blurNm = tip === null ? 1.5 * step : tip.resolutionNm / FWHM_PER_SIGMA;
-    for (let round = 0; round < 3; round++) {
-      const slope = typicalSlope(blurred(blurNm), rows, cols, pixel);
-      if (!(slope > 0)) break;
-      const power = KERNEL_POWER * noise.sd * noise.sd * noise.areaFactor * pixel.xNm * pixel.yNm;
-      blurNm = Math.min(most, (power / (16 * Math.PI * slope * slope * s.lengthExcess)) ** 0.25);
-    }
+    const power = KERNEL_POWER * noise.sd * noise.sd * noise.areaFactor * pixel.xNm * pixel.yNm;
+    const wanted = Math.min(most, (power / (16 * Math.PI * slope * slope * s.lengthExcess)) ** 0.25);
+    // a kernel nearer than this to the one wanted draws the same line
+    if (Math.abs(wanted - blurNm) <= 0.05 * blurNm) break;
+    blurNm = wanted;
+    field = blurred(blurNm);
   }
-  field = blurred(blurNm);
   const patches = keepMappedDomains(field, states.map);
 
   const walls: Wall[] = [];
