@@ -78,8 +78,9 @@ export class FringeFit {
     return this.forward.largestDeparture(this.sideReachNm).rad;
   }
 
-  /** @param free fit period and decay too; without it they stay at the candidate's, and only the two amplitudes are fitted */
-  estimate(levelSdRad: number, free: boolean, s: FringeSettings): FringeEstimate {
+  /** @param free fit period and decay too; without it they stay at the candidate's, and only the two amplitudes are fitted
+   *  @param told give them, where they are known well enough; without it they only serve the contrast */
+  estimate(levelSdRad: number, free: boolean, told: boolean, s: FringeSettings): FringeEstimate {
     const { forward, sideReachNm } = this;
     const problem = this.problem(levelSdRad, free);
     const fitted = problem.parameters;
@@ -98,7 +99,7 @@ export class FringeFit {
       offsetNm: contrast.distanceNm,
       fitted: this.curve(problem.nuisances, fit.parameters),
     };
-    if (!free || fit.status !== "converged") return nothing;
+    if (!free || !told || fit.status !== "converged") return nothing;
 
     const sdLogPeriod = Math.sqrt(fit.covariance[(NUISANCES + 2) * fitted + NUISANCES + 2]);
     const sdLogDecay = Math.sqrt(fit.covariance[(NUISANCES + 3) * fitted + NUISANCES + 3]);

@@ -103,7 +103,7 @@ export function testFringes(
     const fit = new FringeFit(profile, table, forward[best.side], chord, best, s.reachNm);
     // Where there is a fringe the frame's own levels, averaged over pixels that carry it, are off by a share of it.
     const levelSdRad = Math.hypot(better.levelSdRad, LEVEL_SHARE * fit.roughContrastRad(better.levelSdRad));
-    const { fitted, ...numbers } = fit.estimate(levelSdRad, pValue < FIT_BELOW_P && rowsKnown && enough, s);
+    const { fitted, ...numbers } = fit.estimate(levelSdRad, pValue < FIT_BELOW_P, rowsKnown && enough, s);
     return [
       {
         frame: signal.frame,

@@ -125,6 +125,29 @@ describe("fringes that are there", () => {
     },
   );
 
+  test("found where its contrast is three times the noise of a bin of the profile, whatever its shape", () => {
+    const found: boolean[] = [];
+    const shapes = [
+      [80, 80],
+      [160, 80],
+      [160, 250],
+      [240, 150],
+    ];
+    for (const [k, [periodNm, decayNm]] of [...shapes, ...shapes, ...shapes, ...shapes].entries()) {
+      const phaseRad = 2 * Math.PI * ((0.618 * k) % 1);
+      const fringe = { side: k % 2 === 0 ? "metallic" : "insulating", rad: 0.05, periodNm, decayNm, phaseRad } as const;
+      // a bin of 10 nm holds the pixels of 80 rows; beyond the wall they turn across the chord by the level's own arm
+      const arm = fringe.side === "metallic" ? 2.03 : 0.55;
+      const noiseRad = SCENE.noise / Math.sqrt(80) / arm;
+      const seen = seenContrast({ ...SCENE, fringe });
+      const rad = (fringe.rad * 3 * noiseRad) / Math.abs(seen.rad);
+      const tests = tested({ fringe: { ...fringe, rad }, seed: 700 + k, normalDeg: 37 * k }, k);
+      found.push(...tests.map((t) => t.pValue <= 0.05));
+    }
+    expect(found.length).toBeGreaterThanOrEqual(16);
+    expect(found.filter(Boolean).length).toBeGreaterThanOrEqual(0.9 * found.length);
+  });
+
   test("no period where fewer than one and a half of them are in reach", () => {
     const [t] = tested({ fringe: { ...FRINGE, periodNm: 500, decayNm: 200 }, noise: 0.02 });
     expect(t.pValue).toBeLessThan(1e-5);
