@@ -253,7 +253,9 @@ class FrameFit {
       if (estimate === null) break;
       if (round === 0 && this.dropOutliers()) estimate = this.estimate(levels) ?? estimate;
       // wide walls need their plateaux, and narrow ones no far-away pixels
-      const wanted = this.reachFor(Math.min(WIDEST * this.apparentNm, Math.max(this.apparentNm / WIDEST, estimate.apparentNm)));
+      const wanted = this.reachFor(
+        Math.min(WIDEST * this.apparentNm, Math.max(this.apparentNm / WIDEST, estimate.apparentNm)),
+      );
       if (s.reachNm > 0 || Math.abs(wanted / reach - 1) < 0.2) break;
       reach = wanted;
     }
