@@ -43,7 +43,7 @@ export interface ProfileEstimate {
   /** Smallest width that would be called resolved with this noise and tip. */
   readonly detectionNm: number | null;
   readonly apparentNm: number;
-  readonly apparentSdNm: number;
+  readonly apparentSdNm: number | null;
   /** Unscaled: data χ² over its degrees of freedom, with the measured noise. */
   readonly reducedChi2: number;
   /** sd of `reducedChi2` where the model is right. */
@@ -100,6 +100,8 @@ export function estimateWithTip(
   const naive = free[WIDTH_SQUARED * PARAMETERS + WIDTH_SQUARED];
   const dof = Math.max(1, data.count - noise.widen(data, fitter, SHAPE, free));
   const variance = free[WIDTH_SQUARED * PARAMETERS + WIDTH_SQUARED];
+  // pixels that never see the wall: what is left is rounding, of either sign
+  if (!(variance > 0)) return null;
   const q = best[WIDTH_SQUARED];
   const qSd = Math.sqrt(variance);
   const w = Math.sqrt(q);
@@ -137,7 +139,7 @@ export function estimateWithTip(
 
   // The width as seen: where the fit sits on the boundary the tip is let go, so that a wall sharper than the tip shows.
   let apparentNm: number;
-  let apparentSdNm: number;
+  let apparentSdNm: number | null;
   if (q > 0) {
     const a = apparentWidthWithSlopes(w, prior.sigmaNm);
     apparentNm = a.width;
@@ -150,7 +152,8 @@ export function estimateWithTip(
     const ok = fitter.covariance(STEP_AND_TIP, sharp);
     noise.widen(data, fitter, STEP_AND_TIP, sharp);
     apparentNm = RISE_PER_SIGMA * p[TIP_SIGMA];
-    apparentSdNm = ok ? RISE_PER_SIGMA * Math.sqrt(sharp[TIP_SIGMA * PARAMETERS + TIP_SIGMA]) : Number.NaN;
+    const sd = RISE_PER_SIGMA * Math.sqrt(sharp[TIP_SIGMA * PARAMETERS + TIP_SIGMA]);
+    apparentSdNm = ok && sd > 0 ? sd : null;
   }
   p.set(best);
   return {
@@ -236,6 +239,7 @@ export function estimateWithoutTip(
     const dof = Math.max(1, data.count - noise.widen(data, fitter, free, covariance));
     const index = isTanh ? WIDTH_SQUARED : TIP_SIGMA;
     const sd = Math.sqrt(covariance[index * PARAMETERS + index]);
+    if (!(sd > 0)) continue;
     const width = isTanh ? apparentWidth(Math.sqrt(p[WIDTH_SQUARED]), 0) : RISE_PER_SIGMA * p[TIP_SIGMA];
     const widthSd = isTanh ? (RISE_PER_W * sd) / (2 * Math.sqrt(p[WIDTH_SQUARED])) : RISE_PER_SIGMA * sd;
     const better = found === null || fitter.cost < found.chi2;

@@ -48,7 +48,7 @@ export function flagOf(
   }
   if (Math.min(below, above) < Math.max(3, PLATEAU_SHARE * offCentreNm.length)) return "plateau-not-reached";
   for (const state of ["insulating", "metallic"] as const) {
-    if (e.levelSd[state] > LEVEL_SD * around.contrast) return "plateau-not-reached";
+    if (!(e.levelSd[state] <= LEVEL_SD * around.contrast)) return "plateau-not-reached";
     const off = Math.abs(e[state] - around.frameLevels[state]);
     if (off > LEVEL_SLACK * around.contrast + 3 * e.levelSd[state]) return "plateau-not-reached";
   }
