@@ -16,8 +16,9 @@ export interface Assignment {
   readonly allows: readonly { readonly upper: boolean; readonly lower: boolean }[];
 }
 
-/** A state is allowed within this many standard deviations of what is predicted for it. */
-const ALLOWED_SIGMAS = 3;
+/** A state is allowed within this many standard deviations of what is predicted for it: the 3 of a normal law, for a scatter that is itself known from
+ *  some eight frames (Student 1908, Biometrika 6, 1). */
+const ALLOWED_SIGMAS = 4;
 /** Odds that decide between the two states. */
 const LEAST_LOG_ODDS = Math.log(100);
 /** A single-state frame this near to a state, in units of the contrast, may be that state; in between it is neither. */
