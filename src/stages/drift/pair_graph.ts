@@ -1,4 +1,12 @@
-import { choleskyInPlace, choleskyInvert, choleskySolve } from "../../numerics/cholesky.js";
+import {
+  addBlock,
+  blockPattern,
+  factorBlocks,
+  solveBlocks,
+  zeroBlocks,
+  type BlockMatrix,
+} from "../../numerics/block_factor.js";
+import { eliminationOrder, type EliminationOrder } from "../../numerics/elimination_order.js";
 import type { Sym2 } from "./score_covariance.js";
 
 /** A measured difference of two places: place(b) − place(a) = (x, y), with its covariance. */
@@ -15,9 +23,6 @@ export interface GraphSolution {
   readonly places: Float64Array;
   /** Weight that each pair ended with, 1 = full. */
   readonly weights: Float64Array;
-  /** Inverse of the (weighted) normal matrix over nodes 1 …, row-major 2(n − 1) square: the covariance of the places if the pairs' errors
-   *  are independent. */
-  readonly inverse: Float64Array;
 }
 
 /** Places of `nodes` points from differences: minimum of Σ ρ(|r| in standard deviations), ρ Huber's with the threshold `huber`
@@ -25,20 +30,31 @@ export interface GraphSolution {
  *  @returns null where it does not
  *  Source: Huber 1964, Ann. Math. Stat. 35, 73; reweighting Holland & Welsch 1977, Commun. Stat. A 6, 813. */
 export function solvePairGraph(nodes: number, pairs: readonly GraphPair[], huber: number): GraphSolution | null {
-  const n = 2 * (nodes - 1);
+  if (!connected(nodes, pairs)) return null;
   const weights = new Float64Array(pairs.length).fill(1);
   const inverses = pairs.map((p) => invert(p.covariance));
   const places = new Float64Array(2 * nodes);
-  const matrix = new Float64Array(n * n);
-  const right = new Float64Array(n);
+  const pattern = blockPattern(
+    eliminationOrder(
+      nodes - 1,
+      pairs.map((p) => freeNodes(p)),
+    ),
+  );
+  const matrix = zeroBlocks(pattern);
+  const right = new Float64Array(2 * (nodes - 1));
   for (let iteration = 0; iteration < 200; iteration++) {
-    matrix.fill(0);
+    matrix.diagonal.fill(0);
+    matrix.below.fill(0);
     right.fill(0);
-    pairs.forEach((p, k) => addPair(matrix, right, n, p, inverses[k], weights[k]));
-    if (!choleskyInPlace(matrix, n)) return null;
-    choleskySolve(matrix, n, right);
+    pairs.forEach((p, k) => {
+      addPair(matrix, pattern, p, times(weights[k], inverses[k]));
+      addRight(right, p, inverses[k], weights[k]);
+    });
+    const factor = factorBlocks(matrix, pattern);
+    if (factor === null) return null;
+    solveBlocks(factor, right);
     let moved = 0;
-    for (let q = 0; q < n; q++) {
+    for (let q = 0; q < right.length; q++) {
       moved = Math.max(moved, Math.abs(right[q] - places[q + 2]));
       places[q + 2] = right[q];
     }
@@ -51,9 +67,31 @@ export function solvePairGraph(nodes: number, pairs: readonly GraphPair[], huber
     });
     if (changed < 1e-10 || (iteration > 0 && moved === 0)) break;
   }
-  const inverse = new Float64Array(n * n);
-  choleskyInvert(matrix, n, inverse);
-  return { places, weights, inverse };
+  return { places, weights };
+}
+
+function connected(nodes: number, pairs: readonly GraphPair[]): boolean {
+  const others: number[][] = Array.from({ length: nodes }, () => []);
+  for (const { a, b } of pairs) {
+    others[a].push(b);
+    others[b].push(a);
+  }
+  const reached = new Uint8Array(nodes);
+  reached[0] = 1;
+  const list = [0];
+  for (const i of list) {
+    for (const j of others[i]) {
+      if (reached[j] === 1) continue;
+      reached[j] = 1;
+      list.push(j);
+    }
+  }
+  return list.length === nodes;
+}
+
+/** Nodes of a pair less the fixed one, counted from node 1. */
+export function freeNodes(p: GraphPair): number[] {
+  return [p.a - 1, p.b - 1].filter((i, k, both) => i >= 0 && both.indexOf(i) === k);
 }
 
 export function invert(c: Sym2): Sym2 {
@@ -68,29 +106,27 @@ function misfit(p: GraphPair, inverse: Sym2, places: Float64Array): number {
   return Math.sqrt(Math.max(0, inverse.xx * x * x + 2 * inverse.xy * x * y + inverse.yy * y * y));
 }
 
-function addPair(m: Float64Array, r: Float64Array, n: number, p: GraphPair, i: Sym2, w: number): void {
-  const a = 2 * p.a - 2;
-  const b = 2 * p.b - 2;
+/** Adds Jᵀ g J to a matrix over the nodes from 1 on, J the difference that the pair measures. */
+export function addPair(to: BlockMatrix, order: EliminationOrder, p: GraphPair, g: Sym2): void {
+  const half = [0.5 * g.xx, 0.5 * g.xy, 0.5 * g.xy, 0.5 * g.yy] as const;
+  if (p.a > 0) addBlock(to, order, p.a - 1, p.a - 1, 1, half);
+  if (p.b > 0) addBlock(to, order, p.b - 1, p.b - 1, 1, half);
+  if (p.a > 0 && p.b > 0) addBlock(to, order, p.a - 1, p.b - 1, -1, [g.xx, g.xy, g.xy, g.yy]);
+}
+
+function addRight(r: Float64Array, p: GraphPair, i: Sym2, w: number): void {
   const gx = w * (i.xx * p.x + i.xy * p.y);
   const gy = w * (i.xy * p.x + i.yy * p.y);
-  const add = (row: number, col: number, sign: number): void => {
-    m[row * n + col] += sign * w * i.xx;
-    m[row * n + col + 1] += sign * w * i.xy;
-    m[(row + 1) * n + col] += sign * w * i.xy;
-    m[(row + 1) * n + col + 1] += sign * w * i.yy;
-  };
-  if (a >= 0) {
-    add(a, a, 1);
-    r[a] -= gx;
-    r[a + 1] -= gy;
+  if (p.a > 0) {
+    r[2 * p.a - 2] -= gx;
+    r[2 * p.a - 1] -= gy;
   }
-  if (b >= 0) {
-    add(b, b, 1);
-    r[b] += gx;
-    r[b + 1] += gy;
+  if (p.b > 0) {
+    r[2 * p.b - 2] += gx;
+    r[2 * p.b - 1] += gy;
   }
-  if (a >= 0 && b >= 0) {
-    add(a, b, -1);
-    add(b, a, -1);
-  }
+}
+
+export function times(w: number, c: Sym2): Sym2 {
+  return { xx: w * c.xx, xy: w * c.xy, yy: w * c.yy };
 }

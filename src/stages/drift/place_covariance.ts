@@ -1,4 +1,7 @@
-import { invert, type GraphPair, type GraphSolution } from "./pair_graph.js";
+import { addBlock, blockPattern, factorBlocks, zeroBlocks } from "../../numerics/block_factor.js";
+import { eliminationOrder } from "../../numerics/elimination_order.js";
+import { selectedInverse } from "../../numerics/selected_inverse.js";
+import { addPair, freeNodes, invert, times, type GraphPair } from "./pair_graph.js";
 import type { Sym2 } from "./score_covariance.js";
 
 /** A pair with what its errors share with those of other pairs of the same frames. */
@@ -19,34 +22,37 @@ export type Window = readonly [number, number, number, number];
  *  The noise of one frame enters all its pairs: d_ij = p_j − p_i + e_j − e_i with e of the pixels that both saw. A graph of many pairs that treated them as
  *  independent would promise errors that fall with the number of pairs, which they do not. Two pairs (f, g), (f, h) share the pixels of f in
  *  both overlaps; with A the areas, the correlation of f's part is A∩/√(A₁A₂). The places are linear in the measured
- *  differences, p = B d, so their covariance is B Σ Bᵀ with that Σ. */
-export function placeCovariance(nodes: number, pairs: readonly NoisyPair[], solution: GraphSolution): Float64Array {
-  const n = 2 * (nodes - 1);
-  const out = new Float64Array(3 * nodes);
-  const touching: { pair: number; atA: boolean }[][] = Array.from({ length: nodes }, () => []);
+ *  differences, p = B d, so their covariance is B Σ Bᵀ with that Σ. B = K Jᵀ W C⁻¹ with K the inverse of the normal matrix, J the pairs'
+ *  differences, W their weights and C their covariances, so it is K M K with M = JᵀW C⁻¹ Σ C⁻¹W J, which ties only frames that share a partner.
+ *  Its diagonal blocks need no more of K than `selectedInverse` finds.
+ *  @param weights one a pair, from `solvePairGraph`
+ *  @returns null where the nodes do not hang together */
+export function placeCovariance(
+  nodes: number,
+  pairs: readonly NoisyPair[],
+  weights: Float64Array,
+): Float64Array | null {
+  const touching: End[][] = Array.from({ length: nodes }, () => []);
   pairs.forEach((p, k) => {
     touching[p.a].push({ pair: k, atA: true });
     touching[p.b].push({ pair: k, atA: false });
   });
-  // influence of a pair's error on each place, B_e = K (J_eᵀ w C⁻¹), 2 × 2 a node
-  const influence = pairs.map((p, k) => influenceOf(p, solution, n, solution.weights[k]));
-  const roots = pairs.map((p) => root(p.covariance));
-  const add = (node: number, u: Float64Array, c: readonly number[], v: Float64Array, factor: number): void => {
-    // u c vᵀ, symmetrised
-    const [c00, c01, c10, c11] = c;
-    const q = 4 * node;
-    const a00 = u[q] * c00 + u[q + 1] * c10;
-    const a01 = u[q] * c01 + u[q + 1] * c11;
-    const a10 = u[q + 2] * c00 + u[q + 3] * c10;
-    const a11 = u[q + 2] * c01 + u[q + 3] * c11;
-    out[3 * node] += factor * (a00 * v[q] + a01 * v[q + 1]);
-    out[3 * node + 1] += 0.5 * factor * (a00 * v[q + 2] + a01 * v[q + 3] + a10 * v[q] + a11 * v[q + 1]);
-    out[3 * node + 2] += factor * (a10 * v[q + 2] + a11 * v[q + 3]);
-  };
+  const pattern = blockPattern(
+    eliminationOrder(
+      nodes - 1,
+      touching.map((ends) => [...new Set(ends.flatMap((e) => freeNodes(pairs[e.pair])))]),
+    ),
+  );
+  const normal = zeroBlocks(pattern);
+  const m = zeroBlocks(pattern);
+  const inverses = pairs.map((p, k) => times(weights[k], invert(p.covariance)));
+  // W C⁻¹ times the root of C, so that what two pairs share is a number times one of these by the transpose of the other
+  const roots = pairs.map((p, k) => rooted(inverses[k], root(p.covariance)));
   pairs.forEach((p, k) => {
-    const c = p.covariance;
-    const own = [c.xx + p.alone, c.xy, c.xy, c.yy + p.alone];
-    for (let node = 1; node < nodes; node++) add(node, influence[k], own, influence[k], 1);
+    addPair(normal, pattern, p, inverses[k]);
+    const i = inverses[k];
+    const own = { xx: p.covariance.xx + p.alone, xy: p.covariance.xy, yy: p.covariance.yy + p.alone };
+    addPair(m, pattern, p, sandwich(i, own));
   });
   for (let f = 0; f < nodes; f++) {
     for (const e of touching[f]) {
@@ -57,35 +63,50 @@ export function placeCovariance(nodes: number, pairs: readonly NoisyPair[], solu
         const shared = sharedShare(e.atA ? p.windowA : p.windowB, g.atA ? q.windowA : q.windowB);
         const factor = 0.5 * shared * Math.sqrt(p.framed * q.framed) * (e.atA === g.atA ? 1 : -1);
         if (factor === 0) continue;
-        const r = roots[e.pair];
-        const s = roots[g.pair];
-        // L_e L_gᵀ
-        const c = [r[0] * s[0], r[0] * s[1], r[1] * s[0], r[1] * s[1] + r[2] * s[2]];
-        // the sum holds (e, g) and (g, e): twice the symmetrised product
-        for (let node = 1; node < nodes; node++) add(node, influence[e.pair], c, influence[g.pair], 2 * factor);
+        const [r, s] = [roots[e.pair], roots[g.pair]];
+        const x = [
+          factor * (r[0] * s[0] + r[1] * s[1]),
+          factor * (r[0] * s[2] + r[1] * s[3]),
+          factor * (r[2] * s[0] + r[3] * s[1]),
+          factor * (r[2] * s[2] + r[3] * s[3]),
+        ] as const;
+        // pair p takes −1 of its a and +1 of its b, q likewise
+        if (p.a > 0 && q.a > 0) addBlock(m, pattern, p.a - 1, q.a - 1, 1, x);
+        if (p.a > 0 && q.b > 0) addBlock(m, pattern, p.a - 1, q.b - 1, -1, x);
+        if (p.b > 0 && q.a > 0) addBlock(m, pattern, p.b - 1, q.a - 1, -1, x);
+        if (p.b > 0 && q.b > 0) addBlock(m, pattern, p.b - 1, q.b - 1, 1, x);
       }
     }
+  }
+  const factor = factorBlocks(normal, pattern);
+  if (factor === null) return null;
+  const { product } = selectedInverse(factor, m);
+  const out = new Float64Array(3 * nodes);
+  for (let i = 1; i < nodes; i++) {
+    const at = 4 * (i - 1);
+    out.set([product[at], 0.5 * (product[at + 1] + product[at + 2]), product[at + 3]], 3 * i);
   }
   return out;
 }
 
-function influenceOf(p: GraphPair, solution: GraphSolution, n: number, weight: number): Float64Array {
-  const k = solution.inverse;
-  const i = invert(p.covariance);
-  const nodes = n / 2 + 1;
-  const out = new Float64Array(4 * nodes);
-  const a = 2 * p.a - 2;
-  const b = 2 * p.b - 2;
-  for (let node = 1; node < nodes; node++) {
-    for (let axis = 0; axis < 2; axis++) {
-      const row = (2 * node - 2 + axis) * n;
-      const kx = (b >= 0 ? k[row + b] : 0) - (a >= 0 ? k[row + a] : 0);
-      const ky = (b >= 0 ? k[row + b + 1] : 0) - (a >= 0 ? k[row + a + 1] : 0);
-      out[4 * node + 2 * axis] = weight * (kx * i.xx + ky * i.xy);
-      out[4 * node + 2 * axis + 1] = weight * (kx * i.xy + ky * i.yy);
-    }
-  }
-  return out;
+/** One of the two ends of a pair. */
+interface End {
+  readonly pair: number;
+  readonly atA: boolean;
+}
+
+/** i c i. */
+function sandwich(i: Sym2, c: Sym2): Sym2 {
+  const a00 = i.xx * c.xx + i.xy * c.xy;
+  const a01 = i.xx * c.xy + i.xy * c.yy;
+  const a10 = i.xy * c.xx + i.yy * c.xy;
+  const a11 = i.xy * c.xy + i.yy * c.yy;
+  return { xx: a00 * i.xx + a01 * i.xy, xy: a00 * i.xy + a01 * i.yy, yy: a10 * i.xy + a11 * i.yy };
+}
+
+/** i times the lower triangle r, row-major. */
+function rooted(i: Sym2, r: readonly [number, number, number]): readonly [number, number, number, number] {
+  return [i.xx * r[0] + i.xy * r[1], i.xy * r[2], i.xy * r[0] + i.yy * r[1], i.yy * r[2]];
 }
 
 /** Lower Cholesky factor of a 2 × 2 covariance: l00, l10, l11. */

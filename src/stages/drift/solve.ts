@@ -123,7 +123,8 @@ function place(
   });
   const solution = solvePairGraph(members.length, own, s.huber);
   if (solution === null) return null;
-  const covariance = placeCovariance(members.length, own, solution);
+  const covariance = placeCovariance(members.length, own, solution.weights);
+  if (covariance === null) return null;
   return members.map((_, k) => ({
     x: solution.places[2 * k],
     y: solution.places[2 * k + 1],
