@@ -1,6 +1,7 @@
 import { expect, test } from "vitest";
 import { closuresOf } from "../../src/stages/drift/closures.js";
 import { solvePairGraph, type GraphPair } from "../../src/stages/drift/pair_graph.js";
+import { placeCovariance } from "../../src/stages/drift/place_covariance.js";
 import { fixture } from "./fixture.js";
 
 interface PairGraph {
@@ -43,11 +44,14 @@ test.each([
     graph.without_the_bad_pair_sd,
   ],
 ] as const)("%s: places and standard deviations to 1e-9", (_, from, places, sds) => {
-  const { places: found, inverse } = solved(from, Number.POSITIVE_INFINITY);
+  const { places: found, weights } = solved(from, Number.POSITIVE_INFINITY);
+  const nowhere = [0, 0, 0, 0] as const;
+  const independent = from.map((p) => ({ ...p, alone: 0, framed: 0, windowA: nowhere, windowB: nowhere }));
+  const covariance = placeCovariance(6, independent, weights);
   places.forEach(([y, x], k) => {
     expect(found[2 * k]).toBeCloseTo(x, 9);
     expect(found[2 * k + 1]).toBeCloseTo(y, 9);
-    if (k > 0) expect(Math.sqrt(inverse[(2 * k - 2) * 10 + 2 * k - 2])).toBeCloseTo(sds[k], 9);
+    if (k > 0) expect(Math.sqrt(covariance?.[3 * k] ?? Number.NaN)).toBeCloseTo(sds[k], 9);
   });
 });
 

@@ -6,10 +6,20 @@ interface Approximate {
   readonly yNm: number | null;
 }
 
+/** A cooldown of more frames than this is taken in stretches of about as many. */
+const STRETCH = 128;
+/** No more than one frame in so many ties a stretch to others. */
+const LEAST_STEP = 4;
+
 /** Which pairs of frames to measure, [reference, moving], reference < moving, each once.
  *  First round (`approx` null): neighbours in order, hops over one and three frames, every frame to the first one, and each frame of a later series to the
  *  frame nearest in temperature of an earlier one. Second round: with the rough positions, for each frame the nearest among partners
  *  spread over the whole cooldown. The number of pairs grows as the number of frames.
+ *
+ *  A frame that had a pair with each of 2,000 others would tie all their errors together, and partners all over a long cooldown would leave no part of it
+ *  that can be solved before the rest: so above 128 frames it is taken in equal stretches, each frame has its pair with the first one of its
+ *  stretch and its partners within it, and the stretches hang together by neighbours and by every so many-th frame, which has its pairs with the
+ *  first frame of all and with the one nearest in temperature.
  *  @param approx positions from the first round, null (or null numbers) for a frame not placed: it is tried against others once more */
 export function choosePairs(
   frames: readonly FrameInfo[],
@@ -18,29 +28,46 @@ export function choosePairs(
 ): [number, number][] {
   const pairs = new PairList();
   const n = frames.length;
+  const stretches = stretchesOf(n);
+  // every so many-th frame of a stretch is tied to other stretches, in all at most as many as a stretch has frames
+  const every = stretches.length === 1 ? 1 : Math.max(LEAST_STEP, Math.ceil(n / STRETCH));
   if (approx === null) {
-    for (let i = 0; i < n; i++) {
-      for (const hop of [1, 2, 4]) if (i + hop < n) pairs.add(i, i + hop);
-      if (i > 0) pairs.add(0, i);
-      const across = nearestInEarlierSeries(frames, i);
-      if (across !== null) pairs.add(across, i);
+    for (const { from, length } of stretches) {
+      for (let i = from; i < from + length; i++) {
+        for (const hop of [1, 2, 4]) if (i + hop < n) pairs.add(i, i + hop);
+        pairs.add(from, i);
+        if ((i - from) % every !== 0) continue;
+        pairs.add(0, i);
+        const across = nearestInEarlierSeries(frames, i);
+        if (across !== null) pairs.add(across, i);
+      }
     }
     return pairs.list;
   }
   const perFrame = Math.max(1, Math.round(s.pairsPerFrame) - 5);
-  for (let i = 0; i < n; i++) {
-    // partners at evenly spread places of the cooldown, a different set for each frame
-    const spread = Array.from(
-      { length: 3 * perFrame },
-      (_, k) => (i + Math.round(((k + 0.5) * n) / (3 * perFrame))) % n,
-    );
-    const ranked = spread
-      .filter((j) => j !== i && !pairs.has(i, j))
-      .map((j) => ({ j, apart: distance(approx[i], approx[j]) }))
-      .sort((p, q) => p.apart - q.apart || p.j - q.j);
-    for (const { j } of ranked.slice(0, perFrame)) pairs.add(i, j);
+  for (const { from, length } of stretches) {
+    for (let i = from; i < from + length; i++) {
+      // partners at evenly spread places of the stretch, a different set for each frame
+      const spread = Array.from(
+        { length: 3 * perFrame },
+        (_, k) => from + ((i - from + Math.round(((k + 0.5) * length) / (3 * perFrame))) % length),
+      );
+      const ranked = spread
+        .filter((j) => j !== i && !pairs.has(i, j))
+        .map((j) => ({ j, apart: distance(approx[i], approx[j]) }))
+        .sort((p, q) => p.apart - q.apart || p.j - q.j);
+      for (const { j } of ranked.slice(0, perFrame)) pairs.add(i, j);
+    }
   }
   return pairs.list;
+}
+
+function stretchesOf(n: number): { from: number; length: number }[] {
+  const count = Math.ceil(n / STRETCH);
+  return Array.from({ length: count }, (_, k) => {
+    const from = Math.floor((k * n) / count);
+    return { from, length: Math.floor(((k + 1) * n) / count) - from };
+  });
 }
 
 class PairList {

@@ -86,6 +86,26 @@ describe("choosing pairs", () => {
     }
   });
 
+  test("a long cooldown: as many pairs as frames, none left out, and no frame is tied to more than two stretches' worth of others", () => {
+    const n = 700;
+    const places = walk(n).map(([xNm, yNm]) => ({ xNm, yNm }));
+    const all = [...choosePairs(infos(n), null, s), ...choosePairs(infos(n), places, s)];
+    const known = new Set(all.map(String));
+    expect(known.size).toBeLessThanOrEqual(s.pairsPerFrame * n);
+    const partners = new Int32Array(n);
+    for (const key of known) for (const i of key.split(",")) partners[Number(i)]++;
+    expect(Math.min(...partners)).toBeGreaterThanOrEqual(4);
+    expect(Math.max(...partners)).toBeLessThan(256 + 32);
+    // every stretch has several frames tied to the first one
+    for (let from = 0; from < n; from += 128) {
+      const tied = [...known].filter((key) => {
+        const [a, b] = key.split(",").map(Number);
+        return a === 0 && b >= from && b < from + 128;
+      });
+      expect(tied.length).toBeGreaterThanOrEqual(8);
+    }
+  });
+
   test("a branch is tied to the frames of the other that are nearest in temperature", () => {
     const pairs = choosePairs(infos(24), null, s).map(String);
     expect(pairs).toContain("8,15");
