@@ -11,6 +11,7 @@ import type { RowOffsets } from "./row_model.js";
 import { type Scars, findScars } from "./scars.js";
 import type { CleanSettings } from "./settings.js";
 import { turnToMean, wrapAll } from "./turn.js";
+import { leaveOutWild } from "./wild.js";
 
 /** What cleaning found in one frame. Plain data; null where the channel is missing. */
 export interface CleanReport {
@@ -46,7 +47,19 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
   const notices: Notice[] = [];
   const notice = (code: string, message: string): void => void notices.push({ frame: raw.frame, code, message });
 
-  const amplitude = finiteCopy(raw.amplitude);
+  /** A copy of a channel without what cannot be a measured value, which is said. */
+  const sane = (raster: Raster, channel: "amplitude" | "topography"): Float32Array => {
+    const values = finiteCopy(raster);
+    const { pixels, farthest } = leaveOutWild(values, channel);
+    if (pixels > 0) {
+      notice(
+        "wild-pixels",
+        `${channel}: ${pixels} ${pixels === 1 ? "pixel" : "pixels"} far outside the values of all others (${farthest.toPrecision(3)}) ${pixels === 1 ? "counts" : "count"} as not measured`,
+      );
+    }
+    return values;
+  };
+  const amplitude = sane(raw.amplitude, "amplitude");
   const unmeasured = countUnmeasured(amplitude, rows, cols);
   const clipped = clippedShare(endsOf(amplitude));
   if (clipped > 0.001) {
@@ -57,7 +70,10 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
   }
   if (unmeasured.pixels === rows * cols) notice("empty-frame", "amplitude: no pixel was measured");
 
-  const topography = raw.topography === null ? null : cleanTopography(raw.topography, raw.retraceNoise?.topography, s);
+  const topography =
+    raw.topography === null
+      ? null
+      : cleanTopography(sane(raw.topography, "topography"), rows, cols, raw.retraceNoise?.topography, s);
   const phase = raw.phase === null ? null : wrapAll(finiteCopy(raw.phase));
   const signal = cleanSignal(amplitude, phase, rows, cols, raw.retraceNoise ?? {}, s);
 
@@ -108,13 +124,12 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
 }
 
 function cleanTopography(
-  raster: Raster,
+  values: Float32Array,
+  rows: number,
+  cols: number,
   retraceNoise: number | undefined,
   s: CleanSettings,
 ): { values: Float32Array; scarPixels: number; scarRuns: number; rowSdNm: number; noise: NoiseByLevel } {
-  const rows = rowsOf(raster);
-  const cols = colsOf(raster);
-  const values = finiteCopy(raster);
   levelSurface(values, rows, cols, s.levelDegree);
   const differences = measureNoise(values, null, rows, cols);
   const noise = scaledBy(differences, retraceNoise, differences.sd);
