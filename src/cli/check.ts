@@ -1,10 +1,10 @@
 import type { Notice } from "../model/cooldown.js";
 import { InputError, type Problem } from "../model/errors.js";
-import { countOf, plainText } from "../model/text.js";
+import { countOf } from "../model/text.js";
 import { describeCooldown, inspectFrame, loadFrame, sizeProblems, surveyCooldown } from "../input/index.js";
 import { command } from "./called.js";
+import { noticeLines } from "./notice_lines.js";
 import { print, say } from "./say.js";
-import { noticeWord } from "./summary.js";
 
 interface CheckOptions {
   readonly allowOutside?: boolean;
@@ -27,11 +27,11 @@ export async function check(yaml: readonly string[], o: CheckOptions): Promise<v
       problems.push(...e.problems);
     }
   }
-  for (const n of notices)
-    say(`${noticeWord(n.code)}: ${n.frame === null ? "" : `frame ${n.frame}: `}${plainText(n.message)}`);
+  const remarks = noticeLines(notices);
+  for (const line of remarks) say(line);
   if (problems.length > 0) throw new InputError(problems);
   print(
-    `ready: ${countOf(frames.length, "frame")} read, ${notices.length === 0 ? "nothing to remark" : countOf(notices.length, "remark")}\n`,
+    `ready: ${countOf(frames.length, "frame")} read, ${remarks.length === 0 ? "nothing to remark" : countOf(remarks.length, "remark")}\n`,
   );
   print(`next: ${command("ingest", ...yaml, "--db", "FILE.sqlite")}\n`);
 }

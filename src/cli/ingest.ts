@@ -32,11 +32,17 @@ export interface IngestOptions {
   readonly cacheMb?: string;
 }
 
+/** NaN also where nothing is written: `Number("")` is 0. */
+const numberIn = (text: string): number => (text.trim() === "" ? Number.NaN : Number(text));
+
 export function workerCount(text: string | undefined): number {
   if (text === undefined) return Math.max(1, os.availableParallelism());
-  const n = Number(text);
+  const n = numberIn(text);
   if (!Number.isInteger(n) || n < 0 || n > 256)
-    throw new UsageError(`--workers ${text}: expected a whole number from 0 to 256`, "leave it out to use every core");
+    throw new UsageError(
+      `--workers ${text.trim() === "" ? '""' : text}: expected a whole number from 0 to 256`,
+      "leave it out to use every core",
+    );
   return n;
 }
 
@@ -46,10 +52,10 @@ const CACHE_MB = 2000;
 /** The cache that the command line asks for; undefined: none. */
 export function cacheOption(o: IngestOptions): { folder: string; limitBytes: number } | undefined {
   if (o.cache === false) return undefined;
-  const mb = o.cacheMb === undefined ? CACHE_MB : Number(o.cacheMb);
+  const mb = o.cacheMb === undefined ? CACHE_MB : numberIn(o.cacheMb);
   if (!(mb >= 0 && mb <= 1e9))
     throw new UsageError(
-      `--cache-mb ${String(o.cacheMb)}: expected a number of megabytes`,
+      `--cache-mb ${o.cacheMb?.trim() === "" ? '""' : String(o.cacheMb)}: expected a number of megabytes`,
       `leave it out for ${CACHE_MB}, or use --no-cache`,
     );
   return { folder: cacheFolderOf(o.db), limitBytes: mb * 1e6 };
@@ -63,6 +69,8 @@ export async function runAnalysis(
     readonly workers: number;
     readonly signal: AbortSignal;
     readonly cache: ReturnType<typeof cacheOption>;
+    /** Called where the cache could not be used as it should, after that was said. */
+    readonly onCacheTrouble?: () => void;
   },
 ): Promise<Analysis> {
   // Loaded only now: a repeated ingest needs none of the numerics.
@@ -73,7 +81,10 @@ export async function runAnalysis(
       ...o,
       programVersion: programVersion(),
       onProgress: (stage, done, total) => progress.update(stage, done, total),
-      onCacheTrouble: (trouble) => say(`note: cache: ${plainText(trouble)}`),
+      onCacheTrouble: (trouble) => {
+        say(`note: cache: ${plainText(trouble)}`);
+        o.onCacheTrouble?.();
+      },
     });
   } finally {
     progress.stop();
@@ -122,7 +133,9 @@ export async function ingest(yaml: string | readonly string[], o: IngestOptions)
       say(
         `${plainText(cooldown.cooldown)}: ${countOf(known, "frame")} known, ${cooldown.frames.length - known} new; the whole is analysed`,
       );
-    const analysis = await runAnalysis(cooldown, { settings, workers, signal: abort.signal, cache });
+    let kept = cache !== undefined;
+    const onCacheTrouble = (): void => void (kept = false);
+    const analysis = await runAnalysis(cooldown, { settings, workers, signal: abort.signal, cache, onCacheTrouble });
     abort.signal.throwIfAborted();
     await refuseChangedSources(cooldown);
     const saved = saveWithRoom(db, analysis, cache?.folder);
@@ -132,7 +145,7 @@ export async function ingest(yaml: string | readonly string[], o: IngestOptions)
     );
     print(loopText(analysis));
     sayNotices(analysis.notices);
-    const held = cache === undefined ? 0 : cacheSize(cache.folder).bytes;
+    const held = cache === undefined || !kept ? 0 : cacheSize(cache.folder).bytes;
     if (held > 0)
       say(
         `cache: ${(held / 1e6).toFixed(0)} MB beside the database speed up the next ingest; they may be deleted at any time`,

@@ -1,10 +1,8 @@
 import type { Analysis } from "../model/analysis.js";
-import { WARNINGS, type Notice } from "../model/cooldown.js";
-import { countOf, plainText } from "../model/text.js";
+import type { Notice } from "../model/cooldown.js";
+import { countOf } from "../model/text.js";
+import { noticeLines } from "./notice_lines.js";
 import { say } from "./say.js";
-
-/** How a notice is announced. */
-export const noticeWord = (code: string): string => (WARNINGS.has(code) ? "warning" : "note");
 
 export const fixed = (v: number | null, digits: number): string => (v === null ? "–" : v.toFixed(digits));
 
@@ -75,18 +73,7 @@ function placedText(placed: number, frames: number): string {
   return `${placed} of ${frames} placed`;
 }
 
-/** Everything skipped, excluded or doubtful: counted by kind, each said once with its frames. */
+/** Everything skipped, excluded or doubtful, each remark said once with its frames. */
 export function sayNotices(notices: readonly Notice[]): void {
-  const byText = new Map<string, { code: string; frames: number[] }>();
-  for (const n of notices) {
-    const known = byText.get(n.message);
-    if (known !== undefined) {
-      if (n.frame !== null) known.frames.push(n.frame);
-    } else byText.set(n.message, { code: n.code, frames: n.frame === null ? [] : [n.frame] });
-  }
-  for (const [message, { code, frames }] of byText) {
-    const at =
-      frames.length === 0 ? "" : frames.length === 1 ? `frame ${frames[0]}: ` : `frames ${frames.join(", ")}: `;
-    say(`${noticeWord(code)}: ${at}${plainText(message)}`);
-  }
+  for (const line of noticeLines(notices)) say(line);
 }

@@ -27,8 +27,8 @@ export function inspectFrame(raw: RawFrame, info?: FrameInfo): Notice[] {
     const raster = raw[channel];
     const source = info?.sources[channel];
     const label = source === undefined ? `frame ${raw.frame}` : plainText(source.label);
-    const notice = ({ code, message }: Oddity): void => {
-      notices.push({ frame: raw.frame, code, message: `${channel} (${label}): ${message}` });
+    const notice = ({ code, message, varies = [] }: Oddity): void => {
+      notices.push({ frame, code, message: `${channel} (${label}): ${message}`, varies: [label, ...varies] });
     };
     if (raster === null) {
       if (source !== undefined) {
@@ -37,7 +37,7 @@ export function inspectFrame(raw: RawFrame, info?: FrameInfo): Notice[] {
       continue;
     }
     const range = rangeOf(raster);
-    const problem = unusable(channel, range);
+    const problem = unusable(channel, range, frame);
     if (problem !== null) problems.push({ at: label, ...problem });
     else oddities(channel, raster, range).forEach(notice);
   }
@@ -60,14 +60,18 @@ function rangeOf(raster: Raster): Range {
   return { ...ends, pixels: data.length, negative };
 }
 
-function unusable(channel: ChannelName, r: Range): Omit<Problem, "at"> | null {
+/** How the description leaves a whole frame out. */
+const leavingOut = (frame: number, reason: string): string =>
+  `leave this frame out with \`- { frame: ${frame}, reason: ${reason} }\` under \`exclude:\` in the YAML file (of several files: with its number in its own, from 0), or give its image`;
+
+function unusable(channel: ChannelName, r: Range, frame: number): Omit<Problem, "at"> | null {
   if (r.infinite > 0) {
     const problem = `${channel} with ${countOf(r.infinite, "value")} of ${r.pixels} that ${r.infinite === 1 ? "is" : "are"} infinite in single precision, which ends at 3.4e38`;
     return { problem, fix: "write pixels that were not measured as not-a-number, and large values in a larger unit" };
   }
   if (channel !== "amplitude") return null;
   if (r.measured === 0) {
-    return { problem: "amplitude without a single measured pixel", fix: "leave this frame out, or give its image" };
+    return { problem: "amplitude without a single measured pixel", fix: leavingOut(frame, "nothing measured") };
   }
   if (r.negative > 0.9 * r.measured) {
     const problem = `amplitude below zero in ${percent(r.negative / r.measured)} of its pixels, and an amplitude has no sign`;
@@ -78,7 +82,7 @@ function unusable(channel: ChannelName, r: Range): Omit<Problem, "at"> | null {
   }
   if (r.low.value === r.high.value) {
     const problem = `amplitude with one value, ${r.low.value}, in all ${r.measured} measured pixels`;
-    return { problem, fix: "leave this frame out, or give its image" };
+    return { problem, fix: leavingOut(frame, "one single value") };
   }
   return null;
 }
@@ -100,22 +104,26 @@ function oddities(channel: ChannelName, raster: Raster, r: Range): Oddity[] {
       out.push({
         code: "clipped-channel",
         message: `${share} of the pixels have the ${word} value ${end.value}: clipped?`,
+        varies: [share, String(end.value)],
       });
     }
   }
   const span = r.high.value - r.low.value;
+  const spanText = span.toPrecision(3);
   if (channel === "amplitude" && r.negative > 0) {
     const swapped = r.negative > 0.05 * r.measured ? "; is it the amplitude?" : "";
+    const share = percent(r.negative / r.measured);
     out.push({
       code: "negative-amplitude",
-      message: `${percent(r.negative / r.measured)} of the pixels lie below zero${swapped}`,
+      message: `${share} of the pixels lie below zero${swapped}`,
+      varies: [share],
     });
   }
   if (channel === "phase" && span > 8 * Math.PI && wideShare(raster, 4 * Math.PI) > 0.02) {
-    out.push({ code: "phase-unit", message: `spans ${span.toPrecision(3)} rad: is the file in degrees?` });
+    out.push({ code: "phase-unit", message: `spans ${spanText} rad: is the file in degrees?`, varies: [spanText] });
   }
   if (channel === "topography" && (span > 20_000 || span < 0.05)) {
-    out.push({ code: "topography-unit", message: `spans ${span.toPrecision(3)} nm: is its unit right?` });
+    out.push({ code: "topography-unit", message: `spans ${spanText} nm: is its unit right?`, varies: [spanText] });
   }
   return out;
 }

@@ -31,8 +31,10 @@ export async function loadFrame(cooldown: Pick<Cooldown, "pixel">, info: FrameIn
       const joined = joinRetrace(data, await read(s.retrace, s.scale), info.cols, channel === "phase");
       if (joined.noiseSd !== null) retraceNoise[channel] = joined.noiseSd;
       if (joined.disagreement !== null) {
-        const message = `${channel} (${plainText(s.label)}): ${joined.disagreement}`;
-        notices.push({ frame: info.frame, code: "retrace-differs", message });
+        const label = plainText(s.label);
+        const message = `${channel} (${label}): ${joined.disagreement}`;
+        const varies = [label, ...(joined.disagreement.match(/-?\d+(?:\.\d+)?/g) ?? [])];
+        notices.push({ frame: info.frame, code: "retrace-differs", message, varies });
       }
     }
     leaveOut(data, info, cooldown.pixel);

@@ -1,7 +1,7 @@
 import type { Notice, RawFrame } from "../model/cooldown.js";
 import { colsOf, dataOf, type Raster } from "../model/raster.js";
 
-export type Oddity = Pick<Notice, "code" | "message">;
+export type Oddity = Pick<Notice, "code" | "message" | "varies">;
 
 /** In a frame with both states the phase follows the amplitude, the topography hardly does. */
 const FOLLOWS = 0.8;
@@ -24,9 +24,11 @@ export function swappedChannels({ topography, amplitude, phase }: RawFrame): Odd
   if (phase === null) return null;
   const [t, p] = [correlation(topography, amplitude), correlation(phase, amplitude)];
   if (Math.abs(t) < FOLLOWS || Math.abs(t) - Math.abs(p) < LESS) return null;
+  const varies = [t.toFixed(2), p.toFixed(2)];
   return {
     code: "swapped-channels",
-    message: `the topography follows the amplitude (correlation ${t.toFixed(2)}) as a phase would, the phase does not (${p.toFixed(2)}): are the two swapped?`,
+    message: `the topography follows the amplitude (correlation ${varies[0]}) as a phase would, the phase does not (${varies[1]}): are the two swapped?`,
+    varies,
   };
 }
 

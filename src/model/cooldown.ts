@@ -89,6 +89,8 @@ export interface Notice {
   /** Short code, kebab-case: `drift-failed`, `clipped-channel`. */
   readonly code: string;
   readonly message: string;
+  /** Parts of the message, in their order there, in which the same remark on another frame may differ: names of files, numbers. */
+  readonly varies?: readonly string[];
 }
 
 /** Codes of the notices that ask the user to look at the input again: what comes of it as it stands is most likely not what was meant. */

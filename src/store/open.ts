@@ -3,7 +3,7 @@ import { closeSync, existsSync, openSync, readFileSync, readSync, statSync } fro
 import path from "node:path";
 import { InputError } from "../model/errors.js";
 import { APPLICATION_ID, migrate, newestVersion, schemaVersion } from "./migrate.js";
-import { databaseProblem, inWords, notSound } from "./problem.js";
+import { databaseProblem, inWords, noDatabase, notSound } from "./problem.js";
 import { removeUnfilled } from "./unfilled.js";
 
 export type Db = Database.Database;
@@ -47,12 +47,7 @@ export function openUntouched(file: string): Db {
 /** A connection that may write, though it never does, takes the log and its lock files away when it is the last to close; one that
  *  may not leaves them lying, and a copy of the file alone would then miss what is in the log. */
 function open(file: string, readonly: boolean): Db {
-  if (!existsSync(file))
-    throw new InputError({
-      at: file,
-      problem: "no such database",
-      fix: "make one with `coldseam ingest COOLDOWN.yaml --db FILE`",
-    });
+  if (!existsSync(file)) throw noDatabase(file);
   look(file);
   try {
     const db = new Database(file, { readonly, fileMustExist: true, timeout: PATIENCE_MS });

@@ -45,6 +45,14 @@ export function databaseProblem(file: string, e: unknown): InputError | null {
   return null;
 }
 
+/** There is no such file. */
+export const noDatabase = (file: string): InputError =>
+  new InputError({
+    at: file,
+    problem: "no such database",
+    fix: "make one with `coldseam ingest COOLDOWN.yaml --db FILE`",
+  });
+
 export function notSound(file: string, said: string, cause?: unknown): InputError {
   return new InputError(
     {

@@ -1,7 +1,19 @@
-import { lstatSync, mkdirSync, readFileSync, readdirSync, rmSync, rmdirSync, statfsSync, writeFileSync } from "node:fs";
+import {
+  accessSync,
+  constants,
+  lstatSync,
+  mkdirSync,
+  readFileSync,
+  readdirSync,
+  rmSync,
+  rmdirSync,
+  statfsSync,
+  writeFileSync,
+} from "node:fs";
 import path from "node:path";
 import { codeDigest } from "./code_digest.js";
 import { ENTRY_NAME, isOurs, PART_NAME } from "./cache_entry.js";
+import { notKept, reasonOf } from "./cache_words.js";
 
 /** How a run uses a cache folder. Plain data: it travels to the threads. */
 export interface CacheUse {
@@ -34,7 +46,8 @@ export interface OpenedCache {
   readonly trouble: string | null;
 }
 
-const why = (e: unknown): string => (e instanceof Error ? e.message : String(e));
+/** Whole megabytes that are enough for so many bytes. */
+const megabytes = (bytes: number): string => `${Math.ceil(bytes / 1e6)} MB`;
 
 /** Makes the folder where there is none and something may be kept, and decides what may be kept. Never throws: a cache that cannot be used is done without.
  *  @param limitBytes what the whole folder may hold
@@ -49,15 +62,27 @@ export function openCache(
     if (there !== undefined && !there.isDirectory())
       return { use: null, trouble: `${folder} is no folder; it is left alone, and nothing is kept` };
     const rasters = expected.rasters + expected.small <= limitBytes;
+    if (there !== undefined) {
+      try {
+        accessSync(folder, constants.R_OK | constants.W_OK | constants.X_OK);
+      } catch (e) {
+        // What can still be read is used.
+        return {
+          use: { folder, code: codeDigest(), write: false, rasters },
+          trouble: notKept("nothing", folder, e),
+        };
+      }
+    }
     const wanted = expected.small + (rasters ? expected.rasters : 0);
     const disk = statfsSync(there === undefined ? path.dirname(folder) : folder);
+    const needs = `this cooldown needs about ${megabytes(expected.small)}, ${megabytes(expected.small + expected.rasters)} with its full-size rasters`;
     const short =
       wanted > limitBytes
-        ? "the limit"
+        ? `the limit is too small: ${needs}, and --cache-mb allows ${limitBytes / 1e6}`
         : disk.bavail * disk.bsize < wanted + SPARE_BYTES
-          ? "the space left on its disk"
+          ? `the space left on its disk is too small: ${needs}, and ${megabytes(SPARE_BYTES)} stay free`
           : null;
-    const trouble = short === null ? null : `nothing is added: ${short} is too small`;
+    const trouble = short === null ? null : `nothing is added, as ${short}`;
     if (there === undefined) {
       if (short !== null) return { use: null, trouble };
       mkdirSync(folder);
@@ -65,7 +90,7 @@ export function openCache(
     }
     return { use: { folder, code: codeDigest(), write: short === null, rasters }, trouble };
   } catch (e) {
-    return { use: null, trouble: `${folder} cannot be used (${why(e)}); nothing is kept` };
+    return { use: null, trouble: notKept("nothing", folder, e) };
   }
 }
 
@@ -74,76 +99,135 @@ export interface CacheSize {
   readonly bytes: number;
 }
 
-interface Found extends CacheSize {
-  readonly list: readonly { readonly name: string; readonly bytes: number; readonly usedMs: number }[];
+/** What a cache holds, as far as it could be looked into. */
+export interface CacheLook extends CacheSize {
+  /** Why it could not be read, or not all of it; null where it could. */
+  readonly trouble: string | null;
 }
 
-function look(folder: string, now: number): Found {
-  const list: { name: string; bytes: number; usedMs: number }[] = [];
-  for (const name of namesIn(folder)) {
-    const part = PART_NAME.test(name);
-    if (!part && !ENTRY_NAME.test(name)) continue;
-    const s = lstatSync(path.join(folder, name), { throwIfNoEntry: false });
-    if (s === undefined || !s.isFile()) continue;
-    if (part && now - s.mtimeMs < ABANDONED_MS) continue;
-    list.push({ name, bytes: s.size, usedMs: part ? 0 : s.mtimeMs });
-  }
-  return { list, entries: list.length, bytes: list.reduce((sum, e) => sum + e.bytes, 0) };
+/** What was removed of a cache. */
+export interface Cleared extends CacheSize {
+  /** What is ours and could not be removed. */
+  readonly left: CacheSize;
+  /** Why the folder could not be read, or something not be removed; null where all went well. */
+  readonly trouble: string | null;
+  /** Files of others, which stay. */
+  readonly others: number;
 }
 
-/** Names in the folder; none where it is a link, no folder, or cannot be read. */
-function namesIn(folder: string): string[] {
+interface Entry {
+  readonly name: string;
+  readonly bytes: number;
+  readonly usedMs: number;
+}
+
+const sizeOf = (list: readonly Entry[]): CacheSize => ({
+  entries: list.length,
+  bytes: list.reduce((sum, e) => sum + e.bytes, 0),
+});
+
+/** Everything that may be removed, and nothing else: what is counted and what is deleted is one list. */
+function look(folder: string, now: number): { readonly list: readonly Entry[]; readonly error: unknown } {
+  const list: Entry[] = [];
+  let error: unknown = null;
   try {
-    return lstatSync(folder).isDirectory() ? readdirSync(folder) : [];
+    const tagged = isTagged(folder);
+    for (const name of namesIn(folder)) {
+      const part = PART_NAME.test(name);
+      if (!part && !ENTRY_NAME.test(name)) continue;
+      try {
+        const s = lstatSync(path.join(folder, name), { throwIfNoEntry: false });
+        if (s === undefined || !s.isFile()) continue;
+        if (part && now - s.mtimeMs < ABANDONED_MS) continue;
+        if (mayRemove(path.join(folder, name), tagged))
+          list.push({ name, bytes: s.size, usedMs: part ? 0 : s.mtimeMs });
+      } catch (e) {
+        error ??= e;
+      }
+    }
+  } catch (e) {
+    error = e;
+  }
+  return { list, error };
+}
+
+/** Names in the folder; none where there is none, or a link or a file in its place. Throws what the file system says where it cannot be read. */
+function namesIn(folder: string): string[] {
+  const there = lstatSync(folder, { throwIfNoEntry: false });
+  return there?.isDirectory() === true ? readdirSync(folder) : [];
+}
+
+/** Whether our own tag lies in the folder: whole, or empty as a power cut leaves it. */
+function isTagged(folder: string): boolean {
+  const tag = path.join(folder, TAG_NAME);
+  try {
+    if (!lstatSync(tag).isFile()) return false;
+    const text = readFileSync(tag, "utf8");
+    return text === TAG || text === "";
   } catch {
-    return [];
+    return false;
   }
 }
 
-export function cacheSize(folder: string): CacheSize {
-  const { entries, bytes } = look(folder, Date.now());
-  return { entries, bytes };
+/**
+ * Whether a file whose name is that of an entry may be removed. Its name holds a digest of 64 digits (16 and a process number while it is
+ * written), which nobody gives to a file by hand; in a folder with our own tag that is enough, for a power cut or a bad disk
+ * may have taken whatever the file began with. In a folder without the tag it must also begin as ours do, or hold nothing that could be
+ * lost. Links, pipes and folders are never ours.
+ */
+function mayRemove(file: string, tagged: boolean): boolean {
+  const s = lstatSync(file, { throwIfNoEntry: false });
+  return s?.isFile() === true && (tagged || s.size === 0 || isOurs(file));
+}
+
+export function cacheSize(folder: string): CacheLook {
+  const { list, error } = look(folder, Date.now());
+  return { ...sizeOf(list), trouble: error === null ? null : reasonOf(error) };
 }
 
 /** Removes what was used longest ago until at most `limitBytes` are left. Another run that reads them meanwhile makes them again. */
 export function trimCache(folder: string, limitBytes: number, now = Date.now()): void {
-  const found = look(folder, now);
-  let { bytes } = found;
-  const oldest = [...found.list].sort((a, b) => a.usedMs - b.usedMs || (a.name < b.name ? -1 : 1));
+  const { list } = look(folder, now);
+  let { bytes } = sizeOf(list);
+  const tagged = isTagged(folder);
+  const oldest = [...list].sort((a, b) => a.usedMs - b.usedMs || (a.name < b.name ? -1 : 1));
   for (const e of oldest) {
     if (bytes <= limitBytes && e.usedMs > 0) return;
-    if (removeOurs(path.join(folder, e.name))) bytes -= e.bytes;
+    if (remove(path.join(folder, e.name), tagged) === null) bytes -= e.bytes;
   }
 }
 
-/** Removes every entry, and the folder where nothing else lies in it. Returns what was removed. */
-export function clearCache(folder: string): CacheSize {
-  let entries = 0;
-  let bytes = 0;
-  for (const e of look(folder, Number.MAX_VALUE).list) {
-    if (!removeOurs(path.join(folder, e.name))) continue;
-    entries++;
-    bytes += e.bytes;
+/** Removes every entry, and the folder where nothing else lies in it. Never throws. */
+export function clearCache(folder: string): Cleared {
+  const found = look(folder, Number.MAX_VALUE);
+  const tagged = isTagged(folder);
+  const [gone, left]: [Entry[], Entry[]] = [[], []];
+  let { error } = found;
+  for (const e of found.list) {
+    const refused = remove(path.join(folder, e.name), tagged);
+    (refused === null ? gone : left).push(e);
+    error ??= refused;
   }
-  const tag = path.join(folder, TAG_NAME);
+  let others = 0;
   try {
     const rest = namesIn(folder);
-    if (rest.length === 1 && rest[0] === TAG_NAME && lstatSync(tag).isFile() && readFileSync(tag, "utf8") === TAG) {
-      rmSync(tag);
+    others = rest.filter((name) => name !== TAG_NAME).length - left.length;
+    if (rest.length === 1 && isTagged(folder)) {
+      rmSync(path.join(folder, TAG_NAME));
       rmdirSync(folder);
     }
   } catch {
-    // another run has just written into it
+    // another run has just written into it, or it may not be changed: an empty folder does no harm
   }
-  return { entries, bytes };
+  return { ...sizeOf(gone), left: sizeOf(left), trouble: error === null ? null : reasonOf(error), others };
 }
 
-function removeOurs(file: string): boolean {
+/** null where it is gone, else what the file system says. */
+function remove(file: string, tagged: boolean): unknown {
   try {
-    if (!isOurs(file)) return false;
-    rmSync(file);
-    return true;
-  } catch {
-    return false; // open elsewhere, or gone already
+    if (mayRemove(file, tagged)) rmSync(file, { force: true });
+    return null;
+  } catch (e) {
+    return e;
   }
 }

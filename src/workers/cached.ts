@@ -1,6 +1,7 @@
 import { deserialize, serialize } from "node:v8";
 import { readEntry, writeEntry } from "./cache_entry.js";
 import type { CacheUse } from "./cache_folder.js";
+import { notKept } from "./cache_words.js";
 import { contentKey } from "./content_key.js";
 import { fetchBytes, keepBytes } from "./scratch.js";
 
@@ -49,7 +50,7 @@ function keepContent(cache: CacheUse, stage: string, key: string, content: () =>
     writeEntry(cache.folder, entryName(stage, key), content());
   } catch (e) {
     // A cache that cannot be written is no reason to stop: the work goes on without it.
-    troubles.set(cache.folder, e instanceof Error ? e.message : String(e));
+    troubles.set(cache.folder, notKept("nothing more", cache.folder, e));
   }
 }
 

@@ -1,9 +1,11 @@
-import { existsSync, mkdtempSync, readdirSync, rmSync } from "node:fs";
+import { chmodSync, existsSync, mkdtempSync, readdirSync, rmSync } from "node:fs";
 import { tmpdir } from "node:os";
 import path from "node:path";
-import { afterAll, beforeAll, expect, test, vi } from "vitest";
+import { afterAll, afterEach, beforeAll, beforeEach, describe, expect, test, vi } from "vitest";
 import { defaultSpec, generateStack } from "../../src/demo/index.js";
-import { coldseam } from "./program.js";
+import { writeEntry } from "../../src/workers/cache_entry.js";
+import { openCache } from "../../src/workers/cache_folder.js";
+import { asOther, coldseam, MAY_BE_OTHER } from "./program.js";
 
 let dir: string;
 let yaml: string;
@@ -26,7 +28,6 @@ const ingest = (...more: string[]) => coldseam("ingest", yaml, "--db", db, "--wo
 const folder = (): string => `${db}.cache`;
 
 test("an ingest keeps its stages beside the database; `cache` says how much, and deletes it", () => {
-  expect(coldseam("cache", "--db", db).out).toBe(`${folder()}: nothing is kept\n`);
   const first = ingest();
   expect(first.code, first.err).toBe(0);
   expect(coldseam("cache", "--db", db).out).toMatch(/: \d+\.\d MB in \d+ files; --clear deletes it/);
@@ -35,15 +36,86 @@ test("an ingest keeps its stages beside the database; `cache` says how much, and
   expect(readdirSync(folder()).length).toBe(before);
   expect(coldseam("cache", "--db", db, "--clear").out).toMatch(/: \d+\.\d MB in \d+ files deleted\n$/);
   expect(existsSync(folder())).toBe(false);
+  for (const more of [[], ["--clear"]])
+    expect(coldseam("cache", "--db", db, ...more).out).toBe(`${folder()}: nothing is kept\n`);
   // Nothing is lost with it, and without it things go on as before.
   expect(coldseam("verify", "--db", db).code).toBe(0);
   expect(ingest("--set", "loops.draws=501", "--no-cache").code).toBe(0);
   expect(existsSync(folder())).toBe(false);
   expect(ingest("--set", "loops.draws=502", "--cache-mb", "0")).toMatchObject({
     code: 0,
-    err: expect.stringMatching(/note: cache: nothing is added: the limit is too small\n/) as string,
+    err: expect.stringMatching(
+      /note: cache: nothing is added, as the limit is too small: this cooldown needs about 2 MB, .* --cache-mb allows 0\n/,
+    ) as string,
   });
-  expect(ingest("--cache-mb", "much")).toMatchObject({ code: 2 });
+});
+
+test("numbers that are none stop an ingest, an empty one too", () => {
+  for (const [option, text] of [
+    ["--cache-mb", "much"],
+    ["--cache-mb", ""],
+    ["--cache-mb", " "],
+    ["--workers", ""],
+  ])
+    expect(coldseam("ingest", yaml, "--db", db, option, text), `${option} "${text}"`).toMatchObject({
+      code: 2,
+      err: expect.stringMatching(`${option} (much|""): expected a .*number`) as string,
+    });
+});
+
+test("where there is neither database nor cache, that is an error that names the file", () => {
+  for (const more of [[], ["--clear"]])
+    expect(coldseam("cache", "--db", path.join(dir, "nope.sqlite"), ...more)).toMatchObject({
+      code: 1,
+      out: "",
+      err: expect.stringMatching(/nope\.sqlite: no such database\n {2}fix: /) as string,
+    });
+});
+
+describe.runIf(MAY_BE_OTHER)("a cache that this user may not", () => {
+  const owned = (): string => `${path.join(dir, "owned.sqlite")}.cache`;
+  const cache = (...more: string[]) => asOther("cache", "--db", path.join(dir, "owned.sqlite"), ...more);
+  beforeEach(() => {
+    chmodSync(dir, 0o777);
+    openCache(owned(), 1e9, { rasters: 0, small: 0 });
+    for (const k of [1, 2]) writeEntry(owned(), `map-${String(k).repeat(64)}`, new Uint8Array(400_000));
+  });
+  afterEach(() => {
+    chmodSync(owned(), 0o755);
+    rmSync(owned(), { recursive: true });
+  });
+
+  test.each([0o000, 0o444])("read (%i) is not called empty, nor deleted", (mode) => {
+    chmodSync(owned(), mode);
+    const why = "this user has no permission \\(EACCES\\)";
+    expect(cache()).toMatchObject({
+      code: 1,
+      out: "",
+      err: expect.stringMatching(`owned\\.sqlite\\.cache: cannot be read, .*: ${why}\n  fix: `) as string,
+    });
+    expect(cache("--clear")).toMatchObject({
+      code: 1,
+      out: "",
+      err: expect.stringMatching(`owned\\.sqlite\\.cache: cannot be read, .* not deleted: ${why}\n  fix: `) as string,
+    });
+  });
+
+  test("write: what could not be deleted is said, and an ingest says that it keeps nothing", () => {
+    chmodSync(owned(), 0o555);
+    expect(cache()).toMatchObject({ code: 0, out: expect.stringMatching(/: 0\.8 MB in 2 files;/) as string });
+    expect(cache("--clear")).toMatchObject({
+      code: 1,
+      out: "",
+      err: expect.stringMatching(/: 0\.8 MB in 2 files could not be deleted: .*\(EACCES\)\n {2}fix: /) as string,
+    });
+    const r = asOther("ingest", yaml, "--db", path.join(dir, "owned.sqlite"), "--workers", "1");
+    rmSync(path.join(dir, "owned.sqlite"), { force: true });
+    expect(r.code, r.err).toBe(0);
+    expect(r.err).toContain(
+      `note: cache: nothing of this run is kept in ${owned()}: this user has no permission (EACCES); make the folder writable, or use --no-cache\n`,
+    );
+    expect(r.err).not.toMatch(/next ingest;|part-/);
+  });
 });
 
 test("a second identical ingest costs the hashing of its files: no stage is even loaded", async () => {

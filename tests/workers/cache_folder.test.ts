@@ -127,7 +127,7 @@ describe("the folder", () => {
     trimCache(folder, bytes / 2);
     expect([0, 1, 2, 3].map((k) => existsSync(path.join(folder, name(k))))).toEqual([false, true, false, true]);
     trimCache(folder, 0);
-    expect(cacheSize(folder)).toEqual({ entries: 0, bytes: 0 });
+    expect(cacheSize(folder)).toEqual({ entries: 0, bytes: 0, trouble: null });
   });
 
   test("what we did not write stays, whatever its name, and so does the folder about it", () => {
@@ -137,14 +137,48 @@ describe("the folder", () => {
     mkdirSync(outside);
     writeFileSync(path.join(outside, name(9)), readFileSync(path.join(folder, name(1))));
     writeFileSync(path.join(folder, "notes.txt"), "mine");
-    writeFileSync(path.join(folder, name(5)), "named like an entry");
+    writeFileSync(path.join(folder, `${name(5)}.bak`), "named nearly like an entry");
     symlinkSync(path.join(outside, name(9)), path.join(folder, name(6)));
     symlinkSync(outside, path.join(folder, name(7)));
     mkdirSync(path.join(folder, name(8)));
     trimCache(folder, 0);
-    expect(clearCache(folder).entries).toBe(0);
-    expect(readdirSync(folder).sort()).toEqual(["CACHEDIR.TAG", "notes.txt", ...[5, 6, 7, 8].map(name)].sort());
+    expect(clearCache(folder)).toMatchObject({ entries: 0, left: { entries: 0 }, trouble: null, others: 5 });
+    expect(readdirSync(folder).sort()).toEqual(
+      ["CACHEDIR.TAG", "notes.txt", `${name(5)}.bak`, ...[6, 7, 8].map(name)].sort(),
+    );
     expect(existsSync(path.join(outside, name(9)))).toBe(true);
+  });
+
+  const spoil = (): void => {
+    writeFileSync(path.join(folder, name(1)), "");
+    writeFileSync(path.join(folder, name(2)), Buffer.alloc(500));
+    writeFileSync(path.join(folder, "part-99-0123456789abcdef"), Buffer.alloc(20));
+    utimesSync(path.join(folder, "part-99-0123456789abcdef"), new Date(0), new Date(0));
+  };
+
+  test.each(["whole", "empty"])("entries that a power cut has spoilt are counted and removed; the tag is %s", (tag) => {
+    open();
+    used(0, 1);
+    spoil();
+    if (tag === "empty") truncateSync(path.join(folder, "CACHEDIR.TAG"), 0);
+    const { entries, bytes } = cacheSize(folder);
+    expect(entries).toBe(4);
+    expect(clearCache(folder)).toMatchObject({ entries, bytes, left: { entries: 0 }, trouble: null, others: 0 });
+    expect(existsSync(folder)).toBe(false);
+    open();
+    spoil();
+    trimCache(folder, 0);
+    expect(readdirSync(folder)).not.toContain(name(2));
+  });
+
+  test("in a folder without our tag only what begins as ours, or holds nothing, is counted and removed", () => {
+    mkdirSync(folder);
+    used(0, 1);
+    spoil();
+    expect(cacheSize(folder)).toMatchObject({ entries: 2 });
+    trimCache(folder, 1e9);
+    expect(clearCache(folder)).toMatchObject({ entries: 2, left: { entries: 0 }, trouble: null, others: 2 });
+    expect(readdirSync(folder).sort()).toEqual([name(2), "part-99-0123456789abcdef"]);
   });
 
   test("is removed when it is cleared, with halves that a killed run has left", () => {
@@ -153,7 +187,8 @@ describe("the folder", () => {
     writeFileSync(path.join(folder, "part-99-0123456789abcdef"), "coldseam ca");
     expect(clearCache(folder).entries).toBe(2);
     expect(existsSync(folder)).toBe(false);
-    expect(clearCache(folder)).toEqual({ entries: 0, bytes: 0 });
+    const none = { entries: 0, bytes: 0 };
+    expect(clearCache(folder)).toEqual({ ...none, left: none, trouble: null, others: 0 });
   });
 
   test("halves are removed a day later; until then another run may be at them", () => {
@@ -189,7 +224,8 @@ describe("the folder", () => {
     expect(openCache(folder, 5e5, SMALL)).toMatchObject({ use: { write: true, rasters: false }, trouble: null });
     expect(openCache(folder, 5e4, SMALL)).toMatchObject({
       use: { write: false },
-      trouble: "nothing is added: the limit is too small",
+      trouble:
+        "nothing is added, as the limit is too small: this cooldown needs about 1 MB, 2 MB with its full-size rasters, and --cache-mb allows 0.05",
     });
     expect(openCache(folder, Infinity, { rasters: 1e18, small: 0 }).trouble).toMatch(/space left on its disk/);
     expect(openCache(path.join(top, "no such folder", "c"), 1e9, SMALL)).toMatchObject({ use: null });
@@ -224,7 +260,9 @@ describe("a stage's result", () => {
     const { use } = open();
     rmSync(folder, { recursive: true });
     for (const k of [1, 2]) expect(await cached(use, "map", k, () => ({ k }))).toEqual({ k });
-    expect(takeTrouble({ cache: use })).toMatch(/ENOENT/);
+    expect(takeTrouble({ cache: use })).toBe(
+      `nothing more of this run is kept in ${folder}: it is gone (ENOENT); leave the folder where it is while an ingest runs, or use --no-cache`,
+    );
     expect(takeTrouble({ cache: use })).toBeNull();
     expect(existsSync(folder)).toBe(false);
   });
@@ -234,7 +272,7 @@ describe("a stage's result", () => {
     const r = inNamespace(`mount -t tmpfs -o size=64k tmpfs '${top}'; '${process.execPath}' '${script}' '${top}'`);
     expect(JSON.parse(r.out), r.err).toEqual({
       right: true,
-      trouble: expect.stringMatching(/ENOSPC/) as string,
+      trouble: expect.stringMatching(/no space is left on its disk \(ENOSPC\); free some space there, or/) as string,
       names: ["map", "map"],
       second: ["first", "first", "second", "second"],
     });
