@@ -139,14 +139,16 @@ export function temperaturesFromLog(
     }
     const usual = (t.log.timesS[t.log.timesS.length - 1] - t.log.timesS[0]) / (t.log.timesS.length - 1);
     if (scan.longestGapS > 10 * usual && scan.longestGapS > 0.25 * (endS - startS)) {
-      const message = `no entry in the log for ${Math.round(scan.longestGapS)} s of the scan's time: a straight line is taken`;
-      notices.push({ frame, code: "log-gap", message });
+      const gapS = String(Math.round(scan.longestGapS));
+      const message = `no entry in the log for ${gapS} s of the scan's time: a straight line is taken`;
+      notices.push({ frame, code: "log-gap", message, varies: [gapS] });
     }
     if (own !== null && Math.abs(scan.meanK - own) > Math.max(DIFFERS_K, 3 * scan.sdK)) {
       notices.push({
         frame,
         code: "temperature-differs",
         message: `${round(scan.meanK)} K by the log, ${own} K as given: the log's is used`,
+        varies: [String(round(scan.meanK)), String(own)],
       });
     }
     return {

@@ -45,16 +45,19 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
   const rows = rowsOf(raw.amplitude);
   const cols = colsOf(raw.amplitude);
   const notices: Notice[] = [];
-  const notice = (code: string, message: string): void => void notices.push({ frame: raw.frame, code, message });
+  const notice = (code: string, message: string, varies: readonly string[] = []): void =>
+    void notices.push({ frame: raw.frame, code, message, varies });
 
   /** A copy of a channel without what cannot be a measured value, which is said. */
   const sane = (raster: Raster, channel: "amplitude" | "topography"): Float32Array => {
     const values = finiteCopy(raster);
     const { pixels, farthest } = leaveOutWild(values, channel);
     if (pixels > 0) {
+      const value = farthest.toPrecision(3);
       notice(
         "wild-pixels",
-        `${channel}: ${pixels} ${pixels === 1 ? "pixel" : "pixels"} far outside the values of all others (${farthest.toPrecision(3)}) ${pixels === 1 ? "counts" : "count"} as not measured`,
+        `${channel}: ${pixels} ${pixels === 1 ? "pixel" : "pixels"} far outside the values of all others (${value}) ${pixels === 1 ? "counts" : "count"} as not measured`,
+        [String(pixels), value],
       );
     }
     return values;
@@ -63,10 +66,8 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
   const unmeasured = countUnmeasured(amplitude, rows, cols);
   const clipped = clippedShare(endsOf(amplitude));
   if (clipped > 0.001) {
-    notice(
-      "clipped-channel",
-      `amplitude: ${(100 * clipped).toFixed(1)} % of the pixels sit at the channel's end value`,
-    );
+    const share = (100 * clipped).toFixed(1);
+    notice("clipped-channel", `amplitude: ${share} % of the pixels sit at the channel's end value`, [share]);
   }
   if (unmeasured.pixels === rows * cols) notice("empty-frame", "amplitude: no pixel was measured");
 
@@ -80,7 +81,10 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
   const scarPixels = (topography?.scarPixels ?? 0) + signal.scarPixels;
   const scarRuns = (topography?.scarRuns ?? 0) + signal.scarRuns;
   if (scarPixels > s.badFrameScarShare * rows * cols) {
-    notice("many-scars", `${scarPixels} pixels in ${scarRuns} scars were left out`);
+    notice("many-scars", `${scarPixels} pixels in ${scarRuns} scars were left out`, [
+      String(scarPixels),
+      String(scarRuns),
+    ]);
   }
   const noises = {
     topography: topography?.noise ?? null,
@@ -88,7 +92,8 @@ export function cleanFrame(raw: RawFrame, s: CleanSettings): { clean: CleanFrame
     phase: signal.phaseNoise,
   };
   if (noises.phase !== null && noises.phase.sd > 1) {
-    notice("phase-noisy", `phase: noise of ${noises.phase.sd.toFixed(2)} rad a pixel; it holds next to nothing`);
+    const sd = noises.phase.sd.toFixed(2);
+    notice("phase-noisy", `phase: noise of ${sd} rad a pixel; it holds next to nothing`, [sd]);
   }
   const pixel = raw.amplitude.pixel;
   const raster = (data: Float32Array): Raster => makeRaster(data, rows, cols, pixel);
