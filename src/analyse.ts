@@ -291,7 +291,12 @@ async function placeFrames(
   const first = await measure(choosePairs(frames, null, s), null);
   const rough = solveDrift(frames, first, s);
   const known = new Set(first.map((p) => `${p.reference} ${p.moving}`));
-  const more = choosePairs(frames, rough.drifts, s).filter(([a, b]) => !known.has(`${a} ${b}`));
+  // where pairs contradicted each other more of them are asked, however sure the place looks
+  const doubted = new Set(rough.rejected.flat());
+  const places = rough.drifts.map((d) => (doubted.has(d.frame) ? { ...d, sdNm: null } : d));
+  const { pixel } = sources[0];
+  const enoughNm = s.enoughPx * Math.min(pixel.xNm, pixel.yNm);
+  const more = choosePairs(frames, places, s, enoughNm).filter(([a, b]) => !known.has(`${a} ${b}`));
   const second = await measure(more, rough.drifts);
   const solved = solveDrift(frames, [...first, ...second], s);
   notices.push(...solved.notices);

@@ -4,6 +4,7 @@ import type { DriftSettings } from "./settings.js";
 interface Approximate {
   readonly xNm: number | null;
   readonly yNm: number | null;
+  readonly sdNm?: number | null;
 }
 
 /** A cooldown of more frames than this is taken in stretches of about as many. */
@@ -20,11 +21,13 @@ const LEAST_STEP = 4;
  *  that can be solved before the rest: so above 128 frames it is taken in equal stretches, each frame has its pair with the first one of its
  *  stretch and its partners within it, and the stretches hang together by neighbours and by every so many-th frame, which has its pairs with the
  *  first frame of all and with the one nearest in temperature.
- *  @param approx positions from the first round, null (or null numbers) for a frame not placed: it is tried against others once more */
+ *  @param approx positions from the first round, null (or null numbers) for a frame not placed: it is tried against others once more
+ *  @param enoughNm a frame whose place is known to this standard deviation gets no more partners in the second round; nm */
 export function choosePairs(
   frames: readonly FrameInfo[],
   approx: readonly (Approximate | null)[] | null,
   s: DriftSettings,
+  enoughNm = 0,
 ): [number, number][] {
   const pairs = new PairList();
   const n = frames.length;
@@ -47,6 +50,8 @@ export function choosePairs(
   const perFrame = Math.max(1, Math.round(s.pairsPerFrame) - 5);
   for (const { from, length } of stretches) {
     for (let i = from; i < from + length; i++) {
+      const sdNm = approx[i]?.sdNm ?? null;
+      if (sdNm !== null && sdNm <= enoughNm) continue;
       // partners at evenly spread places of the stretch, a different set for each frame
       const spread = Array.from(
         { length: 3 * perFrame },

@@ -50,6 +50,14 @@ export const settings = {
     min: 2,
     max: 40,
   },
+  enoughPx: {
+    default: 0.003,
+    unit: "px",
+    means:
+      "a frame placed to this standard deviation by the first round of pairs (its neighbours, the first frame, the one of the other branch) gets no more",
+    min: 0,
+    max: 1,
+  },
   huber: {
     default: 1.345,
     unit: "1",

@@ -106,6 +106,16 @@ describe("choosing pairs", () => {
     }
   });
 
+  test("a frame whose place is known well enough is asked no more; one less well known, or of unknown sd, is", () => {
+    const n = 24;
+    const places = walk(n).map(([xNm, yNm], k) => ({ xNm, yNm, sdNm: k === 5 ? 0.2 : k === 9 ? null : 0.02 }));
+    expect(choosePairs(infos(n), places, s, 0.3).every((pair) => pair.includes(9))).toBe(true);
+    const more = choosePairs(infos(n), places, s, 0.03);
+    expect(more.length).toBeGreaterThanOrEqual(4);
+    expect(more.every((pair) => pair.includes(5) || pair.includes(9))).toBe(true);
+    expect(choosePairs(infos(n), places, s).length).toBeGreaterThan(n);
+  });
+
   test("a branch is tied to the frames of the other that are nearest in temperature", () => {
     const pairs = choosePairs(infos(24), null, s).map(String);
     expect(pairs).toContain("8,15");
