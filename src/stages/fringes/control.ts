@@ -3,25 +3,11 @@ import type { FringeTest } from "../../model/walls.js";
 import { benjaminiHochberg } from "../../numerics/false_discovery.js";
 import type { FringeSettings } from "./settings.js";
 
-/** A fringe whose contrast, measured after the rows of its frame were referenced anew, is within so many of its sd of none is one that the
- *  rows' own offsets had drawn. */
-const LEAST_CONTRAST_SD = 1.96;
-
 /** Which tests of a cooldown hold a fringe, with the false discovery rate held at `falseDiscoveryRate` over all of them
- *  (Benjamini & Hochberg 1995, J. R. Stat. Soc. B 57, 289; holds under positive dependence), and whose contrast, where it could be
- *  measured, is not within its own interval of zero. Give all tests of the cooldown at once. */
+ *  (Benjamini & Hochberg 1995, J. R. Stat. Soc. B 57, 289; holds under positive dependence). Give all tests of the cooldown at once. */
 export function controlFalseDiscovery(tests: readonly FringeTest[], s: FringeSettings): DecidedFringe[] {
   const adjusted = benjaminiHochberg(tests.map((t) => t.pValue));
-  return tests.map((t, k) => ({
-    ...t,
-    adjustedP: adjusted[k],
-    detected: adjusted[k] <= s.falseDiscoveryRate && !isNothing(t),
-  }));
-}
-
-function isNothing({ contrastRad, contrastSdRad }: FringeTest): boolean {
-  if (contrastRad === null || contrastSdRad === null) return false;
-  return Math.abs(contrastRad) < LEAST_CONTRAST_SD * contrastSdRad;
+  return tests.map((t, k) => ({ ...t, adjustedP: adjusted[k], detected: adjusted[k] <= s.falseDiscoveryRate }));
 }
 
 /** Detected share of the tested wall length; null where nothing was tested. */

@@ -18,7 +18,7 @@ import { Profiler, type Profile } from "./profile.js";
 import { SearchBasis } from "./search_basis.js";
 import type { FringeSettings } from "./settings.js";
 import { betweenWalls, cutStretches, type Stretch } from "./stretches.js";
-import { supTest, type Candidate } from "./sup_test.js";
+import { supTest, type Candidate, type SupTest } from "./sup_test.js";
 
 /** Ratio of neighbouring periods of the grid, and the decays tried with each, in periods. */
 const PERIOD_RATIO = 1.25;
@@ -29,8 +29,8 @@ const LEAST_SHARE = 0.5;
 const NEAR_WIDTHS = 1.25;
 /** Period and decay are fitted only where the test says there may be something. */
 const FIT_BELOW_P = 0.05;
-/** With a test below this there is a fringe in the frame. */
-const CLEAR_P = 1e-3;
+/** With a test below this there may be a fringe in the frame, or rows that look like one. */
+const CLEAR_P = 0.01;
 /** Rows off by more than this (1 sd, rad) were not referenced but led astray: no period or decay is told from them. */
 const LARGEST_ROW_SD = 0.04;
 /** Share of a fringe's contrast by which a level of the frame may be off. */
@@ -72,13 +72,14 @@ export function testFringes(
     metallic: new SearchBasis(table, true, chord),
     insulating: new SearchBasis(table, false, chord),
   };
-  const found = cut.stretches.map((stretch, k) => {
-    const profile = seen.profiles[k];
-    const candidates = candidatesFor(profile, table, s);
-    if (profile.count < LEAST_BINS || candidates.length === 0) return null;
-    const drawn = childSeed(seed, stretch.wall, stretch.stretch);
-    return supTest(profile, table, bases, chord, candidates, s.reachNm, seen.levelSdRad, s.draws, drawn);
-  });
+  const testOf = ({ profiles, levelSdRad }: Profiles, k: number, ...again: number[]): SupTest | null => {
+    const { wall, stretch } = cut.stretches[k];
+    const candidates = candidatesFor(profiles[k], table, s);
+    if (profiles[k].count < LEAST_BINS || candidates.length === 0) return null;
+    const drawn = childSeed(seed, wall, stretch, ...again);
+    return supTest(profiles[k], table, bases, chord, candidates, s.reachNm, levelSdRad, s.draws, drawn);
+  };
+  const found = cut.stretches.map((_, k) => testOf(seen, k));
   // A fringe is in the rows' own offsets: where there is one they are found anew, beside it.
   const clear = found.some((f) => f !== null && f.pValue < CLEAR_P);
   const rowsAgain = clear ? referenceRows(grid, seen.noise.local, binNm, s.reachNm) : null;
@@ -96,9 +97,12 @@ export function testFringes(
   return cut.stretches.flatMap((stretch, k): FringeTest[] => {
     const test = found[k];
     if (test === null) return [];
-    const { pValue, best } = test;
     const own = better.profiles[k];
     const enough = Math.min(own.reachMetallicNm, own.reachInsulatingNm) >= s.leastReachNm && own.count >= LEAST_BINS;
+    // what was seen before the rows were put right, and is not seen any more, was theirs
+    const second = rowsAgain !== null && rowsKnown && enough && test.pValue < FIT_BELOW_P ? testOf(better, k, 1) : null;
+    const pValue = Math.max(test.pValue, second?.pValue ?? 0);
+    const { best } = test;
     const profile = enough ? own : seen.profiles[k];
     const fit = new FringeFit(profile, table, forward[best.side], chord, best, s.reachNm);
     // Where there is a fringe the frame's own levels, averaged over pixels that carry it, are off by a share of it.
