@@ -6,7 +6,7 @@ import { median } from "./numerics/quantile.js";
 import { childSeed } from "./numerics/random.js";
 import { settingRecord, type Settings } from "./settings.js";
 import { labelDomains, trackDomains } from "./stages/domains/index.js";
-import { choosePairs, solveDrift, type PairShift } from "./stages/drift/index.js";
+import { choosePairs, furtherPairs, solveDrift, type PairShift } from "./stages/drift/index.js";
 import { controlFalseDiscovery, fringeShare } from "./stages/fringes/index.js";
 import { checkCourse, findLoops } from "./stages/loops/index.js";
 import { trackLevels } from "./stages/states/index.js";
@@ -290,13 +290,7 @@ async function placeFrames(
   };
   const first = await measure(choosePairs(frames, null, s), null);
   const rough = solveDrift(frames, first, s);
-  const known = new Set(first.map((p) => `${p.reference} ${p.moving}`));
-  // where pairs contradicted each other more of them are asked, however sure the place looks
-  const doubted = new Set(rough.rejected.flat());
-  const places = rough.drifts.map((d) => (doubted.has(d.frame) ? { ...d, sdNm: null } : d));
-  const { pixel } = sources[0];
-  const enoughNm = s.enoughPx * Math.min(pixel.xNm, pixel.yNm);
-  const more = choosePairs(frames, places, s, enoughNm).filter(([a, b]) => !known.has(`${a} ${b}`));
+  const more = furtherPairs(frames, first, rough, sources[0].pixel, s);
   const second = await measure(more, rough.drifts);
   const solved = solveDrift(frames, [...first, ...second], s);
   notices.push(...solved.notices);

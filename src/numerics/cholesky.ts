@@ -2,7 +2,6 @@
  *  read; on return the lower triangle holds L with A = LLᵀ (the upper one is left as it was). False where the matrix is not
  *  positive definite to working precision; `a` is then spoilt. */
 export function choleskyInPlace(a: Float64Array, n: number): boolean {
-  if (n >= LARGE) return choleskyOfSparse(a, n);
   for (let j = 0; j < n; j++) {
     const jn = j * n;
     let d = a[jn + j];
@@ -16,36 +15,6 @@ export function choleskyInPlace(a: Float64Array, n: number): boolean {
       const row = i * n;
       let s = a[row + j];
       for (let k = 0; k < j; k++) s -= a[row + k] * a[jn + k];
-      a[row + j] = s * inverse;
-    }
-  }
-  return true;
-}
-
-/** From this size on it pays to look for zeros. */
-const LARGE = 64;
-
-/** The same, to the bit, of a matrix many of whose rows begin with zeros: L has them in the same places, and they are passed over. */
-function choleskyOfSparse(a: Float64Array, n: number): boolean {
-  const first = new Int32Array(n);
-  for (let i = 0; i < n; i++) {
-    let k = 0;
-    while (k < i && a[i * n + k] === 0) k++;
-    first[i] = k;
-  }
-  for (let j = 0; j < n; j++) {
-    const jn = j * n;
-    let d = a[jn + j];
-    for (let k = first[j]; k < j; k++) d -= a[jn + k] * a[jn + k];
-    if (!(d > a[jn + j] * 4e-16) || d === Infinity) return false;
-    const root = Math.sqrt(d);
-    a[jn + j] = root;
-    const inverse = 1 / root;
-    for (let i = j + 1; i < n; i++) {
-      if (first[i] > j) continue;
-      const row = i * n;
-      let s = a[row + j];
-      for (let k = Math.max(first[i], first[j]); k < j; k++) s -= a[row + k] * a[jn + k];
       a[row + j] = s * inverse;
     }
   }

@@ -3,10 +3,18 @@ import type { FrameInfo } from "../model/cooldown.js";
 import { childSeed, makeRandom } from "../numerics/random.js";
 import { settingsWith } from "../settings.js";
 import { cleanFrame } from "../stages/clean/index.js";
-import { choosePairs, measurePair, prepareForDrift, solveDrift, type DriftImage } from "../stages/drift/index.js";
+import {
+  choosePairs,
+  furtherPairs,
+  measurePair,
+  prepareForDrift,
+  solveDrift,
+  type DriftImage,
+} from "../stages/drift/index.js";
 
 const SIDE_PX = 128;
 const PIXEL_NM = 10;
+const PIXEL = { xNm: PIXEL_NM, yNm: PIXEL_NM };
 const FRAMES = 50;
 /** Largest jump between two frames, as a share of the window, along either axis. */
 const JUMP = 0.4;
@@ -60,7 +68,7 @@ function framesOf(seed: number): {
   const spec = defaultSpec({
     rows: SIDE_PX,
     cols: SIDE_PX,
-    pixel: { xNm: PIXEL_NM, yNm: PIXEL_NM },
+    pixel: PIXEL,
     series: [
       { branch: "cooling", temperaturesK: down },
       { branch: "warming", temperaturesK: [...down].reverse() },
@@ -130,8 +138,7 @@ export function tryJumps(cooldowns: number, seed: number, onDone: () => void = (
         });
       const first = measure(choosePairs(infos, null, s), null);
       const rough = solveDrift(infos, first, s);
-      const known = new Set(first.map((p) => `${p.reference} ${p.moving}`));
-      const more = choosePairs(infos, rough.drifts, s).filter(([a, b]) => !known.has(`${a} ${b}`));
+      const more = furtherPairs(infos, first, rough, PIXEL, s);
       const { drifts } = solveDrift(infos, [...first, ...measure(more, rough.drifts)], s);
       for (const d of drifts.slice(1)) {
         const error = d.xNm === null || d.yNm === null ? null : { x: d.xNm - at[d.frame].x, y: d.yNm - at[d.frame].y };

@@ -1,10 +1,17 @@
 import type { FrameInfo } from "../../model/cooldown.js";
+import type { PixelSize } from "../../model/raster.js";
 import type { DriftSettings } from "./settings.js";
 
 interface Approximate {
   readonly xNm: number | null;
   readonly yNm: number | null;
   readonly sdNm?: number | null;
+}
+
+/** What the first round says of every frame, in order, and which of its pairs it rejected. */
+interface FirstPlaces {
+  readonly drifts: readonly Approximate[];
+  readonly rejected: readonly (readonly [number, number])[];
 }
 
 /** A cooldown of more frames than this is taken in stretches of about as many. */
@@ -65,6 +72,23 @@ export function choosePairs(
     }
   }
   return pairs.list;
+}
+
+/** The second round: pairs that the first one has not measured, for the frames that it has not placed to `enoughPx`, or whose pairs
+ *  contradicted each other, however sure the place looks. */
+export function furtherPairs(
+  frames: readonly FrameInfo[],
+  first: readonly { readonly reference: number; readonly moving: number }[],
+  rough: FirstPlaces,
+  pixel: PixelSize,
+  s: DriftSettings,
+): [number, number][] {
+  const doubted = new Set(rough.rejected.flat());
+  const places = rough.drifts.map((d, k) => (doubted.has(k) ? { ...d, sdNm: null } : d));
+  const known = new Set(first.map((p) => `${p.reference} ${p.moving}`));
+  return choosePairs(frames, places, s, s.enoughPx * Math.min(pixel.xNm, pixel.yNm)).filter(
+    ([a, b]) => !known.has(`${a} ${b}`),
+  );
 }
 
 function stretchesOf(n: number): { from: number; length: number }[] {
